@@ -1,0 +1,1 @@
+//! Statistics for comparing groups: plain `f64` in, plain structs out. Knows nothing of a plant.
