@@ -25,4 +25,17 @@
 #![forbid(unsafe_code)]
 #![warn(missing_docs)]
 
+pub mod cli;
+pub mod clock;
+pub mod daemon;
+pub mod engine;
+pub mod intake;
+pub mod model;
+pub mod notice;
+pub mod outlets;
+pub mod settings;
 pub mod stats;
+pub mod store;
+pub mod verdict;
+pub mod web;
+pub mod window;

@@ -1,1 +1,3 @@
-fn main(){}
+//! The program: everything is in the library.
+
+fn main() {}

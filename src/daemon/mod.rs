@@ -1,0 +1,1 @@
+//! Wiring: the loop that waits and the loop that applies, recovery, named tasks, the end.

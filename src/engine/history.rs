@@ -1,0 +1,52 @@
+//! How the past is read: implemented by the store, used by pages and interfaces.
+
+use crate::model::Time;
+use crate::notice::Notice;
+use crate::verdict::{Digest, Look};
+
+/// Why the past could not be read.
+#[derive(Clone, Debug, PartialEq, Eq, thiserror::Error)]
+#[error("the store could not be read: {0}")]
+pub struct HistoryError(pub String);
+
+/// A part of a long list.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Page<T> {
+    /// The items.
+    pub items: Vec<T>,
+    /// Where the next page starts; `None` at the end.
+    pub next: Option<String>,
+}
+
+/// Reads what was kept.
+pub trait History: Send + Sync {
+    /// Short forms of a bank's looks with `from <= at < to`, oldest first, the newest `most` of them.
+    ///
+    /// # Errors
+    /// When the store cannot be read.
+    fn digests(
+        &self,
+        bank: &str,
+        from: Time,
+        to: Time,
+        most: usize,
+    ) -> Result<Vec<Digest>, HistoryError>;
+
+    /// The newest look of a bank that was kept whole at or before `at`, one per span.
+    ///
+    /// # Errors
+    /// When the store cannot be read.
+    fn looks_at(&self, bank: &str, at: Time) -> Result<Vec<Look>, HistoryError>;
+
+    /// Notices, newest first; `after` is the `next` of the page before.
+    ///
+    /// # Errors
+    /// When the store cannot be read.
+    fn notices(&self, after: Option<&str>, most: usize) -> Result<Page<Notice>, HistoryError>;
+
+    /// One notice.
+    ///
+    /// # Errors
+    /// When the store cannot be read.
+    fn notice(&self, id: &str) -> Result<Option<Notice>, HistoryError>;
+}

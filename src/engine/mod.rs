@@ -1,0 +1,16 @@
+//! The engine owns every bank and is a function of its events: `handle(event, now) -> effects`.
+//!
+//! The live daemon, `rehearse`, recovery after a crash and the simulations run this same code.
+//! Deliberately absent: tokio, files, sockets, clocks, random numbers, logs. What the engine wants
+//! done it says as an [`Effect`]; what happened to it comes as an [`Event`].
+
+mod event;
+mod history;
+mod snapshot;
+
+pub use event::{Command, Condition, Effect, Event, Outcome, Part, Record, Ticket, Turn};
+pub use history::{History, HistoryError, Page};
+pub use snapshot::{
+    BankView, Cycles, Plant, RefusalView, Snapshot, SourceState, SourceView, WindowValue,
+    WindowView,
+};

@@ -1,0 +1,1 @@
+//! Measurements on their way in: payload decoders, topics, MQTT, recorded files.

@@ -1,0 +1,36 @@
+//! The words of the plant as types: names, times, exact values, measurements, banks.
+//!
+//! Owns nothing that changes. Constructors check, so a value of these types is a good one.
+//! Deliberately absent: clocks, files, formats, statistics.
+
+mod bank;
+mod reason;
+mod time;
+mod value;
+
+pub use bank::{
+    Bank, BankIx, Budget, BudgetError, Characteristic, Layout, Pairing, SourceIx, Sources,
+};
+pub use reason::{Reason, Refusal};
+pub use time::{Time, US_PER_DAY, US_PER_S};
+pub use value::{Value, ValueError};
+
+use std::sync::Arc;
+
+/// A name as the plant writes it (bank, source, unit, person); cheap to clone.
+pub type Name = Arc<str>;
+
+/// One value of one source, decoded and not yet judged by its window.
+#[derive(Clone, Debug, PartialEq, serde::Serialize, serde::Deserialize)]
+pub struct Measurement {
+    /// The bank it belongs to, by its place in the configuration.
+    pub bank: BankIx,
+    /// The source as the topic or payload names it.
+    pub source: Name,
+    /// The value, exact where the payload was decimal text.
+    pub value: Value,
+    /// When it was taken, where the payload says so; otherwise the time received stands in.
+    pub taken: Option<Time>,
+    /// The cycle or sequence number, where the payload carries one.
+    pub cycle: Option<i64>,
+}

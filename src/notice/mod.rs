@@ -1,0 +1,11 @@
+//! Notices: what people receive and act on. A pure state machine, its wording, and deliveries as data.
+//!
+//! States and terms are those of IEC 62682 / ISA-18.2 as described openly in OPC 10000-9.
+//! Deliberately absent: sending (that is `outlets`), clocks, and any decision about sources
+//! (that is `verdict`).
+
+mod record;
+
+pub use record::{
+    Acknowledgement, Delivery, Kind, NamedSource, Notice, Priority, Since, State, Way,
+};

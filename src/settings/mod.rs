@@ -1,0 +1,12 @@
+//! The configuration twice: as written (every field optional, with its place in the file) and as
+//! used (checked, complete). Converting reports every fault at once.
+//!
+//! Reading the file, the environment and the time zone database happens here; nothing else is
+//! opened: secrets are read from their files by whoever uses them.
+
+mod used;
+
+pub use used::{
+    Broker, Feed, JsonPointers, PayloadForm, PlantSettings, Protocol, RecordingColumns, Settings,
+    Shift, StoreSettings, TimeForm, TopicTemplate, WebSettings,
+};

@@ -1,0 +1,214 @@
+//! The configuration as used. Every value is checked and complete.
+
+use std::net::SocketAddr;
+use std::path::PathBuf;
+use std::sync::Arc;
+
+use crate::model::{Bank, BankIx, Name};
+
+/// Everything the daemon is told.
+#[derive(Clone, Debug)]
+pub struct Settings {
+    /// The plant.
+    pub plant: PlantSettings,
+    /// The broker.
+    pub broker: Broker,
+    /// The store.
+    pub store: StoreSettings,
+    /// Pages and interface.
+    pub web: WebSettings,
+    /// The banks; a [`BankIx`] is a place in this list.
+    pub banks: Vec<Arc<Bank>>,
+    /// Where each bank's measurements come from, in the same order.
+    pub feeds: Vec<Feed>,
+}
+
+/// The plant.
+#[derive(Clone, Debug)]
+pub struct PlantSettings {
+    /// Its name.
+    pub name: Name,
+    /// Its time zone, resolved.
+    pub zone: jiff::tz::TimeZone,
+    /// Its shifts, in the order written.
+    pub shifts: Vec<Shift>,
+}
+
+/// A shift by the clock on the wall; one that ends at or before its start ends the next day.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Shift {
+    /// Its name.
+    pub name: Name,
+    /// Start.
+    pub from: jiff::civil::Time,
+    /// End.
+    pub to: jiff::civil::Time,
+}
+
+/// The protocol's version.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum Protocol {
+    /// MQTT 5.
+    V5,
+    /// MQTT 3.1.1.
+    V4,
+}
+
+/// How to reach the broker.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Broker {
+    /// Host name or address.
+    pub host: String,
+    /// Port.
+    pub port: u16,
+    /// Whether the connection is encrypted (`mqtts://`).
+    pub tls: bool,
+    /// Client id of the connection that listens; the one that speaks appends `-notices`.
+    pub client_id: String,
+    /// Version.
+    pub protocol: Protocol,
+    /// User name.
+    pub user: Option<String>,
+    /// File whose first line is the password.
+    pub password_file: Option<PathBuf>,
+    /// PEM file of the authorities to trust; without it the system's are.
+    pub ca_file: Option<PathBuf>,
+    /// PEM file of the client's certificate chain.
+    pub client_certificate_file: Option<PathBuf>,
+    /// PEM file of the client's key.
+    pub client_key_file: Option<PathBuf>,
+    /// How long the broker keeps the session while we are away, in seconds (MQTT 5).
+    pub session_expiry_s: u32,
+    /// How many messages may be under way unacknowledged (MQTT 5).
+    pub receive_maximum: u16,
+    /// Largest message taken, in bytes.
+    pub most_bytes: usize,
+    /// Keep-alive, in seconds.
+    pub keep_alive_s: u16,
+}
+
+/// The embedded store.
+#[derive(Clone, Debug, PartialEq)]
+pub struct StoreSettings {
+    /// Its folder; made when missing.
+    pub folder: PathBuf,
+    /// How many days of measurements and looks to keep; 0 keeps windows, looks' short forms of a day
+    /// and the evidence of notices.
+    pub keep_days: u32,
+}
+
+/// Pages and interface.
+#[derive(Clone, Debug, PartialEq)]
+pub struct WebSettings {
+    /// Address and port.
+    pub listen: SocketAddr,
+    /// One token per line, optionally preceded by `look ` or `act `.
+    pub token_file: Option<PathBuf>,
+    /// Said explicitly: something in front of us encrypts.
+    pub tls_in_front: bool,
+    /// The address people use, when it is not `http://{listen}`.
+    pub address: Option<String>,
+}
+
+/// Where a bank's measurements come from.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Feed {
+    /// The bank.
+    pub bank: BankIx,
+    /// The topic.
+    pub topic: TopicTemplate,
+    /// What is in a payload.
+    pub payload: PayloadForm,
+    /// Names of the columns of recordings.
+    pub recording: RecordingColumns,
+}
+
+/// A topic with at most one `{source}` standing for one whole level, `+` for any one level and `#`
+/// for the rest.
+#[derive(Clone, Debug, PartialEq, Eq)]
+pub struct TopicTemplate {
+    /// The levels as written.
+    pub levels: Vec<String>,
+    /// Which level names the source.
+    pub source_level: Option<usize>,
+}
+
+/// The form of a payload.
+#[derive(Clone, Debug, PartialEq, Eq)]
+pub enum PayloadForm {
+    /// The whole payload is one decimal number.
+    Number,
+    /// A JSON document.
+    Json(JsonPointers),
+}
+
+/// Where things stand in a JSON document, as RFC 6901 pointers.
+#[derive(Clone, Debug, PartialEq, Eq)]
+pub struct JsonPointers {
+    /// The value.
+    pub value: String,
+    /// The source, when it is not in the topic.
+    pub source: Option<String>,
+    /// The time taken.
+    pub time: Option<String>,
+    /// How that is written.
+    pub time_form: TimeForm,
+    /// The cycle.
+    pub cycle: Option<String>,
+}
+
+/// How a time is written.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum TimeForm {
+    /// RFC 3339 text, or a number: seconds below 1e11, milliseconds from there on.
+    Auto,
+    /// RFC 3339 text with offset.
+    Rfc3339,
+    /// Seconds since the Unix epoch, fractions allowed.
+    EpochSeconds,
+    /// Milliseconds since the Unix epoch.
+    EpochMilliseconds,
+}
+
+/// Names of the columns of a recording.
+#[derive(Clone, Debug, PartialEq, Eq)]
+pub struct RecordingColumns {
+    /// Time taken.
+    pub time: String,
+    /// Source, in long form.
+    pub source: String,
+    /// Value, in long form.
+    pub value: String,
+    /// Cycle.
+    pub cycle: String,
+    /// Bank.
+    pub bank: String,
+}
+
+impl Default for RecordingColumns {
+    fn default() -> Self {
+        let own = str::to_owned;
+        Self {
+            time: own("time"),
+            source: own("source"),
+            value: own("value"),
+            cycle: own("cycle"),
+            bank: own("bank"),
+        }
+    }
+}
+
+impl Settings {
+    /// The settings of a bank's feed.
+    pub fn feed(&self, bank: BankIx) -> &Feed {
+        &self.feeds[bank.index()]
+    }
+
+    /// Where people find the pages, without a slash at the end.
+    pub fn pages(&self) -> String {
+        match &self.web.address {
+            Some(address) => address.trim_end_matches('/').to_owned(),
+            None => format!("http://{}", self.web.listen),
+        }
+    }
+}

@@ -1,0 +1,1 @@
+//! Pages, pictures, the HTTP interface and the metrics, all from the snapshot and the history.

@@ -1,0 +1,1 @@
+//! The newest measurements of each source, and how values of different sources belong together.
