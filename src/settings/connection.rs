@@ -221,22 +221,22 @@ pub struct Backoff {
 impl Backoff {
     /// The first wait is at most this.
     const FIRST: Duration = Duration::from_millis(500);
-    /// No wait is longer: a plant that comes back is seen within half a minute.
+    /// No wait is longer: a broker that comes back is seen within half a minute.
     const LONGEST: Duration = Duration::from_secs(30);
 
-    /// How long to wait after one more failure.
-    pub fn after_failure(&mut self) -> Duration {
+    /// How long to wait after a connection that stood for `stood` (zero when it was never made). Only
+    /// one that stood longer than the longest wait starts over: a broker that accepts and throws out
+    /// at once, as with two clients of one id, must not be called twice a second for ever.
+    pub fn wait_after(&mut self, stood: Duration) -> Duration {
+        if stood > Self::LONGEST {
+            self.failures = 0;
+        }
         let doublings = self.failures.min(16);
         self.failures = self.failures.saturating_add(1);
         let whole = Self::FIRST
             .saturating_mul(1 << doublings)
             .min(Self::LONGEST);
         whole.mul_f64(0.5 + 0.5 * fastrand::f64())
-    }
-
-    /// A connection has stood: the next failure starts over.
-    pub fn succeeded(&mut self) {
-        self.failures = 0;
     }
 }
 
