@@ -21,4 +21,5 @@ pub use look::{Dependence, Digest, Estimate, Finding, Look, Method, SourceLook, 
 pub use shares::Shares;
 pub use track::{
     Aspect, Located, Moment, Yardstick, cleared_margin, locate, returned, size_since,
+    values_to_clear,
 };
