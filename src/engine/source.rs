@@ -64,7 +64,8 @@ impl Source {
 
     /// Whether looks compare it.
     pub fn takes_part(&self) -> bool {
-        !self.retired && !(self.discovered && self.accepted < NEW_UNTIL) && self.accepted > 0
+        let enough = if self.discovered { NEW_UNTIL } else { 1 };
+        !self.retired && self.accepted >= enough
     }
 
     /// When it counts as silent if nothing arrives; `began` stands in for a source that never did.
