@@ -35,12 +35,12 @@ pub struct Measurement {
     pub cycle: Option<i64>,
 }
 
-/// A name as it stands in topics: `/`, `+`, `#` and blanks become `-`. Settings see to it that no two
-/// banks of a plant become the same.
+/// A name as one level of a topic: `/`, `+`, `#`, blanks and control characters become `-`. Settings
+/// see to it that no two banks of a plant become the same.
 pub fn topic_name(name: &str) -> String {
     let safe = |c: char| match c {
         '/' | '+' | '#' => '-',
-        c if c.is_whitespace() => '-',
+        c if c.is_whitespace() || c.is_control() => '-',
         c => c,
     };
     name.chars().map(safe).collect()
@@ -55,7 +55,7 @@ mod tests {
         for (name, wanted) in [
             ("filler-2", "filler-2"),
             ("filler 2/net + tare #", "filler-2-net---tare--"),
-            ("Fülldüse\t9", "Fülldüse-9"),
+            ("Fülldüse\t9\u{7}", "Fülldüse-9-"),
         ] {
             assert_eq!(topic_name(name), wanted);
         }

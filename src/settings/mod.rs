@@ -1,14 +1,15 @@
 //! The configuration twice: as written (every field optional, with its place in the file) and as
 //! used (checked, complete). Converting reports every fault at once.
 //!
-//! The way of a key: [`raw`] tree of the file, with the [`environment`] laid over it, read by
-//! [`section`] into [`written`], turned by [`convert`] into [`used`]. Each step says what is wrong
-//! and goes on, so that all faults come together.
+//! The way of a key: `raw` tree of the file, with the `environment` laid over it, read by `section`
+//! into `written`, turned by `convert` into `used`. Each step says what is wrong and goes on, so that
+//! all faults come together.
 //!
-//! Reading the file, the environment and the time zone database happens here; nothing else is
-//! opened: secrets are read from their files by whoever uses them.
+//! Reading the file, the environment and the time zone database happens here; the files of secrets
+//! and certificates are opened by [`connection`], anew for each connection to the broker.
 
 mod check;
+pub mod connection;
 mod convert;
 mod environment;
 mod fault;
