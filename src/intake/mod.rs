@@ -15,7 +15,7 @@
 
 //pub mod arrival;
 //pub mod mqtt;
-//pub mod names;
+pub mod names;
 pub mod payload;
-//pub mod recording;
+pub mod recording;
 //pub mod topics;

@@ -6,7 +6,7 @@
 
 mod excerpt;
 pub(super) mod json;
-mod number;
+pub(super) mod number;
 pub(super) mod times;
 
 use std::borrow::Cow;
