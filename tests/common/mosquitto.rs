@@ -96,6 +96,20 @@ impl Mosquitto {
         }
     }
 
+    /// Makes it stand still with its connections open: it takes bytes and answers nothing.
+    pub fn freeze(&self) {
+        if let Some(process) = &self.process {
+            process.signal("STOP");
+        }
+    }
+
+    /// Ends it at once, as a power cut would.
+    pub fn crash(&mut self) {
+        if let Some(mut process) = self.process.take() {
+            process.kill();
+        }
+    }
+
     /// Starts it again on the same port.
     pub fn come_back(&mut self) {
         let mut command = Command::new(program("mosquitto"));
