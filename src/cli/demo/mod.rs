@@ -1,0 +1,2 @@
+//! `evenrow demo`.
+pub mod filler;
