@@ -5,7 +5,9 @@
 //! (that is `verdict`).
 
 mod record;
+mod wire;
 
 pub use record::{
     Acknowledgement, Delivery, Kind, NamedSource, Notice, Priority, Since, State, Way,
 };
+pub use wire::NoticeData;
