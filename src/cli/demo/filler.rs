@@ -277,11 +277,12 @@ fn mix(number: u64) -> u64 {
     z ^ (z >> 31)
 }
 
-/// A standard normal number (Box and Muller 1958).
+/// A standard normal number (Box and Muller 1958). With `libm`, so that every machine gives the same
+/// recording to the last digit.
 fn normal(random: &mut fastrand::Rng) -> f64 {
     // 1 - u lies in (0, 1], so the logarithm is finite.
-    let radius = (-2.0 * (1.0 - random.f64()).ln()).sqrt();
-    radius * (std::f64::consts::TAU * random.f64()).cos()
+    let radius = (-2.0 * libm::log(1.0 - random.f64())).sqrt();
+    radius * libm::cos(std::f64::consts::TAU * random.f64())
 }
 
 #[cfg(test)]
