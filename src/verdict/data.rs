@@ -148,7 +148,13 @@ impl Data {
     }
 
     fn cut_rows(&self, rows: &Rows, from: usize, least: usize) -> Option<Self> {
-        let enough = |&c: &usize| (from..rows.len()).filter(|&r| !rows.row(r)[c].is_nan()).take(least).count() == least;
+        let enough = |&c: &usize| {
+            (from..rows.len())
+                .filter(|&r| !rows.row(r)[c].is_nan())
+                .take(least)
+                .count()
+                == least
+        };
         let keep: Vec<usize> = (0..rows.columns).filter(enough).collect();
         if keep.len() < 2 || rows.len() - from < 2 {
             return None;
@@ -162,7 +168,13 @@ impl Data {
         })
     }
 
-    fn cut_series(&self, series: &[Vec<Entry>], span: usize, least: usize, need: Need) -> Option<Self> {
+    fn cut_series(
+        &self,
+        series: &[Vec<Entry>],
+        span: usize,
+        least: usize,
+        need: Need,
+    ) -> Option<Self> {
         // Two sources that fill the span make it worth a look; slower ones join with what they have.
         if need == Need::WholeSpan && series.iter().filter(|s| s.len() >= span).count() < 2 {
             return None;
@@ -173,7 +185,9 @@ impl Data {
     }
 
     fn keep_series(&self, series: &[Vec<Entry>], least: usize) -> Option<Self> {
-        let keep: Vec<usize> = (0..series.len()).filter(|&c| series[c].len() >= least).collect();
+        let keep: Vec<usize> = (0..series.len())
+            .filter(|&c| series[c].len() >= least)
+            .collect();
         (keep.len() >= 2).then(|| Self {
             sources: keep.iter().map(|&c| self.sources[c]).collect(),
             values: Values::Alone(keep.iter().map(|&c| series[c].clone()).collect()),
@@ -198,7 +212,13 @@ impl Data {
 }
 
 fn newest(windows: &Windows, source: SourceIx, most: usize) -> Vec<Entry> {
-    let mut values: Vec<Entry> = windows.ring(source).fresh().rev().take(most).copied().collect();
+    let mut values: Vec<Entry> = windows
+        .ring(source)
+        .fresh()
+        .rev()
+        .take(most)
+        .copied()
+        .collect();
     values.reverse();
     values
 }
@@ -208,7 +228,11 @@ fn rows(windows: &Windows, who: &[SourceIx], most: usize, closed_to: i64) -> Row
     let series: Vec<Vec<Entry>> = who
         .iter()
         .map(|&s| {
-            let closed = windows.ring(s).fresh().rev().skip_while(|e| e.place > closed_to);
+            let closed = windows
+                .ring(s)
+                .fresh()
+                .rev()
+                .skip_while(|e| e.place > closed_to);
             let mut values: Vec<Entry> = closed.take(most).copied().collect();
             values.reverse();
             values
@@ -241,5 +265,7 @@ fn rows(windows: &Windows, who: &[SourceIx], most: usize, closed_to: i64) -> Row
 /// The distinct entries of a sorted list that stand in it at least `least` times.
 fn often_enough(sorted: &[i64], least: usize) -> Vec<i64> {
     let runs = sorted.chunk_by(|a, b| a == b);
-    runs.filter(|run| run.len() >= least).map(|run| run[0]).collect()
+    runs.filter(|run| run.len() >= least)
+        .map(|run| run[0])
+        .collect()
 }

@@ -38,7 +38,9 @@ impl Means<'_> {
         let k = self.means.len();
         let pairs = (0..k).flat_map(|i| (i + 1..k).map(move |j| (i, j)));
         // Only pairs beyond the margin can matter, and most are not.
-        pairs.map(|(i, j)| self.p_beyond_margin(i, j)).fold(1.0, f64::min)
+        pairs
+            .map(|(i, j)| self.p_beyond_margin(i, j))
+            .fold(1.0, f64::min)
     }
 
     /// Which sources belong to the even set (`true`), at a family-wise error rate `alpha`.

@@ -55,7 +55,13 @@ pub struct Examination {
 }
 
 /// Looks at a bank over all its spans. `who` are the sources that take part, in display order.
-pub fn examine(bank: &Bank, windows: &Windows, who: &[Participant], at: Time, need: Need) -> Examination {
+pub fn examine(
+    bank: &Bank,
+    windows: &Windows,
+    who: &[Participant],
+    at: Time,
+    need: Need,
+) -> Examination {
     let order: Vec<SourceIx> = who.iter().map(|p| p.source).collect();
     let look = Looking {
         bank,
@@ -100,7 +106,9 @@ fn strongest(spans: &[Seen], aspect: Aspect) -> Option<(Call, Vec<f64>)> {
         Aspect::Level => s.level.clone(),
         Aspect::Spread => s.spread.clone(),
     };
-    let calls = spans.iter().filter_map(|s| of(s).map(|(p, call)| (p, call, s.margins.clone())));
+    let calls = spans
+        .iter()
+        .filter_map(|s| of(s).map(|(p, call)| (p, call, s.margins.clone())));
     let best = calls.min_by(|a, b| a.0.total_cmp(&b.0))?;
     Some((best.1, best.2))
 }
@@ -160,7 +168,11 @@ impl Looking<'_> {
 
     fn seen(&self, cut: &Data, span: usize, margins: Vec<f64>, level: Level) -> Seen {
         let factor = level.dependence.map_or(1.0, |d| d.variance_factor);
-        let within = if self.bank.pairing == Pairing::None { Within::Raw } else { Within::Residuals };
+        let within = if self.bank.pairing == Pairing::None {
+            Within::Raw
+        } else {
+            Within::Residuals
+        };
         let spread = Spread::judge(&level.within, within, self.bank.spread_margin, factor);
         let spread_call = spread.as_ref().filter(|s| s.calls(self.shares.spread));
         let level_named = level.calls(self.shares.level).then(|| named_level(&level));
@@ -173,9 +185,16 @@ impl Looking<'_> {
         let mut look = self.blank(span, finding, self.remark(cut, spread.as_ref()));
         look.sigma = level.sigma;
         look.dependence = level.dependence;
-        look.sources = self.sources(cut, &level, spread.as_ref(), level_named.as_deref(), spread_call.is_some());
+        look.sources = self.sources(
+            cut,
+            &level,
+            spread.as_ref(),
+            level_named.as_deref(),
+            spread_call.is_some(),
+        );
         look.tests.clone_from(&level.tests);
-        look.tests.extend(spread.iter().flat_map(|s| s.tests.clone()));
+        look.tests
+            .extend(spread.iter().flat_map(|s| s.tests.clone()));
         if self.bank.pairing != Pairing::None {
             look.tests.extend(raw_spread(cut));
         }
@@ -191,10 +210,14 @@ impl Looking<'_> {
     fn remark(&self, cut: &Data, spread: Option<&Spread>) -> String {
         if cut.sources.len() < self.who.len() {
             let missing = self.who.len() - cut.sources.len();
-            return format!("{missing} of {} sources have too few values for this span", self.who.len());
+            return format!(
+                "{missing} of {} sources have too few values for this span",
+                self.who.len()
+            );
         }
         if spread.is_none() && self.bank.pairing != Pairing::None && cut.sources.len() == 2 {
-            return "two sources that share cycles mirror each other: spread is not judged".to_owned();
+            return "two sources that share cycles mirror each other: spread is not judged"
+                .to_owned();
         }
         String::new()
     }
@@ -239,7 +262,10 @@ impl Looking<'_> {
             factor: known.map_or(1.0, |d| d.variance_factor),
             family: self.who.len(),
         };
-        let starts = call.named.iter().filter_map(|s| track::locate(data, *s, call.aspect, &yard));
+        let starts = call
+            .named
+            .iter()
+            .filter_map(|s| track::locate(data, *s, call.aspect, &yard));
         let Some(start) = starts.map(|l| l.start.place).min() else {
             return call;
         };
@@ -269,7 +295,9 @@ fn named_level(level: &Level) -> Vec<bool> {
     let mut named: Vec<bool> = level.even.iter().map(|e| !e).collect();
     if !named.contains(&true) {
         let farness = |i: usize| {
-            level.deviations[i].map_or(0.0, |d| d.value.abs() / (d.high - d.low).max(f64::MIN_POSITIVE))
+            level.deviations[i].map_or(0.0, |d| {
+                d.value.abs() / (d.high - d.low).max(f64::MIN_POSITIVE)
+            })
         };
         if let Some(worst) = (0..k).max_by(|&a, &b| farness(a).total_cmp(&farness(b))) {
             named[worst] = true;
@@ -288,12 +316,20 @@ fn call_of(cut: &Data, aspect: Aspect, named: &[bool], span: usize) -> Call {
         // Two sources: each is compared with the other.
         reference.clone_from(&cut.sources);
     }
-    Call { aspect, named: pick(true), reference, span }
+    Call {
+        aspect,
+        named: pick(true),
+        reference,
+        span,
+    }
 }
 
 /// The spread tests of the textbook on raw values, which common movement blinds.
 fn raw_spread(cut: &Data) -> Vec<super::look::TestEntry> {
     let columns = cut.columns();
     let raw = |t: super::look::TestEntry| super::look::TestEntry { raw: true, ..t };
-    super::spread::reported(&columns).into_iter().map(raw).collect()
+    super::spread::reported(&columns)
+        .into_iter()
+        .map(raw)
+        .collect()
 }

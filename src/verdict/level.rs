@@ -8,9 +8,9 @@
 use crate::stats::{self, Blocked, Degenerate, Df, Summary, Test, dist};
 
 use super::data::{Data, Values};
+use super::dependence;
 use super::even::{Means, NAMING_ALPHA};
 use super::look::{Dependence, Estimate, Method, TestEntry};
-use super::dependence;
 
 /// Intervals shown to people hold together for all sources with this probability.
 const SHOWN_ALPHA: f64 = 0.05;
@@ -42,7 +42,11 @@ impl Level {
     ///
     /// # Errors
     /// [`Degenerate`] when nothing can be said.
-    pub fn judge(data: &Data, margins: &[f64], known: Option<Dependence>) -> Result<Self, Degenerate> {
+    pub fn judge(
+        data: &Data,
+        margins: &[f64],
+        known: Option<Dependence>,
+    ) -> Result<Self, Degenerate> {
         match &data.values {
             Values::Paired(rows) => {
                 let blocked = stats::blocked_anova(&rows.blocks(0))?;
@@ -68,7 +72,12 @@ fn paired(data: &Data, blocked: Blocked, margins: &[f64], known: Option<Dependen
     let df = (blocked.residual_df / factor).max(1.0);
     let error = |i: usize, j: usize| ((variance * blocked.difference_variance(i, j)).sqrt(), df);
     let paid = dist::f::sf(blocked.test.statistic / factor, (k - 1) as f64, df);
-    let mut tests = vec![entry(Method::BlockedAnova, blocked.test, paid.ok(), Role::Decides)];
+    let mut tests = vec![entry(
+        Method::BlockedAnova,
+        blocked.test,
+        paid.ok(),
+        Role::Decides,
+    )];
     let columns = data.columns();
     tests.extend(classical(&columns, Form::Raw));
     let centre = grand_mean(&columns);
@@ -77,7 +86,9 @@ fn paired(data: &Data, blocked: Blocked, margins: &[f64], known: Option<Dependen
     let pairwise = |i: usize, j: usize| variance * blocked.difference_variance(i, j);
     Level {
         tests,
-        deviations: deviations(&means, &judged.even, |one, set| (contrast_variance(&pairwise, one, set), df)),
+        deviations: deviations(&means, &judged.even, |one, set| {
+            (contrast_variance(&pairwise, one, set), df)
+        }),
         sigma: blocked.ms_residual.sqrt(),
         even: judged.even,
         pair_p: judged.pair_p,
@@ -116,7 +127,9 @@ fn alone(data: &Data, margins: &[f64], known: Option<Dependence>) -> Result<Leve
     let variance = |i: usize| thinned[i].variance().unwrap_or(0.0) / thinned[i].n as f64;
     Ok(Level {
         tests,
-        deviations: deviations(&means, &judged.even, |one, set| welch_contrast(&thinned, &variance, one, set)),
+        deviations: deviations(&means, &judged.even, |one, set| {
+            welch_contrast(&thinned, &variance, one, set)
+        }),
         sigma: pooled_sd(&summaries),
         even: judged.even,
         pair_p,
@@ -136,14 +149,21 @@ struct Judged {
 impl Judged {
     fn new(means: &[f64], error: &dyn Fn(usize, usize) -> (f64, f64), margins: &[f64]) -> Self {
         let margin = |i: usize, j: usize| margins[i].max(margins[j]);
-        let all = Means { means, error, margin: &margin };
+        let all = Means {
+            means,
+            error,
+            margin: &margin,
+        };
         let k = means.len();
-        let beyond = |i: usize, j: usize| ((means[i] - means[j]).abs() - margin(i, j)).max(0.0) / error(i, j).0;
+        let beyond = |i: usize, j: usize| {
+            ((means[i] - means[j]).abs() - margin(i, j)).max(0.0) / error(i, j).0
+        };
         let pairs = (0..k).flat_map(|i| (i + 1..k).map(move |j| (i, j)));
         Self {
             even: all.even_set(NAMING_ALPHA),
             pair_p: all.smallest_p(),
-            largest: std::f64::consts::SQRT_2 * pairs.map(|(i, j)| beyond(i, j)).fold(0.0, f64::max),
+            largest: std::f64::consts::SQRT_2
+                * pairs.map(|(i, j)| beyond(i, j)).fold(0.0, f64::max),
         }
     }
 }
@@ -189,7 +209,10 @@ fn classical(columns: &[Vec<f64>], form: Form) -> Vec<TestEntry> {
     ];
     let entries = found.into_iter().filter_map(|(method, test)| {
         let entry = entry(method, test.ok()?, None, Role::Beside);
-        Some(TestEntry { raw: form == Form::Raw, ..entry })
+        Some(TestEntry {
+            raw: form == Form::Raw,
+            ..entry
+        })
     });
     entries.collect()
 }
@@ -210,7 +233,11 @@ fn beyond_margin(judged: &Judged) -> TestEntry {
 fn thin(s: &Summary, factor: f64) -> Summary {
     let n = ((s.n as f64 / factor) as usize).clamp(2, s.n.max(2));
     let variance = s.variance().unwrap_or(0.0);
-    Summary { n, mean: s.mean, ss: variance * (n - 1) as f64 }
+    Summary {
+        n,
+        mean: s.mean,
+        ss: variance * (n - 1) as f64,
+    }
 }
 
 fn grand_mean(columns: &[Vec<f64>]) -> f64 {
@@ -237,13 +264,30 @@ fn contrast_variance(difference: &impl Fn(usize, usize) -> f64, one: usize, set:
 }
 
 /// Variance of (one - mean of set) of independent means, and its Welch–Satterthwaite df.
-fn welch_contrast(summaries: &[Summary], variance: &impl Fn(usize) -> f64, one: usize, set: &[usize]) -> (f64, f64) {
+fn welch_contrast(
+    summaries: &[Summary],
+    variance: &impl Fn(usize) -> f64,
+    one: usize,
+    set: &[usize],
+) -> (f64, f64) {
     let share = 1.0 / (set.len() as f64 * set.len() as f64);
     let parts = std::iter::once((one, variance(one)));
-    let parts: Vec<(usize, f64)> = parts.chain(set.iter().map(|&j| (j, variance(j) * share))).collect();
+    let parts: Vec<(usize, f64)> = parts
+        .chain(set.iter().map(|&j| (j, variance(j) * share)))
+        .collect();
     let total: f64 = parts.iter().map(|(_, v)| v).sum();
-    let spent: f64 = parts.iter().map(|(i, v)| v * v / (summaries[*i].n - 1) as f64).sum();
-    (total, if spent > 0.0 { total * total / spent } else { 1.0 })
+    let spent: f64 = parts
+        .iter()
+        .map(|(i, v)| v * v / (summaries[*i].n - 1) as f64)
+        .sum();
+    (
+        total,
+        if spent > 0.0 {
+            total * total / spent
+        } else {
+            1.0
+        },
+    )
 }
 
 /// Everybody's deviation from the even set without themselves, with Bonferroni's simultaneous
@@ -262,7 +306,11 @@ fn deviations(
         let value = means[one] - reference;
         let half = t * variance.sqrt();
         let finite = value.is_finite() && half.is_finite();
-        finite.then_some(Estimate { value, low: value - half, high: value + half })
+        finite.then_some(Estimate {
+            value,
+            low: value - half,
+            high: value + half,
+        })
     };
     (0..k).map(deviation).collect()
 }

@@ -41,7 +41,12 @@ pub enum Within {
 impl Spread {
     /// Judges columns of residuals or values. `None` where there is too little, or (two paired
     /// sources) the residuals mirror each other and say nothing.
-    pub fn judge(columns: &[Vec<f64>], within: Within, spread_margin: f64, factor: f64) -> Option<Self> {
+    pub fn judge(
+        columns: &[Vec<f64>],
+        within: Within,
+        spread_margin: f64,
+        factor: f64,
+    ) -> Option<Self> {
         let k = columns.len();
         if k < 2 || (within == Within::Residuals && k < 3) || columns.iter().any(|c| c.len() < 2) {
             return None;
@@ -55,9 +60,21 @@ impl Spread {
         let flat_sds = own_sds(&flat, within);
         let even = even_in_spread(&flat);
         let ratios = ratios(&flat, &flat_sds, &even);
-        let beyond = |r: &Option<Estimate>| r.is_some_and(|r| r.value > spread_margin || r.value < 1.0 / spread_margin);
-        let named = even.iter().zip(&ratios).map(|(e, r)| !e && beyond(r)).collect();
-        Some(Self { tests, sds, ratios, named, p })
+        let beyond = |r: &Option<Estimate>| {
+            r.is_some_and(|r| r.value > spread_margin || r.value < 1.0 / spread_margin)
+        };
+        let named = even
+            .iter()
+            .zip(&ratios)
+            .map(|(e, r)| !e && beyond(r))
+            .collect();
+        Some(Self {
+            tests,
+            sds,
+            ratios,
+            named,
+            p,
+        })
     }
 
     /// Whether spread is called at a look's share `alpha` of the budget.
@@ -73,7 +90,9 @@ pub fn reported(columns: &[Vec<f64>]) -> Vec<TestEntry> {
         (Method::BrownForsythe, stats::brown_forsythe(&groups)),
         (Method::Bartlett, stats::bartlett(&groups)),
     ];
-    let entries = found.into_iter().filter_map(|(m, t)| Some(entry(m, t.ok()?, None, Role::Beside)));
+    let entries = found
+        .into_iter()
+        .filter_map(|(m, t)| Some(entry(m, t.ok()?, None, Role::Beside)));
     entries.collect()
 }
 
@@ -88,7 +107,12 @@ fn step_free(flat: &[Vec<f64>], factor: f64) -> Option<TestEntry> {
     let df = ((left - k) / factor).max(1.0);
     let shrink = (left.max(1.0) / values as f64) / factor;
     let paid = dist::f::sf(test.statistic * shrink, k - 1.0, df).ok()?;
-    Some(entry(Method::BrownForsytheStepFree, test, Some(paid), Role::Decides))
+    Some(entry(
+        Method::BrownForsytheStepFree,
+        test,
+        Some(paid),
+        Role::Decides,
+    ))
 }
 
 /// Values per source that the search for a step costs; found by simulation (see `spread_tests.rs`):
@@ -103,7 +127,12 @@ fn even_in_spread(flat: &[Vec<f64>]) -> Vec<bool> {
     let means: Vec<f64> = deviations.iter().map(|s| s.mean).collect();
     let error = |i: usize, j: usize| welch_error(&deviations[i], &deviations[j]);
     let margin = |_: usize, _: usize| 0.0;
-    Means { means: &means, error: &error, margin: &margin }.even_set(NAMING_ALPHA)
+    Means {
+        means: &means,
+        error: &error,
+        margin: &margin,
+    }
+    .even_set(NAMING_ALPHA)
 }
 
 /// Welch's standard error of a difference and its degrees of freedom.
@@ -112,7 +141,14 @@ fn welch_error(a: &Summary, b: &Summary) -> (f64, f64) {
     let (va, vb) = (part(a), part(b));
     let spent = va * va / (a.n - 1).max(1) as f64 + vb * vb / (b.n - 1).max(1) as f64;
     let total = va + vb;
-    (total.sqrt(), if spent > 0.0 { total * total / spent } else { 1.0 })
+    (
+        total.sqrt(),
+        if spent > 0.0 {
+            total * total / spent
+        } else {
+            1.0
+        },
+    )
 }
 
 /// Each source's own standard deviation. A residual within the cycle carries a share of everybody's
@@ -145,7 +181,11 @@ fn ratios(columns: &[Vec<f64>], sds: &[f64], even: &[bool]) -> Vec<Option<Estima
         }
         let se = (spread * (1.0 / columns[i].len() as f64 + 1.0 / values as f64)).sqrt();
         let reach = (z * se).exp();
-        Some(Estimate { value, low: value / reach, high: value * reach })
+        Some(Estimate {
+            value,
+            low: value / reach,
+            high: value * reach,
+        })
     };
     (0..k).map(ratio).collect()
 }
@@ -159,5 +199,9 @@ fn pooled_kurtosis(columns: &[Vec<f64>]) -> f64 {
         (m2 > 0.0).then(|| m4 / (m2 * m2))
     });
     let (n, sum) = each.fold((0.0, 0.0), |(n, sum), x| (n + 1.0, sum + x));
-    if n > 0.0 { (sum / n).max(NORMAL) } else { NORMAL }
+    if n > 0.0 {
+        (sum / n).max(NORMAL)
+    } else {
+        NORMAL
+    }
 }

@@ -12,7 +12,9 @@ use super::look::Estimate;
 use super::steps::without_step;
 
 /// In which respect a source is apart.
-#[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord, serde::Serialize, serde::Deserialize)]
+#[derive(
+    Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord, serde::Serialize, serde::Deserialize,
+)]
 pub enum Aspect {
     /// Its mean.
     Level,
@@ -87,7 +89,13 @@ pub fn locate(data: &Data, source: SourceIx, aspect: Aspect, yard: &Yardstick) -
 }
 
 /// The size of a known incident on the values since its start.
-pub fn size_since(data: &Data, source: SourceIx, aspect: Aspect, yard: &Yardstick, from: i64) -> Option<Estimate> {
+pub fn size_since(
+    data: &Data,
+    source: SourceIx,
+    aspect: Aspect,
+    yard: &Yardstick,
+    from: i64,
+) -> Option<Estimate> {
     let series = Series::of(data, source, yard.reference)?;
     let first = series.moments.partition_point(|m| m.place < from);
     series.size(first, aspect, yard)
@@ -95,7 +103,13 @@ pub fn size_since(data: &Data, source: SourceIx, aspect: Aspect, yard: &Yardstic
 
 /// Evidence that a source is even again, from values after the place `from` alone: where the newest
 /// stretch that proves it begins. Two-sided and never from silence.
-pub fn returned(data: &Data, source: SourceIx, aspect: Aspect, yard: &Yardstick, from: i64) -> Option<Moment> {
+pub fn returned(
+    data: &Data,
+    source: SourceIx,
+    aspect: Aspect,
+    yard: &Yardstick,
+    from: i64,
+) -> Option<Moment> {
     let series = Series::of(data, source, yard.reference)?;
     let first = series.moments.partition_point(|m| m.place <= from);
     let sigma = series.sigma();
@@ -142,7 +156,11 @@ impl Bar {
         };
         let errors = standard_errors(half_width / per_value.sqrt());
         let shortest = errors * errors * per_value * yard.factor / (half_width * half_width);
-        Self { half_width, errors, shortest: shortest.max(FEWEST as f64) }
+        Self {
+            half_width,
+            errors,
+            shortest: shortest.max(FEWEST as f64),
+        }
     }
 
     fn is_cleared(&self, series: &Series, start: usize, aspect: Aspect, yard: &Yardstick) -> bool {
@@ -158,7 +176,11 @@ impl Bar {
 fn standard_errors(half_width_sd: f64) -> f64 {
     const KNOTS: [(f64, f64); 3] = [(0.25, 3.17), (0.5, 3.40), (1.0, 3.56)];
     let x = half_width_sd.clamp(KNOTS[0].0, KNOTS[2].0);
-    let (a, b) = if x < KNOTS[1].0 { (KNOTS[0], KNOTS[1]) } else { (KNOTS[1], KNOTS[2]) };
+    let (a, b) = if x < KNOTS[1].0 {
+        (KNOTS[0], KNOTS[1])
+    } else {
+        (KNOTS[1], KNOTS[2])
+    };
     a.1 + (b.1 - a.1) * (x / a.0).ln() / (b.0 / a.0).ln()
 }
 
@@ -186,7 +208,10 @@ impl Series {
             Values::Paired(rows) => {
                 let each = (0..rows.len()).filter_map(|r| {
                     let row = rows.row(r);
-                    let moment = Moment { place: rows.place(r), taken: rows.taken(r) };
+                    let moment = Moment {
+                        place: rows.place(r),
+                        taken: rows.taken(r),
+                    };
                     let mean = mean_of_present(&others, row)?;
                     (!row[column].is_nan()).then(|| (moment, row[column] - mean))
                 });
@@ -196,7 +221,10 @@ impl Series {
                 let mean = |c: &usize| stats::summarize(&offsets(&all[*c])).mean;
                 let centre = others.iter().map(mean).sum::<f64>() / others.len() as f64;
                 let each = all[column].iter().map(|e| {
-                    let moment = Moment { place: e.place, taken: e.taken };
+                    let moment = Moment {
+                        place: e.place,
+                        taken: e.taken,
+                    };
                     (moment, e.offset - centre)
                 });
                 Self::from_pairs(each, 0.0)
@@ -211,7 +239,12 @@ impl Series {
 
     fn from_pairs(pairs: impl Iterator<Item = (Moment, f64)>, reference_share: f64) -> Self {
         let (moments, values) = pairs.unzip();
-        Self { moments, values, reference_variance: 0.0, reference_share }
+        Self {
+            moments,
+            values,
+            reference_variance: 0.0,
+            reference_share,
+        }
     }
 
     /// Standard deviation of the contrast, a step taken out.
@@ -247,7 +280,11 @@ impl Series {
         let (low, high) = (value - t * se, value + t * se);
         Some(match aspect {
             Aspect::Level => Estimate { value, low, high },
-            Aspect::Spread => Estimate { value: value.exp(), low: low.exp(), high: high.exp() },
+            Aspect::Spread => Estimate {
+                value: value.exp(),
+                low: low.exp(),
+                high: high.exp(),
+            },
         })
     }
 }
@@ -293,7 +330,9 @@ fn level_statistics(series: &Series, yard: &Yardstick) -> Vec<f64> {
     let variance = series.sigma().powi(2) * yard.factor;
     let one_sided = |sign: f64| -> Vec<f64> {
         let beyond = |v: &f64| sign * v - yard.margin / 2.0;
-        backwards(&series.values, beyond, |n, sum| sum.max(0.0).powi(2) / n / variance)
+        backwards(&series.values, beyond, |n, sum| {
+            sum.max(0.0).powi(2) / n / variance
+        })
     };
     let (up, down) = (one_sided(1.0), one_sided(-1.0));
     let top = |s: &[f64]| s.iter().copied().fold(0.0, f64::max);
@@ -310,14 +349,26 @@ fn spread_statistics(series: &Series, yard: &Yardstick) -> Vec<f64> {
     let ratio = |n: f64, sum: f64| sum / n;
     let cost = |r: f64| if r > 0.0 { r - 1.0 - r.ln() } else { 0.0 };
     let one_sided = |more: bool| {
-        backwards(&flat, |v| v * v / base, |n, sum| {
-            let r = ratio(n, sum);
-            if (r > 1.0) == more { n * cost(r) / yard.factor } else { 0.0 }
-        })
+        backwards(
+            &flat,
+            |v| v * v / base,
+            |n, sum| {
+                let r = ratio(n, sum);
+                if (r > 1.0) == more {
+                    n * cost(r) / yard.factor
+                } else {
+                    0.0
+                }
+            },
+        )
     };
     let (erratic, quiet) = (one_sided(true), one_sided(false));
     let top = |s: &[f64]| s.iter().copied().fold(0.0, f64::max);
-    if top(&erratic) >= top(&quiet) { erratic } else { quiet }
+    if top(&erratic) >= top(&quiet) {
+        erratic
+    } else {
+        quiet
+    }
 }
 
 /// For every start, a function of the number of values from it on and their sum; the last
