@@ -13,9 +13,11 @@
 //! number stays decimal text until [`crate::model::Value`] takes it. Deliberately absent: judging
 //! a measurement against the clock, the bank's sources or earlier values: the engine does that.
 
-//pub mod arrival;
-//pub mod mqtt;
+pub mod arrival;
+#[cfg(test)]
+mod fixture;
+pub mod mqtt;
 pub mod names;
 pub mod payload;
 pub mod recording;
-//pub mod topics;
+pub mod topics;

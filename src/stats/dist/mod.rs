@@ -24,9 +24,11 @@ pub mod chi_square;
 pub mod f;
 mod kernel;
 pub mod normal;
+mod outer;
 mod root;
 pub mod studentized_range;
 pub mod t;
+mod tail_table;
 
 use std::fmt;
 
