@@ -1,19 +1,19 @@
 //! One bank: its windows, its sources and its incidents, and what a measurement or a look does to them.
 
-use std::cmp::Ordering;
 use std::collections::BTreeMap;
 use std::sync::Arc;
 
 use serde::{Deserialize, Serialize};
 
 use crate::model::{Bank, Measurement, Name, Reason, SourceIx, Sources, Time};
-use crate::notice::{Kind, Notice};
-use crate::verdict::{Aspect, Call, Examination, Look, Need, Participant, examine};
+use crate::notice::Kind;
+use crate::verdict::{Examination, Look, Need, Participant, examine};
 use crate::window::{Accepted, Arriving, Windows};
 
-use super::incident::{Incident, Surroundings};
+use super::incident::Incident;
+use super::natural::natural;
 use super::source::{Source, usual_interval_us};
-use super::{Plant, RefusalView, WindowValue, WindowView};
+use super::{RefusalView, WindowValue, WindowView};
 
 /// A clock may run ahead by this much; a value from further in the future is refused.
 const AHEAD_US: i64 = 300_000_000;
@@ -21,9 +21,6 @@ const AHEAD_US: i64 = 300_000_000;
 /// A bank that finds its sources itself counts cycles as complete only after this many without a new
 /// source; until then they close when they are overtaken.
 const SETTLED_AFTER: u64 = 5;
-
-/// A look is kept whole at least this often.
-const KEEP_LOOK_EVERY_US: i64 = 3_600_000_000;
 
 /// What is kept of a bank over a restart.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
@@ -61,21 +58,6 @@ pub struct Watched {
     pub unsaved: bool,
     pub next_silence_check: Option<Time>,
     pub last_checkpoint: Option<Time>,
-}
-
-/// What a look at a bank brought.
-pub struct Looked {
-    pub looks: Vec<Arc<Look>>,
-    /// Incidents whose notice changed, by their place; the flag says it has just been raised.
-    pub changed: Vec<(Arc<Notice>, Freshness)>,
-    pub keep_whole: bool,
-}
-
-/// Whether a notice has just been raised.
-#[derive(Clone, Copy, Debug, PartialEq, Eq)]
-pub enum Freshness {
-    Raised,
-    Changed,
 }
 
 impl Watched {
@@ -296,147 +278,6 @@ impl Watched {
         examine(&self.bank, &self.state.windows, &who, now, need)
     }
 
-    /// A look that is due: examines, follows the open incidents, begins new ones.
-    pub fn look(&mut self, plant: &Plant, now: Time) -> Looked {
-        self.state.look_due = None;
-        self.state.last_look = Some(now);
-        let exam = self.examine(now, Need::WholeSpan);
-        let interval_us = self.interval_us();
-        // What an open incident is about is not called anew, also when this look ends it: the
-        // examination still holds the values of before.
-        let open: Vec<Aspect> = self
-            .state
-            .incidents
-            .iter()
-            .filter(|i| i.is_active())
-            .map(|i| i.aspect)
-            .collect();
-        let about: Vec<SourceIx> = self
-            .state
-            .incidents
-            .iter()
-            .flat_map(Incident::about)
-            .collect();
-        let mut changed = self.follow(plant, &exam, now, interval_us);
-        let mut calls = exam.calls.clone();
-        calls.retain(|c| !open.contains(&c.aspect));
-        for call in &mut calls {
-            call.named.retain(|s| !about.contains(s));
-        }
-        changed.extend(self.begin(plant, calls, &exam, now, interval_us));
-        let looks: Vec<Arc<Look>> = exam.looks.into_iter().map(Arc::new).collect();
-        self.state.looks.clone_from(&looks);
-        self.state.incidents.retain(|i| i.notice.state.is_open());
-        let keep_whole = self.keep_whole(&looks, now, !changed.is_empty());
-        Looked {
-            looks,
-            changed,
-            keep_whole,
-        }
-    }
-
-    fn keep_whole(&mut self, looks: &[Arc<Look>], now: Time, notice_changed: bool) -> bool {
-        let last = self.state.last_kept_look;
-        let hourly = last.is_none_or(|at| now.us_since(at) >= KEEP_LOOK_EVERY_US);
-        let apart = looks.iter().any(|l| {
-            matches!(
-                l.finding,
-                crate::verdict::Finding::LevelApart | crate::verdict::Finding::SpreadApart
-            )
-        });
-        let keep = hourly || apart || notice_changed;
-        if keep {
-            self.state.last_kept_look = Some(now);
-        }
-        keep
-    }
-
-    fn follow(
-        &mut self,
-        plant: &Plant,
-        exam: &Examination,
-        now: Time,
-        interval_us: Option<i64>,
-    ) -> Vec<(Arc<Notice>, Freshness)> {
-        let mut incidents = std::mem::take(&mut self.state.incidents);
-        let mut changed = Vec::new();
-        for incident in incidents.iter_mut().filter(|i| i.is_active()) {
-            let before = incident.notice.clone();
-            let name = |s: SourceIx| self.name(s);
-            let about = surroundings(
-                plant,
-                &self.bank,
-                &self.state.windows,
-                exam,
-                &name,
-                now,
-                interval_us,
-            );
-            let sigma = about.sigma();
-            let back = incident.follow(&about);
-            if incident.notice != before {
-                changed.push((incident.notice.clone(), Freshness::Changed));
-            }
-            for (source, from) in back {
-                self.state.windows.start_fresh(source, from);
-                let cleared = crate::verdict::cleared_margin(self.bank.margin, sigma);
-                let known = &mut self.state.sources[source.index()].cleared_margin;
-                *known = known.max(cleared);
-            }
-        }
-        self.state.incidents = incidents;
-        changed
-    }
-
-    /// New incidents, each about sources that no open one is about: one source and cause, one notice.
-    fn begin(
-        &mut self,
-        plant: &Plant,
-        calls: Vec<Call>,
-        exam: &Examination,
-        now: Time,
-        interval_us: Option<i64>,
-    ) -> Vec<(Arc<Notice>, Freshness)> {
-        let mut changed = Vec::new();
-        for mut call in calls {
-            call.named
-                .retain(|s| !self.state.incidents.iter().any(|i| i.is_about(*s)));
-            let id = self.notice_id(plant, now);
-            let name = |s: SourceIx| self.name(s);
-            let about = surroundings(
-                plant,
-                &self.bank,
-                &self.state.windows,
-                exam,
-                &name,
-                now,
-                interval_us,
-            );
-            let Some(incident) = Incident::begin(&call, id, &about) else {
-                continue;
-            };
-            self.state.notices += 1;
-            *self.raised.entry(incident.notice.kind).or_insert(0) += 1;
-            changed.push((incident.notice.clone(), Freshness::Raised));
-            self.state.incidents.push(incident);
-        }
-        changed
-    }
-
-    /// Bank, year in the plant's zone, running number.
-    fn notice_id(&self, plant: &Plant, now: Time) -> Name {
-        let year = now.to_jiff().map_or(0, |t| {
-            i64::from(t.to_zoned_datetime(plant.zone.clone()).year())
-        });
-        let word: String = self
-            .bank
-            .name
-            .chars()
-            .map(|c| if c.is_alphanumeric() { c } else { '-' })
-            .collect();
-        format!("{word}-{year}-{:04}", self.state.notices + 1).into()
-    }
-
     /// The usual time between values of a source: the median over the sources.
     pub fn interval_us(&self) -> Option<i64> {
         let mut all: Vec<i64> = self
@@ -467,78 +308,8 @@ impl Watched {
     }
 }
 
-fn surroundings<'a>(
-    plant: &'a Plant,
-    bank: &'a Bank,
-    windows: &'a Windows,
-    exam: &'a Examination,
-    name: &'a dyn Fn(SourceIx) -> Name,
-    now: Time,
-    interval_us: Option<i64>,
-) -> Surroundings<'a> {
-    Surroundings {
-        plant,
-        bank,
-        windows,
-        exam,
-        name,
-        now,
-        interval_us,
-    }
-}
-
 fn names(sources: &[Source]) -> BTreeMap<Name, SourceIx> {
     let each = sources.iter().enumerate();
     each.map(|(s, source)| (source.name.clone(), SourceIx(s as u16)))
         .collect()
-}
-
-/// Orders names by the whole numbers in them, so that head 2 stands before head 10.
-pub fn natural(a: &str, b: &str) -> Ordering {
-    let mut a_rest = a;
-    let mut b_rest = b;
-    while !a_rest.is_empty() && !b_rest.is_empty() {
-        let (a_part, a_next) = part(a_rest);
-        let (b_part, b_next) = part(b_rest);
-        let order = match (number(a_part), number(b_part)) {
-            (Some(x), Some(y)) => x.cmp(&y),
-            _ => a_part.cmp(b_part),
-        };
-        if order != Ordering::Equal {
-            return order;
-        }
-        (a_rest, b_rest) = (a_next, b_next);
-    }
-    a.len().cmp(&b.len()).then_with(|| a.cmp(b))
-}
-
-fn part(text: &str) -> (&str, &str) {
-    let digit = text.starts_with(|c: char| c.is_ascii_digit());
-    let end = text
-        .find(|c: char| c.is_ascii_digit() != digit)
-        .unwrap_or(text.len());
-    text.split_at(end)
-}
-
-fn number(text: &str) -> Option<u128> {
-    text.parse().ok()
-}
-
-#[cfg(test)]
-mod tests {
-    use super::natural;
-
-    #[test]
-    fn names_stand_in_the_order_of_their_numbers() {
-        let mut names = vec![
-            "head 10", "head 2", "head 1", "b", "a12", "a3", "007", "7", "08",
-        ];
-        names.sort_by(|a, b| natural(a, b));
-        assert_eq!(
-            names,
-            [
-                "7", "007", "08", "a3", "a12", "b", "head 1", "head 2", "head 10"
-            ]
-        );
-    }
 }

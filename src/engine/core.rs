@@ -6,7 +6,8 @@ use crate::model::{Bank, BankIx, Measurement, Name, Refusal, Time};
 use crate::notice::{Acknowledgement, Delivery, Notice, Way};
 use crate::verdict::{Finding, Look, Need};
 
-use super::bank::{Freshness, State, Watched};
+use super::bank::{State, Watched};
+use super::look::Freshness;
 use super::view;
 use super::{
     Command, Condition, Due, Effect, Event, Outcome, Part, Plant, Record, RefusalView, Snapshot,

@@ -9,6 +9,8 @@ mod core;
 mod event;
 mod history;
 mod incident;
+mod look;
+mod natural;
 mod snapshot;
 mod source;
 mod view;
