@@ -86,6 +86,7 @@ pub(super) fn look(bank: &str, at: Time, span: usize) -> Arc<Look> {
             statistic: 2.0558,
             df: vec![9.0, 36.5],
             p: 0.0599,
+            p_paid: 0.0599,
             decides: true,
         }],
         dependence: None,
