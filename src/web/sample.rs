@@ -106,6 +106,7 @@ pub fn view(bank: Bank, story: Story, seed: u64) -> BankView {
         panic!("sample banks list their sources");
     };
     let names = names.clone();
+    let target = bank.characteristic.target.map_or(0.0, Value::to_f64);
     let values = match story {
         Story::Young(values) => values,
         _ => 640,
@@ -143,7 +144,7 @@ pub fn view(bank: Bank, story: Story, seed: u64) -> BankView {
                 _ => SourceState::Present,
             },
             values,
-            last_value: (values > 0).then(|| 503.0 + (at as f64 * 1.7).sin()),
+            last_value: (values > 0).then(|| target + bank.margin * (at as f64 * 1.7).sin()),
             last_taken: (values > 0)
                 .then(|| now().plus_us(if is_silent { -340 } else { -1 } * US_PER_S)),
             last_received: (values > 0)
@@ -177,7 +178,7 @@ pub fn view(bank: Bank, story: Story, seed: u64) -> BankView {
         interval_us: (values > 0).then_some(720_000),
         next_look: (values > 0).then(|| now().plus_us(18 * US_PER_S)),
         newest_taken: (values > 0).then(|| now().plus_us(-US_PER_S)),
-        mean: longest.is_some().then_some(503.027),
+        mean: longest.is_some().then_some(target + 0.027 * bank.margin),
         looks,
         bank: Arc::new(bank),
     }
@@ -240,7 +241,7 @@ pub fn look(bank: &Bank, names: &[Name], story: Story, span: usize, at: Time, se
             source: SourceIx(u16::try_from(i).expect("small")),
             name: name.clone(),
             n: span,
-            mean: 503.0 + deviation,
+            mean: bank.characteristic.target.map_or(0.0, Value::to_f64) + deviation,
             sd: scale * 1.5 * ratio,
             deviation: Some(Estimate {
                 value: deviation,
@@ -336,18 +337,23 @@ fn notice(bank: &Bank, names: &[Name], story: Story, looks: &[Arc<Look>]) -> Opt
     let name = names.get(at)?;
     let since = now().plus_us(-minutes * 60 * US_PER_S);
     let unit = bank.characteristic.unit.clone();
+    let (word, than, todo) = if figure < 0.0 {
+        ("low", "less", "Raise")
+    } else {
+        ("high", "more", "Lower")
+    };
     let (subject, text, advice) = if kind == Kind::LevelApart {
         (
-            format!("{}: {name} low by {:.2} {unit}", bank.name, figure.abs()),
+            format!("{}: {name} {word} by {:.2} {unit}", bank.name, figure.abs()),
             format!(
-                "Source {name} of {} gives {:.2} {unit} less than the other sources. The margin is {} {unit}. \
+                "Source {name} of {} gives {:.2} {unit} {than} than the other sources. The margin is {} {unit}. \
                  The bank’s mean is 503.03 {unit}, target 503.0 {unit}, declared 500.0 {unit}.",
                 bank.name,
                 figure.abs(),
                 bank.margin
             ),
             format!(
-                "Raise {name} by about {:.2} {unit}, then watch whether it comes back.",
+                "{todo} {name} by about {:.2} {unit}, then watch whether it comes back.",
                 figure.abs()
             ),
         )
@@ -361,7 +367,7 @@ fn notice(bank: &Bank, names: &[Name], story: Story, looks: &[Arc<Look>]) -> Opt
         )
     };
     Some(Notice {
-        id: format!("{}-2026-0007", bank.name).into(),
+        id: format!("{}-2026-0007", bank.name.replace(' ', "-")).into(),
         plant: "Quayside".into(),
         bank: bank.name.clone(),
         kind,

@@ -8,7 +8,7 @@ use crate::engine::BankView;
 use crate::notice::Kind;
 use crate::verdict::{Estimate, Finding, Look, Method, TestEntry};
 use crate::web::format::{self, Digits};
-use crate::web::pictures::{deviations, spread};
+use crate::web::pictures::{deviations, row, spread};
 use crate::web::signin::percent;
 
 use super::frame::Scene;
@@ -67,10 +67,10 @@ pub fn level_picture(view: &BankView, look: &Look) -> Markup {
             @match deviations::draw(&view.bank, look) {
                 Some(picture) => {
                     div class="frame" { (picture) }
+                    (row::key((view.bank.margin > 0.0).then(|| format!("the margin, {} {unit} wide", view.bank.margin))))
                     p class="caption" { "Deviation from the mean of the even set without the source itself, in " (unit)
-                        "; lines are simultaneous 95 % intervals. The band is as wide as the margin and holds as \
-                          many sources as it can: whoever stands outside is more than the margin from somebody inside. \
-                          A diamond is a named source." }
+                        ". The band holds as many sources as it can: whoever stands outside is more than the margin \
+                          from somebody inside." }
                     (level_table(view, look))
                 }
                 None => (nothing(look)),
@@ -123,8 +123,8 @@ pub fn spread_picture(view: &BankView, look: &Look) -> Markup {
             @match spread::draw(&view.bank, look) {
                 Some(picture) => {
                     div class="frame" { (picture) }
-                    p class="caption" { "Standard deviation as a ratio to that of the others; lines are simultaneous \
-                        95 % intervals, the band is the spread margin. 2× scatters twice as much." }
+                    (row::key(Some(format!("the spread margin, a factor of {}", view.bank.spread_margin))))
+                    p class="caption" { "Standard deviation as a ratio to that of the others: 2× scatters twice as much." }
                     (spread_table(view, look))
                 }
                 None => (nothing(look)),
@@ -189,7 +189,7 @@ fn one(view: &BankView, look: &Look) -> Markup {
                         th scope="col" class="n" { "df" } th scope="col" class="n" { "p" }
                         th scope="col" class="n" { "alpha" } th scope="col" { "Role" }
                     } }
-                    tbody { @for test in &look.tests { (row(view, look, test)) } }
+                    tbody { @for test in &look.tests { (test_row(view, look, test)) } }
                 }
             }
             p class="facts" {
@@ -204,7 +204,7 @@ fn one(view: &BankView, look: &Look) -> Markup {
     }
 }
 
-fn row(view: &BankView, look: &Look, test: &TestEntry) -> Markup {
+fn test_row(view: &BankView, look: &Look, test: &TestEntry) -> Markup {
     let alpha = match test.method {
         _ if !test.decides => None,
         Method::BrownForsytheStepFree => Some(look.alpha_spread),

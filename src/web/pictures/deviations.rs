@@ -48,7 +48,8 @@ pub fn draw(bank: &Bank, look: &Look) -> Option<Markup> {
             .map(|t| (*t, format::signed(*t, places)))
             .collect(),
         even_at: 0.0,
-        band: band.map(|(low, high)| (low, high, format!("margin {} {unit}", bank.margin))),
+        band,
+        unit,
     };
     Some(row.draw())
 }
@@ -129,5 +130,6 @@ fn range(
     let low = ends.iter().copied().fold(0.0, f64::min);
     let high = ends.iter().copied().fold(0.0, f64::max);
     let room = if high > low { (high - low) * 0.06 } else { 1.0 };
-    Some((low - room, high + room))
+    // A named source at an end has its name written beyond it.
+    Some((low - room * 2.2, high + room * 1.5))
 }

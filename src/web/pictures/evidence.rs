@@ -54,7 +54,7 @@ impl Evidence<'_> {
                 @if let Some(alpha) = alpha.filter(|a| *a > 0.0) {
                     @let at = y(alpha);
                     line class="alpha" x1="0" x2="100%" y1=(px(at)) y2=(px(at)) {}
-                    text class="margin-label" x="100%" dx="-6" y=(px(at - 6.0)) text-anchor="end" {
+                    text class="margin-label" x="0" dx="6" y=(px(at - 6.0)) {
                         "alpha: a call needs p beyond this line"
                     }
                 }

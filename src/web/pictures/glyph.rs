@@ -51,7 +51,7 @@ impl Glyph {
 /// The shape as a picture that readers of text skip.
 pub fn draw(glyph: Glyph) -> Markup {
     html! {
-        svg class="glyph" viewBox="0 0 24 24" aria-hidden="true" focusable="false" {
+        svg class="glyph" viewBox="2 2 20 20" aria-hidden="true" focusable="false" {
             path d=(glyph.bars()) {}
             @if let Some(odd) = glyph.odd() { path class="odd" d=(odd) {} }
         }

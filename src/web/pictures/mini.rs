@@ -28,7 +28,7 @@ pub fn draw(view: &BankView) -> Markup {
     let count = view.sources.len().max(1) as f64;
     let middle = px(HEIGHT / 2.0);
     html! {
-        svg class="mini" width="100%" height=(px(HEIGHT)) aria-hidden="true" focusable="false" {
+        svg class={ "mini " (super::row::density(view.sources.len())) } width="100%" height=(px(HEIGHT)) aria-hidden="true" focusable="false" {
             line class="zero" x1="0" x2="100%" y1=(middle) y2=(middle) {}
             @for (at, source) in view.sources.iter().enumerate() {
                 @let x = percent((at as f64 + 0.5) / count);

@@ -39,8 +39,10 @@ pub struct Row<'a> {
     pub ticks: Vec<(f64, String)>,
     /// The figure that all would have if they were alike.
     pub even_at: f64,
-    /// The band, with its label.
-    pub band: Option<(f64, f64, String)>,
+    /// The band.
+    pub band: Option<(f64, f64)>,
+    /// Over the axis; empty where ticks say it themselves.
+    pub unit: &'a str,
 }
 
 /// Top of the plotting area, in pixels.
@@ -73,11 +75,11 @@ impl Row<'_> {
 
     fn ground(&self) -> Markup {
         html! {
-            @if let Some((low, high, label)) = &self.band {
-                @let (top, bottom) = (self.scale.place(*high), self.scale.place(*low));
+            @if let Some((low, high)) = self.band {
+                @let (top, bottom) = (self.scale.place(high), self.scale.place(low));
                 rect class="margin" x="0" width="100%" y=(px(top)) height=(px(bottom - top)) {}
-                text class="margin-label" x="100%" dx="-6" y=(px(top - 6.0)) text-anchor="end" { (label) }
             }
+            text class="tick" x="-8" y="12" text-anchor="end" { (self.unit) }
             @for (at, label) in &self.ticks {
                 @let y = px(self.scale.place(*at));
                 @let class = if (at - self.even_at).abs() < 1e-12 { "zero" } else { "grid" };
@@ -105,9 +107,17 @@ impl Row<'_> {
                     text class="none" x=(x) y=(px(self.scale.place(self.even_at))) dy="-6"
                         text-anchor="middle" { "–" }
                 }
-                (name(&x, at, &mark.name, long))
+                @if !self.is_crowded_out(at) { (name(&x, at, &mark.name, long)) }
             }
         }
+    }
+
+    /// Whether a named neighbour's name needs this one's place: names are thinned to every fifth or
+    /// tenth when sources are many, and a named source's always stays.
+    fn is_crowded_out(&self, at: usize) -> bool {
+        let near = self.marks.len() / 40;
+        let is_apart = |other: usize| self.marks.get(other).is_some_and(|m| m.apart.is_some());
+        !is_apart(at) && (at.saturating_sub(near)..=at + near).any(is_apart)
     }
 
     /// The name and word of a named source, beyond its interval's outer end.
@@ -129,6 +139,35 @@ impl Row<'_> {
         };
         html! {
             text class="tag" x=(x) dx=(shift) y=(px(y)) text-anchor=(anchor) { (mark.name) " " (word) }
+        }
+    }
+}
+
+/// What the signs mean, beside the picture. `band` says how wide the margin is, when there is one.
+pub fn key(band: Option<String>) -> Markup {
+    html! {
+        ul class="key" {
+            li {
+                svg class="plot" width="14" height="22" aria-hidden="true" focusable="false" {
+                    line class="interval" x1="7" x2="7" y1="1" y2="21" {}
+                    circle class="point" cx="7" cy="11" r="4.5" fill=(vik::colour(0.0, 1.0)) {}
+                }
+                "a source with its simultaneous 95 % interval"
+            }
+            li class="apart" {
+                svg class="plot" width="18" height="22" aria-hidden="true" focusable="false" {
+                    svg class="held" x="9" y="11" { path class="point" d="M0-8L8 0L0 8L-8 0Z" {} }
+                }
+                "a named source"
+            }
+            @if let Some(band) = band {
+                li {
+                    svg class="plot" width="26" height="14" aria-hidden="true" focusable="false" {
+                        rect class="margin" width="26" height="14" {}
+                    }
+                    (band)
+                }
+            }
         }
     }
 }

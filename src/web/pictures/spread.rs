@@ -48,7 +48,8 @@ pub fn draw(bank: &Bank, look: &Look) -> Option<Markup> {
             .map(|t| (t, format!("{t}×")))
             .collect(),
         even_at: 1.0,
-        band: band.map(|(low, high)| (low, high, format!("margin {}×", bank.spread_margin))),
+        band,
+        unit: "",
     };
     Some(row.draw())
 }

@@ -173,14 +173,14 @@ pub fn legend(full: f64, unit: &str, figure: impl Fn(f64) -> String) -> Markup {
     let steps = vik::STEPS.len();
     html! {
         figure class="legend" {
-            svg class="scale" width="210" height="34" role="img" aria-label={
+            svg class="scale" width="294" height="34" role="img" aria-label={
                 "Colour scale from " (figure(-full)) " to " (figure(full)) " " (unit) ", light at zero"
             } {
                 @for (at, colour) in vik::STEPS.iter().enumerate() {
-                    rect x=(at * 10) y="0" width="10" height="12" fill=(colour) {}
+                    rect x=(at * 14) y="0" width="14" height="12" fill=(colour) {}
                 }
                 @for (share, anchor) in [(0.0, "start"), (0.25, "middle"), (0.5, "middle"), (0.75, "middle"), (1.0, "end")] {
-                    text class="tick" x=(px(share * steps as f64 * 10.0)) y="28" text-anchor=(anchor) {
+                    text class="tick" x=(px(share * steps as f64 * 14.0)) y="28" text-anchor=(anchor) {
                         (figure((share * 2.0 - 1.0) * full))
                     }
                 }

@@ -74,11 +74,7 @@ async fn every_page_is_whole_and_asks_nobody_else() {
                     .take(120)
                     .collect::<String>()
             });
-            assert_eq!(
-                found,
-                None,
-                "{path}: {foreign}"
-            );
+            assert_eq!(found, None, "{path}: {foreign}");
         }
         assert!(
             page.body
@@ -141,7 +137,7 @@ async fn a_bank_names_its_source_by_word_and_shape() {
         "class=\"tag\"",
         "07 low</text>",
         "Which sources are apart, and by how much?",
-        "margin 0.8 g",
+        "the margin, 0.8 g wide",
         "How did each source stand over time?",
         "Sign in to acknowledge",
         "decides: significant",
