@@ -4,6 +4,7 @@
 //! Deliberately absent: clocks, files, formats, statistics.
 
 mod bank;
+mod figures;
 mod reason;
 mod time;
 mod value;
@@ -11,6 +12,7 @@ mod value;
 pub use bank::{
     Bank, BankIx, Budget, BudgetError, Characteristic, Layout, Pairing, SourceIx, Sources,
 };
+pub use figures::{fixed, signed};
 pub use reason::{Reason, Refusal};
 pub use time::{Time, US_PER_DAY, US_PER_S};
 pub use value::{Value, ValueError};

@@ -4,6 +4,7 @@
 
 pub mod args;
 pub mod configuration;
+pub mod demo;
 pub mod exit;
 mod vet;
 

@@ -1,7 +1,7 @@
 //! Mean and centred sum of squares, in two passes with compensated sums.
 //!
-//! The first pass finds a mean to centre on; the second adds deviations and their squares with
-//! Neumaier's compensation (1974) in eight lanes, and corrects the mean by what the deviations add
+//! The first pass finds a mean to centre on; the second adds deviations and their squares in
+//! short blocks whose sums are added with compensation (Knuth 1969, two-sum), and corrects the mean by what the deviations add
 //! up to (Chan, Golub and LeVeque 1983, "Algorithms for computing the sample variance"). So the
 //! result does not depend on how large the values are compared with their spread, only on how well
 //! `f64` holds the values themselves. Where the decimal text is at hand, subtract an origin before
@@ -22,35 +22,31 @@ pub struct Summary {
 
 const LANES: usize = 8;
 
-/// Compensated sums in lanes that the compiler can keep in vector registers.
-#[derive(Clone, Copy)]
-struct Lanes {
-    sum: [f64; LANES],
-    rest: [f64; LANES],
+/// Values summed plainly before their sum enters the compensated one: a few roundings at most.
+const BLOCK: usize = 64;
+
+/// A sum with its rounding errors kept beside it (Knuth's branch-free two-sum).
+#[derive(Clone, Copy, Default)]
+struct Compensated {
+    sum: f64,
+    rest: f64,
 }
 
-impl Lanes {
-    const ZERO: Self = Self {
-        sum: [0.0; LANES],
-        rest: [0.0; LANES],
-    };
-
-    /// Knuth's branch-free two-sum, lane by lane.
-    #[inline(always)]
-    fn add(&mut self, lane: usize, value: f64) {
-        let sum = self.sum[lane] + value;
-        let part = sum - self.sum[lane];
-        self.rest[lane] += (self.sum[lane] - (sum - part)) + (value - part);
-        self.sum[lane] = sum;
+impl Compensated {
+    fn add(&mut self, value: f64) {
+        let sum = self.sum + value;
+        let part = sum - self.sum;
+        self.rest += (self.sum - (sum - part)) + (value - part);
+        self.sum = sum;
     }
 
     fn total(&self) -> f64 {
-        let mut all = Self::ZERO;
-        for lane in 0..LANES {
-            all.add(0, self.sum[lane]);
-        }
-        all.sum[0] + (all.rest[0] + self.rest.iter().sum::<f64>())
+        self.sum + self.rest
     }
+}
+
+fn lane_sum(l: [f64; LANES]) -> f64 {
+    ((l[0] + l[1]) + (l[2] + l[3])) + ((l[4] + l[5]) + (l[6] + l[7]))
 }
 
 /// Summarizes values in their own unit.
@@ -86,19 +82,24 @@ pub fn summarize_about(values: &[f64], origin: f64) -> Summary {
         };
     }
     let centre = rough_mean(values, origin);
-    let (mut first, mut second) = (Lanes::ZERO, Lanes::ZERO);
-    let (chunks, rest) = values.as_chunks::<LANES>();
-    for chunk in chunks {
-        for (lane, value) in chunk.iter().enumerate() {
-            let d = (value - origin) - centre;
-            first.add(lane, d);
-            second.add(lane, d * d);
+    let (mut first, mut second) = (Compensated::default(), Compensated::default());
+    for block in values.chunks(BLOCK) {
+        let (mut ones, mut twos) = ([0.0; LANES], [0.0; LANES]);
+        let (chunks, rest) = block.as_chunks::<LANES>();
+        for chunk in chunks {
+            for lane in 0..LANES {
+                let d = (chunk[lane] - origin) - centre;
+                ones[lane] += d;
+                twos[lane] += d * d;
+            }
         }
-    }
-    for (lane, value) in rest.iter().enumerate() {
-        let d = (value - origin) - centre;
-        first.add(lane, d);
-        second.add(lane, d * d);
+        for (lane, value) in rest.iter().enumerate() {
+            let d = (value - origin) - centre;
+            ones[lane] += d;
+            twos[lane] += d * d;
+        }
+        first.add(lane_sum(ones));
+        second.add(lane_sum(twos));
     }
     let shift = first.total() / n as f64;
     let ss = second.total() - shift * shift * n as f64;
@@ -119,7 +120,7 @@ fn rough_mean(values: &[f64], origin: f64) -> f64 {
         }
     }
     let tail: f64 = rest.iter().map(|v| v - origin).sum();
-    (sums.iter().sum::<f64>() + tail) / values.len() as f64
+    (lane_sum(sums) + tail) / values.len() as f64
 }
 
 impl Summary {

@@ -205,6 +205,18 @@ impl Data {
         }
     }
 
+    /// The oldest place among the values.
+    pub fn oldest_place(&self) -> Option<i64> {
+        match &self.values {
+            Values::Paired(rows) => rows.places.first().map(|p| p.0),
+            Values::Alone(series) => series
+                .iter()
+                .filter_map(|s| s.first())
+                .map(|e| e.place)
+                .min(),
+        }
+    }
+
     /// The column of a source.
     pub fn column_of(&self, source: SourceIx) -> Option<usize> {
         self.sources.iter().position(|s| *s == source)

@@ -19,9 +19,6 @@ const SHOWN_ALPHA: f64 = 0.05;
 pub struct Level {
     /// Every test that could be computed.
     pub tests: Vec<TestEntry>,
-    /// Mean of each source, as an offset from the bank's origin; for paired banks adjusted for cycles
-    /// in which it is missing.
-    pub means: Vec<f64>,
     /// The even set at the naming's error rate.
     pub even: Vec<bool>,
     /// Each source's deviation from the even set without it.
@@ -94,7 +91,6 @@ fn paired(data: &Data, blocked: Blocked, margins: &[f64], known: Option<Dependen
         pair_p: judged.pair_p,
         dependence,
         within,
-        means,
     }
 }
 
@@ -135,7 +131,6 @@ fn alone(data: &Data, margins: &[f64], known: Option<Dependence>) -> Result<Leve
         pair_p,
         dependence,
         within: columns,
-        means,
     })
 }
 

@@ -19,4 +19,7 @@ pub use data::{Data, Need, Rows, Values};
 pub use examine::{Call, Examination, Participant, examine};
 pub use look::{Dependence, Digest, Estimate, Finding, Look, Method, SourceLook, TestEntry};
 pub use shares::Shares;
-pub use track::{Aspect, Located, Moment, Yardstick, cleared_margin, locate, returned, size_since};
+pub use track::{
+    Aspect, Located, Moment, Yardstick, cleared_margin, locate, returned, size_since,
+    values_to_clear,
+};

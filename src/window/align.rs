@@ -24,6 +24,8 @@ pub struct Blocks {
     delivered_open: Vec<u32>,
     closed: u64,
     skipped: u64,
+    /// Whether all sources are known, so that "all have delivered" means something.
+    settled: bool,
 }
 
 #[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
@@ -58,6 +60,7 @@ impl Blocks {
             delivered_open: Vec::new(),
             closed: 0,
             skipped: 0,
+            settled: true,
         }
     }
 
@@ -105,7 +108,10 @@ impl Blocks {
                 .zip(&first.present)
                 .all(|(e, p)| !e || *p);
             let any_expected = self.expected.contains(&true);
-            if (complete && any_expected) || self.overtaken(first) || self.open.len() > MOST_OPEN {
+            if (complete && any_expected && self.settled)
+                || self.overtaken(first)
+                || self.open.len() > MOST_OPEN
+            {
                 self.close_first();
             } else {
                 return;
@@ -158,6 +164,11 @@ impl Blocks {
     /// (closed, skipped, open).
     pub fn counts(&self) -> (u64, u64, u64) {
         (self.closed, self.skipped, self.open.len() as u64)
+    }
+
+    /// Whether all sources are known; until then blocks close only when they are overtaken.
+    pub fn settle(&mut self, settled: bool) {
+        self.settled = settled;
     }
 
     /// Changes how many newer cycles a cycle waits for.

@@ -101,6 +101,13 @@ impl Windows {
         }
     }
 
+    /// Whether all sources are known, so that a cycle can be complete.
+    pub fn settle(&mut self, settled: bool) {
+        if let Some(blocks) = &mut self.blocks {
+            blocks.settle(settled);
+        }
+    }
+
     /// Judges a value and puts it in its place.
     ///
     /// # Errors

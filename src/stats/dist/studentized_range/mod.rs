@@ -4,27 +4,20 @@
 //!
 //! P(Q > q) = E R_k(q s), R_k the upper tail of the range (Copenhaver and Holland 1988 for the
 //! form). The quadrature is ours and works on the upper tail itself:
-//!
-//! With s = chi/sqrt(df) = exp(x), completing the square moves the peak of the integrand to y = 0
-//! whatever q is. With B(w) = R_k(w) exp(w^2/4), which varies little,
-//!
-//! P(Q > q) = (1 + q^2/2df)^(-df/2) sqrt(df/pi) e^-d ∫ exp(-df (e^2y - 1 - 2y)/2) B(w0 e^y) dy,
-//! w0 = q / sqrt(1 + q^2/2df), d Stirling's error of df/2.
-//!
-//! The trapezoid rule converges geometrically on it. ln B lives in one Chebyshev table per k
-//! ([`table`]), built on first use and kept for the life of the process: a pure function of k.
+//! The average over the chi is taken by the rule the studentized maxima share; ln of R_k, scaled,
+//! lives in one table per k, built on first use and kept for the life of the process: a pure
+//! function of k.
 
-mod outer;
 mod table;
 
 use super::root::brent;
-use super::{OutOfReach, degrees, f, normal, probability, t};
+use super::{OutOfReach, degrees, f, normal, outer, probability, t};
 use std::collections::BTreeMap;
 use std::sync::{Arc, PoisonError, RwLock};
 pub use table::RangeTable;
 
 /// The largest k for which tables are built; the tests reach to it.
-pub const MOST_SOURCES: usize = 1000;
+pub const MOST_SOURCES: usize = 500;
 
 static TABLES: RwLock<BTreeMap<usize, Arc<RangeTable>>> = RwLock::new(BTreeMap::new());
 
@@ -35,7 +28,7 @@ static TABLES: RwLock<BTreeMap<usize, Arc<RangeTable>>> = RwLock::new(BTreeMap::
 pub fn table(k: usize) -> Result<Arc<RangeTable>, OutOfReach> {
     if !(2..=MOST_SOURCES).contains(&k) {
         return Err(OutOfReach::Argument(
-            "the studentized range needs 2 to 1000 sources",
+            "the studentized range needs 2 to 500 sources",
         ));
     }
     if let Some(found) = TABLES
@@ -94,9 +87,9 @@ impl RangeTable {
             return two_means(q, df);
         }
         if df == f64::INFINITY {
-            return Ok(self.tail(q));
+            return Ok(self.tail.tail(q));
         }
-        Ok(outer::tail(self, q, df).clamp(0.0, 1.0))
+        Ok(outer::tail(&self.tail, q, df).clamp(0.0, 1.0))
     }
 
     /// The q whose upper tail is `p`: [`isf`] with the table at hand.
