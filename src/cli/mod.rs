@@ -3,7 +3,10 @@
 //! A command prints what it has to say and returns an [`Exit`]; only [`main`] turns that into a code.
 
 pub mod args;
+pub mod configuration;
+pub mod demo;
 pub mod exit;
+mod vet;
 
 use std::process::ExitCode;
 
@@ -21,7 +24,10 @@ struct Cli {
 
 /// One line for each command: its options from [`args`], its body in a file of its name.
 #[derive(Subcommand, Debug)]
-enum Command {}
+enum Command {
+    /// Check a configuration: every fault at once, with its line and what to do
+    Vet(args::VetArgs),
+}
 
 /// Reads the command line, runs the command and says how it ended.
 pub fn main() -> ExitCode {
@@ -33,7 +39,9 @@ pub fn main() -> ExitCode {
 
 /// Runs the command.
 fn run(cli: Cli) -> Exit {
-    match cli.command {}
+    match cli.command {
+        Command::Vet(args) => vet::run(args),
+    }
 }
 
 /// Prints help, version or what is wrong with the command line.

@@ -7,8 +7,8 @@ use std::sync::Arc;
 use serde::{Deserialize, Serialize};
 
 use crate::model::{Bank, Measurement, Name, Reason, SourceIx, Sources, Time};
-use crate::notice::Kind;
-use crate::verdict::{Examination, Look, Need, Participant, examine};
+use crate::notice::{Kind, Notice};
+use crate::verdict::{Aspect, Call, Examination, Look, Need, Participant, examine};
 use crate::window::{Accepted, Arriving, Windows};
 
 use super::incident::{Incident, Surroundings};
@@ -67,7 +67,7 @@ pub struct Watched {
 pub struct Looked {
     pub looks: Vec<Arc<Look>>,
     /// Incidents whose notice changed, by their place; the flag says it has just been raised.
-    pub changed: Vec<(Arc<crate::notice::Notice>, Freshness)>,
+    pub changed: Vec<(Arc<Notice>, Freshness)>,
     pub keep_whole: bool,
 }
 
@@ -302,8 +302,28 @@ impl Watched {
         self.state.last_look = Some(now);
         let exam = self.examine(now, Need::WholeSpan);
         let interval_us = self.interval_us();
+        // What an open incident is about is not called anew, also when this look ends it: the
+        // examination still holds the values of before.
+        let open: Vec<Aspect> = self
+            .state
+            .incidents
+            .iter()
+            .filter(|i| i.is_active())
+            .map(|i| i.aspect)
+            .collect();
+        let about: Vec<SourceIx> = self
+            .state
+            .incidents
+            .iter()
+            .flat_map(Incident::about)
+            .collect();
         let mut changed = self.follow(plant, &exam, now, interval_us);
-        changed.extend(self.begin(plant, &exam, now, interval_us));
+        let mut calls = exam.calls.clone();
+        calls.retain(|c| !open.contains(&c.aspect));
+        for call in &mut calls {
+            call.named.retain(|s| !about.contains(s));
+        }
+        changed.extend(self.begin(plant, calls, &exam, now, interval_us));
         let looks: Vec<Arc<Look>> = exam.looks.into_iter().map(Arc::new).collect();
         self.state.looks.clone_from(&looks);
         self.state.incidents.retain(|i| i.notice.state.is_open());
@@ -337,7 +357,7 @@ impl Watched {
         exam: &Examination,
         now: Time,
         interval_us: Option<i64>,
-    ) -> Vec<(Arc<crate::notice::Notice>, Freshness)> {
+    ) -> Vec<(Arc<Notice>, Freshness)> {
         let mut incidents = std::mem::take(&mut self.state.incidents);
         let mut changed = Vec::new();
         for incident in incidents.iter_mut().filter(|i| i.is_active()) {
@@ -372,22 +392,13 @@ impl Watched {
     fn begin(
         &mut self,
         plant: &Plant,
+        calls: Vec<Call>,
         exam: &Examination,
         now: Time,
         interval_us: Option<i64>,
-    ) -> Vec<(Arc<crate::notice::Notice>, Freshness)> {
+    ) -> Vec<(Arc<Notice>, Freshness)> {
         let mut changed = Vec::new();
-        for call in &exam.calls {
-            let open = |aspect| {
-                self.state
-                    .incidents
-                    .iter()
-                    .any(|i| i.is_active() && i.aspect == aspect)
-            };
-            if open(call.aspect) {
-                continue;
-            }
-            let mut call = call.clone();
+        for mut call in calls {
             call.named
                 .retain(|s| !self.state.incidents.iter().any(|i| i.is_about(*s)));
             let id = self.notice_id(plant, now);

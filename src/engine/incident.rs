@@ -30,6 +30,8 @@ pub struct Apart {
     pub source: SourceIx,
     pub located: Place,
     pub size: Estimate,
+    /// The largest size seen.
+    pub worst: Estimate,
     pub cleared: bool,
 }
 
@@ -141,9 +143,15 @@ impl Incident {
         self.notice.state.is_active()
     }
 
+    /// The sources it is about now.
+    pub fn about(&self) -> Vec<SourceIx> {
+        let holding = self.apart.iter().filter(|a| self.is_active() && !a.cleared);
+        holding.map(|a| a.source).collect()
+    }
+
     /// Whether it is about a source now.
     pub fn is_about(&self, source: SourceIx) -> bool {
-        self.is_active() && self.apart.iter().any(|a| a.source == source && !a.cleared)
+        self.about().contains(&source)
     }
 
     /// Takes in what a look says: sizes, starts, sources that join, sources that are back. Returns
@@ -153,11 +161,13 @@ impl Incident {
         let mut back = Vec::new();
         let yard = about.yard(self.aspect, &self.reference);
         for one in self.apart.iter_mut().filter(|a| !a.cleared) {
-            one.update(about, self.aspect, &yard);
             let data = &about.exam.data;
-            if let Some(from) = returned(data, one.source, self.aspect, &yard, self.called_at) {
-                one.cleared = true;
-                back.push((one.source, from.place));
+            match returned(data, one.source, self.aspect, &yard, self.called_at) {
+                Some(from) => {
+                    one.cleared = true;
+                    back.push((one.source, from.place));
+                }
+                None => one.update(about, self.aspect, &yard),
             }
         }
         if self.apart.iter().all(|a| a.cleared) {
@@ -223,7 +233,9 @@ impl Incident {
         if named.is_empty() {
             named = self.apart.iter().collect();
         }
-        named.sort_by(|a, b| farness(self.aspect, b).total_cmp(&farness(self.aspect, a)));
+        named.sort_by(|a, b| {
+            farness(self.aspect, &b.size).total_cmp(&farness(self.aspect, &a.size))
+        });
         let sources: Vec<NamedSource> = named.iter().map(|a| a.told(about)).collect();
         let since = named[0].located.since;
         let facts = Facts {
@@ -339,6 +351,7 @@ impl Apart {
             source,
             located: Place::of(located),
             size: located.size,
+            worst: located.size,
             cleared: false,
         }
     }
@@ -353,14 +366,23 @@ impl Apart {
         } else if let Some(size) = size_since(data, self.source, aspect, yard, self.located.start) {
             self.size = size;
         }
+        if farness(aspect, &self.size) > farness(aspect, &self.worst) {
+            self.worst = self.size;
+        }
     }
 
+    /// Its size now; what it was at worst once it is back.
     fn told(&self, about: &Surroundings) -> NamedSource {
+        let size = if self.cleared {
+            &self.worst
+        } else {
+            &self.size
+        };
         NamedSource {
             source: (about.name)(self.source),
-            deviation: self.size.value,
-            low: self.size.low,
-            high: self.size.high,
+            deviation: size.value,
+            low: size.low,
+            high: size.high,
         }
     }
 }
@@ -378,10 +400,10 @@ impl Place {
     }
 }
 
-fn farness(aspect: Aspect, one: &Apart) -> f64 {
+fn farness(aspect: Aspect, size: &Estimate) -> f64 {
     match aspect {
-        Aspect::Level => one.size.value.abs(),
-        Aspect::Spread => one.size.value.ln().abs(),
+        Aspect::Level => size.value.abs(),
+        Aspect::Spread => size.value.ln().abs(),
     }
 }
 

@@ -5,10 +5,8 @@
 //! so nothing vanishes; the receipt's hash stays the same from version to version, because it is
 //! compared with what an earlier process kept.
 
-use std::sync::Arc;
-
 use crate::model::{Measurement, Reason, Refusal};
-use crate::settings::Settings;
+use crate::settings::Feed;
 
 use super::names::Names;
 use super::payload::{self, Fault, excerpt};
@@ -60,17 +58,20 @@ fn fnv1a<'a>(bytes: impl Iterator<Item = &'a u8>) -> u64 {
 /// Turns messages into measurements and refusals.
 #[derive(Debug)]
 pub struct Decoder {
-    settings: Arc<Settings>,
+    /// By bank.
+    feeds: Vec<Feed>,
+    most_bytes: usize,
     topics: Topics,
     names: Names,
 }
 
 impl Decoder {
-    /// For these settings' feeds.
-    pub fn new(settings: Arc<Settings>) -> Self {
+    /// For these feeds, in the order of the banks; a payload larger than `most_bytes` is refused.
+    pub fn new(feeds: Vec<Feed>, most_bytes: usize) -> Self {
         Self {
-            topics: Topics::new(&settings.feeds),
-            settings,
+            topics: Topics::new(&feeds),
+            feeds,
+            most_bytes,
             names: Names::default(),
         }
     }
@@ -88,9 +89,10 @@ impl Decoder {
             receipt,
         };
         for (bank, topic_source) in self.topics.route(topic) {
-            let form = &self.settings.feed(bank).payload;
-            let most = self.settings.broker.most_bytes;
-            match payload::decode(form, payload, topic_source, most) {
+            let Some(feed) = self.feeds.get(bank.index()) else {
+                continue;
+            };
+            match payload::decode(&feed.payload, payload, topic_source, self.most_bytes) {
                 Ok(decoded) => arrival.measurements.push(Measurement {
                     bank,
                     source: self.names.shared(&decoded.source),
@@ -145,6 +147,7 @@ mod tests {
     use super::*;
     use crate::intake::fixture;
     use crate::model::{BankIx, Value};
+    use crate::settings::PayloadForm;
 
     const RECEIPT: Receipt = Receipt {
         epoch: 1,
@@ -170,11 +173,12 @@ mod tests {
 
     #[test]
     fn one_message_serves_every_bank_it_belongs_to() {
-        let mut decoder = Decoder::new(fixture::settings(&[
-            ("line/{source}/net", fixture::NUMBER),
-            ("line/+/net", fixture::JSON),
-            ("line/#", fixture::NUMBER),
-        ]));
+        let feeds = [
+            ("line/{source}/net", PayloadForm::Number),
+            ("line/+/net", PayloadForm::Json(fixture::pointers())),
+            ("line/#", PayloadForm::Number),
+        ];
+        let mut decoder = Decoder::new(fixture::feeds(feeds), 4096);
         assert_eq!(decoder.filters(), ["line/#"]);
         let got = decoder.decode("line/07/net", b"503.1", RECEIPT);
         let [measurement] = got.measurements.as_slice() else {
@@ -193,7 +197,8 @@ mod tests {
 
     #[test]
     fn a_topic_of_no_bank_is_refused_without_one() {
-        let mut decoder = Decoder::new(fixture::settings(&[("line/{source}", fixture::NUMBER)]));
+        let feeds = fixture::feeds([("line/{source}", PayloadForm::Number)]);
+        let mut decoder = Decoder::new(feeds, 4096);
         let got = decoder.decode("other/\u{1b}7", b"503.1", RECEIPT);
         let [refusal] = got.refusals.as_slice() else {
             panic!("{got:?}")

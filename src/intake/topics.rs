@@ -146,25 +146,12 @@ impl Pattern {
 #[cfg(test)]
 mod tests {
     use super::*;
-    use crate::settings::{PayloadForm, RecordingColumns};
-
-    fn template(text: &str) -> TopicTemplate {
-        let levels: Vec<String> = text.split('/').map(str::to_owned).collect();
-        let source_level = levels.iter().position(|level| level == "{source}");
-        TopicTemplate {
-            levels,
-            source_level,
-        }
-    }
+    use crate::intake::fixture::{self, template};
+    use crate::settings::PayloadForm;
 
     fn topics(templates: &[&str]) -> Topics {
-        let feed = |(bank, text): (usize, &&str)| Feed {
-            bank: BankIx(bank as u16),
-            topic: template(text),
-            payload: PayloadForm::Number,
-            recording: RecordingColumns::default(),
-        };
-        Topics::new(&templates.iter().enumerate().map(feed).collect::<Vec<_>>())
+        let number = |&text| (text, PayloadForm::Number);
+        Topics::new(&fixture::feeds(templates.iter().map(number)))
     }
 
     fn matches(filter: &str, topic: &str) -> bool {

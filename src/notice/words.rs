@@ -59,16 +59,16 @@ impl Facts<'_> {
     /// Puts it into words.
     pub fn words(&self) -> Words {
         let advice = self.advice();
-        let mut lines = vec![self.what()];
+        let mut lines = match self.returned {
+            Some(at) => vec![self.what_was(at)],
+            None => vec![self.what()],
+        };
         lines.extend(self.details());
         lines.push(self.since_when());
         lines.extend(self.bank_level());
-        match self.returned {
-            Some(at) => lines.push(format!("Even again since {}.", self.clock(at))),
-            None => {
-                lines.push(advice.clone());
-                lines.extend(self.clears_in());
-            }
+        if self.returned.is_none() {
+            lines.push(advice.clone());
+            lines.extend(self.clears_in());
         }
         lines.push(format!("Page: {}", self.url));
         lines.push(CAUTION.to_owned());
@@ -80,28 +80,44 @@ impl Facts<'_> {
     }
 
     fn subject(&self) -> String {
-        let even = if self.returned.is_some() {
-            "Even again: "
-        } else {
-            ""
-        };
-        let tail = match (self.sources, self.is_pair()) {
-            ([one], _) | ([one, _], true) => format!(" by {}", self.size(one)),
-            _ => String::new(),
-        };
         let bank = &self.bank.name;
-        let long = format!("{even}{bank}: {}{tail}", self.who_and_how());
-        let short = format!(
-            "{even}{bank}: {} sources {}",
-            self.sources.len(),
-            self.kind.words()
-        );
+        let (long, short) = match self.returned {
+            Some(_) => (
+                format!("{bank}: {} even again", self.names()),
+                format!("{bank}: {} sources even again", self.sources.len()),
+            ),
+            None => (
+                format!("{bank}: {}{}", self.who_and_how(), self.how_much()),
+                format!(
+                    "{bank}: {} sources, {}",
+                    self.sources.len(),
+                    self.kind.words()
+                ),
+            ),
+        };
         let whole = if long.chars().count() <= MOST_SUBJECT {
             long
         } else {
             short
         };
         whole.chars().take(MOST_SUBJECT).collect()
+    }
+
+    /// The size without its sign, where one source (or a pair) has one.
+    fn how_much(&self) -> String {
+        let single = match (self.sources, self.is_pair()) {
+            ([one], _) | ([one, _], true) => one,
+            _ => return String::new(),
+        };
+        let c = &self.bank.characteristic;
+        match self.kind {
+            Kind::SpreadApart => format!(", {} {SPREAD_UNIT}", fixed(single.deviation, 1)),
+            _ => format!(
+                " by {} {}",
+                fixed(single.deviation.abs(), c.places() + 1),
+                c.unit
+            ),
+        }
     }
 
     fn is_pair(&self) -> bool {
@@ -156,6 +172,15 @@ impl Facts<'_> {
         format!("{} ({what}): {}.", self.bank.name, self.who_and_how())
     }
 
+    fn what_was(&self, returned: Time) -> String {
+        let what = &self.bank.characteristic.name;
+        let (bank, names) = (&self.bank.name, self.names());
+        format!(
+            "{bank} ({what}): {names} even again, shown at {}. At worst:",
+            self.clock(returned)
+        )
+    }
+
     fn details(&self) -> Vec<String> {
         let told = if self.is_pair() {
             &self.sources[..1]
@@ -202,20 +227,34 @@ impl Facts<'_> {
             earliest,
             latest,
         } = self.since;
-        format!(
-            "Since {} (surely between {} and {}).",
-            self.clock(at),
-            self.clock(earliest),
-            self.clock(latest)
-        )
+        let range = format!(
+            "{} to {}",
+            self.beside(at, earliest),
+            self.beside(at, latest)
+        );
+        format!("Since {} (95 %: {range}).", self.clock(at))
     }
 
     /// A time in the plant's zone, with its offset.
     fn clock(&self, at: Time) -> String {
+        self.written(at, "%Y-%m-%d %H:%M:%S %:z")
+    }
+
+    /// A time beside another: without the date where it is the same day.
+    fn beside(&self, other: Time, at: Time) -> String {
+        let day = |t| self.written(t, "%Y-%m-%d");
+        if day(other) == day(at) {
+            self.written(at, "%H:%M:%S")
+        } else {
+            self.clock(at)
+        }
+    }
+
+    fn written(&self, at: Time, form: &str) -> String {
         match at.to_jiff() {
             Some(stamp) => stamp
                 .to_zoned_datetime(self.zone.clone())
-                .strftime("%Y-%m-%d %H:%M:%S %:z")
+                .strftime(form)
                 .to_string(),
             None => at.to_string(),
         }
@@ -248,7 +287,9 @@ impl Facts<'_> {
         } else {
             format!("{minutes:.0} minutes")
         };
-        Some(format!("If that is right, this clears in about {about}."))
+        Some(format!(
+            "If that mends it, this notice clears in about {about}."
+        ))
     }
 
     fn advice(&self) -> String {

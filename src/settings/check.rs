@@ -219,7 +219,7 @@ fn duration_us(text: &str) -> Option<i64> {
 }
 
 /// A duration as people say it.
-pub(super) fn words(us: i64) -> String {
+pub fn words(us: i64) -> String {
     const UNITS: [(i64, &str); 4] = [(D, "d"), (3600 * S, "h"), (60 * S, "min"), (S, "s")];
     for (unit, word) in UNITS {
         if us >= unit && us % unit == 0 {

@@ -8,6 +8,7 @@
 //! Reading the file, the environment and the time zone database happens here; the files of secrets
 //! and certificates are opened by [`connection`], anew for each connection to the broker.
 
+mod cautions;
 mod check;
 pub mod connection;
 mod convert;
@@ -19,10 +20,15 @@ mod section;
 mod used;
 mod written;
 
+#[cfg(test)]
+mod tests;
+
 use std::path::Path;
 
 use fault::FaultList;
 
+pub use cautions::bank_cautions;
+pub use check::words as duration_words;
 pub use environment::environment;
 pub use fault::{Fault, Faults, Ink, Place};
 pub use used::{

@@ -1,22 +1,13 @@
 //! Tables of payloads and what becomes of them.
 
 use super::*;
+use crate::intake::fixture::{self, pointers};
 use crate::settings::{JsonPointers, TimeForm};
 
 const MOST: usize = 4096;
 
 fn us(text: &str) -> Option<Time> {
     Some(Time::parse_rfc3339(text).unwrap())
-}
-
-fn pointers() -> JsonPointers {
-    JsonPointers {
-        value: "/v".into(),
-        source: None,
-        time: None,
-        time_form: TimeForm::Auto,
-        cycle: None,
-    }
 }
 
 fn json(pointers: JsonPointers) -> PayloadForm {
@@ -105,7 +96,7 @@ fn json_numbers_keep_their_digits() {
         (
             JsonPointers {
                 value: String::new(),
-                ..self::pointers()
+                ..fixture::pointers()
             },
             " 42 ",
             "42",
@@ -113,7 +104,7 @@ fn json_numbers_keep_their_digits() {
         (
             JsonPointers {
                 value: "/".into(),
-                ..self::pointers()
+                ..fixture::pointers()
             },
             r#"{"":1}"#,
             "1",

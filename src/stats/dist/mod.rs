@@ -13,6 +13,9 @@
 //! | [`chi_square`] | series and continued fraction with saddle-point prefix | Abramowitz and Stegun 6.5.29, 6.5.31; Loader 2000 |
 //! | [`beta`], [`f`], [`t`] | continued fraction with saddle-point prefix | DiDonato and Morris 1992 (TOMS 708); Loader 2000 |
 //! | [`studentized_range`] | trapezoid rule over tables of the range's tail | Copenhaver and Holland 1988 for the form, own quadrature |
+//! | [`maximum`]: Dunnett, analysis of means, maximum modulus | the same outer rule over tables of the normal case | Dunnett 1955; Nelson 1982; own quadrature |
+//! | [`maximum_f_ratio`] | trapezoid rule over the smallest variance | Hartley 1950 for the statistic |
+//! | [`noncentral_f`] | Poisson mixture of beta tails, all terms positive | Johnson, Kotz and Balakrishnan 1995, 30.3 |
 //!
 //! Conventions: `sf` is the upper tail P(X > x), `cdf` the lower tail P(X <= x), `isf(p)` the x
 //! whose upper tail is p, `quantile(p)` the x whose lower tail is p. Degrees of freedom are reals
@@ -23,6 +26,9 @@ pub mod beta;
 pub mod chi_square;
 pub mod f;
 mod kernel;
+pub mod maximum;
+pub mod maximum_f_ratio;
+pub mod noncentral_f;
 pub mod normal;
 mod outer;
 mod root;

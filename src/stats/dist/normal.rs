@@ -30,6 +30,15 @@ pub fn sf(z: f64) -> f64 {
     0.5 * (libm::erfc(scaled) + slope * rest)
 }
 
+/// exp(x^2/2) P(Z > x) for x >= 8, by its continued fraction (Abramowitz and Stegun 26.2.14).
+pub(super) fn scaled_sf(x: f64) -> f64 {
+    let mut fraction = x;
+    for n in (1..40).rev() {
+        fraction = x + f64::from(n) / fraction;
+    }
+    1.0 / (fraction * (2.0 * PI).sqrt())
+}
+
 /// Lower tail P(Z <= z), as accurate as [`sf`].
 pub fn cdf(z: f64) -> f64 {
     sf(-z)

@@ -122,3 +122,14 @@ pub(super) fn brent(
     }
     Err(OutOfReach::NotSettled("the quantile"))
 }
+
+/// The x between `low` and `high` where the falling `tail` equals `p`, by [`brent`] on its logarithm.
+pub(super) fn upper_quantile(
+    p: f64,
+    low: f64,
+    high: f64,
+    tail: impl Fn(f64) -> Result<f64, OutOfReach>,
+) -> Result<f64, OutOfReach> {
+    let goal = p.ln();
+    brent(low, high, |x| Ok(tail(x)?.max(1e-307).ln() - goal))
+}

@@ -113,7 +113,7 @@ impl Lattice {
             if x > 8.0 {
                 // Phi(-x) = exp(-x^2/2) M(x): the exponentials are joined before they underflow.
                 let joined = (exponent - 0.5 * x * x).exp();
-                return (self.k - 1.0) * joined * mills(x) * self.inverse_cdf[i];
+                return (self.k - 1.0) * joined * normal::scaled_sf(x) * self.inverse_cdf[i];
             }
             return exponent.exp() * self.inner(normal::sf(x) * self.inverse_cdf[i]);
         }
@@ -146,13 +146,4 @@ fn plain_sf(x: f64) -> f64 {
     } else {
         normal::sf(x)
     }
-}
-
-/// exp(x^2/2) P(Z > x) for x >= 8, by its continued fraction (Abramowitz and Stegun 26.2.14).
-fn mills(x: f64) -> f64 {
-    let mut fraction = x;
-    for n in (1..40).rev() {
-        fraction = x + f64::from(n) / fraction;
-    }
-    1.0 / (fraction * (2.0 * PI).sqrt())
 }
