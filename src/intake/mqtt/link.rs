@@ -57,7 +57,22 @@ pub(super) struct Message {
 }
 
 /// A connection.
-pub(super) enum Link {
+pub(super) struct Link {
+    wire: Wire,
+    /// How far we came, for the words about its end.
+    place: Place,
+}
+
+/// How far a connection came before it ended.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub(super) enum Place {
+    /// The broker has not let us in yet.
+    Door,
+    /// It had let us in.
+    Inside,
+}
+
+enum Wire {
     V5(Box<v5::EventLoop>),
     V4(Box<rumqttc::EventLoop>),
 }
@@ -77,18 +92,20 @@ impl Link {
     pub(super) fn new(broker: &Broker, access: Access) -> (Self, Speaker) {
         let requests =
             usize::from(broker.receive_maximum).max(LEAST_ACKNOWLEDGEMENTS) + OTHER_REQUESTS;
-        match broker.protocol {
+        let (wire, speaker) = match broker.protocol {
             Protocol::V5 => {
                 let (client, events) = v5::AsyncClient::new(options_v5(broker, access), requests);
-                (Self::V5(Box::new(events)), Speaker::V5(client))
+                (Wire::V5(Box::new(events)), Speaker::V5(client))
             }
             Protocol::V4 => {
                 let (client, mut events) =
                     rumqttc::AsyncClient::new(options_v4(broker, access), requests);
                 events.set_network_options(network());
-                (Self::V4(Box::new(events)), Speaker::V4(client))
+                (Wire::V4(Box::new(events)), Speaker::V4(client))
             }
-        }
+        };
+        let place = Place::Door;
+        (Self { wire, place }, speaker)
     }
 
     /// Waits for what happens next. After an error the link is of no further use.
@@ -96,16 +113,20 @@ impl Link {
     /// # Errors
     /// Says in words for people why the connection was not made or is gone.
     pub(super) async fn next(&mut self, broker: &Broker) -> Result<Heard, String> {
-        match self {
-            Self::V5(events) => match events.poll().await {
-                Ok(event) => Ok(heard_v5(event)),
-                Err(error) => Err(words::lost_v5(&error, broker)),
+        let heard = match &mut self.wire {
+            Wire::V5(events) => match events.poll().await {
+                Ok(event) => heard_v5(event),
+                Err(error) => return Err(words::lost_v5(&error, broker, self.place)),
             },
-            Self::V4(events) => match events.poll().await {
-                Ok(event) => Ok(heard_v4(event)),
-                Err(error) => Err(words::lost_v4(&error, broker)),
+            Wire::V4(events) => match events.poll().await {
+                Ok(event) => heard_v4(event),
+                Err(error) => return Err(words::lost_v4(&error, broker, self.place)),
             },
+        };
+        if matches!(heard, Heard::Connected { .. }) {
+            self.place = Place::Inside;
         }
+        Ok(heard)
     }
 }
 

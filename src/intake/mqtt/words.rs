@@ -10,8 +10,10 @@ use rustls::{AlertDescription, CertificateError};
 
 use crate::settings::Broker;
 
+use super::link::Place;
+
 /// Why a connection by MQTT 5 was not made or is gone.
-pub(super) fn lost_v5(error: &v5::ConnectionError, broker: &Broker) -> String {
+pub(super) fn lost_v5(error: &v5::ConnectionError, broker: &Broker, at: Place) -> String {
     use v5::{ConnectionError, StateError};
     match error {
         ConnectionError::ConnectionRefused(code)
@@ -19,8 +21,11 @@ pub(super) fn lost_v5(error: &v5::ConnectionError, broker: &Broker) -> String {
             refused(refusal_v5(code), broker)
         }
         ConnectionError::Timeout(_) => no_answer(broker),
-        ConnectionError::Tls(error) => tls(error, broker),
-        ConnectionError::Io(error) => unreachable(error, broker),
+        ConnectionError::Tls(error) => tls(error, broker, at),
+        ConnectionError::Io(error)
+        | ConnectionError::MqttState(
+            StateError::Io(error) | StateError::Deserialization(v5::mqttbytes::Error::Io(error)),
+        ) => unreachable(error, broker, at),
         ConnectionError::MqttState(StateError::ServerDisconnect {
             reason_code,
             reason_string,
@@ -31,28 +36,38 @@ pub(super) fn lost_v5(error: &v5::ConnectionError, broker: &Broker) -> String {
         ConnectionError::MqttState(StateError::Deserialization(
             v5::mqttbytes::Error::PayloadSizeLimitExceeded { pkt_size, max },
         )) => oversized(*pkt_size, *max as usize, broker),
-        ConnectionError::MqttState(StateError::ConnectionAborted) => closed(broker),
+        ConnectionError::MqttState(StateError::ConnectionAborted) => closed(broker, at),
         ConnectionError::MqttState(StateError::AwaitPingResp) => silent(broker),
-        other => lost(other, broker),
+        other => format!(
+            "the connection to the broker at {} is lost: {other}",
+            place(broker)
+        ),
     }
 }
 
 /// Why a connection by MQTT 3.1.1 was not made or is gone.
-pub(super) fn lost_v4(error: &rumqttc::ConnectionError, broker: &Broker) -> String {
+pub(super) fn lost_v4(error: &rumqttc::ConnectionError, broker: &Broker, at: Place) -> String {
     use rumqttc::{ConnectionError, StateError};
     match error {
         ConnectionError::ConnectionRefused(code) => refused(refusal_v4(code), broker),
         ConnectionError::NetworkTimeout => no_answer(broker),
-        ConnectionError::Tls(error) => tls(error, broker),
-        ConnectionError::Io(error) => unreachable(error, broker),
+        ConnectionError::Tls(error) => tls(error, broker, at),
+        ConnectionError::Io(error)
+        | ConnectionError::MqttState(
+            StateError::Io(error)
+            | StateError::Deserialization(rumqttc::mqttbytes::Error::Io(error)),
+        ) => unreachable(error, broker, at),
         ConnectionError::MqttState(StateError::Deserialization(
             rumqttc::mqttbytes::Error::PayloadSizeLimitExceeded(bytes),
         )) => oversized(*bytes, super::link::most_packet_bytes(broker), broker),
-        ConnectionError::MqttState(StateError::ConnectionAborted) => closed(broker),
+        ConnectionError::MqttState(StateError::ConnectionAborted) => closed(broker, at),
         ConnectionError::MqttState(StateError::AwaitPingResp) | ConnectionError::FlushTimeout => {
             silent(broker)
         }
-        other => lost(other, broker),
+        other => format!(
+            "the connection to the broker at {} is lost: {other}",
+            place(broker)
+        ),
     }
 }
 
@@ -173,7 +188,7 @@ fn no_answer(broker: &Broker) -> String {
     )
 }
 
-fn unreachable(error: &io::Error, broker: &Broker) -> String {
+fn unreachable(error: &io::Error, broker: &Broker, at: Place) -> String {
     if let Some(words) = in_chain(error, broker) {
         return words;
     }
@@ -185,21 +200,25 @@ fn unreachable(error: &io::Error, broker: &Broker) -> String {
         io::ErrorKind::ConnectionReset
         | io::ErrorKind::ConnectionAborted
         | io::ErrorKind::BrokenPipe
-        | io::ErrorKind::UnexpectedEof => closed(broker),
+        | io::ErrorKind::UnexpectedEof => closed(broker, at),
         _ => format!("the broker at {place} cannot be reached: {error}"),
     }
 }
 
-fn closed(broker: &Broker) -> String {
-    let hint = if broker.tls {
-        "it may not speak TLS there, or want a client certificate"
-    } else {
-        "it may speak only TLS there, or another client may use this client id"
-    };
-    format!(
-        "the broker at {} closed the connection; if this repeats, {hint}",
-        place(broker)
-    )
+fn closed(broker: &Broker, at: Place) -> String {
+    let place = place(broker);
+    match at {
+        Place::Inside => format!(
+            "the broker at {place} closed the connection; if this repeats, another client may use the client id '{}'",
+            broker.client_id
+        ),
+        Place::Door if broker.tls => format!(
+            "the broker at {place} closed the connection before letting us in; it may not speak TLS there, or want a client certificate"
+        ),
+        Place::Door => format!(
+            "the broker at {place} closed the connection before letting us in; it may speak only TLS there (mqtts://)"
+        ),
+    }
 }
 
 fn silent(broker: &Broker) -> String {
@@ -217,10 +236,10 @@ fn oversized(bytes: usize, limit: usize, broker: &Broker) -> String {
     )
 }
 
-fn tls(error: &TlsError, broker: &Broker) -> String {
+fn tls(error: &TlsError, broker: &Broker, at: Place) -> String {
     let place = place(broker);
     match error {
-        TlsError::Io(error) => unreachable(error, broker),
+        TlsError::Io(error) => unreachable(error, broker, at),
         TlsError::TLS(error) => handshake(error, broker),
         TlsError::DNSName(_) => format!(
             "'{}' is no name that a certificate can carry; write the broker's host name in broker.url",
@@ -298,17 +317,5 @@ fn in_chain(error: &io::Error, broker: &Broker) -> Option<String> {
     None
 }
 
-/// Everything else: a connection that was there is gone.
-fn lost(error: &(dyn StdError + 'static), broker: &Broker) -> String {
-    let mut at = Some(error);
-    while let Some(error) = at {
-        if let Some(error) = error.downcast_ref::<io::Error>() {
-            return unreachable(error, broker);
-        }
-        at = error.source();
-    }
-    format!(
-        "the connection to the broker at {} is lost: {error}",
-        place(broker)
-    )
-}
+#[cfg(test)]
+mod tests;
