@@ -1,0 +1,1 @@
+//! Configurations and the faults they must give, as data.
