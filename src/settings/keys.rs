@@ -151,11 +151,17 @@ pub(super) fn example(section: &str, name: &str) -> String {
 /// The word among `known` that `word` was most likely meant to be.
 pub(super) fn nearest<'k>(word: &str, known: impl Iterator<Item = &'k str>) -> Option<&'k str> {
     let lower = word.to_lowercase();
-    let score = |candidate: &str| strsim::jaro_winkler(&lower, &candidate.to_lowercase());
     known
-        .map(|candidate| (score(candidate), candidate))
+        .map(|candidate| (likeness(&lower, &candidate.to_lowercase()), candidate))
         // Below this, suggestions are guesses: "colour" and "client_id" reach 0.6.
-        .filter(|(score, _)| *score >= 0.8)
+        .filter(|(likeness, _)| *likeness >= 0.8)
         .max_by(|a, b| a.0.total_cmp(&b.0))
         .map(|(_, candidate)| candidate)
+}
+
+/// 1 for equal words. The common measure misjudges one slip in a short word, so that counts by itself.
+fn likeness(a: &str, b: &str) -> f64 {
+    let alike = strsim::jaro_winkler(a, b);
+    let one_slip = a.len() >= 3 && strsim::osa_distance(a, b) == 1;
+    if one_slip { alike.max(0.85) } else { alike }
 }

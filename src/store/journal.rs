@@ -10,6 +10,7 @@ use crate::engine::Record;
 use crate::model::{Name, Time};
 
 use super::codec::{self, DecodeError, Framed, Head, LONGEST, to_payload};
+use super::recover::Recovered;
 use super::shelf::{MOST_OPS, Op, Shelf, ShelfError};
 use super::{keys, pack};
 
@@ -84,6 +85,7 @@ pub struct Journal<S> {
     pub(super) banks: Arc<[Name]>,
     pub(super) keep_days: u32,
     serial: u64,
+    commits: u64,
     unacknowledged: Vec<(u16, u64)>,
     health: Health,
 }
@@ -92,20 +94,20 @@ pub struct Journal<S> {
 const LISTED: usize = 400;
 
 impl<S: Shelf> Journal<S> {
-    /// A store that goes on with parts after `serial` and this list of messages.
+    /// A store that goes on from what was recovered.
     pub(super) fn new(
         shelf: Arc<S>,
         banks: Arc<[Name]>,
         keep_days: u32,
-        serial: u64,
-        unacknowledged: Vec<(u16, u64)>,
+        recovered: &Recovered,
     ) -> Self {
         Self {
             shelf,
             banks,
             keep_days,
-            serial,
-            unacknowledged,
+            serial: recovered.scanned.serial,
+            commits: recovered.scanned.commits,
+            unacknowledged: recovered.unacknowledged.clone(),
             health: Health::Well,
         }
     }
@@ -121,9 +123,9 @@ impl<S: Shelf> Journal<S> {
             let wrong = |e: ShelfError| CommitError::Write(e.to_string());
             self.shelf.apply(ops).map_err(wrong)?;
         }
-        self.shelf
-            .sync()
-            .map_err(|e| CommitError::Sync(e.to_string()))
+        let synced = self.shelf.sync();
+        let noted = synced.and_then(|()| self.shelf.note(self.commits + 1));
+        noted.map_err(|e| CommitError::Sync(e.to_string()))
     }
 
     fn batches_of(&mut self, batch: &Batch) -> Result<Vec<Vec<Op>>, CommitError> {
@@ -137,6 +139,8 @@ impl<S: Shelf> Journal<S> {
             self.record(into, record)?;
         }
         self.list(&mut last, &batch.unacknowledged)?;
+        let count = to_payload(&(self.commits + 1)).map_err(encode)?;
+        self.put(&mut last, keys::commits(), &count);
         let mut batches: Vec<Vec<Op>> = ops.chunks(MOST_OPS).map(<[Op]>::to_vec).collect();
         // The turn and the list stay in one batch where a batch can hold them.
         match batches.last_mut() {
@@ -267,7 +271,10 @@ impl<S: Shelf> Store for Journal<S> {
         }
         let done = self.try_commit(batch);
         match &done {
-            Ok(()) => self.unacknowledged.clone_from(&batch.unacknowledged),
+            Ok(()) => {
+                self.commits += 1;
+                self.unacknowledged.clone_from(&batch.unacknowledged);
+            }
             // What cannot be written as bytes never reached the database.
             Err(CommitError::Encode(_)) => {}
             Err(_) => self.health = Health::Broken,

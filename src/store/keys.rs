@@ -65,6 +65,11 @@ pub(super) fn format() -> Vec<u8> {
     [&[FACT][..], b"format"].concat()
 }
 
+/// How many commits the database holds.
+pub(super) fn commits() -> Vec<u8> {
+    [&[FACT][..], b"commits"].concat()
+}
+
 /// A piece of the list of messages that are durable and not yet acknowledged.
 pub(super) fn unacknowledged(piece: u32) -> Vec<u8> {
     [UNACKNOWLEDGED, &piece.to_be_bytes()].concat()

@@ -24,6 +24,7 @@ struct Disk {
     now: BTreeMap<Vec<u8>, Vec<u8>>,
     /// As a crash leaves it.
     synced: BTreeMap<Vec<u8>, Vec<u8>>,
+    noted: Option<u64>,
     syncs: u64,
     fail_sync: Option<u64>,
     unwritable: bool,
@@ -74,8 +75,7 @@ impl Script {
         let banks: Arc<[Name]> = banks.into();
         let dynamic: Arc<dyn Shelf> = Arc::clone(&shelf) as _;
         let recovered = recover(&dynamic, &banks, scanned)?;
-        let listed = recovered.unacknowledged.clone();
-        let store = Journal::new(shelf, banks, keep_days, scanned.serial, listed);
+        let store = Journal::new(shelf, banks, keep_days, &recovered);
         Ok((store, Arc::new(Past(dynamic)), recovered))
     }
 
@@ -151,6 +151,15 @@ impl Shelf for MemoryShelf {
         }
         disk.synced = disk.now.clone();
         Ok(())
+    }
+
+    fn note(&self, commits: u64) -> Result<(), ShelfError> {
+        self.0.disk().noted = Some(commits);
+        Ok(())
+    }
+
+    fn noted(&self) -> Option<u64> {
+        self.0.disk().noted
     }
 
     fn mend(&self) -> Result<(), ShelfError> {

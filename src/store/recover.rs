@@ -36,6 +36,12 @@ pub enum ReadError {
         /// What is wrong with it.
         why: String,
     },
+    /// The end is missing: the database says less than was once confirmed.
+    #[error("its last {missing} commits are gone although they were confirmed")]
+    Behind {
+        /// How many.
+        missing: u64,
+    },
     /// A later version of the program wrote the store.
     #[error(
         "the store was written by a later version of evenrow (form {found}, this one reads {FORMAT}); \
@@ -90,6 +96,8 @@ pub struct Scanned {
     pub orphans: u64,
     /// The highest serial of parts.
     pub(super) serial: u64,
+    /// How many commits there have been.
+    pub(super) commits: u64,
 }
 
 /// Calls `each` for every entry of a range, page by page, smallest key first.
@@ -134,7 +142,7 @@ pub(super) fn payload(shelf: &dyn Shelf, key: &[u8], value: &[u8]) -> Result<Vec
     }
 }
 
-/// Checks the form and every checksum, and takes away parts that no record names.
+/// Checks the form, every checksum and that no commit is missing, and takes away parts that no record names.
 ///
 /// # Errors
 /// Says which record is damaged.
@@ -167,6 +175,10 @@ pub(super) fn scan(shelf: &dyn Shelf) -> Result<Scanned, ReadError> {
     })?;
     if let Some((_, key, _)) = heads.values().find(|(head, _, seen)| head.parts != *seen) {
         return Err(ReadError::record(key, &DecodeError::PartMissing));
+    }
+    found.commits = number_under(shelf, &keys::commits())?.unwrap_or_default();
+    if let Some(missing @ 1..) = shelf.noted().map(|n| n.saturating_sub(found.commits)) {
+        return Err(ReadError::Behind { missing });
     }
     found.orphans = orphans.len() as u64;
     for some in orphans.chunks(MOST_OPS) {
@@ -261,7 +273,7 @@ pub(super) fn held(shelf: &dyn Shelf, banks: &[Name]) -> Result<Option<u64>, Rea
     for bank in banks {
         let turn = match turn_of_checkpoint(shelf, bank)? {
             Some(turn) => turn,
-            None => joined(shelf, bank)?,
+            None => number_under(shelf, &keys::joined(bank))?.unwrap_or_default(),
         };
         least = Some(least.map_or(turn, |l| l.min(turn)));
     }
@@ -291,14 +303,15 @@ fn turn_of_checkpoint(shelf: &dyn Shelf, bank: &str) -> Result<Option<u64>, Read
     Ok(Some(turn))
 }
 
-fn joined(shelf: &dyn Shelf, bank: &str) -> Result<u64, ReadError> {
-    let key = keys::joined(bank);
-    match shelf.get(&key)? {
-        Some(value) => {
-            from_payload(&payload(shelf, &key, &value)?).map_err(|e| ReadError::record(&key, &e))
-        }
-        None => Ok(0),
-    }
+/// The number kept under a key.
+fn number_under(shelf: &dyn Shelf, key: &[u8]) -> Result<Option<u64>, ReadError> {
+    let Some(value) = shelf.get(key)? else {
+        return Ok(None);
+    };
+    let bytes = payload(shelf, key, &value)?;
+    from_payload(&bytes)
+        .map(Some)
+        .map_err(|e| ReadError::record(key, &e))
 }
 
 fn outbox(shelf: &dyn Shelf) -> Result<Vec<Delivery>, ReadError> {

@@ -53,6 +53,13 @@ pub trait Shelf: Send + Sync + 'static {
     /// Returns when everything applied so far is on the disk.
     fn sync(&self) -> Result<(), ShelfError>;
 
+    /// Notes outside the database how many commits it holds. Called after [`Shelf::sync`]; need not
+    /// outlive a power cut, so it may be behind but never ahead.
+    fn note(&self, commits: u64) -> Result<(), ShelfError>;
+
+    /// The last such note that can be read.
+    fn noted(&self) -> Option<u64>;
+
     /// Makes the database usable again after an error, without what was not synced.
     fn mend(&self) -> Result<(), ShelfError>;
 }

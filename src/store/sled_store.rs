@@ -7,8 +7,10 @@
 
 use std::fs::{self, File, TryLockError};
 use std::io::{self, ErrorKind, Read, Seek, Write};
+use std::os::unix::fs::FileExt;
 use std::path::{Path, PathBuf};
 use std::sync::{Arc, PoisonError, RwLock};
+use std::time::Duration;
 
 use crate::engine::History;
 use crate::model::{Name, Time};
@@ -126,9 +128,8 @@ pub fn open(settings: &StoreSettings, banks: &[Name], now: Time) -> Result<Opene
         folder: folder.to_owned(),
         why,
     })?;
-    let listed = recovered.unacknowledged.clone();
     Ok(Opened {
-        store: Journal::new(shelf, banks, settings.keep_days, scanned.serial, listed),
+        store: Journal::new(shelf, banks, settings.keep_days, &recovered),
         history: Arc::new(Past(dynamic)),
         recovered,
         set_aside,
@@ -259,7 +260,9 @@ fn open_checked(database: &Path, lock: &Arc<File>) -> Result<(SledShelf, Scanned
         match scan(&shelf) {
             Ok(scanned) => Ok((shelf, scanned)),
             Err(ReadError::Shelf(why)) => Err(shelf.judge(why)),
-            Err(e @ ReadError::Record { .. }) => Err(Trouble::Damaged(e.to_string())),
+            Err(e @ (ReadError::Record { .. } | ReadError::Behind { .. })) => {
+                Err(Trouble::Damaged(e.to_string()))
+            }
             Err(e @ ReadError::Newer { .. }) => Err(Trouble::Newer(e)),
         }
     };
@@ -283,6 +286,8 @@ struct Files {
     db: sled::Db,
     /// The data file once more, because only `sync_data` on it reaches the platter.
     data: File,
+    /// Holds the number of commits, see [`Shelf::note`].
+    note: File,
 }
 
 impl SledShelf {
@@ -312,7 +317,23 @@ impl SledShelf {
     }
 }
 
+/// Opens sled's files. A database that was just closed in this process lets go of its lock a moment
+/// later; another process cannot hold it, because the folder is ours.
 fn open_files(path: &Path) -> Result<Files, sled::Error> {
+    const ATTEMPTS: u32 = 40;
+    let mut attempt = 1;
+    loop {
+        match try_open(path) {
+            Err(sled::Error::Io(e)) if attempt < ATTEMPTS && e.to_string().contains("lock") => {
+                attempt += 1;
+                std::thread::sleep(Duration::from_millis(50));
+            }
+            other => return other,
+        }
+    }
+}
+
+fn try_open(path: &Path) -> Result<Files, sled::Error> {
     let config = sled::Config::new()
         .path(path)
         .cache_capacity(CACHE_BYTES)
@@ -320,9 +341,12 @@ fn open_files(path: &Path) -> Result<Files, sled::Error> {
         .mode(sled::Mode::LowSpace);
     let db = config.open()?;
     let data = File::options().write(true).open(path.join("db"))?;
+    let mut options = File::options();
+    let options = options.read(true).write(true).create(true).truncate(false);
+    let note = options.open(path.join("commits"))?;
     // The names of new files must survive a power cut as well.
     File::open(path)?.sync_all()?;
-    Ok(Files { db, data })
+    Ok(Files { db, data, note })
 }
 
 fn wrong(e: impl std::fmt::Display) -> ShelfError {
@@ -372,6 +396,22 @@ impl Shelf for SledShelf {
             files.db.flush().map_err(wrong)?;
             files.data.sync_data().map_err(wrong)
         })
+    }
+
+    fn note(&self, commits: u64) -> Result<(), ShelfError> {
+        let number = commits.to_le_bytes();
+        let sum = crc32fast::hash(&number).to_le_bytes();
+        let note = [&number[..], &sum].concat();
+        self.with(|files| files.note.write_all_at(&note, 0).map_err(wrong))
+    }
+
+    fn noted(&self) -> Option<u64> {
+        let mut note = [0; 12];
+        self.with(|files| files.note.read_exact_at(&mut note, 0).map_err(wrong))
+            .ok()?;
+        let (number, sum) = note.split_first_chunk::<8>()?;
+        let right = *sum == crc32fast::hash(number).to_le_bytes();
+        right.then(|| u64::from_le_bytes(*number))
     }
 
     fn mend(&self) -> Result<(), ShelfError> {

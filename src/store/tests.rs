@@ -127,8 +127,8 @@ fn a_newer_checkpoint_takes_the_place_of_the_older_and_leaves_no_parts() {
         drop(store);
         let (_, _, recovered) = place.open();
         assert_eq!(recovered.scanned.orphans, 0);
-        // The form, three banks that joined, one head and its four parts.
-        assert_eq!(recovered.scanned.records, 1 + 3 + 1 + 4);
+        // The form, the count, three banks that joined, one head and its four parts.
+        assert_eq!(recovered.scanned.records, 2 + 3 + 1 + 4);
         let found: Vec<_> = recovered
             .checkpoints
             .iter()

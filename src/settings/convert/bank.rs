@@ -191,11 +191,11 @@ fn limits_of(field: Field<WrittenLimits>, faults: &mut FaultList) -> Limits {
         lower: check.number(lower, "lower", any, "a number"),
         upper: check.number(upper, "upper", any, "a number"),
     };
-    if let (Some(lower), Some(upper)) = (&limits.lower, &limits.upper) {
-        if lower.value >= upper.value {
-            let hint = keys::example("bank", "limits");
-            check.add(&lower.place, "`lower` must lie below `upper`", hint);
-        }
+    if let (Some(lower), Some(upper)) = (&limits.lower, &limits.upper)
+        && lower.value >= upper.value
+    {
+        let hint = keys::example("bank", "limits");
+        check.add(&lower.place, "`lower` must lie below `upper`", hint);
     }
     limits
 }
@@ -207,13 +207,14 @@ fn margin_of(
 ) -> Option<f64> {
     let field = check.required(field, "margin");
     let margin = check.number(field, "margin", |x| x >= 0.0, "0 or more")?;
-    if let Some(step) = resolution.map(|spot| spot.value) {
-        if margin.value > 0.0 && margin.value < step {
-            let message = format!("`margin` is below the resolution, {step}");
-            let hint = "a difference smaller than the instrument's step cannot be judged; write at \
-                        least the resolution, or 0 when every difference matters";
-            check.add(&margin.place, message, hint);
-        }
+    if let Some(step) = resolution.map(|spot| spot.value)
+        && margin.value > 0.0
+        && margin.value < step
+    {
+        let message = format!("`margin` is below the resolution, {step}");
+        let hint = "a difference smaller than the instrument's step cannot be judged; write at least \
+                    the resolution, or 0 when every difference matters";
+        check.add(&margin.place, message, hint);
     }
     Some(margin.value)
 }

@@ -1,0 +1,267 @@
+//! Numbers and times as people read them.
+//!
+//! Owns how many digits a figure gets and how a time is written in the plant's zone. What must hold:
+//! single values have the resolution's digits, means and deviations one more; a figure that rounds to
+//! zero has no sign; times say their offset where a reader could doubt it. Deliberately absent: words.
+
+use jiff::tz::TimeZone;
+
+use crate::model::{Bank, Characteristic, Time, US_PER_DAY, US_PER_S};
+
+/// Most digits after the point; finer figures than a nanounit are no reading of an instrument.
+const MOST_PLACES: usize = 9;
+
+/// How many digits after the point figures of a bank get.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub struct Digits {
+    places: usize,
+}
+
+impl Digits {
+    /// From the resolution; without one from the margin, so that a tenth of it can be seen.
+    pub fn of(bank: &Bank) -> Self {
+        let Characteristic { resolution, .. } = bank.characteristic;
+        let step = resolution.filter(|r| *r > 0.0);
+        let tenth = (bank.margin > 0.0).then(|| bank.margin / 10.0);
+        Self {
+            places: step.or(tenth).map_or(3, places_of),
+        }
+    }
+
+    /// A single value.
+    pub fn value(self, x: f64) -> String {
+        plain(x, self.places)
+    }
+
+    /// A mean or standard deviation.
+    pub fn mean(self, x: f64) -> String {
+        plain(x, self.places + 1)
+    }
+
+    /// A deviation, with its sign.
+    pub fn deviation(self, x: f64) -> String {
+        signed(x, self.places + 1)
+    }
+}
+
+/// Digits after the point that show `step` exactly (0.05 needs two), as far as doubles allow.
+fn places_of(step: f64) -> usize {
+    (0..=MOST_PLACES)
+        .find(|&places| {
+            let scaled = step * 10_f64.powi(places as i32);
+            scaled >= 0.999 && (scaled - scaled.round()).abs() < 1e-6 * scaled
+        })
+        .unwrap_or_else(|| {
+            let first = -step.log10().floor();
+            (first.max(0.0) as usize + 1).min(MOST_PLACES)
+        })
+}
+
+/// A number with a true minus sign and no negative zero.
+pub fn plain(x: f64, places: usize) -> String {
+    if !x.is_finite() {
+        return "–".to_owned();
+    }
+    let text = format!("{:.*}", places.min(MOST_PLACES), x.abs());
+    if x < 0.0 && text.bytes().any(|b| (b'1'..=b'9').contains(&b)) {
+        format!("−{text}")
+    } else {
+        text
+    }
+}
+
+/// The same with a plus sign on what is above zero.
+pub fn signed(x: f64, places: usize) -> String {
+    let text = plain(x, places);
+    let is_zero = !text.bytes().any(|b| (b'1'..=b'9').contains(&b));
+    if x > 0.0 && x.is_finite() && !is_zero {
+        format!("+{text}")
+    } else {
+        text
+    }
+}
+
+/// A probability with three digits.
+pub fn probability(p: f64) -> String {
+    if !p.is_finite() {
+        return "–".to_owned();
+    }
+    if p == 0.0 {
+        return "below 1e−300".to_owned();
+    }
+    if p < 0.001 {
+        return format!("{p:.2e}").replace("e-", "e−");
+    }
+    format!("{p:.*}", if p < 0.1 { 4 } else { 3 })
+}
+
+/// A statistic with five significant digits or so.
+pub fn statistic(x: f64) -> String {
+    let size = x.abs();
+    if size >= 1e6 {
+        return format!("{x:.3e}");
+    }
+    plain(x, if size >= 1000.0 { 1 } else { 4 })
+}
+
+/// Degrees of freedom: whole ones bare, others with one digit.
+pub fn degrees(df: &[f64]) -> String {
+    let one = |x: &f64| {
+        if x.is_infinite() {
+            "∞".to_owned()
+        } else if (x - x.round()).abs() < 1e-9 {
+            plain(*x, 0)
+        } else {
+            plain(*x, 1)
+        }
+    };
+    df.iter().map(one).collect::<Vec<_>>().join("; ")
+}
+
+/// A count with thin spaces between thousands.
+pub fn count(n: u64) -> String {
+    let digits = n.to_string();
+    let mut out = String::with_capacity(digits.len() + digits.len() / 3 * 3);
+    for (at, digit) in digits.chars().enumerate() {
+        if at > 0 && (digits.len() - at).is_multiple_of(3) {
+            out.push('\u{202f}');
+        }
+        out.push(digit);
+    }
+    out
+}
+
+/// A length of time in its two largest units at most.
+pub fn span_of_time(us: i64) -> String {
+    let s = us.max(0) / US_PER_S;
+    match s {
+        0..60 => format!("{s} s"),
+        60..3600 => format!("{} min", s / 60),
+        3600..86_400 if s % 3600 < 60 => format!("{} h", s / 3600),
+        3600..86_400 => format!("{} h {} min", s / 3600, s % 3600 / 60),
+        _ if s < 2 * 86_400 => "1 day".to_owned(),
+        _ => format!("{} days", s / 86_400),
+    }
+}
+
+/// Writes times in one zone, seen from one moment.
+#[derive(Clone, Debug)]
+pub struct Times {
+    /// The plant's zone.
+    pub zone: TimeZone,
+    /// The moment at which the page is made.
+    pub now: Time,
+}
+
+impl Times {
+    /// Day, time to the second and offset.
+    pub fn full(&self, at: Time) -> String {
+        self.write(at, "%-d %b %Y, %H:%M:%S %:z")
+    }
+
+    /// Day, time to the minute and offset.
+    pub fn minute(&self, at: Time) -> String {
+        self.write(at, "%-d %b %Y, %H:%M %:z")
+    }
+
+    /// Hour and minute, with the day when that is not today.
+    pub fn short(&self, at: Time) -> String {
+        if self.day(at) == self.day(self.now) {
+            self.write(at, "%H:%M")
+        } else {
+            self.write(at, "%-d %b %H:%M")
+        }
+    }
+
+    /// The same to the second.
+    pub fn second(&self, at: Time) -> String {
+        if self.day(at) == self.day(self.now) {
+            self.write(at, "%H:%M:%S")
+        } else {
+            self.write(at, "%-d %b %H:%M:%S")
+        }
+    }
+
+    /// How long ago.
+    pub fn ago(&self, at: Time) -> String {
+        span_of_time(self.now.us_since(at))
+    }
+
+    /// The last full hour at or before `at`, by the clock on the wall.
+    pub fn hour_start(&self, at: Time) -> Time {
+        const HOUR_US: i64 = US_PER_DAY / 24;
+        let offset_us = at.to_jiff().map_or(0, |stamp| {
+            i64::from(self.zone.to_offset(stamp).seconds()) * US_PER_S
+        });
+        let wall = at.us().saturating_add(offset_us);
+        Time::from_us(wall.div_euclid(HOUR_US) * HOUR_US - offset_us)
+    }
+
+    fn day(&self, at: Time) -> String {
+        self.write(at, "%F")
+    }
+
+    fn write(&self, at: Time, form: &str) -> String {
+        match at.to_jiff() {
+            Some(stamp) => stamp
+                .to_zoned_datetime(self.zone.clone())
+                .strftime(form)
+                .to_string(),
+            None => at.to_string(),
+        }
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn numbers_are_rounded_to_the_resolution() {
+        for (step, places) in [
+            (0.1, 1),
+            (0.05, 2),
+            (0.25, 2),
+            (1.0, 0),
+            (5.0, 0),
+            (0.001, 3),
+        ] {
+            assert_eq!(places_of(step), places, "{step}");
+        }
+        let digits = Digits { places: 1 };
+        assert_eq!(digits.value(503.14), "503.1");
+        assert_eq!(digits.deviation(-1.234), "−1.23");
+        assert_eq!(digits.deviation(0.456), "+0.46");
+        assert_eq!(digits.deviation(-0.001), "0.00");
+        assert_eq!(digits.deviation(0.001), "0.00");
+        assert_eq!(digits.mean(f64::NAN), "–");
+    }
+
+    #[test]
+    fn probabilities_and_counts_read_well() {
+        for (p, text) in [
+            (0.022_661, "0.0227"),
+            (0.5, "0.500"),
+            (3.14e-9, "3.14e−9"),
+            (0.0, "below 1e−300"),
+            (f64::NAN, "–"),
+        ] {
+            assert_eq!(probability(p), text);
+        }
+        assert_eq!(count(1_234_567), "1\u{202f}234\u{202f}567");
+        assert_eq!(degrees(&[9.0, 90.0]), "9; 90");
+        assert_eq!(degrees(&[3.0, 17.25]), "3; 17.2");
+    }
+
+    #[test]
+    fn times_are_the_plants() {
+        let zone = TimeZone::get("Europe/Lisbon").expect("bundled");
+        let at = Time::parse_rfc3339("2026-07-03T14:03:22Z").expect("valid");
+        let times = Times { zone, now: at };
+        assert_eq!(times.full(at), "3 Jul 2026, 15:03:22 +01:00");
+        assert_eq!(times.short(at), "15:03");
+        assert_eq!(times.short(at.plus_us(-US_PER_DAY)), "2 Jul 15:03");
+        assert_eq!(times.second(times.hour_start(at)), "15:00:00");
+        assert_eq!(times.ago(at.plus_us(-754 * US_PER_S)), "12 min");
+    }
+}

@@ -1,0 +1,111 @@
+//! Live updates: a stream of server-sent events that says when a page's contents have changed.
+//!
+//! The event carries the snapshot's version only; the script then asks for the page again and swaps
+//! what differs, so that there is one way in which a page is made. What must hold: at most one event
+//! per [`PAUSE`]; a stream for one bank is silent while that bank does not change; every stream ends
+//! with the shutdown.
+
+use std::convert::Infallible;
+use std::sync::Arc;
+use std::time::Duration;
+
+use axum::extract::{Query, State};
+use axum::response::sse::{Event, KeepAlive, Sse};
+use serde::Deserialize;
+use tokio::sync::watch;
+use tokio_stream::Stream;
+use tokio_util::sync::CancellationToken;
+
+use crate::engine::{BankView, Snapshot};
+
+use super::site::App;
+
+/// People read slower than measurements arrive.
+const PAUSE: Duration = Duration::from_secs(2);
+/// Proxies cut connections that say nothing for a minute.
+const KEEP_ALIVE: Duration = Duration::from_secs(20);
+
+/// What a page wants to hear about.
+#[derive(Debug, Deserialize)]
+pub struct Wanted {
+    bank: Option<String>,
+}
+
+/// The stream.
+pub async fn stream(
+    State(app): State<App>,
+    Query(wanted): Query<Wanted>,
+) -> Sse<impl Stream<Item = Result<Event, Infallible>>> {
+    let listener = Listener {
+        seen: seen(&app.now(), wanted.bank.as_deref()),
+        bank: wanted.bank,
+        snapshot: app.site.snapshot.clone(),
+        shutdown: app.shutdown.clone(),
+    };
+    let (tell, told) = tokio::sync::mpsc::channel(1);
+    tokio::spawn(listener.run(tell));
+    Sse::new(tokio_stream::wrappers::ReceiverStream::new(told))
+        .keep_alive(KeepAlive::new().interval(KEEP_ALIVE))
+}
+
+/// What a page of this bank, or of the plant, is made from.
+#[derive(Clone)]
+enum Seen {
+    Bank(Option<Arc<BankView>>),
+    Plant(u64),
+}
+
+fn seen(snapshot: &Snapshot, bank: Option<&str>) -> Seen {
+    match bank {
+        None => Seen::Plant(snapshot.version),
+        Some(name) => {
+            let mut banks = snapshot.banks.iter();
+            Seen::Bank(banks.find(|b| &*b.bank.name == name).cloned())
+        }
+    }
+}
+
+fn same(a: &Seen, b: &Seen) -> bool {
+    match (a, b) {
+        (Seen::Plant(a), Seen::Plant(b)) => a == b,
+        (Seen::Bank(Some(a)), Seen::Bank(Some(b))) => Arc::ptr_eq(a, b),
+        (Seen::Bank(None), Seen::Bank(None)) => true,
+        _ => false,
+    }
+}
+
+struct Listener {
+    seen: Seen,
+    bank: Option<String>,
+    snapshot: watch::Receiver<Arc<Snapshot>>,
+    shutdown: CancellationToken,
+}
+
+impl Listener {
+    /// Tells of changes until the viewer has gone, the engine has ended or the shutdown comes.
+    async fn run(mut self, tell: tokio::sync::mpsc::Sender<Result<Event, Infallible>>) {
+        loop {
+            tokio::select! {
+                () = self.shutdown.cancelled() => return,
+                () = tell.closed() => return,
+                changed = self.snapshot.changed() => if changed.is_err() { return },
+            }
+            let snapshot = self.snapshot.borrow_and_update().clone();
+            let now = seen(&snapshot, self.bank.as_deref());
+            if same(&self.seen, &now) {
+                continue;
+            }
+            self.seen = now;
+            let event = Event::default()
+                .event("changed")
+                .data(snapshot.version.to_string());
+            if tell.send(Ok(event)).await.is_err() {
+                return;
+            }
+            tokio::select! {
+                () = self.shutdown.cancelled() => return,
+                () = tokio::time::sleep(PAUSE) => {}
+            }
+        }
+    }
+}

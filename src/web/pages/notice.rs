@@ -1,0 +1,217 @@
+//! One notice: as a card on its bank's page, and as a page of its own; acknowledging it.
+
+use axum::extract::{Extension, Form, Path, State};
+use axum::response::{IntoResponse, Redirect, Response};
+use maud::{Markup, html};
+use serde::Deserialize;
+
+use crate::notice::{Kind, Notice, State as NoticeState};
+use crate::web::access::{Caller, SessionPass};
+use crate::web::api::notices::submit;
+use crate::web::format::{self, Digits};
+use crate::web::pictures::glyph::{self, Glyph};
+use crate::web::problem::Problem;
+use crate::web::sessions::Field;
+use crate::web::signin::percent;
+use crate::web::site::{App, bank};
+
+use super::frame::{Page, Scene, render};
+
+/// Where a card stands.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum Place {
+    /// On its bank's page.
+    Bank,
+    /// On its own page.
+    Own,
+}
+
+/// The page of one notice.
+pub async fn page(
+    State(app): State<App>,
+    Extension(caller): Extension<Caller>,
+    Path(id): Path<String>,
+) -> Result<Markup, Problem> {
+    let snapshot = app.now();
+    let notice = app.notice(&snapshot, &id).await?;
+    let scene = Scene::new(
+        &app,
+        &snapshot,
+        &caller,
+        format!("/notices/{}", percent(&id)),
+    );
+    let main = html! { (card(&scene, &notice, Place::Own)) };
+    let live = bank(&snapshot, &notice.bank)
+        .is_ok()
+        .then(|| format!("/live?bank={}", percent(&notice.bank)));
+    Ok(render(
+        &scene,
+        Page {
+            title: notice.subject.clone(),
+            live,
+            way: "",
+            main,
+        },
+    ))
+}
+
+/// The shape of what a notice is about.
+pub fn shape(notice: &Notice) -> Glyph {
+    if !notice.state.is_active() {
+        return Glyph::Even;
+    }
+    match notice.kind {
+        Kind::SpreadApart => Glyph::Spread,
+        Kind::SourceSilent | Kind::SourceStuck => Glyph::Silent,
+        Kind::IntakeTrouble | Kind::ClockWrong => Glyph::Trouble,
+        Kind::LevelApart | Kind::BankSplit | Kind::LevelBelowDeclared => Glyph::Apart,
+    }
+}
+
+/// A notice whole.
+pub fn card(scene: &Scene<'_>, notice: &Notice, place: Place) -> Markup {
+    let active = if notice.state.is_active() {
+        " active"
+    } else {
+        ""
+    };
+    let name = format!("n-{}", notice.id);
+    html! {
+        article class={ "notice" (active) } aria-labelledby=(name) {
+            header {
+                (glyph::draw(shape(notice)))
+                div {
+                    @if place == Place::Own { h1 id=(name) { (notice.subject) } }
+                    @else { h2 id=(name) { (notice.subject) } }
+                    p class="quiet" { (notice.kind.words()) " · " (notice.state.words()) " · priority "
+                        (notice.priority.word()) " · "
+                        @if place == Place::Own { a href={ "/banks/" (percent(&notice.bank)) } { (notice.bank) } }
+                        @else { a href={ "/notices/" (percent(&notice.id)) } { (notice.id) } } }
+                }
+            }
+            (named(scene, notice))
+            p class="text" { (notice.text) }
+            @if !notice.advice.is_empty() { p class="advice" { strong { "To do " } (notice.advice) } }
+            (course(scene, notice))
+            (acknowledge_part(scene, notice))
+        }
+    }
+}
+
+fn named(scene: &Scene<'_>, notice: &Notice) -> Markup {
+    let found = bank(scene.snapshot, &notice.bank).ok();
+    let digits = found.map(|(_, view)| Digits::of(&view.bank));
+    let figure = |x: f64| match (notice.kind, digits) {
+        (Kind::SpreadApart, _) => format!("{}×", format::plain(x, 2)),
+        (_, Some(digits)) => format!("{} {}", digits.deviation(x), notice.unit),
+        (_, None) => format!("{} {}", format::signed(x, 3), notice.unit),
+    };
+    html! {
+        @if !notice.sources.is_empty() {
+            ul class="named" {
+                @for source in &notice.sources {
+                    li { strong { (source.source) } " " span class="figure" { (figure(source.deviation)) }
+                        " " span class="quiet" { (figure(source.low)) " to " (figure(source.high)) } }
+                }
+            }
+        }
+    }
+}
+
+/// When it began, was called, came back and was seen.
+fn course(scene: &Scene<'_>, notice: &Notice) -> Markup {
+    let times = &scene.times;
+    let since = notice.since;
+    html! {
+        dl class="course" {
+            div { dt { "since" } dd { (scene.time(since.at, &times.full(since.at)))
+                @if since.earliest != since.latest {
+                    span class="quiet" { " between " (times.second(since.earliest)) " and " (times.second(since.latest)) } } } }
+            div { dt { "called" } dd { (scene.time(notice.raised, &times.full(notice.raised)))
+                span class="quiet" { " by the look over " (notice.span) " values" } } }
+            @if let Some(at) = notice.returned { div { dt { "returned" } dd { (scene.time(at, &times.full(at))) } } }
+            @if let Some(seen) = &notice.acknowledged {
+                div { dt { "acknowledged" } dd { (scene.time(seen.at, &times.full(seen.at))) " by " (seen.by)
+                    @if !seen.comment.is_empty() { span class="comment" { "“" (seen.comment) "”" } } } }
+            }
+        }
+    }
+}
+
+fn awaits(state: NoticeState) -> bool {
+    matches!(
+        state,
+        NoticeState::Unacknowledged | NoticeState::ReturnedUnacknowledged
+    )
+}
+
+fn acknowledge_part(scene: &Scene<'_>, notice: &Notice) -> Markup {
+    html! {
+        @if awaits(notice.state) {
+            @match (&scene.caller.session, &scene.app.tokens) {
+                (Some(pass), _) if scene.caller.rights.act => (form(scene, notice, pass)),
+                (Some(_), _) => p class="quiet" { "Your token may only look; acknowledging needs one that may act." },
+                (None, Some(_)) => p { a class="button" href={ "/sign-in?next=" (percent(&scene.here)) } { "Sign in to acknowledge" } },
+                (None, None) => p class="quiet" { "To acknowledge here, give evenrow a token file: "
+                    code { "token_file" } " under " code { "[web]" } "." },
+            }
+        }
+    }
+}
+
+fn form(scene: &Scene<'_>, notice: &Notice, pass: &SessionPass) -> Markup {
+    let id = &notice.id;
+    html! {
+        details class="act" id={ "act-" (id) } {
+            summary class="button" { "Acknowledge" }
+            form class="entry" method="post" action={ "/notices/" (percent(id)) "/acknowledge" } {
+                input type="hidden" name="field" value=(pass.field);
+                input type="hidden" name="back" value=(scene.here);
+                label for={ "by-" (id) } { "Your name" }
+                input id={ "by-" (id) } name="by" required maxlength="80" autocomplete="name";
+                label for={ "comment-" (id) } { "Comment, if you like" }
+                textarea id={ "comment-" (id) } name="comment" rows="2" maxlength="2000" {}
+                button { "Acknowledge" }
+            }
+        }
+    }
+}
+
+/// The filled form.
+#[derive(Deserialize)]
+pub struct Filled {
+    field: String,
+    by: String,
+    #[serde(default)]
+    comment: String,
+    #[serde(default)]
+    back: String,
+}
+
+/// Takes the form; the guard has seen to it that the caller may act.
+pub async fn acknowledge(
+    State(app): State<App>,
+    Extension(caller): Extension<Caller>,
+    Path(id): Path<String>,
+    Form(filled): Form<Filled>,
+) -> Result<Response, Problem> {
+    let back = crate::web::signin::local(&filled.back);
+    let pass = caller.session.ok_or_else(|| {
+        Problem::forbidden("this form works for a signed-in person; with a token use the interface")
+    })?;
+    match app
+        .sessions
+        .spend(&pass.id, &filled.field, app.site.clock.now())
+    {
+        Field::Fresh => {}
+        // The button was pressed twice: once is enough.
+        Field::Repeated => return Ok(Redirect::to(&back).into_response()),
+        Field::Wrong => {
+            return Err(Problem::forbidden(
+                "this form was too old; go back, load the page again and acknowledge once more",
+            ));
+        }
+    }
+    submit(&app, &id, &filled.by, &filled.comment).await?;
+    Ok(Redirect::to(&back).into_response())
+}

@@ -1,0 +1,137 @@
+//! The server: routes, the layers around them, and a bounded end.
+//!
+//! What must hold: every answer carries the security headers; bodies, requests and the drain are
+//! bounded; live streams end with the shutdown, so that the drain is short.
+
+use std::time::Duration;
+
+use axum::Router;
+use axum::http::{HeaderName, HeaderValue, StatusCode, header};
+use axum::middleware::{from_fn_with_state, map_response};
+use axum::response::Response;
+use axum::routing::{get, post};
+use tokio::net::TcpListener;
+use tokio_util::sync::CancellationToken;
+use tower_http::compression::CompressionLayer;
+use tower_http::limit::RequestBodyLimitLayer;
+use tower_http::timeout::TimeoutLayer;
+
+use super::site::{App, Site};
+use super::tokens::TokenError;
+use super::{access, api, assets, health, live, metrics, openapi, pages, problem, signin};
+
+/// A comment of a few pages fits; nothing we take is larger.
+const BODY_LIMIT_BYTES: usize = 64 * 1024;
+/// Longer than a command may wait for its answer.
+const REQUEST_TIMEOUT: Duration = Duration::from_secs(30);
+/// The whole process must end within 5 s; this leaves 2 s to the rooms that end after us.
+const DRAIN_WITHIN: Duration = Duration::from_secs(3);
+
+/// Why pages and interface are not served.
+#[derive(Debug, thiserror::Error)]
+pub enum ServeError {
+    /// The tokens cannot be used.
+    #[error(transparent)]
+    Tokens(#[from] TokenError),
+    /// The histograms cannot be made.
+    #[error("the duration metrics cannot be made: {0}")]
+    Durations(String),
+    /// The listener has no address.
+    #[error("the listening address cannot be read: {0}")]
+    Address(#[source] std::io::Error),
+    /// Accepting connections failed.
+    #[error("serving pages failed: {0}")]
+    Serving(#[source] std::io::Error),
+}
+
+/// Serves until `shutdown`, then ends within three seconds.
+///
+/// # Errors
+/// [`ServeError`] when the token file cannot be used or the listener fails.
+pub async fn serve(
+    listener: TcpListener,
+    site: Site,
+    shutdown: CancellationToken,
+) -> Result<(), ServeError> {
+    let local = listener.local_addr().map_err(ServeError::Address)?;
+    let app = App::new(site, local, shutdown.clone())?;
+    let serving = axum::serve(listener, router(app))
+        .with_graceful_shutdown(shutdown.clone().cancelled_owned());
+    let bound = async {
+        shutdown.cancelled().await;
+        tokio::time::sleep(DRAIN_WITHIN).await;
+    };
+    tokio::select! {
+        served = serving => served.map_err(ServeError::Serving),
+        () = bound => {
+            tracing::info!("some viewers were still connected at the end and were cut off");
+            Ok(())
+        }
+    }
+}
+
+/// All routes with their layers.
+pub fn router(app: App) -> Router {
+    let guarded = Router::new()
+        .route("/", get(pages::plant::page))
+        .route("/banks/{bank}", get(pages::bank::page))
+        .route("/notices", get(pages::notices::list))
+        .route("/notices/{id}", get(pages::notice::page))
+        .route(
+            "/notices/{id}/acknowledge",
+            post(pages::notice::acknowledge),
+        )
+        .route("/live", get(live::stream))
+        .route("/metrics", get(metrics::answer))
+        .route("/api/v1/openapi.json", get(openapi::answer))
+        .nest("/api/v1", api::router())
+        .layer(from_fn_with_state(app.clone(), access::guard));
+    let open = Router::new()
+        .route("/sign-in", get(signin::form).post(signin::enter))
+        .route("/sign-out", post(signin::leave))
+        .route("/health/live", get(health::live))
+        .route("/health/ready", get(health::ready))
+        .route("/assets/{file}", get(assets::answer));
+    guarded
+        .merge(open)
+        .layer(RequestBodyLimitLayer::new(BODY_LIMIT_BYTES))
+        .layer(TimeoutLayer::with_status_code(
+            StatusCode::REQUEST_TIMEOUT,
+            REQUEST_TIMEOUT,
+        ))
+        .layer(from_fn_with_state(app.clone(), problem::dress))
+        .layer(CompressionLayer::new())
+        .layer(map_response(headers))
+        .with_state(app)
+}
+
+/// Nothing but what we serve ourselves may load, frame or receive anything.
+const POLICY: &str = "default-src 'none'; style-src 'self'; script-src 'self'; img-src data:; \
+    connect-src 'self'; form-action 'self'; base-uri 'none'; frame-ancestors 'none'";
+
+async fn headers(mut response: Response) -> Response {
+    let all = response.headers_mut();
+    for (name, text) in [
+        (header::CONTENT_SECURITY_POLICY, POLICY),
+        (header::X_CONTENT_TYPE_OPTIONS, "nosniff"),
+        (header::X_FRAME_OPTIONS, "DENY"),
+        (header::REFERRER_POLICY, "same-origin"),
+        (
+            HeaderName::from_static("cross-origin-opener-policy"),
+            "same-origin",
+        ),
+        (
+            HeaderName::from_static("cross-origin-resource-policy"),
+            "same-origin",
+        ),
+        (
+            HeaderName::from_static("permissions-policy"),
+            "camera=(), microphone=(), geolocation=()",
+        ),
+    ] {
+        all.insert(name, HeaderValue::from_static(text));
+    }
+    all.entry(header::CACHE_CONTROL)
+        .or_insert(HeaderValue::from_static("no-store"));
+    response
+}

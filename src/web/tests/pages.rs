@@ -1,0 +1,195 @@
+//! Pages: whole, safe, and saying what they must.
+
+use std::sync::Arc;
+
+use axum::http::StatusCode;
+
+use crate::engine::{Condition, Snapshot};
+use crate::web::sample::{self, Story};
+
+use super::{Bench, Listening};
+
+fn bench() -> Bench {
+    Bench::new(Some("both-token\n"), Listening::Loopback)
+}
+
+/// Everything that a page may hold only in matching pairs.
+fn balanced(html: &str) -> bool {
+    [
+        "svg", "g", "table", "section", "details", "article", "form", "a", "li", "text", "defs",
+    ]
+    .iter()
+    .all(|tag| {
+        let opened =
+            html.matches(&format!("<{tag} ")).count() + html.matches(&format!("<{tag}>")).count();
+        opened == html.matches(&format!("</{tag}>")).count()
+    })
+}
+
+#[tokio::test]
+async fn every_page_is_whole_and_asks_nobody_else() {
+    let bench = bench();
+    for path in [
+        "/",
+        "/banks/filler-2",
+        "/banks/filler-2?span=640",
+        "/banks/filler-3",
+        "/banks/mould-b%20bore",
+        "/banks/spindles",
+        "/banks/caps",
+        "/banks/filler-4",
+        "/banks/sealer",
+        "/notices",
+        "/notices?after=filler-2-2026-0006",
+        "/notices/filler-2-2026-0007",
+        "/notices/filler-2-2026-0005",
+        "/sign-in",
+    ] {
+        let page = bench.page(path).await;
+        assert_eq!(page.status, StatusCode::OK, "{path}: {}", page.body);
+        assert!(
+            page.header("content-type").starts_with("text/html"),
+            "{path}"
+        );
+        let policy = page.header("content-security-policy");
+        assert!(
+            policy.contains("default-src 'none'") && !policy.contains("unsafe"),
+            "{path}"
+        );
+        assert!(balanced(&page.body), "{path}: unbalanced");
+        for foreign in [
+            "src=\"http",
+            "href=\"http",
+            " style=",
+            "<style",
+            "onclick",
+            "NaN",
+            ">inf<",
+            "\"inf",
+        ] {
+            let found = page.body.find(foreign).map(|at| {
+                page.body
+                    .chars()
+                    .skip(at.saturating_sub(60))
+                    .take(120)
+                    .collect::<String>()
+            });
+            assert_eq!(found, None, "{path}: {foreign}");
+        }
+        assert!(
+            page.body
+                .contains("no interlock and no legal measuring instrument"),
+            "{path}: cautions"
+        );
+        let pictures = page.body.matches("role=\"img\"").count();
+        let described =
+            page.body.matches("<title id=").count() + page.body.matches("class=\"scale\"").count();
+        assert_eq!(pictures, described, "{path}: every picture has its title");
+    }
+}
+
+#[tokio::test]
+async fn the_plant_says_how_each_bank_stands() {
+    let page = bench().page("/").await.body;
+    for words in [
+        "<strong>level apart</strong><span>07 −1.62 g</span>",
+        "<strong>even</strong>",
+        "<strong>spread apart</strong><span>cavity 11 spread 2.9×</span>",
+        "<strong>source silent</strong><span>05</span>",
+        "6 of 10 values per source so far",
+        "<strong>waiting</strong>",
+        "Arrivals that belong to no bank",
+        "href=\"/banks/mould-b%20bore\"",
+        "15:03:22 +01:00",
+    ] {
+        assert!(page.contains(words), "{words}");
+    }
+    assert!(!page.contains("Broker"), "no trouble, no words about it");
+}
+
+#[tokio::test]
+async fn trouble_is_said_plainly() {
+    let bench = bench();
+    let mut now = sample::snapshot();
+    now.broker =
+        Condition::Trouble("connection refused at 127.0.0.1:1883, trying again in 8 s".into());
+    now.store = Condition::Trouble("the disk is full".into());
+    now.outbox = 2;
+    now.outbox_trouble = Some("the broker is away".into());
+    bench.snapshot.send_replace(Arc::new(now));
+    let page = bench.page("/").await.body;
+    for words in [
+        "Broker trouble",
+        "connection refused",
+        "Store trouble",
+        "the disk is full",
+        "2 waiting",
+    ] {
+        assert!(page.contains(words), "{words}");
+    }
+}
+
+#[tokio::test]
+async fn a_bank_names_its_source_by_word_and_shape() {
+    let page = bench().page("/banks/filler-2").await.body;
+    for words in [
+        "filler-2: 07 low by 1.62 g",
+        "class=\"tag\"",
+        "07 low</text>",
+        "Which sources are apart, and by how much?",
+        "the margin, 0.8 g wide",
+        "How did each source stand over time?",
+        "Sign in to acknowledge",
+        "decides: significant",
+        "Brown–Forsythe",
+        "&lt;b&gt;503.1&lt;/b&gt;",
+        "not a number",
+    ] {
+        assert!(page.contains(words), "{words}");
+    }
+    let notice = page.find("07 low by 1.62").expect("the notice");
+    let picture = page.find("Which sources are apart").expect("the picture");
+    assert!(notice < picture, "what asks for somebody comes first");
+}
+
+#[tokio::test]
+async fn a_plant_without_banks_and_an_unknown_bank_are_designed() {
+    let bench = bench();
+    let empty = Snapshot {
+        banks: Vec::new(),
+        ..sample::snapshot()
+    };
+    bench.snapshot.send_replace(Arc::new(empty));
+    assert!(bench.page("/").await.body.contains("No bank yet"));
+    let missing = bench.page("/banks/none").await;
+    assert_eq!(missing.status, StatusCode::NOT_FOUND);
+    assert!(
+        missing.body.contains("There is no bank"),
+        "{}",
+        missing.body
+    );
+}
+
+#[tokio::test]
+async fn a_large_bank_fits_the_wire() {
+    let bench = bench();
+    let page = bench.page("/banks/filler-4").await.body;
+    assert!(page.len() < 400_000, "{} bytes", page.len());
+    let two = Snapshot {
+        banks: vec![Arc::new(sample::view(
+            sample::bank(
+                "pair",
+                "press",
+                sample::snapshot().banks[0].bank.characteristic.clone(),
+                &sample::numbered(2),
+                0.0,
+            ),
+            Story::Even,
+            3,
+        ))],
+        ..sample::snapshot()
+    };
+    bench.snapshot.send_replace(Arc::new(two));
+    let page = bench.page("/banks/pair").await;
+    assert_eq!(page.status, StatusCode::OK, "no margin, two sources");
+}

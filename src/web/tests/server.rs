@@ -1,0 +1,76 @@
+//! The real server on a real port.
+
+use std::time::Duration;
+
+use tokio::io::{AsyncReadExt as _, AsyncWriteExt as _};
+use tokio::net::{TcpListener, TcpStream};
+use tokio_util::sync::CancellationToken;
+
+use crate::web::sample;
+use crate::web::serve;
+
+use super::{settings, site};
+
+/// Set to a number of seconds to look at the sample plant in a browser meanwhile.
+const SHOW: &str = "EVENROW_SHOW_S";
+/// Where, then.
+const SHOW_AT: &str = "EVENROW_SHOW_AT";
+
+#[tokio::test]
+async fn a_live_stream_tells_of_changes_and_ends_with_the_shutdown() {
+    let folder = tempfile::tempdir().expect("a folder");
+    let tokens = folder.path().join("tokens");
+    std::fs::write(&tokens, "both-token\n").expect("written");
+    let at = std::env::var(SHOW_AT).unwrap_or_else(|_| "127.0.0.1:0".to_owned());
+    let listener = TcpListener::bind(at).await.expect("a port");
+    let local = listener.local_addr().expect("an address");
+    let (site, snapshot) = site(settings(Some(tokens)));
+    let shutdown = CancellationToken::new();
+    let serving = tokio::spawn(serve(listener, site, shutdown.clone()));
+
+    if let Some(seconds) = std::env::var(SHOW).ok().and_then(|s| s.parse().ok()) {
+        eprintln!("the sample plant is at http://{local}");
+        tokio::time::sleep(Duration::from_secs(seconds)).await;
+    }
+
+    let mut viewer = TcpStream::connect(local).await.expect("connected");
+    let ask = "GET /live?bank=filler-2 HTTP/1.1\r\nHost: x\r\n\r\n";
+    viewer.write_all(ask.as_bytes()).await.expect("sent");
+    let head = read_until(&mut viewer, "text/event-stream").await;
+    assert!(head.starts_with("HTTP/1.1 200"), "{head}");
+    // Another version with the same bank inside is no change for this stream; another bank is.
+    let mut next = sample::snapshot();
+    next.banks.clone_from(&snapshot.borrow().banks);
+    next.version = 2;
+    snapshot.send_replace(std::sync::Arc::new(next));
+    tokio::time::sleep(Duration::from_millis(100)).await;
+    let mut next = sample::snapshot();
+    next.version = 3;
+    snapshot.send_replace(std::sync::Arc::new(next));
+    let told = read_until(&mut viewer, "data: ").await;
+    assert!(
+        told.contains("event: changed") && told.contains("data: 3"),
+        "{told}"
+    );
+
+    shutdown.cancel();
+    let ended = tokio::time::timeout(Duration::from_secs(4), serving).await;
+    assert!(matches!(ended, Ok(Ok(Ok(())))), "{ended:?}");
+}
+
+async fn read_until(viewer: &mut TcpStream, wanted: &str) -> String {
+    let mut text = String::new();
+    let mut buffer = [0_u8; 1024];
+    let reading = async {
+        while !text.contains(wanted) {
+            match viewer.read(&mut buffer).await {
+                Ok(n) if n > 0 => text.push_str(&String::from_utf8_lossy(&buffer[..n])),
+                _ => break,
+            }
+        }
+    };
+    tokio::time::timeout(Duration::from_secs(5), reading)
+        .await
+        .expect("in time");
+    text
+}
