@@ -4,6 +4,7 @@
 //! Deliberately absent: clocks, files, formats, statistics.
 
 mod bank;
+mod figures;
 mod reason;
 mod time;
 mod value;
@@ -11,6 +12,7 @@ mod value;
 pub use bank::{
     Bank, BankIx, Budget, BudgetError, Characteristic, Layout, Pairing, SourceIx, Sources,
 };
+pub use figures::{fixed, signed};
 pub use reason::{Reason, Refusal};
 pub use time::{Time, US_PER_DAY, US_PER_S};
 pub use value::{Value, ValueError};
@@ -33,4 +35,31 @@ pub struct Measurement {
     pub taken: Option<Time>,
     /// The cycle or sequence number, where the payload carries one.
     pub cycle: Option<i64>,
+}
+
+/// A name as one level of a topic: `/`, `+`, `#`, blanks and control characters become `-`. Settings
+/// see to it that no two banks of a plant become the same.
+pub fn topic_name(name: &str) -> String {
+    let safe = |c: char| match c {
+        '/' | '+' | '#' => '-',
+        c if c.is_whitespace() || c.is_control() => '-',
+        c => c,
+    };
+    name.chars().map(safe).collect()
+}
+
+#[cfg(test)]
+mod tests {
+    use super::topic_name;
+
+    #[test]
+    fn names_in_topics_are_one_level_without_wildcards() {
+        for (name, wanted) in [
+            ("filler-2", "filler-2"),
+            ("filler 2/net + tare #", "filler-2-net---tare--"),
+            ("Fülldüse\t9\u{7}", "Fülldüse-9-"),
+        ] {
+            assert_eq!(topic_name(name), wanted);
+        }
+    }
 }

@@ -4,7 +4,7 @@ use std::sync::Arc;
 
 use serde::{Deserialize, Serialize};
 
-use crate::model::{BankIx, Measurement, Name, Refusal, Time};
+use crate::model::{BankIx, Measurement, Name, Refusal, SourceIx, Time};
 use crate::notice::{Delivery, Notice};
 use crate::verdict::{Digest, Look};
 
@@ -23,6 +23,9 @@ pub enum Event {
     Refusals(Vec<Refusal>),
     /// A moment that [`super::Engine::next_deadline`] asked for has come.
     Deadline,
+    /// What a deadline came down to: the form in which the journal holds it, so that a replay does
+    /// exactly the same.
+    Due(Due),
     /// A person asks for something.
     Command {
         /// Comes back with the answer.
@@ -51,6 +54,15 @@ pub enum Event {
         /// How it is.
         condition: Condition,
     },
+}
+
+/// What was due at a deadline.
+#[derive(Clone, Debug, Default, PartialEq, Eq, Serialize, Deserialize)]
+pub struct Due {
+    /// Sources that have fallen silent.
+    pub silent: Vec<(BankIx, SourceIx)>,
+    /// Banks to look at.
+    pub looks: Vec<BankIx>,
 }
 
 /// Parts whose condition is shown.

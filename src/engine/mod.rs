@@ -4,11 +4,19 @@
 //! Deliberately absent: tokio, files, sockets, clocks, random numbers, logs. What the engine wants
 //! done it says as an [`Effect`]; what happened to it comes as an [`Event`].
 
+mod bank;
+mod core;
 mod event;
 mod history;
+mod incident;
+mod look;
+mod natural;
 mod snapshot;
+mod source;
+mod view;
 
-pub use event::{Command, Condition, Effect, Event, Outcome, Part, Record, Ticket, Turn};
+pub use self::core::{Engine, RestoreError};
+pub use event::{Command, Condition, Due, Effect, Event, Outcome, Part, Record, Ticket, Turn};
 pub use history::{History, HistoryError, Page};
 pub use snapshot::{
     BankView, Cycles, Plant, RefusalView, Snapshot, SourceState, SourceView, WindowValue,

@@ -37,6 +37,8 @@ pub enum Reason {
     Retained,
     /// Delivered again after a restart although it was already durable.
     Redelivered,
+    /// Arrived with QoS 0 faster than it could be kept.
+    Overflow,
     /// Equal to an earlier value of its source in time and cycle.
     Double,
     /// Taken longer ago than `oldest_days`.
@@ -47,7 +49,7 @@ pub enum Reason {
 
 impl Reason {
     /// Every reason, in the order pages show them.
-    pub const ALL: [Self; 17] = [
+    pub const ALL: [Self; 18] = [
         Self::Empty,
         Self::TooLarge,
         Self::Malformed,
@@ -62,6 +64,7 @@ impl Reason {
         Self::NoBank,
         Self::Retained,
         Self::Redelivered,
+        Self::Overflow,
         Self::Double,
         Self::TooOld,
         Self::TooFarAhead,
@@ -84,6 +87,7 @@ impl Reason {
             Self::NoBank => "no_bank",
             Self::Retained => "retained",
             Self::Redelivered => "redelivered",
+            Self::Overflow => "overflow",
             Self::Double => "double",
             Self::TooOld => "too_old",
             Self::TooFarAhead => "too_far_ahead",

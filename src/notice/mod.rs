@@ -4,8 +4,14 @@
 //! Deliberately absent: sending (that is `outlets`), clocks, and any decision about sources
 //! (that is `verdict`).
 
+mod life;
 mod record;
+mod wire;
+mod words;
 
+pub use life::{Happening, TRANSITIONS, after};
 pub use record::{
     Acknowledgement, Delivery, Kind, NamedSource, Notice, Priority, Since, State, Way,
 };
+pub use wire::NoticeData;
+pub use words::{Facts, MOST_SUBJECT, SPREAD_UNIT, Words};

@@ -92,8 +92,11 @@ pub struct TestEntry {
     pub statistic: f64,
     /// Its degrees of freedom, numerator first.
     pub df: Vec<f64>,
-    /// Upper-tail probability.
+    /// Upper-tail probability as a textbook gives it, for independent values.
     pub p: f64,
+    /// The same after dependence between successive values has been paid for (and, for spread, the
+    /// search for steps); what the decision uses. Never below `p`.
+    pub p_paid: f64,
     /// Whether this test takes part in the decision.
     pub decides: bool,
 }
@@ -203,8 +206,8 @@ impl Look {
             at: self.at,
             span: self.span,
             finding: self.finding,
-            level_p: self.level_test().map(|t| t.p),
-            spread_p: self.spread_test().map(|t| t.p),
+            level_p: self.level_test().map(|t| t.p_paid),
+            spread_p: self.spread_test().map(|t| t.p_paid),
             alpha_level: self.alpha_level,
             alpha_spread: self.alpha_spread,
             named_level: named(|s| s.named_level),
@@ -227,9 +230,9 @@ pub struct Digest {
     pub span: usize,
     /// The conclusion.
     pub finding: Finding,
-    /// Probability of the test that decides on level.
+    /// Probability of the test that decides on level, dependence paid for.
     pub level_p: Option<f64>,
-    /// Probability of the test that decides on spread.
+    /// Probability of the test that decides on spread, dependence paid for.
     pub spread_p: Option<f64>,
     /// The level's share of the budget at this look.
     pub alpha_level: f64,

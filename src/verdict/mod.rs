@@ -2,8 +2,24 @@
 //! much, and is there evidence that they came back.
 //!
 //! Pure: no clock, no randomness, no input or output. Statistics come from [`crate::stats`]; this
-//! room decides what they mean for a bank.
+//! room decides what they mean for a bank. Start reading at [`examine()`].
 
+mod data;
+mod dependence;
+mod even;
+mod examine;
+mod level;
 mod look;
+mod shares;
+mod spread;
+mod steps;
+mod track;
 
+pub use data::{Data, Need, Rows, Values};
+pub use examine::{Call, Examination, Participant, examine};
 pub use look::{Dependence, Digest, Estimate, Finding, Look, Method, SourceLook, TestEntry};
+pub use shares::Shares;
+pub use track::{
+    Aspect, Located, Moment, Yardstick, cleared_margin, locate, returned, size_since,
+    values_to_clear,
+};

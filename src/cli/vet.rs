@@ -1,0 +1,215 @@
+//! `evenrow vet`: every fault of a configuration at once or, when it is good, what it means.
+//!
+//! Deliberately absent: connecting to anything. Files that the configuration names are looked at,
+//! and a missing one is a caution: the configuration may be meant for another machine.
+
+use std::fmt::Write as _;
+use std::fs::File;
+use std::io::Write as _;
+use std::path::Path;
+
+use crate::model::{Bank, Pairing, Sources};
+use crate::settings::{
+    Broker, Feed, JsonPointers, PayloadForm, Protocol, Settings, bank_cautions, duration_words,
+};
+use crate::verdict::Shares;
+
+use super::args::VetArgs;
+use super::configuration;
+use super::exit::Exit;
+
+/// Runs the command.
+pub fn run(args: VetArgs) -> Exit {
+    let VetArgs { config } = args;
+    let settings = match configuration::read(&config) {
+        Ok(settings) => settings,
+        Err(exit) => return exit,
+    };
+    let text = format!("{}: good\n\n{}", config.display(), summary(&settings));
+    match std::io::stdout().write_all(text.as_bytes()) {
+        Ok(()) => Exit::Done,
+        Err(error) => {
+            eprintln!("the summary cannot be written: {error}");
+            Exit::Failed
+        }
+    }
+}
+
+/// Lines of a name and what there is to say.
+#[derive(Default)]
+struct Lines(String);
+
+impl Lines {
+    fn add(&mut self, name: &str, what: impl std::fmt::Display) {
+        // Writing into a String cannot fail.
+        let _always = writeln!(self.0, "  {name:<11} {what}");
+    }
+
+    fn cautions(&mut self, cautions: impl IntoIterator<Item = String>) {
+        for caution in cautions {
+            self.add("caution", caution);
+        }
+    }
+}
+
+/// What a good configuration means.
+fn summary(settings: &Settings) -> String {
+    let mut all = plant(settings);
+    for (bank, feed) in settings.banks.iter().zip(&settings.feeds) {
+        all.push('\n');
+        all.push_str(&bank_summary(bank, feed));
+    }
+    all
+}
+
+fn plant(settings: &Settings) -> String {
+    let Settings {
+        plant,
+        broker,
+        store,
+        web,
+        banks: _,
+        feeds: _,
+    } = settings;
+    let mut lines = Lines(format!("plant {}\n", plant.name));
+    let zone = plant.zone.iana_name().unwrap_or("without a name");
+    lines.add("time zone", zone);
+    let shift = |s: &crate::settings::Shift| {
+        let time = |t: jiff::civil::Time| format!("{:02}:{:02}", t.hour(), t.minute());
+        format!("{} {} to {}", s.name, time(s.from), time(s.to))
+    };
+    let shifts: Vec<String> = plant.shifts.iter().map(shift).collect();
+    if !shifts.is_empty() {
+        lines.add("shifts", shifts.join(", "));
+    }
+    lines.add("broker", broker_line(broker));
+    let kept = match store.keep_days {
+        0 => "keeps windows and evidence only".to_owned(),
+        days => format!("keeps {days} days"),
+    };
+    lines.add("store", format!("{}, {kept}", store.folder.display()));
+    lines.add("pages", settings.pages());
+    lines.cautions(settings.cautions());
+    let files = [
+        ("broker.password_file", &broker.password_file),
+        ("broker.ca_file", &broker.ca_file),
+        (
+            "broker.client_certificate_file",
+            &broker.client_certificate_file,
+        ),
+        ("broker.client_key_file", &broker.client_key_file),
+        ("web.token_file", &web.token_file),
+    ];
+    let named = files
+        .into_iter()
+        .filter_map(|(key, file)| Some((key, file.as_deref()?)));
+    lines.cautions(named.filter_map(|(key, file)| unreadable(key, file)));
+    lines.0
+}
+
+/// Says when a file that is named cannot be read here.
+fn unreadable(key: &str, file: &Path) -> Option<String> {
+    let error = File::open(file).err()?;
+    Some(format!(
+        "{key}: {} cannot be read here: {error}",
+        file.display()
+    ))
+}
+
+fn broker_line(broker: &Broker) -> String {
+    let scheme = if broker.tls { "mqtts" } else { "mqtt" };
+    let version = match broker.protocol {
+        Protocol::V5 => "MQTT 5",
+        Protocol::V4 => "MQTT 3.1.1",
+    };
+    let host = if broker.host.contains(':') {
+        format!("[{}]", broker.host)
+    } else {
+        broker.host.clone()
+    };
+    let user = broker
+        .user
+        .as_ref()
+        .map_or_else(String::new, |user| format!(" for {user}"));
+    let (port, id) = (broker.port, &broker.client_id);
+    format!("{scheme}://{host}:{port}, {version}, client id {id}{user}")
+}
+
+fn bank_summary(bank: &Bank, feed: &Feed) -> String {
+    let characteristic = &bank.characteristic;
+    let unit = &characteristic.unit;
+    let mut lines = Lines(format!("bank {}\n", bank.name));
+    if let Some(equipment) = &bank.equipment {
+        lines.add("equipment", equipment);
+    }
+    lines.add("measures", format!("{} in {unit}", characteristic.name));
+    lines.add("sources", sources(&bank.sources));
+    lines.add("topic", feed.topic.levels.join("/"));
+    lines.add("payload", payload(&feed.payload));
+    lines.add("pairing", pairing(bank.pairing));
+    let spans: Vec<String> = bank.spans.iter().map(usize::to_string).collect();
+    lines.add(
+        "spans",
+        format!("{} values of each source", spans.join(", ")),
+    );
+    lines.add("look every", duration_words(bank.look_every_us));
+    let spread = bank.spread_margin;
+    lines.add(
+        "margin",
+        format!(
+            "{} {unit}; {spread} for the ratio of two standard deviations",
+            bank.margin
+        ),
+    );
+    lines.add("budget", format!("{} (false calls)", bank.budget));
+    let shares = Shares::of(bank);
+    lines.add(
+        "alpha",
+        format!(
+            "{:.2e} for level, {:.2e} for spread, at each look and span",
+            shares.level, shares.spread
+        ),
+    );
+    lines.cautions(bank_cautions(bank));
+    lines.0
+}
+
+fn sources(sources: &Sources) -> String {
+    match sources {
+        Sources::Listed(names) => {
+            let names: Vec<&str> = names.iter().map(AsRef::as_ref).collect();
+            format!("{}: {}", names.len(), names.join(", "))
+        }
+        Sources::Discover { most } => format!("discovered, at most {most}"),
+    }
+}
+
+fn payload(form: &PayloadForm) -> String {
+    let JsonPointers {
+        value,
+        source,
+        time,
+        time_form: _,
+        cycle,
+    } = match form {
+        PayloadForm::Number => return "a number".to_owned(),
+        PayloadForm::Json(pointers) => pointers,
+    };
+    let mut text = format!("JSON with the value at \"{value}\"");
+    for (name, pointer) in [("source", source), ("time", time), ("cycle", cycle)] {
+        if let Some(pointer) = pointer {
+            text.push_str(&format!(", {name} at \"{pointer}\""));
+        }
+    }
+    text
+}
+
+fn pairing(pairing: Pairing) -> String {
+    match pairing {
+        Pairing::Cycle => "by cycle".to_owned(),
+        Pairing::Slot { length_us } => format!("by slots of {}", duration_words(length_us)),
+        Pairing::None => {
+            "none: a movement that all sources share can hide their differences".to_owned()
+        }
+    }
+}

@@ -1,0 +1,315 @@
+//! One bank: its windows, its sources and its incidents, and what a measurement or a look does to them.
+
+use std::collections::BTreeMap;
+use std::sync::Arc;
+
+use serde::{Deserialize, Serialize};
+
+use crate::model::{Bank, Measurement, Name, Reason, SourceIx, Sources, Time};
+use crate::notice::Kind;
+use crate::verdict::{Examination, Look, Need, Participant, examine};
+use crate::window::{Accepted, Arriving, Windows};
+
+use super::incident::Incident;
+use super::natural::natural;
+use super::source::{Source, usual_interval_us};
+use super::{RefusalView, WindowValue, WindowView};
+
+/// A clock may run ahead by this much; a value from further in the future is refused.
+const AHEAD_US: i64 = 300_000_000;
+
+/// A bank that finds its sources itself counts cycles as complete only after this many without a new
+/// source; until then they close when they are overtaken.
+const SETTLED_AFTER: u64 = 5;
+
+/// What is kept of a bank over a restart.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+pub struct State {
+    /// The last turn that is contained.
+    pub turn: u64,
+    pub windows: Windows,
+    pub sources: Vec<Source>,
+    /// Open incidents, oldest first.
+    pub incidents: Vec<Incident>,
+    /// The newest look of each span.
+    pub looks: Vec<Arc<Look>>,
+    pub last_look: Option<Time>,
+    pub look_due: Option<Time>,
+    pub last_kept_look: Option<Time>,
+    /// When the first measurement came.
+    pub began: Option<Time>,
+    /// Closed cycles when the newest source was found.
+    pub newest_source_at: u64,
+    /// Notices made so far.
+    pub notices: u64,
+}
+
+/// A bank with its state and what is only counted.
+pub struct Watched {
+    pub bank: Arc<Bank>,
+    pub state: State,
+    by_name: BTreeMap<Name, SourceIx>,
+    pub outcomes: BTreeMap<&'static str, u64>,
+    pub refusals: Vec<RefusalView>,
+    pub raised: BTreeMap<Kind, u64>,
+    /// Changed since the snapshot was made.
+    pub dirty: bool,
+    /// Changed since the last checkpoint.
+    pub unsaved: bool,
+    pub next_silence_check: Option<Time>,
+    pub last_checkpoint: Option<Time>,
+}
+
+impl Watched {
+    pub fn new(bank: Arc<Bank>) -> Self {
+        let state = State {
+            turn: 0,
+            windows: Windows::new(&bank),
+            sources: Vec::new(),
+            incidents: Vec::new(),
+            looks: Vec::new(),
+            last_look: None,
+            look_due: None,
+            last_kept_look: None,
+            began: None,
+            newest_source_at: 0,
+            notices: 0,
+        };
+        Self::with_state(bank, state)
+    }
+
+    /// Goes on from a state; sources that were listed meanwhile join, those no longer listed retire.
+    pub fn with_state(bank: Arc<Bank>, state: State) -> Self {
+        let mut watched = Self {
+            by_name: names(&state.sources),
+            bank,
+            state,
+            outcomes: BTreeMap::new(),
+            refusals: Vec::new(),
+            raised: BTreeMap::new(),
+            dirty: true,
+            unsaved: false,
+            next_silence_check: None,
+            last_checkpoint: None,
+        };
+        if let Sources::Listed(listed) = watched.bank.sources.clone() {
+            for (s, source) in watched.state.sources.iter_mut().enumerate() {
+                source.retired = !listed.contains(&source.name);
+                if source.retired {
+                    watched.state.windows.expect(SourceIx(s as u16), false);
+                }
+            }
+            for name in listed {
+                if !watched.by_name.contains_key(&name) {
+                    watched.add_source(name, false);
+                }
+            }
+        }
+        watched.settle();
+        watched
+    }
+
+    fn add_source(&mut self, name: Name, discovered: bool) -> SourceIx {
+        let ix = SourceIx(self.state.sources.len() as u16);
+        self.state.windows.add_source();
+        self.state
+            .sources
+            .push(Source::new(name.clone(), discovered));
+        self.state.newest_source_at = self.closed();
+        self.by_name.insert(name, ix);
+        self.settle();
+        ix
+    }
+
+    fn closed(&self) -> u64 {
+        self.state
+            .windows
+            .blocks()
+            .map_or(0, |b| b.counts().0 + b.counts().1)
+    }
+
+    /// Whether the set of sources is known well enough to call a cycle complete.
+    fn settle(&mut self) {
+        let listed = matches!(self.bank.sources, Sources::Listed(_));
+        let quiet = self.closed() >= self.state.newest_source_at + SETTLED_AFTER;
+        self.state.windows.settle(listed || quiet);
+    }
+
+    /// Takes one measurement in.
+    ///
+    /// # Errors
+    /// The reason when it is refused.
+    pub fn accept(&mut self, m: &Measurement, now: Time) -> Result<(), Reason> {
+        let taken = m.taken.unwrap_or(now);
+        if taken.us_since(now) > AHEAD_US {
+            return Err(Reason::TooFarAhead);
+        }
+        if now.us_since(taken) > self.bank.oldest_us {
+            return Err(Reason::TooOld);
+        }
+        let source = self.source(&m.source)?;
+        let arriving = Arriving {
+            source,
+            value: m.value,
+            taken,
+            time_given: m.taken.is_some(),
+            cycle: m.cycle,
+        };
+        let closed = self.closed();
+        let accepted = self.state.windows.accept(&arriving)?;
+        let known = &mut self.state.sources[source.index()];
+        known.accepted += 1;
+        known.last_value = Some(m.value.to_f64());
+        known.last_taken = known.last_taken.max(Some(taken));
+        known.last_received = Some(now);
+        if std::mem::take(&mut known.silent) {
+            self.state.windows.expect(source, true);
+        }
+        if closed != self.closed() {
+            self.settle();
+        }
+        let outcome = match accepted {
+            Accepted::InTurn => "accepted",
+            Accepted::Late => "late",
+        };
+        *self.outcomes.entry(outcome).or_insert(0) += 1;
+        self.state.began.get_or_insert(now);
+        self.plan_look(now);
+        Ok(())
+    }
+
+    fn source(&mut self, name: &Name) -> Result<SourceIx, Reason> {
+        if let Some(&ix) = self.by_name.get(name) {
+            return if self.state.sources[ix.index()].retired {
+                Err(Reason::UnknownSource)
+            } else {
+                Ok(ix)
+            };
+        }
+        match self.bank.sources {
+            Sources::Listed(_) => Err(Reason::UnknownSource),
+            Sources::Discover { most } if self.state.sources.len() >= usize::from(most) => {
+                Err(Reason::TooManySources)
+            }
+            Sources::Discover { .. } => Ok(self.add_source(name.clone(), true)),
+        }
+    }
+
+    fn plan_look(&mut self, now: Time) {
+        let every = self.bank.look_every_us;
+        let began = self.state.began.unwrap_or(now);
+        let next = self.state.last_look.unwrap_or(began).plus_us(every);
+        self.state.look_due.get_or_insert(next.max(now));
+    }
+
+    /// Sources that have delivered nothing for longer than they may.
+    pub fn fallen_silent(&self, now: Time) -> Vec<SourceIx> {
+        let Some(began) = self.state.began else {
+            return Vec::new();
+        };
+        let fallen = |(s, source): (usize, &Source)| {
+            let ix = SourceIx(s as u16);
+            let ring = self.state.windows.ring(ix);
+            let since = source.silent_from(&self.bank, ring, began);
+            (!source.silent && !source.retired && since <= now).then_some(ix)
+        };
+        self.state
+            .sources
+            .iter()
+            .enumerate()
+            .filter_map(fallen)
+            .collect()
+    }
+
+    /// Nobody waits for a silent source any more.
+    pub fn silence(&mut self, source: SourceIx) {
+        if let Some(known) = self.state.sources.get_mut(source.index()) {
+            known.silent = true;
+            self.state.windows.expect(source, false);
+        }
+    }
+
+    /// A turn has changed the state.
+    pub fn mark(&mut self, turn: u64) {
+        self.state.turn = turn;
+        self.dirty = true;
+        self.unsaved = true;
+    }
+
+    /// Sources in display order: as listed, else by natural number.
+    pub fn display_order(&self) -> Vec<SourceIx> {
+        let mut order: Vec<SourceIx> = (0..self.state.sources.len())
+            .map(|s| SourceIx(s as u16))
+            .filter(|s| !self.state.sources[s.index()].retired)
+            .collect();
+        match &self.bank.sources {
+            Sources::Listed(listed) => {
+                let place = |s: &SourceIx| listed.iter().position(|n| *n == self.name(*s));
+                order.sort_by_key(place);
+            }
+            Sources::Discover { .. } => {
+                order.sort_by(|a, b| natural(&self.name(*a), &self.name(*b)))
+            }
+        }
+        order
+    }
+
+    pub fn name(&self, source: SourceIx) -> Name {
+        self.state.sources[source.index()].name.clone()
+    }
+
+    /// Examines the windows without consequences.
+    pub fn examine(&self, now: Time, need: Need) -> Examination {
+        let takes_part = |s: &SourceIx| self.state.sources[s.index()].takes_part();
+        let participant = |s: SourceIx| Participant {
+            source: s,
+            name: self.name(s),
+            margin: self
+                .bank
+                .margin
+                .max(self.state.sources[s.index()].cleared_margin),
+        };
+        let who: Vec<Participant> = self
+            .display_order()
+            .into_iter()
+            .filter(takes_part)
+            .map(participant)
+            .collect();
+        examine(&self.bank, &self.state.windows, &who, now, need)
+    }
+
+    /// The usual time between values of a source: the median over the sources.
+    pub fn interval_us(&self) -> Option<i64> {
+        let mut all: Vec<i64> = self
+            .state
+            .windows
+            .rings()
+            .iter()
+            .filter_map(usual_interval_us)
+            .collect();
+        all.sort_unstable();
+        all.get(all.len() / 2).copied()
+    }
+
+    /// Every window, in display order.
+    pub fn window_views(&self) -> Vec<WindowView> {
+        let paired = self.bank.pairing.is_paired();
+        let value = |e: &crate::window::Entry| WindowValue {
+            taken: e.taken,
+            cycle: paired.then_some(e.place),
+            offset: e.offset,
+        };
+        let view = |s: SourceIx| WindowView {
+            source: self.name(s),
+            origin: self.state.windows.origin(),
+            values: self.state.windows.ring(s).iter().map(value).collect(),
+        };
+        self.display_order().into_iter().map(view).collect()
+    }
+}
+
+fn names(sources: &[Source]) -> BTreeMap<Name, SourceIx> {
+    let each = sources.iter().enumerate();
+    each.map(|(s, source)| (source.name.clone(), SourceIx(s as u16)))
+        .collect()
+}

@@ -1,0 +1,482 @@
+//! The engine itself: which bank an event is for, what is kept of it, and what is to be done.
+
+use std::sync::Arc;
+
+use crate::model::{Bank, BankIx, Measurement, Name, Refusal, Time};
+use crate::notice::{Acknowledgement, Delivery, Notice, Way};
+use crate::verdict::{Finding, Look, Need};
+
+use super::bank::{State, Watched};
+use super::look::Freshness;
+use super::view;
+use super::{
+    Command, Condition, Due, Effect, Event, Outcome, Part, Plant, Record, RefusalView, Snapshot,
+    Ticket, Turn,
+};
+
+/// A bank writes its whole state at least this often.
+const CHECKPOINT_EVERY_US: i64 = 600_000_000;
+
+/// Silence is looked for this often.
+const SILENCE_EVERY_US: i64 = 10_000_000;
+
+/// Version of the encoded state.
+const STATE_VERSION: u8 = 1;
+
+/// Why a checkpoint cannot be gone on from.
+#[derive(Clone, Debug, PartialEq, Eq, thiserror::Error)]
+pub enum RestoreError {
+    /// No bank of this name is configured.
+    #[error("bank \"{0}\" is no longer configured; what was kept of it is left alone")]
+    NoSuchBank(String),
+    /// Written by another version.
+    #[error(
+        "the state of bank \"{bank}\" was written in form {version}, this program reads form {STATE_VERSION}"
+    )]
+    OtherVersion {
+        /// The bank.
+        bank: String,
+        /// The form found.
+        version: u8,
+    },
+    /// It cannot be decoded.
+    #[error("the state of bank \"{0}\" cannot be decoded")]
+    Unreadable(String),
+    /// Values kept under another pairing do not fit.
+    #[error("the pairing of bank \"{0}\" was changed, so its windows start afresh")]
+    PairingChanged(String),
+}
+
+/// Owns every bank.
+pub struct Engine {
+    plant: Arc<Plant>,
+    banks: Vec<Watched>,
+    last_turn: u64,
+    outbox: usize,
+    outbox_trouble: Option<String>,
+    broker: Condition,
+    store: Condition,
+    refusals: Vec<RefusalView>,
+    changed: bool,
+    snapshot: Arc<Snapshot>,
+}
+
+impl Engine {
+    /// An engine that knows nothing yet.
+    pub fn new(plant: Plant, banks: Vec<Arc<Bank>>) -> Self {
+        let plant = Arc::new(plant);
+        let mut engine = Self {
+            snapshot: Arc::new(view::empty(plant.clone())),
+            plant,
+            banks: banks.into_iter().map(Watched::new).collect(),
+            last_turn: 0,
+            outbox: 0,
+            outbox_trouble: None,
+            broker: Condition::Starting,
+            store: Condition::Starting,
+            refusals: Vec::new(),
+            changed: true,
+        };
+        engine.snapshot();
+        engine
+    }
+
+    /// Goes on from a checkpoint of a bank.
+    ///
+    /// # Errors
+    /// [`RestoreError`]; the bank then starts afresh.
+    pub fn restore(&mut self, bank: &str, state: &[u8]) -> Result<(), RestoreError> {
+        let own = || bank.to_owned();
+        let found = self.banks.iter_mut().find(|b| &*b.bank.name == bank);
+        let watched = found.ok_or_else(|| RestoreError::NoSuchBank(own()))?;
+        let (&version, encoded) = state
+            .split_first()
+            .ok_or_else(|| RestoreError::Unreadable(own()))?;
+        if version != STATE_VERSION {
+            return Err(RestoreError::OtherVersion {
+                bank: own(),
+                version,
+            });
+        }
+        let mut state: State =
+            postcard::from_bytes(encoded).map_err(|_| RestoreError::Unreadable(own()))?;
+        if !state.windows.adapt(&watched.bank) {
+            return Err(RestoreError::PairingChanged(own()));
+        }
+        *watched = Watched::with_state(watched.bank.clone(), state);
+        self.changed = true;
+        Ok(())
+    }
+
+    /// Goes on counting after what the store holds: the number of the last turn, and how many
+    /// deliveries wait.
+    pub fn resume(&mut self, last_turn: u64, outbox: usize) {
+        self.last_turn = self.last_turn.max(last_turn);
+        self.outbox = outbox;
+        self.changed = true;
+    }
+
+    /// Applies a turn from the journal again. Banks whose checkpoint already contains it leave it
+    /// alone; nothing is asked for, since what the turn asked for was done then.
+    pub fn replay(&mut self, turn: Turn) {
+        let number = turn.number;
+        let _ = self.apply(number, turn.event, turn.now);
+        self.last_turn = self.last_turn.max(number);
+    }
+
+    /// Takes in an event and says what is to be done.
+    pub fn handle(&mut self, event: Event, now: Time) -> Vec<Effect> {
+        let number = self.last_turn + 1;
+        let (kept, mut effects) = self.apply(number, event, now);
+        if let Some(event) = kept {
+            self.last_turn = number;
+            let turn = Turn { number, now, event };
+            effects.insert(0, Effect::Keep(Record::Turn(turn)));
+        }
+        effects
+    }
+
+    /// Applies an event; returns what of it the journal must hold, and what is to be done.
+    fn apply(&mut self, number: u64, event: Event, now: Time) -> (Option<Event>, Vec<Effect>) {
+        self.changed = true;
+        match event {
+            Event::Measurements(all) => {
+                let kept = self.measurements(number, all, now);
+                (
+                    (!kept.is_empty()).then_some(Event::Measurements(kept)),
+                    Vec::new(),
+                )
+            }
+            Event::Refusals(refusals) => {
+                for refusal in refusals {
+                    self.refuse(refusal, now);
+                }
+                (None, Vec::new())
+            }
+            Event::Deadline => self.deadline(number, now),
+            Event::Due(due) => {
+                let mut effects = Vec::new();
+                self.do_due(number, &due, now, &mut effects);
+                (Some(Event::Due(due)), effects)
+            }
+            Event::Command { ticket, who, what } => self.command(number, ticket, who, what, now),
+            Event::Delivered { number } => {
+                self.outbox = self.outbox.saturating_sub(1);
+                self.outbox_trouble = None;
+                (None, vec![Effect::Keep(Record::Delivered { number })])
+            }
+            Event::NotDelivered { why, .. } => {
+                self.outbox_trouble = Some(why);
+                (None, Vec::new())
+            }
+            Event::Condition { part, condition } => {
+                match part {
+                    Part::Broker => self.broker = condition,
+                    Part::Store => self.store = condition,
+                }
+                (None, Vec::new())
+            }
+        }
+    }
+
+    fn measurements(&mut self, number: u64, all: Vec<Measurement>, now: Time) -> Vec<Measurement> {
+        let mut kept = Vec::with_capacity(all.len());
+        let contained: Vec<bool> = self.banks.iter().map(|b| b.state.turn >= number).collect();
+        for m in all {
+            let Some(bank) = self.banks.get_mut(m.bank.index()) else {
+                continue;
+            };
+            if contained[m.bank.index()] {
+                continue;
+            }
+            bank.dirty = true;
+            match bank.accept(&m, now) {
+                Ok(()) => {
+                    bank.mark(number);
+                    kept.push(m);
+                }
+                Err(reason) => {
+                    let refusal = view::refusal_of(&m, reason, bank, now);
+                    self.refuse(refusal, now);
+                }
+            }
+        }
+        kept
+    }
+
+    fn refuse(&mut self, refusal: Refusal, now: Time) {
+        let bank = refusal.bank.and_then(|b| self.banks.get_mut(b.index()));
+        let list = match bank {
+            Some(bank) => {
+                bank.dirty = true;
+                *bank.outcomes.entry(refusal.reason.word()).or_insert(0) += 1;
+                &mut bank.refusals
+            }
+            None => &mut self.refusals,
+        };
+        view::count_refusal(list, refusal, now);
+    }
+
+    fn deadline(&mut self, number: u64, now: Time) -> (Option<Event>, Vec<Effect>) {
+        let due = self.what_is_due(now);
+        let nothing = due == Due::default();
+        let mut effects = Vec::new();
+        if !nothing {
+            self.do_due(number, &due, now, &mut effects);
+        }
+        for b in 0..self.banks.len() {
+            effects.extend(self.checkpoint_if_due(b, now));
+        }
+        ((!nothing).then_some(Event::Due(due)), effects)
+    }
+
+    fn what_is_due(&mut self, now: Time) -> Due {
+        let mut due = Due::default();
+        for (b, bank) in self.banks.iter_mut().enumerate() {
+            let ix = BankIx(b as u16);
+            if bank.next_silence_check.is_none_or(|at| at <= now) {
+                bank.next_silence_check = Some(now.plus_us(SILENCE_EVERY_US));
+                due.silent
+                    .extend(bank.fallen_silent(now).into_iter().map(|s| (ix, s)));
+            }
+            if bank.state.look_due.is_some_and(|at| at <= now) {
+                due.looks.push(ix);
+            }
+        }
+        due
+    }
+
+    fn do_due(&mut self, number: u64, due: &Due, now: Time, effects: &mut Vec<Effect>) {
+        let contained: Vec<bool> = self.banks.iter().map(|b| b.state.turn >= number).collect();
+        let open = |b: BankIx| contained.get(b.index()) == Some(&false);
+        for &(b, source) in due.silent.iter().filter(|(b, _)| open(*b)) {
+            self.banks[b.index()].silence(source);
+            self.banks[b.index()].mark(number);
+        }
+        for &b in due.looks.iter().filter(|b| open(**b)) {
+            self.look(b.index(), number, now, effects);
+            self.banks[b.index()].mark(number);
+        }
+    }
+
+    fn look(&mut self, b: usize, number: u64, now: Time, effects: &mut Vec<Effect>) {
+        let plant = self.plant.clone();
+        let bank = &mut self.banks[b];
+        let looked = bank.look(&plant, now);
+        let name = bank.bank.name.clone();
+        for look in &looked.looks {
+            effects.push(Effect::Keep(Record::Digest(name.clone(), look.digest())));
+            if looked.keep_whole {
+                effects.push(Effect::Keep(Record::Look(look.clone())));
+            }
+        }
+        for (notice, freshness) in looked.changed {
+            effects.push(Effect::Keep(Record::Notice(notice.clone())));
+            if freshness == Freshness::Raised
+                && let Some(look) = looked.looks.iter().find(|l| l.span == notice.span)
+            {
+                effects.push(Effect::Keep(Record::Evidence {
+                    notice: notice.id.clone(),
+                    look: look.clone(),
+                    windows: bank.window_views(),
+                }));
+            }
+        }
+        self.send(b, number, now, effects);
+    }
+
+    /// Sends what people should receive now.
+    fn send(&mut self, b: usize, number: u64, now: Time, effects: &mut Vec<Effect>) {
+        let mut already = effects
+            .iter()
+            .filter(|e| matches!(e, Effect::Deliver(_)))
+            .count() as u64;
+        for incident in &mut self.banks[b].state.incidents {
+            if !incident.wants_sending(now) {
+                continue;
+            }
+            incident.sent = Some((now, incident.notice.clone()));
+            let delivery = Delivery {
+                // A turn sends far fewer than 2^16 notices.
+                number: (number << 16) + already,
+                way: Way::Mqtt,
+                at: now,
+                notice: incident.notice.clone(),
+            };
+            already += 1;
+            self.outbox += 1;
+            effects.push(Effect::Keep(Record::Delivery(delivery.clone())));
+            effects.push(Effect::Deliver(delivery));
+        }
+        self.banks[b]
+            .state
+            .incidents
+            .retain(|i| i.notice.state.is_open());
+    }
+
+    fn command(
+        &mut self,
+        number: u64,
+        ticket: Ticket,
+        who: Name,
+        what: Command,
+        now: Time,
+    ) -> (Option<Event>, Vec<Effect>) {
+        match &what {
+            Command::Windows { bank } => {
+                let outcome = match self.banks.get(bank.index()) {
+                    Some(b) => Outcome::Windows(b.window_views()),
+                    None => Outcome::NotFound("there is no such bank".to_owned()),
+                };
+                (None, vec![Effect::Answer { ticket, outcome }])
+            }
+            Command::Acknowledge { notice, comment } => {
+                let by = who.clone();
+                let acknowledgement = Acknowledgement {
+                    by,
+                    at: now,
+                    comment: comment.clone(),
+                };
+                let Some((b, after, news)) = self.acknowledge(number, notice, acknowledgement)
+                else {
+                    let outcome =
+                        Outcome::NotFound(format!("no open notice has the id \"{notice}\""));
+                    return (None, vec![Effect::Answer { ticket, outcome }]);
+                };
+                let mut effects = Vec::new();
+                if news {
+                    effects.push(Effect::Keep(Record::Notice(after.clone())));
+                    self.send(b, number, now, &mut effects);
+                }
+                effects.push(Effect::Answer {
+                    ticket,
+                    outcome: Outcome::Acknowledged(after),
+                });
+                (
+                    news.then_some(Event::Command { ticket, who, what }),
+                    effects,
+                )
+            }
+        }
+    }
+
+    /// The bank, the notice after it, and whether anything changed.
+    fn acknowledge(
+        &mut self,
+        number: u64,
+        id: &str,
+        acknowledgement: Acknowledgement,
+    ) -> Option<(usize, Arc<Notice>, bool)> {
+        for (b, bank) in self.banks.iter_mut().enumerate() {
+            if bank.state.turn >= number {
+                continue;
+            }
+            let Some(incident) = bank
+                .state
+                .incidents
+                .iter_mut()
+                .find(|i| &*i.notice.id == id)
+            else {
+                continue;
+            };
+            let before = incident.notice.state;
+            incident.acknowledge(acknowledgement);
+            let news = incident.notice.state != before;
+            let after = incident.notice.clone();
+            if news {
+                bank.mark(number);
+            }
+            return Some((b, after, news));
+        }
+        None
+    }
+
+    fn checkpoint_if_due(&mut self, b: usize, now: Time) -> Option<Effect> {
+        let bank = &mut self.banks[b];
+        let last = *bank.last_checkpoint.get_or_insert(now);
+        let due = bank.unsaved && now.us_since(last) >= CHECKPOINT_EVERY_US;
+        due.then(|| Effect::Keep(checkpoint(bank, now)))
+    }
+
+    /// The state of every bank that changed since its last checkpoint; for the end of the program.
+    pub fn checkpoints(&mut self, now: Time) -> Vec<Record> {
+        let unsaved = self.banks.iter_mut().filter(|b| b.unsaved);
+        unsaved.map(|b| checkpoint(b, now)).collect()
+    }
+
+    /// When [`Event::Deadline`] should come next.
+    pub fn next_deadline(&self) -> Option<Time> {
+        self.banks.iter().filter_map(next_deadline).min()
+    }
+
+    /// Looks at every bank with whatever is there, without consequences: what a rehearsal ends with.
+    pub fn look_now(&self, now: Time) -> Vec<Arc<Look>> {
+        let all = self
+            .banks
+            .iter()
+            .flat_map(|b| b.examine(now, Need::Whatever).looks);
+        all.map(Arc::new).collect()
+    }
+
+    /// Whether any bank's newest look at its spans found something apart.
+    pub fn anything_apart(&self) -> bool {
+        let apart = |l: &Arc<Look>| matches!(l.finding, Finding::LevelApart | Finding::SpreadApart);
+        self.banks.iter().any(|b| b.state.looks.iter().any(apart))
+    }
+
+    /// The present, for pages and metrics; the same `Arc` while nothing changed.
+    pub fn snapshot(&mut self) -> Arc<Snapshot> {
+        if !std::mem::take(&mut self.changed) {
+            return self.snapshot.clone();
+        }
+        let before = self.snapshot.clone();
+        let banks = self
+            .banks
+            .iter_mut()
+            .enumerate()
+            .map(|(b, bank)| match before.banks.get(b) {
+                Some(old) if !std::mem::take(&mut bank.dirty) => old.clone(),
+                _ => {
+                    bank.dirty = false;
+                    Arc::new(view::bank_view(bank))
+                }
+            });
+        self.snapshot = Arc::new(Snapshot {
+            version: before.version + 1,
+            plant: self.plant.clone(),
+            broker: self.broker.clone(),
+            store: self.store.clone(),
+            banks: banks.collect(),
+            refusals: self.refusals.clone(),
+            outbox: self.outbox,
+            outbox_trouble: self.outbox_trouble.clone(),
+        });
+        self.snapshot.clone()
+    }
+}
+
+fn next_deadline(bank: &Watched) -> Option<Time> {
+    bank.state.began?;
+    let checkpoint = bank
+        .last_checkpoint
+        .map(|at| at.plus_us(CHECKPOINT_EVERY_US));
+    let checkpoint = checkpoint.filter(|_| bank.unsaved);
+    let silence = bank.next_silence_check.unwrap_or_default();
+    [bank.state.look_due, checkpoint, Some(silence)]
+        .into_iter()
+        .flatten()
+        .min()
+}
+
+fn checkpoint(bank: &mut Watched, now: Time) -> Record {
+    bank.unsaved = false;
+    bank.last_checkpoint = Some(now);
+    let mut state = vec![STATE_VERSION];
+    // Encoding plain data into memory cannot fail.
+    state.extend(postcard::to_allocvec(&bank.state).unwrap_or_default());
+    Record::Checkpoint {
+        bank: bank.bank.name.clone(),
+        turn: bank.state.turn,
+        state,
+    }
+}

@@ -1,0 +1,455 @@
+//! An incident: sources that left the even set, followed until there is evidence that they are back.
+
+use std::sync::Arc;
+
+use serde::{Deserialize, Serialize};
+
+use crate::model::{Bank, Name, SourceIx, Time};
+use crate::notice::{
+    Acknowledgement, Facts, Happening, Kind, NamedSource, Notice, Priority, SPREAD_UNIT, Since,
+    State, after,
+};
+use crate::stats::dist;
+use crate::verdict::{
+    Aspect, Call, Estimate, Examination, Located, Shares, Yardstick, locate, returned, size_since,
+    values_to_clear,
+};
+use crate::window::Windows;
+
+use super::Plant;
+
+/// Updates of an open notice are sent at most this often.
+const SEND_EVERY_US: i64 = 10_000_000;
+
+/// A source whose values lie outside the limits this often makes the notice a high one.
+const MUCH_OUTSIDE: f64 = 0.01;
+
+/// A source that is apart, or was.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+pub struct Apart {
+    pub source: SourceIx,
+    pub located: Place,
+    pub size: Estimate,
+    /// The largest size seen.
+    pub worst: Estimate,
+    pub cleared: bool,
+}
+
+/// Since when, in the window's order and in time.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+pub struct Place {
+    pub start: i64,
+    pub since: Since,
+}
+
+/// One incident and its notice.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+pub struct Incident {
+    pub notice: Arc<Notice>,
+    pub aspect: Aspect,
+    pub apart: Vec<Apart>,
+    /// Who the named ones are compared with.
+    pub reference: Vec<SourceIx>,
+    /// The newest place in the windows at the call: evidence of a return comes from later ones.
+    pub called_at: i64,
+    /// The notice as it was last sent, and when.
+    pub sent: Option<(Time, Arc<Notice>)>,
+}
+
+/// What an incident needs to know of its bank.
+pub struct Surroundings<'a> {
+    pub plant: &'a Plant,
+    pub bank: &'a Bank,
+    pub windows: &'a Windows,
+    pub exam: &'a Examination,
+    pub name: &'a dyn Fn(SourceIx) -> Name,
+    pub now: Time,
+    pub interval_us: Option<i64>,
+}
+
+impl Surroundings<'_> {
+    fn yard<'b>(&self, aspect: Aspect, reference: &'b [SourceIx]) -> Yardstick<'b> {
+        Yardstick {
+            reference,
+            margin: match aspect {
+                Aspect::Level => self.bank.margin,
+                Aspect::Spread => self.bank.spread_margin,
+            },
+            factor: self.exam.factor,
+            family: self.exam.data.sources.len(),
+        }
+    }
+
+    /// Standard deviation within sources as the longest look that could tell it.
+    pub fn sigma(&self) -> f64 {
+        let told = self.exam.looks.iter().rev().find(|l| l.sigma > 0.0);
+        told.map_or(0.0, |l| l.sigma)
+    }
+}
+
+impl Incident {
+    /// Begins an incident; `None` when nothing in the values bears the call out.
+    pub fn begin(call: &Call, id: Name, about: &Surroundings) -> Option<Self> {
+        let yard = about.yard(call.aspect, &call.reference);
+        let apart: Vec<Apart> = call
+            .named
+            .iter()
+            .filter_map(|&source| {
+                Some((
+                    source,
+                    locate(&about.exam.data, source, call.aspect, &yard)?,
+                ))
+            })
+            .map(|(source, located)| Apart::new(source, &located))
+            .collect();
+        let first = apart.first()?;
+        let notice = Notice {
+            id,
+            plant: about.plant.name.clone(),
+            bank: about.bank.name.clone(),
+            kind: kind(call),
+            state: after(State::Normal, Happening::Occurs),
+            priority: Priority::Medium,
+            sources: Vec::new(),
+            unit: match call.aspect {
+                Aspect::Level => about.bank.characteristic.unit.clone(),
+                Aspect::Spread => SPREAD_UNIT.into(),
+            },
+            since: first.located.since,
+            raised: about.now,
+            changed: about.now,
+            returned: None,
+            acknowledged: None,
+            subject: String::new(),
+            text: String::new(),
+            advice: String::new(),
+            url: format!("{}/banks/{}", about.plant.pages, address(&about.bank.name)),
+            span: call.span,
+        };
+        let mut incident = Self {
+            notice: Arc::new(notice),
+            aspect: call.aspect,
+            called_at: newest_place(about.windows),
+            reference: call.reference.clone(),
+            apart,
+            sent: None,
+        };
+        incident.tell(about);
+        Some(incident)
+    }
+
+    /// Whether it still holds.
+    pub fn is_active(&self) -> bool {
+        self.notice.state.is_active()
+    }
+
+    /// The sources it is about now.
+    pub fn about(&self) -> Vec<SourceIx> {
+        let holding = self.apart.iter().filter(|a| self.is_active() && !a.cleared);
+        holding.map(|a| a.source).collect()
+    }
+
+    /// How far a source is apart now, when it is about that source.
+    pub fn size_of(&self, source: SourceIx) -> Option<Estimate> {
+        let one = self.apart.iter().find(|a| a.source == source && !a.cleared);
+        one.filter(|_| self.is_active()).map(|a| a.size)
+    }
+
+    /// Whether it is about a source now.
+    pub fn is_about(&self, source: SourceIx) -> bool {
+        self.about().contains(&source)
+    }
+
+    /// Takes in what a look says: sizes, starts, sources that join, sources that are back. Returns
+    /// where the evidence of each return begins.
+    pub fn follow(&mut self, about: &Surroundings) -> Vec<(SourceIx, i64)> {
+        self.join(about);
+        let mut back = Vec::new();
+        let yard = about.yard(self.aspect, &self.reference);
+        for one in self.apart.iter_mut().filter(|a| !a.cleared) {
+            let data = &about.exam.data;
+            match returned(data, one.source, self.aspect, &yard, self.called_at) {
+                Some(from) => {
+                    one.cleared = true;
+                    back.push((one.source, from.place));
+                }
+                None => one.update(about, self.aspect, &yard),
+            }
+        }
+        if self.apart.iter().all(|a| a.cleared) {
+            self.happen(Happening::Returns, about.now);
+        }
+        self.tell(about);
+        back
+    }
+
+    /// Sources that the look names besides, each beyond chance at the look's own share of the budget:
+    /// the look is asked again and again, so the names' own error rate would add up.
+    fn join(&mut self, about: &Surroundings) {
+        let Some(call) = about.exam.calls.iter().find(|c| c.aspect == self.aspect) else {
+            return;
+        };
+        for &source in &call.named {
+            if self.apart.iter().any(|a| a.source == source) {
+                continue;
+            }
+            let rest: Vec<SourceIx> = self
+                .reference
+                .iter()
+                .copied()
+                .filter(|s| *s != source)
+                .collect();
+            let yard = about.yard(self.aspect, &rest);
+            let Some(located) = locate(&about.exam.data, source, self.aspect, &yard) else {
+                continue;
+            };
+            if located.p < share(about, self.aspect) {
+                self.apart.push(Apart::new(source, &located));
+                self.reference = rest;
+            }
+        }
+    }
+
+    /// A person acknowledges; asking twice changes nothing.
+    pub fn acknowledge(&mut self, acknowledgement: Acknowledgement) {
+        let at = acknowledgement.at;
+        if after(self.notice.state, Happening::Acknowledged) == self.notice.state {
+            return;
+        }
+        Arc::make_mut(&mut self.notice).acknowledged = Some(acknowledgement);
+        self.happen(Happening::Acknowledged, at);
+    }
+
+    fn happen(&mut self, happening: Happening, now: Time) {
+        let state = after(self.notice.state, happening);
+        if state == self.notice.state {
+            return;
+        }
+        let notice = Arc::make_mut(&mut self.notice);
+        notice.state = state;
+        notice.changed = now;
+        if happening == Happening::Returns {
+            notice.returned = Some(now);
+        }
+    }
+
+    /// Puts the present figures into the notice's fields and words.
+    fn tell(&mut self, about: &Surroundings) {
+        let mut named: Vec<&Apart> = self.apart.iter().filter(|a| !a.cleared).collect();
+        if named.is_empty() {
+            named = self.apart.iter().collect();
+        }
+        named.sort_by(|a, b| {
+            farness(self.aspect, &b.size).total_cmp(&farness(self.aspect, &a.size))
+        });
+        let sources: Vec<NamedSource> = named.iter().map(|a| a.told(about)).collect();
+        let since = named[0].located.since;
+        let facts = Facts {
+            bank: about.bank,
+            zone: &about.plant.zone,
+            kind: self.notice.kind,
+            sources: &sources,
+            since,
+            others: self.reference.len(),
+            even_mean: self.even_mean(about),
+            clears_in_us: self.clears_in_us(about),
+            returned: self.notice.returned,
+            url: &self.notice.url,
+        };
+        let words = facts.words();
+        let priority = self.priority(about, &sources);
+        let changed = self.notice.sources != sources || self.notice.since != since;
+        let notice = Arc::make_mut(&mut self.notice);
+        if changed {
+            notice.changed = about.now;
+        }
+        notice.sources = sources;
+        notice.since = since;
+        notice.priority = priority;
+        notice.subject = words.subject;
+        notice.advice = words.advice;
+        notice.text = words.text;
+    }
+
+    fn even_mean(&self, about: &Surroundings) -> Option<f64> {
+        let look = about
+            .exam
+            .looks
+            .iter()
+            .rev()
+            .find(|l| !l.sources.is_empty())?;
+        let even = look
+            .sources
+            .iter()
+            .filter(|s| self.reference.contains(&s.source));
+        let (n, sum) = even.fold((0.0, 0.0), |(n, sum), s| (n + 1.0, sum + s.mean));
+        (n > 0.0).then(|| sum / n)
+    }
+
+    /// How long a full return takes to prove, in time.
+    fn clears_in_us(&self, about: &Surroundings) -> Option<i64> {
+        let yard = about.yard(self.aspect, &self.reference);
+        let values = values_to_clear(self.aspect, &yard, about.sigma());
+        let next_look = about.bank.look_every_us;
+        Some((values * about.interval_us? as f64) as i64 + next_look)
+    }
+
+    /// By consequence: how many of a source's values are expected outside the limits, how many
+    /// sources there are, and whether the size matters at all beside the noise.
+    fn priority(&self, about: &Surroundings, sources: &[NamedSource]) -> Priority {
+        let sigma = about.sigma();
+        let outside = sources
+            .iter()
+            .map(|s| self.share_outside(about, s, sigma))
+            .fold(0.0, f64::max);
+        if outside > MUCH_OUTSIDE || self.notice.kind == Kind::BankSplit {
+            return Priority::High;
+        }
+        let small = |s: &NamedSource| s.deviation.abs() < 0.5 * sigma;
+        if self.aspect == Aspect::Level && sources.iter().all(small) {
+            return Priority::Low;
+        }
+        Priority::Medium
+    }
+
+    fn share_outside(&self, about: &Surroundings, s: &NamedSource, sigma: f64) -> f64 {
+        let c = &about.bank.characteristic;
+        let centre = self.even_mean(about).unwrap_or(0.0);
+        let (mean, sd) = match self.aspect {
+            Aspect::Level => (centre + s.deviation, sigma),
+            Aspect::Spread => (centre, sigma * s.deviation),
+        };
+        if sd <= 0.0 {
+            return 0.0;
+        }
+        let below = c.lower.map_or(0.0, |l| dist::normal::sf((mean - l) / sd));
+        let above = c.upper.map_or(0.0, |u| dist::normal::sf((u - mean) / sd));
+        below + above
+    }
+
+    /// Whether people should receive it now: another set, state or priority at once; another size
+    /// when it moved by more than half its interval; never sooner than ten seconds after the last.
+    pub fn wants_sending(&self, now: Time) -> bool {
+        let Some((at, last)) = &self.sent else {
+            return true;
+        };
+        let n = &self.notice;
+        let set = |n: &Notice| {
+            n.sources
+                .iter()
+                .map(|s| s.source.clone())
+                .collect::<Vec<_>>()
+        };
+        if n.state != last.state {
+            return true;
+        }
+        let moved = n.sources.iter().zip(&last.sources).any(|(a, b)| {
+            a.source == b.source && (a.deviation - b.deviation).abs() > (b.high - b.low) / 2.0
+        });
+        let other = set(n) != set(last) || n.priority != last.priority;
+        (other || moved) && now.us_since(*at) >= SEND_EVERY_US
+    }
+}
+
+impl Apart {
+    fn new(source: SourceIx, located: &Located) -> Self {
+        Self {
+            source,
+            located: Place::of(located),
+            size: located.size,
+            worst: located.size,
+            cleared: false,
+        }
+    }
+
+    fn update(&mut self, about: &Surroundings, aspect: Aspect, yard: &Yardstick) {
+        let data = &about.exam.data;
+        // A start that has left the windows is kept: what is left would only seem to start later.
+        let reaches_back = data.oldest_place().is_some_and(|p| p < self.located.start);
+        if reaches_back && let Some(located) = locate(data, self.source, aspect, yard) {
+            self.located = Place::of(&located);
+            self.size = located.size;
+        } else if let Some(size) = size_since(data, self.source, aspect, yard, self.located.start) {
+            self.size = size;
+        }
+        if farness(aspect, &self.size) > farness(aspect, &self.worst) {
+            self.worst = self.size;
+        }
+    }
+
+    /// Its size now; what it was at worst once it is back.
+    fn told(&self, about: &Surroundings) -> NamedSource {
+        let size = if self.cleared {
+            &self.worst
+        } else {
+            &self.size
+        };
+        NamedSource {
+            source: (about.name)(self.source),
+            deviation: size.value,
+            low: size.low,
+            high: size.high,
+        }
+    }
+}
+
+impl Place {
+    fn of(located: &Located) -> Self {
+        Self {
+            start: located.start.place,
+            since: Since {
+                at: located.start.taken,
+                earliest: located.earliest.taken,
+                latest: located.latest.taken,
+            },
+        }
+    }
+}
+
+fn farness(aspect: Aspect, size: &Estimate) -> f64 {
+    match aspect {
+        Aspect::Level => size.value.abs(),
+        Aspect::Spread => size.value.ln().abs(),
+    }
+}
+
+fn kind(call: &Call) -> Kind {
+    match call.aspect {
+        Aspect::Spread => Kind::SpreadApart,
+        // From four sources on, half of them apart means two groups and no culprit.
+        Aspect::Level
+            if call.named.len() + call.reference.len() >= 4
+                && call.named.len() >= call.reference.len() =>
+        {
+            Kind::BankSplit
+        }
+        Aspect::Level => Kind::LevelApart,
+    }
+}
+
+fn share(about: &Surroundings, aspect: Aspect) -> f64 {
+    let shares = Shares::of(about.bank);
+    match aspect {
+        Aspect::Level => shares.level,
+        Aspect::Spread => shares.spread,
+    }
+}
+
+/// The newest place in any window.
+fn newest_place(windows: &Windows) -> i64 {
+    let newest = windows.rings().iter().filter_map(|r| r.newest());
+    newest.map(|e| e.place).max().unwrap_or(i64::MIN)
+}
+
+/// A name as part of an address (RFC 3986): everything but the unreserved is written in percents.
+fn address(name: &str) -> String {
+    let mut text = String::with_capacity(name.len());
+    for byte in name.bytes() {
+        if byte.is_ascii_alphanumeric() || b"-._~".contains(&byte) {
+            text.push(char::from(byte));
+        } else {
+            text.push_str(&format!("%{byte:02X}"));
+        }
+    }
+    text
+}

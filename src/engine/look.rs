@@ -1,0 +1,190 @@
+//! What a look that is due does to a bank: open incidents follow it, new ones begin.
+
+use std::sync::Arc;
+
+use crate::model::{Bank, Name, SourceIx, Time};
+use crate::notice::Notice;
+use crate::verdict::{Aspect, Call, Examination, Finding, Look, Need, cleared_margin};
+use crate::window::Windows;
+
+use super::Plant;
+use super::bank::Watched;
+use super::incident::{Incident, Surroundings};
+
+/// A look is kept whole at least this often.
+const KEEP_LOOK_EVERY_US: i64 = 3_600_000_000;
+
+/// What a look at a bank brought.
+pub struct Looked {
+    pub looks: Vec<Arc<Look>>,
+    /// Incidents whose notice changed, by their place; the flag says it has just been raised.
+    pub changed: Vec<(Arc<Notice>, Freshness)>,
+    pub keep_whole: bool,
+}
+
+/// Whether a notice has just been raised.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum Freshness {
+    Raised,
+    Changed,
+}
+
+impl Watched {
+    /// A look that is due: examines, follows the open incidents, begins new ones.
+    pub fn look(&mut self, plant: &Plant, now: Time) -> Looked {
+        self.state.look_due = None;
+        self.state.last_look = Some(now);
+        let exam = self.examine(now, Need::WholeSpan);
+        let interval_us = self.interval_us();
+        // What an open incident is about is not called anew, also when this look ends it: the
+        // examination still holds the values of before.
+        let open: Vec<Aspect> = self
+            .state
+            .incidents
+            .iter()
+            .filter(|i| i.is_active())
+            .map(|i| i.aspect)
+            .collect();
+        let about: Vec<SourceIx> = self
+            .state
+            .incidents
+            .iter()
+            .flat_map(Incident::about)
+            .collect();
+        let mut changed = self.follow(plant, &exam, now, interval_us);
+        let mut calls = exam.calls.clone();
+        calls.retain(|c| !open.contains(&c.aspect));
+        for call in &mut calls {
+            call.named.retain(|s| !about.contains(s));
+        }
+        changed.extend(self.begin(plant, calls, &exam, now, interval_us));
+        let looks: Vec<Arc<Look>> = exam.looks.into_iter().map(Arc::new).collect();
+        self.state.looks.clone_from(&looks);
+        self.state.incidents.retain(|i| i.notice.state.is_open());
+        let keep_whole = self.keep_whole(&looks, now, !changed.is_empty());
+        Looked {
+            looks,
+            changed,
+            keep_whole,
+        }
+    }
+
+    fn keep_whole(&mut self, looks: &[Arc<Look>], now: Time, notice_changed: bool) -> bool {
+        let last = self.state.last_kept_look;
+        let hourly = last.is_none_or(|at| now.us_since(at) >= KEEP_LOOK_EVERY_US);
+        let apart = looks
+            .iter()
+            .any(|l| matches!(l.finding, Finding::LevelApart | Finding::SpreadApart));
+        let keep = hourly || apart || notice_changed;
+        if keep {
+            self.state.last_kept_look = Some(now);
+        }
+        keep
+    }
+
+    fn follow(
+        &mut self,
+        plant: &Plant,
+        exam: &Examination,
+        now: Time,
+        interval_us: Option<i64>,
+    ) -> Vec<(Arc<Notice>, Freshness)> {
+        let mut incidents = std::mem::take(&mut self.state.incidents);
+        let mut changed = Vec::new();
+        for incident in incidents.iter_mut().filter(|i| i.is_active()) {
+            let before = incident.notice.clone();
+            let name = |s: SourceIx| self.name(s);
+            let about = surroundings(
+                plant,
+                &self.bank,
+                &self.state.windows,
+                exam,
+                &name,
+                now,
+                interval_us,
+            );
+            let sigma = about.sigma();
+            let back = incident.follow(&about);
+            if incident.notice != before {
+                changed.push((incident.notice.clone(), Freshness::Changed));
+            }
+            for (source, from) in back {
+                self.state.windows.start_fresh(source, from);
+                let cleared = cleared_margin(self.bank.margin, sigma);
+                let known = &mut self.state.sources[source.index()].cleared_margin;
+                *known = known.max(cleared);
+            }
+        }
+        self.state.incidents = incidents;
+        changed
+    }
+
+    /// New incidents, each about sources that no open one is about: one source and cause, one notice.
+    fn begin(
+        &mut self,
+        plant: &Plant,
+        calls: Vec<Call>,
+        exam: &Examination,
+        now: Time,
+        interval_us: Option<i64>,
+    ) -> Vec<(Arc<Notice>, Freshness)> {
+        let mut changed = Vec::new();
+        for mut call in calls {
+            call.named
+                .retain(|s| !self.state.incidents.iter().any(|i| i.is_about(*s)));
+            let id = self.notice_id(plant, now);
+            let name = |s: SourceIx| self.name(s);
+            let about = surroundings(
+                plant,
+                &self.bank,
+                &self.state.windows,
+                exam,
+                &name,
+                now,
+                interval_us,
+            );
+            let Some(incident) = Incident::begin(&call, id, &about) else {
+                continue;
+            };
+            self.state.notices += 1;
+            *self.raised.entry(incident.notice.kind).or_insert(0) += 1;
+            changed.push((incident.notice.clone(), Freshness::Raised));
+            self.state.incidents.push(incident);
+        }
+        changed
+    }
+
+    /// Bank, year in the plant's zone, running number.
+    fn notice_id(&self, plant: &Plant, now: Time) -> Name {
+        let year = now.to_jiff().map_or(0, |t| {
+            i64::from(t.to_zoned_datetime(plant.zone.clone()).year())
+        });
+        let word: String = self
+            .bank
+            .name
+            .chars()
+            .map(|c| if c.is_alphanumeric() { c } else { '-' })
+            .collect();
+        format!("{word}-{year}-{:04}", self.state.notices + 1).into()
+    }
+}
+
+fn surroundings<'a>(
+    plant: &'a Plant,
+    bank: &'a Bank,
+    windows: &'a Windows,
+    exam: &'a Examination,
+    name: &'a dyn Fn(SourceIx) -> Name,
+    now: Time,
+    interval_us: Option<i64>,
+) -> Surroundings<'a> {
+    Surroundings {
+        plant,
+        bank,
+        windows,
+        exam,
+        name,
+        now,
+        interval_us,
+    }
+}

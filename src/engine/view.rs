@@ -1,0 +1,158 @@
+//! The snapshot's pictures of the banks.
+
+use std::sync::Arc;
+
+use crate::model::{Measurement, Reason, Refusal, SourceIx, Time};
+use crate::notice::Notice;
+use crate::verdict::{Aspect, Look, SourceLook};
+
+use super::bank::Watched;
+use super::incident::Incident;
+use super::{BankView, Condition, Cycles, Plant, RefusalView, Snapshot, SourceView};
+
+/// A snapshot of nothing.
+pub fn empty(plant: Arc<Plant>) -> Snapshot {
+    Snapshot {
+        version: 0,
+        plant,
+        broker: Condition::Starting,
+        store: Condition::Starting,
+        banks: Vec::new(),
+        refusals: Vec::new(),
+        outbox: 0,
+        outbox_trouble: None,
+    }
+}
+
+/// A bank, now.
+pub fn bank_view(watched: &Watched) -> BankView {
+    let state = &watched.state;
+    let mut open: Vec<Arc<Notice>> = state.incidents.iter().map(|i| i.notice.clone()).collect();
+    open.reverse();
+    let shown = shown_look(&state.looks, watched.bank.margin);
+    let cycles = state.windows.blocks().map(|b| {
+        let (closed, skipped, open) = b.counts();
+        Cycles {
+            closed,
+            skipped,
+            open,
+        }
+    });
+    BankView {
+        bank: watched.bank.clone(),
+        sources: watched
+            .display_order()
+            .into_iter()
+            .map(|s| source_view(watched, s, shown))
+            .collect(),
+        looks: state.looks.clone(),
+        open,
+        raised: watched.raised.clone(),
+        outcomes: watched.outcomes.clone(),
+        refusals: watched.refusals.clone(),
+        cycles,
+        interval_us: watched.interval_us(),
+        next_look: state.look_due,
+        newest_taken: state.sources.iter().filter_map(|s| s.last_taken).max(),
+        mean: shown.and_then(|l| mean(&l.sources)),
+    }
+}
+
+/// The look whose figures stand for "now": over the shortest span that still resolves half the
+/// margin, else over the longest that could be judged. A longer window only mixes in the past.
+fn shown_look(looks: &[Arc<Look>], margin: f64) -> Option<&Look> {
+    let judged = || looks.iter().filter(|l| !l.sources.is_empty());
+    let resolves = |l: &&Arc<Look>| {
+        let widths = l
+            .sources
+            .iter()
+            .filter_map(|s| s.deviation.map(|d| d.high - d.low));
+        margin > 0.0 && widths.fold(0.0, f64::max) <= margin
+    };
+    let chosen = judged().find(resolves).or_else(|| judged().next_back());
+    chosen.map(|l| &**l)
+}
+
+fn mean(sources: &[SourceLook]) -> Option<f64> {
+    let n = sources.len() as f64;
+    (n > 0.0).then(|| sources.iter().map(|s| s.mean).sum::<f64>() / n)
+}
+
+fn source_view(watched: &Watched, source: SourceIx, shown: Option<&Look>) -> SourceView {
+    let known = &watched.state.sources[source.index()];
+    let seen = shown.and_then(|l| l.sources.iter().find(|s| s.source == source));
+    // What an open notice says of a source rests on the values since it left: the page says the same.
+    let followed = |aspect| {
+        let incidents = watched
+            .state
+            .incidents
+            .iter()
+            .filter(|i| i.aspect == aspect);
+        incidents.filter_map(|i| i.size_of(source)).next()
+    };
+    let deviation = followed(Aspect::Level).or(seen.and_then(|s| s.deviation));
+    let sigma = shown.map_or(0.0, |l| l.sigma);
+    let about = |i: &&Incident| i.is_about(source);
+    SourceView {
+        source,
+        name: known.name.clone(),
+        state: known.state(),
+        values: watched.state.windows.ring(source).len(),
+        last_value: known.last_value,
+        last_taken: known.last_taken,
+        last_received: known.last_received,
+        deviation,
+        deviation_sigmas: deviation.filter(|_| sigma > 0.0).map(|d| d.value / sigma),
+        sd_ratio: followed(Aspect::Spread).or(seen.and_then(|s| s.sd_ratio)),
+        named: watched
+            .state
+            .incidents
+            .iter()
+            .filter(about)
+            .map(|i| i.notice.kind)
+            .collect(),
+    }
+}
+
+/// A refusal by the bank itself, in words.
+pub fn refusal_of(m: &Measurement, reason: Reason, watched: &Watched, now: Time) -> Refusal {
+    let taken = m.taken.unwrap_or(now);
+    let detail = match reason {
+        Reason::TooFarAhead => format!(
+            "taken at {taken}, more than 5 minutes ahead of {now}; check the clock of the sender"
+        ),
+        Reason::TooOld => format!("taken at {taken}, older than oldest_days allows at {now}"),
+        Reason::UnknownSource => format!("source \"{}\" is not one of those listed", m.source),
+        Reason::TooManySources => format!(
+            "source \"{}\" would be one more than most_sources allows",
+            m.source
+        ),
+        Reason::NoCycle => "the bank pairs by cycle and the payload carries none".to_owned(),
+        Reason::Double => format!("source \"{}\" has already delivered this value", m.source),
+        other => other.word().to_owned(),
+    };
+    Refusal {
+        bank: Some(m.bank),
+        reason,
+        topic: watched.bank.name.clone(),
+        detail,
+        excerpt: format!("{} = {}", m.source, m.value),
+    }
+}
+
+/// Counts a refusal under its reason and keeps it as the last of its kind.
+pub fn count_refusal(list: &mut Vec<RefusalView>, refusal: Refusal, at: Time) {
+    match list.iter_mut().find(|v| v.reason == refusal.reason) {
+        Some(view) => {
+            view.count += 1;
+            view.last = refusal;
+            view.at = at;
+        }
+        None => list.push(RefusalView {
+            reason: refusal.reason,
+            count: 1,
+            last: refusal,
+            at,
+        }),
+    }
+}

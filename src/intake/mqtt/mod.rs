@@ -1,0 +1,80 @@
+//! The connection that listens: MQTT 5 and 3.1.1, QoS 1, a persistent session, acknowledgements only
+//! for what is durable.
+//!
+//! | part | what it is for |
+//! | --- | --- |
+//! | `listener` | the task: connect, subscribe, hand on, acknowledge, retry |
+//! | `link` | both versions of the protocol in one set of words |
+//! | `ledger` | what is in flight; redeliveries told from fresh messages |
+//! | `queue` | arrivals that wait for the engine, bounded |
+//! | `access` | passwords, certificates |
+//! | `words` | faults in words for operators |
+//! | `backoff` | how long to wait before the next attempt |
+//!
+//! What must hold:
+//! - The task that polls the connection never waits for anything else, so that keep-alive goes on
+//!   while the store stands still; what arrives meanwhile fits the queue, because the broker sends at
+//!   most a receive maximum of messages that are not acknowledged.
+//! - A message is acknowledged once, after its receipt came back, on the connection on which the
+//!   broker last delivered it.
+//! - Subscribing happens on every connection, whatever the broker says it remembers.
+//! - Each change of condition is said once, to the engine and in the log.
+//!
+//! Deliberately absent: publishing and the last will (a second connection does that), and any
+//! judgement on what was measured.
+
+mod access;
+mod backoff;
+mod ledger;
+mod link;
+mod listener;
+mod queue;
+mod words;
+
+use std::sync::Arc;
+
+use tokio::sync::mpsc;
+use tokio_util::sync::CancellationToken;
+
+use crate::engine::Condition;
+use crate::settings::Settings;
+
+pub use super::arrival::{Arrival, Receipt};
+
+/// What comes from the broker.
+#[derive(Clone, Debug, PartialEq)]
+pub enum FromBroker {
+    /// One message. Its receipt goes back when all of it is durable or counted.
+    Arrival(Arrival),
+    /// The connection works, or what is wrong with it.
+    Condition(Condition),
+}
+
+/// Why listening ended although nobody asked for it.
+#[derive(Debug, thiserror::Error)]
+pub enum IntakeError {
+    /// The receiver of the feed is gone.
+    #[error("nobody takes the measurements any more")]
+    NobodyTakes,
+}
+
+/// Listens until `shutdown`, then acknowledges what still becomes durable (until `receipts` is closed,
+/// at most a second), says farewell and ends. Trouble with the broker is told through `feed` and
+/// retried, whatever it is.
+///
+/// `already` holds [`Receipt::pair`]s that were durable when the last process ended and may not have
+/// been acknowledged: their redelivery is refused as [`crate::model::Reason::Redelivered`].
+///
+/// # Errors
+/// [`IntakeError`] when the feed's receiver is gone.
+pub async fn run(
+    settings: Arc<Settings>,
+    already: Vec<(u16, u64)>,
+    feed: mpsc::Sender<FromBroker>,
+    receipts: mpsc::Receiver<Vec<Receipt>>,
+    shutdown: CancellationToken,
+) -> Result<(), IntakeError> {
+    listener::Listener::new(settings, already, feed, receipts, shutdown)
+        .run()
+        .await
+}

@@ -1,0 +1,340 @@
+//! Every sentence that people are woken by, in one file.
+//!
+//! Short, calm, with the numbers that decide what to do. The subject fits a lock screen.
+
+use jiff::tz::TimeZone;
+
+use crate::model::{Bank, Characteristic, Time, Value, fixed};
+
+use super::{Kind, NamedSource, Since};
+
+/// Characters a lock screen shows.
+pub const MOST_SUBJECT: usize = 70;
+
+/// More names than this are counted instead of listed.
+const MOST_NAMES: usize = 6;
+
+/// The unit in which spread is told.
+pub const SPREAD_UNIT: &str = "times the sd of the others";
+
+const CAUTION: &str = "evenrow advises; it is no safety function. Follow lock-out and the plant's \
+procedures before touching a machine; a qualified person decides.";
+
+/// What the words are made from.
+pub struct Facts<'a> {
+    /// The bank.
+    pub bank: &'a Bank,
+    /// The zone people live in.
+    pub zone: &'a TimeZone,
+    /// What it is about.
+    pub kind: Kind,
+    /// Who is named, largest deviation first.
+    pub sources: &'a [NamedSource],
+    /// Since when.
+    pub since: Since,
+    /// How many sources the named ones were compared with.
+    pub others: usize,
+    /// Mean of those, in the unit.
+    pub even_mean: Option<f64>,
+    /// Time in which the notice clears if the fault is mended now, in microseconds.
+    pub clears_in_us: Option<i64>,
+    /// When the condition was seen to be gone.
+    pub returned: Option<Time>,
+    /// The page.
+    pub url: &'a str,
+}
+
+/// The words of a notice.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Words {
+    /// At most [`MOST_SUBJECT`] characters.
+    pub subject: String,
+    /// What to check or adjust.
+    pub advice: String,
+    /// Everything.
+    pub text: String,
+}
+
+impl Facts<'_> {
+    /// Puts it into words.
+    pub fn words(&self) -> Words {
+        let advice = self.advice();
+        let mut lines = match self.returned {
+            Some(at) => vec![self.what_was(at)],
+            None => vec![self.what()],
+        };
+        lines.extend(self.details());
+        lines.push(self.since_when());
+        lines.extend(self.bank_level());
+        if self.returned.is_none() {
+            lines.push(advice.clone());
+            lines.extend(self.clears_in());
+        }
+        lines.push(format!("Page: {}", self.url));
+        lines.push(CAUTION.to_owned());
+        Words {
+            subject: self.subject(),
+            advice,
+            text: lines.join("\n"),
+        }
+    }
+
+    fn subject(&self) -> String {
+        let bank = &self.bank.name;
+        let (long, short) = match self.returned {
+            Some(_) => (
+                format!("{bank}: {} even again", self.names()),
+                format!("{bank}: {} sources even again", self.sources.len()),
+            ),
+            None => (
+                format!("{bank}: {}{}", self.who_and_how(), self.how_much()),
+                format!(
+                    "{bank}: {} sources, {}",
+                    self.sources.len(),
+                    self.kind.words()
+                ),
+            ),
+        };
+        let whole = if long.chars().count() <= MOST_SUBJECT {
+            long
+        } else {
+            short
+        };
+        whole.chars().take(MOST_SUBJECT).collect()
+    }
+
+    /// The size without its sign, where one source (or a pair) has one.
+    fn how_much(&self) -> String {
+        let single = match (self.sources, self.is_pair()) {
+            ([one], _) | ([one, _], true) => one,
+            _ => return String::new(),
+        };
+        let c = &self.bank.characteristic;
+        match self.kind {
+            Kind::SpreadApart => format!(", {} {SPREAD_UNIT}", fixed(single.deviation, 1)),
+            _ => format!(
+                " by {} {}",
+                fixed(single.deviation.abs(), c.places() + 1),
+                c.unit
+            ),
+        }
+    }
+
+    fn is_pair(&self) -> bool {
+        self.sources.len() == 2 && self.others == 2
+    }
+
+    fn who_and_how(&self) -> String {
+        let names = self.names();
+        if self.is_pair() {
+            return match self.kind {
+                Kind::SpreadApart => format!("{names} differ in spread"),
+                _ => format!("{names} differ"),
+            };
+        }
+        let plural = self.sources.len() > 1;
+        let (is, has) = if plural {
+            ("are", "have")
+        } else {
+            ("is", "has")
+        };
+        match self.kind {
+            Kind::SpreadApart if self.all(|s| s.deviation < 1.0) => {
+                format!("{names} {is} suspiciously steady")
+            }
+            Kind::SpreadApart => format!("{names} {has} turned erratic"),
+            Kind::BankSplit => format!("split in two, {names} against the rest"),
+            _ if self.all(|s| s.deviation < 0.0) => format!("{names} {is} low"),
+            _ if self.all(|s| s.deviation > 0.0) => format!("{names} {is} high"),
+            _ => format!("{names} are apart, some high, some low"),
+        }
+    }
+
+    fn all(&self, holds: impl Fn(&NamedSource) -> bool) -> bool {
+        self.sources.iter().all(holds)
+    }
+
+    fn names(&self) -> String {
+        let listed: Vec<&str> = self
+            .sources
+            .iter()
+            .take(MOST_NAMES)
+            .map(|s| &*s.source)
+            .collect();
+        match self.sources.len() - listed.len() {
+            0 => listed.join(", "),
+            more => format!("{} and {more} more", listed.join(", ")),
+        }
+    }
+
+    fn what(&self) -> String {
+        let what = &self.bank.characteristic.name;
+        format!("{} ({what}): {}.", self.bank.name, self.who_and_how())
+    }
+
+    fn what_was(&self, returned: Time) -> String {
+        let what = &self.bank.characteristic.name;
+        let (bank, names) = (&self.bank.name, self.names());
+        format!(
+            "{bank} ({what}): {names} even again, shown at {}. At worst:",
+            self.clock(returned)
+        )
+    }
+
+    fn details(&self) -> Vec<String> {
+        let told = if self.is_pair() {
+            &self.sources[..1]
+        } else {
+            self.sources
+        };
+        told.iter().map(|s| self.detail(s)).collect()
+    }
+
+    fn detail(&self, s: &NamedSource) -> String {
+        let against = if self.is_pair() {
+            format!("against {}", self.sources[1].source)
+        } else {
+            format!("against the {} even ones", self.others)
+        };
+        let c = &self.bank.characteristic;
+        let interval = match self.kind {
+            Kind::SpreadApart => format!("{} to {}", fixed(s.low, 1), fixed(s.high, 1)),
+            _ => format!(
+                "{} to {} {}",
+                c.deviation(s.low),
+                c.deviation(s.high),
+                c.unit
+            ),
+        };
+        format!(
+            "{}: {} {against} (95 %: {interval}).",
+            s.source,
+            self.size(s)
+        )
+    }
+
+    fn size(&self, s: &NamedSource) -> String {
+        let c = &self.bank.characteristic;
+        match self.kind {
+            Kind::SpreadApart => format!("{} times the sd", fixed(s.deviation, 1)),
+            _ => format!("{} {}", c.deviation(s.deviation), c.unit),
+        }
+    }
+
+    fn since_when(&self) -> String {
+        let Since {
+            at,
+            earliest,
+            latest,
+        } = self.since;
+        let range = format!(
+            "{} to {}",
+            self.beside(at, earliest),
+            self.beside(at, latest)
+        );
+        format!("Since {} (95 %: {range}).", self.clock(at))
+    }
+
+    /// A time in the plant's zone, with its offset.
+    fn clock(&self, at: Time) -> String {
+        self.written(at, "%Y-%m-%d %H:%M:%S %:z")
+    }
+
+    /// A time beside another: without the date where it is the same day.
+    fn beside(&self, other: Time, at: Time) -> String {
+        let day = |t| self.written(t, "%Y-%m-%d");
+        if day(other) == day(at) {
+            self.written(at, "%H:%M:%S")
+        } else {
+            self.clock(at)
+        }
+    }
+
+    fn written(&self, at: Time, form: &str) -> String {
+        match at.to_jiff() {
+            Some(stamp) => stamp
+                .to_zoned_datetime(self.zone.clone())
+                .strftime(form)
+                .to_string(),
+            None => at.to_string(),
+        }
+    }
+
+    fn bank_level(&self) -> Option<String> {
+        let c = &self.bank.characteristic;
+        let mean = self.even_mean?;
+        let beside = |label: &str, v: Option<Value>| v.map(|v| format!("{label} {v} {}", c.unit));
+        let known: Vec<String> = [beside("target", c.target), beside("declared", c.declared)]
+            .into_iter()
+            .flatten()
+            .collect();
+        let known = if known.is_empty() {
+            String::new()
+        } else {
+            format!(" ({})", known.join(", "))
+        };
+        Some(format!(
+            "The even ones stand at {} {}{known}.",
+            c.mean(mean),
+            c.unit
+        ))
+    }
+
+    fn clears_in(&self) -> Option<String> {
+        let minutes = self.clears_in_us?.max(0) as f64 / 60e6;
+        let about = if minutes < 1.5 {
+            "a minute".to_owned()
+        } else {
+            format!("{minutes:.0} minutes")
+        };
+        Some(format!(
+            "If that mends it, this notice clears in about {about}."
+        ))
+    }
+
+    fn advice(&self) -> String {
+        match self.kind {
+            Kind::SpreadApart if self.all(|s| s.deviation < 1.0) => {
+                "Check that the instrument or signal of this source is alive: values this steady are rarely good news.".to_owned()
+            }
+            Kind::SpreadApart => "Check valve, seal, supply and sensor of what is named; an adjustment of its level will not steady it.".to_owned(),
+            Kind::BankSplit => "One cause is likelier than many: check what the named sources share (supply, drive, lot, instrument) before adjusting any.".to_owned(),
+            _ if self.is_pair() => self.pair_advice(),
+            _ => self.adjustments(),
+        }
+    }
+
+    fn pair_advice(&self) -> String {
+        "Two sources alone do not tell which of them left: compare both with the target before adjusting.".to_owned()
+    }
+
+    fn adjustments(&self) -> String {
+        let c = &self.bank.characteristic;
+        let sure: Vec<&NamedSource> = self
+            .sources
+            .iter()
+            .filter(|s| s.low > self.bank.margin || s.high < -self.bank.margin)
+            .collect();
+        if sure.is_empty() {
+            return "The size is not sure yet: watch the next looks before adjusting.".to_owned();
+        }
+        let steps: Vec<String> = sure.iter().map(|s| self.adjustment(s, c)).collect();
+        format!("Suggested: {}.", steps.join("; "))
+    }
+
+    /// The negative of the deviation; never down while the even ones are not above the target.
+    fn adjustment(&self, s: &NamedSource, c: &Characteristic) -> String {
+        let by = format!("{} {}", c.deviation(-s.deviation), c.unit);
+        let low_bank = match (self.even_mean, c.target) {
+            (Some(mean), Some(target)) => mean <= target.to_f64(),
+            _ => false,
+        };
+        if s.deviation > 0.0 && low_bank {
+            return format!(
+                "do not lower {}: the even ones are not above the target, so bring the bank to its level first",
+                s.source
+            );
+        }
+        format!("adjust {} by {by}", s.source)
+    }
+}

@@ -1,0 +1,167 @@
+//! Every key there is, with an example and what it is for: hints are made from it, unknown keys are
+//! compared with it, and a test holds the shipped sample against it.
+
+/// A key of a section.
+#[derive(Clone, Copy, Debug)]
+pub(super) struct Key {
+    /// The section as it is written in [`title`]; empty for the sections themselves.
+    pub(super) section: &'static str,
+    /// The key.
+    pub(super) name: &'static str,
+    /// A value as it is written in the file.
+    pub(super) example: &'static str,
+    /// What it is, after "it is".
+    pub(super) about: &'static str,
+}
+
+const fn key(
+    section: &'static str,
+    name: &'static str,
+    example: &'static str,
+    about: &'static str,
+) -> Key {
+    Key {
+        section,
+        name,
+        example,
+        about,
+    }
+}
+
+/// Every key of this version.
+#[rustfmt::skip]
+pub(super) const KEYS: &[Key] = &[
+    key("", "plant", "[plant]", "the section about the plant"),
+    key("", "broker", "[broker]", "the section about the MQTT broker"),
+    key("", "store", "[store]", "the section about the embedded store"),
+    key("", "web", "[web]", "the section about pages and interface"),
+    key("", "bank", "[[bank]]", "one section for each bank"),
+    key("plant", "name", "\"Quayside\"", "the plant's name, in notices, pages and topics"),
+    key("plant", "time_zone", "\"Europe/Lisbon\"", "the zone in which people read times, by its IANA name"),
+    key("plant", "shift", "[[plant.shift]]", "one section for each shift"),
+    key("plant.shift", "name", "\"early\"", "the shift's name"),
+    key("plant.shift", "from", "\"06:00\"", "when the shift starts, by the clock on the wall"),
+    key("plant.shift", "to", "\"14:00\"", "when the shift ends, by the clock on the wall"),
+    key("broker", "url", "\"mqtt://127.0.0.1:1883\"", "where the broker is; mqtts:// encrypts"),
+    key("broker", "client_id", "\"evenrow-quayside\"", "the client id; the connection that sends notices appends -notices"),
+    key("broker", "protocol", "5", "the version of MQTT: 5, or 4 for 3.1.1"),
+    key("broker", "user", "\"evenrow\"", "the user name at the broker"),
+    key("broker", "password_file", "\"/etc/evenrow/broker.password\"", "the file whose first line is the password"),
+    key("broker", "ca_file", "\"/etc/evenrow/ca.pem\"", "the authorities that may vouch for the broker (PEM)"),
+    key("broker", "client_certificate_file", "\"/etc/evenrow/client.pem\"", "our certificate (PEM)"),
+    key("broker", "client_key_file", "\"/etc/evenrow/client.key\"", "the key of our certificate (PEM)"),
+    key("broker", "session_expiry", "\"7 d\"", "how long the broker keeps what we miss while away (protocol 5)"),
+    key("broker", "receive_maximum", "1000", "how many messages may be under way unacknowledged (protocol 5)"),
+    key("broker", "most_bytes", "262144", "the largest payload taken, in bytes"),
+    key("broker", "keep_alive", "\"30s\"", "how long the connection may be quiet before it is tried"),
+    key("store", "folder", "\"/var/lib/evenrow\"", "the folder of the embedded store; made when missing"),
+    key("store", "keep_days", "90", "how many days of measurements and looks to keep; 0 keeps windows and evidence only"),
+    key("web", "listen", "\"127.0.0.1:7310\"", "the address and port of pages, interface and metrics"),
+    key("web", "token_file", "\"/etc/evenrow/tokens\"", "the file of tokens, one a line, each optionally preceded by `look ` or `act `"),
+    key("web", "address", "\"https://evenrow.example\"", "the address that notices link to, where it is not that of `listen`"),
+    key("web", "tls_in_front", "true", "the word that something in front of evenrow encrypts; needed beyond loopback"),
+    key("bank", "name", "\"filler-2\"", "the bank's name, unique in the plant"),
+    key("bank", "equipment", "\"filler 2\"", "the machine that the bank belongs to"),
+    key("bank", "characteristic", "\"net content\"", "what is measured"),
+    key("bank", "unit", "\"g\"", "the unit of every value, margin and limit of the bank"),
+    key("bank", "resolution", "0.1", "the step of the instrument, in the unit"),
+    key("bank", "target", "503.0", "what every source should give, in the unit"),
+    key("bank", "declared", "500.0", "the declared (label) quantity, in the unit"),
+    key("bank", "limits", "{ lower = 485.0, upper = 515.0 }", "the limits of a single value, in the unit"),
+    key("bank", "topic", "\"quayside/filler2/head/{source}/net\"", "the topic; {source} is the level that names the source"),
+    key("bank", "payload", "{ form = \"json\", value = \"/v\" }", "what a message holds: \"number\", or JSON with pointers"),
+    key("bank", "sources", "[\"01\", \"02\", \"03\", \"04\"]", "the sources in their physical order, or \"discover\""),
+    key("bank", "most_sources", "120", "how many sources \"discover\" may find"),
+    key("bank", "pairing", "\"cycle\"", "how values of different sources belong together: \"cycle\", { slot = \"10s\" } or \"none\""),
+    key("bank", "spans", "[10, 40, 160, 640]", "the lengths of the looks' windows, in values per source"),
+    key("bank", "look_every", "\"30s\"", "the time between looks"),
+    key("bank", "margin", "0.8", "the largest difference between any two sources that does not matter, in the unit"),
+    key("bank", "spread_margin", "1.5", "the largest ratio of two standard deviations that does not matter"),
+    key("bank", "false_calls", "\"1 per 90 days\"", "how many false calls the bank may cause"),
+    key("bank", "wait_cycles", "3", "a cycle closes when a source has delivered this many newer ones"),
+    key("bank", "silent_after", "\"10min\"", "how long a source may deliver nothing before it is called silent"),
+    key("bank", "oldest_days", "30", "a value taken longer ago than this many days is refused"),
+    key("bank", "layout", "\"ring\"", "how the sources stand in the machine: \"row\" or \"ring\""),
+    key("bank", "offsets", "\"none\"", "what is known of lasting differences between sources: \"none\""),
+    key("bank", "recording", "{ time = \"time\", value = \"net\" }", "the names of the columns of recordings"),
+    key("bank.limits", "lower", "485.0", "the lower limit of a single value, in the unit"),
+    key("bank.limits", "upper", "515.0", "the upper limit of a single value, in the unit"),
+    key("bank.payload", "form", "\"json\"", "the form of the payload: \"number\" or \"json\""),
+    key("bank.payload", "value", "\"/v\"", "the pointer (RFC 6901) to the value"),
+    key("bank.payload", "source", "\"/head\"", "the pointer to the source, where it is not in the topic"),
+    key("bank.payload", "time", "\"/ts\"", "the pointer to the time at which the value was taken"),
+    key("bank.payload", "time_form", "\"rfc3339\"", "how the time is written: \"auto\", \"rfc3339\", \"epoch_seconds\" or \"epoch_milliseconds\""),
+    key("bank.payload", "cycle", "\"/n\"", "the pointer to the cycle's number"),
+    key("bank.pairing", "slot", "\"10s\"", "the length of a time slot"),
+    key("bank.recording", "time", "\"time\"", "the column with the time taken"),
+    key("bank.recording", "source", "\"source\"", "the column with the source, in long form"),
+    key("bank.recording", "value", "\"value\"", "the column with the value, in long form"),
+    key("bank.recording", "cycle", "\"cycle\"", "the column with the cycle"),
+    key("bank.recording", "bank", "\"bank\"", "the column with the bank"),
+];
+
+/// Keys that a later version brings, and what holds until then. Taking one in silence would promise
+/// something that is not done.
+pub(super) const LATER: &[(&str, &str, &str)] = &[
+    (
+        "bank",
+        "reference",
+        "every source is compared with the others",
+    ),
+    ("bank", "groups", "sources are compared one by one"),
+    (
+        "bank",
+        "cost_per_unit",
+        "differences are told in the unit, without their cost",
+    ),
+    (
+        "bank.pairing",
+        "near",
+        "without a shared cycle, { slot = \"10s\" } pairs by time",
+    ),
+];
+
+/// The entry of a key.
+pub(super) fn find(section: &str, name: &str) -> Option<&'static Key> {
+    KEYS.iter().find(|k| k.section == section && k.name == name)
+}
+
+/// How a section's heading is written.
+pub(super) fn title(section: &str) -> String {
+    match section {
+        "" => "the file".to_owned(),
+        "bank" | "plant.shift" => format!("[[{section}]]"),
+        "plant" | "broker" | "store" | "web" => format!("[{section}]"),
+        inner => format!("`{}`", inner.trim_start_matches("bank.")),
+    }
+}
+
+/// "for example `margin = 0.8`: the largest …".
+pub(super) fn example(section: &str, name: &str) -> String {
+    find(section, name).map_or_else(String::new, |key| {
+        let Key { example, about, .. } = key;
+        if example.starts_with('[') && !example.contains([',', '"']) {
+            format!("for example {example}: {about}")
+        } else {
+            format!("for example `{name} = {example}`: {about}")
+        }
+    })
+}
+
+/// The word among `known` that `word` was most likely meant to be.
+pub(super) fn nearest<'k>(word: &str, known: impl Iterator<Item = &'k str>) -> Option<&'k str> {
+    let lower = word.to_lowercase();
+    known
+        .map(|candidate| (likeness(&lower, &candidate.to_lowercase()), candidate))
+        // Below this, suggestions are guesses: "colour" and "client_id" reach 0.6.
+        .filter(|(likeness, _)| *likeness >= 0.8)
+        .max_by(|a, b| a.0.total_cmp(&b.0))
+        .map(|(_, candidate)| candidate)
+}
+
+/// 1 for equal words. The common measure misjudges one slip in a short word, so that counts by itself.
+fn likeness(a: &str, b: &str) -> f64 {
+    let alike = strsim::jaro_winkler(a, b);
+    let one_slip = a.len() >= 3 && strsim::osa_distance(a, b) == 1;
+    if one_slip { alike.max(0.85) } else { alike }
+}

@@ -1,0 +1,123 @@
+//! The noncentral F distribution, for planning.
+//!
+//! A Poisson mixture of central tails: P(F > f) = sum_j e^-h h^j/j! P(B(d1/2 + j, d2/2) > x), h =
+//! noncentrality/2, x = d1 f/(d1 f + d2) (Johnson, Kotz and Balakrishnan 1995, 30.3). The upper tails
+//! grow with j by positive terms, the lower ones shrink by them; each is summed in the direction in
+//! which nothing cancels.
+
+use super::kernel::BetaPoint;
+use super::{OutOfReach, degrees, f};
+
+const MOST_TERMS: usize = 2_000_000;
+
+/// Upper tail P(F > f) with noncentrality `lambda` = sum of squared standardized deviations.
+///
+/// Relative error at most 1e-9 (measured: see tests/certified). With lambda = 0 the central tail.
+///
+/// # Errors
+/// [`OutOfReach`] for NaN, lambda negative or above 1e6, and df that is not positive and finite.
+pub fn sf(value: f64, d1: f64, d2: f64, lambda: f64) -> Result<f64, OutOfReach> {
+    check(value, d1, d2, lambda)?;
+    if lambda == 0.0 || value <= 0.0 {
+        return f::sf(value, d1, d2);
+    }
+    let h = 0.5 * lambda;
+    let mut steps = Steps::new(value, d1, d2, 0.0);
+    let mut tail = f::sf(value, d1, d2)?;
+    let (mut sum, mut ln_poisson) = (0.0, -h);
+    for j in 0..MOST_TERMS {
+        let term = ln_poisson.exp() * tail;
+        sum += term;
+        // Past the mode of the weights, and the tails can only grow to 1.
+        if j as f64 > h && ln_poisson.exp() < sum * 1e-17 {
+            return Ok(sum.min(1.0));
+        }
+        tail += steps.next();
+        ln_poisson += (h / (j + 1) as f64).ln();
+    }
+    Err(OutOfReach::NotSettled("the noncentral F tail"))
+}
+
+/// Lower tail P(F <= f): the probability of missing what is there.
+///
+/// # Errors
+/// As [`sf`].
+pub fn cdf(value: f64, d1: f64, d2: f64, lambda: f64) -> Result<f64, OutOfReach> {
+    check(value, d1, d2, lambda)?;
+    if lambda == 0.0 || value <= 0.0 {
+        return f::cdf(value, d1, d2);
+    }
+    let h = 0.5 * lambda;
+    // Where the weights have decayed; tails are built downward from there.
+    let last = (h + 12.0 * h.sqrt() + 60.0).ceil() as usize;
+    let mut ln_poisson = vec![-h];
+    for j in 1..=last {
+        ln_poisson.push(ln_poisson[j - 1] + (h / j as f64).ln());
+    }
+    let mut steps = Steps::new(value, d1, d2, last as f64);
+    let mut tail = f::cdf(
+        value * d1 / (d1 + 2.0 * last as f64),
+        d1 + 2.0 * last as f64,
+        d2,
+    )?;
+    let mut sum = ln_poisson[last].exp() * tail;
+    for j in (0..last).rev() {
+        tail += steps.before();
+        sum += ln_poisson[j].exp() * tail;
+    }
+    Ok(sum.min(1.0))
+}
+
+fn check(value: f64, d1: f64, d2: f64, lambda: f64) -> Result<(), OutOfReach> {
+    if value.is_nan() || lambda.is_nan() {
+        return Err(OutOfReach::NotANumber);
+    }
+    if !degrees(d1)?.is_finite() || !degrees(d2)?.is_finite() {
+        return Err(OutOfReach::Argument(
+            "noncentral F needs finite degrees of freedom",
+        ));
+    }
+    if (0.0..=1e6).contains(&lambda) {
+        Ok(())
+    } else {
+        Err(OutOfReach::Argument(
+            "noncentrality must lie between 0 and 1e6",
+        ))
+    }
+}
+
+/// What a beta tail gains when its first shape grows by one: x^a y^b / (a B(a, b)).
+struct Steps {
+    a: f64,
+    b: f64,
+    x: f64,
+    gain: f64,
+}
+
+impl Steps {
+    fn new(value: f64, d1: f64, d2: f64, j: f64) -> Self {
+        let (a, b) = (0.5 * d1 + j, 0.5 * d2);
+        let point = BetaPoint::from_f(value * d1 / (2.0 * a), 2.0 * a, d2);
+        Self {
+            a,
+            b,
+            x: point.x,
+            gain: point.kernel() / a,
+        }
+    }
+
+    /// The gain at the present shape; the shape moves up.
+    fn next(&mut self) -> f64 {
+        let gain = self.gain;
+        self.gain *= self.x * (self.a + self.b) / (self.a + 1.0);
+        self.a += 1.0;
+        gain
+    }
+
+    /// The shape moves down; the gain there.
+    fn before(&mut self) -> f64 {
+        self.gain *= self.a / (self.x * (self.a - 1.0 + self.b));
+        self.a -= 1.0;
+        self.gain
+    }
+}

@@ -1,0 +1,121 @@
+//! The past, read for pages and interfaces.
+
+use std::sync::Arc;
+
+use serde::de::DeserializeOwned;
+
+use crate::engine::{History, HistoryError, Page};
+use crate::model::Time;
+use crate::notice::Notice;
+use crate::verdict::{Digest, Look};
+
+use super::codec::from_payload;
+use super::keys::{self, Sort};
+use super::recover::{ReadError, payload};
+use super::shelf::{Order, Shelf};
+
+/// Reads a shelf.
+pub(super) struct Past(pub(super) Arc<dyn Shelf>);
+
+impl Past {
+    fn record<T: DeserializeOwned>(&self, key: &[u8], value: &[u8]) -> Result<T, ReadError> {
+        let bytes = payload(&*self.0, key, value)?;
+        from_payload(&bytes).map_err(|e| ReadError::record(key, &e))
+    }
+
+    fn get<T: DeserializeOwned>(&self, key: &[u8]) -> Result<Option<T>, ReadError> {
+        let value = self.0.get(key)?;
+        value.map(|value| self.record(key, &value)).transpose()
+    }
+
+    fn newest_per_span(&self, bank: &str, at: Time) -> Result<Vec<Look>, ReadError> {
+        let prefix = keys::of_bank(Sort::Look, bank);
+        let end = keys::beyond(&prefix);
+        let mut looks = Vec::new();
+        let mut from = prefix.clone();
+        loop {
+            let next = self.0.page(&from, &end, Order::Rising, 1)?;
+            let Some(span) = next.first().and_then(|(key, _)| keys::span_of(key)) else {
+                return Ok(looks);
+            };
+            let first = keys::looks_from(&prefix, span, Time::from_us(i64::MIN));
+            let to = keys::looks_from(&prefix, span, at.plus_us(1));
+            if let Some((key, value)) = self.0.page(&first, &to, Order::Falling, 1)?.first() {
+                looks.push(self.record(key, value)?);
+            }
+            let Some(next) = span.checked_add(1) else {
+                return Ok(looks);
+            };
+            from = keys::looks_from(&prefix, next, Time::from_us(i64::MIN));
+        }
+    }
+
+    fn page_of_notices(&self, after: Option<&str>, most: usize) -> Result<Page<Notice>, ReadError> {
+        let to = match after {
+            None => Some(Sort::Raised.to()),
+            Some(id) => {
+                let notice: Option<Notice> = self.get(&keys::notice(id))?;
+                notice.map(|n| keys::raised(n.raised, id))
+            }
+        };
+        let Some(to) = to else {
+            return Ok(Page {
+                items: Vec::new(),
+                next: None,
+            });
+        };
+        let from = Sort::Raised.from();
+        let entries = self
+            .0
+            .page(&from, &to, Order::Falling, most.saturating_add(1))?;
+        let mut items = Vec::new();
+        for (key, _) in entries.iter().take(most) {
+            let id = keys::id_of(key).unwrap_or_default();
+            items.extend(self.get::<Notice>(&keys::notice(id))?);
+        }
+        let next = match items.last() {
+            Some(last) if entries.len() > most => Some(last.id.to_string()),
+            _ => None,
+        };
+        Ok(Page { items, next })
+    }
+}
+
+fn wrong(e: ReadError) -> HistoryError {
+    HistoryError(match e {
+        ReadError::Shelf(why) => why,
+        other => other.to_string(),
+    })
+}
+
+impl History for Past {
+    fn digests(
+        &self,
+        bank: &str,
+        from: Time,
+        to: Time,
+        most: usize,
+    ) -> Result<Vec<Digest>, HistoryError> {
+        let prefix = keys::of_bank(Sort::Digest, bank);
+        let from = keys::digests_from(&prefix, from);
+        let to = keys::digests_from(&prefix, to);
+        let page = self.0.page(&from, &to, Order::Falling, most);
+        let page = page.map_err(|e| wrong(e.into()))?;
+        let newest_last = page.iter().rev();
+        newest_last
+            .map(|(key, value)| self.record(key, value).map_err(wrong))
+            .collect()
+    }
+
+    fn looks_at(&self, bank: &str, at: Time) -> Result<Vec<Look>, HistoryError> {
+        self.newest_per_span(bank, at).map_err(wrong)
+    }
+
+    fn notices(&self, after: Option<&str>, most: usize) -> Result<Page<Notice>, HistoryError> {
+        self.page_of_notices(after, most).map_err(wrong)
+    }
+
+    fn notice(&self, id: &str) -> Result<Option<Notice>, HistoryError> {
+        self.get(&keys::notice(id)).map_err(wrong)
+    }
+}

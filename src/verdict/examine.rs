@@ -1,0 +1,335 @@
+//! The look itself: every span examined, and what is called.
+
+use crate::model::{Bank, Name, Pairing, SourceIx, Time};
+use crate::stats;
+use crate::window::Windows;
+
+use super::data::{Data, Need};
+use super::level::Level;
+use super::look::{Dependence, Finding, Look, SourceLook};
+use super::shares::Shares;
+use super::spread::{Spread, Within};
+use super::track::{self, Aspect, Yardstick};
+
+/// With fewer independent values per source than this, dependence has eaten the window.
+const FEWEST_INDEPENDENT: f64 = 4.0;
+
+/// Fewest cycles on which sources are named again after the start is known.
+const FEWEST_TO_RENAME: usize = 5;
+
+/// One source as an examination sees it.
+#[derive(Clone, Debug)]
+pub struct Participant {
+    /// Which.
+    pub source: SourceIx,
+    /// Its name.
+    pub name: Name,
+    /// The margin with which it is watched: the bank's, or more after it cleared.
+    pub margin: f64,
+}
+
+/// A call: sources left the even set.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Call {
+    /// In which respect.
+    pub aspect: Aspect,
+    /// Who, in display order.
+    pub named: Vec<SourceIx>,
+    /// Everybody they were compared with.
+    pub reference: Vec<SourceIx>,
+    /// The span of the look that called.
+    pub span: usize,
+}
+
+/// What a look at all spans says.
+#[derive(Debug)]
+pub struct Examination {
+    /// One look per span, shortest first.
+    pub looks: Vec<Look>,
+    /// What is called, at most one for each aspect; spread first.
+    pub calls: Vec<Call>,
+    /// The values it rests on.
+    pub data: Data,
+    /// How much dependence enlarges variances.
+    pub factor: f64,
+}
+
+/// Looks at a bank over all its spans. `who` are the sources that take part, in display order.
+pub fn examine(
+    bank: &Bank,
+    windows: &Windows,
+    who: &[Participant],
+    at: Time,
+    need: Need,
+) -> Examination {
+    let order: Vec<SourceIx> = who.iter().map(|p| p.source).collect();
+    let look = Looking {
+        bank,
+        who,
+        at,
+        shares: Shares::of(bank),
+        origin: windows.origin().to_f64(),
+    };
+    let data = Data::gather(windows, &order, bank.window_length());
+    let mut known: Option<Dependence> = None;
+    let mut spans = Vec::new();
+    // Longest first: it knows best how much successive values resemble each other.
+    for &span in bank.spans.iter().rev() {
+        let seen = look.over(&data, span, need, known);
+        known = known.or(seen.look.dependence);
+        spans.push(seen);
+    }
+    spans.reverse();
+    let calls = [Aspect::Spread, Aspect::Level]
+        .into_iter()
+        .filter_map(|aspect| strongest(&spans, aspect))
+        .map(|(call, margins)| look.rename(&data, call, &margins, known))
+        .collect();
+    Examination {
+        looks: spans.into_iter().map(|s| s.look).collect(),
+        calls,
+        data,
+        factor: known.map_or(1.0, |d| d.variance_factor),
+    }
+}
+
+/// One span's look and what it calls.
+struct Seen {
+    look: Look,
+    margins: Vec<f64>,
+    level: Option<(f64, Call)>,
+    spread: Option<(f64, Call)>,
+}
+
+fn strongest(spans: &[Seen], aspect: Aspect) -> Option<(Call, Vec<f64>)> {
+    let of = |s: &Seen| match aspect {
+        Aspect::Level => s.level.clone(),
+        Aspect::Spread => s.spread.clone(),
+    };
+    let calls = spans
+        .iter()
+        .filter_map(|s| of(s).map(|(p, call)| (p, call, s.margins.clone())));
+    let best = calls.min_by(|a, b| a.0.total_cmp(&b.0))?;
+    Some((best.1, best.2))
+}
+
+struct Looking<'a> {
+    bank: &'a Bank,
+    who: &'a [Participant],
+    at: Time,
+    shares: Shares,
+    origin: f64,
+}
+
+impl Looking<'_> {
+    fn over(&self, data: &Data, span: usize, need: Need, known: Option<Dependence>) -> Seen {
+        let Some(cut) = data.cut(span, need) else {
+            return self.nothing(span, "the window is not filled yet".to_owned());
+        };
+        let margins = self.margins(&cut);
+        match Level::judge(&cut, &margins, known) {
+            Ok(level) => self.seen(&cut, span, margins, level),
+            Err(why) => self.nothing(span, why.to_string()),
+        }
+    }
+
+    fn margins(&self, cut: &Data) -> Vec<f64> {
+        let margin = |s: &SourceIx| {
+            let own = self.who.iter().find(|p| p.source == *s);
+            own.map_or(self.bank.margin, |p| p.margin)
+        };
+        cut.sources.iter().map(margin).collect()
+    }
+
+    fn nothing(&self, span: usize, remark: String) -> Seen {
+        Seen {
+            look: self.blank(span, Finding::NotEnoughData, remark),
+            margins: Vec::new(),
+            level: None,
+            spread: None,
+        }
+    }
+
+    fn blank(&self, span: usize, finding: Finding, remark: String) -> Look {
+        Look {
+            bank: self.bank.name.clone(),
+            at: self.at,
+            span,
+            finding,
+            remark,
+            alpha_level: self.shares.level,
+            alpha_spread: self.shares.spread,
+            tests: Vec::new(),
+            dependence: None,
+            sigma: 0.0,
+            sources: Vec::new(),
+        }
+    }
+
+    fn seen(&self, cut: &Data, span: usize, margins: Vec<f64>, level: Level) -> Seen {
+        let factor = level.dependence.map_or(1.0, |d| d.variance_factor);
+        let within = if self.bank.pairing == Pairing::None {
+            Within::Raw
+        } else {
+            Within::Residuals
+        };
+        let spread = Spread::judge(&level.within, within, self.bank.spread_margin, factor);
+        let spread_call = spread.as_ref().filter(|s| s.calls(self.shares.spread));
+        let level_named = level.calls(self.shares.level).then(|| named_level(&level));
+        let finding = match (spread_call, &level_named) {
+            (Some(_), _) => Finding::SpreadApart,
+            (None, Some(_)) => Finding::LevelApart,
+            (None, None) if (span as f64) < FEWEST_INDEPENDENT * factor => Finding::DependentData,
+            (None, None) => Finding::Even,
+        };
+        let mut look = self.blank(span, finding, self.remark(cut, spread.as_ref()));
+        look.sigma = level.sigma;
+        look.dependence = level.dependence;
+        look.sources = self.sources(
+            cut,
+            &level,
+            spread.as_ref(),
+            level_named.as_deref(),
+            spread_call.is_some(),
+        );
+        look.tests.clone_from(&level.tests);
+        look.tests
+            .extend(spread.iter().flat_map(|s| s.tests.clone()));
+        if self.bank.pairing != Pairing::None {
+            look.tests.extend(raw_spread(cut));
+        }
+        let call = |aspect, named: &[bool]| call_of(cut, aspect, named, span);
+        Seen {
+            level: level_named.map(|n| (level.pair_p, call(Aspect::Level, &n))),
+            spread: spread_call.map(|s| (s.p, call(Aspect::Spread, &s.named))),
+            look,
+            margins,
+        }
+    }
+
+    fn remark(&self, cut: &Data, spread: Option<&Spread>) -> String {
+        if cut.sources.len() < self.who.len() {
+            let missing = self.who.len() - cut.sources.len();
+            return format!(
+                "{missing} of {} sources have too few values for this span",
+                self.who.len()
+            );
+        }
+        if spread.is_none() && self.bank.pairing != Pairing::None && cut.sources.len() == 2 {
+            return "two sources that share cycles mirror each other: spread is not judged"
+                .to_owned();
+        }
+        String::new()
+    }
+
+    fn sources(
+        &self,
+        cut: &Data,
+        level: &Level,
+        spread: Option<&Spread>,
+        level_named: Option<&[bool]>,
+        spread_called: bool,
+    ) -> Vec<SourceLook> {
+        let columns = cut.columns();
+        let one = |c: usize| {
+            let summary = stats::summarize(&columns[c]);
+            let own_sd = || stats::summarize(&level.within[c]).sd().unwrap_or(0.0);
+            let name = self.who.iter().find(|p| p.source == cut.sources[c]);
+            SourceLook {
+                source: cut.sources[c],
+                name: name.map_or_else(|| "".into(), |p| p.name.clone()),
+                n: summary.n,
+                mean: self.origin + summary.mean,
+                sd: spread.map_or_else(own_sd, |s| s.sds[c]),
+                deviation: level.deviations[c],
+                sd_ratio: spread.and_then(|s| s.ratios[c]),
+                named_level: level_named.is_some_and(|n| n[c]),
+                named_spread: spread_called && spread.is_some_and(|s| s.named[c]),
+            }
+        };
+        (0..cut.sources.len()).map(one).collect()
+    }
+
+    /// Names again on the values since the estimated start, which the calling span mixes with older
+    /// ones.
+    fn rename(&self, data: &Data, call: Call, margins: &[f64], known: Option<Dependence>) -> Call {
+        if call.aspect == Aspect::Spread {
+            return call;
+        }
+        let yard = Yardstick {
+            reference: &call.reference,
+            margin: margins.iter().copied().fold(0.0, f64::max),
+            factor: known.map_or(1.0, |d| d.variance_factor),
+            family: self.who.len(),
+        };
+        let starts = call
+            .named
+            .iter()
+            .filter_map(|s| track::locate(data, *s, call.aspect, &yard));
+        let Some(start) = starts.map(|l| l.start.place).min() else {
+            return call;
+        };
+        let Some(since) = data.since(start) else {
+            return call;
+        };
+        let enough = since.columns().iter().all(|c| c.len() >= FEWEST_TO_RENAME);
+        if !enough || since.sources.len() < call.named.len() + call.reference.len() {
+            return call;
+        }
+        match Level::judge(&since, &self.margins(&since), known) {
+            Ok(level) if level.even.contains(&false) => {
+                call_of(&since, Aspect::Level, &named_level(&level), call.span)
+            }
+            _ => call,
+        }
+    }
+}
+
+/// Whoever is outside the even set; of two sources, both. When the pairs single nobody out although
+/// the test calls, the one farthest off in standard errors.
+fn named_level(level: &Level) -> Vec<bool> {
+    let k = level.even.len();
+    if k == 2 {
+        return vec![true; 2];
+    }
+    let mut named: Vec<bool> = level.even.iter().map(|e| !e).collect();
+    if !named.contains(&true) {
+        let farness = |i: usize| {
+            level.deviations[i].map_or(0.0, |d| {
+                d.value.abs() / (d.high - d.low).max(f64::MIN_POSITIVE)
+            })
+        };
+        if let Some(worst) = (0..k).max_by(|&a, &b| farness(a).total_cmp(&farness(b))) {
+            named[worst] = true;
+        }
+    }
+    named
+}
+
+fn call_of(cut: &Data, aspect: Aspect, named: &[bool], span: usize) -> Call {
+    let pick = |yes: bool| -> Vec<SourceIx> {
+        let those = cut.sources.iter().zip(named).filter(|(_, n)| **n == yes);
+        those.map(|(s, _)| *s).collect()
+    };
+    let mut reference = pick(false);
+    if reference.is_empty() {
+        // Two sources: each is compared with the other.
+        reference.clone_from(&cut.sources);
+    }
+    Call {
+        aspect,
+        named: pick(true),
+        reference,
+        span,
+    }
+}
+
+/// The spread tests of the textbook on raw values, which common movement blinds.
+fn raw_spread(cut: &Data) -> Vec<super::look::TestEntry> {
+    let columns = cut.columns();
+    let raw = |t: super::look::TestEntry| super::look::TestEntry { raw: true, ..t };
+    super::spread::reported(&columns)
+        .into_iter()
+        .map(raw)
+        .collect()
+}

@@ -1,0 +1,6 @@
+//! What several tests share: processes that end with their test, and a real broker.
+
+#![allow(dead_code, reason = "each test uses the part that it needs")]
+
+pub mod mosquitto;
+pub mod running;

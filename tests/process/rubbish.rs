@@ -1,0 +1,169 @@
+//! Everything that should not arrive: each kind is refused, counted by reason and shown, and the
+//! daemon goes on with what is good.
+
+use std::collections::BTreeMap;
+
+use serde_json::Value;
+
+use crate::common::mosquitto::Mosquitto;
+use crate::common::running::wait_for;
+use crate::daemon::{Plant, SOON, Wanted};
+use crate::line::{Line, TOPIC};
+
+/// A day in milliseconds.
+const DAY_MS: i64 = 86_400_000;
+
+fn now_ms() -> i64 {
+    let since = std::time::UNIX_EPOCH
+        .elapsed()
+        .expect("it is later than 1970");
+    i64::try_from(since.as_millis()).expect("it is before the year 292 million")
+}
+
+/// Payloads that are refused and the reason that each must be counted under.
+fn rubbish() -> Vec<(Vec<u8>, &'static str)> {
+    let now = now_ms();
+    let whole = |head: &str, v: &str, ts: &str, n: &str| {
+        format!(r#"{{"head":{head},"v":{v},"ts":{ts},"n":{n}}}"#).into_bytes()
+    };
+    let at = |ms: i64| whole("\"01\"", "503.1", &ms.to_string(), "900001");
+    let value = |v: &str| whole("\"01\"", v, &now.to_string(), "900002");
+    vec![
+        (Vec::new(), "empty"),
+        (b"not json at all".to_vec(), "malformed"),
+        (vec![0xff, 0xfe, 0x00, 0x80], "malformed"),
+        (b"{\"head\":\"01\",\"v\":503.1".to_vec(), "malformed"),
+        (vec![b'x'; 1_000_000], "too_large"),
+        (
+            format!(r#"{{"head":"01","w":503.1,"ts":{now},"n":1}}"#).into_bytes(),
+            "field_missing",
+        ),
+        (value("\"503.1\""), "not_a_number"),
+        (value("null"), "not_a_number"),
+        (value("[503.1]"), "not_a_number"),
+        (value("1e999"), "not_finite"),
+        (at(0), "too_old"),
+        (at(now + 365 * DAY_MS), "too_far_ahead"),
+        (
+            whole("\"01\"", "503.1", "\"yesterday\"", "900003"),
+            "bad_time",
+        ),
+        (
+            whole("\"01\"", "503.1", &now.to_string(), "1.5"),
+            "bad_cycle",
+        ),
+        (
+            format!(r#"{{"head":"01","v":503.1,"ts":{now}}}"#).into_bytes(),
+            "no_cycle",
+        ),
+        (
+            whole("\"99\"", "503.1", &now.to_string(), "900004"),
+            "unknown_source",
+        ),
+    ]
+}
+
+#[test]
+fn rubbish_of_every_kind_is_refused_by_reason_and_the_daemon_goes_on() {
+    let broker = Mosquitto::start();
+    let plant = Plant::new(broker.port(), &Wanted::default());
+    // Published once, long ago: not a fresh measurement, and never seen as one.
+    let mut line = Line::new();
+    let old = line.cycles(1, &[]);
+    broker.publish(TOPIC, old[0].as_bytes(), &["-r"]);
+    let daemon = plant.start_ready();
+
+    let mut wanted: BTreeMap<&str, u64> = BTreeMap::new();
+    for (payload, reason) in rubbish() {
+        broker.publish(TOPIC, &payload, &[]);
+        *wanted.entry(reason).or_default() += 1;
+    }
+    // Whatever is not JSON's idea of a number is no document at all.
+    for text in ["NaN", "Infinity", "-Infinity", "5,1", "0x10"] {
+        let payload = format!(r#"{{"head":"01","v":{text},"ts":{},"n":900005}}"#, now_ms());
+        broker.publish(TOPIC, payload.as_bytes(), &[]);
+    }
+    // Sent twice: taken once.
+    let twice = line.cycles(1, &[]);
+    broker.publish_lines(TOPIC, &twice);
+    broker.publish(TOPIC, twice[0].as_bytes(), &[]);
+    *wanted.entry("double").or_default() += 1;
+    line.publish(&broker, 99, &[]);
+
+    let refusals = wait_for(SOON, "the double to be counted", || {
+        let list = daemon.json("/api/v1/banks/filler-2/refusals");
+        let items = list["items"].as_array().expect("a list").clone();
+        items
+            .iter()
+            .any(|r| r["reason"] == "double")
+            .then_some(items)
+    });
+    let counts: BTreeMap<&str, u64> = refusals
+        .iter()
+        .map(|r| {
+            (
+                r["reason"].as_str().expect("a reason"),
+                r["count"].as_u64().expect("a count"),
+            )
+        })
+        .collect();
+    for (reason, count) in &wanted {
+        let found = counts.get(reason).copied().unwrap_or(0);
+        let more = if matches!(*reason, "malformed" | "not_a_number" | "not_finite") {
+            5
+        } else {
+            0
+        };
+        assert!(
+            found >= *count && found <= count + more,
+            "{reason}: {counts:?}"
+        );
+    }
+    let all: u64 = ["malformed", "not_a_number", "not_finite"]
+        .iter()
+        .map(|r| counts[r])
+        .sum();
+    let ours: u64 = ["malformed", "not_a_number", "not_finite"]
+        .iter()
+        .map(|r| wanted[r])
+        .sum();
+    assert_eq!(all, ours + 5, "{counts:?}");
+    for refusal in &refusals {
+        let text = |key: &str| refusal[key].as_str().expect(key).to_owned();
+        assert_eq!(text("topic"), TOPIC);
+        assert!(!text("detail").is_empty(), "{refusal}");
+        assert!(text("excerpt").chars().count() <= 120, "{refusal}");
+    }
+
+    // The bank's page shows them, the metrics count them, and the good ones are all there.
+    let page = daemon.ask("/banks/filler-2").expect("the page").text;
+    assert!(
+        page.contains("503.1") || page.contains("yesterday"),
+        "the page shows what was refused"
+    );
+    for (reason, count) in wanted {
+        let series =
+            format!("evenrow_measurements_total{{bank=\"filler-2\",outcome=\"{reason}\"}}");
+        assert!(
+            daemon.metric(&series).is_some_and(|v| v >= count as f64),
+            "{series}"
+        );
+    }
+    let windows = daemon.json("/api/v1/banks/filler-2/windows");
+    for window in windows["items"].as_array().expect("a list") {
+        let values = window["values"].as_array().expect("values");
+        assert_eq!(values.len(), 80, "{}", window["source"]);
+        let cycles: Vec<i64> = values
+            .iter()
+            .filter_map(|v: &Value| v["cycle"].as_i64())
+            .collect();
+        let newest = line.newest();
+        assert_eq!(cycles, (newest - 79..=newest).collect::<Vec<_>>());
+    }
+    let looked = wait_for(SOON, "a look at the good ones", || {
+        let bank = daemon.json("/api/v1/banks/filler-2");
+        bank["looks"].as_array().filter(|l| !l.is_empty()).cloned()
+    });
+    assert!(looked.iter().all(|l| l["finding"] == "even"), "{looked:?}");
+    daemon.end(&["refused"]);
+}
