@@ -6,7 +6,10 @@ pub mod args;
 pub mod configuration;
 pub mod demo;
 pub mod exit;
+pub mod log;
+pub mod signals;
 mod vet;
+mod watch;
 
 use std::process::ExitCode;
 
@@ -25,6 +28,8 @@ struct Cli {
 /// One line for each command: its options from [`args`], its body in a file of its name.
 #[derive(Subcommand, Debug)]
 enum Command {
+    /// Watch the plant: take measurements in, look at every bank, raise notices, serve pages
+    Watch(args::WatchArgs),
     /// Check a configuration: every fault at once, with its line and what to do
     Vet(args::VetArgs),
 }
@@ -40,6 +45,7 @@ pub fn main() -> ExitCode {
 /// Runs the command.
 fn run(cli: Cli) -> Exit {
     match cli.command {
+        Command::Watch(args) => watch::run(args),
         Command::Vet(args) => vet::run(args),
     }
 }
