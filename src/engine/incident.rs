@@ -149,6 +149,12 @@ impl Incident {
         holding.map(|a| a.source).collect()
     }
 
+    /// How far a source is apart now, when it is about that source.
+    pub fn size_of(&self, source: SourceIx) -> Option<Estimate> {
+        let one = self.apart.iter().find(|a| a.source == source && !a.cleared);
+        one.filter(|_| self.is_active()).map(|a| a.size)
+    }
+
     /// Whether it is about a source now.
     pub fn is_about(&self, source: SourceIx) -> bool {
         self.about().contains(&source)

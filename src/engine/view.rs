@@ -4,9 +4,10 @@ use std::sync::Arc;
 
 use crate::model::{Measurement, Reason, Refusal, SourceIx, Time};
 use crate::notice::Notice;
-use crate::verdict::{Look, SourceLook};
+use crate::verdict::{Aspect, Look, SourceLook};
 
 use super::bank::Watched;
+use super::incident::Incident;
 use super::{BankView, Condition, Cycles, Plant, RefusalView, Snapshot, SourceView};
 
 /// A snapshot of nothing.
@@ -80,9 +81,18 @@ fn mean(sources: &[SourceLook]) -> Option<f64> {
 fn source_view(watched: &Watched, source: SourceIx, shown: Option<&Look>) -> SourceView {
     let known = &watched.state.sources[source.index()];
     let seen = shown.and_then(|l| l.sources.iter().find(|s| s.source == source));
-    let deviation = seen.and_then(|s| s.deviation);
+    // What an open notice says of a source rests on the values since it left: the page says the same.
+    let followed = |aspect| {
+        let incidents = watched
+            .state
+            .incidents
+            .iter()
+            .filter(|i| i.aspect == aspect);
+        incidents.filter_map(|i| i.size_of(source)).next()
+    };
+    let deviation = followed(Aspect::Level).or(seen.and_then(|s| s.deviation));
     let sigma = shown.map_or(0.0, |l| l.sigma);
-    let about = |i: &&super::incident::Incident| i.is_about(source);
+    let about = |i: &&Incident| i.is_about(source);
     SourceView {
         source,
         name: known.name.clone(),
@@ -93,7 +103,7 @@ fn source_view(watched: &Watched, source: SourceIx, shown: Option<&Look>) -> Sou
         last_received: known.last_received,
         deviation,
         deviation_sigmas: deviation.filter(|_| sigma > 0.0).map(|d| d.value / sigma),
-        sd_ratio: seen.and_then(|s| s.sd_ratio),
+        sd_ratio: followed(Aspect::Spread).or(seen.and_then(|s| s.sd_ratio)),
         named: watched
             .state
             .incidents

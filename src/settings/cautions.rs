@@ -121,7 +121,7 @@ mod tests {
             (("margin = 0.8", "margin = 0"), "margin of 0"),
             (("spans = [10, 40]", "spans = [3, 40]"), "span of 3"),
             (("spans = [10, 40]", "spans = [10, 20000]"), "20000 values"),
-            (("1 per 90 days", "50 per day"), "budget lets"),
+            (("1 per 90 days", "200 per day"), "budget lets"),
             (("1 per 90 days", "1 per 9e12 days"), "exact down to"),
             (
                 ("pairing = \"cycle\"", "pairing = { slot = \"1 d\" }"),

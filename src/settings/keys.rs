@@ -14,6 +14,13 @@ pub(super) struct Key {
     pub(super) about: &'static str,
 }
 
+impl Key {
+    /// Whether it is written as a heading, `[plant]`, and not as `key = value`.
+    pub(super) fn is_heading(&self) -> bool {
+        self.section.is_empty() || self.name == "shift"
+    }
+}
+
 const fn key(
     section: &'static str,
     name: &'static str,
@@ -121,6 +128,41 @@ pub(super) const LATER: &[(&str, &str, &str)] = &[
     ),
 ];
 
+/// Keys that people look for and that stand in another form, with that form.
+pub(super) const OTHERWISE: &[(&str, &str, &str)] = &[
+    (
+        "broker",
+        "host",
+        "the host is a part of `url`: mqtt://HOST:PORT",
+    ),
+    (
+        "broker",
+        "port",
+        "the port is a part of `url`: mqtt://HOST:PORT",
+    ),
+    ("broker", "tls", "write mqtts:// in `url` to encrypt"),
+    (
+        "broker",
+        "password",
+        "write it into a file and name that in `password_file`",
+    ),
+    (
+        "web",
+        "port",
+        "the port is a part of `listen`: 127.0.0.1:7310",
+    ),
+    (
+        "web",
+        "token",
+        "write it into a file and name that in `token_file`",
+    ),
+    (
+        "bank",
+        "alpha",
+        "the probability of a false call follows from `false_calls`",
+    ),
+];
+
 /// The entry of a key.
 pub(super) fn find(section: &str, name: &str) -> Option<&'static Key> {
     KEYS.iter().find(|k| k.section == section && k.name == name)
@@ -140,7 +182,7 @@ pub(super) fn title(section: &str) -> String {
 pub(super) fn example(section: &str, name: &str) -> String {
     find(section, name).map_or_else(String::new, |key| {
         let Key { example, about, .. } = key;
-        if example.starts_with('[') && !example.contains([',', '"']) {
+        if key.is_heading() {
             format!("for example {example}: {about}")
         } else {
             format!("for example `{name} = {example}`: {about}")
@@ -151,11 +193,17 @@ pub(super) fn example(section: &str, name: &str) -> String {
 /// The word among `known` that `word` was most likely meant to be.
 pub(super) fn nearest<'k>(word: &str, known: impl Iterator<Item = &'k str>) -> Option<&'k str> {
     let lower = word.to_lowercase();
-    let score = |candidate: &str| strsim::jaro_winkler(&lower, &candidate.to_lowercase());
     known
-        .map(|candidate| (score(candidate), candidate))
+        .map(|candidate| (likeness(&lower, &candidate.to_lowercase()), candidate))
         // Below this, suggestions are guesses: "colour" and "client_id" reach 0.6.
-        .filter(|(score, _)| *score >= 0.8)
+        .filter(|(likeness, _)| *likeness >= 0.8)
         .max_by(|a, b| a.0.total_cmp(&b.0))
         .map(|(_, candidate)| candidate)
+}
+
+/// 1 for equal words. The common measure misjudges one slip in a short word, so that counts by itself.
+fn likeness(a: &str, b: &str) -> f64 {
+    let alike = strsim::jaro_winkler(a, b);
+    let one_slip = a.len() >= 3 && strsim::osa_distance(a, b) == 1;
+    if one_slip { alike.max(0.85) } else { alike }
 }

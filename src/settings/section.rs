@@ -4,7 +4,7 @@
 //! What must hold: no type is coerced; a value that is there and wrong is not also missing.
 
 use super::fault::{FaultList, Place};
-use super::keys::{self, LATER};
+use super::keys::{self, LATER, OTHERWISE};
 use super::raw::{Kind, Node, Table};
 
 /// A good value and where it stands.
@@ -82,6 +82,14 @@ impl Section {
             place: Place::File,
             table: None,
         }
+    }
+
+    /// Whether a key that a later version brings is there; [`Section::close`] will say so.
+    pub(super) fn holds_later(&self) -> bool {
+        let names = self.table.iter().flatten().map(|(name, _)| name);
+        names
+            .into_iter()
+            .any(|name| later(self.path, name).is_some())
     }
 
     /// The value of a key as it stands.
@@ -211,17 +219,23 @@ impl Section {
                 other => Err(other.what()),
             },
         );
-        field.map(|list, _| {
-            let section = |node: Node| match node.kind {
-                Kind::Table(table) => Some(Self::new(path, node.place, table)),
-                other => faults.none(
-                    &node.place,
-                    format!("`{name}` holds {} and must hold tables", other.what()),
-                    format!("write {heading} and the keys under it"),
-                ),
-            };
-            list.into_iter().filter_map(section).collect()
-        })
+        let Field::Given(Spot { value: list, place }) = field else {
+            return field.map(|_, _| Vec::new());
+        };
+        let empty = list.is_empty();
+        let section = |node: Node| match node.kind {
+            Kind::Table(table) => Some(Self::new(path, node.place, table)),
+            other => faults.none(
+                &node.place,
+                format!("`{name}` holds {} and must hold tables", other.what()),
+                format!("write {heading} and the keys under it"),
+            ),
+        };
+        let value: Vec<_> = list.into_iter().filter_map(section).collect();
+        if value.is_empty() && !empty {
+            return Field::Faulty;
+        }
+        Field::Given(Spot { value, place })
     }
 
     /// Says of every key that is left over that there is no such key.
@@ -248,23 +262,37 @@ impl Section {
 }
 
 fn later(path: &str, name: &str) -> Option<&'static str> {
-    let same = |known: &&(&str, &str, &str)| known.0 == path && known.1 == name;
-    LATER.iter().find(same).map(|known| known.2)
+    said_of(LATER, path, name)
+}
+
+/// What a list says of a key.
+fn said_of(list: &[(&str, &str, &'static str)], path: &str, name: &str) -> Option<&'static str> {
+    let same = |known: &&(&str, &str, &'static str)| known.0 == path && known.1 == name;
+    list.iter().find(same).map(|known| known.2)
 }
 
 /// What the key was most likely meant to be.
 fn suggestion(path: &str, name: &str) -> String {
-    let here = || keys::KEYS.iter().filter(|key| key.section == path);
-    if let Some(near) = keys::nearest(name, here().map(|key| key.name)) {
-        return format!("did you mean `{near}`? {}", keys::example(path, near));
+    if let Some(form) = said_of(OTHERWISE, path, name) {
+        return form.to_owned();
     }
     let elsewhere = keys::KEYS.iter().find(|key| key.name == name);
     match elsewhere {
-        Some(key) if key.section.is_empty() => format!("it is a section: [{name}]"),
-        Some(key) => format!("it belongs in {}", keys::title(key.section)),
-        None => {
-            let names: Vec<_> = here().map(|key| key.name).collect();
-            format!("the keys here are {}", names.join(", "))
-        }
+        Some(key) if key.section.is_empty() => return format!("it is a section: {}", key.example),
+        Some(key) => return format!("it belongs in {}", keys::title(key.section)),
+        None => {}
+    }
+    let here = || {
+        keys::KEYS
+            .iter()
+            .filter(|key| key.section == path)
+            .map(|key| key.name)
+    };
+    match keys::nearest(name, here()) {
+        Some(near) => format!("did you mean `{near}`? {}", keys::example(path, near)),
+        None => format!(
+            "the keys here are {}",
+            here().collect::<Vec<_>>().join(", ")
+        ),
     }
 }

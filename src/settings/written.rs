@@ -366,7 +366,11 @@ fn pairing(s: &mut Section, faults: &mut FaultList) -> Field<WrittenPairing> {
         Kind::Text(word) => Ok(WrittenPairing::Word(word)),
         Kind::Table(table) => {
             let mut section = Section::new("bank.pairing", place.clone(), table);
-            let slot = section.text("slot", faults);
+            let slot = match section.text("slot", faults) {
+                // Another way to pair is asked for, so the slot is not what is missing.
+                Field::Absent if section.holds_later() => Field::Faulty,
+                slot => slot,
+            };
             section.close(faults);
             let place = place.clone();
             Ok(WrittenPairing::Slot { place, slot })

@@ -89,19 +89,13 @@ pub(super) fn broker(
         ca_file: files.ca.map(|spot| spot.value),
         client_certificate_file: files.certificate.map(|spot| spot.value),
         client_key_file: files.key.map(|spot| spot.value),
-        session_expiry_s: seconds(session_us.unwrap_or(SESSION_EXPIRY_US)),
+        // The bounds above lie within both types.
+        session_expiry_s: u32::try_from(session_us.unwrap_or(SESSION_EXPIRY_US) / S)
+            .unwrap_or(u32::MAX),
         receive_maximum: receive_maximum.unwrap_or(RECEIVE_MAXIMUM),
         most_bytes: most_bytes.unwrap_or(MOST_BYTES),
-        keep_alive_s: seconds(keep_alive_us.unwrap_or(KEEP_ALIVE_US)),
+        keep_alive_s: u16::try_from(keep_alive_us.unwrap_or(KEEP_ALIVE_US) / S).unwrap_or(u16::MAX),
     })
-}
-
-/// Whole seconds; the bounds of the checks above lie within both types used.
-fn seconds<T: TryFrom<i64>>(us: i64) -> T
-where
-    T: From<u8>,
-{
-    T::try_from(us / S).unwrap_or_else(|_| T::from(u8::MAX))
 }
 
 fn version(field: Field<i64>, check: &mut Check<'_>) -> Protocol {
