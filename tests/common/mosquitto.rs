@@ -137,7 +137,9 @@ impl Mosquitto {
     /// Publishes one message with QoS 1 and the options given (`-r` for retained).
     pub fn publish(&self, topic: &str, payload: &[u8], options: &[&str]) {
         let mut command = self.client("mosquitto_pub", topic);
-        feed(command.arg("-s").args(options), payload);
+        // The client refuses to read nothing.
+        let from = if payload.is_empty() { "-n" } else { "-s" };
+        feed(command.arg(from).args(options), payload);
     }
 
     /// Publishes a message for each line, in order, with QoS 1.
