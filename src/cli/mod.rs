@@ -6,7 +6,11 @@ pub mod args;
 pub mod configuration;
 pub mod demo;
 pub mod exit;
+pub mod log;
+pub mod rehearse;
+pub mod signals;
 mod vet;
+mod watch;
 
 use std::process::ExitCode;
 
@@ -25,6 +29,13 @@ struct Cli {
 /// One line for each command: its options from [`args`], its body in a file of its name.
 #[derive(Subcommand, Debug)]
 enum Command {
+    /// Watch the plant: take measurements in, look at every bank, raise notices, serve pages
+    Watch(args::WatchArgs),
+    /// The whole thing on one machine: a broker inside, a simulated line, a page to look at
+    #[cfg(feature = "demo")]
+    Demo(args::DemoArgs),
+    /// Recorded measurements through the same engine, as fast as it goes
+    Rehearse(args::RehearseArgs),
     /// Check a configuration: every fault at once, with its line and what to do
     Vet(args::VetArgs),
 }
@@ -40,6 +51,10 @@ pub fn main() -> ExitCode {
 /// Runs the command.
 fn run(cli: Cli) -> Exit {
     match cli.command {
+        Command::Watch(args) => watch::run(args),
+        #[cfg(feature = "demo")]
+        Command::Demo(args) => demo::run(args),
+        Command::Rehearse(args) => rehearse::run(args),
         Command::Vet(args) => vet::run(args),
     }
 }

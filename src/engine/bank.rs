@@ -236,6 +236,11 @@ impl Watched {
         self.unsaved = true;
     }
 
+    /// Whether its last checkpoint lacks something, be it only that turns up to `last` passed it by.
+    pub fn is_behind(&self, last: u64) -> bool {
+        self.unsaved || self.state.turn < last
+    }
+
     /// Sources in display order: as listed, else by natural number.
     pub fn display_order(&self) -> Vec<SourceIx> {
         let mut order: Vec<SourceIx> = (0..self.state.sources.len())

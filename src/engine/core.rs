@@ -394,14 +394,15 @@ impl Engine {
     fn checkpoint_if_due(&mut self, b: usize, now: Time) -> Option<Effect> {
         let bank = &mut self.banks[b];
         let last = *bank.last_checkpoint.get_or_insert(now);
-        let due = bank.unsaved && now.us_since(last) >= CHECKPOINT_EVERY_US;
-        due.then(|| Effect::Keep(checkpoint(bank, now)))
+        let due = bank.is_behind(self.last_turn) && now.us_since(last) >= CHECKPOINT_EVERY_US;
+        due.then(|| Effect::Keep(checkpoint(bank, self.last_turn, now)))
     }
 
     /// The state of every bank that changed since its last checkpoint; for the end of the program.
     pub fn checkpoints(&mut self, now: Time) -> Vec<Record> {
-        let unsaved = self.banks.iter_mut().filter(|b| b.unsaved);
-        unsaved.map(|b| checkpoint(b, now)).collect()
+        let last = self.last_turn;
+        let behind = self.banks.iter_mut().filter(|b| b.is_behind(last));
+        behind.map(|b| checkpoint(b, last, now)).collect()
     }
 
     /// When [`Event::Deadline`] should come next.
@@ -422,6 +423,11 @@ impl Engine {
     pub fn anything_apart(&self) -> bool {
         let apart = |l: &Arc<Look>| matches!(l.finding, Finding::LevelApart | Finding::SpreadApart);
         self.banks.iter().any(|b| b.state.looks.iter().any(apart))
+    }
+
+    /// Whether [`Engine::snapshot`] would give a new one.
+    pub fn has_changed(&self) -> bool {
+        self.changed
     }
 
     /// The present, for pages and metrics; the same `Arc` while nothing changed.
@@ -468,7 +474,10 @@ fn next_deadline(bank: &Watched) -> Option<Time> {
         .min()
 }
 
-fn checkpoint(bank: &mut Watched, now: Time) -> Record {
+/// `last` is the last turn that was applied: whatever in it was not for this bank is contained too,
+/// so that a bank that stands idle does not hold the whole journal back.
+fn checkpoint(bank: &mut Watched, last: u64, now: Time) -> Record {
+    bank.state.turn = bank.state.turn.max(last);
     bank.unsaved = false;
     bank.last_checkpoint = Some(now);
     let mut state = vec![STATE_VERSION];

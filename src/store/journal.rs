@@ -237,6 +237,9 @@ impl<S: Shelf> Journal<S> {
     }
 
     fn list(&self, ops: &mut Vec<Op>, messages: &[(u16, u64)]) -> Result<(), CommitError> {
+        if messages == self.unacknowledged {
+            return Ok(());
+        }
         let mut pieces = 0;
         for some in messages.chunks(LISTED) {
             let key = keys::unacknowledged(pieces);

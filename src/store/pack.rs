@@ -5,9 +5,9 @@
 //! written by name: a bank's place in the configuration may change between two starts, and a
 //! measurement of a bank that is gone is left out when read. Nothing is rounded.
 
-use std::collections::BTreeMap;
+use std::collections::{BTreeMap, BTreeSet};
 
-use crate::engine::{Event, Turn};
+use crate::engine::{Due, Event, Turn};
 use crate::model::{BankIx, Measurement, Name, Time, Value};
 
 use super::codec::{DecodeError, from_payload, to_payload};
@@ -16,6 +16,8 @@ use super::codec::{DecodeError, from_payload, to_payload};
 const PLAIN: u8 = 0;
 /// Packed measurements follow.
 const PACKED: u8 = 1;
+/// What was due follows: names of banks, then postcard that counts in that list.
+const DUE: u8 = 2;
 
 /// Steps of time in which a record may count, in microseconds; the largest that loses nothing is used.
 const UNITS_US: [i64; 3] = [1_000_000, 1_000, 1];
@@ -43,6 +45,10 @@ pub(super) fn pack(turn: &Turn, banks: &[Name]) -> Result<Vec<u8>, DecodeError> 
             out.push(PACKED);
             pack_measurements(&mut out, turn.now, all, banks)?;
         }
+        Event::Due(due) => {
+            out.push(DUE);
+            pack_due(&mut out, due, banks)?;
+        }
         other => {
             out.push(PLAIN);
             out.extend(to_payload(other)?);
@@ -61,6 +67,7 @@ pub(super) fn unpack(number: u64, payload: &[u8], banks: &[Name]) -> Result<Turn
     let event = match rest.byte()? {
         PLAIN => from_payload(rest.0)?,
         PACKED => Event::Measurements(unpack_measurements(&mut rest, now, banks)?),
+        DUE => Event::Due(unpack_due(&mut rest, banks)?),
         other => return Err(DecodeError::Form(other)),
     };
     Ok(Turn { number, now, event })
@@ -135,13 +142,7 @@ fn put_names<'a>(
             used.push(m.bank);
         }
     }
-    put(out, used.len() as u64);
-    for bank in &used {
-        let name = banks.get(bank.index()).ok_or_else(|| {
-            DecodeError::Content(format!("there is no bank at place {}", bank.index()))
-        })?;
-        put_text(out, name);
-    }
+    put_banks(out, &used, banks)?;
     put(out, order.len() as u64);
     for (bank, source) in &order {
         let place = used.iter().position(|b| b == bank).unwrap_or_default();
@@ -149,6 +150,61 @@ fn put_names<'a>(
         put_text(out, source);
     }
     Ok(lines)
+}
+
+fn put_banks(out: &mut Vec<u8>, used: &[BankIx], banks: &[Name]) -> Result<(), DecodeError> {
+    put(out, used.len() as u64);
+    for bank in used {
+        let name = banks.get(bank.index()).ok_or_else(|| {
+            DecodeError::Content(format!("there is no bank at place {}", bank.index()))
+        })?;
+        put_text(out, name);
+    }
+    Ok(())
+}
+
+/// The banks of [`put_banks`] as they are counted now; `None` for one that is gone.
+fn banks_used(rest: &mut Reader<'_>, banks: &[Name]) -> Result<Vec<Option<BankIx>>, DecodeError> {
+    let mut used = Vec::new();
+    for _ in 0..rest.number()? {
+        let name = rest.text()?;
+        let place = banks.iter().position(|b| **b == *name);
+        used.push(place.and_then(|p| u16::try_from(p).ok()).map(BankIx));
+    }
+    Ok(used)
+}
+
+fn pack_due(out: &mut Vec<u8>, due: &Due, banks: &[Name]) -> Result<(), DecodeError> {
+    let Due { silent, looks } = due;
+    let all: BTreeSet<BankIx> = silent
+        .iter()
+        .map(|(b, _)| b)
+        .chain(looks)
+        .copied()
+        .collect();
+    let used: Vec<BankIx> = all.into_iter().collect();
+    put_banks(out, &used, banks)?;
+    let place = |bank: BankIx| BankIx(used.partition_point(|b| *b < bank) as u16);
+    let written = Due {
+        silent: silent.iter().map(|&(b, s)| (place(b), s)).collect(),
+        looks: looks.iter().map(|&b| place(b)).collect(),
+    };
+    out.extend(to_payload(&written)?);
+    Ok(())
+}
+
+fn unpack_due(rest: &mut Reader<'_>, banks: &[Name]) -> Result<Due, DecodeError> {
+    let used = banks_used(rest, banks)?;
+    let written: Due = from_payload(rest.0)?;
+    let now = |place: BankIx| used.get(place.index()).copied().flatten();
+    Ok(Due {
+        silent: written
+            .silent
+            .into_iter()
+            .filter_map(|(b, s)| Some((now(b)?, s)))
+            .collect(),
+        looks: written.looks.into_iter().filter_map(now).collect(),
+    })
 }
 
 fn put_one(
@@ -217,12 +273,7 @@ fn unpack_measurements(
 }
 
 fn names(rest: &mut Reader<'_>, banks: &[Name]) -> Result<Vec<Line>, DecodeError> {
-    let mut used = Vec::new();
-    for _ in 0..rest.number()? {
-        let name = rest.text()?;
-        let place = banks.iter().position(|b| **b == *name);
-        used.push(place.and_then(|p| u16::try_from(p).ok()).map(BankIx));
-    }
+    let used = banks_used(rest, banks)?;
     let mut lines = Vec::new();
     for _ in 0..rest.number()? {
         let place = usize::try_from(rest.number()?).unwrap_or(usize::MAX);

@@ -4,6 +4,7 @@ use proptest::prelude::*;
 
 use super::*;
 use crate::engine::{Command, Condition, Part, Ticket};
+use crate::model::SourceIx;
 use crate::store::samples::{banks, batch_of, measurement};
 
 fn same(turn: &Turn, banks: &[Name]) {
@@ -87,6 +88,11 @@ proptest! {
 fn other_events_come_back_as_they_were() {
     let events = [
         Event::Deadline,
+        Event::Due(Due::default()),
+        Event::Due(Due {
+            silent: vec![(BankIx(2), SourceIx(7)), (BankIx(0), SourceIx(0))],
+            looks: vec![BankIx(1), BankIx(2)],
+        }),
         Event::Delivered { number: 9 },
         Event::NotDelivered {
             number: 9,
@@ -124,12 +130,28 @@ fn banks_keep_their_measurements_when_the_configuration_changes_its_order() {
     let kept = unpack(7, &payload, &after).unwrap();
     let expected = vec![measurement(1, "01", 2), measurement(0, "01", 3)];
     assert_eq!(kept.event, Event::Measurements(expected));
+
+    let due = |silent: &[u16], looks: &[u16]| {
+        Event::Due(Due {
+            silent: silent.iter().map(|&b| (BankIx(b), SourceIx(5))).collect(),
+            looks: looks.iter().copied().map(BankIx).collect(),
+        })
+    };
+    let payload = pack(&turn(0, due(&[2, 0], &[1, 2])), &before).unwrap();
+    let kept = unpack(7, &payload, &after).unwrap();
+    assert_eq!(kept.event, due(&[0], &[1, 0]));
 }
 
 #[test]
 fn a_measurement_of_no_bank_is_not_written() {
     let all = vec![measurement(9, "01", 1)];
     assert!(pack(&turn(0, Event::Measurements(all)), &banks()).is_err());
+    let looks = vec![BankIx(9)];
+    let due = Event::Due(Due {
+        silent: Vec::new(),
+        looks,
+    });
+    assert!(pack(&turn(0, due), &banks()).is_err());
 }
 
 #[test]

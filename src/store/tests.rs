@@ -368,3 +368,24 @@ fn a_second_process_is_told_who_holds_the_store() {
     drop(opened);
     assert!(open_in(folder.path(), 90).is_ok());
 }
+
+#[test]
+fn files_opened_anew_after_an_error_serve_commits_and_readers() {
+    let folder = tempfile::tempdir().unwrap();
+    let mut opened = open_in(folder.path(), 90).unwrap();
+    let raised = notice("n-1", at(1), State::Unacknowledged);
+    let first = vec![turn(1, at(1)), Record::Notice(Arc::clone(&raised))];
+    opened.store.commit(&batch(first)).unwrap();
+    for number in 2..5 {
+        opened.store.shelf.mend().unwrap();
+        let records = vec![turn(number, at(1))];
+        opened.store.commit(&batch(records)).unwrap();
+        assert_eq!(
+            opened.history.notice("n-1").unwrap().as_ref(),
+            Some(&*raised)
+        );
+    }
+    drop(opened);
+    let opened = open_in(folder.path(), 90).unwrap();
+    assert_eq!((opened.set_aside, opened.recovered.last_turn), (None, 4));
+}

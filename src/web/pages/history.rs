@@ -66,17 +66,22 @@ pub fn section(scene: &Scene<'_>, view: &BankView, past: &Past, span: usize) -> 
         ),
     };
     let digits = Digits::of(&view.bank);
+    let frame = if band.has_long_names() {
+        "frame long"
+    } else {
+        "frame"
+    };
     html! {
         section id="time" class="picture" {
             h2 { (time_band::TITLE) }
             (span_links(view, span, "time"))
-            div class="frame" { (band.draw()) }
+            div class=(frame) { (band.draw()) }
             (time_band::legend(full, unit, |x| digits.deviation(x)))
             (cells(scene, view, &axis, &placed))
         }
         section id="evidence" class="picture" {
             h2 { (evidence::TITLE) }
-            div class="frame" { (Evidence {
+            div class=(frame) { (Evidence {
                 axis: &axis, ticks: &ticks, looks: &placed,
                 description: format!("p of the deciding tests for level and spread over {span} values, and the \
                     alpha that a look must pass. Higher is less likely."),

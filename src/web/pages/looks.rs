@@ -183,7 +183,7 @@ fn one(view: &BankView, look: &Look) -> Markup {
         @if !look.remark.is_empty() { p class="remark" { (super::frame::sentence(&look.remark)) } }
         @if !look.tests.is_empty() {
             div class="wide" tabindex="0" role="region" aria-label={ "Tests over " (look.span) " values" } {
-                table {
+                table class="tests" {
                     thead { tr {
                         th scope="col" { "Test" } th scope="col" { "On" } th scope="col" class="n" { "Statistic" }
                         th scope="col" class="n" { "df" } th scope="col" class="n" { "p" }

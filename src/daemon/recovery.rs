@@ -1,0 +1,67 @@
+//! Store -> engine, as it was: checkpoints, then the turns after them through the same engine.
+//!
+//! A checkpoint that no longer fits its bank is told and passed over; the bank then starts with what
+//! the journal still holds. What was set aside stays visible as the store's condition for a while.
+
+use std::sync::Arc;
+
+use tracing::{info, warn};
+
+use crate::engine::{Engine, History, Plant, RestoreError};
+use crate::notice::Delivery;
+use crate::settings::Settings;
+use crate::store::{Recovered, SetAside, Store};
+
+use super::RunError;
+
+/// Everything the daemon goes on from.
+pub(super) struct Recovery {
+    pub(super) engine: Engine,
+    pub(super) store: Box<dyn Store>,
+    pub(super) history: Arc<dyn History>,
+    pub(super) outbox: Vec<Delivery>,
+    pub(super) unacknowledged: Vec<(u16, u64)>,
+    pub(super) replayed: u64,
+    pub(super) set_aside: Option<SetAside>,
+}
+
+/// Makes the engine what it was.
+///
+/// # Errors
+/// When the journal cannot be read to its end.
+pub(super) fn recover(
+    settings: &Settings,
+    store: impl Store + 'static,
+    history: Arc<dyn History>,
+    recovered: Recovered,
+    set_aside: Option<SetAside>,
+) -> Result<Recovery, RunError> {
+    let plant = Plant {
+        name: settings.plant.name.clone(),
+        zone: settings.plant.zone.clone(),
+        pages: settings.pages(),
+    };
+    let mut engine = Engine::new(plant, settings.banks.clone());
+    for (bank, _, state) in &recovered.checkpoints {
+        match engine.restore(bank, state) {
+            Ok(()) => {}
+            Err(e @ RestoreError::NoSuchBank(_)) => info!("{e}"),
+            Err(e) => warn!("{e}; the bank goes on with what the journal holds"),
+        }
+    }
+    let mut replayed = 0;
+    for turn in recovered.turns {
+        engine.replay(turn?);
+        replayed += 1;
+    }
+    engine.resume(recovered.last_turn, recovered.outbox.len());
+    Ok(Recovery {
+        engine,
+        store: Box::new(store),
+        history,
+        outbox: recovered.outbox,
+        unacknowledged: recovered.unacknowledged,
+        replayed,
+        set_aside,
+    })
+}
