@@ -10,9 +10,25 @@ use super::args::LogForm;
 /// libraries tell their errors to us, and we tell them in words; twice is too often.
 const USUAL: &str = "warn,evenrow=info,sled=off,rumqttc=off";
 
-/// Starts telling. Where something else tells already (a test, an embedding program), that stays.
+/// What the demo tells without `RUST_LOG`: its own words are on stdout, so only what goes wrong. Its
+/// broker lives in the process and has nothing to say to anybody.
+#[cfg(feature = "demo")]
+const DEMO: &str = "off,evenrow=warn";
+
+/// Starts telling what the daemon tells.
 pub fn start(form: LogForm) {
-    let filter = EnvFilter::try_from_default_env().unwrap_or_else(|_| EnvFilter::new(USUAL));
+    start_with(form, USUAL);
+}
+
+/// Starts telling what the demo tells.
+#[cfg(feature = "demo")]
+pub fn start_demo() {
+    start_with(LogForm::Text, DEMO);
+}
+
+/// Where something else tells already (a test, an embedding program), that stays.
+fn start_with(form: LogForm, usual: &str) {
+    let filter = EnvFilter::try_from_default_env().unwrap_or_else(|_| EnvFilter::new(usual));
     let lines = tracing_subscriber::fmt()
         .with_env_filter(filter)
         .with_writer(std::io::stderr);

@@ -7,6 +7,7 @@ pub mod configuration;
 pub mod demo;
 pub mod exit;
 pub mod log;
+pub mod rehearse;
 pub mod signals;
 mod vet;
 mod watch;
@@ -30,6 +31,11 @@ struct Cli {
 enum Command {
     /// Watch the plant: take measurements in, look at every bank, raise notices, serve pages
     Watch(args::WatchArgs),
+    /// The whole thing on one machine: a broker inside, a simulated line, a page to look at
+    #[cfg(feature = "demo")]
+    Demo(args::DemoArgs),
+    /// Recorded measurements through the same engine, as fast as it goes
+    Rehearse(args::RehearseArgs),
     /// Check a configuration: every fault at once, with its line and what to do
     Vet(args::VetArgs),
 }
@@ -46,6 +52,9 @@ pub fn main() -> ExitCode {
 fn run(cli: Cli) -> Exit {
     match cli.command {
         Command::Watch(args) => watch::run(args),
+        #[cfg(feature = "demo")]
+        Command::Demo(args) => demo::run(args),
+        Command::Rehearse(args) => rehearse::run(args),
         Command::Vet(args) => vet::run(args),
     }
 }

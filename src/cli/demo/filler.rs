@@ -121,6 +121,8 @@ pub struct Filler {
     valves: [Valve; HEADS],
     spells: Vec<Spell>,
     retarget: Option<Retarget>,
+    /// Factor on the wander of level and density.
+    wander: f64,
 }
 
 #[derive(Clone, Copy, Debug, Default)]
@@ -165,6 +167,7 @@ impl Filler {
             valves,
             spells: Vec::new(),
             retarget: None,
+            wander: 1.0,
         }
     }
 
@@ -179,6 +182,13 @@ impl Filler {
     #[must_use]
     pub fn with_retarget(mut self, retarget: Retarget) -> Self {
         self.retarget = Some(retarget);
+        self
+    }
+
+    /// The same filler with a tank that wanders `times` as much, or as little.
+    #[must_use]
+    pub fn with_wander(mut self, times: f64) -> Self {
+        self.wander = times;
         self
     }
 
@@ -246,7 +256,7 @@ impl Filler {
         let of_scale = |(scale, &(length, sd)): (usize, &(u64, f64))| {
             let (at, within) = (cycle / length, (cycle % length) as f64 / length as f64);
             let blend = within * within * (3.0 - 2.0 * within);
-            sd * (knot(scale, at) * (1.0 - blend) + knot(scale, at + 1) * blend)
+            self.wander * sd * (knot(scale, at) * (1.0 - blend) + knot(scale, at + 1) * blend)
         };
         scales.iter().enumerate().map(of_scale).sum()
     }
