@@ -53,7 +53,7 @@ fn bank() -> Arc<Bank> {
 
 fn recovery(script: &Script) -> Recovery {
     let bank = bank();
-    let (store, history, recovered) = script.open(&[bank.name.clone()], 90).unwrap();
+    let (store, history, recovered) = script.open(std::slice::from_ref(&bank.name), 90).unwrap();
     let plant = Plant {
         name: "Quayside".into(),
         zone: jiff::tz::TimeZone::UTC,
