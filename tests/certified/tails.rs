@@ -24,14 +24,21 @@ fn lower_complements(out: &mut Vec<Row>) {
         let inside = 1.0 - t::two_sided(x, df).expect("within reach");
         let q = studentized_range::cdf(x * 2.0_f64.sqrt(), 2, df).expect("within reach");
         worst.record((q - inside).abs(), format!("range {x}"));
-        worst.record((one.cdf(x, df).expect("within reach") - inside).abs(), format!("modulus {x}"));
+        worst.record(
+            (one.cdf(x, df).expect("within reach") - inside).abs(),
+            format!("modulus {x}"),
+        );
         let ratio = maximum_f_ratio::cdf(1.0 + x, &[df, df]).expect("within reach");
         let want = 1.0 - 2.0 * f::sf(1.0 + x, df, df).expect("within reach");
         worst.record((ratio - want).abs(), format!("ratio {x}"));
     }
     out.push(Row {
         statistic: "lower tails of studentized range, maximum, variance ratio (absolute)",
-        covers: &["studentized_range::cdf", "maximum::cdf", "maximum_f_ratio::cdf"],
+        covers: &[
+            "studentized_range::cdf",
+            "maximum::cdf",
+            "maximum_f_ratio::cdf",
+        ],
         source: "Student's t and F for two sources",
         allowed: 5e-15,
         worst,
@@ -44,11 +51,23 @@ fn other_crate(out: &mut Vec<Row>) {
     let mut worst = Worst::new();
     for (df, x) in [(3.0, 2.0), (12.0, 9.0), (40.0, 50.0)] {
         let chi = ChiSquared::new(df).expect("valid").sf(x);
-        worst.relative(chi_square::sf(x, df).expect("within reach"), chi, format!("chi-square {df}"));
+        worst.relative(
+            chi_square::sf(x, df).expect("within reach"),
+            chi,
+            format!("chi-square {df}"),
+        );
         let student = StudentsT::new(0.0, 1.0, df).expect("valid").sf(x / df);
-        worst.relative(t::sf(x / df, df).expect("within reach"), student, format!("t {df}"));
+        worst.relative(
+            t::sf(x / df, df).expect("within reach"),
+            student,
+            format!("t {df}"),
+        );
         let fisher = FisherSnedecor::new(4.0, df).expect("valid").sf(x / df);
-        worst.relative(f::sf(x / df, 4.0, df).expect("within reach"), fisher, format!("F {df}"));
+        worst.relative(
+            f::sf(x / df, 4.0, df).expect("within reach"),
+            fisher,
+            format!("F {df}"),
+        );
     }
     out.push(Row {
         statistic: "chi-square, t and F upper tails near the middle",
