@@ -195,7 +195,8 @@ fn approximate_tests_are_near_uniform() {
 #[test]
 fn follow_ups_keep_their_family_wise_rate() {
     let sizes: &[usize] = &[15, 25, 20, 18];
-    let methods: [(&str, fn(&[&[f64]]) -> f64); 4] = [
+    type Smallest = fn(&[&[f64]]) -> f64;
+    let methods: [(&str, Smallest); 4] = [
         ("games-howell", |g| {
             smallest(games_howell(g).unwrap().iter().map(|p| p.p_adjusted))
         }),
