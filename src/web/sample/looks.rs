@@ -106,6 +106,7 @@ fn tests(k: usize, n: usize, level_p: f64, spread_p: f64) -> Vec<TestEntry> {
             _ => vec![k - 1.0, k * (n - 1.0)],
         },
         p,
+        p_paid: p,
         decides,
     };
     vec![

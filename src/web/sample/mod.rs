@@ -19,8 +19,8 @@ use crate::model::{
     Bank, BankIx, Characteristic, Layout, Pairing, Reason, Refusal, SourceIx, Sources, Time,
     US_PER_DAY, US_PER_S, Value,
 };
-use crate::notice::Notice;
-use crate::verdict::Look;
+use crate::notice::{Kind, Notice};
+use crate::verdict::{Estimate, Look};
 
 use looks::look;
 use notices::notice;
@@ -128,9 +128,25 @@ pub fn view(bank: Bank, story: Story, seed: u64) -> BankView {
         .into_iter()
         .map(Arc::new)
         .collect();
-    let longest = looks.last().cloned();
+    let now_look = looks
+        .iter()
+        .find(|l| l.span == 40)
+        .or(looks.last())
+        .cloned();
     let sources = names.iter().enumerate().map(|(at, name)| {
-        let judged = longest.as_ref().and_then(|l| l.sources.get(at));
+        let judged = now_look.as_ref().and_then(|l| l.sources.get(at));
+        let followed = |kind: Kind| {
+            let mut notices = open
+                .iter()
+                .filter(|n| n.kind == kind)
+                .flat_map(|n| &n.sources);
+            let known = notices.find(|s| s.source == *name)?;
+            Some(Estimate {
+                value: known.deviation,
+                low: known.low,
+                high: known.high,
+            })
+        };
         let named = open
             .iter()
             .filter(|n| n.sources.iter().any(|s| s.source == *name));
@@ -149,9 +165,9 @@ pub fn view(bank: Bank, story: Story, seed: u64) -> BankView {
                 .then(|| now().plus_us(if is_silent { -340 } else { -1 } * US_PER_S)),
             last_received: (values > 0)
                 .then(|| now().plus_us(if is_silent { -340 } else { -1 } * US_PER_S)),
-            deviation: judged.and_then(|s| s.deviation),
+            deviation: followed(Kind::LevelApart).or(judged.and_then(|s| s.deviation)),
             deviation_sigmas: judged.and_then(|s| Some(s.deviation?.value / 1.2)),
-            sd_ratio: judged.and_then(|s| s.sd_ratio),
+            sd_ratio: followed(Kind::SpreadApart).or(judged.and_then(|s| s.sd_ratio)),
             named: named.map(|n| n.kind).collect(),
         }
     });
@@ -178,7 +194,8 @@ pub fn view(bank: Bank, story: Story, seed: u64) -> BankView {
         interval_us: (values > 0).then_some(720_000),
         next_look: (values > 0).then(|| now().plus_us(18 * US_PER_S)),
         newest_taken: (values > 0).then(|| now().plus_us(-US_PER_S)),
-        mean: longest.is_some().then_some(target + 0.027 * bank.margin),
+        mean: now_look.is_some().then_some(target + 0.027 * bank.margin),
+        shown_span: now_look.map(|l| l.span),
         looks,
         bank: Arc::new(bank),
     }
