@@ -53,6 +53,9 @@ pub struct BankView {
     pub sources: Vec<SourceView>,
     /// The newest look of each span, shortest span first; empty before the first look.
     pub looks: Vec<Arc<Look>>,
+    /// The span of the look whose figures stand for now in [`SourceView`]; `None` before a source
+    /// could be judged.
+    pub shown_span: Option<usize>,
     /// Its open notices, newest first.
     pub open: Vec<Arc<Notice>>,
     /// Notices raised since the process started, by kind.

@@ -46,6 +46,7 @@ pub fn bank_view(watched: &Watched) -> BankView {
             .map(|s| source_view(watched, s, shown))
             .collect(),
         looks: state.looks.clone(),
+        shown_span: shown.map(|l| l.span),
         open,
         raised: watched.raised.clone(),
         outcomes: watched.outcomes.clone(),

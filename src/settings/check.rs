@@ -66,7 +66,11 @@ impl<'f> Check<'f> {
         if let Field::Absent = field {
             let title = keys::title(self.section);
             let message = format!("`{name}` is missing in {title}");
-            let place = self.place.clone();
+            // A section that only variables made is none of theirs to complete.
+            let place = match &self.place {
+                Place::Variable(_) => Place::File,
+                heading => heading.clone(),
+            };
             self.faults
                 .add(&place, message, keys::example(self.section, name));
             return Field::Faulty;

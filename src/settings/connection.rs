@@ -90,7 +90,7 @@ impl Secrets {
 
 /// Options for MQTT 5: address, client id, credentials, encryption, keep-alive and packet limit.
 pub fn options_v5(broker: &Broker, client_id: &str, secrets: &Secrets) -> rumqttc::v5::MqttOptions {
-    let mut options = rumqttc::v5::MqttOptions::new(client_id, &broker.host, broker.port);
+    let mut options = rumqttc::v5::MqttOptions::new(client_id, host(broker), broker.port);
     options
         .set_keep_alive(keep_alive(broker))
         .set_connection_timeout(CONNECT_TIMEOUT_S)
@@ -104,7 +104,7 @@ pub fn options_v5(broker: &Broker, client_id: &str, secrets: &Secrets) -> rumqtt
 
 /// Options for MQTT 3.1.1, the same ones.
 pub fn options_v4(broker: &Broker, client_id: &str, secrets: &Secrets) -> rumqttc::MqttOptions {
-    let mut options = rumqttc::MqttOptions::new(client_id, &broker.host, broker.port);
+    let mut options = rumqttc::MqttOptions::new(client_id, host(broker), broker.port);
     let limit = packet_limit(broker) as usize;
     options
         .set_keep_alive(keep_alive(broker))
@@ -121,6 +121,16 @@ pub fn network_options_v4() -> rumqttc::NetworkOptions {
     let mut options = rumqttc::NetworkOptions::new();
     options.set_connection_timeout(CONNECT_TIMEOUT_S);
     options
+}
+
+/// An IPv6 address stands in brackets where a port follows. (With TLS it must not, and rumqttc has
+/// only one place for both: encrypted connections need a name or an IPv4 address.)
+fn host(broker: &Broker) -> String {
+    if broker.host.contains(':') && !broker.tls {
+        format!("[{}]", broker.host)
+    } else {
+        broker.host.clone()
+    }
 }
 
 fn keep_alive(broker: &Broker) -> Duration {

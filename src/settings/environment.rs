@@ -8,15 +8,18 @@ use config::{Environment, Source};
 use super::fault::{FaultList, Place};
 use super::raw::{Entry, Kind, Node, Table};
 
-/// What a variable's name starts with, before `__`.
+/// What a variable's name starts with.
 const PREFIX: &str = "EVENROW";
+/// What stands between the parts of a variable's name.
+const BETWEEN: &str = "__";
 
-/// The process's variables of this program. Bytes that are no text become U+FFFD, which
-/// [`lay_over`] reports.
+/// The process's variables of this program. Bytes that are no text become U+FFFD, which is a fault
+/// when the variable is laid over a configuration.
 pub fn environment() -> Vec<(String, String)> {
+    let start = format!("{PREFIX}{BETWEEN}");
     let ours = |name: &str| {
-        name.get(..PREFIX.len() + 2)
-            .is_some_and(|start| start.eq_ignore_ascii_case("evenrow__"))
+        let first = name.get(..start.len());
+        first.is_some_and(|first| first.eq_ignore_ascii_case(&start))
     };
     std::env::vars_os()
         .map(|(name, value)| {
@@ -48,8 +51,8 @@ fn path(name: &str, value: &str, place: &Place, faults: &mut FaultList) -> Optio
     // One variable at a time, so that its own name stays with what is read from it.
     let one = std::iter::once((name.to_owned(), value.to_owned())).collect();
     let layer = Environment::with_prefix(PREFIX)
-        .prefix_separator("__")
-        .separator("__")
+        .prefix_separator(BETWEEN)
+        .separator(BETWEEN)
         .source(Some(one))
         .collect();
     let (key, _) = layer.ok()?.into_iter().next()?;

@@ -14,6 +14,13 @@ pub(super) struct Key {
     pub(super) about: &'static str,
 }
 
+impl Key {
+    /// Whether it is written as a heading, `[plant]`, and not as `key = value`.
+    pub(super) fn is_heading(&self) -> bool {
+        self.section.is_empty() || self.name == "shift"
+    }
+}
+
 const fn key(
     section: &'static str,
     name: &'static str,
@@ -121,6 +128,41 @@ pub(super) const LATER: &[(&str, &str, &str)] = &[
     ),
 ];
 
+/// Keys that people look for and that stand in another form, with that form.
+pub(super) const OTHERWISE: &[(&str, &str, &str)] = &[
+    (
+        "broker",
+        "host",
+        "the host is a part of `url`: mqtt://HOST:PORT",
+    ),
+    (
+        "broker",
+        "port",
+        "the port is a part of `url`: mqtt://HOST:PORT",
+    ),
+    ("broker", "tls", "write mqtts:// in `url` to encrypt"),
+    (
+        "broker",
+        "password",
+        "write it into a file and name that in `password_file`",
+    ),
+    (
+        "web",
+        "port",
+        "the port is a part of `listen`: 127.0.0.1:7310",
+    ),
+    (
+        "web",
+        "token",
+        "write it into a file and name that in `token_file`",
+    ),
+    (
+        "bank",
+        "alpha",
+        "the probability of a false call follows from `false_calls`",
+    ),
+];
+
 /// The entry of a key.
 pub(super) fn find(section: &str, name: &str) -> Option<&'static Key> {
     KEYS.iter().find(|k| k.section == section && k.name == name)
@@ -140,7 +182,7 @@ pub(super) fn title(section: &str) -> String {
 pub(super) fn example(section: &str, name: &str) -> String {
     find(section, name).map_or_else(String::new, |key| {
         let Key { example, about, .. } = key;
-        if example.starts_with('[') && !example.contains([',', '"']) {
+        if key.is_heading() {
             format!("for example {example}: {about}")
         } else {
             format!("for example `{name} = {example}`: {about}")

@@ -4,7 +4,7 @@
 //! What must hold: no type is coerced; a value that is there and wrong is not also missing.
 
 use super::fault::{FaultList, Place};
-use super::keys::{self, LATER};
+use super::keys::{self, LATER, OTHERWISE};
 use super::raw::{Kind, Node, Table};
 
 /// A good value and where it stands.
@@ -262,12 +262,20 @@ impl Section {
 }
 
 fn later(path: &str, name: &str) -> Option<&'static str> {
-    let same = |known: &&(&str, &str, &str)| known.0 == path && known.1 == name;
-    LATER.iter().find(same).map(|known| known.2)
+    said_of(LATER, path, name)
+}
+
+/// What a list says of a key.
+fn said_of(list: &[(&str, &str, &'static str)], path: &str, name: &str) -> Option<&'static str> {
+    let same = |known: &&(&str, &str, &'static str)| known.0 == path && known.1 == name;
+    list.iter().find(same).map(|known| known.2)
 }
 
 /// What the key was most likely meant to be.
 fn suggestion(path: &str, name: &str) -> String {
+    if let Some(form) = said_of(OTHERWISE, path, name) {
+        return form.to_owned();
+    }
     let elsewhere = keys::KEYS.iter().find(|key| key.name == name);
     match elsewhere {
         Some(key) if key.section.is_empty() => return format!("it is a section: {}", key.example),

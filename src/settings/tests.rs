@@ -130,6 +130,28 @@ fn variables_go_before_the_file_and_are_named_in_faults() {
 }
 
 #[test]
+fn a_section_made_by_variables_is_not_blamed_for_what_it_lacks() {
+    let text = good_with("[store]\nfolder = \"/var/lib/evenrow\"\n", "");
+    let faults = faults_of(&text, &[("EVENROW__STORE__KEEP_DAYS", "7")]);
+    assert_eq!(faults.len(), 1, "{faults:#?}");
+    assert_eq!(faults[0].place, Place::File);
+    assert_words(&faults[0], "`folder` is missing in [store]");
+}
+
+#[test]
+fn a_faulty_payload_hides_no_other_fault() {
+    let text = GOOD.replace("/{source}/", "/").replace(
+        "{ form = \"json\", value = \"/v\", cycle = \"/n\" }",
+        "{ form = \"json\", value = \"v\" }",
+    );
+    let lines: Vec<_> = faults_of(&text, &[])
+        .iter()
+        .map(|f| f.place.line())
+        .collect();
+    assert_eq!(lines, [Some(18), Some(19), Some(21)]);
+}
+
+#[test]
 fn variables_take_the_type_their_key_wants() {
     let variables = [
         ("EVENROW__BROKER__URL", "mqtts://broker.quayside.example"),

@@ -1,83 +1,19 @@
 //! Numbers and times as people read them.
 //!
-//! Owns how many digits a figure gets and how a time is written in the plant's zone. What must hold:
-//! single values have the resolution's digits, means and deviations one more; a figure that rounds to
-//! zero has no sign; times say their offset where a reader could doubt it. Deliberately absent: words.
+//! Owns how statistics, counts and lengths of time are written, and times in the plant's zone. What
+//! must hold: times say their offset where a reader could doubt it. Deliberately absent: figures in the
+//! characteristic's unit, which [`crate::model::Characteristic`] writes, and words.
 
 use jiff::tz::TimeZone;
 
-use crate::model::{Bank, Characteristic, Time, US_PER_DAY, US_PER_S};
+use crate::model::{Time, US_PER_DAY, US_PER_S, fixed};
 
-/// Most digits after the point; finer figures than a nanounit are no reading of an instrument.
-const MOST_PLACES: usize = 9;
-
-/// How many digits after the point figures of a bank get.
-#[derive(Clone, Copy, Debug, PartialEq, Eq)]
-pub struct Digits {
-    places: usize,
-}
-
-impl Digits {
-    /// From the resolution; without one from the margin, so that a tenth of it can be seen.
-    pub fn of(bank: &Bank) -> Self {
-        let Characteristic { resolution, .. } = bank.characteristic;
-        let step = resolution.filter(|r| *r > 0.0);
-        let tenth = (bank.margin > 0.0).then(|| bank.margin / 10.0);
-        Self {
-            places: step.or(tenth).map_or(3, places_of),
-        }
-    }
-
-    /// A single value.
-    pub fn value(self, x: f64) -> String {
-        plain(x, self.places)
-    }
-
-    /// A mean or standard deviation.
-    pub fn mean(self, x: f64) -> String {
-        plain(x, self.places + 1)
-    }
-
-    /// A deviation, with its sign.
-    pub fn deviation(self, x: f64) -> String {
-        signed(x, self.places + 1)
-    }
-}
-
-/// Digits after the point that show `step` exactly (0.05 needs two), as far as doubles allow.
-fn places_of(step: f64) -> usize {
-    (0..=MOST_PLACES)
-        .find(|&places| {
-            let scaled = step * 10_f64.powi(places as i32);
-            scaled >= 0.999 && (scaled - scaled.round()).abs() < 1e-6 * scaled
-        })
-        .unwrap_or_else(|| {
-            let first = -step.log10().floor();
-            (first.max(0.0) as usize + 1).min(MOST_PLACES)
-        })
-}
-
-/// A number with a true minus sign and no negative zero.
+/// A number with a true minus sign; a dash where there is none.
 pub fn plain(x: f64, places: usize) -> String {
-    if !x.is_finite() {
-        return "–".to_owned();
-    }
-    let text = format!("{:.*}", places.min(MOST_PLACES), x.abs());
-    if x < 0.0 && text.bytes().any(|b| (b'1'..=b'9').contains(&b)) {
-        format!("−{text}")
+    if x.is_finite() {
+        fixed(x, places)
     } else {
-        text
-    }
-}
-
-/// The same with a plus sign on what is above zero.
-pub fn signed(x: f64, places: usize) -> String {
-    let text = plain(x, places);
-    let is_zero = !text.bytes().any(|b| (b'1'..=b'9').contains(&b));
-    if x > 0.0 && x.is_finite() && !is_zero {
-        format!("+{text}")
-    } else {
-        text
+        "–".to_owned()
     }
 }
 
@@ -215,27 +151,6 @@ impl Times {
 #[cfg(test)]
 mod tests {
     use super::*;
-
-    #[test]
-    fn numbers_are_rounded_to_the_resolution() {
-        for (step, places) in [
-            (0.1, 1),
-            (0.05, 2),
-            (0.25, 2),
-            (1.0, 0),
-            (5.0, 0),
-            (0.001, 3),
-        ] {
-            assert_eq!(places_of(step), places, "{step}");
-        }
-        let digits = Digits { places: 1 };
-        assert_eq!(digits.value(503.14), "503.1");
-        assert_eq!(digits.deviation(-1.234), "−1.23");
-        assert_eq!(digits.deviation(0.456), "+0.46");
-        assert_eq!(digits.deviation(-0.001), "0.00");
-        assert_eq!(digits.deviation(0.001), "0.00");
-        assert_eq!(digits.mean(f64::NAN), "–");
-    }
 
     #[test]
     fn probabilities_and_counts_read_well() {

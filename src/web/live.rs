@@ -16,7 +16,7 @@ use tokio::sync::watch;
 use tokio_stream::Stream;
 use tokio_util::sync::CancellationToken;
 
-use crate::engine::{BankView, Snapshot};
+use crate::engine::{BankView, Condition, Snapshot};
 
 use super::site::App;
 
@@ -48,28 +48,35 @@ pub async fn stream(
         .keep_alive(KeepAlive::new().interval(KEEP_ALIVE))
 }
 
-/// What a page of this bank, or of the plant, is made from.
+/// What a page is made from: of one bank, that bank and the trouble that every page shows; of the
+/// plant, everything.
 #[derive(Clone)]
 enum Seen {
-    Bank(Option<Arc<BankView>>),
+    Bank(Option<Arc<BankView>>, [Condition; 2], Option<String>),
     Plant(u64),
 }
 
 fn seen(snapshot: &Snapshot, bank: Option<&str>) -> Seen {
-    match bank {
-        None => Seen::Plant(snapshot.version),
-        Some(name) => {
-            let mut banks = snapshot.banks.iter();
-            Seen::Bank(banks.find(|b| &*b.bank.name == name).cloned())
-        }
-    }
+    let Some(name) = bank else {
+        return Seen::Plant(snapshot.version);
+    };
+    let mut banks = snapshot.banks.iter();
+    let found = banks.find(|b| &*b.bank.name == name).cloned();
+    let parts = [snapshot.broker.clone(), snapshot.store.clone()];
+    Seen::Bank(found, parts, snapshot.outbox_trouble.clone())
 }
 
 fn same(a: &Seen, b: &Seen) -> bool {
     match (a, b) {
         (Seen::Plant(a), Seen::Plant(b)) => a == b,
-        (Seen::Bank(Some(a)), Seen::Bank(Some(b))) => Arc::ptr_eq(a, b),
-        (Seen::Bank(None), Seen::Bank(None)) => true,
+        (Seen::Bank(a, parts_a, outbox_a), Seen::Bank(b, parts_b, outbox_b)) => {
+            let same_bank = match (a, b) {
+                (Some(a), Some(b)) => Arc::ptr_eq(a, b),
+                (None, None) => true,
+                _ => false,
+            };
+            same_bank && parts_a == parts_b && outbox_a == outbox_b
+        }
         _ => false,
     }
 }

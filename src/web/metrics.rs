@@ -212,7 +212,7 @@ impl Families {
         ] {
             let labels = [bank, kind, &span];
             self.alpha.with_label_values(&labels).set(alpha);
-            if let Some(p) = test.map(|t| t.p).filter(|p| p.is_finite()) {
+            if let Some(p) = test.map(|t| t.p_paid).filter(|p| p.is_finite()) {
                 self.p.with_label_values(&labels).set(p);
             }
             if let Some(f) = test.and_then(|t| f_of(look, t)).filter(|f| f.is_finite()) {
@@ -286,7 +286,8 @@ const DEVIATION: &str = "Deviation of a source from the even set without it, in 
 const NAMED: &str = "1 while an open notice of this kind names the source, else 0. Join it with \
     evenrow_notice_active on (bank, kind): the names of one notice share one family-wise error rate.";
 const LAST: &str = "Time of the newest measurement of a source, as taken.";
-const LOOK_P: &str = "p of the test that decides on this kind at the newest look over this span. \
+const LOOK_P: &str = "p of the test that decides on this kind at the newest look over this span, \
+    dependence between successive values paid for. \
     Never alert on it: the same data is looked at again and again, so small values come by chance \
     every few hours. evenrow_notice_active spends the call budget over all looks.";
 const LOOK_F: &str = "F of the test that decides on this kind at the newest look over this span; \

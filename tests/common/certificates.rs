@@ -1,36 +1,39 @@
-//! A private authority with certificates for a broker (made out to `localhost`) and a client.
+//! A private authority with certificates for a broker and a client.
 
-#![allow(
-    dead_code,
-    reason = "every test file takes what it needs from this one"
-)]
-
+use std::fs;
 use std::path::Path;
 
-use rcgen::{BasicConstraints, CertificateParams, CertifiedIssuer, DnType, IsCa, KeyPair};
+use rcgen::{
+    BasicConstraints, CertificateParams, DnType, ExtendedKeyUsagePurpose, IsCa, Issuer, KeyPair,
+    KeyUsagePurpose,
+};
 
-/// Writes `ca.pem`, `broker.pem`, `broker.key`, `client.pem` and `client.key` into the folder.
+/// Writes `ca.pem`, and certificate and key of the broker, made out to `localhost`, and of a client
+/// as `broker.pem`, `broker.key`, `client.pem` and `client.key`.
 pub fn write(folder: &Path) {
-    let mut params = named("evenrow test authority", &[]);
-    params.is_ca = IsCa::Ca(BasicConstraints::Unconstrained);
+    let write = |name: &str, text: String| {
+        fs::write(folder.join(name), text).expect("the file is written");
+    };
     let key = KeyPair::generate().expect("a key");
-    let authority = CertifiedIssuer::self_signed(params, key).expect("an authority");
-    std::fs::write(folder.join("ca.pem"), authority.pem()).expect("ca.pem");
-    for (name, names) in [("broker", &["localhost".to_owned()][..]), ("client", &[])] {
-        let key = KeyPair::generate().expect("a key");
-        let certificate = named(name, names)
-            .signed_by(&key, &authority)
-            .expect("a certificate");
-        let write = |kind: &str, text: String| {
-            std::fs::write(folder.join(format!("{name}.{kind}")), text).expect("a file");
-        };
-        write("pem", certificate.pem());
-        write("key", key.serialize_pem());
-    }
-}
-
-fn named(name: &str, names: &[String]) -> CertificateParams {
-    let mut params = CertificateParams::new(names.to_vec()).expect("parameters");
-    params.distinguished_name.push(DnType::CommonName, name);
+    let mut params = CertificateParams::new(Vec::new()).expect("parameters");
     params
+        .distinguished_name
+        .push(DnType::CommonName, "Quayside authority");
+    params.is_ca = IsCa::Ca(BasicConstraints::Unconstrained);
+    params.key_usages = vec![KeyUsagePurpose::KeyCertSign, KeyUsagePurpose::CrlSign];
+    let authority = params.self_signed(&key).expect("a certificate");
+    write("ca.pem", authority.pem());
+    let issuer = Issuer::new(params, key);
+    for (name, usage) in [
+        ("broker", ExtendedKeyUsagePurpose::ServerAuth),
+        ("client", ExtendedKeyUsagePurpose::ClientAuth),
+    ] {
+        let key = KeyPair::generate().expect("a key");
+        let mut params = CertificateParams::new(vec!["localhost".to_owned()]).expect("parameters");
+        params.distinguished_name.push(DnType::CommonName, name);
+        params.extended_key_usages = vec![usage];
+        let certificate = params.signed_by(&key, &issuer).expect("a certificate");
+        write(&format!("{name}.pem"), certificate.pem());
+        write(&format!("{name}.key"), key.serialize_pem());
+    }
 }

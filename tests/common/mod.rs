@@ -2,5 +2,6 @@
 
 #![allow(dead_code, reason = "each test uses the part that it needs")]
 
+pub mod certificates;
 pub mod mosquitto;
 pub mod running;

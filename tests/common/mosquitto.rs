@@ -51,7 +51,7 @@ impl Mosquitto {
         let at = folder.path().display().to_string();
         let config = format!(
             "per_listener_settings false\nuser root\nlog_dest stderr\npersistence true\n\
-             persistence_location {at}/\nautosave_interval 1\nautosave_on_changes true\n\
+             persistence_location {at}/\nautosave_interval 1\nlog_type error\nlog_type warning\nlog_type notice\n\
              max_queued_messages 1000000\nlistener {port} 127.0.0.1\n{}\n",
             settings.replace("{folder}", &at)
         );
@@ -137,7 +137,9 @@ impl Mosquitto {
     /// Publishes one message with QoS 1 and the options given (`-r` for retained).
     pub fn publish(&self, topic: &str, payload: &[u8], options: &[&str]) {
         let mut command = self.client("mosquitto_pub", topic);
-        feed(command.arg("-s").args(options), payload);
+        // The client refuses to read nothing.
+        let from = if payload.is_empty() { "-n" } else { "-s" };
+        feed(command.arg(from).args(options), payload);
     }
 
     /// Publishes a message for each line, in order, with QoS 1.

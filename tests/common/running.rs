@@ -36,6 +36,11 @@ impl Running {
         self.lines.lock().expect("no reader has failed").clone()
     }
 
+    /// Its process id.
+    pub fn id(&self) -> u32 {
+        self.child.id()
+    }
+
     /// Whether it has ended.
     pub fn ended(&mut self) -> Option<ExitStatus> {
         self.child.try_wait().expect("its state can be asked for")
@@ -44,7 +49,7 @@ impl Running {
     /// Sends it a signal by name.
     pub fn signal(&self, name: &str) {
         let sent = Command::new("kill")
-            .args(["-s", name, &self.child.id().to_string()])
+            .args(["-s", name, &self.id().to_string()])
             .status();
         assert!(sent.is_ok_and(|s| s.success()), "kill -s {name} failed");
     }

@@ -10,6 +10,7 @@ use tempfile::TempDir;
 
 use crate::common::running::{Running, free_port, wait_for};
 use crate::http::{self, Answer};
+use crate::line::HEADS;
 
 /// The token that may act.
 pub const TOKEN: &str = "calm-water-under-the-bridge";
@@ -187,6 +188,42 @@ impl Daemon {
             let has = |line: &String| words.iter().all(|w| line.contains(w));
             self.log().into_iter().find(has)
         });
+    }
+
+    /// From here on no file of the daemon takes bytes beyond this place, as if the disk were full.
+    #[track_caller]
+    pub fn limit_files(&self, bytes: &str) {
+        let done = Command::new("prlimit")
+            .args(["--pid", &self.process.id().to_string()])
+            .arg(format!("--fsize={bytes}:unlimited"))
+            .status();
+        assert!(done.is_ok_and(|s| s.success()), "prlimit sets the limit");
+    }
+
+    /// The cycles in each source's window, oldest first.
+    fn cycles(&self) -> Vec<Vec<i64>> {
+        let windows = self.json("/api/v1/banks/filler-2/windows");
+        let items = windows["items"].as_array().expect("a list");
+        let cycle = |v: &Value| v["cycle"].as_i64().expect("a cycle");
+        let window = |w: &Value| {
+            let values = w["values"].as_array().expect("values").iter();
+            values.map(cycle).collect()
+        };
+        items.iter().map(window).collect()
+    }
+
+    /// Waits until every window ends with the newest cycle and holds every one before it once.
+    #[track_caller]
+    pub fn nothing_is_missing(&self, newest: i64) {
+        let whole: Vec<i64> = (newest - 79..=newest).collect();
+        let last = |window: &Vec<i64>| window.last() == Some(&newest);
+        let windows = wait_for(SOON, "the newest cycle in every window", || {
+            let windows = self.cycles();
+            (windows.len() == HEADS && windows.iter().all(last)).then_some(windows)
+        });
+        for (head, window) in windows.iter().enumerate() {
+            assert_eq!(*window, whole, "head {}", head + 1);
+        }
     }
 
     /// A power cut.

@@ -1,50 +1,14 @@
 //! TLS with a private authority and client certificates, in both versions of the protocol.
 
-use std::fs;
-use std::path::Path;
-
-use rcgen::{
-    BasicConstraints, CertificateParams, DnType, ExtendedKeyUsagePurpose, IsCa, Issuer, KeyPair,
-    KeyUsagePurpose,
-};
-
+use crate::common::certificates;
 use crate::common::mosquitto::Mosquitto;
 use crate::daemon::{Plant, Wanted};
 use crate::line::{Line, Off};
 
-/// Writes an authority, a certificate of the broker for `localhost`, and one of a client.
-fn certificates(folder: &Path) {
-    let write = |name: &str, text: String| {
-        fs::write(folder.join(name), text).expect("the file is written");
-    };
-    let key = KeyPair::generate().expect("a key");
-    let mut params = CertificateParams::new(Vec::new()).expect("parameters");
-    params
-        .distinguished_name
-        .push(DnType::CommonName, "Quayside authority");
-    params.is_ca = IsCa::Ca(BasicConstraints::Unconstrained);
-    params.key_usages = vec![KeyUsagePurpose::KeyCertSign, KeyUsagePurpose::CrlSign];
-    let authority = params.self_signed(&key).expect("a certificate");
-    write("ca.pem", authority.pem());
-    let issuer = Issuer::new(params, key);
-    for (name, usage) in [
-        ("broker", ExtendedKeyUsagePurpose::ServerAuth),
-        ("client", ExtendedKeyUsagePurpose::ClientAuth),
-    ] {
-        let key = KeyPair::generate().expect("a key");
-        let mut params = CertificateParams::new(vec!["localhost".to_owned()]).expect("parameters");
-        params.distinguished_name.push(DnType::CommonName, name);
-        params.extended_key_usages = vec![usage];
-        let certificate = params.signed_by(&key, &issuer).expect("a certificate");
-        write(&format!("{name}.pem"), certificate.pem());
-        write(&format!("{name}.key"), key.serialize_pem());
-    }
-}
-
 fn encrypted_broker() -> Mosquitto {
     let settings = "allow_anonymous true\ncafile {folder}/ca.pem\ncertfile {folder}/broker.pem\n\
                     keyfile {folder}/broker.key\nrequire_certificate true\n";
-    let mut broker = Mosquitto::start_with(settings, certificates);
+    let mut broker = Mosquitto::start_with(settings, certificates::write);
     let at = |name: &str| broker.path(name).display().to_string();
     let (ca, certificate, key) = (at("ca.pem"), at("client.pem"), at("client.key"));
     broker.clients_say(&[

@@ -9,6 +9,7 @@ mod common;
 
 mod browser;
 mod daemon;
+mod disk;
 mod encrypted;
 mod http;
 mod line;

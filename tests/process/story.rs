@@ -4,9 +4,9 @@ use serde_json::{Value, json};
 
 use crate::common::mosquitto::{Listener, Mosquitto, Seen};
 use crate::common::running::wait_for;
-use crate::daemon::{Daemon, Plant, SOON, TOKEN, Wanted};
+use crate::daemon::{Plant, SOON, TOKEN, Wanted};
 use crate::http;
-use crate::line::{HEADS, Line, Off};
+use crate::line::{Line, Off};
 
 const LOW: [Off; 1] = [Off { head: 5, by: -2.5 }];
 
@@ -19,36 +19,6 @@ fn event(listener: &Listener, state: &str) -> (Seen, Value) {
     let seen = listener.wait(&what, wanted);
     let event = parse(&seen).expect("it was parsed before");
     (seen, event)
-}
-
-/// The cycles in each source's window, oldest first.
-fn cycles(daemon: &Daemon) -> Vec<Vec<i64>> {
-    let windows = daemon.json("/api/v1/banks/filler-2/windows");
-    let items = windows["items"].as_array().expect("a list");
-    let cycle = |v: &Value| v["cycle"].as_i64().expect("a cycle");
-    let window = |w: &Value| {
-        w["values"]
-            .as_array()
-            .expect("values")
-            .iter()
-            .map(cycle)
-            .collect()
-    };
-    items.iter().map(window).collect()
-}
-
-/// Waits until every window ends with the newest cycle and holds every one before it once.
-#[track_caller]
-fn nothing_is_missing(daemon: &Daemon, newest: i64) {
-    let whole: Vec<i64> = (newest - 79..=newest).collect();
-    wait_for(SOON, "the newest cycle in every window", || {
-        let last = |window: &Vec<i64>| window.last() == Some(&newest);
-        let windows = cycles(daemon);
-        (windows.len() == HEADS && windows.iter().all(last)).then_some(())
-    });
-    for (head, window) in cycles(daemon).iter().enumerate() {
-        assert_eq!(*window, whole, "head {}", head + 1);
-    }
 }
 
 #[test]
@@ -64,7 +34,7 @@ fn a_head_drifts_is_named_acknowledged_and_put_right_over_a_power_cut_and_a_rest
     // An even line, all heads wandering together: nobody is called.
     let mut line = Line::new();
     line.publish(&broker, 160, &[]);
-    nothing_is_missing(&daemon, line.newest());
+    daemon.nothing_is_missing(line.newest());
     wait_for(SOON, "a look that finds the bank even", || {
         let bank = daemon.json("/api/v1/banks/filler-2");
         let looks = bank["looks"].as_array().expect("looks").clone();
@@ -119,7 +89,7 @@ fn a_head_drifts_is_named_acknowledged_and_put_right_over_a_power_cut_and_a_rest
     });
     assert!(publisher.is_ok(), "the measurements were published");
     let daemon = plant.start_ready();
-    nothing_is_missing(&daemon, line.newest());
+    daemon.nothing_is_missing(line.newest());
     let notices = daemon.json("/api/v1/notices");
     assert_eq!(
         notices["items"].as_array().map(Vec::len),
@@ -155,7 +125,7 @@ fn a_head_drifts_is_named_acknowledged_and_put_right_over_a_power_cut_and_a_rest
     let daemon = plant.start_ready();
     let notice = daemon.json(&format!("/api/v1/notices/{id}"));
     assert_eq!(notice["state"], "acknowledged");
-    nothing_is_missing(&daemon, line.newest());
+    daemon.nothing_is_missing(line.newest());
 
     // Put right: over on evidence, and what was retained is taken back.
     line.publish(&broker, 250, &[]);

@@ -13,17 +13,15 @@ use crate::clock::Stopwatch;
 use crate::engine::Condition;
 use crate::intake::arrival::{self, Arrival, Decoder, Receipt};
 use crate::model::Reason;
-use crate::settings::{Broker, Settings};
+use crate::settings::Settings;
+use crate::settings::connection::{Backoff, Secrets};
 
-use super::access::Access;
-use super::backoff::Backoff;
+use super::drops::{self, Drops};
 use super::ledger::{Delivery, Ledger};
-use super::link::{Heard, Link, Message, Speaker};
+use super::link::{Heard, Link, Message, Retained, Speaker};
 use super::queue::Queue;
-use super::{FromBroker, IntakeError, words};
+use super::{FromBroker, IntakeError};
 
-/// A connection that lasted this long was a good one; the next failure is a new story.
-const STABLE: Duration = Duration::from_secs(30);
 /// How long a broker may take to confirm the subscriptions.
 const CONFIRM: Duration = Duration::from_secs(30);
 /// How long to wait for last receipts, and for the farewell to be sent.
@@ -32,9 +30,12 @@ const DRAIN: Duration = Duration::from_secs(1);
 /// Everything the task owns.
 pub(super) struct Listener {
     settings: Arc<Settings>,
+    /// Where the broker is, for people.
+    place: String,
     decoder: Decoder,
     ledger: Ledger,
     queue: Queue,
+    drops: Drops,
     /// Packet ids to acknowledge on this connection that found the requests full.
     unsent: VecDeque<u16>,
     /// Set while there is a connection or one is being made.
@@ -75,6 +76,16 @@ enum Stage {
     Listening(Stopwatch),
 }
 
+impl Stage {
+    /// How long the connection has worked.
+    fn lasted(self) -> Duration {
+        match self {
+            Self::Connecting | Self::Subscribing(_) => Duration::ZERO,
+            Self::Listening(since) => since.elapsed(),
+        }
+    }
+}
+
 impl Listener {
     pub(super) fn new(
         settings: Arc<Settings>,
@@ -84,9 +95,11 @@ impl Listener {
         shutdown: CancellationToken,
     ) -> Self {
         Self {
+            place: format!("{}:{}", settings.broker.host, settings.broker.port),
             decoder: Decoder::new(settings.feeds.clone(), settings.broker.most_bytes),
             ledger: Ledger::new(already),
             queue: Queue::new(settings.broker.receive_maximum),
+            drops: Drops::default(),
             settings,
             unsent: VecDeque::new(),
             speaker: None,
@@ -105,16 +118,13 @@ impl Listener {
             let end = self.connection(&mut stage).await;
             self.speaker = None;
             self.unsent.clear();
-            if matches!(stage, Stage::Listening(since) if since.elapsed() >= STABLE) {
-                backoff.reset();
-            }
+            self.drops.disconnected();
             let stop = match end {
                 End::Stop(stop) => Some(stop),
                 End::Lost(why) => {
-                    self.say(Condition::Trouble(why));
-                    self.until(pin!(tokio::time::sleep(backoff.next())))
-                        .await
-                        .err()
+                    self.trouble(&why);
+                    let wait = backoff.wait_after(stage.lasted());
+                    self.until(pin!(tokio::time::sleep(wait))).await.err()
                 }
             };
             match stop {
@@ -128,24 +138,21 @@ impl Listener {
     /// One connection from its making to its end.
     async fn connection(&mut self, stage: &mut Stage) -> End {
         let settings = self.settings.clone();
-        let read = {
-            let settings = settings.clone();
-            tokio::task::spawn_blocking(move || Access::read(&settings.broker))
-        };
-        let access = match self.until(pin!(read)).await {
-            Ok(Ok(Ok(access))) => access,
+        let read = tokio::task::spawn_blocking(move || Secrets::read(&settings.broker));
+        let secrets = match self.until(pin!(read)).await {
+            Ok(Ok(Ok(secrets))) => secrets,
             Ok(Ok(Err(error))) => return End::Lost(error.to_string()),
             Ok(Err(error)) => return End::Lost(error.to_string()),
             Err(stop) => return stop.into(),
         };
-        let (mut link, speaker) = Link::new(&settings.broker, access);
+        let (mut link, speaker) = Link::new(&self.settings.broker, &secrets);
         self.speaker = Some(speaker);
-        let end = match self.listen(&mut link, &settings.broker, stage).await {
+        let end = match self.listen(&mut link, stage).await {
             Ok(never) => match never {},
             Err(end) => end,
         };
         if matches!(end, End::Stop(Stop::Shutdown)) && !matches!(stage, Stage::Connecting) {
-            self.farewell(&mut link, &settings.broker).await;
+            self.farewell(&mut link).await;
         }
         end
     }
@@ -154,7 +161,6 @@ impl Listener {
     async fn listen(
         &mut self,
         link: &mut Link,
-        broker: &Broker,
         stage: &mut Stage,
     ) -> Result<std::convert::Infallible, End> {
         loop {
@@ -163,15 +169,22 @@ impl Listener {
             }
             // The future of one poll is kept until it is done: dropping it halfway could lose a
             // request that was taken from its queue and not yet written.
-            let heard = self.until(pin!(link.next(broker))).await?;
+            let heard = self.until(pin!(link.next())).await?;
             match heard.map_err(End::Lost)? {
                 Heard::Connected { session_present } => {
-                    self.connected(session_present, broker)?;
+                    self.connected(session_present)?;
                     *stage = Stage::Subscribing(Stopwatch::start());
+                }
+                // Asked for second, so answered second.
+                Heard::Subscribed(_) if matches!(stage, Stage::Listening(_)) => {
+                    self.drops.answered();
                 }
                 Heard::Subscribed(faults) => {
                     *stage = Stage::Listening(Stopwatch::start());
-                    self.subscribed(&faults, broker);
+                    self.subscribed(&faults);
+                }
+                Heard::Message(message) if message.topic == drops::TOPIC => {
+                    self.count_dropped(&message);
                 }
                 Heard::Message(message) => self.message(&message),
                 Heard::Disconnected | Heard::Nothing => {}
@@ -179,18 +192,23 @@ impl Listener {
             self.hand_on();
             self.acknowledge();
             if matches!(stage, Stage::Subscribing(since) if since.elapsed() > CONFIRM) {
-                let place = words::place(broker);
-                let why = format!("the broker at {place} does not confirm the subscriptions");
-                return Err(End::Lost(why));
+                let why = "the broker does not confirm the subscriptions";
+                return Err(End::Lost(why.to_owned()));
             }
         }
     }
 
     /// Subscribes, on every connection.
-    fn connected(&mut self, session_present: bool, broker: &Broker) -> Result<(), End> {
+    fn connected(&mut self, session_present: bool) -> Result<(), End> {
+        if !session_present && self.ledger.has_connected() {
+            tracing::warn!(
+                broker = self.place,
+                "the broker kept no session; what was published since the last connection is lost"
+            );
+        }
         self.ledger.connected(session_present);
         tracing::info!(
-            broker = words::place(broker),
+            broker = self.place,
             session_present,
             "connected to the broker, subscribing"
         );
@@ -198,7 +216,7 @@ impl Listener {
         let sent = self
             .speaker
             .as_ref()
-            .map(|speaker| speaker.subscribe(filters));
+            .map(|speaker| speaker.subscribe(filters, Retained::Unwanted));
         match sent {
             Some(Ok(())) => Ok(()),
             _ => Err(End::Lost(format!(
@@ -208,7 +226,7 @@ impl Listener {
         }
     }
 
-    fn subscribed(&mut self, faults: &[Option<&'static str>], broker: &Broker) {
+    fn subscribed(&mut self, faults: &[Option<&'static str>]) {
         let filters = self.decoder.filters().iter();
         let refused: Vec<String> = filters
             .zip(faults)
@@ -217,11 +235,27 @@ impl Listener {
         if refused.is_empty() {
             self.say(Condition::Well);
         } else {
-            self.say(Condition::Trouble(format!(
-                "the broker at {} refuses to deliver {}; check its access rules",
-                words::place(broker),
+            self.trouble(&format!(
+                "the broker refuses to deliver {}; check its access list",
                 refused.join(", ")
-            )));
+            ));
+        }
+        if let Some(speaker) = self.speaker.as_ref().filter(|_| self.drops.wants()) {
+            // Without room for it now, the count is watched from the next connection on.
+            let _ = speaker.subscribe(&[drops::TOPIC.to_owned()], Retained::Wanted);
+        }
+    }
+
+    /// Says when the broker has dropped messages. Under a filter of ours that matches the topic too
+    /// it may come with QoS 1; then it is acknowledged at once, as there is nothing to keep.
+    fn count_dropped(&mut self, message: &Message) {
+        self.unsent.extend(message.packet);
+        if let Some(messages) = self.drops.heard(&message.payload) {
+            tracing::warn!(
+                broker = self.place,
+                messages,
+                "the broker has dropped messages that a slow or absent client had not taken; measurements may be among them; raise max_queued_messages in its configuration"
+            );
         }
     }
 
@@ -258,6 +292,10 @@ impl Listener {
             Delivery::Fresh(receipt) => self.decoder.decode(topic, payload, receipt),
         };
         self.queue.push(arrival);
+    }
+
+    fn trouble(&mut self, why: &str) {
+        self.say(Condition::Trouble(format!("{why} ({})", self.place)));
     }
 
     /// Tells a change of condition, once.
@@ -322,6 +360,8 @@ impl Listener {
     /// Does one thing that is not the connection's: may be dropped while it waits.
     async fn pump(&mut self) -> Result<(), Stop> {
         let receipts = tokio::select! {
+            biased;
+            () = self.shutdown.cancelled() => return Err(Stop::Shutdown),
             room = self.feed.reserve(), if !self.queue.is_empty() => {
                 room.map_err(|_| Stop::NobodyTakes)?;
                 None
@@ -331,7 +371,6 @@ impl Listener {
                 receipts
             }
             () = self.feed.closed() => return Err(Stop::NobodyTakes),
-            () = self.shutdown.cancelled() => return Err(Stop::Shutdown),
         };
         match receipts {
             Some(receipts) => self.take(receipts),
@@ -342,10 +381,10 @@ impl Listener {
 
     /// Acknowledges what still becomes durable, then says farewell. What was not handed on is not
     /// acknowledged and comes again in the next session.
-    async fn farewell(&mut self, link: &mut Link, broker: &Broker) {
+    async fn farewell(&mut self, link: &mut Link) {
         let drained = tokio::time::timeout(DRAIN, async {
             while self.receipts_open {
-                let mut next = pin!(link.next(broker));
+                let mut next = pin!(link.next());
                 // As in `listen`, one poll is seen through to its end, unless nothing follows.
                 loop {
                     tokio::select! {
@@ -372,7 +411,7 @@ impl Listener {
             return;
         }
         let gone = tokio::time::timeout(DRAIN, async {
-            while !matches!(link.next(broker).await, Ok(Heard::Disconnected) | Err(_)) {}
+            while !matches!(link.next().await, Ok(Heard::Disconnected) | Err(_)) {}
         });
         if gone.await.is_err() {
             tracing::debug!("the broker did not take the farewell in time");

@@ -138,3 +138,76 @@ fn refusals_name_the_setting_to_look_at() {
     let v4 = trouble_v4(&rumqttc::ConnectionError::ConnectionRefused(code));
     assert_eq!(v4, refused(ConnectReturnCode::BadUserNamePassword));
 }
+
+#[test]
+fn what_a_broker_says_at_the_end_is_told() {
+    use rumqttc::v5::mqttbytes::v5::DisconnectReasonCode as Code;
+    use rumqttc::v5::{ConnectionError, StateError};
+    for (reason_code, words) in [
+        (
+            Code::SessionTakenOver,
+            "its own `broker.client_id` (until noon)",
+        ),
+        (Code::ServerShuttingDown, "is shutting down (until noon)"),
+        (Code::KeepAliveTimeout, "heard nothing from here"),
+        (Code::NotAuthorized, "withdrawn the right"),
+        (Code::QuotaExceeded, "QuotaExceeded until noon"),
+    ] {
+        let reason_string = Some("until noon".to_owned());
+        let said = trouble_v5(&ConnectionError::MqttState(StateError::ServerDisconnect {
+            reason_code,
+            reason_string,
+        }));
+        assert!(said.contains(words), "{said}");
+    }
+}
+
+#[test]
+fn faults_on_the_way_are_told_whatever_wraps_them() {
+    use rumqttc::v5::mqttbytes::Error as Bytes;
+    use rumqttc::v5::{ConnectionError, StateError};
+    use rustls::CertificateError as Why;
+    use std::io;
+    let certificate = |why| {
+        let inner = io::Error::other(rustls::Error::InvalidCertificate(why));
+        StateError::Io(io::Error::other(inner))
+    };
+    let alert = rustls::Error::AlertReceived(rustls::AlertDescription::CertificateRequired);
+    let too_large = Bytes::PayloadSizeLimitExceeded {
+        pkt_size: 20_000_000,
+        max: 16_777_216,
+    };
+    for (state, words) in [
+        (
+            StateError::Deserialization(too_large),
+            "20000000 bytes, too large to be taken, the limit is 16777216",
+        ),
+        (StateError::AwaitPingResp, "does not answer"),
+        (
+            StateError::ConnectionAborted,
+            "another client may have the same",
+        ),
+        (
+            StateError::Io(io::ErrorKind::ConnectionReset.into()),
+            "closed the connection",
+        ),
+        (
+            StateError::Io(io::Error::other("no route")),
+            "the network says: no route",
+        ),
+        (
+            StateError::Deserialization(Bytes::Io(io::Error::other(alert))),
+            "wants a client certificate",
+        ),
+        (certificate(Why::Expired), "has expired"),
+        (certificate(Why::NotValidYet), "not valid yet"),
+        (certificate(Why::UnknownIssuer), "`broker.ca_file`"),
+        (
+            certificate(Why::NotValidForName),
+            "another name than the host",
+        ),
+    ] {
+        let said = trouble_v5(&ConnectionError::MqttState(state));
+        assert!(said.contains(words), "{said}");
+    }
+}

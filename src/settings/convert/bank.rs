@@ -4,7 +4,6 @@ use std::collections::BTreeSet;
 
 use crate::model::{Bank, BankIx, Budget, Characteristic, Layout, Name, Pairing, Sources, Value};
 use crate::settings::Feed;
-use crate::settings::PayloadForm;
 use crate::settings::check::{Check, D, S, unfit};
 use crate::settings::fault::{FaultList, Place};
 use crate::settings::keys;
@@ -66,7 +65,7 @@ pub(super) fn bank(
         offsets,
         recording,
     } = written;
-    let feed = feed(
+    let heard = feed(
         ix,
         WrittenFeed {
             place: place.clone(),
@@ -92,9 +91,8 @@ pub(super) fn bank(
     };
     let margin = margin_of(margin, measured.resolution.as_ref(), &mut check);
     let characteristic = measured.characteristic(&mut check);
-    let in_topic = feed.as_ref().map(|feed| feed.topic.source_level.is_some());
-    let sources = who(sources, most_sources, in_topic == Some(true), &mut check);
-    let pairing = pairing_of(pairing, feed.as_ref(), &mut check);
+    let sources = who(sources, most_sources, heard.source_in_topic, &mut check);
+    let pairing = pairing_of(pairing, heard.without_cycle, &mut check);
     waits_for_cycles(&wait_cycles, pairing, &mut check);
     no_offsets(offsets, &mut check);
     let spans = spans_of(spans, &mut check);
@@ -124,7 +122,7 @@ pub(super) fn bank(
         oldest_us: oldest_days.unwrap_or(OLDEST_DAYS) * D,
         layout: layout.map_or(Layout::Row, |spot| spot.value),
     };
-    Some((bank, feed?))
+    Some((bank, heard.feed?))
 }
 
 /// What is measured, while it is being checked.
@@ -304,7 +302,7 @@ fn listed(
 /// How values belong together.
 fn pairing_of(
     field: Field<WrittenPairing>,
-    feed: Option<&Feed>,
+    without_cycle: bool,
     check: &mut Check<'_>,
 ) -> Option<Pairing> {
     let Spot { value, place } = check.required(field, "pairing").given()?;
@@ -313,8 +311,12 @@ fn pairing_of(
             let known = [("cycle", Pairing::Cycle), ("none", Pairing::None)];
             let word = Field::Given(Spot { value: word, place });
             let pairing = check.word(word, "pairing", &known)?;
-            if pairing.value == Pairing::Cycle {
-                needs_cycle(&pairing.place, feed, check);
+            if pairing.value == Pairing::Cycle && without_cycle {
+                let message =
+                    "pairing by cycle needs the cycle, and `payload` has no pointer to it";
+                let hint = "write `cycle = \"/n\"` into a payload of form \"json\", or pair by \
+                            { slot = \"10s\" } or \"none\"";
+                check.add(&pairing.place, message, hint);
             }
             Some(pairing.value)
         }
@@ -324,22 +326,6 @@ fn pairing_of(
             let length_us = check.duration_us(slot, "slot", S / 1000..=31 * D)?;
             Some(Pairing::Slot { length_us })
         }
-    }
-}
-
-fn needs_cycle(place: &Place, feed: Option<&Feed>, check: &mut Check<'_>) {
-    let without = feed.is_some_and(|feed| match &feed.payload {
-        PayloadForm::Number => true,
-        PayloadForm::Json(pointers) => pointers.cycle.is_none(),
-    });
-    if without {
-        let hint = "write `cycle = \"/n\"` into a payload of form \"json\", or pair by \
-                    { slot = \"10s\" } or \"none\"";
-        check.add(
-            place,
-            "pairing by cycle needs the cycle, and `payload` has no pointer to it",
-            hint,
-        );
     }
 }
 

@@ -22,8 +22,17 @@ pub(super) struct WrittenFeed {
     pub(super) recording: Field<WrittenRecording>,
 }
 
+/// The feed, and what the rest of the bank must know of it even when something in it is faulty.
+pub(super) struct Heard {
+    pub(super) feed: Option<Feed>,
+    /// Whether sources are named by a level of the topic.
+    pub(super) source_in_topic: bool,
+    /// Whether the payload says nothing of a cycle.
+    pub(super) without_cycle: bool,
+}
+
 /// The feed.
-pub(super) fn feed(bank: BankIx, written: WrittenFeed, faults: &mut FaultList) -> Option<Feed> {
+pub(super) fn feed(bank: BankIx, written: WrittenFeed, faults: &mut FaultList) -> Heard {
     let WrittenFeed {
         place,
         topic,
@@ -35,19 +44,35 @@ pub(super) fn feed(bank: BankIx, written: WrittenFeed, faults: &mut FaultList) -
     let payload = check.required(payload, "payload");
     let topic_place = topic.peek().map(|spot| spot.place.clone());
     let topic = template(topic, &mut check);
-    let source_place = payload.peek().and_then(|p| p.value.source.peek());
-    let source_place = source_place.map(|spot| spot.place.clone());
-    let payload = form(payload, faults);
-    if let (Some(topic), Some(place), Some(payload)) = (&topic, &topic_place, &payload) {
-        one_source(topic, place, payload, source_place.as_ref(), faults);
+    let says = payload.peek().map(|spot| &spot.value);
+    // Of a form that is not known nothing can be said to be missing.
+    let says = says.filter(|says| {
+        let form = says.form.peek().map(|spot| spot.value.as_str());
+        form.is_some_and(|form| FORMS.iter().any(|(word, _)| *word == form))
+    });
+    let without_cycle = says.is_some_and(|says| matches!(says.cycle, Field::Absent));
+    if let (Some(topic), Some(place), Some(says)) = (&topic, &topic_place, says) {
+        one_source(topic, place, says, faults);
     }
+    let payload = form(payload, faults);
     let recording = columns(recording, faults);
-    Some(Feed {
+    let source_in_topic = topic
+        .as_ref()
+        .is_some_and(|topic| topic.source_level.is_some());
+    let whole = |topic, payload, recording| Feed {
         bank,
-        topic: topic?,
-        payload: payload?,
-        recording: recording?,
-    })
+        topic,
+        payload,
+        recording,
+    };
+    Heard {
+        feed: topic
+            .zip(payload)
+            .zip(recording)
+            .map(|((t, p), r)| whole(t, p, r)),
+        source_in_topic,
+        without_cycle,
+    }
 }
 
 fn template(field: Field<String>, check: &mut Check<'_>) -> Option<TopicTemplate> {
@@ -118,6 +143,9 @@ enum Form {
     Json,
 }
 
+/// Their words.
+const FORMS: [(&str, Form); 2] = [("number", Form::Number), ("json", Form::Json)];
+
 fn form(field: Field<WrittenPayload>, faults: &mut FaultList) -> Option<PayloadForm> {
     let WrittenPayload {
         place,
@@ -130,8 +158,7 @@ fn form(field: Field<WrittenPayload>, faults: &mut FaultList) -> Option<PayloadF
     } = field.given()?.value;
     let mut check = Check::new("bank.payload", &place, faults);
     let form = check.required(form, "form");
-    let known = [("number", Form::Number), ("json", Form::Json)];
-    let form = check.word(form, "form", &known)?.value;
+    let form = check.word(form, "form", &FORMS)?.value;
     if form == Form::Number {
         let pointers = [
             ("value", &value),
@@ -229,29 +256,27 @@ fn escapes_badly(pointer: &str) -> bool {
 fn one_source(
     topic: &TopicTemplate,
     topic_place: &Place,
-    payload: &PayloadForm,
-    pointer_place: Option<&Place>,
+    payload: &WrittenPayload,
     faults: &mut FaultList,
 ) {
-    match (topic.source_level, payload) {
-        (Some(_), PayloadForm::Json(JsonPointers { source: Some(_), .. })) => faults.add(
-            pointer_place.unwrap_or(topic_place),
+    let number = payload
+        .form
+        .peek()
+        .is_some_and(|spot| spot.value == "number");
+    match (topic.source_level, &payload.source) {
+        // That a number has no pointers is said elsewhere.
+        (Some(_), Field::Given(pointer)) if !number => faults.add(
+            &pointer.place,
             "the source is told twice: by {source} in the topic and by `source` in the payload",
             "keep the one that is right: write + in the topic, or take `source` out",
         ),
-        (None, PayloadForm::Json(JsonPointers { source: None, .. })) => faults.add(
+        (None, Field::Absent) => faults.add(
             topic_place,
             "nothing names the source: no {source} in the topic and no `source` in the payload",
-            "write {source} for the level of the topic that names it, or `source = \"/head\"` in the \
-             payload",
+            "write {source} for the level of the topic that names it, or `source = \"/head\"` into a \
+             payload of form \"json\"",
         ),
-        (None, PayloadForm::Number) => faults.add(
-            topic_place,
-            "nothing names the source: no {source} in the topic, and the payload is a number alone",
-            "write {source} for the level of the topic that names it",
-        ),
-        (Some(_), PayloadForm::Number | PayloadForm::Json(_))
-        | (None, PayloadForm::Json(_)) => {}
+        (Some(_) | None, _) => {}
     }
 }
 

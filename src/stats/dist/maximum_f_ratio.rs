@@ -42,7 +42,7 @@ pub fn sf(ratio: f64, dfs: &[f64]) -> Result<f64, OutOfReach> {
         highest = highest.min(chi_square::isf(1e-19, class.df)? / class.df);
     }
     let largest_df = classes.iter().fold(1.0, |d: f64, c| d.max(c.df));
-    let step = (0.3 * (2.0 / largest_df).sqrt()).min(0.1);
+    let step = (0.12 * (2.0 / largest_df).sqrt()).min(0.1);
     let mut ln_x = highest.ln();
     let (mut sum, mut largest) = (0.0, 0.0_f64);
     for _ in 0..200_000 {

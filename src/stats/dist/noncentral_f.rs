@@ -8,7 +8,7 @@
 use super::kernel::BetaPoint;
 use super::{OutOfReach, degrees, f};
 
-const MOST_TERMS: usize = 2_000_000;
+const MOST_TERMS: f64 = 2e6;
 
 /// Upper tail P(F > f) with noncentrality `lambda` = sum of squared standardized deviations.
 ///
@@ -22,18 +22,37 @@ pub fn sf(value: f64, d1: f64, d2: f64, lambda: f64) -> Result<f64, OutOfReach> 
         return f::sf(value, d1, d2);
     }
     let h = 0.5 * lambda;
-    let mut steps = Steps::new(value, d1, d2, 0.0);
-    let mut tail = f::sf(value, d1, d2)?;
-    let (mut sum, mut ln_poisson) = (0.0, -h);
-    for j in 0..MOST_TERMS {
-        let term = ln_poisson.exp() * tail;
-        sum += term;
-        // Past the mode of the weights, and the tails can only grow to 1.
-        if j as f64 > h && ln_poisson.exp() < sum * 1e-17 {
+    let (first, mut ln_poisson) = first_term(value, d1, d2, h)?;
+    let mut steps = Steps::new(value, d1, d2, first);
+    let mut tail = f::sf(value * d1 / (d1 + 2.0 * first), d1 + 2.0 * first, d2)?;
+    let (mut sum, mut j) = (0.0, first);
+    while j < first + MOST_TERMS {
+        let weight = ln_poisson.exp();
+        sum += weight * tail;
+        // Past the mode the weights fall faster than geometrically, and no tail exceeds 1.
+        if j > h && (weight < sum * 1e-17 || weight == 0.0) {
+            // What lies before the first term is below 1e-240.
+            if first > 0.0 && sum < 1e-200 {
+                return Err(OutOfReach::Argument("a noncentral tail below 1e-200"));
+            }
             return Ok(sum.min(1.0));
         }
         tail += steps.next();
-        ln_poisson += (h / (j + 1) as f64).ln();
+        j += 1.0;
+        ln_poisson += (h / j).ln();
+    }
+    Err(OutOfReach::NotSettled("the noncentral F tail"))
+}
+
+/// The first index whose tail is not lost to underflow, and the logarithm of its Poisson weight.
+fn first_term(value: f64, d1: f64, d2: f64, h: f64) -> Result<(f64, f64), OutOfReach> {
+    let (mut j, mut ln_poisson) = (0.0, -h);
+    while j < MOST_TERMS {
+        if Steps::new(value, d1, d2, j).gain > 1e-250 {
+            return Ok((j, ln_poisson));
+        }
+        j += 1.0;
+        ln_poisson += (h / j).ln();
     }
     Err(OutOfReach::NotSettled("the noncentral F tail"))
 }

@@ -5,9 +5,8 @@ use maud::{Markup, html};
 use serde::Deserialize;
 
 use crate::engine::{BankView, SourceState};
-use crate::notice::Kind;
 use crate::web::access::Caller;
-use crate::web::format::{self, Digits, span_of_time};
+use crate::web::format::{self, span_of_time};
 use crate::web::pictures::glyph;
 use crate::web::problem::Problem;
 use crate::web::signin::percent;
@@ -76,26 +75,25 @@ fn main(
     past: &Result<Past, Problem>,
     asked: Option<usize>,
 ) -> Markup {
-    let level = looks::chosen(view, asked, Kind::LevelApart);
-    let spread = looks::chosen(view, asked, Kind::SpreadApart);
+    let shown = looks::shown(view, asked);
     html! {
         (heading(scene, view))
         @for open in &view.open { (notice::card(scene, open, notice::Place::Bank)) }
-        @match level {
-            Some(look) => (looks::level_picture(view, look)),
+        @match &shown {
             None => (before_the_first_look(view)),
-        }
-        @if let Some(look) = spread { (looks::spread_picture(view, look)) }
-        @if let Some(look) = level {
-            @match past {
-                Ok(past) => (history::section(scene, view, past, look.span)),
-                Err(problem) => section class="picture" {
-                    h2 { "The hours behind us" }
-                    p class="empty" { (super::frame::sentence(&problem.detail)) " Pictures of the past are missing until then." }
-                },
+            Some(shown) => {
+                (looks::level_picture(view, shown))
+                (looks::spread_picture(view, shown))
+                @match past {
+                    Ok(past) => (history::section(scene, view, past, shown)),
+                    Err(problem) => section class="picture" {
+                        h2 { "The hours behind us" }
+                        p class="empty" { (super::frame::sentence(&problem.detail)) " Pictures of the past are missing until then." }
+                    },
+                }
             }
-            (looks::tests(scene, view, look.span))
         }
+        @if !view.looks.is_empty() { (looks::tests(scene, view, shown.as_ref().map(|s| s.look.span))) }
         section {
             h2 { "What do the sources deliver?" }
             (sources::table(scene, view))
@@ -115,7 +113,6 @@ fn heading(scene: &Scene<'_>, view: &BankView) -> Markup {
     let standing = Standing::of(view);
     let bank = &view.bank;
     let what = &bank.characteristic;
-    let digits = Digits::of(bank);
     let asks = if standing.asks() { " asks" } else { "" };
     html! {
         div class="heading" {
@@ -132,7 +129,7 @@ fn heading(scene: &Scene<'_>, view: &BankView) -> Markup {
         }
         dl class="facts" {
             div { dt { "margin" } dd { (bank.margin) " " (what.unit) } }
-            @if let Some(mean) = view.mean { div { dt { "mean of all" } dd { (digits.mean(mean)) " " (what.unit) } } }
+            @if let Some(mean) = view.mean { div { dt { "mean of all" } dd { (what.mean(mean)) " " (what.unit) } } }
             @if let Some(target) = what.target { div { dt { "target" } dd { (target) " " (what.unit) } } }
             @if let Some(declared) = what.declared { div { dt { "declared" } dd { (declared) " " (what.unit) } } }
             div { dt { "false calls" } dd { "at most " (bank.budget) } }

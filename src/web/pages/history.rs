@@ -3,17 +3,17 @@
 use maud::{Markup, html};
 
 use crate::engine::BankView;
-use crate::model::{Time, US_PER_S};
+use crate::model::{Characteristic, Time, US_PER_S};
 use crate::notice::Notice;
 use crate::verdict::Digest;
-use crate::web::format::{self, Digits};
+use crate::web::format;
 use crate::web::pictures::deviations::full_tone;
 use crate::web::pictures::evidence::{self, Evidence};
 use crate::web::pictures::time_axis::TimeAxis;
 use crate::web::pictures::time_band::{self, Incident, TimeBand};
 
 use super::frame::Scene;
-use super::looks::span_links;
+use super::looks::{Shown, span_links};
 
 /// How far back the pictures go: a shift.
 pub const BACK_US: i64 = 8 * 3600 * US_PER_S;
@@ -31,7 +31,8 @@ pub struct Past {
 }
 
 /// Both pictures with their tables.
-pub fn section(scene: &Scene<'_>, view: &BankView, past: &Past, span: usize) -> Markup {
+pub fn section(scene: &Scene<'_>, view: &BankView, past: &Past, shown: &Shown) -> Markup {
+    let span = shown.look.span;
     let looks: Vec<&Digest> = past.digests.iter().filter(|d| d.span == span).collect();
     let Some(first) = looks.first() else {
         return html! {
@@ -65,18 +66,23 @@ pub fn section(scene: &Scene<'_>, view: &BankView, past: &Past, span: usize) -> 
             scene.times.minute(to)
         ),
     };
-    let digits = Digits::of(&view.bank);
+    let what = &view.bank.characteristic;
+    let frame = if band.has_long_names() {
+        "frame long"
+    } else {
+        "frame"
+    };
     html! {
         section id="time" class="picture" {
             h2 { (time_band::TITLE) }
-            (span_links(view, span, "time"))
-            div class="frame" { (band.draw()) }
-            (time_band::legend(full, unit, |x| digits.deviation(x)))
+            (span_links(view, shown, "time"))
+            div class=(frame) { (band.draw()) }
+            (time_band::legend(full, unit, |x| what.deviation(x)))
             (cells(scene, view, &axis, &placed))
         }
         section id="evidence" class="picture" {
             h2 { (evidence::TITLE) }
-            div class="frame" { (Evidence {
+            div class=(frame) { (Evidence {
                 axis: &axis, ticks: &ticks, looks: &placed,
                 description: format!("p of the deciding tests for level and spread over {span} values, and the \
                     alpha that a look must pass. Higher is less likely."),
@@ -136,7 +142,7 @@ fn rows(view: &BankView, notice: &Notice) -> Vec<usize> {
 }
 
 fn cells(scene: &Scene<'_>, view: &BankView, axis: &TimeAxis, looks: &[Option<&Digest>]) -> Markup {
-    let digits = Digits::of(&view.bank);
+    let what = &view.bank.characteristic;
     let every = (looks.len() * view.sources.len())
         .div_ceil(MOST_CELLS)
         .max(1);
@@ -155,7 +161,7 @@ fn cells(scene: &Scene<'_>, view: &BankView, axis: &TimeAxis, looks: &[Option<&D
                         @for (column, look) in shown {
                             @if let Some(look) = look {
                                 tr { th scope="row" { (scene.times.short(axis.end_of(column))) }
-                                    @for s in &view.sources { td { (of(look, &s.name, digits)) } } }
+                                    @for s in &view.sources { td { (of(look, &s.name, what)) } } }
                             }
                         }
                     }
@@ -165,11 +171,11 @@ fn cells(scene: &Scene<'_>, view: &BankView, axis: &TimeAxis, looks: &[Option<&D
     }
 }
 
-fn of(look: &Digest, name: &str, digits: Digits) -> String {
+fn of(look: &Digest, name: &str, what: &Characteristic) -> String {
     let found = look.deviations.iter().find(|(n, _)| &**n == name);
     found
         .and_then(|(_, x)| *x)
-        .map_or_else(|| "–".to_owned(), |x| digits.deviation(f64::from(x)))
+        .map_or_else(|| "–".to_owned(), |x| what.deviation(f64::from(x)))
 }
 
 fn figures(scene: &Scene<'_>, axis: &TimeAxis, looks: &[Option<&Digest>]) -> Markup {

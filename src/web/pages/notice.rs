@@ -5,10 +5,11 @@ use axum::response::{IntoResponse, Redirect, Response};
 use maud::{Markup, html};
 use serde::Deserialize;
 
+use crate::model::signed;
 use crate::notice::{Kind, Notice, State as NoticeState};
 use crate::web::access::{Caller, SessionPass};
 use crate::web::api::notices::submit;
-use crate::web::format::{self, Digits};
+use crate::web::format;
 use crate::web::pictures::glyph::{self, Glyph};
 use crate::web::problem::Problem;
 use crate::web::sessions::Field;
@@ -90,21 +91,32 @@ pub fn card(scene: &Scene<'_>, notice: &Notice, place: Place) -> Markup {
                 }
             }
             (named(scene, notice))
-            p class="text" { (notice.text) }
             @if !notice.advice.is_empty() { p class="advice" { strong { "To do " } (notice.advice) } }
+            p class="text" { (rest_of_text(notice)) }
             (course(scene, notice))
             (acknowledge_part(scene, notice))
         }
     }
 }
 
+/// The whole text but for the lines that the card shows in another place: the advice, and the address
+/// of this page.
+fn rest_of_text(notice: &Notice) -> String {
+    let page = format!("Page: {}", notice.url);
+    let lines = notice
+        .text
+        .lines()
+        .filter(|l| *l != notice.advice && *l != page);
+    lines.collect::<Vec<_>>().join("\n")
+}
+
 fn named(scene: &Scene<'_>, notice: &Notice) -> Markup {
     let found = bank(scene.snapshot, &notice.bank).ok();
-    let digits = found.map(|(_, view)| Digits::of(&view.bank));
-    let figure = |x: f64| match (notice.kind, digits) {
+    let what = found.map(|(_, view)| &view.bank.characteristic);
+    let figure = |x: f64| match (notice.kind, what) {
         (Kind::SpreadApart, _) => format!("{}×", format::plain(x, 2)),
-        (_, Some(digits)) => format!("{} {}", digits.deviation(x), notice.unit),
-        (_, None) => format!("{} {}", format::signed(x, 3), notice.unit),
+        (_, Some(what)) => format!("{} {}", what.deviation(x), notice.unit),
+        (_, None) => format!("{} {}", signed(x, 3), notice.unit),
     };
     html! {
         @if !notice.sources.is_empty() {

@@ -71,7 +71,7 @@ fn since(scene: &Scene<'_>, view: &BankView, standing: &Standing) -> Markup {
     let lasting = |at| {
         html! {
             "since " (scene.time(at, &scene.times.short(at)))
-            span { "for " (scene.times.ago(at)) }
+            " " span { "for " (scene.times.ago(at)) }
         }
     };
     match standing {

@@ -3,13 +3,13 @@
 use maud::{Markup, html};
 
 use crate::engine::{BankView, RefusalView};
-use crate::web::format::{self, Digits};
+use crate::web::format;
 
 use super::frame::Scene;
 
 /// The sources.
 pub fn table(scene: &Scene<'_>, view: &BankView) -> Markup {
-    let digits = Digits::of(&view.bank);
+    let what = &view.bank.characteristic;
     let unit = &view.bank.characteristic.unit;
     html! {
         div class="wide" tabindex="0" role="region" aria-label="Sources" {
@@ -25,7 +25,7 @@ pub fn table(scene: &Scene<'_>, view: &BankView) -> Markup {
                             th scope="row" { (source.name) }
                             td { (source.state.word()) }
                             td class="n" { (format::count(source.values as u64)) }
-                            td class="n" { @if let Some(x) = source.last_value { (digits.value(x)) } @else { "–" } }
+                            td class="n" { @if let Some(x) = source.last_value { (what.value(x)) } @else { "–" } }
                             td { @match source.last_taken {
                                 Some(at) => (scene.time(at, &scene.times.second(at))),
                                 None => "–",

@@ -4,10 +4,10 @@
 //! does. The order is that in which a person would want to know.
 
 use crate::engine::{BankView, SourceState};
-use crate::model::{Name, Time};
+use crate::model::{Characteristic, Name, Time};
 use crate::notice::{Kind, Notice, State};
 use crate::verdict::Finding;
-use crate::web::format::{self, Digits};
+use crate::web::format;
 use crate::web::pictures::glyph::Glyph;
 
 /// How a bank stands.
@@ -152,16 +152,16 @@ fn apart(view: &BankView) -> Option<Standing> {
         .filter(|n| n.state.is_active() && is_apart(n.kind))
         .collect();
     let first = active.iter().min_by_key(|n| n.since.at)?;
-    let digits = Digits::of(&view.bank);
+    let what = &view.bank.characteristic;
     Some(Standing::Apart {
         kind: first.kind,
-        named: active.iter().flat_map(|n| named(n, digits)).collect(),
+        named: active.iter().flat_map(|n| named(n, what)).collect(),
         since: first.since.at,
     })
 }
 
 /// The sources of a notice with their figures.
-pub fn named(notice: &Notice, digits: Digits) -> Vec<String> {
+pub fn named(notice: &Notice, what: &Characteristic) -> Vec<String> {
     let one = |source: &crate::notice::NamedSource| match notice.kind {
         Kind::SpreadApart => {
             format!(
@@ -174,7 +174,7 @@ pub fn named(notice: &Notice, digits: Digits) -> Vec<String> {
             format!(
                 "{} {} {}",
                 source.source,
-                digits.deviation(source.deviation),
+                what.deviation(source.deviation),
                 notice.unit
             )
         }

@@ -2,9 +2,8 @@
 
 use maud::Markup;
 
-use crate::model::Bank;
+use crate::model::{Bank, Characteristic, signed};
 use crate::verdict::{Estimate, Look};
-use crate::web::format::{self, Digits};
 
 use super::band;
 use super::row::{BOTTOM, Mark, Row, TOP};
@@ -16,7 +15,7 @@ pub const TITLE: &str = "Which sources are apart, and by how much?";
 /// Draws one look's deviations; `None` when it could judge nobody.
 pub fn draw(bank: &Bank, look: &Look) -> Option<Markup> {
     let unit = &bank.characteristic.unit;
-    let digits = Digits::of(bank);
+    let what = &bank.characteristic;
     let figures: Vec<f64> = look
         .sources
         .iter()
@@ -34,19 +33,16 @@ pub fn draw(bank: &Bank, look: &Look) -> Option<Markup> {
         name: s.name.to_string(),
         figure: s.deviation,
         apart: s.named_level.then(|| word(s.deviation)),
-        words: words(&s.name, s.deviation, digits, unit),
+        words: words(&s.name, s.deviation, what, unit),
         tone: s.deviation.map_or(0.0, |d| d.value / full),
     });
     let row = Row {
         id: "deviations",
         title: TITLE,
-        description: description(bank, look, digits),
+        description: description(bank, look, what),
         marks: marks.collect(),
         scale,
-        ticks: ticks
-            .iter()
-            .map(|t| (*t, format::signed(*t, places)))
-            .collect(),
+        ticks: ticks.iter().map(|t| (*t, signed(*t, places))).collect(),
         even_at: 0.0,
         band,
         unit,
@@ -75,25 +71,25 @@ pub fn word(deviation: Option<Estimate>) -> &'static str {
     }
 }
 
-fn words(name: &str, deviation: Option<Estimate>, digits: Digits, unit: &str) -> String {
+fn words(name: &str, deviation: Option<Estimate>, what: &Characteristic, unit: &str) -> String {
     match deviation {
         Some(Estimate { value, low, high }) => format!(
             "{name}: {} {unit} ({} to {})",
-            digits.deviation(value),
-            digits.deviation(low),
-            digits.deviation(high)
+            what.deviation(value),
+            what.deviation(low),
+            what.deviation(high)
         ),
         None => format!("{name}: too few values to judge"),
     }
 }
 
-fn description(bank: &Bank, look: &Look, digits: Digits) -> String {
+fn description(bank: &Bank, look: &Look, what: &Characteristic) -> String {
     let unit = &bank.characteristic.unit;
     let named: Vec<String> = look
         .sources
         .iter()
         .filter(|s| s.named_level)
-        .map(|s| words(&s.name, s.deviation, digits, unit))
+        .map(|s| words(&s.name, s.deviation, what, unit))
         .collect();
     let said = if named.is_empty() {
         "No source is named.".to_owned()

@@ -18,7 +18,7 @@ pub mod time_axis;
 pub mod time_band;
 pub mod vik;
 
-/// A per cent place with enough digits for a wall screen and no more.
+/// A per cent place with enough what for a wall screen and no more.
 pub fn percent(share: f64) -> String {
     let mut text = format!("{:.2}", share * 100.0);
     trim(&mut text);

@@ -107,17 +107,18 @@ impl Row<'_> {
                     text class="none" x=(x) y=(px(self.scale.place(self.even_at))) dy="-6"
                         text-anchor="middle" { "–" }
                 }
-                @if !self.is_crowded_out(at) { (name(&x, at, &mark.name, long)) }
+                (name(&x, &self.name_class(at), &mark.name, long))
             }
         }
     }
 
-    /// Whether a named neighbour's name needs this one's place: names are thinned to every fifth or
-    /// tenth when sources are many, and a named source's always stays.
-    fn is_crowded_out(&self, at: usize) -> bool {
-        let near = self.marks.len() / 40;
+    /// The class of a name: how soon it gives way, and whether it stands beside a named source's,
+    /// which always stays and needs room.
+    fn name_class(&self, at: usize) -> String {
+        let near = (self.marks.len() / 40).max(1);
         let is_apart = |other: usize| self.marks.get(other).is_some_and(|m| m.apart.is_some());
-        !is_apart(at) && (at.saturating_sub(near)..=at + near).any(is_apart)
+        let beside = !is_apart(at) && (at.saturating_sub(near)..=at + near).any(is_apart);
+        format!("name {}{}", rank(at), if beside { " beside" } else { "" })
     }
 
     /// The name and word of a named source, beyond its interval's outer end.
@@ -183,8 +184,7 @@ fn point(x: &str, y: f64, mark: &Mark) -> Markup {
     }
 }
 
-fn name(x: &str, at: usize, name: &str, long: bool) -> Markup {
-    let class = format!("name {}", rank(at));
+fn name(x: &str, class: &str, name: &str, long: bool) -> Markup {
     html! {
         @if long {
             svg class="held" x=(x) y=(px(BOTTOM + 14.0)) {

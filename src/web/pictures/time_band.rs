@@ -50,7 +50,25 @@ pub struct TimeBand<'a> {
     pub description: String,
 }
 
+/// Longer names do not fit beside the rows of a usual picture.
+const LONG_NAME: usize = 5;
+/// Beyond this a name is cut; the table has it whole.
+const LONGEST_NAME: usize = 12;
+
+fn short(name: &str) -> String {
+    if name.chars().count() <= LONGEST_NAME {
+        return name.to_owned();
+    }
+    let kept: String = name.chars().take(LONGEST_NAME - 1).collect();
+    format!("{kept}…")
+}
+
 impl TimeBand<'_> {
+    /// Whether the names need a broader edge.
+    pub fn has_long_names(&self) -> bool {
+        self.sources.iter().any(|s| s.chars().count() > LONG_NAME)
+    }
+
     /// Draws it.
     pub fn draw(&self) -> Markup {
         let row = row_height(self.sources.len());
@@ -77,7 +95,7 @@ impl TimeBand<'_> {
                 @for (at, name) in self.sources.iter().enumerate() {
                     @let named = self.incidents.iter().any(|i| i.is_active && i.rows.contains(&at));
                     text class={ "name " (rank(at)) @if named { " apart" } } x="-8"
-                        y=(px(TOP + (at as f64 + 0.5) * row)) dy="0.35em" text-anchor="end" { (name) }
+                        y=(px(TOP + (at as f64 + 0.5) * row)) dy="0.35em" text-anchor="end" { (short(name)) }
                 }
                 @for incident in &self.incidents { (draw_incident(incident, row)) }
                 (time_labels(self.ticks, TOP, TOP + body))
@@ -173,14 +191,14 @@ pub fn legend(full: f64, unit: &str, figure: impl Fn(f64) -> String) -> Markup {
     let steps = vik::STEPS.len();
     html! {
         figure class="legend" {
-            svg class="scale" width="294" height="34" role="img" aria-label={
+            svg class="scale" width="252" height="34" role="img" aria-label={
                 "Colour scale from " (figure(-full)) " to " (figure(full)) " " (unit) ", light at zero"
             } {
                 @for (at, colour) in vik::STEPS.iter().enumerate() {
-                    rect x=(at * 14) y="0" width="14" height="12" fill=(colour) {}
+                    rect x=(at * 12) y="0" width="12" height="12" fill=(colour) {}
                 }
                 @for (share, anchor) in [(0.0, "start"), (0.25, "middle"), (0.5, "middle"), (0.75, "middle"), (1.0, "end")] {
-                    text class="tick" x=(px(share * steps as f64 * 14.0)) y="28" text-anchor=(anchor) {
+                    text class="tick" x=(px(share * steps as f64 * 12.0)) y="28" text-anchor=(anchor) {
                         (figure((share * 2.0 - 1.0) * full))
                     }
                 }

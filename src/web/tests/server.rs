@@ -1,11 +1,13 @@
 //! The real server on a real port.
 
+use std::sync::Arc;
 use std::time::Duration;
 
 use tokio::io::{AsyncReadExt as _, AsyncWriteExt as _};
 use tokio::net::{TcpListener, TcpStream};
 use tokio_util::sync::CancellationToken;
 
+use crate::engine::Condition;
 use crate::web::sample;
 use crate::web::serve;
 
@@ -28,9 +30,18 @@ async fn a_live_stream_tells_of_changes_and_ends_with_the_shutdown() {
     let shutdown = CancellationToken::new();
     let serving = tokio::spawn(serve(listener, site, shutdown.clone()));
 
-    if let Some(seconds) = std::env::var(SHOW).ok().and_then(|s| s.parse().ok()) {
+    if let Some(seconds) = std::env::var(SHOW).ok().and_then(|s| s.parse::<u64>().ok()) {
         eprintln!("the sample plant is at http://{local}");
-        tokio::time::sleep(Duration::from_secs(seconds)).await;
+        for second in 0..seconds {
+            let mut now = sample::snapshot();
+            now.version = second;
+            if second % 8 > 3 {
+                now.broker = Condition::Trouble("shown for a few seconds, to be looked at".into());
+            }
+            snapshot.send_replace(Arc::new(now));
+            tokio::time::sleep(Duration::from_secs(1)).await;
+        }
+        snapshot.send_replace(Arc::new(sample::snapshot()));
     }
 
     let mut viewer = TcpStream::connect(local).await.expect("connected");
@@ -42,11 +53,11 @@ async fn a_live_stream_tells_of_changes_and_ends_with_the_shutdown() {
     let mut next = sample::snapshot();
     next.banks.clone_from(&snapshot.borrow().banks);
     next.version = 2;
-    snapshot.send_replace(std::sync::Arc::new(next));
+    snapshot.send_replace(Arc::new(next));
     tokio::time::sleep(Duration::from_millis(100)).await;
     let mut next = sample::snapshot();
     next.version = 3;
-    snapshot.send_replace(std::sync::Arc::new(next));
+    snapshot.send_replace(Arc::new(next));
     let told = read_until(&mut viewer, "data: ").await;
     assert!(
         told.contains("event: changed") && told.contains("data: 3"),

@@ -17,8 +17,11 @@ pub struct TestBody {
     pub statistic: Option<f64>,
     /// Degrees of freedom, numerator first; `null` stands for infinity.
     pub df: Vec<Option<f64>>,
-    /// Upper-tail probability.
+    /// Upper-tail probability as a textbook gives it, for independent values.
     pub p: Option<f64>,
+    /// The same after dependence between successive values (and, for spread, the search for steps) has
+    /// been paid for: what the decision uses.
+    pub p_paid: Option<f64>,
     /// Whether the test takes part in the decision.
     pub decides: bool,
 }
@@ -119,6 +122,7 @@ fn test(test: &TestEntry) -> TestBody {
         statistic: finite(test.statistic),
         df: test.df.iter().copied().map(finite).collect(),
         p: finite(test.p),
+        p_paid: finite(test.p_paid),
         decides: test.decides,
     }
 }

@@ -1,0 +1,110 @@
+//! The past of the sample plant.
+
+use std::sync::Arc;
+
+use crate::engine::{BankView, History, HistoryError, Page, Snapshot};
+use crate::model::{Name, Time, US_PER_S};
+use crate::notice::Notice;
+use crate::verdict::{Digest, Look};
+
+use super::looks::look;
+use super::notices::past_notices;
+use super::{Story, now};
+
+/// The past of the sample: looks of the last six hours, and two notices of the first bank.
+pub struct SampleHistory {
+    snapshot: Snapshot,
+}
+
+impl SampleHistory {
+    /// Of this plant.
+    pub fn new(snapshot: Snapshot) -> Self {
+        Self { snapshot }
+    }
+
+    fn stories(&self) -> Vec<(Arc<BankView>, Story)> {
+        let stories = [
+            Story::Level(6, -1.62, 14),
+            Story::Even,
+            Story::Spread(10, 2.9),
+            Story::Silent(4),
+            Story::Young(6),
+            Story::Level(77, 2.1, 50),
+            Story::Young(0),
+        ];
+        self.snapshot.banks.iter().cloned().zip(stories).collect()
+    }
+}
+
+impl History for SampleHistory {
+    fn digests(
+        &self,
+        bank: &str,
+        from: Time,
+        to: Time,
+        most: usize,
+    ) -> Result<Vec<Digest>, HistoryError> {
+        let stories = self.stories();
+        let Some((view, story)) = stories.into_iter().find(|(v, _)| &*v.bank.name == bank) else {
+            return Ok(Vec::new());
+        };
+        if matches!(story, Story::Young(_)) {
+            return Ok(Vec::new());
+        }
+        let names: Vec<Name> = view.sources.iter().map(|s| s.name.clone()).collect();
+        let mut all = Vec::new();
+        let start = now().plus_us(-6 * 3600 * US_PER_S);
+        for step in 0..(6 * 120) {
+            let at = start.plus_us(step * 30 * US_PER_S + 18 * US_PER_S);
+            // The line stood still for a while.
+            if (300..330).contains(&step) || at < from || at >= to {
+                continue;
+            }
+            for span in &view.bank.spans {
+                all.push(look(&view.bank, &names, story, *span, at, 9).digest());
+            }
+        }
+        let skip = all.len().saturating_sub(most);
+        Ok(all.split_off(skip))
+    }
+
+    fn looks_at(&self, _bank: &str, _at: Time) -> Result<Vec<Look>, HistoryError> {
+        Ok(Vec::new())
+    }
+
+    fn notices(&self, after: Option<&str>, most: usize) -> Result<Page<Notice>, HistoryError> {
+        let open = self
+            .snapshot
+            .banks
+            .iter()
+            .flat_map(|b| &b.open)
+            .map(|n| Notice::clone(n));
+        let past = self
+            .snapshot
+            .banks
+            .first()
+            .map_or_else(Vec::new, |b| past_notices(b));
+        let all: Vec<Notice> = open.chain(past).collect();
+        let start = match after {
+            None => 0,
+            Some(id) => {
+                all.iter()
+                    .position(|n| &*n.id == id)
+                    .ok_or(HistoryError("no such place".to_owned()))?
+                    + 1
+            }
+        };
+        let items: Vec<Notice> = all.iter().skip(start).take(most).cloned().collect();
+        let is_end = start + items.len() >= all.len();
+        let next = items.last().filter(|_| !is_end).map(|n| n.id.to_string());
+        Ok(Page { items, next })
+    }
+
+    fn notice(&self, id: &str) -> Result<Option<Notice>, HistoryError> {
+        Ok(self
+            .notices(None, usize::MAX)?
+            .items
+            .into_iter()
+            .find(|n| &*n.id == id))
+    }
+}

@@ -1,0 +1,571 @@
+//! Published worked examples, to every printed digit; and follow-ups against other programs.
+
+use crate::fixtures::{groups, json, slices};
+use crate::table::{Row, Worst};
+use evenrow::stats::dist::{beta, f, maximum::Maximum, t};
+use evenrow::stats::{
+    Blocks, Side, Test, analysis_of_means, analysis_of_means_from, anderson_darling, anova,
+    bartlett, blocked_anova, brown_forsythe, brown_forsythe_summaries, cochran_c, dunn,
+    dunn_interval, dunnett, dunnett_from, each_against_rest, each_against_rest_from, games_howell,
+    games_howell_from, generalised_esd, kruskal_wallis, letters_text, levene_mean, max_f_ratio,
+    median_outliers, shapiro_wilk, shared_letters, spread_against_rest, summarize, tukey_kramer,
+    tukey_kramer_from, welch,
+};
+
+/// The data of one worked example.
+fn data(id: &str) -> Vec<Vec<f64>> {
+    let all = json("reference/worked_examples.json");
+    let examples = all["examples"].as_array().expect("examples");
+    let example = examples
+        .iter()
+        .find(|e| e["id"] == id)
+        .expect("the example");
+    groups(&example["data"])
+}
+
+pub fn rows(out: &mut Vec<Row>) {
+    let mut push = |statistic, covers, source, allowed, worst| {
+        out.push(Row {
+            statistic,
+            covers,
+            source,
+            allowed,
+            worst,
+        });
+    };
+    let source = "NIST e-Handbook 1.3.5.4, 1.3.5.7, 1.3.5.10 (GEAR.DAT), printed digits";
+    push(
+        "gear diameters: ANOVA, Bartlett, Levene, Kruskal–Wallis",
+        &[],
+        source,
+        1.0,
+        gear(),
+    );
+    let source = "R's saved example output, pingouin, Jan and Shieh 2019, printed digits";
+    push(
+        "ANOVA, Welch, Bartlett, Kruskal–Wallis",
+        &[],
+        source,
+        1.0,
+        printed_tests(),
+    );
+    let covers = &["tukey_kramer", "tukey_kramer_from", "interval"];
+    push(
+        "Tukey–Kramer",
+        covers,
+        "NIST e-Handbook 7.4.7.1, printed digits",
+        1.0,
+        tukey(),
+    );
+    let covers = &["games_howell", "games_howell_from"];
+    push(
+        "Games–Howell",
+        covers,
+        "pingouin 0.7.0 documentation, printed digits",
+        1.0,
+        games(),
+    );
+    let covers = &["dunnett", "dunnett_from"];
+    let source = "Dunnett 1955 blood counts; multcomp as stored in SciPy, printed digits";
+    push("Dunnett", covers, source, 1.0, blood_counts());
+    let source = "Dunnett 1955, tables 1a and 1b (one-sided), printed digits";
+    push(
+        "Dunnett critical values",
+        &["maximum::isf"],
+        source,
+        1.0,
+        dunnett_tables(),
+    );
+    let source = "SciPy tests (AS R94) and nortest, printed digits";
+    push(
+        "Shapiro–Wilk, Anderson–Darling",
+        &[],
+        source,
+        1.0,
+        normality(),
+    );
+    let covers = &["dunn", "dunn_interval"];
+    push(
+        "Dunn with Holm",
+        covers,
+        "scikit-posthocs 0.17.1",
+        2e-14,
+        dunn_test(),
+    );
+    let covers = &["generalised_esd"];
+    let source = "NIST e-Handbook 1.3.5.17.3 (Rosner 1983), printed digits, from memory";
+    push("generalised ESD", covers, source, 1.0, rosner());
+    let covers = &["analysis_of_means", "analysis_of_means_from"];
+    let source = "closed forms: t for two sources, maximum modulus for unequal counts";
+    push("analysis of means", covers, source, 1e-14, means());
+    let covers = &[
+        "each_against_rest",
+        "each_against_rest_from",
+        "spread_against_rest",
+    ];
+    push(
+        "each against the rest",
+        covers,
+        "Welch's t for two sources; by hand",
+        5e-15,
+        rest(),
+    );
+    let covers = &["max_f_ratio", "cochran_c"];
+    push(
+        "extreme variances",
+        covers,
+        "F and beta for two sources",
+        1e-15,
+        variances(),
+    );
+    let covers = &["tukey"];
+    push(
+        "Tukey within blocks",
+        covers,
+        "paired t for two sources",
+        2e-15,
+        blocks(),
+    );
+    let covers = &["shared_letters", "letters_text", "median_outliers"];
+    push(
+        "letters, outliers by MAD",
+        covers,
+        "by hand: exact agreement",
+        1.0,
+        letters(),
+    );
+}
+
+fn test(worst: &mut Worst, name: &str, test: &Test, statistic: &str, p: &str) {
+    worst.printed(test.statistic, statistic, format!("{name} statistic"));
+    worst.printed(test.p, p, format!("{name} p"));
+}
+
+fn gear() -> Worst {
+    let groups = data("nist_gear");
+    let g = slices(&groups);
+    let mut worst = Worst::new();
+    let ok = "not degenerate";
+    test(
+        &mut worst,
+        "Levene median",
+        &brown_forsythe(&g).expect(ok),
+        "1.705917693001",
+        "0.0990829755522",
+    );
+    test(
+        &mut worst,
+        "Levene mean",
+        &levene_mean(&g).expect(ok),
+        "2.15945985647",
+        "0.032236826559783",
+    );
+    test(
+        &mut worst,
+        "Bartlett",
+        &bartlett(&g).expect(ok),
+        "20.78587342806",
+        "0.0136358632781",
+    );
+    test(
+        &mut worst,
+        "ANOVA",
+        &anova(&g).expect(ok).test,
+        "2.2969",
+        "0.022661",
+    );
+    test(
+        &mut worst,
+        "Kruskal–Wallis",
+        &kruskal_wallis(&g).expect(ok),
+        "17.03124",
+        "0.048229",
+    );
+    worst
+}
+
+fn printed_tests() -> Worst {
+    let mut worst = Worst::new();
+    let ok = "not degenerate";
+    let plants = data("R_PlantGrowth");
+    let a = anova(&slices(&plants)).expect(ok);
+    test(&mut worst, "PlantGrowth", &a.test, "4.8461", "0.01591");
+    worst.printed(a.ss_between, "3.7663", "PlantGrowth between");
+    worst.printed(a.ss_within, "10.4921", "PlantGrowth within");
+    worst.printed(a.ms_within, "0.3886", "PlantGrowth mean square");
+    let chicks = data("R_chickwts");
+    let a = anova(&slices(&chicks)).expect(ok);
+    test(&mut worst, "chickwts", &a.test, "15.365", "5.936e-10");
+    worst.printed(a.ss_between, "231129", "chickwts between");
+    let sprays = data("R_InsectSprays");
+    test(
+        &mut worst,
+        "InsectSprays",
+        &bartlett(&slices(&sprays)).expect(ok),
+        "25.96",
+        "9.085e-05",
+    );
+    worst.printed(
+        anova(&slices(&sprays)).expect(ok).test.statistic,
+        "34.7",
+        "InsectSprays F",
+    );
+    let sleep = data("R_sleep_oneway");
+    test(
+        &mut worst,
+        "sleep Welch",
+        &welch(&slices(&sleep)).expect(ok),
+        "3.4626",
+        "0.07939",
+    );
+    test(
+        &mut worst,
+        "sleep ANOVA",
+        &anova(&slices(&sleep)).expect(ok).test,
+        "3.4626",
+        "0.07919",
+    );
+    let ozone = data("R_kruskal_airquality");
+    test(
+        &mut worst,
+        "airquality",
+        &kruskal_wallis(&slices(&ozone)).expect(ok),
+        "29.267",
+        "6.901e-06",
+    );
+    let cilia = data("R_kruskal_hollander_wolfe");
+    test(
+        &mut worst,
+        "mucociliary",
+        &kruskal_wallis(&slices(&cilia)).expect(ok),
+        "0.77143",
+        "0.68",
+    );
+    let jan = data("jan_shieh_2019");
+    worst.printed(
+        anova(&slices(&jan)).expect(ok).test.statistic,
+        "0.0926",
+        "Jan and Shieh F",
+    );
+    worst.printed(
+        welch(&slices(&jan)).expect(ok).statistic,
+        "0.1102",
+        "Jan and Shieh Welch",
+    );
+    worst
+}
+
+fn tukey() -> Worst {
+    let mut worst = Worst::new();
+    let groups = data("nist_prc471_tukey");
+    let pairs = tukey_kramer(&slices(&groups)).expect("not degenerate");
+    let summaries: Vec<_> = groups.iter().map(|g| summarize(g)).collect();
+    let again = tukey_kramer_from(&summaries).expect("not degenerate");
+    // Published as i - j; ours is a - b with a < b.
+    let published = [
+        ((0, 1), ("-4.47", "-0.29")),
+        ((0, 2), ("-5.31", "-1.13")),
+        ((0, 3), ("-2.25", "1.93")),
+        ((1, 2), ("-2.93", "1.25")),
+        ((1, 3), ("0.13", "4.31")),
+        ((2, 3), ("0.97", "5.15")),
+    ];
+    for ((pair, other), ((a, b), (low, high))) in pairs.iter().zip(&again).zip(published) {
+        assert_eq!((pair.a, pair.b), (a, b));
+        let interval = pair.interval(4, 0.05).expect("within reach");
+        worst.printed(interval.0, low, format!("{a}-{b} low"));
+        worst.printed(interval.1, high, format!("{a}-{b} high"));
+        assert!((pair.p_adjusted / other.p_adjusted - 1.0).abs() < 1e-12);
+    }
+    worst
+}
+
+fn games() -> Worst {
+    let mut worst = Worst::new();
+    let groups = data("pingouin_games_howell_penguins");
+    let summaries: Vec<_> = groups.iter().map(|g| summarize(g)).collect();
+    let again = games_howell_from(&summaries).expect("not degenerate");
+    let published = [
+        ("-32.426", "59.706", "152.455", "0.85"),
+        ("-1375.354", "58.811", "249.643", "0.00"),
+        ("-1342.928", "65.103", "170.404", "0.00"),
+    ];
+    let pairs = games_howell(&slices(&groups)).expect("not degenerate");
+    for ((pair, other), (difference, error, df, p)) in pairs.iter().zip(&again).zip(published) {
+        let name = format!("{}-{}", pair.a, pair.b);
+        worst.printed(pair.difference, difference, format!("{name} difference"));
+        worst.printed(pair.std_error, error, format!("{name} se"));
+        worst.printed(pair.df, df, format!("{name} df"));
+        worst.printed(pair.p_adjusted, p, format!("{name} p"));
+        assert!((pair.p_adjusted - other.p_adjusted).abs() <= 1e-11 * pair.p_adjusted);
+    }
+    worst
+}
+
+fn blood_counts() -> Worst {
+    let mut worst = Worst::new();
+    let groups = data("dunnett1955_blood_counts");
+    let both = dunnett(&slices(&groups), 0, Side::Both, 0.05).expect("not degenerate");
+    let summaries: Vec<_> = groups.iter().map(|g| summarize(g)).collect();
+    let upper = dunnett_from(&summaries, 0, Side::Upper, 0.05).expect("not degenerate");
+    // multcomp integrates by simulation: its p and intervals are good to three figures.
+    let published = [
+        ("0.85703", "0.6201", "0.3250", "-1.256", "2.556"),
+        ("3.69375", "0.00583", "0.00291", "0.840", "4.416"),
+    ];
+    for ((both, upper), (statistic, two, one, low, high)) in both.iter().zip(&upper).zip(published)
+    {
+        let name = format!("drug {}", both.source);
+        worst.printed(
+            both.difference / both.std_error,
+            statistic,
+            format!("{name} t"),
+        );
+        worst.printed(
+            both.p_adjusted,
+            two,
+            format!("{name} p {}", both.p_adjusted),
+        );
+        worst.printed(
+            upper.p_adjusted,
+            one,
+            format!("{name} p above {}", upper.p_adjusted),
+        );
+        worst.printed(both.low, low, format!("{name} low"));
+        worst.printed(both.high, high, format!("{name} high"));
+    }
+    worst
+}
+
+/// The printed 2.33 for p 5, df 30 is left out: the exact value, 2.3352, rounds to 2.34.
+fn dunnett_tables() -> Worst {
+    let mut worst = Worst::new();
+    let table = [
+        (1, 10.0, "1.81", 0.05),
+        (3, 10.0, "2.34", 0.05),
+        (2, 30.0, "1.99", 0.05),
+        (4, 12.0, "3.32", 0.01),
+        (7, 12.0, "3.56", 0.01),
+        (2, 60.0, "2.64", 0.01),
+        (4, 60.0, "2.87", 0.01),
+    ];
+    for (p, df, critical, alpha) in table {
+        let maximum = Maximum::dunnett(7, &vec![7; p], Side::Upper).expect("within reach");
+        let got = maximum.isf(alpha, df).expect("within reach");
+        worst.printed(got, critical, format!("p {p}, df {df}"));
+    }
+    worst
+}
+
+fn normality() -> Worst {
+    let mut worst = Worst::new();
+    let samples = data("shapiro_wilk_scipy");
+    let ok = "not degenerate";
+    test(
+        &mut worst,
+        "x1",
+        &shapiro_wilk(&samples[0]).expect(ok),
+        "0.90047",
+        "0.04209",
+    );
+    test(
+        &mut worst,
+        "x2",
+        &shapiro_wilk(&samples[1]).expect(ok),
+        "0.959027",
+        "0.5246",
+    );
+    let constant = data("anderson_darling_normal_constant");
+    let a = anderson_darling(&constant[0]).expect(ok);
+    worst.printed(a.statistic, "3.208057", "A2");
+    worst
+}
+
+fn dunn_test() -> Worst {
+    let mut worst = Worst::new();
+    let all = json("reference/worked_examples.json");
+    let examples = all["examples"].as_array().expect("examples");
+    let sprays = data("R_InsectSprays");
+    let small: Vec<Vec<f64>> = vec![
+        vec![1.0, 2.0, 3.0, 5.0, 1.0],
+        vec![12.0, 31.0, 54.0],
+        vec![10.0, 12.0, 6.0, 74.0, 11.0],
+    ];
+    for (id, groups) in [
+        ("dunn_scikit_posthocs", small),
+        ("dunn_InsectSprays", sprays),
+    ] {
+        let example = examples
+            .iter()
+            .find(|e| e["id"] == id)
+            .expect("the example");
+        let pairs = dunn(&slices(&groups)).expect("not degenerate");
+        for pair in &pairs {
+            let want = example["recomputed"]["dunn_holm"][pair.a][pair.b]
+                .as_f64()
+                .expect("p");
+            worst.relative(pair.p_adjusted, want, format!("{id} {}-{}", pair.a, pair.b));
+        }
+        let interval = dunn_interval(&pairs[0], 3, 0.3).expect("within reach");
+        let half = evenrow::stats::dist::normal::isf(0.05).expect("within reach");
+        worst.relative(
+            interval.1 - interval.0,
+            2.0 * half * pairs[0].std_error,
+            "interval",
+        );
+    }
+    worst
+}
+
+const ROSNER: [f64; 54] = [
+    -0.25, 0.68, 0.94, 1.15, 1.20, 1.26, 1.26, 1.34, 1.38, 1.43, 1.49, 1.49, 1.55, 1.56, 1.58,
+    1.65, 1.69, 1.70, 1.76, 1.77, 1.81, 1.91, 1.94, 1.96, 1.99, 2.06, 2.09, 2.10, 2.14, 2.15, 2.23,
+    2.24, 2.26, 2.35, 2.37, 2.40, 2.47, 2.54, 2.62, 2.64, 2.90, 2.92, 2.92, 2.93, 3.21, 3.26, 3.30,
+    3.59, 3.68, 4.30, 4.64, 5.34, 5.42, 6.01,
+];
+
+fn rosner() -> Worst {
+    let mut worst = Worst::new();
+    let esd = generalised_esd(&ROSNER, 10, 0.05).expect("not degenerate");
+    let published = [
+        ("3.118", "3.158"),
+        ("2.942", "3.151"),
+        ("3.179", "3.143"),
+        ("2.810", "3.136"),
+        ("2.815", "3.128"),
+        ("2.848", "3.120"),
+        ("2.279", "3.111"),
+        ("2.310", "3.103"),
+        ("2.101", "3.094"),
+        ("2.067", "3.085"),
+    ];
+    for (i, (step, (statistic, critical))) in esd.steps.iter().zip(published).enumerate() {
+        // The handbook cuts its figures off after three decimals instead of rounding them.
+        worst.printed(step.statistic - 0.0005, statistic, format!("R{}", i + 1));
+        worst.printed(
+            step.critical - 0.0005,
+            critical,
+            format!("lambda {}", i + 1),
+        );
+    }
+    assert_eq!((esd.steps.len(), esd.outliers), (10, 3));
+    worst
+}
+
+fn means() -> Worst {
+    let mut worst = Worst::new();
+    let sleep = data("R_sleep_oneway");
+    let two = analysis_of_means(&slices(&sleep), 0.05).expect("not degenerate");
+    let p = anova(&slices(&sleep)).expect("not degenerate").test.p;
+    worst.relative(two.deviations[0].p_adjusted, p, "two sources");
+    let blood = data("dunnett1955_blood_counts");
+    let summaries: Vec<_> = blood.iter().map(|g| summarize(g)).collect();
+    let three = analysis_of_means_from(&summaries, 0.05).expect("not degenerate");
+    assert!(two.exact && !three.exact);
+    let modulus = Maximum::modulus(3).expect("within reach");
+    let critical = modulus.isf(0.05, 12.0).expect("within reach");
+    for d in &three.deviations {
+        let want = modulus
+            .sf(d.difference.abs() / d.std_error, 12.0)
+            .expect("within reach");
+        worst.relative(d.p_adjusted, want, format!("three, source {}", d.source));
+        worst.relative(d.high - d.low, 2.0 * critical * d.std_error, "interval");
+    }
+    worst
+}
+
+fn rest() -> Worst {
+    let mut worst = Worst::new();
+    let sleep = data("R_sleep_oneway");
+    let p = welch(&slices(&sleep)).expect("not degenerate").p;
+    let two = each_against_rest(&slices(&sleep), 0.05).expect("not degenerate");
+    // Holm doubles the smaller of two equal p.
+    worst.relative(two[0].p_adjusted, 2.0 * p, "two sources");
+    worst.relative(
+        two[0].difference,
+        -two[1].difference,
+        "two sources, difference",
+    );
+    let groups = data("R_PlantGrowth");
+    let summaries = brown_forsythe_summaries(&slices(&groups)).expect("not degenerate");
+    let by_summary = each_against_rest_from(&summaries, 0.05).expect("not degenerate");
+    let by_values = spread_against_rest(&slices(&groups), 0.05).expect("not degenerate");
+    for (a, b) in by_summary.iter().zip(&by_values) {
+        worst.relative(
+            a.p_adjusted,
+            b.p_adjusted,
+            format!("spread of source {}", a.source),
+        );
+        let own = &summaries[a.source];
+        let others: Vec<_> = (0..3)
+            .filter(|j| *j != a.source)
+            .map(|j| &summaries[j])
+            .collect();
+        let want = own.mean - 0.5 * (others[0].mean + others[1].mean);
+        worst.record(
+            ((a.difference - want) / a.std_error).abs(),
+            "difference, in its error",
+        );
+        let half = t::isf(0.05 / 6.0, a.df).expect("within reach") * a.std_error;
+        worst.relative(a.high - a.low, 2.0 * half, "interval");
+    }
+    worst
+}
+
+fn variances() -> Worst {
+    let mut worst = Worst::new();
+    let sleep = data("R_sleep_oneway");
+    let ratio = max_f_ratio(&slices(&sleep)).expect("not degenerate");
+    let want = 2.0 * f::sf(ratio.test.statistic, 9.0, 9.0).expect("within reach");
+    worst.relative(ratio.test.p, want, "largest over smallest of two");
+    let c = cochran_c(&slices(&sleep)).expect("not degenerate");
+    worst.relative(
+        c.statistic,
+        ratio.test.statistic / (1.0 + ratio.test.statistic),
+        "C of two",
+    );
+    // For two sources C and the ratio are one test.
+    worst.relative(c.p, want, "C of two, p");
+    worst.relative(
+        c.p,
+        2.0 * beta::sf(c.statistic, 4.5, 4.5).expect("within reach"),
+        "C, beta",
+    );
+    worst
+}
+
+fn blocks() -> Worst {
+    let mut worst = Worst::new();
+    let sleep = data("R_sleep_oneway");
+    let mut blocks = Blocks::new(2);
+    for (a, b) in sleep[0].iter().zip(&sleep[1]) {
+        blocks.push([Some(*a), Some(*b)]);
+    }
+    let result = blocked_anova(&blocks).expect("not degenerate");
+    // R's paired t.test of these data: t = -4.0621, df = 9, p = 0.002833.
+    let difference: Vec<f64> = sleep[0].iter().zip(&sleep[1]).map(|(a, b)| a - b).collect();
+    let summary = summarize(&difference);
+    let t_value = summary.mean / summary.std_error().expect("ten values");
+    let p = t::two_sided(t_value, 9.0).expect("within reach");
+    worst.relative(result.test.statistic, t_value * t_value, "F is t squared");
+    worst.relative(result.test.p, p, "p");
+    let pairs = result.tukey().expect("within reach");
+    worst.relative(pairs[0].p_adjusted, p, "Tukey of two");
+    assert!((t_value + 4.0621).abs() < 5e-5 && (p - 0.002833).abs() < 5e-7);
+    worst
+}
+
+fn letters() -> Worst {
+    let mut worst = Worst::new();
+    // Five sources in a row; those at least three apart differ.
+    let table = shared_letters(&[0, 1, 2, 3, 4], |a, b| a.abs_diff(b) >= 3);
+    let texts: Vec<String> = table.iter().map(|l| letters_text(l)).collect();
+    let agree = texts == ["a", "ab", "abc", "bc", "c"];
+    worst.record(if agree { 0.5 } else { 2.0 }, format!("{texts:?}"));
+    let values = [10.0, 11.0, 9.0, 10.5, 9.5, 30.0];
+    let found = median_outliers(&values, 3.5).expect("not degenerate");
+    // Median 10.25, MAD 0.75.
+    let agree = found.len() == 1 && (found[0].score - 19.75 / (0.75 * 1.4826022185)).abs() < 1e-8;
+    worst.record(if agree { 0.5 } else { 2.0 }, format!("{found:?}"));
+    worst
+}
