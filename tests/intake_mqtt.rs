@@ -19,6 +19,7 @@ use evenrow::settings::{
     Broker, Feed, PayloadForm, PlantSettings, Protocol, RecordingColumns, Settings, StoreSettings,
     TopicTemplate, WebSettings,
 };
+use tokio::io::{AsyncReadExt, AsyncWriteExt};
 use tokio::sync::mpsc;
 use tokio_util::sync::CancellationToken;
 
@@ -515,6 +516,72 @@ async fn a_private_authority_and_client_certificates() {
         .trouble("the wrong one of `mqtt://` and `mqtts://`")
         .await;
     intake.end().await;
+}
+
+/// What the stock broker never says, from one that follows a script: it takes the connection, refuses
+/// the first of the subscriptions, and ends the connection because another client came.
+#[tokio::test(flavor = "multi_thread")]
+async fn a_refused_subscription_and_a_session_taken_over_are_said() {
+    let listener = tokio::net::TcpListener::bind("127.0.0.1:0").await.unwrap();
+    let port = listener.local_addr().unwrap().port();
+    let script = tokio::spawn(async move {
+        let (mut socket, _) = listener.accept().await.unwrap();
+        let mut heard = [0; 1024];
+        // Packets of MQTT 5.0, sections 3.2, 3.9 and 3.14.
+        for said in [
+            &[0x20, 3, 0, 0, 0][..],
+            &[0x90, 4, 0, 1, 0, 0x87],
+            &[0xe0, 2, 0x8e, 0],
+        ] {
+            assert!(socket.read(&mut heard).await.unwrap() > 0);
+            socket.write_all(said).await.unwrap();
+        }
+        // Kept open until the client has read it.
+        socket.read(&mut heard).await.unwrap()
+    });
+    let mut intake = Intake::start(broker(port, Protocol::V5), Vec::new(), 16);
+    intake
+        .trouble("the broker refuses to deliver line/+ (not allowed)")
+        .await;
+    intake
+        .trouble("another client with the same id has taken over")
+        .await;
+    intake.end().await;
+    assert_eq!(script.await.unwrap(), 0);
+}
+
+/// QoS 0 cannot wait at the broker: what finds no room is refused and counted.
+#[tokio::test(flavor = "multi_thread")]
+async fn what_comes_faster_than_it_is_kept_is_counted() {
+    for protocol in BOTH {
+        let mosquitto = Mosquitto::start();
+        let broker = broker(mosquitto.port(), protocol);
+        let mut intake = Intake::start(broker, Vec::new(), 1);
+        assert_eq!(intake.condition().await, Condition::Well);
+        let lines: Vec<String> = (0..1500).map(|n: u32| n.to_string()).collect();
+        let mut command = std::process::Command::new("mosquitto_pub");
+        command.args(["-h", "127.0.0.1", "-p", &mosquitto.port().to_string()]);
+        command.args(["-t", "line/01", "-q", "0", "-l"]);
+        let mut child = command.stdin(std::process::Stdio::piped()).spawn().unwrap();
+        let text = format!("{}\n", lines.join("\n"));
+        std::io::Write::write_all(&mut child.stdin.take().unwrap(), text.as_bytes()).unwrap();
+        assert!(child.wait().unwrap().success());
+        mosquitto.publish("line/01", b"last", &[]);
+        tokio::time::sleep(Duration::from_secs(2)).await;
+        let (mut measured, mut refused) = (0, 0);
+        while measured + refused < 1501 {
+            let arrival = intake.arrival().await;
+            measured += arrival.measurements.len();
+            refused += arrival.refusals.len();
+            for refusal in arrival.refusals {
+                let last = refusal.reason == Reason::NotANumber && refusal.excerpt == "last";
+                assert!(last || refusal.reason == Reason::Overflow, "{refusal:?}");
+            }
+        }
+        assert!(measured >= 1000 && refused > 1, "{measured} {refused}");
+        intake.nothing_comes().await;
+        intake.end().await;
+    }
 }
 
 /// While the engine takes nothing, keep-alive goes on, QoS 1 waits at the broker and nothing is lost.

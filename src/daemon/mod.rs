@@ -221,3 +221,6 @@ fn tell_service_manager(state: sd_notify::NotifyState<'_>) {
         warn!("the service manager cannot be told that evenrow runs: {e}");
     }
 }
+
+#[cfg(test)]
+mod tests;

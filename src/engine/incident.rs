@@ -271,13 +271,10 @@ impl Incident {
         notice.text = words.text;
     }
 
+    /// Mean of the reference over the span that called: long enough to be sure, short enough for "now".
     fn even_mean(&self, about: &Surroundings) -> Option<f64> {
-        let look = about
-            .exam
-            .looks
-            .iter()
-            .rev()
-            .find(|l| !l.sources.is_empty())?;
+        let looks = about.exam.looks.iter().filter(|l| !l.sources.is_empty());
+        let look = looks.min_by_key(|l| l.span.abs_diff(self.notice.span))?;
         let even = look
             .sources
             .iter()

@@ -60,7 +60,7 @@ impl Watched {
         changed.extend(self.begin(plant, calls, &exam, now, interval_us));
         let looks: Vec<Arc<Look>> = exam.looks.into_iter().map(Arc::new).collect();
         self.state.looks.clone_from(&looks);
-        self.state.incidents.retain(|i| i.notice.state.is_open());
+        // An incident that is over goes when its last word was sent, not before.
         let keep_whole = self.keep_whole(&looks, now, !changed.is_empty());
         Looked {
             looks,

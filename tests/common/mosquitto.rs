@@ -51,7 +51,7 @@ impl Mosquitto {
         let at = folder.path().display().to_string();
         let config = format!(
             "per_listener_settings false\nuser root\nlog_dest stderr\npersistence true\n\
-             persistence_location {at}/\nautosave_interval 1\nautosave_on_changes true\n\
+             persistence_location {at}/\nautosave_interval 1\nlog_type error\nlog_type warning\nlog_type notice\n\
              max_queued_messages 1000000\nlistener {port} 127.0.0.1\n{}\n",
             settings.replace("{folder}", &at)
         );

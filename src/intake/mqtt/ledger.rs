@@ -61,6 +61,11 @@ impl Ledger {
         }
     }
 
+    /// Whether there was a connection before.
+    pub(super) fn has_connected(&self) -> bool {
+        self.epoch > 0
+    }
+
     /// A connection begins; without a session nothing of the earlier ones will be redelivered.
     pub(super) fn connected(&mut self, session_present: bool) {
         self.epoch += 1;

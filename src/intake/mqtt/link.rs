@@ -13,7 +13,7 @@ use crate::settings::connection::{
 };
 use crate::settings::{Broker, Protocol};
 
-/// Requests that wait to be sent besides acknowledgements: one subscription, one disconnection.
+/// Requests that wait to be sent besides acknowledgements: two subscriptions, one disconnection.
 const OTHER_REQUESTS: usize = 8;
 /// MQTT 3.1.1 has no receive maximum; brokers keep 20 to a few hundred messages under way.
 const LEAST_ACKNOWLEDGEMENTS: usize = 1024;
@@ -59,6 +59,13 @@ pub(super) enum Link {
 pub(super) enum Speaker {
     V5(v5::AsyncClient),
     V4(rumqttc::AsyncClient),
+}
+
+/// Whether a subscription asks for what was published before it.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub(super) enum Retained {
+    Wanted,
+    Unwanted,
 }
 
 /// The queue of requests is full; try again when some have been sent.
@@ -124,12 +131,16 @@ impl Speaker {
         }
     }
 
-    /// Subscribes to all filters at once; retained messages are not wanted.
-    pub(super) fn subscribe(&self, filters: &[String]) -> Result<(), Full> {
+    /// Subscribes to all filters at once. Whether retained messages come at once is for MQTT 5 to say;
+    /// with 3.1.1 they always do.
+    pub(super) fn subscribe(&self, filters: &[String], retained: Retained) -> Result<(), Full> {
         match self {
             Self::V5(client) => {
                 let filter = |path: &String| five::Filter {
-                    retain_forward_rule: five::RetainForwardRule::Never,
+                    retain_forward_rule: match retained {
+                        Retained::Wanted => five::RetainForwardRule::OnEverySubscribe,
+                        Retained::Unwanted => five::RetainForwardRule::Never,
+                    },
                     ..five::Filter::new(path, v5::mqttbytes::QoS::AtLeastOnce)
                 };
                 let filters = filters.iter().map(filter);

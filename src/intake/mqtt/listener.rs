@@ -16,8 +16,9 @@ use crate::model::Reason;
 use crate::settings::Settings;
 use crate::settings::connection::{Backoff, Secrets};
 
+use super::drops::{self, Drops};
 use super::ledger::{Delivery, Ledger};
-use super::link::{Heard, Link, Message, Speaker};
+use super::link::{Heard, Link, Message, Retained, Speaker};
 use super::queue::Queue;
 use super::{FromBroker, IntakeError};
 
@@ -34,6 +35,7 @@ pub(super) struct Listener {
     decoder: Decoder,
     ledger: Ledger,
     queue: Queue,
+    drops: Drops,
     /// Packet ids to acknowledge on this connection that found the requests full.
     unsent: VecDeque<u16>,
     /// Set while there is a connection or one is being made.
@@ -97,6 +99,7 @@ impl Listener {
             decoder: Decoder::new(settings.feeds.clone(), settings.broker.most_bytes),
             ledger: Ledger::new(already),
             queue: Queue::new(settings.broker.receive_maximum),
+            drops: Drops::default(),
             settings,
             unsent: VecDeque::new(),
             speaker: None,
@@ -115,6 +118,7 @@ impl Listener {
             let end = self.connection(&mut stage).await;
             self.speaker = None;
             self.unsent.clear();
+            self.drops.disconnected();
             let stop = match end {
                 End::Stop(stop) => Some(stop),
                 End::Lost(why) => {
@@ -171,9 +175,16 @@ impl Listener {
                     self.connected(session_present)?;
                     *stage = Stage::Subscribing(Stopwatch::start());
                 }
+                // Asked for second, so answered second.
+                Heard::Subscribed(_) if matches!(stage, Stage::Listening(_)) => {
+                    self.drops.answered();
+                }
                 Heard::Subscribed(faults) => {
                     *stage = Stage::Listening(Stopwatch::start());
                     self.subscribed(&faults);
+                }
+                Heard::Message(message) if message.topic == drops::TOPIC => {
+                    self.count_dropped(&message);
                 }
                 Heard::Message(message) => self.message(&message),
                 Heard::Disconnected | Heard::Nothing => {}
@@ -189,6 +200,12 @@ impl Listener {
 
     /// Subscribes, on every connection.
     fn connected(&mut self, session_present: bool) -> Result<(), End> {
+        if !session_present && self.ledger.has_connected() {
+            tracing::warn!(
+                broker = self.place,
+                "the broker kept no session; what was published since the last connection is lost"
+            );
+        }
         self.ledger.connected(session_present);
         tracing::info!(
             broker = self.place,
@@ -199,7 +216,7 @@ impl Listener {
         let sent = self
             .speaker
             .as_ref()
-            .map(|speaker| speaker.subscribe(filters));
+            .map(|speaker| speaker.subscribe(filters, Retained::Unwanted));
         match sent {
             Some(Ok(())) => Ok(()),
             _ => Err(End::Lost(format!(
@@ -222,6 +239,23 @@ impl Listener {
                 "the broker refuses to deliver {}; check its access list",
                 refused.join(", ")
             ));
+        }
+        if let Some(speaker) = self.speaker.as_ref().filter(|_| self.drops.wants()) {
+            // Without room for it now, the count is watched from the next connection on.
+            let _ = speaker.subscribe(&[drops::TOPIC.to_owned()], Retained::Wanted);
+        }
+    }
+
+    /// Says when the broker has dropped messages. Under a filter of ours that matches the topic too
+    /// it may come with QoS 1; then it is acknowledged at once, as there is nothing to keep.
+    fn count_dropped(&mut self, message: &Message) {
+        self.unsent.extend(message.packet);
+        if let Some(messages) = self.drops.heard(&message.payload) {
+            tracing::warn!(
+                broker = self.place,
+                messages,
+                "the broker has dropped messages that a slow or absent client had not taken; measurements may be among them; raise max_queued_messages in its configuration"
+            );
         }
     }
 

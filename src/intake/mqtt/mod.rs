@@ -7,6 +7,7 @@
 //! | `link` | both versions of the protocol in one set of words |
 //! | `ledger` | what is in flight; redeliveries told from fresh messages |
 //! | `queue` | arrivals that wait for the engine, bounded |
+//! | `drops` | the broker's own count of messages that it dropped |
 //!
 //! What must hold:
 //! - The task that polls the connection never waits for anything else, so that keep-alive goes on
@@ -20,6 +21,7 @@
 //! Deliberately absent: publishing and the last will (a second connection does that), and any
 //! judgement on what was measured.
 
+mod drops;
 mod ledger;
 mod link;
 mod listener;
