@@ -104,8 +104,12 @@ false_calls = "1 per 90 days"
 
     /// Starts the daemon and waits until it says that it lives.
     pub fn start(&self) -> Daemon {
-        let mut command = Command::new(env!("CARGO_BIN_EXE_evenrow"));
+        // A file that may not grow must be an error to the program and not its end, as on a full
+        // disk; see `limit_files`.
+        let ignoring = "trap '' XFSZ; exec \"$0\" \"$@\"";
+        let mut command = Command::new("bash");
         command
+            .args(["-c", ignoring, env!("CARGO_BIN_EXE_evenrow")])
             .args(["watch", "--config"])
             .arg(self.path("evenrow.toml"));
         command.env_remove("RUST_LOG");

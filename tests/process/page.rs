@@ -72,6 +72,7 @@ fn without_scripts_a_person_reads_signs_in_and_acknowledges() {
     wait_for(SOON, "the way back", || {
         browser.address().ends_with("/banks/filler-2").then_some(())
     });
+    browser.press("details.act summary");
     browser.type_into("input[name=by]", "Ana");
     browser.press("form[action*=acknowledge] button");
     wait_for(SOON, "the notice to be acknowledged", || {
