@@ -168,11 +168,11 @@ fn a_disk_without_room_is_an_error_and_loses_nothing() {
     let said = String::from_utf8_lossy(&output.stdout);
     assert!(output.status.success(), "the child broke off: {said}");
     assert!(said.contains("failed the "), "no commit failed: {said}");
-    let numbers = said
+    let mut numbers = said
         .lines()
         .filter_map(|l| l.strip_prefix("kept ")?.parse().ok());
     let kept = numbers
-        .last()
+        .next_back()
         .expect("some were kept before the disk was full");
     check(folder.path(), kept);
 }

@@ -50,6 +50,7 @@ pub enum Degenerate {
     Distribution(OutOfReach),
 }
 
+// By hand: a derive would take the field `source` for the error's cause.
 impl fmt::Display for Degenerate {
     fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
         match self {

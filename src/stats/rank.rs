@@ -35,12 +35,15 @@ pub fn kruskal_wallis(groups: &[&[f64]]) -> Result<Test, Degenerate> {
 /// Ranks are taken within each block. Blocks with a missing cell are left out.
 ///
 /// # Errors
-/// [`Degenerate`] for fewer than two sources, fewer than two complete blocks, and all values equal
+/// [`Degenerate`] for fewer than two sources, fewer than two complete blocks, infinite values, and all values equal
 /// within every block.
 pub fn friedman(blocks: &Blocks) -> Result<Test, Degenerate> {
     let k = blocks.sources();
     if k < 2 {
         return Err(Degenerate::FewerThanTwoSources);
+    }
+    if blocks.rows().flatten().any(|v| v.is_infinite()) {
+        return Err(Degenerate::NotFinite);
     }
     let middle = 0.5 * (k as f64 + 1.0);
     let mut sums = vec![0.0; k];

@@ -45,14 +45,14 @@ pub fn lag_one(series: &[&[f64]]) -> Result<LagOne, Degenerate> {
     check_finite(series)?;
     let (mut products, mut squares) = (0.0, 0.0);
     for values in series {
-        let origin = values[0];
-        let centred: Vec<f64> = values.iter().map(|v| v - origin).collect();
-        let mean = summarize(&centred).mean;
-        squares += centred.iter().map(|v| (v - mean).powi(2)).sum::<f64>();
-        products += centred
-            .windows(2)
-            .map(|w| (w[0] - mean) * (w[1] - mean))
-            .sum::<f64>();
+        let centred = match centre(values) {
+            Ok(centred) => centred,
+            // A series that stands still says nothing about neighbours.
+            Err(Degenerate::AllEqual) => continue,
+            Err(why) => return Err(why),
+        };
+        squares += centred.iter().map(|d| d * d).sum::<f64>();
+        products += centred.windows(2).map(|w| w[0] * w[1]).sum::<f64>();
     }
     if squares == 0.0 {
         return Err(Degenerate::AllEqual);

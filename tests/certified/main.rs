@@ -6,6 +6,7 @@
 
 mod coverage;
 mod fixtures;
+mod followups;
 mod libraries;
 mod maxima;
 mod planning;
@@ -23,6 +24,7 @@ fn main() -> ExitCode {
     maxima::rows(&mut rows);
     libraries::rows(&mut rows);
     worked::rows(&mut rows);
+    followups::rows(&mut rows);
     planning::rows(&mut rows);
     let mut faults = Vec::new();
     println!("{}", table::HEADER);

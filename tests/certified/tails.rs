@@ -9,6 +9,73 @@ pub fn rows(out: &mut Vec<Row>) {
     quantiles(out);
     there_and_back(out);
     noncentral(out);
+    lower_complements(out);
+    other_crate(out);
+}
+
+/// Lower tails that are defined as complements: absolutely.
+fn lower_complements(out: &mut Vec<Row>) {
+    use evenrow::stats::dist::maximum::Maximum;
+    use evenrow::stats::dist::{maximum_f_ratio, studentized_range};
+    let mut worst = Worst::new();
+    let one = Maximum::modulus(1).expect("within reach");
+    for (x, df) in [(0.5, 3.0), (1.7, 12.0), (4.0, 200.0)] {
+        // Two means, one variable, two variances: Student's t and F.
+        let inside = 1.0 - t::two_sided(x, df).expect("within reach");
+        let q = studentized_range::cdf(x * 2.0_f64.sqrt(), 2, df).expect("within reach");
+        worst.record((q - inside).abs(), format!("range {x}"));
+        worst.record(
+            (one.cdf(x, df).expect("within reach") - inside).abs(),
+            format!("modulus {x}"),
+        );
+        let ratio = maximum_f_ratio::cdf(1.0 + x, &[df, df]).expect("within reach");
+        let want = 1.0 - 2.0 * f::sf(1.0 + x, df, df).expect("within reach");
+        worst.record((ratio - want).abs(), format!("ratio {x}"));
+    }
+    out.push(Row {
+        statistic: "lower tails of studentized range, maximum, variance ratio (absolute)",
+        covers: &[
+            "studentized_range::cdf",
+            "maximum::cdf",
+            "maximum_f_ratio::cdf",
+        ],
+        source: "Student's t and F for two sources",
+        allowed: 5e-15,
+        worst,
+    });
+}
+
+/// Where the general-purpose crate keeps its digits, near the middle, ours agree with it.
+fn other_crate(out: &mut Vec<Row>) {
+    use statrs::distribution::{ChiSquared, ContinuousCDF, FisherSnedecor, StudentsT};
+    let mut worst = Worst::new();
+    for (df, x) in [(3.0, 2.0), (12.0, 9.0), (40.0, 50.0)] {
+        let chi = ChiSquared::new(df).expect("valid").sf(x);
+        worst.relative(
+            chi_square::sf(x, df).expect("within reach"),
+            chi,
+            format!("chi-square {df}"),
+        );
+        let student = StudentsT::new(0.0, 1.0, df).expect("valid").sf(x / df);
+        worst.relative(
+            t::sf(x / df, df).expect("within reach"),
+            student,
+            format!("t {df}"),
+        );
+        let fisher = FisherSnedecor::new(4.0, df).expect("valid").sf(x / df);
+        worst.relative(
+            f::sf(x / df, 4.0, df).expect("within reach"),
+            fisher,
+            format!("F {df}"),
+        );
+    }
+    out.push(Row {
+        statistic: "chi-square, t and F upper tails near the middle",
+        covers: &[],
+        source: "statrs 0.19",
+        allowed: 1e-13,
+        worst,
+    });
 }
 
 fn upper_tails(out: &mut Vec<Row>) {
@@ -172,7 +239,7 @@ fn there_and_back(out: &mut Vec<Row>) {
 }
 
 fn noncentral(out: &mut Vec<Row>) {
-    let (mut upper, mut lower) = (Worst::new(), Worst::new());
+    let (mut upper, mut lower, mut back) = (Worst::new(), Worst::new(), Worst::new());
     for row in cells("precise.csv", 0, ',')
         .iter()
         .filter(|r| r[0] == "noncentral_f")
@@ -182,6 +249,10 @@ fn noncentral(out: &mut Vec<Row>) {
         let got = noncentral_f::sf(a[0], a[1], a[2], a[3]).expect("within reach");
         upper.relative(got, want, &row[1]);
         let below = noncentral_f::cdf(a[0], a[1], a[2], a[3]).expect("within reach");
+        if want < 0.999 {
+            let value = noncentral_f::isf(want, a[1], a[2], a[3]).expect("within reach");
+            back.relative(value, a[0], &row[1]);
+        }
         if want < 0.9 {
             lower.relative(below, 1.0 - want, &row[1]);
         }
@@ -199,5 +270,12 @@ fn noncentral(out: &mut Vec<Row>) {
         source: "mpmath, 40 digits",
         allowed: 1e-13,
         worst: lower,
+    });
+    out.push(Row {
+        statistic: "noncentral F quantile",
+        covers: &["noncentral_f::isf"],
+        source: "the same rows, inverted",
+        allowed: 5e-14,
+        worst: back,
     });
 }

@@ -92,6 +92,7 @@ impl Conductor {
     }
 
     fn give(&mut self, event: Event, now: Time, ledger: &mut Ledger, hear: Hear) -> io::Result<()> {
+        self.given = self.given.max(now);
         for effect in self.engine.handle(event, now) {
             if let Some(said) = said(effect) {
                 ledger.said(&said);

@@ -2,16 +2,16 @@
 
 use super::kernel::{BetaPoint, Tails};
 use super::root::{Side, newton};
-use super::{OutOfReach, probability};
+use super::{DEGREES, OutOfReach, probability};
 
 fn tails(x: f64, a: f64, b: f64) -> Result<Tails, OutOfReach> {
     if x.is_nan() || a.is_nan() || b.is_nan() {
         return Err(OutOfReach::NotANumber);
     }
-    let sane = |shape: f64| shape > 0.0 && shape.is_finite();
+    let sane = |shape: f64| DEGREES.contains(&(2.0 * shape));
     if !sane(a) || !sane(b) {
         return Err(OutOfReach::Argument(
-            "beta shapes must be positive and finite",
+            "beta shapes must lie between 0.0005 and 5e11",
         ));
     }
     if x <= 0.0 {

@@ -58,6 +58,14 @@ pub fn sf(ratio: f64, dfs: &[f64]) -> Result<f64, OutOfReach> {
     Err(OutOfReach::NotSettled("the maximum F ratio"))
 }
 
+/// Lower tail P(ratio <= r) = 1 - [`sf`], with an absolute error of at most 1e-13.
+///
+/// # Errors
+/// As [`sf`].
+pub fn cdf(ratio: f64, dfs: &[f64]) -> Result<f64, OutOfReach> {
+    Ok(1.0 - sf(ratio, dfs)?)
+}
+
 /// The ratio whose upper tail is `p`.
 ///
 /// # Errors

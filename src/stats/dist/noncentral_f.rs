@@ -6,7 +6,8 @@
 //! which nothing cancels.
 
 use super::kernel::BetaPoint;
-use super::{OutOfReach, degrees, f};
+use super::root::upper_quantile;
+use super::{OutOfReach, degrees, f, probability};
 
 const MOST_TERMS: f64 = 2e6;
 
@@ -85,6 +86,25 @@ pub fn cdf(value: f64, d1: f64, d2: f64, lambda: f64) -> Result<f64, OutOfReach>
         sum += ln_poisson[j].exp() * tail;
     }
     Ok(sum.min(1.0))
+}
+
+/// The f whose upper tail is `p`. Relative error at most 1e-9.
+///
+/// # Errors
+/// [`OutOfReach`] unless 0 < p < 1, as [`sf`], and for a quantile above 1e12.
+pub fn isf(p: f64, d1: f64, d2: f64, lambda: f64) -> Result<f64, OutOfReach> {
+    let p = probability(p)?;
+    check(1.0, d1, d2, lambda)?;
+    // More noncentrality moves the tail up: the central quantile lies below.
+    let low = f::isf(p, d1, d2)?.max(1e-12);
+    let mut high = 2.0 * low.max(1.0 + lambda / d1);
+    while sf(high, d1, d2, lambda)? > p {
+        high *= 2.0;
+        if high > 1e12 {
+            return Err(OutOfReach::Argument("a noncentral quantile above 1e12"));
+        }
+    }
+    upper_quantile(p, low * (1.0 - 1e-9), high, |f| sf(f, d1, d2, lambda))
 }
 
 fn check(value: f64, d1: f64, d2: f64, lambda: f64) -> Result<(), OutOfReach> {

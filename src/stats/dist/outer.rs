@@ -17,10 +17,10 @@ use std::sync::LazyLock;
 
 /// Step of the trapezoid rule in widths of the peak. Error of a normal peak: 2 exp(-2 pi^2/step^2).
 const STEP: f64 = 0.55;
-/// Below this df one grid serves all df. Its step by the number of variables: 0.06 still gives 8e-13
-/// at k 200, 7e-9 at k 1000.
+/// Below this df one grid serves all df. Its step by the number of variables: the more, the sharper
+/// the bend (0.068 gives 4e-13 at k 60, 0.06 gives 8e-13 at k 200 and 7e-9 at k 1000).
 const BROAD_DF: f64 = 40.0;
-const BROAD_STEPS: [(usize, f64); 3] = [(100, 0.06), (250, 0.05), (usize::MAX, 0.033)];
+const BROAD_STEPS: [(usize, f64); 3] = [(64, 0.064), (250, 0.05), (usize::MAX, 0.033)];
 /// Grids up to this df, each for a range of a factor sqrt(2); above, nodes are found in passing.
 const GRIDS: usize = 9;
 const GRID_DF: f64 = 640.0;
@@ -83,17 +83,22 @@ static NARROW: LazyLock<Vec<Grid>> = LazyLock::new(|| {
     (1..=GRIDS).map(grid).collect()
 });
 
-/// y = t - 0.004 exp(-3t), which reaches y = -40 at t = -3.07.
-static BROAD: LazyLock<[Grid; 3]> = LazyLock::new(|| {
-    BROAD_STEPS.map(|(_, step)| Grid::new(step, 3.1, |t| 0.004 * (-3.0 * t).exp()))
+/// y = t - a exp(-3t), which reaches y = -40 near t = -3. Below `SMALL_DF` w0 is below 2.9, the bend of
+/// R lies to the right of y = 0, and the wide steps may begin nearer.
+static BROAD: LazyLock<[[Grid; 3]; 2]> = LazyLock::new(|| {
+    [0.08, 0.004]
+        .map(|a| BROAD_STEPS.map(|(_, step)| Grid::new(step, 3.1, |t| a * (-3.0 * t).exp())))
 });
+
+const SMALL_DF: f64 = 4.0;
 
 fn grid_for(variables: usize, df: f64) -> &'static Grid {
     if df < BROAD_DF {
-        return &BROAD[BROAD_STEPS
+        let step = BROAD_STEPS
             .iter()
             .take_while(|(most, _)| variables > *most)
-            .count()];
+            .count();
+        return &BROAD[usize::from(df >= SMALL_DF)][step];
     }
     // A sharp bend wants the finer grid of a larger df.
     let finer = if variables > BROAD_STEPS[1].0 { 3 } else { 0 };

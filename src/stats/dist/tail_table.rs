@@ -6,6 +6,7 @@
 
 use std::array::from_fn;
 use std::f64::consts::PI;
+use std::sync::{LazyLock, OnceLock};
 
 /// Up to here pieces are narrow, for the bend where R leaves 1.
 const NARROW_TO: f64 = 14.0;
@@ -13,29 +14,43 @@ const NARROW: f64 = 0.5;
 const NARROW_PIECES: usize = 28;
 /// Beyond, ln(R exp(w^2/4)) bends ever more slowly. At 60 R is below the smallest `f64`.
 const WIDE: [f64; 6] = [14.0, 18.0, 24.0, 32.0, 44.0, 60.0];
+const PIECES: usize = NARROW_PIECES + WIDE.len() - 1;
 /// Coefficients per piece.
 const TERMS: usize = 14;
 
-/// ln(R(w) exp(w^2/4)) in polynomial pieces.
+/// ln(R(w) exp(w^2/4)) in polynomial pieces, each fitted when it is first asked for.
+///
+/// A piece is a pure function of the table, so it does not matter which caller fits it.
 pub(super) struct TailTable {
-    pieces: Vec<[f64; TERMS]>,
+    pieces: [OnceLock<[f64; TERMS]>; PIECES],
+    ln_scaled: Box<LnScaled>,
     /// Of how many variables R is the maximum: the more, the sharper R bends away from 1.
     pub variables: usize,
 }
 
+type LnScaled = dyn Fn(f64) -> f64 + Send + Sync;
+
 impl TailTable {
     /// Tabulates `ln_scaled`, the function w -> ln(R(w) exp(w^2/4)) of a maximum of `variables`.
-    pub fn build(variables: usize, ln_scaled: impl Fn(f64) -> f64) -> Self {
-        let fit = Fit::new();
-        let narrow = (0..NARROW_PIECES).map(|i| (i as f64 * NARROW, NARROW));
-        let wide = WIDE.windows(2).map(|w| (w[0], w[1] - w[0]));
-        let pieces = narrow
-            .chain(wide)
-            .map(|(from, width)| fit.piece(&ln_scaled, from, width));
+    pub fn build(variables: usize, ln_scaled: impl Fn(f64) -> f64 + Send + Sync + 'static) -> Self {
         Self {
-            pieces: pieces.collect(),
+            pieces: [const { OnceLock::new() }; PIECES],
+            ln_scaled: Box::new(ln_scaled),
             variables,
         }
+    }
+
+    #[inline]
+    fn piece(&self, index: usize) -> &[f64; TERMS] {
+        self.pieces[index].get_or_init(|| {
+            let (from, width) = if index < NARROW_PIECES {
+                (index as f64 * NARROW, NARROW)
+            } else {
+                let from = WIDE[index - NARROW_PIECES];
+                (from, WIDE[index - NARROW_PIECES + 1] - from)
+            };
+            FIT.piece(&self.ln_scaled, from, width)
+        })
     }
 
     /// ln(R(w) exp(w^2/4)) for w >= 0; beyond 60 the value there, where R is 0 in any case.
@@ -44,7 +59,7 @@ impl TailTable {
         if w < NARROW_TO {
             let place = w * (1.0 / NARROW);
             let whole = place as usize;
-            polynomial(&self.pieces[whole], 2.0 * (place - whole as f64) - 1.0)
+            polynomial(self.piece(whole), 2.0 * (place - whole as f64) - 1.0)
         } else {
             self.beyond(w.min(WIDE[5]))
         }
@@ -54,7 +69,7 @@ impl TailTable {
     fn beyond(&self, w: f64) -> f64 {
         let i = (1..5).find(|&i| w < WIDE[i]).unwrap_or(5);
         let x = 2.0 * (w - WIDE[i - 1]) / (WIDE[i] - WIDE[i - 1]) - 1.0;
-        polynomial(&self.pieces[NARROW_PIECES + i - 1], x)
+        polynomial(self.piece(NARROW_PIECES + i - 1), x)
     }
 
     /// R(w) itself.
@@ -65,6 +80,8 @@ impl TailTable {
         (self.ln_scaled(w) - 0.25 * w * w).exp().min(1.0)
     }
 }
+
+static FIT: LazyLock<Fit> = LazyLock::new(Fit::new);
 
 /// From values at Chebyshev nodes to the coefficients of powers.
 struct Fit {

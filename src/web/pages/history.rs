@@ -18,7 +18,7 @@ use super::looks::{Shown, span_links};
 /// How far back the pictures go: a shift.
 pub const BACK_US: i64 = 8 * 3600 * US_PER_S;
 /// A young bank's picture covers at least this, so that it does not stretch a minute over the page.
-const LEAST_US: i64 = 20 * 60 * US_PER_S;
+const LEAST_US: i64 = 6 * 60 * US_PER_S;
 /// Most cells of the table beside the time band; beyond it every second, third … column is given.
 const MOST_CELLS: usize = 2400;
 

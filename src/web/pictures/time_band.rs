@@ -197,7 +197,7 @@ pub fn legend(full: f64, unit: &str, figure: impl Fn(f64) -> String) -> Markup {
                 @for (at, colour) in vik::STEPS.iter().enumerate() {
                     rect x=(at * 12) y="0" width="12" height="12" fill=(colour) {}
                 }
-                @for (share, anchor) in [(0.0, "start"), (0.25, "middle"), (0.5, "middle"), (0.75, "middle"), (1.0, "end")] {
+                @for (share, anchor) in [(0.0, "start"), (0.5, "middle"), (1.0, "end")] {
                     text class="tick" x=(px(share * steps as f64 * 12.0)) y="28" text-anchor=(anchor) {
                         (figure((share * 2.0 - 1.0) * full))
                     }

@@ -21,7 +21,7 @@ pub(super) fn table(k: usize) -> TailTable {
         4 => TailTable::build(k, |w| four(w / SQRT_2).ln()),
         _ => {
             let faddeeva = Faddeeva::new();
-            TailTable::build(k, |w| many(k, w / SQRT_2, &faddeeva).ln())
+            TailTable::build(k, move |w| many(k, w / SQRT_2, &faddeeva).ln())
         }
     }
 }

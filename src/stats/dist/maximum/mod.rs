@@ -17,6 +17,7 @@ use super::tail_table::TailTable;
 use super::{OutOfReach, degrees, normal, outer, probability, t};
 use control::Control;
 use std::f64::consts::SQRT_2;
+use std::sync::Arc;
 
 /// Which deviations count.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
@@ -35,7 +36,7 @@ pub struct Maximum {
     tail: TailTable,
     variables: usize,
     /// For negative arguments of a one-sided maximum.
-    control: Option<Control>,
+    control: Option<Arc<Control>>,
 }
 
 impl Maximum {
@@ -48,8 +49,9 @@ impl Maximum {
     /// 2500 times the control's.
     pub fn dunnett(control: usize, others: &[usize], side: Side) -> Result<Self, OutOfReach> {
         within_reach(others.len())?;
-        let control = Control::new(control, others, side)?;
-        let tail = TailTable::build(others.len(), |w| control.ln_scaled_tail(w / SQRT_2));
+        let control = Arc::new(Control::new(control, others, side)?);
+        let own = Arc::clone(&control);
+        let tail = TailTable::build(others.len(), move |w| own.ln_scaled_tail(w / SQRT_2));
         let control = (side == Side::Upper).then_some(control);
         Ok(Self {
             tail,
@@ -87,7 +89,7 @@ impl Maximum {
     pub fn modulus(k: usize) -> Result<Self, OutOfReach> {
         within_reach(k)?;
         let count = k as f64;
-        let tail = TailTable::build(k, |w| {
+        let tail = TailTable::build(k, move |w| {
             let one = 2.0 * normal::sf(w / SQRT_2);
             if one < 1e-30 {
                 return (2.0 * count * normal::scaled_sf(w / SQRT_2)).ln();
@@ -124,6 +126,14 @@ impl Maximum {
             return Ok(self.tail.tail(t * SQRT_2));
         }
         Ok(outer::tail(&self.tail, t * SQRT_2, df).min(1.0))
+    }
+
+    /// Lower tail P(maximum <= t) = 1 - [`Self::sf`], with an absolute error of at most 1e-12.
+    ///
+    /// # Errors
+    /// As [`Self::sf`].
+    pub fn cdf(&self, t: f64, df: f64) -> Result<f64, OutOfReach> {
+        Ok(1.0 - self.sf(t, df)?)
     }
 
     /// The t whose upper tail is `p`.

@@ -54,6 +54,15 @@ pub fn sf(q: f64, k: usize, df: f64) -> Result<f64, OutOfReach> {
     table(k)?.sf(q, df)
 }
 
+/// Lower tail P(Q <= q) = 1 - [`sf`]. Absolute error at most 1e-13; a lower tail that small has lost
+/// its digits.
+///
+/// # Errors
+/// As [`sf`].
+pub fn cdf(q: f64, k: usize, df: f64) -> Result<f64, OutOfReach> {
+    Ok(1.0 - sf(q, k, df)?)
+}
+
 /// The q whose upper tail is `p`. Relative error at most 1e-12.
 ///
 /// # Errors

@@ -27,7 +27,7 @@ impl RangeTable {
         let lattice = Lattice::new(k);
         Self {
             k,
-            tail: TailTable::build(k, |w| lattice.ln_scaled_tail(w)),
+            tail: TailTable::build(k, move |w| lattice.ln_scaled_tail(w)),
         }
     }
 
