@@ -49,7 +49,9 @@ fn time(runs: usize, mut work: impl FnMut()) -> (f64, f64) {
         best = best.min(start.elapsed().as_secs_f64());
     }
     let whole = wall.elapsed().as_secs_f64();
-    let spent = processor_seconds().zip(processor).map_or(whole, |(after, before)| after - before);
+    let spent = processor_seconds()
+        .zip(processor)
+        .map_or(whole, |(after, before)| after - before);
     (spent / runs as f64, best)
 }
 
