@@ -110,7 +110,8 @@ fn rubbish_of_every_kind_is_refused_by_reason_and_the_daemon_goes_on() {
     for refusal in &refusals {
         let text = |key: &str| refusal[key].as_str().expect(key).to_owned();
         // What the window refuses has left its topic behind and is told by its bank.
-        let by_window = ["double", "too_old", "too_far_ahead"].contains(&text("reason").as_str());
+        let by_window = ["double", "too_old", "too_far_ahead", "unknown_source"]
+            .contains(&text("reason").as_str());
         let place = if by_window { "filler-2" } else { TOPIC };
         assert_eq!(text("topic"), place, "{refusal}");
         assert!(!text("detail").is_empty(), "{refusal}");

@@ -182,6 +182,7 @@ fn clocks_are_read_in_one_file() {
         reads,
     );
     good("src/clock.rs", "fn f() { SystemTime::now(); }");
+    good("src/web/mod.rs", "fn f() { sample::now(); }");
     good("src/daemon/run.rs", "fn f(clock: Clock) { clock.now(); }");
     good(
         "src/engine/mod.rs",
