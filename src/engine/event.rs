@@ -85,6 +85,8 @@ pub enum Condition {
     Well,
     /// It does not; what is wrong and what to do, for people.
     Trouble(String),
+    /// It works, after something that people should know of.
+    Noted(String),
 }
 
 /// What a person can ask for.
