@@ -146,6 +146,7 @@ pub(super) fn studentized_pair(
     df: f64,
 ) -> Result<Pair, Degenerate> {
     let q = SQRT_2 * difference.abs() / std_error;
+    // Welch's df is at least 1; rounding may leave a hair less.
     let p_adjusted = table.sf(q, df.max(1.0))?;
     Ok(Pair {
         a,
