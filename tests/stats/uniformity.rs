@@ -156,7 +156,10 @@ fn cochran_keeps_its_level_closely_in_the_tail() {
         below += f64::from(cochran_c(&slices).unwrap().p < 0.05) / CASES as f64;
     }
     // At 5 % C is beyond one half for four sources of six: there the bound is exact.
-    assert!((below - 0.05).abs() < 4.0 * (0.05_f64 * 0.95 / CASES as f64).sqrt(), "{below}");
+    assert!(
+        (below - 0.05).abs() < 4.0 * (0.05_f64 * 0.95 / CASES as f64).sqrt(),
+        "{below}"
+    );
 }
 
 #[test]
