@@ -226,7 +226,10 @@ mod tests {
             let file = scene.configure(address(1_883), address(7_310), speed);
             let read = crate::settings::load(&file.expect("a file"), []);
             if let Err(faults) = read {
-                panic!("speed {speed}: {}", faults.report(crate::settings::Ink::Plain));
+                panic!(
+                    "speed {speed}: {}",
+                    faults.report(crate::settings::Ink::Plain)
+                );
             }
         }
     }
