@@ -205,7 +205,12 @@ impl House {
         if !receipts.is_empty() {
             let _ = self.ways.receipts.send(receipts).await;
         }
-        self.publish();
+        if todo.answers.is_empty() {
+            self.publish();
+        } else {
+            // Whoever is answered and looks again sees what the answer said.
+            self.publish_now();
+        }
         for (ticket, outcome) in todo.answers {
             if let Some(reply) = self.replies.remove(&ticket) {
                 // Whoever asked may have left.
@@ -295,7 +300,7 @@ impl House {
     fn resting(&self) -> Condition {
         match &self.aside {
             None => Condition::Well,
-            Some((SetAside { path, why }, _)) => Condition::Trouble(format!(
+            Some((SetAside { path, why }, _)) => Condition::Noted(format!(
                 "It was found damaged at the start ({why}) and set aside as {}. evenrow goes on \
                  with a fresh one: windows and notices began anew.",
                 path.display()

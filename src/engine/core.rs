@@ -108,11 +108,17 @@ impl Engine {
         Ok(())
     }
 
-    /// Goes on counting after what the store holds: the number of the last turn, and how many
-    /// deliveries wait.
+    /// Goes on counting after what the store holds, when all of it has been replayed: the number of
+    /// the last turn, and how many deliveries wait.
     pub fn resume(&mut self, last_turn: u64, outbox: usize) {
         self.last_turn = self.last_turn.max(last_turn);
         self.outbox = outbox;
+        // What was replayed has been counted before this process began.
+        for bank in &mut self.banks {
+            bank.outcomes.clear();
+            bank.raised.clear();
+            bank.dirty = true;
+        }
         self.changed = true;
     }
 

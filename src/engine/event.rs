@@ -8,6 +8,7 @@ use crate::model::{BankIx, Measurement, Name, Refusal, SourceIx, Time};
 use crate::notice::{Delivery, Notice};
 use crate::verdict::{Digest, Look};
 
+use super::condition::{Condition, Part};
 use super::snapshot::WindowView;
 
 /// Links a command to the person who waits for its answer; only the daemon knows who that is.
@@ -63,28 +64,6 @@ pub struct Due {
     pub silent: Vec<(BankIx, SourceIx)>,
     /// Banks to look at.
     pub looks: Vec<BankIx>,
-}
-
-/// Parts whose condition is shown.
-#[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize, Deserialize)]
-#[serde(rename_all = "snake_case")]
-pub enum Part {
-    /// The connection to the broker that measurements come from.
-    Broker,
-    /// The embedded store.
-    Store,
-}
-
-/// How a part is.
-#[derive(Clone, Debug, PartialEq, Eq, Serialize, Deserialize)]
-#[serde(rename_all = "snake_case")]
-pub enum Condition {
-    /// Not known yet.
-    Starting,
-    /// It works.
-    Well,
-    /// It does not; what is wrong and what to do, for people.
-    Trouble(String),
 }
 
 /// What a person can ask for.

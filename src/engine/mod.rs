@@ -5,6 +5,7 @@
 //! done it says as an [`Effect`]; what happened to it comes as an [`Event`].
 
 mod bank;
+mod condition;
 mod core;
 mod event;
 mod history;
@@ -16,7 +17,8 @@ mod source;
 mod view;
 
 pub use self::core::{Engine, RestoreError};
-pub use event::{Command, Condition, Due, Effect, Event, Outcome, Part, Record, Ticket, Turn};
+pub use condition::{Condition, Part};
+pub use event::{Command, Due, Effect, Event, Outcome, Record, Ticket, Turn};
 pub use history::{History, HistoryError, Page};
 pub use snapshot::{
     BankView, Cycles, Plant, RefusalView, Snapshot, SourceState, SourceView, WindowValue,

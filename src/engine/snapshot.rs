@@ -10,7 +10,7 @@ use crate::model::{Bank, Name, Reason, Refusal, SourceIx, Time, Value};
 use crate::notice::{Kind, Notice};
 use crate::verdict::{Estimate, Look};
 
-use super::event::Condition;
+use super::condition::Condition;
 
 /// What the engine knows of the plant besides its banks.
 #[derive(Clone, Debug)]

@@ -18,7 +18,7 @@ impl Characteristic {
             Some(step) if step > 0.0 => {
                 let needed = (0..MOST_PLACES).find(|&p| {
                     let scaled = step * 10_f64.powi(p as i32);
-                    (scaled - scaled.round()).abs() < 1e-9 * scaled.max(1.0)
+                    scaled.round() >= 1.0 && (scaled - scaled.round()).abs() < 1e-9 * scaled
                 });
                 needed.unwrap_or(MOST_PLACES)
             }

@@ -1,11 +1,12 @@
 //! Each source against something: a control (Dunnett), the common mean (analysis of means), the rest.
 
 use super::adjust::holm;
-use super::dist::maximum::{Maximum, Side};
+use super::dist::maximum::{Maximum, Side, shared_means};
 use super::dist::t;
 use super::level::{counts, no_spread};
 use super::summary::checked_summaries;
 use super::{Degenerate, Summary};
+use std::sync::Arc;
 
 /// How far one source is from what it is compared with.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -121,9 +122,9 @@ pub fn analysis_of_means_from(
     let exact = summaries.iter().all(|s| s.n == summaries[0].n);
     let maximum = match (exact, k) {
         // Both deviations are equal in size: one t.
-        (_, 2) => Maximum::modulus(1)?,
-        (true, _) => Maximum::means(k)?,
-        (false, _) => Maximum::modulus(k)?,
+        (_, 2) => Arc::new(Maximum::modulus(1)?),
+        (true, _) => shared_means(k)?,
+        (false, _) => Arc::new(Maximum::modulus(k)?),
     };
     let critical = maximum.isf(alpha, df)?;
     let deviations = summaries.iter().enumerate().map(|(source, own)| {

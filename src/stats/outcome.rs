@@ -71,7 +71,10 @@ impl fmt::Display for Degenerate {
             }
             Self::DisconnectedBlocks => write!(f, "the cycles do not connect all sources"),
             Self::UnequalCounts => write!(f, "the sources have different numbers of values"),
-            Self::ShapeMismatch => write!(f, "the lists that belong together differ in length"),
+            Self::ShapeMismatch => write!(
+                f,
+                "the lists that belong together differ, or an index is outside them"
+            ),
             Self::NotAProbability => write!(f, "a probability must lie strictly between 0 and 1"),
             Self::Distribution(why) => write!(f, "{why}"),
         }

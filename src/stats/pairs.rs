@@ -31,7 +31,7 @@ impl Pair {
     /// # Errors
     /// [`Degenerate::Distribution`] unless 0 < alpha < 1 and the distribution reaches k and df.
     pub fn interval(&self, k: usize, alpha: f64) -> Result<(f64, f64), Degenerate> {
-        let q = studentized_range::isf(alpha, k, self.df)?;
+        let q = studentized_range::isf(alpha, k, self.df.max(1.0))?;
         let half = q / SQRT_2 * self.std_error;
         Ok((self.difference - half, self.difference + half))
     }
@@ -146,6 +146,7 @@ pub(super) fn studentized_pair(
     df: f64,
 ) -> Result<Pair, Degenerate> {
     let q = SQRT_2 * difference.abs() / std_error;
+    // Welch's df is at least 1; rounding may leave a hair less.
     let p_adjusted = table.sf(q, df.max(1.0))?;
     Ok(Pair {
         a,

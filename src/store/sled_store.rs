@@ -232,6 +232,9 @@ impl From<sled::Error> for Trouble {
         let why = e.to_string();
         match e {
             sled::Error::Io(e) => e.into(),
+            sled::Error::Corruption { .. } => {
+                Self::Damaged("the checksums of its files do not fit".to_owned())
+            }
             _ => Self::Damaged(why),
         }
     }

@@ -29,7 +29,7 @@ fn trouble(snapshot: &Snapshot) -> Option<String> {
     let said: Vec<String> = parts
         .into_iter()
         .filter_map(|(part, condition)| match condition {
-            Condition::Well => None,
+            Condition::Well | Condition::Noted(_) => None,
             Condition::Starting => Some(format!("the {part} is still starting")),
             Condition::Trouble(why) => Some(format!("{part}: {why}")),
         })

@@ -133,7 +133,9 @@ impl Families {
     }
 
     fn fill_plant(&self, snapshot: &Snapshot) {
-        let well = |condition: &Condition| i64::from(*condition == Condition::Well);
+        let well = |condition: &Condition| {
+            i64::from(matches!(condition, Condition::Well | Condition::Noted(_)))
+        };
         self.broker.set(well(&snapshot.broker));
         self.store.set(well(&snapshot.store));
         self.outbox.set(whole(snapshot.outbox));

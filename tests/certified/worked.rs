@@ -191,6 +191,22 @@ fn printed_tests() -> Worst {
         "0.77143",
         "0.68",
     );
+    let roots: Vec<Vec<f64>> = sprays
+        .iter()
+        .map(|g| g.iter().map(|v| v.sqrt()).collect())
+        .collect();
+    let a = anova(&slices(&roots)).expect(ok);
+    worst.printed(a.ss_between, "88.44", "InsectSprays, roots, between");
+    worst.printed(a.ss_within, "26.06", "InsectSprays, roots, within");
+    worst.printed(a.test.statistic, "44.8", "InsectSprays, roots, F");
+    let hair = data("pingouin_welch_hair");
+    test(
+        &mut worst,
+        "hair Welch",
+        &welch(&slices(&hair)).expect(ok),
+        "5.890",
+        "0.018813",
+    );
     let jan = data("jan_shieh_2019");
     worst.printed(
         anova(&slices(&jan)).expect(ok).test.statistic,
@@ -283,6 +299,13 @@ fn blood_counts() -> Worst {
         );
         worst.printed(both.low, low, format!("{name} low"));
         worst.printed(both.high, high, format!("{name} high"));
+    }
+    let cilia = data("R_kruskal_hollander_wolfe");
+    let published = [("0.90875", "0.583"), ("-0.05007", "0.998")];
+    let both = dunnett(&slices(&cilia), 0, Side::Both, 0.05).expect("not degenerate");
+    for (one, (statistic, p)) in both.iter().zip(published) {
+        worst.printed(one.difference / one.std_error, statistic, "mucociliary t");
+        worst.printed(one.p_adjusted, p, "mucociliary p");
     }
     worst
 }

@@ -147,6 +147,22 @@ fn the_largest_variance_ratio_is_exact() {
 }
 
 #[test]
+fn cochran_keeps_its_level_closely_in_the_tail() {
+    let mut source = Source(22);
+    let mut below = 0.0;
+    for _ in 0..CASES {
+        let groups = source.groups(EQUAL);
+        let slices: Vec<&[f64]> = groups.iter().map(Vec::as_slice).collect();
+        below += f64::from(cochran_c(&slices).unwrap().p < 0.05) / CASES as f64;
+    }
+    // At 5 % C is beyond one half for four sources of six: there the bound is exact.
+    assert!(
+        (below - 0.05).abs() < 4.0 * (0.05_f64 * 0.95 / CASES as f64).sqrt(),
+        "{below}"
+    );
+}
+
+#[test]
 fn blocks_are_exact_with_cells_missing() {
     let p = |g: &[&[f64]]| {
         let mut blocks = Blocks::new(4);

@@ -12,8 +12,8 @@ use super::story::{CYCLE_US, head_name};
 
 /// Time between looks at the default speed, in microseconds.
 const LOOK_EVERY_US: i64 = 10 * CYCLE_US;
-/// Looks come no faster than this, whatever the speed.
-const SHORTEST_LOOK_US: i64 = 250_000;
+/// Looks come no faster than this, whatever the speed: the shortest that a configuration may ask for.
+const SHORTEST_LOOK_US: i64 = 1_000_000;
 
 /// Why the demo could not be set up.
 #[derive(Debug, thiserror::Error)]
@@ -216,6 +216,22 @@ mod tests {
         assert_ne!(Scene::set_up(None).expect("another").token, scene.token);
         drop(scene);
         assert!(!folder.exists());
+    }
+
+    #[test]
+    fn the_configuration_is_a_good_one_at_every_speed() {
+        let scene = Scene::set_up(None).expect("a scene");
+        let address = |port| SocketAddr::from(([127, 0, 0, 1], port));
+        for speed in [0.1, 1.0, 3.0, 7.0, 20.0] {
+            let file = scene.configure(address(1_883), address(7_310), speed);
+            let read = crate::settings::load(&file.expect("a file"), []);
+            if let Err(faults) = read {
+                panic!(
+                    "speed {speed}: {}",
+                    faults.report(crate::settings::Ink::Plain)
+                );
+            }
+        }
     }
 
     #[test]

@@ -306,7 +306,7 @@ impl Listener {
         match &condition {
             Condition::Trouble(why) => tracing::warn!("{why}"),
             Condition::Well => tracing::info!("every subscription is confirmed"),
-            Condition::Starting => {}
+            Condition::Starting | Condition::Noted(_) => {}
         }
         self.said = condition.clone();
         self.queue.set(condition);

@@ -127,6 +127,7 @@ fn trouble(scene: &Scene<'_>) -> Markup {
     let part = |name: &str, condition: &Condition| match condition {
         Condition::Well => None,
         Condition::Starting => Some((format!("{name}: not ready yet"), String::new())),
+        Condition::Noted(what) => Some((format!("{name}: good to know"), what.clone())),
         Condition::Trouble(why) => Some((format!("{name} trouble"), why.clone())),
     };
     let outbox = snapshot.outbox_trouble.as_ref().map(|why| {

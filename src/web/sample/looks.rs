@@ -5,7 +5,7 @@ use fastrand::Rng;
 use crate::model::{Bank, Name, SourceIx, Time, US_PER_S, Value};
 use crate::verdict::{Dependence, Estimate, Finding, Look, Method, SourceLook, TestEntry};
 
-use super::{Story, now};
+use super::{Story, moment};
 
 /// Around zero, bell-shaped enough, with unit standard deviation.
 fn noise(rng: &mut Rng) -> f64 {
@@ -20,7 +20,7 @@ pub fn look(bank: &Bank, names: &[Name], story: Story, span: usize, at: Time, se
     let half = scale * 3.2 / (span as f64).sqrt();
     let share = match story {
         Story::Level(_, _, minutes) => {
-            let since = now().plus_us(-minutes * 60 * US_PER_S);
+            let since = moment().plus_us(-minutes * 60 * US_PER_S);
             (at.us_since(since) as f64 / (span as f64 * 720_000.0)).clamp(0.0, 1.0)
         }
         _ => 1.0,

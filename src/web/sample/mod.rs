@@ -41,7 +41,7 @@ pub enum Story {
 }
 
 /// The moment of the sample: a time in the plant's summer.
-pub fn now() -> Time {
+pub fn moment() -> Time {
     Time::from_us(1_783_087_402_000_000)
 }
 
@@ -100,7 +100,7 @@ pub fn numbered(count: usize) -> Vec<String> {
     (1..=count).map(|n| format!("{n:02}")).collect()
 }
 
-/// A bank with its story, as of [`now`].
+/// A bank with its story, as of [`moment`].
 pub fn view(bank: Bank, story: Story, seed: u64) -> BankView {
     let Sources::Listed(names) = &bank.sources else {
         panic!("sample banks list their sources");
@@ -119,7 +119,7 @@ pub fn view(bank: Bank, story: Story, seed: u64) -> BankView {
                 &names,
                 story,
                 *span,
-                now().plus_us(-12 * US_PER_S),
+                moment().plus_us(-12 * US_PER_S),
                 seed,
             ))
         })
@@ -162,9 +162,9 @@ pub fn view(bank: Bank, story: Story, seed: u64) -> BankView {
             values,
             last_value: (values > 0).then(|| target + bank.margin * (at as f64 * 1.7).sin()),
             last_taken: (values > 0)
-                .then(|| now().plus_us(if is_silent { -340 } else { -1 } * US_PER_S)),
+                .then(|| moment().plus_us(if is_silent { -340 } else { -1 } * US_PER_S)),
             last_received: (values > 0)
-                .then(|| now().plus_us(if is_silent { -340 } else { -1 } * US_PER_S)),
+                .then(|| moment().plus_us(if is_silent { -340 } else { -1 } * US_PER_S)),
             deviation: followed(Kind::LevelApart).or(judged.and_then(|s| s.deviation)),
             deviation_sigmas: judged.and_then(|s| Some(s.deviation?.value / 1.2)),
             sd_ratio: followed(Kind::SpreadApart).or(judged.and_then(|s| s.sd_ratio)),
@@ -192,8 +192,8 @@ pub fn view(bank: Bank, story: Story, seed: u64) -> BankView {
             open: 1,
         }),
         interval_us: (values > 0).then_some(720_000),
-        next_look: (values > 0).then(|| now().plus_us(18 * US_PER_S)),
-        newest_taken: (values > 0).then(|| now().plus_us(-US_PER_S)),
+        next_look: (values > 0).then(|| moment().plus_us(18 * US_PER_S)),
+        newest_taken: (values > 0).then(|| moment().plus_us(-US_PER_S)),
         mean: now_look.is_some().then_some(target + 0.027 * bank.margin),
         shown_span: now_look.map(|l| l.span),
         looks,
@@ -212,7 +212,7 @@ fn refusals() -> Vec<RefusalView> {
             detail: detail.to_owned(),
             excerpt: excerpt.to_owned(),
         },
-        at: now().plus_us(-95 * US_PER_S),
+        at: moment().plus_us(-95 * US_PER_S),
     };
     vec![
         one(

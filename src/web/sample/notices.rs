@@ -7,7 +7,7 @@ use crate::model::{Bank, Name, US_PER_S};
 use crate::notice::{Acknowledgement, Kind, NamedSource, Notice, Priority, Since, State};
 use crate::verdict::{Finding, Look};
 
-use super::{Story, now};
+use super::{Story, moment};
 
 /// The notice of a story.
 pub fn notice(bank: &Bank, names: &[Name], story: Story, looks: &[Arc<Look>]) -> Option<Notice> {
@@ -26,7 +26,7 @@ pub fn notice(bank: &Bank, names: &[Name], story: Story, looks: &[Arc<Look>]) ->
         .find(|l| l.finding == finding)
         .map_or(40, |l| l.span);
     let name = names.get(at)?;
-    let since = now().plus_us(-minutes * 60 * US_PER_S);
+    let since = moment().plus_us(-minutes * 60 * US_PER_S);
     let unit = bank.characteristic.unit.clone();
     let (word, than, todo) = if figure < 0.0 {
         ("low", "less", "Raise")
@@ -92,7 +92,7 @@ pub fn notice(bank: &Bank, names: &[Name], story: Story, looks: &[Arc<Look>]) ->
 pub fn past_notices(view: &BankView) -> Vec<Notice> {
     let template = view.open.first().expect("the first bank has a notice");
     let past = |number: u32, hours: i64, source: &str, by: f64| {
-        let start = now().plus_us(-hours * 3600 * US_PER_S);
+        let start = moment().plus_us(-hours * 3600 * US_PER_S);
         Notice {
             id: format!("{}-2026-{number:04}", view.bank.name).into(),
             state: State::Normal,

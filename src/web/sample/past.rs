@@ -9,7 +9,7 @@ use crate::verdict::{Digest, Look};
 
 use super::looks::look;
 use super::notices::past_notices;
-use super::{Story, now};
+use super::{Story, moment};
 
 /// The past of the sample: looks of the last six hours, and two notices of the first bank.
 pub struct SampleHistory {
@@ -53,7 +53,7 @@ impl History for SampleHistory {
         }
         let names: Vec<Name> = view.sources.iter().map(|s| s.name.clone()).collect();
         let mut all = Vec::new();
-        let start = now().plus_us(-6 * 3600 * US_PER_S);
+        let start = moment().plus_us(-6 * 3600 * US_PER_S);
         for step in 0..(6 * 120) {
             let at = start.plus_us(step * 30 * US_PER_S + 18 * US_PER_S);
             // The line stood still for a while.

@@ -134,7 +134,7 @@ async fn engine(mut asks: mpsc::Receiver<Ask>, snapshot: watch::Receiver<Arc<Sna
                         state: State::Acknowledged,
                         acknowledged: Some(Acknowledgement {
                             by: who,
-                            at: sample::now(),
+                            at: sample::moment(),
                             comment,
                         }),
                         ..Notice::clone(found)
@@ -147,7 +147,7 @@ async fn engine(mut asks: mpsc::Receiver<Ask>, snapshot: watch::Receiver<Arc<Sna
                     source: name,
                     origin: Value::parse("503.0").expect("a value"),
                     values: vec![WindowValue {
-                        taken: sample::now(),
+                        taken: sample::moment(),
                         cycle: Some(7),
                         offset: -0.1,
                     }],
@@ -173,7 +173,7 @@ fn site(settings: Settings) -> (Site, watch::Sender<Arc<Snapshot>>) {
         history,
         asks,
         durations: Durations::new().expect("histograms"),
-        clock: Clock::manual(sample::now()),
+        clock: Clock::manual(sample::moment()),
     };
     (site, publish)
 }

@@ -6,7 +6,7 @@
 //! | [`Maximum::means`] | absolute deviations of k equally sized means from their mean | -1/(k-1) |
 //! | [`Maximum::modulus`] | absolute values of k independent normals | 0 |
 //!
-//! Each builds a table of the normal case once ([`super::tail_table`]); averages over the chi are
+//! Each builds a table of the normal case once (`tail_table`); averages over the chi are
 //! then as quick as those of the studentized range. Statistics are in standard errors, like t.
 
 mod control;
@@ -16,8 +16,9 @@ use super::root::upper_quantile;
 use super::tail_table::TailTable;
 use super::{OutOfReach, degrees, normal, outer, probability, t};
 use control::Control;
+use std::collections::BTreeMap;
 use std::f64::consts::SQRT_2;
-use std::sync::Arc;
+use std::sync::{Arc, PoisonError, RwLock};
 
 /// Which deviations count.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
@@ -167,6 +168,22 @@ impl Maximum {
             }
         }
     }
+}
+
+static MEANS: RwLock<BTreeMap<usize, Arc<Maximum>>> = RwLock::new(BTreeMap::new());
+
+/// [`Maximum::means`] of `k`, built on first use and kept for the life of the process (k of 5 to 7 takes
+/// some tenths of a second): a pure function of k.
+///
+/// # Errors
+/// As [`Maximum::means`].
+pub fn shared_means(k: usize) -> Result<Arc<Maximum>, OutOfReach> {
+    if let Some(found) = MEANS.read().unwrap_or_else(PoisonError::into_inner).get(&k) {
+        return Ok(Arc::clone(found));
+    }
+    let built = Arc::new(Maximum::means(k)?);
+    let mut all = MEANS.write().unwrap_or_else(PoisonError::into_inner);
+    Ok(Arc::clone(all.entry(k).or_insert(built)))
 }
 
 fn within_reach(variables: usize) -> Result<(), OutOfReach> {

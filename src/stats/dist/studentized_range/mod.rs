@@ -110,6 +110,11 @@ impl RangeTable {
         if self.k() == 2 {
             return Ok(t::isf(0.5 * p, df)? * std::f64::consts::SQRT_2);
         }
+        if p <= 0.5
+            && let Some(near) = self.near(p, df)?
+        {
+            return Ok(near);
+        }
         // Bonferroni over all ordered pairs bounds q from above; one pair bounds it from below.
         let k = self.k() as f64;
         let share = p / (k * (k - 1.0));
@@ -124,6 +129,43 @@ impl RangeTable {
             Ok(self.sf(ln_q.exp(), df)?.ln() - goal)
         })?;
         Ok(root.exp())
+    }
+
+    /// The quantile by the secant method in logarithms, from the quantile for infinite df carried over
+    /// by Fisher's expansion of t in z (Abramowitz and Stegun 26.7.5). None where that start is poor.
+    fn near(&self, p: f64, df: f64) -> Result<Option<f64>, OutOfReach> {
+        if df < 8.0 {
+            return Ok(None);
+        }
+        let goal = p.ln();
+        let scaled = |q: f64| self.tail.tail(q).max(1e-307).ln() - goal;
+        let unlimited = brent(1e-3, 55.0, |q| Ok(scaled(q)))?;
+        if df == f64::INFINITY {
+            return Ok(Some(unlimited));
+        }
+        let z = unlimited / std::f64::consts::SQRT_2;
+        let cubic = z * (z * z + 1.0) / (4.0 * df);
+        let quintic = z * ((5.0 * z * z + 16.0) * z * z + 3.0) / (96.0 * df * df);
+        let mut q = (z + cubic + quintic) * std::f64::consts::SQRT_2;
+        let mut slope = scaled(unlimited * 1.001) / 1.001_f64.ln() / (1.0 + 0.5 * q * q / df);
+        let mut miss = self.sf(q, df)?.ln() - goal;
+        for _ in 0..8 {
+            let step = -miss / slope;
+            if !step.is_finite() || step.abs() > 0.5 {
+                return Ok(None);
+            }
+            q *= step.exp();
+            if step.abs() < 1e-9 {
+                return Ok(Some(q));
+            }
+            let next = self.sf(q, df)?.ln() - goal;
+            slope = (next - miss) / step;
+            miss = next;
+            if miss == 0.0 {
+                return Ok(Some(q));
+            }
+        }
+        Ok(None)
     }
 }
 
