@@ -87,7 +87,7 @@ fn wide(filler: &Filler, is_there: impl Fn(u64, usize) -> bool) -> String {
 
 /// What is missing in `gaps`.
 fn is_there(cycle: u64, head: usize) -> bool {
-    let every_third = head == 4 && (300..660).contains(&cycle) && cycle % 3 == 0;
+    let every_third = head == 4 && (300..660).contains(&cycle) && cycle.is_multiple_of(3);
     let away = head == 8 && (500..620).contains(&cycle);
     let stands = (800..1_040).contains(&cycle);
     let four_only = cycle == 1_100 && head >= 4;

@@ -142,7 +142,7 @@ fn feed(
                 }
                 Err(Fault::Broken(error)) => return Err(error.into()),
             }
-            if ledger.rows() % TICK == 0 {
+            if ledger.rows().is_multiple_of(TICK) {
                 progress.set_position(ledger.rows());
             }
         }
