@@ -2,11 +2,10 @@
 
 use tokio::signal::unix::{SignalKind, signal};
 use tokio_util::sync::CancellationToken;
-use tracing::{info, warn};
+use tracing::info;
 
-use super::exit::Exit;
-
-/// The first SIGINT or SIGTERM ends cleanly, the second at once. Needs a runtime.
+/// SIGINT or SIGTERM ends cleanly. Further ones change nothing: the end takes at most five seconds, and
+/// some senders signal both the process and its group. Needs a runtime.
 ///
 /// # Errors
 /// When the system does not let us listen.
@@ -20,12 +19,10 @@ pub fn end_on_signal(shutdown: &CancellationToken) -> std::io::Result<()> {
                 _ = interrupt.recv() => "SIGINT",
                 _ = terminate.recv() => "SIGTERM",
             };
-            if shutdown.is_cancelled() {
-                warn!("{name} again: ending at once");
-                std::process::exit(i32::from(Exit::Failed.code()));
+            if !shutdown.is_cancelled() {
+                info!("{name}: ending");
+                shutdown.cancel();
             }
-            info!("{name}: ending");
-            shutdown.cancel();
         }
     });
     Ok(())

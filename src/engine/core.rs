@@ -468,12 +468,12 @@ impl Engine {
 }
 
 fn next_deadline(bank: &Watched) -> Option<Time> {
-    bank.state.began?;
+    let began = bank.state.began?;
     let checkpoint = bank
         .last_checkpoint
         .map(|at| at.plus_us(CHECKPOINT_EVERY_US));
     let checkpoint = checkpoint.filter(|_| bank.unsaved);
-    let silence = bank.next_silence_check.unwrap_or_default();
+    let silence = bank.next_silence_check.unwrap_or(began);
     [bank.state.look_due, checkpoint, Some(silence)]
         .into_iter()
         .flatten()

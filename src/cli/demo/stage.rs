@@ -13,7 +13,6 @@ use std::time::Duration;
 use jiff::tz::TimeZone;
 use rumqttc::{ClientError, ConnectionError, Event, EventLoop, Packet, QoS};
 use tokio::net::TcpListener;
-use tokio::signal::unix::{SignalKind, signal};
 use tokio::sync::watch;
 use tokio::task::JoinHandle;
 use tokio::time::{sleep, timeout};
@@ -22,6 +21,7 @@ use tokio_util::sync::CancellationToken;
 use crate::cli::args::DemoArgs;
 use crate::cli::exit::Exit;
 use crate::cli::log;
+use crate::cli::signals::end_on_signal;
 use crate::clock::Clock;
 use crate::daemon;
 use crate::settings::{self, Faults, Ink, Settings};
@@ -135,24 +135,6 @@ async fn perform(args: &DemoArgs) -> Result<(), DemoError> {
     };
     shutdown.cancel();
     played.and(daemon.end().await)
-}
-
-/// SIGINT and SIGTERM end cleanly however often they come: the end is bounded by [`GRACE`] anyway,
-/// and ending at once would leave the temporary folder behind.
-fn end_on_signal(shutdown: &CancellationToken) -> io::Result<()> {
-    let mut interrupt = signal(SignalKind::interrupt())?;
-    let mut terminate = signal(SignalKind::terminate())?;
-    let shutdown = shutdown.clone();
-    tokio::spawn(async move {
-        loop {
-            tokio::select! {
-                _ = interrupt.recv() => {}
-                _ = terminate.recv() => {}
-            }
-            shutdown.cancel();
-        }
-    });
-    Ok(())
 }
 
 /// How long a cycle is at a speed.
