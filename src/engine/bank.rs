@@ -18,6 +18,9 @@ use super::{RefusalView, WindowValue, WindowView};
 /// A clock may run ahead by this much; a value from further in the future is refused.
 const AHEAD_US: i64 = 300_000_000;
 
+/// Silence is looked for this often.
+pub const SILENCE_EVERY_US: i64 = 10_000_000;
+
 /// A bank that finds its sources itself counts cycles as complete only after this many without a new
 /// source; until then they close when they are overtaken.
 const SETTLED_AFTER: u64 = 5;
@@ -42,6 +45,23 @@ pub struct State {
     pub newest_source_at: u64,
     /// Notices made so far.
     pub notices: u64,
+}
+
+impl State {
+    /// Begins with empty windows, as after a change of pairing: sources and numbers go on, incidents end
+    /// at the next look because nothing they rest on is left.
+    pub fn start_over(&mut self, bank: &Bank) {
+        self.windows = Windows::new(bank);
+        for source in &mut self.sources {
+            self.windows.add_source();
+            source.cleared_margin = 0.0;
+        }
+        for incident in &mut self.incidents {
+            incident.forget(&|_| true);
+        }
+        self.looks.clear();
+        self.newest_source_at = 0;
+    }
 }
 
 /// A bank with its state and what is only counted.
@@ -92,18 +112,25 @@ impl Watched {
             next_silence_check: None,
             last_checkpoint: None,
         };
-        if let Sources::Listed(listed) = watched.bank.sources.clone() {
-            for (s, source) in watched.state.sources.iter_mut().enumerate() {
-                source.retired = !listed.contains(&source.name);
-                if source.retired {
-                    watched.state.windows.expect(SourceIx(s as u16), false);
-                }
+        let listed = match &watched.bank.sources {
+            Sources::Listed(listed) => listed.clone(),
+            Sources::Discover { .. } => Vec::new(),
+        };
+        let is_listed = matches!(watched.bank.sources, Sources::Listed(_));
+        for (s, source) in watched.state.sources.iter_mut().enumerate() {
+            source.retired = is_listed && !listed.contains(&source.name);
+            let waited_for = !source.retired && !source.silent;
+            watched.state.windows.expect(SourceIx(s as u16), waited_for);
+        }
+        for name in listed {
+            if !watched.by_name.contains_key(&name) {
+                watched.add_source(name, false);
             }
-            for name in listed {
-                if !watched.by_name.contains_key(&name) {
-                    watched.add_source(name, false);
-                }
-            }
+        }
+        let sources = &watched.state.sources;
+        let gone = |s: SourceIx| sources.get(s.index()).is_none_or(|s| s.retired);
+        for incident in &mut watched.state.incidents {
+            incident.forget(&gone);
         }
         watched.settle();
         watched
@@ -156,15 +183,27 @@ impl Watched {
             cycle: m.cycle,
         };
         let closed = self.closed();
-        let accepted = self.state.windows.accept(&arriving)?;
+        // Whoever delivers is waited for again, from this very cycle on.
+        let was_silent = self.state.sources[source.index()].silent;
+        if was_silent {
+            self.state.windows.expect(source, true);
+        }
+        let accepted = self.state.windows.accept(&arriving).inspect_err(|_| {
+            // What is refused wakes nobody.
+        });
+        let accepted = match accepted {
+            Ok(accepted) => accepted,
+            Err(reason) => {
+                self.state.windows.expect(source, !was_silent);
+                return Err(reason);
+            }
+        };
         let known = &mut self.state.sources[source.index()];
         known.accepted += 1;
         known.last_value = Some(m.value.to_f64());
         known.last_taken = known.last_taken.max(Some(taken));
         known.last_received = Some(now);
-        if std::mem::take(&mut known.silent) {
-            self.state.windows.expect(source, true);
-        }
+        known.silent = false;
         if closed != self.closed() {
             self.settle();
         }
@@ -195,11 +234,17 @@ impl Watched {
         }
     }
 
+    /// Plans the next look; never further ahead than one period, so that a clock that was set back does
+    /// not stop the looks.
     fn plan_look(&mut self, now: Time) {
         let every = self.bank.look_every_us;
         let began = self.state.began.unwrap_or(now);
         let next = self.state.last_look.unwrap_or(began).plus_us(every);
-        self.state.look_due.get_or_insert(next.max(now));
+        let planned = self.state.look_due.unwrap_or(next.max(now));
+        self.state.look_due = Some(planned.min(now.plus_us(every)));
+        self.next_silence_check = self
+            .next_silence_check
+            .min(Some(now.plus_us(SILENCE_EVERY_US)));
     }
 
     /// Sources that have delivered nothing for longer than they may.
@@ -273,6 +318,7 @@ impl Watched {
                 .bank
                 .margin
                 .max(self.state.sources[s.index()].cleared_margin),
+            silent: self.state.sources[s.index()].silent,
         };
         let who: Vec<Participant> = self
             .display_order()

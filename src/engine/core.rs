@@ -6,7 +6,7 @@ use crate::model::{Bank, BankIx, Measurement, Name, Refusal, Time};
 use crate::notice::{Acknowledgement, Delivery, Notice, Way};
 use crate::verdict::{Finding, Look, Need};
 
-use super::bank::{State, Watched};
+use super::bank::{SILENCE_EVERY_US, State, Watched};
 use super::look::Freshness;
 use super::view;
 use super::{
@@ -16,9 +16,6 @@ use super::{
 
 /// A bank writes its whole state at least this often.
 const CHECKPOINT_EVERY_US: i64 = 600_000_000;
-
-/// Silence is looked for this often.
-const SILENCE_EVERY_US: i64 = 10_000_000;
 
 /// Version of the encoded state.
 const STATE_VERSION: u8 = 1;
@@ -100,12 +97,17 @@ impl Engine {
         }
         let mut state: State =
             postcard::from_bytes(encoded).map_err(|_| RestoreError::Unreadable(own()))?;
-        if !state.windows.adapt(&watched.bank) {
-            return Err(RestoreError::PairingChanged(own()));
+        let adapted = state.windows.adapt(&watched.bank);
+        if !adapted {
+            state.start_over(&watched.bank);
         }
         *watched = Watched::with_state(watched.bank.clone(), state);
         self.changed = true;
-        Ok(())
+        if adapted {
+            Ok(())
+        } else {
+            Err(RestoreError::PairingChanged(own()))
+        }
     }
 
     /// Goes on counting after what the store holds, when all of it has been replayed: the number of

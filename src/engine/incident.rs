@@ -4,10 +4,10 @@ use std::sync::Arc;
 
 use serde::{Deserialize, Serialize};
 
-use crate::model::{Bank, Name, SourceIx, Time};
+use crate::model::{Name, SourceIx, Time};
 use crate::notice::{
-    Acknowledgement, Facts, Happening, Kind, NamedSource, Notice, Priority, SPREAD_UNIT, Since,
-    State, after,
+    Acknowledgement, Compared, Facts, Happening, Kind, NamedSource, Notice, Priority, SPREAD_UNIT,
+    Since, State, after,
 };
 use crate::stats::dist;
 use crate::verdict::{
@@ -17,6 +17,7 @@ use crate::verdict::{
 use crate::window::Windows;
 
 use super::Plant;
+use super::bank::Watched;
 
 /// Updates of an open notice are sent at most this often.
 const SEND_EVERY_US: i64 = 10_000_000;
@@ -59,12 +60,12 @@ pub struct Incident {
 /// What an incident needs to know of its bank.
 pub struct Surroundings<'a> {
     pub plant: &'a Plant,
-    pub bank: &'a Bank,
-    pub windows: &'a Windows,
+    pub watched: &'a Watched,
     pub exam: &'a Examination,
-    pub name: &'a dyn Fn(SourceIx) -> Name,
     pub now: Time,
     pub interval_us: Option<i64>,
+    /// Sources that another open incident is about.
+    pub taken: &'a [SourceIx],
 }
 
 impl Surroundings<'_> {
@@ -72,8 +73,8 @@ impl Surroundings<'_> {
         Yardstick {
             reference,
             margin: match aspect {
-                Aspect::Level => self.bank.margin,
-                Aspect::Spread => self.bank.spread_margin,
+                Aspect::Level => self.watched.bank.margin,
+                Aspect::Spread => self.watched.bank.spread_margin,
             },
             factor: self.exam.factor,
             family: self.exam.data.sources.len(),
@@ -106,13 +107,13 @@ impl Incident {
         let notice = Notice {
             id,
             plant: about.plant.name.clone(),
-            bank: about.bank.name.clone(),
+            bank: about.watched.bank.name.clone(),
             kind: kind(call),
             state: after(State::Normal, Happening::Occurs),
             priority: Priority::Medium,
             sources: Vec::new(),
             unit: match call.aspect {
-                Aspect::Level => about.bank.characteristic.unit.clone(),
+                Aspect::Level => about.watched.bank.characteristic.unit.clone(),
                 Aspect::Spread => SPREAD_UNIT.into(),
             },
             since: first.located.since,
@@ -123,13 +124,17 @@ impl Incident {
             subject: String::new(),
             text: String::new(),
             advice: String::new(),
-            url: format!("{}/banks/{}", about.plant.pages, address(&about.bank.name)),
+            url: format!(
+                "{}/banks/{}",
+                about.plant.pages,
+                address(&about.watched.bank.name)
+            ),
             span: call.span,
         };
         let mut incident = Self {
             notice: Arc::new(notice),
             aspect: call.aspect,
-            called_at: newest_place(about.windows),
+            called_at: newest_place(&about.watched.state.windows),
             reference: call.reference.clone(),
             apart,
             sent: None,
@@ -158,6 +163,16 @@ impl Incident {
     /// Whether it is about a source now.
     pub fn is_about(&self, source: SourceIx) -> bool {
         self.about().contains(&source)
+    }
+
+    /// Sources that are no longer in the configuration cannot come back: they count as cleared, and so
+    /// does everybody when nobody is left to be compared with. The next look ends the incident then.
+    pub fn forget(&mut self, gone: &dyn Fn(SourceIx) -> bool) {
+        self.reference.retain(|s| !gone(*s));
+        let alone = self.reference.is_empty();
+        for one in &mut self.apart {
+            one.cleared |= alone || gone(one.source);
+        }
     }
 
     /// Takes in what a look says: sizes, starts, sources that join, sources that are back. Returns
@@ -190,20 +205,19 @@ impl Incident {
             return;
         };
         for &source in &call.named {
-            if self.apart.iter().any(|a| a.source == source) {
+            let known = self.apart.iter().find(|a| a.source == source);
+            if known.is_some_and(|a| !a.cleared) || about.taken.contains(&source) {
                 continue;
             }
-            let rest: Vec<SourceIx> = self
-                .reference
-                .iter()
-                .copied()
-                .filter(|s| *s != source)
-                .collect();
+            let others = |s: &SourceIx| *s != source;
+            let rest: Vec<SourceIx> = self.reference.iter().copied().filter(others).collect();
             let yard = about.yard(self.aspect, &rest);
             let Some(located) = locate(&about.exam.data, source, self.aspect, &yard) else {
                 continue;
             };
             if located.p < share(about, self.aspect) {
+                // One that was back and left again starts anew.
+                self.apart.retain(|a| a.source != source);
                 self.apart.push(Apart::new(source, &located));
                 self.reference = rest;
             }
@@ -243,14 +257,20 @@ impl Incident {
             farness(self.aspect, &b.size).total_cmp(&farness(self.aspect, &a.size))
         });
         let sources: Vec<NamedSource> = named.iter().map(|a| a.told(about)).collect();
+        let all: Vec<SourceIx> = self.apart.iter().map(|a| a.source).collect();
         let since = named[0].located.since;
         let facts = Facts {
-            bank: about.bank,
+            bank: &about.watched.bank,
             zone: &about.plant.zone,
             kind: self.notice.kind,
             sources: &sources,
             since,
             others: self.reference.len(),
+            compared: if is_pair(&all, &self.reference) {
+                Compared::Mutually
+            } else {
+                Compared::WithEven
+            },
             even_mean: self.even_mean(about),
             clears_in_us: self.clears_in_us(about),
             returned: self.notice.returned,
@@ -287,7 +307,7 @@ impl Incident {
     fn clears_in_us(&self, about: &Surroundings) -> Option<i64> {
         let yard = about.yard(self.aspect, &self.reference);
         let values = values_to_clear(self.aspect, &yard, about.sigma());
-        let next_look = about.bank.look_every_us;
+        let next_look = about.watched.bank.look_every_us;
         Some((values * about.interval_us? as f64) as i64 + next_look)
     }
 
@@ -310,7 +330,7 @@ impl Incident {
     }
 
     fn share_outside(&self, about: &Surroundings, s: &NamedSource, sigma: f64) -> f64 {
-        let c = &about.bank.characteristic;
+        let c = &about.watched.bank.characteristic;
         let centre = self.even_mean(about).unwrap_or(0.0);
         let (mean, sd) = match self.aspect {
             Aspect::Level => (centre + s.deviation, sigma),
@@ -332,10 +352,9 @@ impl Incident {
         };
         let n = &self.notice;
         let set = |n: &Notice| {
-            n.sources
-                .iter()
-                .map(|s| s.source.clone())
-                .collect::<Vec<_>>()
+            let mut names: Vec<Name> = n.sources.iter().map(|s| s.source.clone()).collect();
+            names.sort();
+            names
         };
         if n.state != last.state {
             return true;
@@ -382,7 +401,7 @@ impl Apart {
             &self.size
         };
         NamedSource {
-            source: (about.name)(self.source),
+            source: about.watched.name(self.source),
             deviation: size.value,
             low: size.low,
             high: size.high,
@@ -410,8 +429,14 @@ fn farness(aspect: Aspect, size: &Estimate) -> f64 {
     }
 }
 
+/// Whether the sources are compared only with each other: of two, nobody is the culprit.
+fn is_pair(named: &[SourceIx], reference: &[SourceIx]) -> bool {
+    named.iter().any(|s| reference.contains(s))
+}
+
 fn kind(call: &Call) -> Kind {
     match call.aspect {
+        Aspect::Level if is_pair(&call.named, &call.reference) => Kind::LevelApart,
         Aspect::Spread => Kind::SpreadApart,
         // From four sources on, half of them apart means two groups and no culprit.
         Aspect::Level
@@ -425,7 +450,7 @@ fn kind(call: &Call) -> Kind {
 }
 
 fn share(about: &Surroundings, aspect: Aspect) -> f64 {
-    let shares = Shares::of(about.bank);
+    let shares = Shares::of(&about.watched.bank);
     match aspect {
         Aspect::Level => shares.level,
         Aspect::Spread => shares.spread,

@@ -2,10 +2,9 @@
 
 use std::sync::Arc;
 
-use crate::model::{Bank, Name, SourceIx, Time};
+use crate::model::{Name, SourceIx, Time, topic_name};
 use crate::notice::Notice;
 use crate::verdict::{Aspect, Call, Examination, Finding, Look, Need, cleared_margin};
-use crate::window::Windows;
 
 use super::Plant;
 use super::bank::Watched;
@@ -29,35 +28,51 @@ pub enum Freshness {
     Changed,
 }
 
+/// One look at a bank, as its incidents need to know it.
+struct Occasion<'a> {
+    plant: &'a Plant,
+    exam: &'a Examination,
+    now: Time,
+    interval_us: Option<i64>,
+}
+
+impl<'a> Occasion<'a> {
+    fn at(&self, watched: &'a Watched, taken: &'a [SourceIx]) -> Surroundings<'a> {
+        Surroundings {
+            plant: self.plant,
+            watched,
+            exam: self.exam,
+            now: self.now,
+            interval_us: self.interval_us,
+            taken,
+        }
+    }
+}
+
 impl Watched {
     /// A look that is due: examines, follows the open incidents, begins new ones.
     pub fn look(&mut self, plant: &Plant, now: Time) -> Looked {
         self.state.look_due = None;
         self.state.last_look = Some(now);
         let exam = self.examine(now, Need::WholeSpan);
-        let interval_us = self.interval_us();
+        let occasion = Occasion {
+            plant,
+            exam: &exam,
+            now,
+            interval_us: self.interval_us(),
+        };
         // What an open incident is about is not called anew, also when this look ends it: the
         // examination still holds the values of before.
-        let open: Vec<Aspect> = self
-            .state
-            .incidents
-            .iter()
-            .filter(|i| i.is_active())
-            .map(|i| i.aspect)
-            .collect();
-        let about: Vec<SourceIx> = self
-            .state
-            .incidents
-            .iter()
-            .flat_map(Incident::about)
-            .collect();
-        let mut changed = self.follow(plant, &exam, now, interval_us);
+        let active = || self.state.incidents.iter().filter(|i| i.is_active());
+        let open: Vec<Aspect> = active().map(|i| i.aspect).collect();
+        let about: Vec<SourceIx> = active().flat_map(Incident::about).collect();
+        let mut changed = self.follow(&occasion);
         let mut calls = exam.calls.clone();
         calls.retain(|c| !open.contains(&c.aspect));
         for call in &mut calls {
             call.named.retain(|s| !about.contains(s));
         }
-        changed.extend(self.begin(plant, calls, &exam, now, interval_us));
+        changed.extend(self.begin(calls, &occasion));
         let looks: Vec<Arc<Look>> = exam.looks.into_iter().map(Arc::new).collect();
         self.state.looks.clone_from(&looks);
         // An incident that is over goes when its last word was sent, not before.
@@ -82,27 +97,20 @@ impl Watched {
         keep
     }
 
-    fn follow(
-        &mut self,
-        plant: &Plant,
-        exam: &Examination,
-        now: Time,
-        interval_us: Option<i64>,
-    ) -> Vec<(Arc<Notice>, Freshness)> {
+    fn follow(&mut self, occasion: &Occasion) -> Vec<(Arc<Notice>, Freshness)> {
         let mut incidents = std::mem::take(&mut self.state.incidents);
         let mut changed = Vec::new();
-        for incident in incidents.iter_mut().filter(|i| i.is_active()) {
+        for i in 0..incidents.len() {
+            if !incidents[i].is_active() {
+                continue;
+            }
+            let taken: Vec<SourceIx> = (0..incidents.len())
+                .filter(|j| *j != i)
+                .flat_map(|j| incidents[j].about())
+                .collect();
+            let incident = &mut incidents[i];
             let before = incident.notice.clone();
-            let name = |s: SourceIx| self.name(s);
-            let about = surroundings(
-                plant,
-                &self.bank,
-                &self.state.windows,
-                exam,
-                &name,
-                now,
-                interval_us,
-            );
+            let about = occasion.at(self, &taken);
             let sigma = about.sigma();
             let back = incident.follow(&about);
             if incident.notice != before {
@@ -110,9 +118,11 @@ impl Watched {
             }
             for (source, from) in back {
                 self.state.windows.start_fresh(source, from);
-                let cleared = cleared_margin(self.bank.margin, sigma);
-                let known = &mut self.state.sources[source.index()].cleared_margin;
-                *known = known.max(cleared);
+                if incident.aspect == Aspect::Level {
+                    let cleared = cleared_margin(self.bank.margin, sigma);
+                    let known = &mut self.state.sources[source.index()].cleared_margin;
+                    *known = known.max(cleared);
+                }
             }
         }
         self.state.incidents = incidents;
@@ -120,30 +130,13 @@ impl Watched {
     }
 
     /// New incidents, each about sources that no open one is about: one source and cause, one notice.
-    fn begin(
-        &mut self,
-        plant: &Plant,
-        calls: Vec<Call>,
-        exam: &Examination,
-        now: Time,
-        interval_us: Option<i64>,
-    ) -> Vec<(Arc<Notice>, Freshness)> {
+    fn begin(&mut self, calls: Vec<Call>, occasion: &Occasion) -> Vec<(Arc<Notice>, Freshness)> {
         let mut changed = Vec::new();
         for mut call in calls {
-            call.named
-                .retain(|s| !self.state.incidents.iter().any(|i| i.is_about(*s)));
-            let id = self.notice_id(plant, now);
-            let name = |s: SourceIx| self.name(s);
-            let about = surroundings(
-                plant,
-                &self.bank,
-                &self.state.windows,
-                exam,
-                &name,
-                now,
-                interval_us,
-            );
-            let Some(incident) = Incident::begin(&call, id, &about) else {
+            let is_open = |s: &SourceIx| self.state.incidents.iter().any(|i| i.is_about(*s));
+            call.named.retain(|s| !is_open(s));
+            let id = self.notice_id(occasion.plant, occasion.now);
+            let Some(incident) = Incident::begin(&call, id, &occasion.at(self, &[])) else {
                 continue;
             };
             self.state.notices += 1;
@@ -159,32 +152,7 @@ impl Watched {
         let year = now.to_jiff().map_or(0, |t| {
             i64::from(t.to_zoned_datetime(plant.zone.clone()).year())
         });
-        let word: String = self
-            .bank
-            .name
-            .chars()
-            .map(|c| if c.is_alphanumeric() { c } else { '-' })
-            .collect();
+        let word = topic_name(&self.bank.name);
         format!("{word}-{year}-{:04}", self.state.notices + 1).into()
-    }
-}
-
-fn surroundings<'a>(
-    plant: &'a Plant,
-    bank: &'a Bank,
-    windows: &'a Windows,
-    exam: &'a Examination,
-    name: &'a dyn Fn(SourceIx) -> Name,
-    now: Time,
-    interval_us: Option<i64>,
-) -> Surroundings<'a> {
-    Surroundings {
-        plant,
-        bank,
-        windows,
-        exam,
-        name,
-        now,
-        interval_us,
     }
 }

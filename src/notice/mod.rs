@@ -14,4 +14,4 @@ pub use record::{
     Acknowledgement, Delivery, Kind, NamedSource, Notice, Priority, Since, State, Way,
 };
 pub use wire::NoticeData;
-pub use words::{Facts, MOST_SUBJECT, SPREAD_UNIT, Words};
+pub use words::{Compared, Facts, MOST_SUBJECT, SPREAD_UNIT, Words};

@@ -34,6 +34,8 @@ pub struct Facts<'a> {
     pub since: Since,
     /// How many sources the named ones were compared with.
     pub others: usize,
+    /// Whether they were compared with those, or only with each other.
+    pub compared: Compared,
     /// Mean of those, in the unit.
     pub even_mean: Option<f64>,
     /// Time in which the notice clears if the fault is mended now, in microseconds.
@@ -42,6 +44,15 @@ pub struct Facts<'a> {
     pub returned: Option<Time>,
     /// The page.
     pub url: &'a str,
+}
+
+/// What the named sources were compared with.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum Compared {
+    /// The even set.
+    WithEven,
+    /// Each other: the bank has two sources.
+    Mutually,
 }
 
 /// The words of a notice.
@@ -121,7 +132,7 @@ impl Facts<'_> {
     }
 
     fn is_pair(&self) -> bool {
-        self.sources.len() == 2 && self.others == 2
+        self.compared == Compared::Mutually && self.sources.len() == 2
     }
 
     fn who_and_how(&self) -> String {

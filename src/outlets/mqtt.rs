@@ -175,7 +175,15 @@ impl Outlet {
                 UnderWay::Status if self.queue.len() == 0 => self.complaint = None,
                 UnderWay::Status | UnderWay::Nothing => {}
             },
-            Signal::Denied(why) => return Err(why),
+            Signal::Denied(why) => match talk.under_way {
+                // A broker may refuse the status and take the notices, which matter.
+                UnderWay::Status => {
+                    warn!("the broker refuses the status: {why}");
+                    talk.confirmed();
+                }
+                UnderWay::Goodbye => return Ok(Go::Leave),
+                UnderWay::Notice | UnderWay::Nothing => return Err(why),
+            },
             Signal::Disconnected | Signal::Other => {}
         }
         self.go_on(talk)?;

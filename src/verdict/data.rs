@@ -98,10 +98,11 @@ pub enum Need {
 }
 
 impl Data {
-    /// The newest `longest` values of the sources in `who`.
-    pub fn gather(windows: &Windows, who: &[SourceIx], longest: usize) -> Self {
+    /// The newest `longest` values of the sources in `who`; where the bank pairs, of the cycles in which
+    /// at least `least` of them are present.
+    pub fn gather(windows: &Windows, who: &[SourceIx], least: usize, longest: usize) -> Self {
         let values = match windows.blocks() {
-            Some(blocks) => Values::Paired(rows(windows, who, longest, blocks.closed_to())),
+            Some(blocks) => Values::Paired(rows(windows, who, least, longest, blocks.closed_to())),
             None => Values::Alone(who.iter().map(|&s| newest(windows, s, longest)).collect()),
         };
         Self {
@@ -235,8 +236,8 @@ fn newest(windows: &Windows, source: SourceIx, most: usize) -> Vec<Entry> {
     values
 }
 
-/// The newest closed rows in which at least half of the sources (and two) are present.
-fn rows(windows: &Windows, who: &[SourceIx], most: usize, closed_to: i64) -> Rows {
+/// The newest closed rows in which at least `least` of the sources are present.
+fn rows(windows: &Windows, who: &[SourceIx], least: usize, most: usize, closed_to: i64) -> Rows {
     let series: Vec<Vec<Entry>> = who
         .iter()
         .map(|&s| {
@@ -252,7 +253,7 @@ fn rows(windows: &Windows, who: &[SourceIx], most: usize, closed_to: i64) -> Row
         .collect();
     let mut places: Vec<i64> = series.iter().flatten().map(|e| e.place).collect();
     places.sort();
-    let kept = often_enough(&places, who.len().div_ceil(2).max(2));
+    let kept = often_enough(&places, least);
     let kept = &kept[kept.len().saturating_sub(most)..];
     let mut rows = Rows {
         columns: who.len(),

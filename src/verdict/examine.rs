@@ -26,6 +26,8 @@ pub struct Participant {
     pub name: Name,
     /// The margin with which it is watched: the bank's, or more after it cleared.
     pub margin: f64,
+    /// Whether it delivers nothing now; a cycle then counts without it.
+    pub silent: bool,
 }
 
 /// A call: sources left the even set.
@@ -70,7 +72,9 @@ pub fn examine(
         shares: Shares::of(bank),
         origin: windows.origin().to_f64(),
     };
-    let data = Data::gather(windows, &order, bank.window_length());
+    let delivering = who.iter().filter(|p| !p.silent).count();
+    let least = delivering.div_ceil(2).max(2);
+    let data = Data::gather(windows, &order, least, bank.window_length());
     let mut known: Option<Dependence> = None;
     let mut spans = Vec::new();
     // Longest first: it knows best how much successive values resemble each other.
@@ -200,7 +204,7 @@ impl Looking<'_> {
         }
         let call = |aspect, named: &[bool]| call_of(cut, aspect, named, span);
         Seen {
-            level: level_named.map(|n| (level.pair_p, call(Aspect::Level, &n))),
+            level: level_named.map(|n| (level.deciding_p(), call(Aspect::Level, &n))),
             spread: spread_call.map(|s| (s.p, call(Aspect::Spread, &s.named))),
             look,
             margins,

@@ -53,6 +53,12 @@ impl Level {
         }
     }
 
+    /// The larger of the probabilities that must all be small for a call.
+    pub fn deciding_p(&self) -> f64 {
+        let deciding = self.tests.iter().filter(|t| t.decides);
+        deciding.map(|t| t.p_paid).fold(self.pair_p, f64::max)
+    }
+
     /// Whether level is called at a look's share `alpha` of the budget.
     pub fn calls(&self, alpha: f64) -> bool {
         let mut deciding = self.tests.iter().filter(|t| t.decides).peekable();

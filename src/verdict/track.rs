@@ -64,6 +64,12 @@ pub struct Moment {
 /// simulation for the maximum over all starts; twice a log likelihood ratio).
 const SET_95: f64 = 7.35;
 
+/// A source that scatters less than this share of the others does not scatter at all.
+pub const STILL: f64 = 0.01;
+
+/// Evidence of a return has at least this many values.
+const FEWEST_TO_CLEAR: f64 = 5.0;
+
 /// Fewest values behind a size.
 const FEWEST: usize = 2;
 
@@ -125,7 +131,7 @@ pub fn returned(
     let mut length = bar.shortest;
     while length.ceil() as usize <= held {
         let start = series.values.len() - length.ceil() as usize;
-        if bar.is_cleared(&series, start, aspect, yard) {
+        if bar.is_cleared(&series, start, sigma, aspect, yard) {
             return Some(series.moments[start]);
         }
         length *= 1.2;
@@ -171,15 +177,28 @@ impl Bar {
         Self {
             half_width,
             errors,
-            shortest: shortest.max(FEWEST as f64),
+            shortest: shortest.max(FEWEST_TO_CLEAR),
         }
     }
 
-    fn is_cleared(&self, series: &Series, start: usize, aspect: Aspect, yard: &Yardstick) -> bool {
-        let Some((contrast, se)) = series.contrast(start, aspect, yard) else {
+    fn is_cleared(
+        &self,
+        series: &Series,
+        start: usize,
+        sigma: f64,
+        aspect: Aspect,
+        yard: &Yardstick,
+    ) -> bool {
+        let Some((contrast, own)) = series.contrast(start, aspect, yard) else {
             return false;
         };
-        (self.half_width - contrast.abs()) / se >= self.errors
+        // A handful of values often scatters little by chance: never believe less than the whole
+        // series' sd.
+        let known = match aspect {
+            Aspect::Level => sigma * (yard.factor / (series.values.len() - start) as f64).sqrt(),
+            Aspect::Spread => 0.0,
+        };
+        (self.half_width - contrast.abs()) / own.max(known) >= self.errors
     }
 }
 
@@ -203,6 +222,8 @@ struct Series {
     /// The reference's own variance (per source, pooled) and how many sources it averages.
     reference_variance: f64,
     reference_share: f64,
+    /// Variance of the reference's mean, where it is one number for the whole series.
+    reference_error: f64,
 }
 
 impl Series {
@@ -246,6 +267,11 @@ impl Series {
             return None;
         }
         series.reference_variance = reference_variance(data, &others);
+        if let Values::Alone(all) = &data.values {
+            let values: f64 = others.iter().map(|c| 1.0 / all[*c].len() as f64).sum();
+            let size = others.len() as f64;
+            series.reference_error = series.reference_variance * values / (size * size);
+        }
         Some(series)
     }
 
@@ -256,6 +282,7 @@ impl Series {
             values,
             reference_variance: 0.0,
             reference_share,
+            reference_error: 0.0,
         }
     }
 
@@ -273,12 +300,13 @@ impl Series {
         let s = stats::summarize(values);
         match aspect {
             Aspect::Level => {
-                let se = (s.variance()? * yard.factor / s.n as f64).sqrt();
+                let own = s.variance()? / s.n as f64;
+                let se = ((own + self.reference_error) * yard.factor).sqrt();
                 (se > 0.0).then_some((s.mean, se))
             }
             Aspect::Spread => {
                 let own = s.variance()? - self.reference_variance * self.reference_share;
-                let ratio = (own / self.reference_variance).sqrt();
+                let ratio = (own / self.reference_variance).max(STILL * STILL).sqrt();
                 let se = (0.5 * yard.factor / (s.n - 1) as f64).sqrt();
                 (ratio.is_finite() && ratio > 0.0).then(|| (ratio.ln(), se))
             }
@@ -359,7 +387,7 @@ fn spread_statistics(series: &Series, yard: &Yardstick) -> Vec<f64> {
     }
     let flat = without_step(&series.values);
     let ratio = |n: f64, sum: f64| sum / n;
-    let cost = |r: f64| if r > 0.0 { r - 1.0 - r.ln() } else { 0.0 };
+    let cost = |r: f64| r - 1.0 - r.max(STILL * STILL).ln();
     let one_sided = |more: bool| {
         backwards(
             &flat,

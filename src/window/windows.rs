@@ -6,6 +6,10 @@ use crate::model::{Bank, Pairing, Reason, SourceIx, Time, Value};
 
 use super::{Blocks, Entry, Ring};
 
+/// No counter of a plant goes beyond this (2^53, what a double holds exactly), and sums of a few such
+/// numbers still fit.
+const MOST_CYCLE: u64 = 1 << 53;
+
 /// A value as it arrives at its window.
 #[derive(Clone, Copy, Debug, PartialEq)]
 pub struct Arriving {
@@ -147,6 +151,9 @@ impl Windows {
             Pairing::Slot { length_us } => Ok(arriving.taken.us().div_euclid(length_us.max(1))),
             Pairing::Cycle => {
                 let cycle = arriving.cycle.ok_or(Reason::NoCycle)?;
+                if cycle.unsigned_abs() > MOST_CYCLE {
+                    return Err(Reason::BadCycle);
+                }
                 Ok(self.count_on(arriving, cycle))
             }
         }

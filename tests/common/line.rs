@@ -71,6 +71,8 @@ pub struct Line {
     /// Step of the random walk that all sources share.
     pub common_step: f64,
     pub resolution: f64,
+    /// Sources, from 1, that deliver nothing.
+    pub absent: Vec<usize>,
     /// Everything the engine wanted done.
     pub effects: Vec<Effect>,
 }
@@ -94,6 +96,7 @@ impl Line {
             common: 0.0,
             common_step: 0.3,
             resolution: 0.1,
+            absent: Vec::new(),
             effects: Vec::new(),
         }
     }
@@ -113,6 +116,9 @@ impl Line {
                 self.measurement(s, value)
             });
             let all: Vec<Measurement> = all.collect();
+            let all = all.into_iter().enumerate();
+            let present = all.filter(|(s, _)| !self.absent.contains(&(s + 1)));
+            let all = present.map(|(_, m)| m).collect();
             self.handle(Event::Measurements(all));
         }
     }
@@ -126,6 +132,25 @@ impl Line {
             taken: Some(self.now()),
             cycle: Some(self.cycle),
         }
+    }
+
+    /// A measurement of the first source with this cycle number.
+    pub fn wrong_cycle(&mut self, cycle: i64) {
+        let wrong = Measurement {
+            cycle: Some(cycle),
+            ..self.measurement(0, 503.0)
+        };
+        self.handle(Event::Measurements(vec![wrong]));
+    }
+
+    /// Measurements taken in so far.
+    pub fn accepted(&mut self) -> u64 {
+        let snapshot = self.engine.snapshot();
+        snapshot.banks[0]
+            .outcomes
+            .get("accepted")
+            .copied()
+            .unwrap_or(0)
     }
 
     pub fn handle(&mut self, event: Event) {

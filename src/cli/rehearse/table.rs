@@ -8,7 +8,8 @@ use std::sync::Arc;
 use comfy_table::{CellAlignment, Table, presets};
 use jiff::tz::TimeZone;
 
-use crate::model::Time;
+use crate::model::{Time, fixed, signed};
+use crate::notice::{Kind, NamedSource, Notice};
 use crate::verdict::{Estimate, Look, TestEntry};
 
 use super::ledger::Ledger;
@@ -87,10 +88,22 @@ fn notices(ledger: &Ledger, zone: &TimeZone) -> String {
                 .map_or_else(|| "no".to_owned(), |at| moment(at, zone)),
             notice.bank.to_string(),
             moment(notice.since.at, zone),
-            notice.subject.clone(),
+            what(notice),
         ]);
     }
     format!("Notices raised: {}\n{table}", ledger.notices.len())
+}
+
+/// What it was about and how large that was; at worst, when it is over.
+fn what(notice: &Notice) -> String {
+    let size = |s: &NamedSource| match notice.kind {
+        Kind::SpreadApart => fixed(s.deviation, 2),
+        _ => signed(s.deviation, 2),
+    };
+    let one = |s: &NamedSource| format!("{} {}", s.source, size(s));
+    let all: Vec<String> = notice.sources.iter().map(one).collect();
+    let (kind, unit) = (notice.kind.words(), &notice.unit);
+    format!("{kind}: {} {unit}", all.join(", "))
 }
 
 /// One of the looks at what is there in the end.

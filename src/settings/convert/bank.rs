@@ -10,6 +10,7 @@ use crate::settings::keys;
 use crate::settings::raw::{Kind, Node};
 use crate::settings::section::{Field, Spot};
 use crate::settings::written::{WrittenBank, WrittenLimits, WrittenPairing, WrittenSources};
+use crate::stats::dist::studentized_range;
 
 use super::feed::{WrittenFeed, feed};
 
@@ -23,8 +24,8 @@ const MOST_SPANS: usize = 20;
 const LOOK_EVERY_US: i64 = 30 * S;
 /// Largest ratio of standard deviations that does not matter, when nothing else is said.
 const SPREAD_MARGIN: f64 = 1.5;
-/// The pairs of a thousand sources are half a million.
-const MOST_SOURCES: i64 = 1000;
+/// The statistics compare at most this many.
+const MOST_SOURCES: i64 = studentized_range::MOST_SOURCES as i64;
 /// Sources that may be discovered when nothing else is said: the largest fillers have fewer heads.
 const DISCOVERED: u16 = 120;
 /// A cycle waits this long when nothing else is said.

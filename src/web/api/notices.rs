@@ -110,7 +110,11 @@ pub async fn submit(app: &App, id: &str, by: &str, comment: &str) -> Result<Arc<
     };
     match app.ask(by.into(), what).await? {
         Outcome::Acknowledged(notice) => Ok(notice),
-        Outcome::NotFound(why) => Err(Problem::not_found(&why)),
+        // One that is over has left the engine: asking again gives it as it was left.
+        Outcome::NotFound(why) => match app.notice(&app.now(), id).await {
+            Ok(notice) if notice.acknowledged.is_some() => Ok(notice),
+            _ => Err(Problem::not_found(&why)),
+        },
         Outcome::Refused(why) => Err(Problem::conflict(&why)),
         Outcome::Windows(_) => Err(Problem::internal("the answer was to another question")),
     }
