@@ -61,6 +61,7 @@ fn called(case: &Case, alpha: f64, margin: f64, runs: usize, seed: u64) -> (f64,
         source: SourceIx(s as u16),
         name: head(s + 1),
         margin,
+        silent: false,
     };
     let who: Vec<Participant> = (0..case.k).map(participant).collect();
     let mut noise = Normal::new(seed);
