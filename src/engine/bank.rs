@@ -7,12 +7,14 @@ use serde::{Deserialize, Serialize};
 
 use crate::model::{Bank, Measurement, Name, Reason, SourceIx, Sources, Time};
 use crate::notice::Kind;
-use crate::verdict::{Examination, Look, Need, Participant, examine};
+use crate::verdict::watch::{Crossing, Watch};
+use crate::verdict::{Asked, Examination, Look, Need, Participant, examine};
 use crate::window::{Accepted, Arriving, Windows};
 
 use super::incident::Incident;
 use super::natural::natural;
 use super::source::{Source, usual_interval_us};
+use super::watching::{Pace, watch_for};
 use super::{RefusalView, WindowValue, WindowView};
 
 /// A clock may run ahead by this much; a value from further in the future is refused.
@@ -45,6 +47,10 @@ pub struct State {
     pub newest_source_at: u64,
     /// Notices made so far.
     pub notices: u64,
+    /// The watch, where sources share cycles.
+    pub watch: Option<Watch>,
+    /// The rate of cycles for which its thresholds hold.
+    pub pace: Pace,
 }
 
 impl State {
@@ -56,6 +62,11 @@ impl State {
             self.windows.add_source();
             source.cleared_margin = 0.0;
         }
+        self.watch = watch_for(bank);
+        for _ in &self.sources {
+            self.watch.iter_mut().for_each(Watch::add_source);
+        }
+        self.pace = Pace::default();
         for incident in &mut self.incidents {
             incident.forget(&|_| true);
         }
@@ -94,6 +105,8 @@ impl Watched {
             began: None,
             newest_source_at: 0,
             notices: 0,
+            watch: watch_for(&bank),
+            pace: Pace::default(),
         };
         Self::with_state(bank, state)
     }
@@ -133,12 +146,14 @@ impl Watched {
             incident.forget(&gone);
         }
         watched.settle();
+        watched.retune();
         watched
     }
 
     fn add_source(&mut self, name: Name, discovered: bool) -> SourceIx {
         let ix = SourceIx(self.state.sources.len() as u16);
         self.state.windows.add_source();
+        self.state.watch.iter_mut().for_each(Watch::add_source);
         self.state
             .sources
             .push(Source::new(name.clone(), discovered));
@@ -308,8 +323,8 @@ impl Watched {
         self.state.sources[source.index()].name.clone()
     }
 
-    /// Examines the windows without consequences.
-    pub fn examine(&self, now: Time, need: Need) -> Examination {
+    /// Examines the windows without consequences; a crossing of the watch decides what is called.
+    pub fn examine(&self, now: Time, need: Need, crossing: Option<&Crossing>) -> Examination {
         let takes_part = |s: &SourceIx| self.state.sources[s.index()].takes_part();
         let participant = |s: SourceIx| Participant {
             source: s,
@@ -326,7 +341,12 @@ impl Watched {
             .filter(takes_part)
             .map(participant)
             .collect();
-        examine(&self.bank, &self.state.windows, &who, now, need)
+        let asked = Asked {
+            at: now,
+            need,
+            crossing,
+        };
+        examine(&self.bank, &self.state.windows, &who, asked)
     }
 
     /// The usual time between values of a source: the median over the sources.

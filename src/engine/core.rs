@@ -6,8 +6,9 @@ use crate::model::{Bank, BankIx, Measurement, Name, Refusal, Time};
 use crate::notice::{Acknowledgement, Delivery, Notice, Way};
 use crate::verdict::{Finding, Look, Need};
 
-use super::bank::{SILENCE_EVERY_US, State, Watched};
-use super::look::Freshness;
+use super::bank::{SILENCE_EVERY_US, Watched};
+use super::look::{Freshness, Looked};
+use super::restore::{self, RestoreError, checkpoint};
 use super::view;
 use super::{
     Command, Condition, Due, Effect, Event, Outcome, Part, Plant, Record, RefusalView, Snapshot,
@@ -16,33 +17,6 @@ use super::{
 
 /// A bank writes its whole state at least this often.
 const CHECKPOINT_EVERY_US: i64 = 600_000_000;
-
-/// Version of the encoded state.
-const STATE_VERSION: u8 = 1;
-
-/// Why a checkpoint cannot be gone on from.
-#[derive(Clone, Debug, PartialEq, Eq, thiserror::Error)]
-pub enum RestoreError {
-    /// No bank of this name is configured.
-    #[error("bank \"{0}\" is no longer configured; what was kept of it is left alone")]
-    NoSuchBank(String),
-    /// Written by another version.
-    #[error(
-        "the state of bank \"{bank}\" was written in form {version}, this program reads form {STATE_VERSION}"
-    )]
-    OtherVersion {
-        /// The bank.
-        bank: String,
-        /// The form found.
-        version: u8,
-    },
-    /// It cannot be decoded.
-    #[error("the state of bank \"{0}\" cannot be decoded")]
-    Unreadable(String),
-    /// Values kept under another pairing do not fit.
-    #[error("the pairing of bank \"{0}\" was changed, so its windows start afresh")]
-    PairingChanged(String),
-}
 
 /// Owns every bank.
 pub struct Engine {
@@ -86,17 +60,7 @@ impl Engine {
         let own = || bank.to_owned();
         let found = self.banks.iter_mut().find(|b| &*b.bank.name == bank);
         let watched = found.ok_or_else(|| RestoreError::NoSuchBank(own()))?;
-        let (&version, encoded) = state
-            .split_first()
-            .ok_or_else(|| RestoreError::Unreadable(own()))?;
-        if version != STATE_VERSION {
-            return Err(RestoreError::OtherVersion {
-                bank: own(),
-                version,
-            });
-        }
-        let mut state: State =
-            postcard::from_bytes(encoded).map_err(|_| RestoreError::Unreadable(own()))?;
+        let mut state = restore::decode(bank, state)?;
         let adapted = state.windows.adapt(&watched.bank);
         if !adapted {
             state.start_over(&watched.bank);
@@ -124,6 +88,14 @@ impl Engine {
         self.changed = true;
     }
 
+    /// Numbers a bank's notices after `last`, where its state is lost and its notices are not.
+    pub fn number_notices_after(&mut self, bank: &str, last: u64) {
+        let found = self.banks.iter_mut().find(|b| &*b.bank.name == bank);
+        if let Some(bank) = found {
+            bank.state.notices = bank.state.notices.max(last);
+        }
+    }
+
     /// Applies a turn from the journal again. Banks whose checkpoint already contains it leave it
     /// alone; nothing is asked for, since what the turn asked for was done then.
     pub fn replay(&mut self, turn: Turn) {
@@ -149,11 +121,10 @@ impl Engine {
         self.changed = true;
         match event {
             Event::Measurements(all) => {
-                let kept = self.measurements(number, all, now);
-                (
-                    (!kept.is_empty()).then_some(Event::Measurements(kept)),
-                    Vec::new(),
-                )
+                let mut effects = Vec::new();
+                let kept = self.measurements(number, all, now, &mut effects);
+                let kept = (!kept.is_empty()).then_some(Event::Measurements(kept));
+                (kept, effects)
             }
             Event::Refusals(refusals) => {
                 for refusal in refusals {
@@ -187,21 +158,32 @@ impl Engine {
         }
     }
 
-    fn measurements(&mut self, number: u64, all: Vec<Measurement>, now: Time) -> Vec<Measurement> {
+    fn measurements(
+        &mut self,
+        number: u64,
+        all: Vec<Measurement>,
+        now: Time,
+        effects: &mut Vec<Effect>,
+    ) -> Vec<Measurement> {
         let mut kept = Vec::with_capacity(all.len());
         let contained: Vec<bool> = self.banks.iter().map(|b| b.state.turn >= number).collect();
         for m in all {
-            let Some(bank) = self.banks.get_mut(m.bank.index()) else {
+            let b = m.bank.index();
+            let Some(bank) = self.banks.get_mut(b) else {
                 continue;
             };
-            if contained[m.bank.index()] {
+            if contained[b] {
                 continue;
             }
             bank.dirty = true;
             match bank.accept(&m, now) {
                 Ok(()) => {
                     bank.mark(number);
+                    let called = bank.watch(&self.plant, now);
                     kept.push(m);
+                    if let Some(called) = called {
+                        self.tell(b, called, number, now, effects);
+                    }
                 }
                 Err(reason) => {
                     let refusal = view::refusal_of(&m, reason, bank, now);
@@ -258,19 +240,32 @@ impl Engine {
         let contained: Vec<bool> = self.banks.iter().map(|b| b.state.turn >= number).collect();
         let open = |b: BankIx| contained.get(b.index()) == Some(&false);
         for &(b, source) in due.silent.iter().filter(|(b, _)| open(*b)) {
-            self.banks[b.index()].silence(source);
-            self.banks[b.index()].mark(number);
+            let bank = &mut self.banks[b.index()];
+            bank.silence(source);
+            bank.mark(number);
+            // Nobody waits for it any more, so cycles may have closed.
+            if let Some(called) = bank.watch(&self.plant, now) {
+                self.tell(b.index(), called, number, now, effects);
+            }
         }
         for &b in due.looks.iter().filter(|b| open(**b)) {
-            self.look(b.index(), number, now, effects);
-            self.banks[b.index()].mark(number);
+            let bank = &mut self.banks[b.index()];
+            let looked = bank.look(&self.plant, now);
+            bank.mark(number);
+            self.tell(b.index(), looked, number, now, effects);
         }
     }
 
-    fn look(&mut self, b: usize, number: u64, now: Time, effects: &mut Vec<Effect>) {
-        let plant = self.plant.clone();
-        let bank = &mut self.banks[b];
-        let looked = bank.look(&plant, now);
+    /// What a look brought, as effects.
+    fn tell(
+        &mut self,
+        b: usize,
+        looked: Looked,
+        number: u64,
+        now: Time,
+        effects: &mut Vec<Effect>,
+    ) {
+        let bank = &self.banks[b];
         let name = bank.bank.name.clone();
         for look in &looked.looks {
             effects.push(Effect::Keep(Record::Digest(name.clone(), look.digest())));
@@ -423,7 +418,7 @@ impl Engine {
         let all = self
             .banks
             .iter()
-            .flat_map(|b| b.examine(now, Need::Whatever).looks);
+            .flat_map(|b| b.examine(now, Need::Whatever, None).looks);
         all.map(Arc::new).collect()
     }
 
@@ -480,20 +475,4 @@ fn next_deadline(bank: &Watched) -> Option<Time> {
         .into_iter()
         .flatten()
         .min()
-}
-
-/// `last` is the last turn that was applied: whatever in it was not for this bank is contained too,
-/// so that a bank that stands idle does not hold the whole journal back.
-fn checkpoint(bank: &mut Watched, last: u64, now: Time) -> Record {
-    bank.state.turn = bank.state.turn.max(last);
-    bank.unsaved = false;
-    bank.last_checkpoint = Some(now);
-    let mut state = vec![STATE_VERSION];
-    // Encoding plain data into memory cannot fail.
-    state.extend(postcard::to_allocvec(&bank.state).unwrap_or_default());
-    Record::Checkpoint {
-        bank: bank.bank.name.clone(),
-        turn: bank.state.turn,
-        state,
-    }
 }

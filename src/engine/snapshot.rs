@@ -72,7 +72,7 @@ pub struct BankView {
     pub next_look: Option<Time>,
     /// The newest time of a measurement that was taken in.
     pub newest_taken: Option<Time>,
-    /// Mean of all sources over the longest span (of the newest look), in the unit.
+    /// Mean of all sources over [`BankView::shown_span`], in the unit.
     pub mean: Option<f64>,
 }
 
@@ -113,7 +113,8 @@ impl SourceState {
     }
 }
 
-/// A source, now. Figures come from the newest look that could judge it, over the longest such span.
+/// A source, now. Figures come from the newest look over [`BankView::shown_span`]; those of a source
+/// that an open notice names rest on the values since it left.
 #[derive(Clone, Debug)]
 pub struct SourceView {
     /// Which.

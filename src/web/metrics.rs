@@ -283,7 +283,8 @@ const MEASUREMENTS: &str = "Measurements since the process started by outcome: a
 const WINDOW_VALUES: &str = "Values in a source's window now.";
 const SOURCES: &str = "Sources of a bank by state: awaited, new, present, silent.";
 const DEVIATION: &str = "Deviation of a source from the even set without it, in standard deviations \
-    within sources, over the longest span that could be judged. Shows size; it is not corrected for \
+    within sources: since it left where an open notice names it, else over the shortest span that \
+    resolves the margin. Shows size; it is not corrected for \
     how often one looks, so do not alert on it.";
 const NAMED: &str = "1 while an open notice of this kind names the source, else 0. Join it with \
     evenrow_notice_active on (bank, kind): the names of one notice share one family-wise error rate.";

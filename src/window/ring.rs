@@ -104,6 +104,14 @@ impl Ring {
         self.entries.iter()
     }
 
+    /// The value at `place`, if it counts. Made for places near the newest.
+    pub fn at(&self, place: i64) -> Option<&Entry> {
+        let mut from_newest = self.entries.iter().rev();
+        from_newest
+            .find(|e| e.place <= place)
+            .filter(|e| e.place == place && place >= self.fresh_from)
+    }
+
     /// The newest value.
     pub fn newest(&self) -> Option<&Entry> {
         self.entries.back()

@@ -33,7 +33,7 @@ pub struct BankBody {
     pub standing: String,
     /// Names of its open notices.
     pub open_notices: Vec<String>,
-    /// Mean of all sources over the longest span.
+    /// Mean of all sources over the span that stands for now.
     pub mean: Option<f64>,
     /// Newest time of a measurement that was taken in.
     #[schema(value_type = Option<String>, format = DateTime)]
