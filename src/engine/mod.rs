@@ -25,6 +25,6 @@ pub use event::{Command, Due, Effect, Event, Outcome, Record, Ticket, Turn};
 pub use history::{History, HistoryError, Page};
 pub use restore::RestoreError;
 pub use snapshot::{
-    BankView, Cycles, Plant, RefusalView, Snapshot, SourceState, SourceView, WindowValue,
-    WindowView,
+    BankView, Cycles, Plant, RefusalView, Snapshot, SourceState, SourceView, WatchView,
+    WindowValue, WindowView,
 };

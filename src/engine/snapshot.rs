@@ -8,6 +8,7 @@ use serde::{Deserialize, Serialize};
 
 use crate::model::{Bank, Name, Reason, Refusal, SourceIx, Time, Value};
 use crate::notice::{Kind, Notice};
+use crate::verdict::watch::{Figures, Progress, Reading};
 use crate::verdict::{Estimate, Look};
 
 use super::condition::Condition;
@@ -66,6 +67,8 @@ pub struct BankView {
     pub refusals: Vec<RefusalView>,
     /// How the cycles (or slots) came in; `None` without pairing.
     pub cycles: Option<Cycles>,
+    /// What the watch says of itself; `None` without pairing.
+    pub watch: Option<WatchView>,
     /// The usual time between values of a source.
     pub interval_us: Option<i64>,
     /// When the next look is due, if anything new has arrived.
@@ -74,6 +77,17 @@ pub struct BankView {
     pub newest_taken: Option<Time>,
     /// Mean of all sources over [`BankView::shown_span`], in the unit.
     pub mean: Option<f64>,
+}
+
+/// The watch of a bank, now.
+#[derive(Clone, Debug, PartialEq)]
+pub struct WatchView {
+    /// Whether it decides yet.
+    pub progress: Progress,
+    /// How far each part is from its threshold; empty while it learns.
+    pub readings: Vec<Reading>,
+    /// What it learnt, and how the budget became its thresholds.
+    pub figures: Figures,
 }
 
 /// Counts of cycles or slots since the bank's windows began.

@@ -8,7 +8,7 @@ use crate::verdict::{Aspect, Look, SourceLook};
 
 use super::bank::Watched;
 use super::incident::Incident;
-use super::{BankView, Condition, Cycles, Plant, RefusalView, Snapshot, SourceView};
+use super::{BankView, Condition, Cycles, Plant, RefusalView, Snapshot, SourceView, WatchView};
 
 /// A snapshot of nothing.
 pub fn empty(plant: Arc<Plant>) -> Snapshot {
@@ -52,6 +52,11 @@ pub fn bank_view(watched: &Watched) -> BankView {
         outcomes: watched.outcomes.clone(),
         refusals: watched.refusals.clone(),
         cycles,
+        watch: state.watch.as_ref().map(|w| WatchView {
+            progress: w.progress(),
+            readings: w.readings(),
+            figures: w.figures(),
+        }),
         interval_us: watched.interval_us(),
         next_look: state.look_due,
         newest_taken: state.sources.iter().filter_map(|s| s.last_taken).max(),

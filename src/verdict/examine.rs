@@ -112,7 +112,7 @@ pub fn examine(bank: &Bank, windows: &Windows, who: &[Participant], asked: Asked
         .map(|(call, margins)| look.rename(&data, call, &margins, known))
         .collect();
     let crossed = crossing.map(|c| {
-        let call = look.call_of_crossing(c);
+        let call = look.call_of_crossing(&data, c);
         look.rename(&data, call, &look.margins(&data), known)
     });
     Examination {
@@ -282,7 +282,7 @@ impl Looking<'_> {
     }
 
     /// What a crossing of the watch calls before the values since its start are asked for the names.
-    fn call_of_crossing(&self, crossing: &Crossing) -> Call {
+    fn call_of_crossing(&self, data: &Data, crossing: &Crossing) -> Call {
         let leads = |s: &SourceIx| crossing.leading.contains(s);
         let all = self.who.iter().map(|p| p.source);
         let (named, rest): (Vec<SourceIx>, Vec<SourceIx>) = all.partition(leads);
@@ -290,13 +290,24 @@ impl Looking<'_> {
             aspect: crossing.aspect,
             reference: if rest.is_empty() { named.clone() } else { rest },
             named,
-            span: self.bank.window_length(),
+            span: self.span_since(data, crossing.start.place),
             began: Some(Began {
                 start: crossing.start,
                 earliest: crossing.earliest,
                 latest: crossing.latest,
             }),
         }
+    }
+
+    /// The shortest span that holds the values since a place, or the longest there is.
+    fn span_since(&self, data: &Data, start: i64) -> usize {
+        let since = data.since(start);
+        let values = since.map_or(usize::MAX, |d| {
+            d.columns().iter().map(Vec::len).max().unwrap_or(0)
+        });
+        let spans = &self.bank.spans;
+        let holds = spans.iter().copied().find(|s| *s >= values);
+        holds.unwrap_or_else(|| self.bank.window_length())
     }
 
     /// Names again on the values since the estimated start, which the calling span mixes with older

@@ -6,6 +6,7 @@
 mod looks;
 mod notices;
 mod past;
+mod watch;
 
 pub use past::SampleHistory;
 
@@ -186,6 +187,7 @@ pub fn view(bank: Bank, story: Story, seed: u64) -> BankView {
         open,
         outcomes,
         refusals: if values > 0 { refusals() } else { Vec::new() },
+        watch: Some(watch::watch(&bank, names.len(), story, values)),
         cycles: Some(Cycles {
             closed: 40_176,
             skipped: 2,

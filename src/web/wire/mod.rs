@@ -8,10 +8,12 @@
 mod bank;
 mod look;
 mod notice;
+mod watch;
 
 pub use bank::{BankBody, BankWholeBody, RefusalBody, SourceBody, WindowBody, WindowValueBody};
 pub use look::{DependenceBody, DeviationBody, DigestBody, LookBody, SourceLookBody, TestBody};
 pub use notice::{AcknowledgeBody, AcknowledgementBody, NamedSourceBody, NoticeBody, SinceBody};
+pub use watch::{WatchBody, WatchPartBody};
 
 use serde::Serialize;
 use utoipa::ToSchema;
