@@ -2,7 +2,7 @@
 
 use serde::{Deserialize, Serialize};
 
-use crate::model::SourceIx;
+use crate::model::{SourceIx, Time};
 use crate::notice::{NamedSource, Since};
 use crate::verdict::{Aspect, Began, Call, Estimate, Located, Yardstick, locate, size_since};
 
@@ -17,6 +17,21 @@ pub struct Apart {
     /// The largest size seen.
     pub worst: Estimate,
     pub cleared: bool,
+    /// The last adjustment since it left.
+    pub adjusted: Option<Adjusted>,
+}
+
+/// An adjustment of a source that is apart.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+pub struct Adjusted {
+    /// When it was entered.
+    pub at: Time,
+    /// By how much, where that was said.
+    pub by: Option<f64>,
+    /// The first place in the windows that counts after it.
+    pub from: i64,
+    /// The size before it.
+    pub before: Estimate,
 }
 
 /// Since when, in the window's order and in time.
@@ -60,6 +75,7 @@ impl Apart {
             size,
             worst: size,
             cleared: false,
+            adjusted: None,
         }
     }
 
@@ -70,6 +86,7 @@ impl Apart {
             size: located.size,
             worst: located.size,
             cleared: false,
+            adjusted: None,
         }
     }
 

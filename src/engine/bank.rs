@@ -12,6 +12,7 @@ use crate::verdict::{Asked, Examination, Look, Need, Participant, examine};
 use crate::window::{Accepted, Arriving, Windows};
 
 use super::incident::Incident;
+use super::line::Line;
 use super::natural::natural;
 use super::source::{Source, usual_interval_us};
 use super::watching::{Pace, watch_for};
@@ -51,6 +52,8 @@ pub struct State {
     pub watch: Option<Watch>,
     /// The rate of cycles for which its thresholds hold.
     pub pace: Pace,
+    /// The line as its events left it.
+    pub line: Line,
 }
 
 impl State {
@@ -107,6 +110,7 @@ impl Watched {
             notices: 0,
             watch: watch_for(&bank),
             pace: Pace::default(),
+            line: Line::default(),
         };
         Self::with_state(bank, state)
     }
@@ -132,7 +136,7 @@ impl Watched {
         let is_listed = matches!(watched.bank.sources, Sources::Listed(_));
         for (s, source) in watched.state.sources.iter_mut().enumerate() {
             source.retired = is_listed && !listed.contains(&source.name);
-            let waited_for = !source.retired && !source.silent;
+            let waited_for = !source.retired && !source.silent && !source.out_of_use;
             watched.state.windows.expect(SourceIx(s as u16), waited_for);
         }
         for name in listed {
@@ -146,6 +150,7 @@ impl Watched {
             incident.forget(&gone);
         }
         watched.settle();
+        watched.follow_product();
         watched.retune();
         watched
     }
@@ -188,6 +193,10 @@ impl Watched {
         }
         if now.us_since(taken) > self.bank.oldest_us {
             return Err(Reason::TooOld);
+        }
+        let stopped = self.state.line.stopped.as_ref();
+        if stopped.is_some_and(|stop| taken >= stop.at) {
+            return Err(Reason::LineStopped);
         }
         let source = self.source(&m.source)?;
         let arriving = Arriving {
@@ -232,6 +241,12 @@ impl Watched {
         Ok(())
     }
 
+    /// A source by its name.
+    pub fn source_named(&self, name: &Name) -> Option<SourceIx> {
+        let known = self.by_name.get(name).copied();
+        known.filter(|s| !self.state.sources[s.index()].retired)
+    }
+
     fn source(&mut self, name: &Name) -> Result<SourceIx, Reason> {
         if let Some(&ix) = self.by_name.get(name) {
             return if self.state.sources[ix.index()].retired {
@@ -251,7 +266,7 @@ impl Watched {
 
     /// Plans the next look; never further ahead than one period, so that a clock that was set back does
     /// not stop the looks.
-    fn plan_look(&mut self, now: Time) {
+    pub fn plan_look(&mut self, now: Time) {
         let every = self.bank.look_every_us;
         let began = self.state.began.unwrap_or(now);
         let next = self.state.last_look.unwrap_or(began).plus_us(every);
@@ -267,11 +282,17 @@ impl Watched {
         let Some(began) = self.state.began else {
             return Vec::new();
         };
+        let line = &self.state.line;
+        if line.stopped.is_some() {
+            return Vec::new();
+        }
+        let began = line.started.unwrap_or(began).max(began);
         let fallen = |(s, source): (usize, &Source)| {
             let ix = SourceIx(s as u16);
             let ring = self.state.windows.ring(ix);
             let since = source.silent_from(&self.bank, ring, began);
-            (!source.silent && !source.retired && since <= now).then_some(ix)
+            let judged = !source.silent && !source.retired && !source.out_of_use;
+            (judged && since <= now).then_some(ix)
         };
         self.state
             .sources

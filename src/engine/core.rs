@@ -20,8 +20,8 @@ const CHECKPOINT_EVERY_US: i64 = 600_000_000;
 
 /// Owns every bank.
 pub struct Engine {
-    plant: Arc<Plant>,
-    banks: Vec<Watched>,
+    pub(super) plant: Arc<Plant>,
+    pub(super) banks: Vec<Watched>,
     last_turn: u64,
     outbox: usize,
     outbox_trouble: Option<String>,
@@ -138,7 +138,7 @@ impl Engine {
                 self.do_due(number, &due, now, &mut effects);
                 (Some(Event::Due(due)), effects)
             }
-            Event::Command { ticket, who, what } => self.command(number, ticket, who, what, now),
+            Event::Command { ticket, who, what } => self.command(number, (ticket, who), what, now),
             Event::Delivered { number } => {
                 self.outbox = self.outbox.saturating_sub(1);
                 self.outbox_trouble = None;
@@ -289,7 +289,7 @@ impl Engine {
     }
 
     /// Sends what people should receive now.
-    fn send(&mut self, b: usize, number: u64, now: Time, effects: &mut Vec<Effect>) {
+    pub(super) fn send(&mut self, b: usize, number: u64, now: Time, effects: &mut Vec<Effect>) {
         let mut already = effects
             .iter()
             .filter(|e| matches!(e, Effect::Deliver(_)))
@@ -315,83 +315,6 @@ impl Engine {
             .state
             .incidents
             .retain(|i| i.notice.state.is_open());
-    }
-
-    fn command(
-        &mut self,
-        number: u64,
-        ticket: Ticket,
-        who: Name,
-        what: Command,
-        now: Time,
-    ) -> (Option<Event>, Vec<Effect>) {
-        match &what {
-            Command::Windows { bank } => {
-                let outcome = match self.banks.get(bank.index()) {
-                    Some(b) => Outcome::Windows(b.window_views()),
-                    None => Outcome::NotFound("there is no such bank".to_owned()),
-                };
-                (None, vec![Effect::Answer { ticket, outcome }])
-            }
-            Command::Acknowledge { notice, comment } => {
-                let by = who.clone();
-                let acknowledgement = Acknowledgement {
-                    by,
-                    at: now,
-                    comment: comment.clone(),
-                };
-                let Some((b, after, news)) = self.acknowledge(number, notice, acknowledgement)
-                else {
-                    let outcome =
-                        Outcome::NotFound(format!("no open notice has the id \"{notice}\""));
-                    return (None, vec![Effect::Answer { ticket, outcome }]);
-                };
-                let mut effects = Vec::new();
-                if news {
-                    effects.push(Effect::Keep(Record::Notice(after.clone())));
-                    self.send(b, number, now, &mut effects);
-                }
-                effects.push(Effect::Answer {
-                    ticket,
-                    outcome: Outcome::Acknowledged(after),
-                });
-                (
-                    news.then_some(Event::Command { ticket, who, what }),
-                    effects,
-                )
-            }
-        }
-    }
-
-    /// The bank, the notice after it, and whether anything changed.
-    fn acknowledge(
-        &mut self,
-        number: u64,
-        id: &str,
-        acknowledgement: Acknowledgement,
-    ) -> Option<(usize, Arc<Notice>, bool)> {
-        for (b, bank) in self.banks.iter_mut().enumerate() {
-            if bank.state.turn >= number {
-                continue;
-            }
-            let Some(incident) = bank
-                .state
-                .incidents
-                .iter_mut()
-                .find(|i| &*i.notice.id == id)
-            else {
-                continue;
-            };
-            let before = incident.notice.state;
-            incident.acknowledge(acknowledgement);
-            let news = incident.notice.state != before;
-            let after = incident.notice.clone();
-            if news {
-                bank.mark(number);
-            }
-            return Some((b, after, news));
-        }
-        None
     }
 
     fn checkpoint_if_due(&mut self, b: usize, now: Time) -> Option<Effect> {

@@ -16,7 +16,7 @@ use crate::verdict::{
 use crate::window::Windows;
 
 use super::Plant;
-use super::apart::{Apart, farness};
+use super::apart::{Adjusted, Apart, farness};
 use super::bank::Watched;
 
 /// Updates of an open notice are sent at most this often.
@@ -154,7 +154,9 @@ impl Incident {
         let yard = about.yard(self.aspect, &self.reference);
         for one in self.apart.iter_mut().filter(|a| !a.cleared) {
             let data = &about.exam.data;
-            match returned(data, one.source, self.aspect, &yard, self.called_at) {
+            let after = one.adjusted.map_or(i64::MIN, |a| a.from.saturating_sub(1));
+            let after = after.max(self.called_at);
+            match returned(data, one.source, self.aspect, &yard, after) {
                 Some(from) => {
                     one.cleared = true;
                     back.push((one.source, from.place));
@@ -208,6 +210,26 @@ impl Incident {
         }
         self.tell(about);
         true
+    }
+
+    /// A source that it is about was adjusted: evidence counts from `from` on.
+    pub fn adjusted(&mut self, source: SourceIx, by: Option<f64>, at: Time, from: i64) {
+        if !self.is_about(source) {
+            return;
+        }
+        if let Some(one) = self.apart.iter_mut().find(|a| a.source == source) {
+            one.adjusted = Some(Adjusted {
+                at,
+                by,
+                from,
+                before: one.size,
+            });
+        }
+    }
+
+    /// Another product: evidence counts from `from` on.
+    pub fn changed_over(&mut self, from: i64) {
+        self.called_at = self.called_at.max(from.saturating_sub(1));
     }
 
     /// A person acknowledges; asking twice changes nothing.

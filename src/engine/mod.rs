@@ -6,11 +6,13 @@
 
 mod apart;
 mod bank;
+mod commands;
 mod condition;
 mod core;
 mod event;
 mod history;
 mod incident;
+mod line;
 mod look;
 mod natural;
 mod restore;

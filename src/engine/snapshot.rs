@@ -6,7 +6,7 @@ use std::sync::Arc;
 
 use serde::{Deserialize, Serialize};
 
-use crate::model::{Bank, Name, Reason, Refusal, SourceIx, Time, Value};
+use crate::model::{Bank, LineEvent, Name, Reason, Refusal, SourceIx, Time, Value};
 use crate::notice::{Kind, Notice};
 use crate::verdict::watch::{Figures, Progress, Reading};
 use crate::verdict::{Estimate, Look};
@@ -67,6 +67,12 @@ pub struct BankView {
     pub refusals: Vec<RefusalView>,
     /// How the cycles (or slots) came in; `None` without pairing.
     pub cycles: Option<Cycles>,
+    /// The stop, while the line stands.
+    pub stopped: Option<LineEvent>,
+    /// What the line makes, since the first changeover.
+    pub product: Option<Name>,
+    /// The newest line events, oldest first.
+    pub line_events: Vec<LineEvent>,
     /// What the watch says of itself; `None` without pairing.
     pub watch: Option<WatchView>,
     /// The usual time between values of a source.
@@ -113,6 +119,8 @@ pub enum SourceState {
     Present,
     /// Has delivered nothing for longer than it may.
     Silent,
+    /// Taken out of use by a person.
+    OutOfUse,
 }
 
 impl SourceState {
@@ -123,6 +131,7 @@ impl SourceState {
             Self::New => "new",
             Self::Present => "present",
             Self::Silent => "silent",
+            Self::OutOfUse => "out_of_use",
         }
     }
 }

@@ -52,6 +52,9 @@ pub fn bank_view(watched: &Watched) -> BankView {
         outcomes: watched.outcomes.clone(),
         refusals: watched.refusals.clone(),
         cycles,
+        stopped: state.line.stopped.clone(),
+        product: state.line.product.clone(),
+        line_events: state.line.newest.iter().cloned().collect(),
         watch: state.watch.as_ref().map(|w| WatchView {
             progress: w.progress(),
             readings: w.readings(),
@@ -135,6 +138,7 @@ pub fn refusal_of(m: &Measurement, reason: Reason, watched: &Watched, now: Time)
         ),
         Reason::NoCycle => "the bank pairs by cycle and the payload carries none".to_owned(),
         Reason::Double => format!("source \"{}\" has already delivered this value", m.source),
+        Reason::LineStopped => format!("taken at {taken}, while the line stands; enter its start"),
         other => other.word().to_owned(),
     };
     Refusal {

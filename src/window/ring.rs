@@ -88,6 +88,13 @@ impl Ring {
         }
     }
 
+    /// Moves every offset.
+    pub fn shift(&mut self, by: f64) {
+        for entry in &mut self.entries {
+            entry.offset += by;
+        }
+    }
+
     /// Values before `place` no longer count.
     pub fn start_fresh(&mut self, place: i64) {
         self.fresh_from = self.fresh_from.max(place);

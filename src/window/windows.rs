@@ -242,6 +242,16 @@ impl Windows {
         self.numbers[s].contradicted(arriving.cycle, same) > self.wait
     }
 
+    /// Offsets are relative to another origin from now on. Those held are moved by the difference, which
+    /// may cost their last digit.
+    pub fn rebase(&mut self, origin: Value) {
+        let shift = self.origin().minus(origin);
+        for ring in &mut self.rings {
+            ring.shift(shift);
+        }
+        self.origin = Some(origin);
+    }
+
     /// Values of these sources before now no longer count.
     pub fn start_fresh(&mut self, source: SourceIx, place: i64) {
         if let Some(ring) = self.rings.get_mut(source.index()) {
