@@ -8,19 +8,21 @@
 //! | --- | --- | --- |
 //! | few sources moved | rate of the likelihood ratio over all starts at the worst offsets | [`starts`] |
 //! | many sources moved | chi-square or union bound, one alpha for all spans | [`split`], [`spans`] |
-//! | two sources apart | studentized range, one alpha for all spans | [`spans`] |
+//! | two sources apart | studentized range or union bound, one alpha for all spans | [`pair`], [`spans`] |
 //! | spread, up and down | the same rate on normal scores | [`scores`] |
 //! | all | shares of the budget; dependence; t for an estimated sigma | [`shares`], [`dependence`] |
 
 mod account;
 mod dependence;
 mod nu;
+mod pair;
 mod scores;
 mod shares;
 mod solve;
 mod spans;
 mod split;
 mod starts;
+mod tails;
 
 pub use account::{Account, Entry, account};
 pub use dependence::score_phi;
@@ -29,7 +31,8 @@ pub use shares::Part;
 pub use spans::{Kind, Overlap, SPANS, Span};
 
 use serde::{Deserialize, Serialize};
-use split::{Split, t_of_normal};
+use split::{Root, Split};
+use tails::t_of_normal;
 
 /// What thresholds depend on. All lengths in cycles, offsets in sd of one source's noise.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
@@ -84,8 +87,8 @@ pub struct Thresholds {
     /// Split contrast, one per span of [`SPANS`], on the (squared) statistic; with a margin of 0 on the
     /// sum of squares over the sources. None for fewer than 4 sources.
     pub split: Option<Vec<f64>>,
-    /// Range (two sources apart) per span: threshold on the studentized range statistic, equal for all
-    /// spans. None for fewer than 3 sources.
+    /// Range (two sources apart), one per span of [`SPANS`], on the studentized range statistic. None for
+    /// fewer than 3 sources.
     pub pair: Option<Vec<f64>>,
     /// Spread upward: z threshold. None for two sources.
     pub erratic: Option<f64>,
@@ -127,33 +130,32 @@ fn windows() -> Vec<(f64, f64)> {
 
 /// Thresholds of the squared split contrast. Under its union bound it clusters as a z of √q.
 fn split_thresholds(basis: &Basis, rate: f64) -> Vec<f64> {
-    let k = basis.sources as f64;
-    let split = Split::new(basis.sources);
     let windows = windows();
-    let quantiles = |alpha: f64, df: f64| -> Vec<f64> {
-        let reach = |s: &Span| basis.margin_sd * (s.cycles as f64).sqrt();
-        let of_span = |s: &Span| split.quantile(alpha, reach(s), df);
-        SPANS.iter().map(of_span).collect()
-    };
-    let squares = Overlap {
+    let sources = basis.sources;
+    let overlap = Overlap {
         windows: &windows,
-        kind: Kind::Squares {
-            sources: basis.sources,
-        },
+        kind: Kind::Squares { sources },
         clusters: CLUSTERS,
     };
-    let first = squares.alpha(rate);
+    let first = overlap.alpha(rate);
     if basis.margin_sd <= 0.0 {
-        return quantiles(first, basis.df);
+        return vec![split::squares(first, sources, basis.df); windows.len()];
     }
-    let near = quantiles(first, f64::INFINITY);
-    let ceiling = split.quantile(first, 0.0, f64::INFINITY);
-    let z = |i: usize| {
-        let root = near[i].sqrt();
-        let bound = near[i] < ceiling;
-        (if bound { root } else { root - (k - 2.0) / root }).max(1.0)
+    let ceiling = split::squares(first, sources, f64::INFINITY).sqrt();
+    let mut split = Split::new(sources);
+    let reach = |s: &Span| basis.margin_sd * (s.cycles as f64).sqrt();
+    let unions = SPANS.iter().map(|s| split.union(first, reach(s), ceiling));
+    let unions: Vec<Option<Root>> = unions.collect();
+    let clustering = |i: usize| match unions[i] {
+        Some(root) => root.moved(0.0),
+        None => ceiling - (sources as f64 - 2.0) / ceiling,
     };
-    quantiles(spans::alpha_at(&windows, rate, CLUSTERS, z), basis.df)
+    let alpha = spans::alpha_at(&windows, rate, CLUSTERS, |i| clustering(i).max(1.0));
+    let squares = split::squares(alpha, sources, basis.df);
+    let with_union = |root: Root| t_of_normal(root.moved((alpha / first).ln()), basis.df).powi(2);
+    let of_span =
+        |union: &Option<Root>| union.map_or(squares, |root| with_union(root).min(squares));
+    unions.iter().map(of_span).collect()
 }
 
 /// Thresholds of the range beyond the margin.
@@ -166,9 +168,9 @@ fn pair_thresholds(basis: &Basis, rate: f64) -> Vec<f64> {
         clusters: CLUSTERS,
     };
     let alpha = overlap.alpha(rate);
-    let quantile = spans::range_quantile(alpha, basis.sources, basis.df);
-    // Unreachable after clamping; a bound on the safe side.
-    vec![quantile.unwrap_or(60.0); SPANS.len()]
+    let reach = |s: &Span| basis.margin_sd * (s.cycles as f64).sqrt();
+    let of_span = |s: &Span| pair::quantile(alpha, basis.sources, reach(s), basis.df);
+    SPANS.iter().map(of_span).collect()
 }
 
 #[cfg(test)]

@@ -14,8 +14,8 @@ use std::f64::consts::FRAC_1_SQRT_2;
 /// Scores are kept within this many sd: beyond, tails underflow.
 const LARGEST: f64 = 12.0;
 /// Half the width and the step of the quadrature of a mean score: its error is below 1e-6.
-const REACH: i32 = 28;
-const STEP: f64 = 0.25;
+const REACH: i32 = 14;
+const STEP: f64 = 0.5;
 
 /// Which way a source's spread leaves the others'.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize, Deserialize)]

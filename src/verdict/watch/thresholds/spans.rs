@@ -7,7 +7,8 @@
 //! clusters). All spans share one alpha: Σ over spans of alpha g K/L = rate.
 
 use super::nu::nu;
-use crate::stats::dist::{chi_square, normal, studentized_range};
+use super::pair::range_quantile;
+use crate::stats::dist::{chi_square, normal};
 
 /// The watch's window: its length and how often it is evaluated, both in cycles.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
@@ -61,26 +62,14 @@ impl Kind {
                 let k = sources.max(2) as f64;
                 chi_square::isf(alpha, k - 1.0).map(|q| q.sqrt() - (k - 2.0) / q.sqrt())
             }
-            Self::Range { sources } => range_quantile(alpha, sources, f64::INFINITY)
-                .map(|q| q * std::f64::consts::FRAC_1_SQRT_2),
+            Self::Range { sources } => {
+                let q = range_quantile(alpha, sources, f64::INFINITY);
+                Ok(q * std::f64::consts::FRAC_1_SQRT_2)
+            }
         };
         // Alpha is clamped to where every quantile exists; the floor keeps g within its meaning.
         found.map_or(1.0, |z| z.max(1.0))
     }
-}
-
-/// The studentized range quantile, for more sources than its tables hold by Bonferroni over pairs.
-pub(super) fn range_quantile(
-    alpha: f64,
-    sources: usize,
-    df: f64,
-) -> Result<f64, crate::stats::dist::OutOfReach> {
-    if sources <= studentized_range::MOST_SOURCES {
-        return studentized_range::isf(alpha, sources.max(2), df);
-    }
-    let k = sources as f64;
-    let share = alpha / (k * (k - 1.0));
-    Ok(crate::stats::dist::t::isf(share, df)? * std::f64::consts::SQRT_2)
 }
 
 /// Windows of one test that share one tail probability.

@@ -18,16 +18,16 @@ use crate::stats::dist::normal;
 /// The longest stretch that counts, in cycles: starts further back are dropped by the streams.
 const LONGEST: f64 = 1e4;
 /// Stretches summed one by one; longer ones by the midpoint rule in ln n.
-const SINGLE: u32 = 20;
-/// Nodes of that rule: its error is below 1e-4 of the rate.
-const NODES: u32 = 24;
+const SINGLE: u32 = 12;
+/// Nodes of that rule: its error is below 1e-3 of the rate.
+const NODES: u32 = 14;
 /// Thresholds outside this range mean nothing: below, crossings are no rare clusters; above, tails
 /// underflow.
 const RANGE: (f64, f64) = (1.0, 36.0);
 /// Drifts of more sd per cycle than this cannot add to a rate.
 const LARGEST_DRIFT: f64 = 8.0;
 /// Knots of the table of ln rate against the drift.
-const KNOTS: usize = 28;
+const KNOTS: usize = 20;
 
 /// What one stretch adds apart from the drift.
 struct Stretch {
@@ -116,7 +116,8 @@ impl RateTable {
 /// calls per cycle.
 pub fn threshold(rate: f64, rate_at: impl Fn(&Streams) -> f64) -> f64 {
     let goal = rate.ln();
-    falling_root(RANGE.0, RANGE.1, |b| {
+    let start = (2.0 * (1.0 - goal).max(1.0)).sqrt();
+    falling_root(RANGE, start, |b| {
         rate_at(&Streams::new(b)).max(1e-300).ln() - goal
     })
 }
