@@ -26,10 +26,10 @@ mod tails;
 
 pub use account::{Account, Entry, account};
 pub use dependence::score_phi;
-pub use scores::{ScoreShift, Turn, mean_step, score_shift, spread_step};
 pub use shares::Part;
 pub use spans::{Kind, Overlap, SPANS, Span};
 
+use scores::Turn;
 use serde::{Deserialize, Serialize};
 use split::{Root, Split};
 use tails::t_of_normal;
@@ -97,7 +97,7 @@ pub struct Thresholds {
 }
 
 /// Clusters shared between the watch's windows of one statistic (simulated).
-const CLUSTERS: f64 = 1.1;
+const CLUSTERS: f64 = 1.0;
 
 /// The thresholds that keep the budget at the worst offsets within the margins. Total: a basis out of
 /// range is clamped, and every threshold is finite and positive.

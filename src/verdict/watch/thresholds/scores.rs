@@ -1,14 +1,13 @@
-//! Spread: the increments of its streams, and the rate of their false calls within `spread_margin`.
+//! Spread: the rate of false calls of its streams within `spread_margin`.
 //!
 //! A stream sums normal scores of |e|, e a unit normal when all is well. The deviation is first divided
 //! by the margin's ratio (upward) or multiplied by it (downward), so that a source exactly at the margin
 //! scores as a standard normal and an even one drifts back. Taking the mean score of such a source from
-//! scores of |e| itself, as level does, would leave a source at the ratio 1.5 with a tail of a normal of
+//! scores of |e| itself, as level does, would leave a source at the ratio 1.5 with the tail of a normal of
 //! sd 1.5, against which no threshold of unit steps holds.
 
 use super::starts::Streams;
 use crate::stats::dist::normal;
-use serde::{Deserialize, Serialize};
 use std::f64::consts::FRAC_1_SQRT_2;
 
 /// Scores are kept within this many sd: beyond, tails underflow.
@@ -18,7 +17,7 @@ const REACH: i32 = 14;
 const STEP: f64 = 0.5;
 
 /// Which way a source's spread leaves the others'.
-#[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize, Deserialize)]
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
 pub enum Turn {
     /// Upward: the source turns erratic.
     Erratic,
@@ -43,21 +42,8 @@ fn score(e: f64) -> f64 {
     }
 }
 
-/// What a spread stream adds for the standardised deviation `e`: standard normal for a source exactly
-/// at `spread_margin` (1 or more) times, or in the quiet direction one over it times, the others' sd;
-/// nothing more is to be taken off. The result is finite; NaN adds the smallest increment.
-pub fn spread_step(e: f64, spread_margin: f64, turn: Turn) -> f64 {
-    if e.is_nan() {
-        return -LARGEST;
-    }
-    match turn {
-        Turn::Erratic => score(e / spread_margin),
-        Turn::Quiet => -score(e * spread_margin),
-    }
-}
-
-/// The mean of [`spread_step`] for a source whose sd is `ratio` times the others', in sd per cycle:
-/// 0 at the margin, negative inside it.
+/// The mean score of a source whose sd is `ratio` times the others', in sd per cycle: 0 at the margin,
+/// negative inside it.
 pub fn mean_step(ratio: f64, spread_margin: f64, turn: Turn) -> f64 {
     match turn {
         Turn::Erratic => mean_score(ratio / spread_margin),
@@ -75,25 +61,6 @@ fn mean_score(ratio: f64) -> f64 {
         normal::pdf(v) * score(ratio * e)
     };
     STEP * (-REACH..=REACH).map(node).sum::<f64>()
-}
-
-/// What takes the place of a mean within the margin: a source whose sd is `spread_margin` times the
-/// others' has this mean score on |e| itself (erratic), or on −|e|'s score for one over it (quiet). For
-/// pages; the streams use [`spread_step`].
-#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
-pub struct ScoreShift {
-    /// Mean score at the margin, upward, in sd.
-    pub erratic: f64,
-    /// Mean of the negated score at one over the margin, in sd.
-    pub quiet: f64,
-}
-
-/// The mean scores at the margin; `spread_margin` 1 or more.
-pub fn score_shift(spread_margin: f64) -> ScoreShift {
-    ScoreShift {
-        erratic: mean_score(spread_margin),
-        quiet: -mean_score(1.0 / spread_margin),
-    }
 }
 
 /// How far inside the margin the sources of a bank lie when a group of them stands at it.
