@@ -14,6 +14,7 @@ mod shares;
 mod spread;
 mod steps;
 mod track;
+pub mod watch;
 
 pub use data::{Data, Need, Rows, Values};
 pub use examine::{Call, Examination, Participant, examine};
