@@ -2,18 +2,15 @@
 
 use std::sync::Arc;
 
-use crate::model::{Bank, BankIx, Measurement, Name, Refusal, Time};
-use crate::notice::{Acknowledgement, Delivery, Notice, Way};
+use crate::model::{Bank, BankIx, Measurement, Refusal, Time};
+use crate::notice::{Delivery, Way};
 use crate::verdict::{Finding, Look, Need};
 
 use super::bank::{SILENCE_EVERY_US, Watched};
 use super::look::{Freshness, Looked};
 use super::restore::{self, RestoreError, checkpoint};
 use super::view;
-use super::{
-    Command, Condition, Due, Effect, Event, Outcome, Part, Plant, Record, RefusalView, Snapshot,
-    Ticket, Turn,
-};
+use super::{Condition, Due, Effect, Event, Part, Plant, Record, RefusalView, Snapshot, Turn};
 
 /// A bank writes its whole state at least this often.
 const CHECKPOINT_EVERY_US: i64 = 600_000_000;
