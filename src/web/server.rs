@@ -75,6 +75,7 @@ pub fn router(app: App) -> Router {
     let guarded = Router::new()
         .route("/", get(pages::plant::page))
         .route("/banks/{bank}", get(pages::bank::page))
+        .route("/banks/{bank}/events", post(pages::line::enter))
         .route("/notices", get(pages::notices::list))
         .route("/notices/{id}", get(pages::notice::page))
         .route(

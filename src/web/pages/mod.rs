@@ -7,6 +7,7 @@
 pub mod bank;
 pub mod frame;
 mod history;
+pub mod line;
 mod looks;
 pub mod notice;
 pub mod notices;
