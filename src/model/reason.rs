@@ -45,11 +45,24 @@ pub enum Reason {
     TooOld,
     /// Taken more than five minutes ahead of now.
     TooFarAhead,
+    // Kept records name a reason by its place, so new ones come last.
+    /// One of the `sentinels`: the instrument's word for having no value.
+    Sentinel,
+    /// Outside `plausible`: no value of this characteristic can lie there.
+    Implausible,
+    /// The unit in the payload is not the bank's.
+    WrongUnit,
+    /// The sender itself says that the value is not good.
+    BadQuality,
+    /// Sent without a birth before it, so it cannot be said what it means (Sparkplug).
+    Unborn,
+    /// Sent after its place in the sequence had been given up (Sparkplug).
+    OutOfSequence,
 }
 
 impl Reason {
     /// Every reason, in the order pages show them.
-    pub const ALL: [Self; 18] = [
+    pub const ALL: [Self; 24] = [
         Self::Empty,
         Self::TooLarge,
         Self::Malformed,
@@ -68,6 +81,12 @@ impl Reason {
         Self::Double,
         Self::TooOld,
         Self::TooFarAhead,
+        Self::Sentinel,
+        Self::Implausible,
+        Self::WrongUnit,
+        Self::BadQuality,
+        Self::Unborn,
+        Self::OutOfSequence,
     ];
 
     /// The one word used in metrics and the interface.
@@ -91,6 +110,12 @@ impl Reason {
             Self::Double => "double",
             Self::TooOld => "too_old",
             Self::TooFarAhead => "too_far_ahead",
+            Self::Sentinel => "sentinel",
+            Self::Implausible => "implausible",
+            Self::WrongUnit => "wrong_unit",
+            Self::BadQuality => "bad_quality",
+            Self::Unborn => "unborn",
+            Self::OutOfSequence => "out_of_sequence",
         }
     }
 }
