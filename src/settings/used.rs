@@ -6,6 +6,8 @@ use std::sync::Arc;
 
 use crate::model::{Bank, BankIx, Name};
 
+use super::forms::{Belief, PayloadForm};
+
 /// Everything the daemon is told.
 #[derive(Clone, Debug)]
 pub struct Settings {
@@ -119,6 +121,8 @@ pub struct Feed {
     pub topic: TopicTemplate,
     /// What is in a payload.
     pub payload: PayloadForm,
+    /// What of it is believed.
+    pub belief: Belief,
     /// Names of the columns of recordings.
     pub recording: RecordingColumns,
 }
@@ -131,43 +135,6 @@ pub struct TopicTemplate {
     pub levels: Vec<String>,
     /// Which level names the source.
     pub source_level: Option<usize>,
-}
-
-/// The form of a payload.
-#[derive(Clone, Debug, PartialEq, Eq)]
-pub enum PayloadForm {
-    /// The whole payload is one decimal number.
-    Number,
-    /// A JSON document.
-    Json(JsonPointers),
-}
-
-/// Where things stand in a JSON document, as RFC 6901 pointers.
-#[derive(Clone, Debug, PartialEq, Eq)]
-pub struct JsonPointers {
-    /// The value.
-    pub value: String,
-    /// The source, when it is not in the topic.
-    pub source: Option<String>,
-    /// The time taken.
-    pub time: Option<String>,
-    /// How that is written.
-    pub time_form: TimeForm,
-    /// The cycle.
-    pub cycle: Option<String>,
-}
-
-/// How a time is written.
-#[derive(Clone, Copy, Debug, PartialEq, Eq)]
-pub enum TimeForm {
-    /// RFC 3339 text, or a number: seconds below 1e11, milliseconds from there on.
-    Auto,
-    /// RFC 3339 text with offset.
-    Rfc3339,
-    /// Seconds since the Unix epoch, fractions allowed.
-    EpochSeconds,
-    /// Milliseconds since the Unix epoch.
-    EpochMilliseconds,
 }
 
 /// Names of the columns of a recording.

@@ -3,7 +3,8 @@
 
 use super::fault::{FaultList, Place};
 use super::raw::{Kind, Node, Table};
-use super::section::{Field, Section, Spot};
+use super::section::{Field, Section};
+use super::written_payload::{WrittenPayload, payload};
 
 /// The whole.
 pub(super) struct Written {
@@ -76,6 +77,8 @@ pub(super) struct WrittenBank {
     pub(super) limits: Field<WrittenLimits>,
     pub(super) topic: Field<String>,
     pub(super) payload: Field<WrittenPayload>,
+    pub(super) sentinels: Field<Vec<Node>>,
+    pub(super) plausible: Field<WrittenLimits>,
     pub(super) sources: Field<WrittenSources>,
     pub(super) most_sources: Field<i64>,
     pub(super) pairing: Field<WrittenPairing>,
@@ -92,21 +95,10 @@ pub(super) struct WrittenBank {
     pub(super) recording: Field<WrittenRecording>,
 }
 
-/// `limits`.
+/// `limits` and `plausible`.
 pub(super) struct WrittenLimits {
     pub(super) lower: Field<String>,
     pub(super) upper: Field<String>,
-}
-
-/// `payload`, with the word alone standing for a table with that form.
-pub(super) struct WrittenPayload {
-    pub(super) place: Place,
-    pub(super) form: Field<String>,
-    pub(super) value: Field<String>,
-    pub(super) source: Field<String>,
-    pub(super) time: Field<String>,
-    pub(super) time_form: Field<String>,
-    pub(super) cycle: Field<String>,
 }
 
 /// `sources`: a word or a list.
@@ -265,6 +257,10 @@ impl WrittenBank {
                 .map(|section, _| WrittenLimits::read(section, faults)),
             topic: s.text("topic", faults),
             payload: payload(&mut s, faults),
+            sentinels: s.list("sentinels", faults),
+            plausible: s
+                .section("plausible", "bank.plausible", faults)
+                .map(|section, _| WrittenLimits::read(section, faults)),
             sources: sources(&mut s, faults),
             most_sources: s.whole("most_sources", faults),
             pairing: pairing(&mut s, faults),
@@ -298,34 +294,6 @@ impl WrittenLimits {
     }
 }
 
-impl WrittenPayload {
-    fn read(mut s: Section, faults: &mut FaultList) -> Self {
-        let written = Self {
-            place: s.place.clone(),
-            form: s.text("form", faults),
-            value: s.text("value", faults),
-            source: s.text("source", faults),
-            time: s.text("time", faults),
-            time_form: s.text("time_form", faults),
-            cycle: s.text("cycle", faults),
-        };
-        s.close(faults);
-        written
-    }
-
-    fn of_form(form: String, place: Place) -> Self {
-        Self {
-            place: place.clone(),
-            form: Field::Given(Spot { value: form, place }),
-            value: Field::Absent,
-            source: Field::Absent,
-            time: Field::Absent,
-            time_form: Field::Absent,
-            cycle: Field::Absent,
-        }
-    }
-}
-
 impl WrittenRecording {
     fn read(mut s: Section, faults: &mut FaultList) -> Self {
         let written = Self {
@@ -338,18 +306,6 @@ impl WrittenRecording {
         s.close(faults);
         written
     }
-}
-
-fn payload(s: &mut Section, faults: &mut FaultList) -> Field<WrittenPayload> {
-    let how = |kind, place: &Place, faults: &mut FaultList| match kind {
-        Kind::Text(form) => Ok(WrittenPayload::of_form(form, place.clone())),
-        Kind::Table(table) => {
-            let section = Section::new("bank.payload", place.clone(), table);
-            Ok(WrittenPayload::read(section, faults))
-        }
-        other => Err(other.what()),
-    };
-    s.either("payload", "a word or a table", faults, how)
 }
 
 fn sources(s: &mut Section, faults: &mut FaultList) -> Field<WrittenSources> {

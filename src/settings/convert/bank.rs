@@ -2,6 +2,8 @@
 
 use std::collections::BTreeSet;
 
+use jiff::tz::TimeZone;
+
 use crate::model::{Bank, BankIx, Budget, Characteristic, Layout, Name, Pairing, Sources, Value};
 use crate::settings::Feed;
 use crate::settings::check::{Check, D, S, unfit};
@@ -37,6 +39,7 @@ const OLDEST_DAYS: i64 = 30;
 pub(super) fn bank(
     ix: BankIx,
     written: WrittenBank,
+    zone: &TimeZone,
     faults: &mut FaultList,
 ) -> Option<(Bank, Feed)> {
     let WrittenBank {
@@ -51,6 +54,8 @@ pub(super) fn bank(
         limits,
         topic,
         payload,
+        sentinels,
+        plausible,
         sources,
         most_sources,
         pairing,
@@ -72,7 +77,12 @@ pub(super) fn bank(
             place: place.clone(),
             topic,
             payload,
+            sentinels,
+            plausible,
             recording,
+            unit: unit.peek().map(|spot| spot.value.clone()),
+            listed: listed_names(&sources),
+            zone: zone.clone(),
         },
         faults,
     );
@@ -250,6 +260,18 @@ fn who(
             listed(list, &place, in_topic, check)
         }
     }
+}
+
+/// The names of listed sources, good or not.
+fn listed_names(field: &Field<WrittenSources>) -> Vec<Name> {
+    let Some(WrittenSources::Listed(list)) = field.peek().map(|spot| &spot.value) else {
+        return Vec::new();
+    };
+    let name = |node: &Node| match &node.kind {
+        Kind::Text(name) => Some(Name::from(name.as_str())),
+        _ => None,
+    };
+    list.iter().filter_map(name).collect()
 }
 
 fn listed(

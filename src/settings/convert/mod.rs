@@ -3,13 +3,20 @@
 //! Every part is taken apart by full destructuring, so a key that is added cannot be forgotten here.
 //! Everything is checked before anything is given up, so that all faults come at once.
 
+mod address;
 mod bank;
+mod belief;
 mod broker;
 mod feed;
+mod payload;
+mod payload_named;
+mod payload_placed;
 mod plant;
 
 use std::collections::BTreeMap;
 use std::sync::Arc;
+
+use jiff::tz::TimeZone;
 
 use crate::model::{BankIx, topic_name};
 
@@ -37,7 +44,10 @@ pub(super) fn used(written: Written, faults: &mut FaultList) -> Option<Settings>
     let broker = broker::broker(broker, name.as_deref().unwrap_or_default(), faults);
     let store = plant::store(store, faults);
     let web = plant::web(web, faults);
-    let banks = every_bank(banks, faults);
+    let zone = plant
+        .as_ref()
+        .map_or(TimeZone::UTC, |plant| plant.zone.clone());
+    let banks = every_bank(banks, &zone, faults);
     let (banks, feeds) = banks?.into_iter().map(|(b, f)| (Arc::new(b), f)).unzip();
     Some(Settings {
         plant: plant?,
@@ -51,7 +61,11 @@ pub(super) fn used(written: Written, faults: &mut FaultList) -> Option<Settings>
 
 type BankAndFeed = (crate::model::Bank, super::Feed);
 
-fn every_bank(banks: Field<Vec<WrittenBank>>, faults: &mut FaultList) -> Option<Vec<BankAndFeed>> {
+fn every_bank(
+    banks: Field<Vec<WrittenBank>>,
+    zone: &TimeZone,
+    faults: &mut FaultList,
+) -> Option<Vec<BankAndFeed>> {
     let nothing = "there is no bank, so there is nothing to watch";
     let hint = "write [[bank]] and the keys under it; config/smallest.toml shows the fewest";
     let Spot { value, place } = match banks {
@@ -68,7 +82,7 @@ fn every_bank(banks: Field<Vec<WrittenBank>>, faults: &mut FaultList) -> Option<
     }
     let names = value.iter().filter_map(|bank| bank.name.peek());
     one_name_each("banks", names, faults);
-    let one = |(place, written)| bank::bank(BankIx(place), written, faults);
+    let one = |(place, written)| bank::bank(BankIx(place), written, zone, faults);
     let all: Vec<_> = (0_u16..).zip(value).map(one).collect();
     all.into_iter().collect()
 }

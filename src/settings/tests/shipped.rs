@@ -80,7 +80,10 @@ fn inside_banks<'t>(table: &'t toml::Table, inner: &str, name: &str) -> Vec<&'t 
     let banks = banks.into_iter().flatten();
     let at = |bank: &'t toml::Value| match inner {
         "" => bank.get(name),
-        inner => bank.get(inner).and_then(|table| table.get(name)),
+        inner => {
+            let table = inner.split('.').try_fold(bank, |table, key| table.get(key));
+            table.and_then(|table| table.get(name))
+        }
     };
     banks.filter_map(at).collect()
 }
@@ -134,4 +137,10 @@ fn promised_values_are_read_as_promised() {
         length_us: 10_000_000,
     };
     assert_eq!(weigher.pairing, slot);
+    let refused = &settings.feeds[0].belief;
+    assert_eq!(refused.sentinels.len(), 2);
+    assert_eq!(
+        refused.upper.map(|v| v.to_string()).as_deref(),
+        Some("1000.0")
+    );
 }

@@ -3,15 +3,15 @@
 //! Deliberately absent: connecting to anything. Files that the configuration names are looked at,
 //! and a missing one is a caution: the configuration may be meant for another machine.
 
+mod forms;
+
 use std::fmt::Write as _;
 use std::fs::File;
 use std::io::Write as _;
 use std::path::Path;
 
 use crate::model::{Bank, Pairing, Sources};
-use crate::settings::{
-    Broker, Feed, JsonPointers, PayloadForm, Protocol, Settings, bank_cautions, duration_words,
-};
+use crate::settings::{Broker, Feed, Protocol, Settings, bank_cautions, duration_words};
 use crate::verdict::Shares;
 
 use super::args::VetArgs;
@@ -145,7 +145,10 @@ fn bank_summary(bank: &Bank, feed: &Feed) -> String {
     lines.add("measures", format!("{} in {unit}", characteristic.name));
     lines.add("sources", sources(&bank.sources));
     lines.add("topic", feed.topic.levels.join("/"));
-    lines.add("payload", payload(&feed.payload));
+    lines.add("payload", forms::payload(&feed.payload));
+    if let Some(refused) = forms::belief(&feed.belief, unit) {
+        lines.add("refuses", refused);
+    }
     lines.add("pairing", pairing(bank.pairing));
     let spans: Vec<String> = bank.spans.iter().map(usize::to_string).collect();
     lines.add(
@@ -182,26 +185,6 @@ fn sources(sources: &Sources) -> String {
         }
         Sources::Discover { most } => format!("discovered, at most {most}"),
     }
-}
-
-fn payload(form: &PayloadForm) -> String {
-    let JsonPointers {
-        value,
-        source,
-        time,
-        time_form: _,
-        cycle,
-    } = match form {
-        PayloadForm::Number => return "a number".to_owned(),
-        PayloadForm::Json(pointers) => pointers,
-    };
-    let mut text = format!("JSON with the value at \"{value}\"");
-    for (name, pointer) in [("source", source), ("time", time), ("cycle", cycle)] {
-        if let Some(pointer) = pointer {
-            text.push_str(&format!(", {name} at \"{pointer}\""));
-        }
-    }
-    text
 }
 
 fn pairing(pairing: Pairing) -> String {
