@@ -10,7 +10,8 @@ mod time;
 mod value;
 
 pub use bank::{
-    Bank, BankIx, Budget, BudgetError, Characteristic, Layout, Pairing, SourceIx, Sources,
+    Bank, BankIx, Budget, BudgetError, Characteristic, Group, Layout, Offsets, Pairing, SourceIx,
+    Sources,
 };
 pub use figures::{fixed, signed};
 pub use reason::{Reason, Refusal};

@@ -6,6 +6,7 @@
 mod bank;
 mod broker;
 mod feed;
+mod known;
 mod plant;
 
 use std::collections::BTreeMap;
