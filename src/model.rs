@@ -11,7 +11,8 @@ mod time;
 mod value;
 
 pub use bank::{
-    Bank, BankIx, Budget, BudgetError, Characteristic, Layout, Pairing, SourceIx, Sources,
+    Bank, BankIx, Budget, BudgetError, Characteristic, Group, Layout, Offsets, Pairing, SourceIx,
+    Sources,
 };
 pub use figures::{fixed, signed};
 pub use line_event::{LineChange, LineEvent};

@@ -13,7 +13,7 @@ use super::*;
 use crate::engine::{Command, Condition, Engine, Event, Outcome, Plant, Snapshot};
 use crate::intake::mqtt::{Arrival, FromBroker, Receipt};
 use crate::model::{
-    Bank, BankIx, Characteristic, Layout, Measurement, Name, Pairing, Sources, Time, Value,
+    Bank, BankIx, Characteristic, Layout, Measurement, Name, Offsets, Pairing, Sources, Time, Value,
 };
 use crate::notice::Delivery;
 use crate::outlets::Report;
@@ -48,6 +48,10 @@ fn bank() -> Arc<Bank> {
         silent_after_us: None,
         oldest_us: 30 * crate::model::US_PER_DAY,
         layout: Layout::Row,
+        groups: Vec::new(),
+        cost_per_unit: None,
+        reference: None,
+        offsets: Offsets::None,
     })
 }
 

@@ -91,7 +91,10 @@ pub(super) const KEYS: &[Key] = &[
     key("bank", "silent_after", "\"10min\"", "how long a source may deliver nothing before it is called silent"),
     key("bank", "oldest_days", "30", "a value taken longer ago than this many days is refused"),
     key("bank", "layout", "\"ring\"", "how the sources stand in the machine: \"row\" or \"ring\""),
-    key("bank", "offsets", "\"none\"", "what is known of lasting differences between sources: \"none\""),
+    key("bank", "groups", "{ \"supply a\" = [\"01\", \"03\"] }", "the sources that share a part, by its name"),
+    key("bank", "cost_per_unit", "0.002", "what one unit given away costs, in the plant's currency"),
+    key("bank", "reference", "\"01\"", "the source that all others are compared with"),
+    key("bank", "offsets", "{ \"01\" = 0.3 }", "what is known of lasting differences: \"none\", \"learn\", or the offsets in the unit"),
     key("bank", "recording", "{ time = \"time\", value = \"net\" }", "the names of the columns of recordings"),
     key("bank.limits", "lower", "485.0", "the lower limit of a single value, in the unit"),
     key("bank.limits", "upper", "515.0", "the upper limit of a single value, in the unit"),
@@ -131,24 +134,11 @@ pub(super) const KEYS: &[Key] = &[
 
 /// Keys that a later version brings, and what holds until then. Taking one in silence would promise
 /// something that is not done.
-pub(super) const LATER: &[(&str, &str, &str)] = &[
-    (
-        "bank",
-        "reference",
-        "every source is compared with the others",
-    ),
-    ("bank", "groups", "sources are compared one by one"),
-    (
-        "bank",
-        "cost_per_unit",
-        "differences are told in the unit, without their cost",
-    ),
-    (
-        "bank.pairing",
-        "near",
-        "without a shared cycle, { slot = \"10s\" } pairs by time",
-    ),
-];
+pub(super) const LATER: &[(&str, &str, &str)] = &[(
+    "bank.pairing",
+    "near",
+    "without a shared cycle, { slot = \"10s\" } pairs by time",
+)];
 
 /// Keys that people look for and that stand in another form, with that form.
 pub(super) const OTHERWISE: &[(&str, &str, &str)] = &[

@@ -91,6 +91,9 @@ pub(super) struct WrittenBank {
     pub(super) silent_after: Field<String>,
     pub(super) oldest_days: Field<i64>,
     pub(super) layout: Field<String>,
+    pub(super) groups: Field<Node>,
+    pub(super) cost_per_unit: Field<String>,
+    pub(super) reference: Field<String>,
     pub(super) offsets: Field<Node>,
     pub(super) recording: Field<WrittenRecording>,
 }
@@ -273,6 +276,9 @@ impl WrittenBank {
             silent_after: s.text("silent_after", faults),
             oldest_days: s.whole("oldest_days", faults),
             layout: s.text("layout", faults),
+            groups: s.node("groups"),
+            cost_per_unit: s.number("cost_per_unit", faults),
+            reference: s.text("reference", faults),
             offsets: s.node("offsets"),
             recording: s
                 .section("recording", "bank.recording", faults)

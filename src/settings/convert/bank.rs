@@ -15,6 +15,7 @@ use crate::settings::written::{WrittenBank, WrittenLimits, WrittenPairing, Writt
 use crate::stats::dist::studentized_range;
 
 use super::feed::{WrittenFeed, feed};
+use super::known::{WrittenKnown, known as known_of};
 
 /// Spans when nothing else is said: a factor 4 apart, as the call budget's arithmetic prefers.
 const SPANS: [usize; 4] = [10, 40, 160, 640];
@@ -68,6 +69,9 @@ pub(super) fn bank(
         silent_after,
         oldest_days,
         layout,
+        groups,
+        cost_per_unit,
+        reference,
         offsets,
         recording,
     } = written;
@@ -101,11 +105,18 @@ pub(super) fn bank(
         limits,
     };
     let margin = margin_of(margin, measured.resolution.as_ref(), &mut check);
+    let is_declared = measured.declared.is_some();
     let characteristic = measured.characteristic(&mut check);
     let sources = who(sources, most_sources, heard.source_in_topic, &mut check);
     let pairing = pairing_of(pairing, heard.without_cycle, &mut check);
     waits_for_cycles(&wait_cycles, pairing, &mut check);
-    no_offsets(offsets, &mut check);
+    let known = WrittenKnown {
+        groups,
+        cost_per_unit,
+        reference,
+        offsets,
+    };
+    let known = known_of(known, sources.as_ref(), is_declared, &mut check);
     let spans = spans_of(spans, &mut check);
     let look_every_us = check.duration_us(look_every, "look_every", S..=7 * D);
     let look_every_us = look_every_us.unwrap_or(LOOK_EVERY_US);
@@ -132,6 +143,10 @@ pub(super) fn bank(
         silent_after_us,
         oldest_us: oldest_days.unwrap_or(OLDEST_DAYS) * D,
         layout: layout.map_or(Layout::Row, |spot| spot.value),
+        groups: known.groups,
+        cost_per_unit: known.cost_per_unit,
+        reference: known.reference,
+        offsets: known.offsets,
     };
     Some((bank, heard.feed?))
 }
@@ -360,20 +375,6 @@ fn waits_for_cycles(field: &Field<i64>, pairing: Option<Pairing>, check: &mut Ch
             message,
             "take it out, or write `pairing = \"cycle\"`",
         );
-    }
-}
-
-fn no_offsets(field: Field<Node>, check: &mut Check<'_>) {
-    let Some(Spot { value, place }) = field.given() else {
-        return;
-    };
-    match value.kind {
-        Kind::Text(word) if word == "none" => {}
-        _ => check.add(
-            &place,
-            "`offsets` other than \"none\" are not in this version",
-            "take it out; in this version sources are compared as they are, without known offsets",
-        ),
     }
 }
 

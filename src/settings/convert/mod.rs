@@ -8,6 +8,7 @@ mod bank;
 mod belief;
 mod broker;
 mod feed;
+mod known;
 mod payload;
 mod payload_named;
 mod payload_placed;

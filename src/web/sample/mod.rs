@@ -17,7 +17,7 @@ use crate::engine::{
     BankView, Condition, Cycles, Plant, RefusalView, Snapshot, SourceState, SourceView,
 };
 use crate::model::{
-    Bank, BankIx, Characteristic, Layout, LineChange, LineEvent, Pairing, Reason, Refusal,
+    Bank, BankIx, Characteristic, Layout, LineChange, LineEvent, Offsets, Pairing, Reason, Refusal,
     SourceIx, Sources, Time, US_PER_DAY, US_PER_S, Value,
 };
 use crate::notice::{Kind, Notice};
@@ -69,6 +69,10 @@ pub fn bank(
         silent_after_us: None,
         oldest_us: 30 * US_PER_DAY,
         layout: Layout::Row,
+        groups: Vec::new(),
+        cost_per_unit: None,
+        reference: None,
+        offsets: Offsets::None,
     }
 }
 
