@@ -6,6 +6,7 @@
 mod bank;
 mod figures;
 mod reason;
+mod shift;
 mod time;
 mod value;
 
@@ -14,6 +15,7 @@ pub use bank::{
 };
 pub use figures::{fixed, signed};
 pub use reason::{Reason, Refusal};
+pub use shift::Shift;
 pub use time::{Time, US_PER_DAY, US_PER_S};
 pub use value::{Value, ValueError};
 

@@ -3,11 +3,12 @@
 use std::sync::Arc;
 
 use crate::model::{Bank, BankIx, Measurement, Name, Refusal, Time};
-use crate::notice::{Acknowledgement, Delivery, Notice, Way};
+use crate::notice::{Acknowledgement, Delivery, Notice};
 use crate::verdict::{Finding, Look, Need};
 
 use super::bank::{SILENCE_EVERY_US, State, Watched};
 use super::look::Freshness;
+use super::send::{Moment, Post, Told};
 use super::view;
 use super::{
     Command, Condition, Due, Effect, Event, Outcome, Part, Plant, Record, RefusalView, Snapshot,
@@ -18,7 +19,7 @@ use super::{
 const CHECKPOINT_EVERY_US: i64 = 600_000_000;
 
 /// Version of the encoded state.
-const STATE_VERSION: u8 = 1;
+const STATE_VERSION: u8 = 2;
 
 /// Why a checkpoint cannot be gone on from.
 #[derive(Clone, Debug, PartialEq, Eq, thiserror::Error)]
@@ -49,8 +50,7 @@ pub struct Engine {
     plant: Arc<Plant>,
     banks: Vec<Watched>,
     last_turn: u64,
-    outbox: usize,
-    outbox_trouble: Option<String>,
+    post: Post,
     broker: Condition,
     store: Condition,
     refusals: Vec<RefusalView>,
@@ -64,11 +64,10 @@ impl Engine {
         let plant = Arc::new(plant);
         let mut engine = Self {
             snapshot: Arc::new(view::empty(plant.clone())),
+            post: Post::new(&plant, banks.len()),
             plant,
             banks: banks.into_iter().map(Watched::new).collect(),
             last_turn: 0,
-            outbox: 0,
-            outbox_trouble: None,
             broker: Condition::Starting,
             store: Condition::Starting,
             refusals: Vec::new(),
@@ -84,8 +83,9 @@ impl Engine {
     /// [`RestoreError`]; the bank then starts afresh.
     pub fn restore(&mut self, bank: &str, state: &[u8]) -> Result<(), RestoreError> {
         let own = || bank.to_owned();
-        let found = self.banks.iter_mut().find(|b| &*b.bank.name == bank);
-        let watched = found.ok_or_else(|| RestoreError::NoSuchBank(own()))?;
+        let found = self.banks.iter().position(|b| &*b.bank.name == bank);
+        let b = found.ok_or_else(|| RestoreError::NoSuchBank(own()))?;
+        let watched = &mut self.banks[b];
         let (&version, encoded) = state
             .split_first()
             .ok_or_else(|| RestoreError::Unreadable(own()))?;
@@ -95,8 +95,11 @@ impl Engine {
                 version,
             });
         }
-        let mut state: State =
-            postcard::from_bytes(encoded).map_err(|_| RestoreError::Unreadable(own()))?;
+        let unreadable = |_| RestoreError::Unreadable(own());
+        let (mut state, rest): (State, _) =
+            postcard::take_from_bytes(encoded).map_err(unreadable)?;
+        let told: Told = postcard::from_bytes(rest).map_err(unreadable)?;
+        self.post.restore(b, told);
         let adapted = state.windows.adapt(&watched.bank);
         if !adapted {
             state.start_over(&watched.bank);
@@ -111,10 +114,10 @@ impl Engine {
     }
 
     /// Goes on counting after what the store holds, when all of it has been replayed: the number of
-    /// the last turn, and how many deliveries wait.
-    pub fn resume(&mut self, last_turn: u64, outbox: usize) {
+    /// the last turn, and the deliveries that wait.
+    pub fn resume(&mut self, last_turn: u64, outbox: &[Delivery]) {
         self.last_turn = self.last_turn.max(last_turn);
-        self.outbox = outbox;
+        self.post.resume(outbox);
         // What was replayed has been counted before this process began.
         for bank in &mut self.banks {
             bank.outcomes.clear();
@@ -169,12 +172,11 @@ impl Engine {
             }
             Event::Command { ticket, who, what } => self.command(number, ticket, who, what, now),
             Event::Delivered { number } => {
-                self.outbox = self.outbox.saturating_sub(1);
-                self.outbox_trouble = None;
+                self.post.delivered(number);
                 (None, vec![Effect::Keep(Record::Delivered { number })])
             }
-            Event::NotDelivered { why, .. } => {
-                self.outbox_trouble = Some(why);
+            Event::NotDelivered { number, why } => {
+                self.post.not_delivered(number, why);
                 (None, Vec::new())
             }
             Event::Condition { part, condition } => {
@@ -251,6 +253,7 @@ impl Engine {
                 due.looks.push(ix);
             }
         }
+        due.onward = self.post.due(&self.banks, &self.plant, now);
         due
     }
 
@@ -264,6 +267,12 @@ impl Engine {
         for &b in due.looks.iter().filter(|b| open(**b)) {
             self.look(b.index(), number, now, effects);
             self.banks[b.index()].mark(number);
+        }
+        for onward in due.onward.iter().filter(|o| open(o.bank)) {
+            let bank = &mut self.banks[onward.bank.index()];
+            self.post
+                .go_on(onward, bank, Moment { turn: number, now }, effects);
+            bank.mark(number);
         }
     }
 
@@ -293,33 +302,9 @@ impl Engine {
         self.send(b, number, now, effects);
     }
 
-    /// Sends what people should receive now.
-    fn send(&mut self, b: usize, number: u64, now: Time, effects: &mut Vec<Effect>) {
-        let mut already = effects
-            .iter()
-            .filter(|e| matches!(e, Effect::Deliver(_)))
-            .count() as u64;
-        for incident in &mut self.banks[b].state.incidents {
-            if !incident.wants_sending(now) {
-                continue;
-            }
-            incident.sent = Some((now, incident.notice.clone()));
-            let delivery = Delivery {
-                // A turn sends far fewer than 2^16 notices.
-                number: (number << 16) + already,
-                way: Way::Mqtt,
-                at: now,
-                notice: incident.notice.clone(),
-            };
-            already += 1;
-            self.outbox += 1;
-            effects.push(Effect::Keep(Record::Delivery(delivery.clone())));
-            effects.push(Effect::Deliver(delivery));
-        }
-        self.banks[b]
-            .state
-            .incidents
-            .retain(|i| i.notice.state.is_open());
+    fn send(&mut self, b: usize, turn: u64, now: Time, effects: &mut Vec<Effect>) {
+        let (bank, at) = (&mut self.banks[b], Moment { turn, now });
+        self.post.send(b, bank, &self.plant, at, effects);
     }
 
     fn command(
@@ -403,19 +388,25 @@ impl Engine {
         let bank = &mut self.banks[b];
         let last = *bank.last_checkpoint.get_or_insert(now);
         let due = bank.is_behind(self.last_turn) && now.us_since(last) >= CHECKPOINT_EVERY_US;
-        due.then(|| Effect::Keep(checkpoint(bank, self.last_turn, now)))
+        let told = self.post.told(b);
+        due.then(|| Effect::Keep(checkpoint(bank, told, self.last_turn, now)))
     }
 
     /// The state of every bank that changed since its last checkpoint; for the end of the program.
     pub fn checkpoints(&mut self, now: Time) -> Vec<Record> {
-        let last = self.last_turn;
-        let behind = self.banks.iter_mut().filter(|b| b.is_behind(last));
-        behind.map(|b| checkpoint(b, last, now)).collect()
+        let (last, post) = (self.last_turn, &self.post);
+        let banks = self.banks.iter_mut().enumerate();
+        let behind = banks.filter_map(|(b, bank)| bank.is_behind(last).then_some((b, bank)));
+        behind
+            .map(|(b, bank)| checkpoint(bank, post.told(b), last, now))
+            .collect()
     }
 
     /// When [`Event::Deadline`] should come next.
     pub fn next_deadline(&self) -> Option<Time> {
-        self.banks.iter().filter_map(next_deadline).min()
+        let onward = self.post.next_due(&self.banks, &self.plant);
+        let banks = self.banks.iter().filter_map(next_deadline);
+        banks.chain(onward).min()
     }
 
     /// Looks at every bank with whatever is there, without consequences: what a rehearsal ends with.
@@ -462,8 +453,7 @@ impl Engine {
             store: self.store.clone(),
             banks: banks.collect(),
             refusals: self.refusals.clone(),
-            outbox: self.outbox,
-            outbox_trouble: self.outbox_trouble.clone(),
+            outlets: self.post.views(),
         });
         self.snapshot.clone()
     }
@@ -484,13 +474,13 @@ fn next_deadline(bank: &Watched) -> Option<Time> {
 
 /// `last` is the last turn that was applied: whatever in it was not for this bank is contained too,
 /// so that a bank that stands idle does not hold the whole journal back.
-fn checkpoint(bank: &mut Watched, last: u64, now: Time) -> Record {
+fn checkpoint(bank: &mut Watched, told: &Told, last: u64, now: Time) -> Record {
     bank.state.turn = bank.state.turn.max(last);
     bank.unsaved = false;
     bank.last_checkpoint = Some(now);
     let mut state = vec![STATE_VERSION];
     // Encoding plain data into memory cannot fail.
-    state.extend(postcard::to_allocvec(&bank.state).unwrap_or_default());
+    state.extend(postcard::to_allocvec(&(&bank.state, told)).unwrap_or_default());
     Record::Checkpoint {
         bank: bank.bank.name.clone(),
         turn: bank.state.turn,

@@ -12,15 +12,16 @@ mod history;
 mod incident;
 mod look;
 mod natural;
+mod send;
 mod snapshot;
 mod source;
 mod view;
 
 pub use self::core::{Engine, RestoreError};
 pub use condition::{Condition, Part};
-pub use event::{Command, Due, Effect, Event, Outcome, Record, Ticket, Turn};
+pub use event::{Command, Due, Effect, Event, Onward, Outcome, Record, Ticket, Turn};
 pub use history::{History, HistoryError, Page};
 pub use snapshot::{
-    BankView, Cycles, Plant, RefusalView, Snapshot, SourceState, SourceView, WindowValue,
-    WindowView,
+    BankView, Cycles, OutletView, Plant, RefusalView, Snapshot, SourceState, SourceView,
+    WindowValue, WindowView,
 };

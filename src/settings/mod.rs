@@ -27,13 +27,15 @@ use std::path::Path;
 
 use fault::FaultList;
 
+pub use crate::model::Shift;
 pub use cautions::bank_cautions;
 pub use check::words as duration_words;
 pub use environment::environment;
 pub use fault::{Fault, Faults, Ink, Place};
 pub use used::{
-    Broker, Feed, JsonPointers, PayloadForm, PlantSettings, Protocol, RecordingColumns, Settings,
-    Shift, StoreSettings, TimeForm, TopicTemplate, WebSettings,
+    AtMost, Broker, Encryption, Feed, JsonPointers, Mail, Mailbox, Means, Outlet, PayloadForm,
+    PlantSettings, Program, Protocol, RecordingColumns, Settings, StoreSettings, TimeForm,
+    TopicTemplate, WebSettings, Webhook,
 };
 
 /// Reads the file and the variables laid over it ([`environment`] gives the process's).

@@ -3,9 +3,11 @@
 //! Every part is taken apart by full destructuring, so a key that is added cannot be forgotten here.
 //! Everything is checked before anything is given up, so that all faults come at once.
 
+mod address;
 mod bank;
 mod broker;
 mod feed;
+mod outlet;
 mod plant;
 
 use std::collections::BTreeMap;
@@ -17,7 +19,7 @@ use super::Settings;
 use super::check::unfit;
 use super::fault::{FaultList, Place};
 use super::section::{Field, Spot};
-use super::written::{Written, WrittenBank};
+use super::written::{Written, WrittenBank, WrittenOutlet};
 
 /// More banks than this are a mistake of whoever generated the file; the looks of as many would not
 /// fit into the time between them.
@@ -31,13 +33,16 @@ pub(super) fn used(written: Written, faults: &mut FaultList) -> Option<Settings>
         store,
         web,
         banks,
+        outlets,
     } = written;
     let name = plant.name.peek().map(|spot| spot.value.clone());
     let plant = plant::plant(plant, faults);
     let broker = broker::broker(broker, name.as_deref().unwrap_or_default(), faults);
     let store = plant::store(store, faults);
     let web = plant::web(web, faults);
+    let known = outlet::Known::of(&banks, plant.as_ref());
     let banks = every_bank(banks, faults);
+    let outlets = every_outlet(outlets, &known, faults);
     let (banks, feeds) = banks?.into_iter().map(|(b, f)| (Arc::new(b), f)).unzip();
     Some(Settings {
         plant: plant?,
@@ -46,6 +51,7 @@ pub(super) fn used(written: Written, faults: &mut FaultList) -> Option<Settings>
         web: web?,
         banks,
         feeds,
+        outlets: outlets?,
     })
 }
 
@@ -70,6 +76,26 @@ fn every_bank(banks: Field<Vec<WrittenBank>>, faults: &mut FaultList) -> Option<
     one_name_each("banks", names, faults);
     let one = |(place, written)| bank::bank(BankIx(place), written, faults);
     let all: Vec<_> = (0_u16..).zip(value).map(one).collect();
+    all.into_iter().collect()
+}
+
+fn every_outlet(
+    outlets: Field<Vec<WrittenOutlet>>,
+    known: &outlet::Known,
+    faults: &mut FaultList,
+) -> Option<Vec<super::Outlet>> {
+    let Spot { value, .. } = match outlets {
+        Field::Given(spot) => spot,
+        Field::Faulty => return None,
+        Field::Absent => return Some(Vec::new()),
+    };
+    one_name_each(
+        "outlets",
+        value.iter().filter_map(|o| o.name.peek()),
+        faults,
+    );
+    let one = |written| outlet::outlet(written, known, faults);
+    let all: Vec<_> = value.into_iter().map(one).collect();
     all.into_iter().collect()
 }
 

@@ -13,7 +13,7 @@ use std::collections::BTreeMap;
 use std::sync::Arc;
 
 use crate::engine::{
-    BankView, Condition, Cycles, Plant, RefusalView, Snapshot, SourceState, SourceView,
+    BankView, Condition, Cycles, OutletView, Plant, RefusalView, Snapshot, SourceState, SourceView,
 };
 use crate::model::{
     Bank, BankIx, Characteristic, Layout, Pairing, Reason, Refusal, SourceIx, Sources, Time,
@@ -281,6 +281,7 @@ pub fn snapshot() -> Snapshot {
             name: "Quayside".into(),
             zone: jiff::tz::TimeZone::get("Europe/Lisbon").expect("bundled"),
             pages: "http://127.0.0.1:7310".to_owned(),
+            routes: Vec::new(),
         }),
         broker: Condition::Well,
         store: Condition::Well,
@@ -289,8 +290,7 @@ pub fn snapshot() -> Snapshot {
             reason: Reason::NoBank,
             ..refusals().remove(0)
         }],
-        outbox: 0,
-        outbox_trouble: None,
+        outlets: vec![OutletView::new("mqtt".into())],
     }
 }
 
