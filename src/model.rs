@@ -7,6 +7,7 @@ mod bank;
 mod figures;
 mod line_event;
 mod reason;
+mod shift;
 mod time;
 mod value;
 
@@ -17,6 +18,7 @@ pub use bank::{
 pub use figures::{fixed, signed};
 pub use line_event::{LineChange, LineEvent};
 pub use reason::{Reason, Refusal};
+pub use shift::Shift;
 pub use time::{Time, US_PER_DAY, US_PER_S};
 pub use value::{Value, ValueError};
 

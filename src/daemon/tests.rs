@@ -15,7 +15,7 @@ use crate::intake::mqtt::{Arrival, FromBroker, Receipt};
 use crate::model::{
     Bank, BankIx, Characteristic, Layout, Measurement, Name, Offsets, Pairing, Sources, Time, Value,
 };
-use crate::notice::Delivery;
+use crate::notice::{Delivery, Way};
 use crate::outlets::Report;
 use crate::store::Script;
 use crate::web::Ask;
@@ -62,6 +62,7 @@ fn recovery(script: &Script) -> Recovery {
         name: "Quayside".into(),
         zone: jiff::tz::TimeZone::UTC,
         pages: "http://127.0.0.1:7310".to_owned(),
+        routes: Vec::new(),
     };
     let mut engine = Engine::new(plant, vec![bank]);
     for (bank, _, state) in &recovered.checkpoints {
@@ -72,12 +73,13 @@ fn recovery(script: &Script) -> Recovery {
         engine.replay(turn.unwrap());
         replayed += 1;
     }
-    engine.resume(recovered.last_turn, recovered.outbox.len());
+    engine.resume(recovered.last_turn, &recovered.outbox);
     Recovery {
         engine,
         store: Box::new(store),
         history,
         outbox: recovered.outbox,
+        orphans: Vec::new(),
         unacknowledged: recovered.unacknowledged,
         replayed,
         set_aside: None,
@@ -95,7 +97,8 @@ struct Bench {
 fn bench(script: &Script) -> Bench {
     let mut recovery = recovery(script);
     let (receipts, receipts_out) = mpsc::channel(100);
-    let (deliveries, deliveries_out) = mpsc::channel(100);
+    let (mqtt, deliveries_out) = mpsc::channel(100);
+    let deliveries = BTreeMap::from([(Way::Mqtt, mqtt)]);
     let (present, snapshot) = watch::channel(recovery.engine.snapshot());
     let ways = Ways {
         receipts,

@@ -29,6 +29,7 @@ use std::path::Path;
 
 use fault::FaultList;
 
+pub use crate::model::Shift;
 pub use cautions::bank_cautions;
 pub use check::words as duration_words;
 pub use environment::environment;
@@ -38,8 +39,8 @@ pub use forms::{
     PayloadForm, Pointer, Rebirth, SenMlForm, SourceAt, SparkplugForm, TimeForm, Turn, UnitAt,
 };
 pub use used::{
-    Broker, Feed, PlantSettings, Protocol, RecordingColumns, Settings, Shift, StoreSettings,
-    TopicTemplate, WebSettings,
+    AtMost, Broker, Encryption, Feed, Mail, Mailbox, Means, Outlet, PlantSettings, Program,
+    Protocol, RecordingColumns, Settings, StoreSettings, TopicTemplate, WebSettings, Webhook,
 };
 
 /// Reads the file and the variables laid over it ([`environment`] gives the process's).

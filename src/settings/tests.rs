@@ -1,6 +1,7 @@
 //! Configurations and the faults they must give, as data.
 
 mod cases;
+mod outlets;
 mod payloads;
 mod shipped;
 

@@ -1,10 +1,14 @@
 //! The configuration as used. Every value is checked and complete.
 
+mod outlet;
+
+pub use outlet::{AtMost, Encryption, Mail, Mailbox, Means, Outlet, Program, Webhook};
+
 use std::net::SocketAddr;
 use std::path::PathBuf;
 use std::sync::Arc;
 
-use crate::model::{Bank, BankIx, Name};
+use crate::model::{Bank, BankIx, Name, Shift};
 
 use super::forms::{Belief, PayloadForm};
 
@@ -23,6 +27,8 @@ pub struct Settings {
     pub banks: Vec<Arc<Bank>>,
     /// Where each bank's measurements come from, in the same order.
     pub feeds: Vec<Feed>,
+    /// The ways out of a notice besides the broker.
+    pub outlets: Vec<Outlet>,
 }
 
 /// The plant.
@@ -34,17 +40,6 @@ pub struct PlantSettings {
     pub zone: jiff::tz::TimeZone,
     /// Its shifts, in the order written.
     pub shifts: Vec<Shift>,
-}
-
-/// A shift by the clock on the wall; one that ends at or before its start ends the next day.
-#[derive(Clone, Debug, PartialEq)]
-pub struct Shift {
-    /// Its name.
-    pub name: Name,
-    /// Start.
-    pub from: jiff::civil::Time,
-    /// End.
-    pub to: jiff::civil::Time,
 }
 
 /// The protocol's version.
@@ -169,6 +164,11 @@ impl Settings {
     /// The settings of a bank's feed.
     pub fn feed(&self, bank: BankIx) -> &Feed {
         &self.feeds[bank.index()]
+    }
+
+    /// Which notices go to which outlet.
+    pub fn routes(&self) -> Vec<crate::notice::Route> {
+        self.outlets.iter().map(|o| o.route.clone()).collect()
     }
 
     /// Where people find the pages, without a slash at the end.

@@ -1,6 +1,10 @@
 //! The configuration as written: every key optional, every value with its place, types checked and
 //! meaning not.
 
+mod outlet;
+
+pub(super) use outlet::WrittenOutlet;
+
 use super::fault::{FaultList, Place};
 use super::raw::{Kind, Node, Table};
 use super::section::{Field, Section};
@@ -13,6 +17,7 @@ pub(super) struct Written {
     pub(super) store: WrittenStore,
     pub(super) web: WrittenWeb,
     pub(super) banks: Field<Vec<WrittenBank>>,
+    pub(super) outlets: Field<Vec<WrittenOutlet>>,
 }
 
 /// `[plant]`.
@@ -142,6 +147,9 @@ impl Written {
             banks: top
                 .sections("bank", "bank", faults)
                 .map(|list, _| each(list, faults, WrittenBank::read)),
+            outlets: top
+                .sections("outlet", "outlet", faults)
+                .map(|list, _| each(list, faults, WrittenOutlet::read)),
         };
         top.close(faults);
         written

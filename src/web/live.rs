@@ -16,7 +16,7 @@ use tokio::sync::watch;
 use tokio_stream::Stream;
 use tokio_util::sync::CancellationToken;
 
-use crate::engine::{BankView, Condition, Snapshot};
+use crate::engine::{BankView, Condition, OutletView, Snapshot};
 
 use super::site::App;
 
@@ -52,7 +52,7 @@ pub async fn stream(
 /// plant, everything.
 #[derive(Clone)]
 enum Seen {
-    Bank(Option<Arc<BankView>>, [Condition; 2], Option<String>),
+    Bank(Option<Arc<BankView>>, [Condition; 2], Vec<OutletView>),
     Plant(u64),
 }
 
@@ -63,7 +63,13 @@ fn seen(snapshot: &Snapshot, bank: Option<&str>) -> Seen {
     let mut banks = snapshot.banks.iter();
     let found = banks.find(|b| &*b.bank.name == name).cloned();
     let parts = [snapshot.broker.clone(), snapshot.store.clone()];
-    Seen::Bank(found, parts, snapshot.outbox_trouble.clone())
+    Seen::Bank(found, parts, outlets_in_trouble(snapshot))
+}
+
+/// What every page shows of the ways out.
+fn outlets_in_trouble(snapshot: &Snapshot) -> Vec<OutletView> {
+    let all = snapshot.outlets.iter();
+    all.filter(|o| o.trouble.is_some()).cloned().collect()
 }
 
 fn same(a: &Seen, b: &Seen) -> bool {

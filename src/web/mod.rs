@@ -31,5 +31,6 @@ pub mod tokens;
 pub mod wire;
 
 pub use durations::Durations;
+pub use pictures::enclosed::picture_of;
 pub use server::{ServeError, serve};
 pub use site::{Ask, Site};

@@ -91,6 +91,7 @@ impl Line {
             name: "Quayside".into(),
             zone: jiff::tz::TimeZone::UTC,
             pages: "http://127.0.0.1:7310".into(),
+            routes: Vec::new(),
         };
         Self {
             engine: Engine::new(plant, vec![Arc::new(bank)]),

@@ -97,6 +97,7 @@ fn settings(broker: Broker) -> Arc<Settings> {
         },
         banks: vec![Arc::new(bank)],
         feeds: vec![feed],
+        outlets: Vec::new(),
     })
 }
 

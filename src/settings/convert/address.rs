@@ -1,139 +1,92 @@
-//! Addresses within a payload: pointers of RFC 6901, and columns by number or word.
-//!
-//! Each reader answers `None` when the key is faulty and `Some(None)` when it is absent.
+//! Addresses of servers, `mqtt://host:port` and `smtps://host`: how to speak, host and port.
 
-use crate::settings::check::{Check, unfit};
+use crate::settings::check::Check;
 use crate::settings::keys;
-use crate::settings::raw::{Kind, Node};
 use crate::settings::section::{Field, Spot};
-use crate::settings::written_payload::WrittenAt;
 
-/// More columns than a line of a machine has.
-const MOST_COLUMNS: i64 = 1000;
+/// What an address may begin with, whether that encrypts from the start, and the port that goes
+/// without saying.
+pub(super) type Schemes = &'static [(&'static str, bool, u16)];
 
-/// A pointer of RFC 6901.
-pub(super) fn pointer(
-    field: Field<WrittenAt>,
-    name: &str,
+/// What an address says.
+pub(super) struct Address {
+    pub(super) host: String,
+    pub(super) port: u16,
+    /// Whether the connection is encrypted from the start.
+    pub(super) tls: bool,
+}
+
+/// The address in the `url` of a section.
+pub(super) fn read(
+    field: Field<String>,
+    section: &str,
+    schemes: Schemes,
     check: &mut Check<'_>,
-) -> Option<Option<String>> {
-    let Spot { value, place } = match field {
-        Field::Given(spot) => spot,
-        Field::Absent => return Some(None),
-        Field::Faulty => return None,
-    };
-    let value = match value {
-        WrittenAt::Text(text) => text,
-        WrittenAt::Column(number) => {
-            let message = format!("the pointer `{name}` is a number and must be text in quotes");
-            let hint = format!("write `{name} = \"/{number}\"` for the element of a list");
+) -> Option<Address> {
+    let Spot { value, place } = field.given()?;
+    match parse(&value, schemes) {
+        Ok(address) => Some(address),
+        Err(Unread { message, hint }) => {
+            let hint = hint.unwrap_or_else(|| keys::example(section, "url"));
             check.add(&place, message, hint);
-            return None;
-        }
-    };
-    let (message, hint) = if !value.is_empty() && !value.starts_with('/') {
-        let path = value.trim_start_matches("$.").replace('.', "/");
-        (
-            "must start with /",
-            format!("write `{name} = \"/{}\"`", path.escape_debug()),
-        )
-    } else if escapes_badly(&value) {
-        let hint = "in a pointer ~ is written ~0, and / inside a name ~1 (RFC 6901)";
-        (
-            "has a ~ that is followed by neither 0 nor 1",
-            hint.to_owned(),
-        )
-    } else {
-        return Some(Some(value));
-    };
-    check.add(&place, format!("the pointer `{name}` {message}"), hint);
-    None
-}
-
-fn escapes_badly(pointer: &str) -> bool {
-    let mut after_tildes = pointer.split('~').skip(1);
-    after_tildes.any(|rest| !rest.starts_with(['0', '1']))
-}
-
-/// A column, counted from 0.
-pub(super) fn column(
-    field: Field<WrittenAt>,
-    name: &str,
-    header: &[String],
-    check: &mut Check<'_>,
-) -> Option<Option<usize>> {
-    let Spot { value, place } = match field {
-        Field::Given(spot) => spot,
-        Field::Absent => return Some(None),
-        Field::Faulty => return None,
-    };
-    let last = match header.len() {
-        0 => MOST_COLUMNS,
-        words => i64::try_from(words).unwrap_or(MOST_COLUMNS),
-    };
-    let found = match &value {
-        WrittenAt::Text(word) => header.iter().position(|own| own == word),
-        WrittenAt::Column(number) if (1..=last).contains(number) => {
-            usize::try_from(number - 1).ok()
-        }
-        WrittenAt::Column(_) => None,
-    };
-    if found.is_some() {
-        return Some(found);
-    }
-    let (message, hint) = match value {
-        WrittenAt::Text(word) if header.is_empty() => (
-            format!(
-                "`{name}` is the word \"{}\", and no `header` is given",
-                word.escape_debug()
-            ),
-            "write the number of the column, from 1, or the words of all columns as `header`"
-                .to_owned(),
-        ),
-        WrittenAt::Text(word) => (
-            format!(
-                "`{name}` is \"{}\", which is none of `header`",
-                word.escape_debug()
-            ),
-            format!("the words are {}", header.join(", ")),
-        ),
-        WrittenAt::Column(_) => (
-            format!("`{name}` must lie between 1 and {last}"),
-            "columns are counted from 1".to_owned(),
-        ),
-    };
-    check.add(&place, message, hint);
-    None
-}
-
-/// A list of words, each there once; `None` when one is faulty.
-pub(super) fn words(
-    field: Field<Vec<Node>>,
-    name: &str,
-    check: &mut Check<'_>,
-) -> Option<Vec<String>> {
-    let list = match field {
-        Field::Given(spot) => spot.value,
-        Field::Absent => return Some(Vec::new()),
-        Field::Faulty => return None,
-    };
-    let mut all: Vec<String> = Vec::with_capacity(list.len());
-    let mut good = true;
-    for node in list {
-        let wrong = match node.kind {
-            Kind::Text(word) => {
-                let twice = all.contains(&word).then(|| "is there twice".to_owned());
-                let wrong = unfit(&word).or(twice);
-                all.push(word);
-                wrong
-            }
-            other => Some(format!("is {} and must be text in quotes", other.what())),
-        };
-        if let Some(what) = wrong {
-            good = false;
-            let message = format!("a word of `{name}` {what}");
-            check.add(&node.place, message, keys::example("bank.payload", name));
+            None
         }
     }
-    good.then_some(all)
+}
+
+/// Why an address cannot be used.
+struct Unread {
+    message: String,
+    hint: Option<String>,
+}
+
+fn parse(url: &str, schemes: Schemes) -> Result<Address, Unread> {
+    let no = |message: &str| Unread {
+        message: message.to_owned(),
+        hint: None,
+    };
+    if !url.contains("://") {
+        let [first, second] = [schemes[0].0, schemes[1].0];
+        return Err(Unread {
+            message: "`url` does not say how to speak".to_owned(),
+            hint: Some(format!(
+                "write \"{first}://{}\", or {second}:// for TLS",
+                url.trim()
+            )),
+        });
+    }
+    let uri: http::Uri = url.parse().map_err(|_| no("`url` is no address"))?;
+    let known = schemes.iter().find(|s| Some(s.0) == uri.scheme_str());
+    let &(_, tls, port) = known.ok_or_else(|| {
+        let all: Vec<String> = schemes.iter().map(|s| format!("{}://", s.0)).collect();
+        no(&format!("`url` must start with {}", all.join(" or ")))
+    })?;
+    let authority = uri.authority().ok_or_else(|| no("`url` names no host"))?;
+    if authority.as_str().contains('@') {
+        return Err(Unread {
+            message: "`url` holds a user or a password".to_owned(),
+            hint: Some("give `user` and `password_file` instead".to_owned()),
+        });
+    }
+    if !matches!(uri.path(), "" | "/") || uri.query().is_some() {
+        return Err(no("`url` goes on after the host and port"));
+    }
+    let host = authority.host();
+    let rest = authority.as_str().strip_prefix(host).unwrap_or_default();
+    let port = match rest.strip_prefix(':') {
+        None => port,
+        Some(digits) => match digits.parse::<u16>() {
+            Ok(port) if port > 0 => port,
+            _ => return Err(no("the port of `url` must lie between 1 and 65535")),
+        },
+    };
+    // An IPv6 address is bracketed in a URL and nowhere else.
+    let host = host
+        .trim_start_matches('[')
+        .trim_end_matches(']')
+        .to_owned();
+    if host.is_empty() {
+        return Err(no("`url` names no host"));
+    }
+    Ok(Address { host, port, tls })
 }

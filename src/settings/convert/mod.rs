@@ -9,10 +9,12 @@ mod belief;
 mod broker;
 mod feed;
 mod known;
+mod outlet;
 mod payload;
 mod payload_named;
 mod payload_placed;
 mod plant;
+mod pointer;
 
 use std::collections::BTreeMap;
 use std::sync::Arc;
@@ -25,7 +27,7 @@ use super::Settings;
 use super::check::unfit;
 use super::fault::{FaultList, Place};
 use super::section::{Field, Spot};
-use super::written::{Written, WrittenBank};
+use super::written::{Written, WrittenBank, WrittenOutlet};
 
 /// More banks than this are a mistake of whoever generated the file; the looks of as many would not
 /// fit into the time between them.
@@ -39,6 +41,7 @@ pub(super) fn used(written: Written, faults: &mut FaultList) -> Option<Settings>
         store,
         web,
         banks,
+        outlets,
     } = written;
     let name = plant.name.peek().map(|spot| spot.value.clone());
     let plant = plant::plant(plant, faults);
@@ -48,7 +51,9 @@ pub(super) fn used(written: Written, faults: &mut FaultList) -> Option<Settings>
     let zone = plant
         .as_ref()
         .map_or(TimeZone::UTC, |plant| plant.zone.clone());
+    let known = outlet::Known::of(&banks, plant.as_ref());
     let banks = every_bank(banks, &zone, faults);
+    let outlets = every_outlet(outlets, &known, faults);
     let (banks, feeds) = banks?.into_iter().map(|(b, f)| (Arc::new(b), f)).unzip();
     Some(Settings {
         plant: plant?,
@@ -57,6 +62,7 @@ pub(super) fn used(written: Written, faults: &mut FaultList) -> Option<Settings>
         web: web?,
         banks,
         feeds,
+        outlets: outlets?,
     })
 }
 
@@ -85,6 +91,26 @@ fn every_bank(
     one_name_each("banks", names, faults);
     let one = |(place, written)| bank::bank(BankIx(place), written, zone, faults);
     let all: Vec<_> = (0_u16..).zip(value).map(one).collect();
+    all.into_iter().collect()
+}
+
+fn every_outlet(
+    outlets: Field<Vec<WrittenOutlet>>,
+    known: &outlet::Known,
+    faults: &mut FaultList,
+) -> Option<Vec<super::Outlet>> {
+    let Spot { value, .. } = match outlets {
+        Field::Given(spot) => spot,
+        Field::Faulty => return None,
+        Field::Absent => return Some(Vec::new()),
+    };
+    one_name_each(
+        "outlets",
+        value.iter().filter_map(|o| o.name.peek()),
+        faults,
+    );
+    let one = |written| outlet::outlet(written, known, faults);
+    let all: Vec<_> = value.into_iter().map(one).collect();
     all.into_iter().collect()
 }
 

@@ -11,8 +11,8 @@ use crate::settings::{
     Turn, UnitAt,
 };
 
-use super::address::{column, pointer, words};
 use super::payload::Maker;
+use super::pointer::{column, pointer, words};
 
 impl Maker<'_, '_> {
     pub(super) fn json(&mut self, written: WrittenPayload) -> Option<PayloadForm> {

@@ -8,6 +8,7 @@
 
 pub mod band;
 pub mod deviations;
+pub mod enclosed;
 pub mod evidence;
 pub mod glyph;
 pub mod mini;

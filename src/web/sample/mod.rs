@@ -14,7 +14,7 @@ use std::collections::BTreeMap;
 use std::sync::Arc;
 
 use crate::engine::{
-    BankView, Condition, Cycles, Plant, RefusalView, Snapshot, SourceState, SourceView,
+    BankView, Condition, Cycles, OutletView, Plant, RefusalView, Snapshot, SourceState, SourceView,
 };
 use crate::model::{
     Bank, BankIx, Characteristic, Layout, LineChange, LineEvent, Offsets, Pairing, Reason, Refusal,
@@ -290,6 +290,7 @@ pub fn snapshot() -> Snapshot {
             name: "Quayside".into(),
             zone: jiff::tz::TimeZone::get("Europe/Lisbon").expect("bundled"),
             pages: "http://127.0.0.1:7310".to_owned(),
+            routes: Vec::new(),
         }),
         broker: Condition::Well,
         store: Condition::Well,
@@ -298,8 +299,7 @@ pub fn snapshot() -> Snapshot {
             reason: Reason::NoBank,
             ..refusals().remove(0)
         }],
-        outbox: 0,
-        outbox_trouble: None,
+        outlets: vec![OutletView::new("mqtt".into())],
     }
 }
 

@@ -114,6 +114,7 @@ fn settings(token_file: Option<PathBuf>) -> Settings {
         },
         banks: Vec::new(),
         feeds: Vec::new(),
+        outlets: Vec::new(),
     }
 }
 
