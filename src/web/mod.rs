@@ -8,8 +8,11 @@
 //! encryption (a proxy in front does it) and any decision about sources.
 
 mod access;
+mod acknowledge;
+mod address;
 mod api;
 mod assets;
+mod dress;
 mod durations;
 mod format;
 mod health;
@@ -25,6 +28,7 @@ mod server;
 mod sessions;
 mod signin;
 mod site;
+mod standing;
 #[cfg(test)]
 mod tests;
 pub mod tokens;

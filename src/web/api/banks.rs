@@ -9,7 +9,7 @@ use utoipa::IntoParams;
 use crate::engine::{Command, Outcome};
 use crate::model::{Time, US_PER_DAY};
 use crate::verdict::Digest;
-use crate::web::pages::standing::Standing;
+use crate::web::standing::Standing;
 use crate::web::problem::Problem;
 use crate::web::site::{App, bank};
 use crate::web::wire::{BankBody, BankWholeBody, DigestBody, List, RefusalBody, WindowBody};

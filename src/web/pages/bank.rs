@@ -9,12 +9,12 @@ use crate::web::access::Caller;
 use crate::web::format::{self, span_of_time};
 use crate::web::pictures::glyph;
 use crate::web::problem::Problem;
-use crate::web::signin::percent;
+use crate::web::address::percent;
 use crate::web::site::{App, bank};
 
 use super::frame::{Page, Scene, render};
 use super::history::{self, Past};
-use super::standing::Standing;
+use crate::web::standing::Standing;
 use super::{looks, notice, sources};
 
 /// Eight hours of looks each second; a bound on what one page reads.

@@ -9,7 +9,7 @@ use crate::web::assets;
 use crate::web::format::Times;
 use crate::web::pictures::glyph::{self, Glyph};
 use crate::web::problem::Problem;
-use crate::web::signin::percent;
+use crate::web::address::percent;
 use crate::web::site::App;
 
 /// Everything a page is made from.

@@ -7,7 +7,7 @@ use crate::notice::Kind;
 use crate::verdict::{Estimate, Look, Method, TestEntry};
 use crate::web::format;
 use crate::web::pictures::{deviations, row, spread};
-use crate::web::signin::percent;
+use crate::web::address::percent;
 
 use super::frame::Scene;
 

@@ -6,12 +6,12 @@ use maud::{Markup, html};
 use crate::engine::{BankView, RefusalView};
 use crate::web::access::Caller;
 use crate::web::pictures::{glyph, mini};
-use crate::web::signin::percent;
+use crate::web::address::percent;
 use crate::web::site::App;
 
 use super::frame::{Page, Scene, render};
 use super::sources;
-use super::standing::Standing;
+use crate::web::standing::Standing;
 
 /// The page.
 pub async fn page(State(app): State<App>, Extension(caller): Extension<Caller>) -> Markup {
