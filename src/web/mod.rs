@@ -12,23 +12,28 @@ mod acknowledge;
 mod address;
 mod api;
 mod assets;
+mod days;
 mod dress;
 mod durations;
 mod format;
 mod health;
+mod kept;
 mod live;
 pub mod metrics;
 mod openapi;
 mod pages;
 mod pictures;
 mod problem;
+mod pulse;
 #[cfg(test)]
 mod sample;
 mod server;
+mod sharing;
 mod sessions;
 mod signin;
 mod site;
 mod standing;
+mod story;
 #[cfg(test)]
 mod tests;
 pub mod tokens;
