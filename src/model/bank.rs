@@ -151,6 +151,16 @@ impl Budget {
         }
     }
 
+    /// False calls allowed in [`Budget::days`].
+    pub fn calls(self) -> f64 {
+        self.calls
+    }
+
+    /// The days that the allowance is for.
+    pub fn days(self) -> f64 {
+        self.days
+    }
+
     /// False calls allowed per microsecond of calendar time.
     pub fn per_us(self) -> f64 {
         self.calls / (self.days * US_PER_DAY as f64)

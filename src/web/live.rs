@@ -2,7 +2,7 @@
 //!
 //! The event carries the snapshot's version only; the script then asks for the page again and swaps
 //! what differs, so that there is one way in which a page is made. What must hold: at most one event
-//! per [`PAUSE`]; a stream for one bank is silent while that bank does not change; every stream ends
+//! per beat (`pulse`); a stream for one bank is silent while that bank does not change; every stream ends
 //! with the shutdown.
 
 use std::convert::Infallible;
@@ -20,8 +20,6 @@ use crate::engine::{BankView, Condition, OutletView, Snapshot};
 
 use super::site::App;
 
-/// People read slower than measurements arrive.
-const PAUSE: Duration = Duration::from_secs(2);
 /// Proxies cut connections that say nothing for a minute.
 const KEEP_ALIVE: Duration = Duration::from_secs(20);
 
@@ -37,9 +35,9 @@ pub async fn stream(
     Query(wanted): Query<Wanted>,
 ) -> Sse<impl Stream<Item = Result<Event, Infallible>>> {
     let listener = Listener {
-        seen: seen(&app.now(), wanted.bank.as_deref()),
+        seen: seen(&app.pulse.borrow(), wanted.bank.as_deref()),
         bank: wanted.bank,
-        snapshot: app.site.snapshot.clone(),
+        snapshot: app.pulse.clone(),
         shutdown: app.shutdown.clone(),
     };
     let (tell, told) = tokio::sync::mpsc::channel(1);
@@ -114,10 +112,6 @@ impl Listener {
                 .data(snapshot.version.to_string());
             if tell.send(Ok(event)).await.is_err() {
                 return;
-            }
-            tokio::select! {
-                () = self.shutdown.cancelled() => return,
-                () = tokio::time::sleep(PAUSE) => {}
             }
         }
     }

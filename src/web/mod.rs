@@ -8,23 +8,33 @@
 //! encryption (a proxy in front does it) and any decision about sources.
 
 mod access;
+mod acknowledge;
+mod address;
 mod api;
 mod assets;
+mod days;
+mod dress;
 mod durations;
 mod format;
 mod health;
+mod kept;
+mod line;
 mod live;
 pub mod metrics;
 mod openapi;
 mod pages;
 mod pictures;
 mod problem;
+mod pulse;
 #[cfg(test)]
 mod sample;
 mod server;
 mod sessions;
+mod sharing;
 mod signin;
 mod site;
+mod standing;
+mod story;
 #[cfg(test)]
 mod tests;
 pub mod tokens;

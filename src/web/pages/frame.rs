@@ -5,11 +5,11 @@ use maud::{DOCTYPE, Markup, PreEscaped, html};
 use crate::engine::{Condition, Snapshot};
 use crate::model::Time;
 use crate::web::access::Caller;
+use crate::web::address::percent;
 use crate::web::assets;
 use crate::web::format::Times;
 use crate::web::pictures::glyph::{self, Glyph};
 use crate::web::problem::Problem;
-use crate::web::signin::percent;
 use crate::web::site::App;
 
 /// Everything a page is made from.

@@ -8,9 +8,9 @@ use serde::Deserialize;
 use crate::engine::{BankView, SourceState};
 use crate::model::{LineChange, LineEvent, signed};
 use crate::web::access::{Caller, SessionPass};
-use crate::web::api::line::submit;
+use crate::web::address::percent;
+use crate::web::line::submit;
 use crate::web::problem::Problem;
-use crate::web::signin::percent;
 use crate::web::site::App;
 use crate::web::wire::{LineEntryBody, LineKind};
 
@@ -182,7 +182,7 @@ pub async fn enter(
     Path(name): Path<String>,
     Form(filled): Form<Filled>,
 ) -> Result<Response, Problem> {
-    let back = crate::web::signin::local(&filled.back);
+    let back = crate::web::address::local(&filled.back);
     if press(&app, caller, &filled.field)? == Pressed::Once {
         submit(&app, &name, &entered(filled)?).await?;
     }

@@ -8,12 +8,12 @@ use serde::Deserialize;
 use crate::model::signed;
 use crate::notice::{Kind, Notice, State as NoticeState};
 use crate::web::access::{Caller, SessionPass};
-use crate::web::api::notices::submit;
+use crate::web::acknowledge::submit;
+use crate::web::address::percent;
 use crate::web::format;
 use crate::web::pictures::glyph::{self, Glyph};
 use crate::web::problem::Problem;
 use crate::web::sessions::Field;
-use crate::web::signin::percent;
 use crate::web::site::{App, bank};
 
 use super::frame::{Page, Scene, render};
@@ -207,7 +207,7 @@ pub async fn acknowledge(
     Path(id): Path<String>,
     Form(filled): Form<Filled>,
 ) -> Result<Response, Problem> {
-    let back = crate::web::signin::local(&filled.back);
+    let back = crate::web::address::local(&filled.back);
     if press(&app, caller, &filled.field)? == Pressed::Once {
         submit(&app, &id, &filled.by, &filled.comment).await?;
     }

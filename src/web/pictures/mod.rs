@@ -7,6 +7,7 @@
 //! what is passed in.
 
 pub mod band;
+pub mod day;
 pub mod deviations;
 pub mod enclosed;
 pub mod evidence;

@@ -1,6 +1,6 @@
 //! A plant made by hand, for tests of pages and metrics and for looking at them.
 //!
-//! Seven banks, one per way of standing. Figures are made up but hang together: a source that a notice
+//! Twelve banks, at least one per way of standing. Figures are made up but hang together: a source that a notice
 //! names has moved in the looks too. The same seed gives the same plant.
 
 mod looks;
@@ -190,11 +190,15 @@ pub fn view(bank: Bank, story: Story, seed: u64) -> BankView {
         raised: open.iter().map(|n| (n.kind, 1)).collect(),
         open,
         outcomes,
-        refusals: if values > 0 { refusals() } else { Vec::new() },
         stopped: None,
         product: None,
         line_events: line_events(story),
         watch: Some(watch::watch(&bank, names.len(), story, values)),
+        refusals: if seed % 5 == 1 {
+            refusals()
+        } else {
+            Vec::new()
+        },
         cycles: Some(Cycles {
             closed: 40_176,
             skipped: 2,
@@ -282,6 +286,31 @@ pub fn snapshot() -> Snapshot {
             bank("sealer", "line 9", content(), &numbered(8), 0.8),
             Story::Young(0),
             7,
+        ),
+        view(
+            bank("filler-5", "filler 5", content(), &numbered(24), 0.8),
+            Story::Even,
+            8,
+        ),
+        view(
+            bank("labels", "labeller 1", diameter(), &numbered(8), 0.02),
+            Story::Even,
+            9,
+        ),
+        view(
+            bank("weigher", "line 9", content(), &numbered(14), 0.8),
+            Story::Spread(3, 2.2),
+            10,
+        ),
+        view(
+            bank("mould-c", "mould c", diameter(), &named("cavity", 8), 0.02),
+            Story::Even,
+            11,
+        ),
+        view(
+            bank("scales", "packing", content(), &numbered(4), 0.8),
+            Story::Level(1, 1.9, 200),
+            12,
         ),
     ];
     Snapshot {
