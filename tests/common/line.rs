@@ -10,7 +10,7 @@ use evenrow::model::{
     Bank, BankIx, Budget, Characteristic, Layout, Measurement, Name, Offsets, Pairing, Sources,
     Time, US_PER_S, Value,
 };
-use evenrow::notice::Notice;
+use evenrow::notice::{Notice, Route};
 
 pub const START: Time = Time::from_us(1_790_000_000 * US_PER_S);
 
@@ -83,6 +83,11 @@ pub struct Line {
 
 impl Line {
     pub fn new(bank: Bank, seed: u64) -> Self {
+        Self::with_routes(bank, seed, Vec::new())
+    }
+
+    /// One whose notices go to outlets too.
+    pub fn with_routes(bank: Bank, seed: u64, routes: Vec<Route>) -> Self {
         let k = match &bank.sources {
             Sources::Listed(listed) => listed.len(),
             Sources::Discover { most } => usize::from(*most),
@@ -91,7 +96,7 @@ impl Line {
             name: "Quayside".into(),
             zone: jiff::tz::TimeZone::UTC,
             pages: "http://127.0.0.1:7310".into(),
-            routes: Vec::new(),
+            routes,
         };
         Self {
             engine: Engine::new(plant, vec![Arc::new(bank)]),
