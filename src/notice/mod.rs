@@ -4,6 +4,7 @@
 //! Deliberately absent: sending (that is `outlets`), clocks, and any decision about sources
 //! (that is `verdict`).
 
+mod advice;
 mod life;
 mod record;
 mod wire;
@@ -13,5 +14,5 @@ pub use life::{Happening, TRANSITIONS, after};
 pub use record::{
     Acknowledgement, Delivery, Kind, NamedSource, Notice, Priority, Since, State, Way,
 };
-pub use wire::NoticeData;
+pub use wire::{NoticeData, PatternData};
 pub use words::{Compared, Facts, MOST_SUBJECT, SPREAD_UNIT, Words};
