@@ -7,7 +7,7 @@
 
 use crate::model::{Bank, SourceIx, Time};
 use crate::verdict::watch::{Crossing, Cycle, Frozen, Progress, Terms, Watch};
-use crate::verdict::{Aspect, Need};
+use crate::verdict::{Aspect, Need, Usual};
 
 use super::Plant;
 use super::bank::Watched;
@@ -72,6 +72,7 @@ impl Watched {
     /// which is the next step's business.
     fn step_over(&mut self, closed: &[i64]) -> Option<Crossing> {
         let compared = self.compared();
+        let places: Vec<f64> = (0..compared.len()).map(|s| self.usual_place(s)).collect();
         let active = self.state.incidents.iter().any(|i| i.is_active());
         let watch = self.state.watch.as_mut()?;
         watch.compare(&compared);
@@ -80,6 +81,8 @@ impl Watched {
         let mut first = None;
         for &place in closed {
             if let Some(taken) = self.state.windows.cycle(place, &mut values) {
+                let each = values.iter_mut().zip(&places);
+                each.for_each(|(value, usual)| *value -= usual);
                 let cycle = Cycle {
                     place,
                     taken,
@@ -90,6 +93,12 @@ impl Watched {
             }
         }
         first
+    }
+
+    /// Where a source usually stands; not a number while that is not known, so that it is not compared.
+    fn usual_place(&self, source: usize) -> f64 {
+        let usual = Usual::known(&self.bank.offsets, &self.state.sources[source].name);
+        usual.map_or(f64::NAN, |u| u.place)
     }
 
     /// Which sources the watch compares: those that take part and that no open notice is about.

@@ -5,6 +5,7 @@ use std::sync::Arc;
 use serde::{Deserialize, Serialize};
 
 use crate::model::{Name, Time};
+use crate::verdict::{Pattern, Slip};
 
 /// What a notice is about.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord, Hash, Serialize, Deserialize)]
@@ -226,6 +227,17 @@ pub struct Notice {
     pub url: String,
     /// The span of the look that called.
     pub span: usize,
+    /// The machine's geometry explains it; level only.
+    pub pattern: Option<Pattern>,
+    /// All sources read as others; level only.
+    pub slip: Option<Slip>,
+    /// How far the sources that stayed moved together since the start, in the bank's unit. It is no
+    /// divergence and never raises a notice.
+    pub common_movement: Option<f64>,
+    /// Mean of the sources that the named ones are compared with, in the bank's unit.
+    pub even_mean: Option<f64>,
+    /// What the bank gives away in an hour, where a cost is configured.
+    pub cost_per_hour: Option<f64>,
 }
 
 /// A way out of the house.

@@ -224,6 +224,8 @@ struct Series {
     reference_share: f64,
     /// Variance of the reference's mean, where it is one number for the whole series.
     reference_error: f64,
+    /// What the usual places add to the variance of the contrast, where they were learnt.
+    usual_error: f64,
 }
 
 impl Series {
@@ -272,6 +274,10 @@ impl Series {
             let size = others.len() as f64;
             series.reference_error = series.reference_variance * values / (size * size);
         }
+        let share = |c: &usize| data.usual[*c].share;
+        let size = others.len() as f64;
+        let shares = share(&column) + others.iter().map(share).sum::<f64>() / (size * size);
+        series.usual_error = shares * series.sigma().powi(2);
         Some(series)
     }
 
@@ -283,6 +289,7 @@ impl Series {
             reference_variance: 0.0,
             reference_share,
             reference_error: 0.0,
+            usual_error: 0.0,
         }
     }
 
@@ -301,7 +308,7 @@ impl Series {
         match aspect {
             Aspect::Level => {
                 let own = s.variance()? / s.n as f64;
-                let se = ((own + self.reference_error) * yard.factor).sqrt();
+                let se = ((own + self.reference_error + self.usual_error) * yard.factor).sqrt();
                 (se > 0.0).then_some((s.mean, se))
             }
             Aspect::Spread => {
