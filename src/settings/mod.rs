@@ -30,7 +30,7 @@ use std::path::Path;
 use fault::FaultList;
 
 pub use cautions::bank_cautions;
-pub use check::words as duration_words;
+pub use check::{duration_us as duration_from_words, words as duration_words};
 pub use environment::environment;
 pub use fault::{Fault, Faults, Ink, Place};
 pub use forms::{

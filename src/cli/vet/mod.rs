@@ -1,8 +1,10 @@
 //! `evenrow vet`: every fault of a configuration at once or, when it is good, what it means.
 //!
-//! Deliberately absent: connecting to anything. Files that the configuration names are looked at,
-//! and a missing one is a caution: the configuration may be meant for another machine.
+//! With `--broker` it also listens for a while ([`broker`]); otherwise it connects to nothing. Files that
+//! the configuration names are looked at, and a missing one is a caution: the configuration may be meant
+//! for another machine.
 
+mod broker;
 mod forms;
 
 use std::fmt::Write as _;
@@ -20,13 +22,22 @@ use super::exit::Exit;
 
 /// Runs the command.
 pub fn run(args: VetArgs) -> Exit {
-    let VetArgs { config } = args;
+    let VetArgs {
+        config,
+        broker,
+        listen,
+        json,
+    } = args;
     let settings = match configuration::read(&config) {
         Ok(settings) => settings,
         Err(exit) => return exit,
     };
+    if json {
+        return broker::run(&settings, &config, listen, broker::Form::Json);
+    }
     let text = format!("{}: good\n\n{}", config.display(), summary(&settings));
     match std::io::stdout().write_all(text.as_bytes()) {
+        Ok(()) if broker => broker::run(&settings, &config, listen, broker::Form::Text),
         Ok(()) => Exit::Done,
         Err(error) => {
             eprintln!("the summary cannot be written: {error}");
