@@ -11,8 +11,8 @@ use evenrow::model::{
     Bank, BankIx, Budget, Characteristic, Layout, Offsets, Pairing, Reason, Sources, US_PER_DAY,
 };
 use evenrow::settings::{
-    Broker, Feed, PayloadForm, PlantSettings, Protocol, RecordingColumns, Settings, StoreSettings,
-    TopicTemplate, WebSettings,
+    Belief, Broker, Feed, PayloadForm, PlantSettings, Protocol, RecordingColumns, Settings,
+    StoreSettings, TopicTemplate, WebSettings,
 };
 use tokio::sync::mpsc;
 use tokio_util::sync::CancellationToken;
@@ -76,6 +76,7 @@ fn settings(broker: Broker) -> Arc<Settings> {
             source_level: Some(1),
         },
         payload: PayloadForm::Number,
+        belief: Belief::default(),
         recording: RecordingColumns::default(),
     };
     Arc::new(Settings {
