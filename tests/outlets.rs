@@ -9,7 +9,9 @@ use std::time::Duration;
 use evenrow::model::{Time, US_PER_S};
 use evenrow::notice::{Delivery, Kind, NamedSource, Notice, Priority, Since, State, Way};
 use evenrow::outlets::{OutletError, Report, mqtt};
-use evenrow::settings::{Broker, PlantSettings, Protocol, Settings, StoreSettings, WebSettings};
+use evenrow::settings::{
+    Broker, Origins, PlantSettings, Protocol, Settings, StoreSettings, WebSettings,
+};
 use serde_json::Value;
 use tokio::sync::mpsc;
 use tokio::task::JoinHandle;
@@ -51,10 +53,13 @@ fn settings(port: u16, protocol: Protocol) -> Settings {
             listen: ([127, 0, 0, 1], 0).into(),
             token_file: None,
             tls_in_front: false,
+            certificate_file: None,
+            key_file: None,
             address: None,
         },
         banks: Vec::new(),
         feeds: Vec::new(),
+        origins: Origins::default(),
     }
 }
 

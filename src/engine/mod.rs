@@ -24,3 +24,4 @@ pub use snapshot::{
     BankView, Cycles, Plant, RefusalView, Snapshot, SourceState, SourceView, WindowValue,
     WindowView,
 };
+pub use view::shown_look;

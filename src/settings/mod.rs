@@ -15,6 +15,7 @@ mod convert;
 mod environment;
 mod fault;
 mod keys;
+mod list;
 mod raw;
 mod section;
 mod used;
@@ -31,6 +32,7 @@ pub use cautions::bank_cautions;
 pub use check::words as duration_words;
 pub use environment::environment;
 pub use fault::{Fault, Faults, Ink, Place};
+pub use list::{Origin, Origins, Setting};
 pub use used::{
     Broker, Feed, JsonPointers, PayloadForm, PlantSettings, Protocol, RecordingColumns, Settings,
     Shift, StoreSettings, TimeForm, TopicTemplate, WebSettings,
@@ -77,8 +79,9 @@ impl Settings {
         let mut faults = FaultList::default();
         let settings = raw::from_text(text, &mut faults).and_then(|mut root| {
             environment::lay_over(&mut root, variables, &mut faults);
+            let origins = Origins::of(&root);
             let written = written::Written::read(root, &mut faults);
-            convert::used(written, &mut faults)
+            convert::used(written, origins, &mut faults)
         });
         match settings {
             Some(settings) if faults.is_empty() => Ok(settings),

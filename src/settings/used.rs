@@ -6,6 +6,8 @@ use std::sync::Arc;
 
 use crate::model::{Bank, BankIx, Name};
 
+use super::list::Origins;
+
 /// Everything the daemon is told.
 #[derive(Clone, Debug)]
 pub struct Settings {
@@ -21,6 +23,8 @@ pub struct Settings {
     pub banks: Vec<Arc<Bank>>,
     /// Where each bank's measurements come from, in the same order.
     pub feeds: Vec<Feed>,
+    /// Where the values that were given stand.
+    pub origins: Origins,
 }
 
 /// The plant.
@@ -104,9 +108,13 @@ pub struct WebSettings {
     pub listen: SocketAddr,
     /// One token per line, optionally preceded by `look ` or `act `.
     pub token_file: Option<PathBuf>,
+    /// PEM file of the certificate chain with which we encrypt; without it we do not.
+    pub certificate_file: Option<PathBuf>,
+    /// PEM file of its key.
+    pub key_file: Option<PathBuf>,
     /// Said explicitly: something in front of us encrypts.
     pub tls_in_front: bool,
-    /// The address people use, when it is not `http://{listen}`.
+    /// The address people use, when it is not that of `listen`.
     pub address: Option<String>,
 }
 
@@ -208,6 +216,7 @@ impl Settings {
     pub fn pages(&self) -> String {
         match &self.web.address {
             Some(address) => address.trim_end_matches('/').to_owned(),
+            None if self.web.certificate_file.is_some() => format!("https://{}", self.web.listen),
             None => format!("http://{}", self.web.listen),
         }
     }

@@ -170,10 +170,7 @@ fn day(view: &BankView, looked: &BTreeMap<i64, Half>, notices: &[&Notice], now: 
 
 /// Notices that the call budget is about.
 fn is_call(kind: Kind) -> bool {
-    matches!(
-        kind,
-        Kind::LevelApart | Kind::SpreadApart | Kind::BankSplit
-    )
+    matches!(kind, Kind::LevelApart | Kind::SpreadApart | Kind::BankSplit)
 }
 
 fn days_us(days: f64) -> i64 {

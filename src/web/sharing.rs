@@ -67,15 +67,13 @@ pub async fn layer(State(app): State<App>, request: Request, next: Next) -> Resp
             *place = Some(finished);
             answer
         }
-        Err(why) => Problem::internal(&format!("the page could not be finished: {why}"))
-            .into_response(),
+        Err(why) => {
+            Problem::internal(&format!("the page could not be finished: {why}")).into_response()
+        }
     }
 }
 
-async fn finish(
-    response: Response,
-    squeezed: bool,
-) -> Result<(HeaderMap, Bytes), axum::BoxError> {
+async fn finish(response: Response, squeezed: bool) -> Result<(HeaderMap, Bytes), axum::BoxError> {
     let (mut parts, body) = response.into_parts();
     let hint = body.size_hint().exact().unwrap_or(0);
     let plain = axum::body::to_bytes(body, LARGEST_BYTES).await?;

@@ -20,9 +20,8 @@ pub fn notices(
     bank: Option<&str>,
     (from, to): (Time, Time),
 ) -> Result<Vec<Notice>, HistoryError> {
-    let wanted = |n: &Notice| {
-        (from..to).contains(&n.raised) && bank.is_none_or(|bank| bank == &*n.bank)
-    };
+    let wanted =
+        |n: &Notice| (from..to).contains(&n.raised) && bank.is_none_or(|bank| bank == &*n.bank);
     let (mut found, mut seen, mut after) = (Vec::new(), 0, None::<String>);
     while seen < MOST {
         let part = history.notices(after.as_deref(), PART)?;

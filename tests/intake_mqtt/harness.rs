@@ -11,8 +11,8 @@ use evenrow::model::{
     Bank, BankIx, Budget, Characteristic, Layout, Pairing, Reason, Sources, US_PER_DAY,
 };
 use evenrow::settings::{
-    Broker, Feed, PayloadForm, PlantSettings, Protocol, RecordingColumns, Settings, StoreSettings,
-    TopicTemplate, WebSettings,
+    Broker, Feed, Origins, PayloadForm, PlantSettings, Protocol, RecordingColumns, Settings,
+    StoreSettings, TopicTemplate, WebSettings,
 };
 use tokio::sync::mpsc;
 use tokio_util::sync::CancellationToken;
@@ -89,10 +89,13 @@ fn settings(broker: Broker) -> Arc<Settings> {
             listen: ([127, 0, 0, 1], 0).into(),
             token_file: None,
             tls_in_front: false,
+            certificate_file: None,
+            key_file: None,
             address: None,
         },
         banks: vec![Arc::new(bank)],
         feeds: vec![feed],
+        origins: Origins::default(),
     })
 }
 

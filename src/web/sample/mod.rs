@@ -185,7 +185,11 @@ pub fn view(bank: Bank, story: Story, seed: u64) -> BankView {
         raised: open.iter().map(|n| (n.kind, 1)).collect(),
         open,
         outcomes,
-        refusals: if seed % 5 == 1 { refusals() } else { Vec::new() },
+        refusals: if seed % 5 == 1 {
+            refusals()
+        } else {
+            Vec::new()
+        },
         cycles: Some(Cycles {
             closed: 40_176,
             skipped: 2,
