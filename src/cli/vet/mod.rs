@@ -109,6 +109,7 @@ fn plant(settings: &Settings) -> String {
         banks: _,
         feeds: _,
         outlets,
+        origins: _,
     } = settings;
     let mut lines = Lines(format!("plant {}\n", plant.name));
     let zone = plant.zone.iana_name().unwrap_or("without a name");
@@ -141,6 +142,8 @@ fn plant(settings: &Settings) -> String {
         ),
         ("broker.client_key_file", &broker.client_key_file),
         ("web.token_file", &web.token_file),
+        ("web.certificate_file", &web.certificate_file),
+        ("web.key_file", &web.key_file),
     ];
     let named = files
         .into_iter()

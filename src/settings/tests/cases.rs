@@ -40,6 +40,8 @@ fn plant_store_and_web() {
         ("[web]", "[web]\nlisten = \"127.0.0.1\"", 13, "no address with a port"),
         ("[web]\ntoken_file = \"/etc/evenrow/tokens\"", "[web]\ntls_in_front = true\nlisten = \"0.0.0.0:7310\"", 14, "no `token_file` is given|listen on"),
         ("[web]", "[web]\nlisten = \"192.0.2.7:7310\"", 13, "travel in clear|tls_in_front = true"),
+        ("[web]", "[web]\ncertificate_file = \"/c.pem\"", 13, "`key_file` is missing beside this"),
+        ("[web]", "[web]\nkey_file = \"/c.key\"", 13, "`certificate_file` is missing beside this"),
         ("[web]", "[web]\nlisten = \"[::]:7310\"\ntls_in_front = false", 13, "travel in clear"),
         ("[web]", "[web]\ntls_in_front = \"true\"", 13, "`tls_in_front` is text and must be true or false"),
         ("[web]", "[web]\naddress = \"evenrow.example\"", 13, "no http:// or https:// address"),

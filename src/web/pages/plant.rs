@@ -50,6 +50,7 @@ pub async fn page(State(app): State<App>, Extension(caller): Extension<Caller>) 
         Page {
             title: "Plant".to_owned(),
             live: Some("/live".to_owned()),
+            script: None,
             way: "/",
             main,
         },

@@ -20,7 +20,9 @@ use crate::clock::Clock;
 use crate::engine::{Command, Outcome, Snapshot, WindowValue, WindowView};
 use crate::model::{LineChange, LineEvent, Value};
 use crate::notice::{Acknowledgement, Notice, State};
-use crate::settings::{Broker, PlantSettings, Protocol, Settings, StoreSettings, WebSettings};
+use crate::settings::{
+    Broker, Origins, PlantSettings, Protocol, Settings, StoreSettings, WebSettings,
+};
 
 use super::durations::Durations;
 use super::sample::{self, SampleHistory};
@@ -110,11 +112,14 @@ fn settings(token_file: Option<PathBuf>) -> Settings {
             listen: SocketAddr::from(([127, 0, 0, 1], 0)),
             token_file,
             tls_in_front: false,
+            certificate_file: None,
+            key_file: None,
             address: None,
         },
         banks: Vec::new(),
         feeds: Vec::new(),
         outlets: Vec::new(),
+        origins: Origins::default(),
     }
 }
 
