@@ -7,6 +7,8 @@
 mod advice;
 mod life;
 mod record;
+#[cfg(test)]
+mod tests;
 mod wire;
 mod words;
 
