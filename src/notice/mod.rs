@@ -8,6 +8,8 @@ mod advice;
 mod life;
 mod record;
 mod route;
+#[cfg(test)]
+mod tests;
 mod wire;
 mod words;
 

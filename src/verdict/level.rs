@@ -326,13 +326,20 @@ fn deviations(
     error: impl Fn(usize, &[usize]) -> (f64, f64),
 ) -> Vec<Option<Estimate>> {
     let k = means.len();
+    // In a paired bank all share their degrees of freedom, and the quantile costs more than the rest.
+    let mut quantile = (f64::NAN, None);
+    let mut t = |df: f64| {
+        if df != quantile.0 {
+            quantile = (df, dist::t::isf(SHOWN_ALPHA / (2 * k) as f64, df).ok());
+        }
+        quantile.1
+    };
     let deviation = |one: usize| {
         let set = others(even, one);
         let (variance, df) = error(one, &set);
         let reference = set.iter().map(|&j| means[j]).sum::<f64>() / set.len() as f64;
-        let t = dist::t::isf(SHOWN_ALPHA / (2 * k) as f64, df.max(1.0)).ok()?;
         let value = means[one] - reference;
-        let half = t * variance.sqrt();
+        let half = t(df.max(1.0))? * variance.sqrt();
         let finite = value.is_finite() && half.is_finite();
         finite.then_some(Estimate {
             value,

@@ -7,7 +7,7 @@
 use crate::model::{SourceIx, Time};
 use crate::stats::{self, dist};
 
-use super::data::{Data, Values};
+use super::data::{Data, Rows, Values};
 use super::look::Estimate;
 use super::steps::without_step;
 
@@ -349,25 +349,38 @@ fn mean_of_present(columns: &[usize], row: &[f64]) -> Option<f64> {
 /// Variance of a reference source about the others of the reference, steps taken out; for a single
 /// one, about its own mean.
 fn reference_variance(data: &Data, columns: &[usize]) -> f64 {
-    let variances = columns.iter().map(|&c| {
-        let (values, share) = match &data.values {
-            Values::Paired(rows) if columns.len() > 1 => {
-                let rest: Vec<usize> = columns.iter().copied().filter(|o| *o != c).collect();
-                let each = (0..rows.len()).filter_map(|r| {
-                    let row = rows.row(r);
-                    let mean = mean_of_present(&rest, row)?;
-                    (!row[c].is_nan()).then(|| row[c] - mean)
-                });
-                (each.collect(), 1.0 + 1.0 / rest.len() as f64)
-            }
-            Values::Paired(rows) => (rows.column(c, 0), 1.0),
-            Values::Alone(all) => (offsets(&all[c]), 1.0),
-        };
-        let flat = without_step(&values);
+    let count = columns.len() as f64;
+    let contrasts = match &data.values {
+        Values::Paired(rows) if columns.len() > 1 => about_the_rest(rows, columns),
+        Values::Paired(rows) => vec![rows.column(columns[0], 0)],
+        Values::Alone(all) => columns.iter().map(|&c| offsets(&all[c])).collect(),
+    };
+    let share = match &data.values {
+        Values::Paired(_) if columns.len() > 1 => 1.0 + 1.0 / (count - 1.0),
+        Values::Paired(_) | Values::Alone(_) => 1.0,
+    };
+    let variance = |values: &Vec<f64>| {
+        let flat = without_step(values);
         let df = flat.len().saturating_sub(2).max(1);
         flat.iter().map(|v| v * v).sum::<f64>() / df as f64 / share
-    });
-    variances.sum::<f64>() / columns.len() as f64
+    };
+    contrasts.iter().map(variance).sum::<f64>() / count
+}
+
+/// Each column's present values less the mean of the other columns in the same row.
+fn about_the_rest(rows: &Rows, columns: &[usize]) -> Vec<Vec<f64>> {
+    let mut about = vec![Vec::with_capacity(rows.len()); columns.len()];
+    for r in 0..rows.len() {
+        let row = rows.row(r);
+        let present = columns.iter().map(|c| row[*c]).filter(|v| !v.is_nan());
+        let (n, sum) = present.fold((0.0, 0.0), |(n, s), v| (n + 1.0, s + v));
+        for (values, &c) in about.iter_mut().zip(columns) {
+            if !row[c].is_nan() && n > 1.0 {
+                values.push(row[c] - (sum - row[c]) / (n - 1.0));
+            }
+        }
+    }
+    about
 }
 
 /// ((sum of what lies beyond half the margin)+)^2 / n / sigma^2 for every start, in the direction in
