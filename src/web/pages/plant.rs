@@ -3,7 +3,7 @@
 use axum::extract::{Extension, State};
 use maud::{Markup, html};
 
-use crate::engine::{BankView, RefusalView};
+use crate::engine::{BankView, OutletView, RefusalView};
 use crate::web::access::Caller;
 use crate::web::pictures::{glyph, mini};
 use crate::web::signin::percent;
@@ -32,6 +32,7 @@ pub async fn page(State(app): State<App>, Extension(caller): Extension<Caller>) 
             @for view in &snapshot.banks { li { (strip(&scene, view)) } }
         }
         (strangers(&scene, &snapshot.refusals))
+        (ways_out(&snapshot.outlets))
     };
     render(
         &scene,
@@ -83,6 +84,18 @@ fn since(scene: &Scene<'_>, view: &BankView, standing: &Standing) -> Markup {
             Some(at) => html! { "last look " (scene.time(at, &scene.times.second(at))) },
             None => html! { "no look yet" },
         },
+    }
+}
+
+/// Where notices leave, and how many wait there; said where there is more than the broker.
+fn ways_out(outlets: &[OutletView]) -> Markup {
+    let one = |o: &OutletView| match o.waiting {
+        0 => o.name.to_string(),
+        waiting => format!("{} ({waiting} waiting)", o.name),
+    };
+    let all: Vec<String> = outlets.iter().map(one).collect();
+    html! {
+        @if all.len() > 1 { p class="asof" { "Notices leave by " (all.join(", ")) "." } }
     }
 }
 
