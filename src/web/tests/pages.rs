@@ -131,6 +131,7 @@ async fn trouble_is_said_plainly() {
         "Notices are not leaving by mqtt",
         "Notices are not leaving by desk",
         "the desk answered 410",
+        "Notices leave by mqtt (2 waiting), desk.",
     ] {
         assert!(page.contains(words), "{words}");
     }
