@@ -238,6 +238,7 @@ fn named(k: usize, moved: usize, n: usize, runs: u64) -> (f64, f64) {
             named: data.sources[..1].to_vec(),
             reference: data.sources[1..].to_vec(),
             span: 40,
+            began: None,
             causes: Causes::default(),
         };
         let call = party.name_again(&data, call, None);
