@@ -96,6 +96,7 @@ fn test_of(settings: &Settings, way: Way, now: Time) -> Delivery {
         common_movement: None,
         even_mean: None,
         cost_per_hour: None,
+        adjustment: None,
     };
     Delivery {
         number: u64::try_from(seconds).unwrap_or(0),

@@ -107,6 +107,7 @@ impl Incident {
             common_movement: call.causes.common_movement,
             even_mean: None,
             cost_per_hour: None,
+            adjustment: None,
         };
         let mut incident = Self {
             notice: Arc::new(notice),
@@ -284,6 +285,9 @@ impl Incident {
             farness(self.aspect, &b.size).total_cmp(&farness(self.aspect, &a.size))
         });
         let sources: Vec<NamedSource> = named.iter().map(|a| a.told(about)).collect();
+        let adjusted = named.iter().filter(|a| a.adjusted.is_some());
+        let newest = adjusted.max_by_key(|a| a.adjusted.map(|a| a.at));
+        let adjustment = newest.and_then(|a| a.adjustment(about, self.aspect));
         let all: Vec<SourceIx> = self.apart.iter().map(|a| a.source).collect();
         let since = named[0].located.since;
         let facts = Facts {
@@ -305,6 +309,7 @@ impl Incident {
             cost_per_hour: cost_per_hour(&about.watched.bank, &about.exam.looks, about.interval_us),
             clears_in_us: self.clears_in_us(about),
             returned: self.notice.returned,
+            adjustment: adjustment.as_ref(),
             url: &self.notice.url,
         };
         let words = facts.words();
@@ -317,6 +322,7 @@ impl Incident {
         }
         notice.even_mean = even_mean;
         notice.cost_per_hour = cost;
+        notice.adjustment = adjustment;
         notice.sources = sources;
         notice.since = since;
         notice.priority = priority;
@@ -396,7 +402,9 @@ impl Incident {
         let moved = n.sources.iter().zip(&last.sources).any(|(a, b)| {
             a.source == b.source && (a.deviation - b.deviation).abs() > (b.high - b.low) / 2.0
         });
-        let other = set(n) != set(last) || n.priority != last.priority;
+        let told = |n: &Notice| n.adjustment.as_ref().map(|a| (a.stage(), a.effect));
+        let other =
+            set(n) != set(last) || n.priority != last.priority || told(n) != told(last);
         (other || moved) && now.us_since(*at) >= SEND_EVERY_US
     }
 }

@@ -1,7 +1,7 @@
 //! What people are told to do, in words: one cause first, then each source by itself.
 
 use crate::model::Value;
-use crate::verdict::{Estimate, PatternKind, Standing, Suggestion, suggest};
+use crate::verdict::{Effect, Estimate, PatternKind, Standing, Suggestion, suggest};
 
 use super::{Facts, Kind, NamedSource};
 
@@ -43,6 +43,13 @@ impl Facts<'_> {
     }
 
     fn adjustments(&self) -> String {
+        let recent = self.adjustment.filter(|a| a.effect == Effect::NotSure);
+        if let Some(recent) = recent {
+            return format!(
+                "Wait for more values before adjusting {} again: it was adjusted, and they do not tell yet.",
+                recent.source
+            );
+        }
         let sure: Vec<String> = self
             .sources
             .iter()

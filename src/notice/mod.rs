@@ -15,7 +15,7 @@ mod words;
 
 pub use life::{Happening, TRANSITIONS, after};
 pub use record::{
-    Acknowledgement, Delivery, Kind, NamedSource, Notice, Priority, Since, State, Way,
+    Acknowledgement, Adjustment, Delivery, Kind, NamedSource, Notice, Priority, Since, State, Way,
 };
 pub use route::{Route, Updates};
 pub use wire::{NoticeData, PatternData};

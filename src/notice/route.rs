@@ -128,6 +128,7 @@ mod tests {
             common_movement: None,
             even_mean: None,
             cost_per_hour: None,
+            adjustment: None,
         }
     }
 

@@ -86,6 +86,7 @@ fn words(bank: &Bank, sources: &[NamedSource], change: impl Fn(&mut Facts)) -> W
         slip: None,
         common_movement: None,
         cost_per_hour: None,
+        adjustment: None,
         clears_in_us: None,
         returned: None,
         url: "http://127.0.0.1:7310/banks/filler-2",

@@ -9,7 +9,7 @@ use serde::Serialize;
 use crate::model::Time;
 use crate::verdict::{Pattern, Slip};
 
-use super::{Acknowledgement, Kind, NamedSource, Notice, Priority, Since, State};
+use super::{Acknowledgement, Adjustment, Kind, NamedSource, Notice, Priority, Since, State};
 
 /// The `data` of a notice's event, and a notice in the interface.
 #[derive(Clone, Copy, Debug, PartialEq, Serialize)]
@@ -60,6 +60,8 @@ pub struct NoticeData<'a> {
     pub even_mean: Option<f64>,
     /// What the bank gives away in an hour, in the currency of `cost_per_unit`; null without that.
     pub cost_per_hour: Option<f64>,
+    /// The last adjustment of a named source since it left, and what became of it; null without one.
+    pub adjustment: Option<&'a Adjustment>,
 }
 
 /// A pattern in its shared form: flat, so that a template can read it.
@@ -132,6 +134,7 @@ impl<'a> NoticeData<'a> {
             common_movement,
             even_mean,
             cost_per_hour,
+            adjustment,
         } = notice;
         Self {
             id,
@@ -157,6 +160,7 @@ impl<'a> NoticeData<'a> {
             common_movement: *common_movement,
             even_mean: *even_mean,
             cost_per_hour: *cost_per_hour,
+            adjustment: adjustment.as_ref(),
         }
     }
 }

@@ -7,7 +7,7 @@ use jiff::tz::TimeZone;
 use crate::model::{Bank, Name, Offsets, Time, Value, fixed};
 use crate::verdict::{Pattern, PatternKind, Slip};
 
-use super::{Kind, NamedSource, Since};
+use super::{Adjustment, Kind, NamedSource, Since};
 
 /// Characters a lock screen shows.
 pub const MOST_SUBJECT: usize = 70;
@@ -51,6 +51,8 @@ pub struct Facts<'a> {
     pub clears_in_us: Option<i64>,
     /// When the condition was seen to be gone.
     pub returned: Option<Time>,
+    /// The last adjustment, and what became of it.
+    pub adjustment: Option<&'a Adjustment>,
     /// The page.
     pub url: &'a str,
 }
@@ -108,6 +110,7 @@ impl Facts<'_> {
         lines.extend(self.moved_together());
         lines.extend(self.bank_level());
         lines.extend(self.given_away());
+        lines.extend(self.adjusted());
         if self.returned.is_none() {
             lines.push(advice.clone());
             lines.extend(self.clears_in());
@@ -119,6 +122,33 @@ impl Facts<'_> {
             advice,
             text: lines.join("\n"),
         }
+    }
+
+    fn adjusted(&self) -> Option<String> {
+        let Adjustment {
+            source,
+            at,
+            amount,
+            values,
+            deviation,
+            effect,
+        } = self.adjustment?;
+        let c = &self.bank.characteristic;
+        let by = amount.map_or_else(String::new, |a| format!(" by {} {}", c.deviation(a), c.unit));
+        let told = deviation.map_or_else(String::new, |d| {
+            format!(
+                " It stands at {} {} (95 %: {} to {}) over {values} values since.",
+                c.deviation(d.value),
+                c.unit,
+                c.deviation(d.low),
+                c.deviation(d.high)
+            )
+        });
+        let at = self.clock(*at);
+        Some(format!(
+            "{source} was adjusted{by} at {at}: {}.{told}",
+            effect.words()
+        ))
     }
 
     fn subject(&self) -> String {

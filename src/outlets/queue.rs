@@ -132,6 +132,7 @@ pub(super) mod tests {
             common_movement: None,
             even_mean: None,
             cost_per_hour: None,
+            adjustment: None,
         };
         Delivery {
             number,

@@ -129,6 +129,7 @@ pub(super) fn notice(id: &str, raised: Time, state: State) -> Arc<Notice> {
         common_movement: None,
         even_mean: None,
         cost_per_hour: None,
+        adjustment: None,
     })
 }
 

@@ -4,6 +4,7 @@
 //! Pure: no clock, no randomness, no input or output. Statistics come from [`crate::stats`]; this
 //! room decides what they mean for a bank. Start reading at [`examine()`].
 
+mod adjusted;
 mod advice;
 mod causes;
 mod contrast;
@@ -26,6 +27,7 @@ mod track;
 mod usual;
 pub mod watch;
 
+pub use adjusted::{Effect, FEWEST_AFTER, effect_of_adjustment};
 pub use advice::{Standing, Suggestion, cost_per_hour, suggest};
 pub use causes::{Causes, causes};
 pub use data::{Data, Need, Rows, Values};

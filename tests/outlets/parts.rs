@@ -53,6 +53,7 @@ pub fn delivery(number: u64, id: &str, state: State) -> Delivery {
         common_movement: None,
         even_mean: None,
         cost_per_hour: None,
+        adjustment: None,
     };
     Delivery {
         number,

@@ -90,6 +90,7 @@ pub fn notice(bank: &Bank, names: &[Name], story: Story, looks: &[Arc<Look>]) ->
         common_movement: None,
         even_mean: None,
         cost_per_hour: None,
+        adjustment: None,
     })
 }
 

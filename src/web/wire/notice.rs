@@ -4,10 +4,10 @@ use serde::{Deserialize, Serialize};
 use utoipa::ToSchema;
 
 use crate::model::Time;
-use crate::notice::{Acknowledgement, NamedSource, Notice, Since};
+use crate::notice::{Acknowledgement, Adjustment, NamedSource, Notice, Since};
 use crate::verdict::{Pattern, Slip};
 
-use super::finite;
+use super::{EstimateBody, finite, word};
 
 /// A source that a notice names.
 #[derive(Debug, Serialize, ToSchema)]
@@ -131,6 +131,26 @@ pub struct NoticeBody {
     pub even_mean: Option<f64>,
     /// What the bank gives away in an hour, in the currency of `cost_per_unit`.
     pub cost_per_hour: Option<f64>,
+    /// The last adjustment of a named source since it left, and what became of it.
+    pub adjustment: Option<AdjustmentBody>,
+}
+
+/// An adjustment of a named source, and what the values since say of it.
+#[derive(Debug, Serialize, ToSchema)]
+pub struct AdjustmentBody {
+    /// The source.
+    pub source: String,
+    /// When it was entered.
+    #[schema(value_type = String, format = DateTime)]
+    pub at: Time,
+    /// By how much, in the bank's unit, where that was said.
+    pub amount: Option<f64>,
+    /// Values of the source since.
+    pub values: usize,
+    /// Its deviation over those.
+    pub deviation: Option<EstimateBody>,
+    /// `not_sure`, `worked`, `too_little` or `overshot`.
+    pub effect: String,
 }
 
 impl From<&Notice> for NoticeBody {
@@ -159,6 +179,7 @@ impl From<&Notice> for NoticeBody {
             common_movement,
             even_mean,
             cost_per_hour,
+            adjustment,
         } = notice;
         Self {
             id: id.to_string(),
@@ -184,6 +205,7 @@ impl From<&Notice> for NoticeBody {
             common_movement: common_movement.and_then(finite),
             even_mean: even_mean.and_then(finite),
             cost_per_hour: cost_per_hour.and_then(finite),
+            adjustment: adjustment.as_ref().map(adjustment_body),
         }
     }
 }
@@ -225,6 +247,25 @@ fn pattern_body(pattern: &Pattern) -> PatternBody {
         p: finite(*p),
         highest: kind.highest().map(ToString::to_string),
         group: kind.group().map(ToString::to_string),
+    }
+}
+
+fn adjustment_body(adjustment: &Adjustment) -> AdjustmentBody {
+    let Adjustment {
+        source,
+        at,
+        amount,
+        values,
+        deviation,
+        effect,
+    } = adjustment;
+    AdjustmentBody {
+        source: source.to_string(),
+        at: *at,
+        amount: amount.and_then(finite),
+        values: *values,
+        deviation: deviation.map(Into::into),
+        effect: word(effect),
     }
 }
 
