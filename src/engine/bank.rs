@@ -8,7 +8,7 @@ use serde::{Deserialize, Serialize};
 use crate::model::{Bank, Measurement, Name, Reason, SourceIx, Sources, Time};
 use crate::notice::Kind;
 use crate::verdict::watch::{Crossing, Watch};
-use crate::verdict::{Asked, Examination, Look, Need, Participant, Usual, examine};
+use crate::verdict::{Asked, Examination, Look, Need, Participant, examine};
 use crate::window::{Accepted, Arriving, Windows};
 
 use super::incident::Incident;
@@ -355,7 +355,7 @@ impl Watched {
                 .margin
                 .max(self.state.sources[s.index()].cleared_margin),
             silent: self.state.sources[s.index()].silent,
-            usual: Usual::known(&self.bank.offsets, &self.state.sources[s.index()].name),
+            usual: self.usual(s),
         };
         let who: Vec<Participant> = self
             .display_order()

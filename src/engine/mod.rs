@@ -19,6 +19,7 @@ mod restore;
 mod send;
 mod snapshot;
 mod source;
+mod usual;
 mod view;
 mod watching;
 

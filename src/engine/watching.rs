@@ -7,7 +7,7 @@
 
 use crate::model::{Bank, SourceIx, Time};
 use crate::verdict::watch::{Crossing, Cycle, Frozen, Progress, Terms, Watch};
-use crate::verdict::{Aspect, Need, Usual};
+use crate::verdict::{Aspect, Need};
 
 use super::Plant;
 use super::bank::Watched;
@@ -72,7 +72,7 @@ impl Watched {
     /// which is the next step's business.
     fn step_over(&mut self, closed: &[i64]) -> Option<Crossing> {
         let compared = self.compared();
-        let places: Vec<f64> = (0..compared.len()).map(|s| self.usual_place(s)).collect();
+        let places: Vec<f64> = self.known_places();
         let active = self.state.incidents.iter().any(|i| i.is_active());
         let watch = self.state.watch.as_mut()?;
         watch.compare(&compared);
@@ -95,10 +95,10 @@ impl Watched {
         first
     }
 
-    /// Where a source usually stands; not a number while that is not known, so that it is not compared.
-    fn usual_place(&self, source: usize) -> f64 {
-        let usual = Usual::known(&self.bank.offsets, &self.state.sources[source].name);
-        usual.map_or(f64::NAN, |u| u.place)
+    /// Where sources are known to stand; not a number where that is not known, so that it is not compared.
+    fn known_places(&self) -> Vec<f64> {
+        let place = |s| self.usual(SourceIx(s as u16)).map_or(f64::NAN, |u| u.place);
+        (0..self.state.sources.len()).map(place).collect()
     }
 
     /// Which sources the watch compares: those that take part and that no open notice is about.
@@ -146,10 +146,10 @@ impl Watched {
     }
 }
 
-/// A watch for a bank that nothing is known of; `None` where sources share no cycle.
+/// A watch for a bank that nothing is known of; `None` where the looks decide for good.
 pub fn watch_for(bank: &Bank) -> Option<Watch> {
-    let paired = bank.pairing.is_paired();
-    paired.then(|| Watch::new(terms(bank, None)))
+    let watched = bank.is_watched();
+    watched.then(|| Watch::new(terms(bank, None)))
 }
 
 /// Before the bank's rate of cycles is known, one cycle a look stands in; the look decides then.

@@ -105,7 +105,7 @@ pub fn examine(bank: &Bank, windows: &Windows, who: &[Participant], asked: Asked
         bank,
         who,
         at,
-        shares: match interval_us.filter(|_| !bank.pairing.is_paired()) {
+        shares: match interval_us.filter(|_| !bank.is_watched()) {
             Some(us) => Shares::overlapping(bank, who.len(), us),
             None => Shares::of(bank),
         },
