@@ -9,6 +9,7 @@ use evenrow::model::{Group, Layout, Name, SourceIx, Time};
 use evenrow::verdict::{
     Aspect, Call, Causes, Data, Level, Machine, Participant, Party, Pattern, PatternKind, Places,
     Rows, SlipFinding, Usual, Values, Yardstick, find_pattern, find_slip, learn_usual, locate,
+    returned,
 };
 use line::{Normal, bank, head};
 
@@ -80,7 +81,7 @@ fn patterns_are_named_when_they_are_there() {
     use Layout::{Ring, Row};
     let wave = |c: usize| around(c as f64 - 4.0, 24);
     let slope = |c: usize| 2.0 * c as f64 / 11.0;
-    let odd = |c: usize| f64::from(c % 2 == 0);
+    let odd = |c: usize| f64::from(c.is_multiple_of(2));
     let half = |c: usize| f64::from(c < 6);
     let group = |c: usize| f64::from([1, 2, 6].contains(&c));
     let scene = |k, layout, margin, n, place| Scene {
@@ -202,7 +203,7 @@ fn a_slip_is_told_from_sources_that_moved() {
     let (_, any, unsure) = slips(&[0.0; 12], 0, 1.5, 40);
     assert!(any == 0.0 && unsure >= 0.9, "even before: {any}, {unsure}");
     // Alternating offsets look the same after every second place.
-    let alternating: Vec<f64> = (0..12).map(|c| f64::from(c % 2 == 0)).collect();
+    let alternating: Vec<f64> = (0..12).map(|c| f64::from(c.is_multiple_of(2))).collect();
     let (_, any, unsure) = slips(&alternating, 1, 0.0, 40);
     assert!(any <= 0.05 && unsure >= 0.9, "alternating: {any}, {unsure}");
 }
@@ -280,6 +281,43 @@ fn the_start_lies_in_its_set() {
     let (held, width) = (held as f64 / runs as f64, width as f64 / runs as f64);
     assert!(held >= 0.9, "holds the start in {held}");
     assert!(width <= 25.0, "{width} cycles wide");
+}
+
+/// Cycles from a full return until there is evidence of it, looked for every second cycle.
+fn cycles_to_clear(margin: f64, seed: u64) -> usize {
+    let (before, apart, most) = (300, 60, 600);
+    let away = before..before + apart;
+    let all = cycles(12, away.end + most, &mut Normal::new(seed), &|cycle, c| {
+        if c == 0 && away.contains(&cycle) {
+            margin + 1.5
+        } else {
+            0.0
+        }
+    });
+    let yard = Yardstick {
+        reference: &all.sources[1..],
+        margin,
+        factor: 1.0,
+        family: 12,
+    };
+    // The call came 30 cycles before the return.
+    let called = away.end as i64 - 30;
+    let cleared = |since: &usize| {
+        let now = all
+            .before((away.end + since) as i64)
+            .expect("enough values");
+        returned(&now, all.sources[0], Aspect::Level, &yard, called).is_some()
+    };
+    (2..most).step_by(2).find(cleared).unwrap_or(most)
+}
+
+#[test]
+fn a_full_return_clears_in_time() {
+    for (margin, runs, most) in [(0.0, 8, 310.0), (0.5, 20, 90.0), (1.0, 40, 25.0)] {
+        let total: usize = (0..runs).map(|seed| cycles_to_clear(margin, seed)).sum();
+        let mean = total as f64 / runs as f64;
+        assert!(mean <= most, "margin {margin}: cleared after {mean} cycles");
+    }
 }
 
 #[test]

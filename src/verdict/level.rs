@@ -152,8 +152,8 @@ fn mean_variance(blocked: &Blocked) -> f64 {
     .mean_variance()
 }
 
-/// Weights of (one - mean of set).
-fn against(k: usize, one: usize, set: &[usize]) -> Vec<f64> {
+/// Weights of (one - mean of set) over `k` sources.
+pub fn against(k: usize, one: usize, set: &[usize]) -> Vec<f64> {
     let mut weights = vec![0.0; k];
     for &j in set {
         weights[j] -= 1.0 / set.len() as f64;

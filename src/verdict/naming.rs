@@ -30,6 +30,12 @@ impl Party<'_> {
         cut.column_of(one.source)
     }
 
+    /// What is taken off a source's values before they are compared, in the unit; 0 while it is learnt.
+    pub fn usual_place(&self, source: SourceIx) -> f64 {
+        let one = self.who.iter().find(|p| p.source == source);
+        one.and_then(|p| p.usual).map_or(0.0, |u| u.place)
+    }
+
     /// Each column's margin.
     pub fn margins(&self, cut: &Data) -> Vec<f64> {
         let margin = |s: &SourceIx| {

@@ -70,6 +70,12 @@ pub const STILL: f64 = 0.01;
 /// Evidence of a return has at least this many values.
 const FEWEST_TO_CLEAR: f64 = 5.0;
 
+/// A lasting change of level shows only in the stretch it happens in.
+const STRETCH: usize = 50;
+
+/// With fewer stretches one that holds a step would weigh too much.
+const FEWEST_STRETCHES: usize = 6;
+
 /// Fewest values behind a size.
 const FEWEST: usize = 2;
 
@@ -293,8 +299,14 @@ impl Series {
         }
     }
 
-    /// Standard deviation of the contrast, a step taken out.
+    /// Standard deviation of the contrast, steps taken out: about the means of stretches, where there are
+    /// enough, because an incident that came and went has two steps; else the best single step.
     fn sigma(&self) -> f64 {
+        if self.values.len() >= FEWEST_STRETCHES * STRETCH {
+            let stretches = self.values.rchunks_exact(STRETCH).map(stats::summarize);
+            let (ss, count) = stretches.fold((0.0, 0), |(ss, n), s| (ss + s.ss, n + 1));
+            return (ss / ((STRETCH - 1) * count) as f64).sqrt();
+        }
         let flat = without_step(&self.values);
         let df = flat.len().saturating_sub(2).max(1);
         (flat.iter().map(|v| v * v).sum::<f64>() / df as f64).sqrt()

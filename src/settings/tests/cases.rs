@@ -141,6 +141,7 @@ fn what_is_known_of_the_sources() {
         ("unit = \"g\"", "unit = \"g\"\nreference = \"01\"\noffsets = \"learn\"", 17, "nothing with `offsets = \"learn\"`"),
         ("unit = \"g\"", "unit = \"g\"\nreference = 1", 17, "must be text"),
         ("unit = \"g\"", "unit = \"g\"\noffsets = \"lern\"", 17, "\"none\" or \"learn\"|did you mean \"learn\""),
+        ("spans = [10, 40]", "spans = [10, 641]\noffsets = \"learn\"", 22, "longer than 640|table"),
         ("unit = \"g\"", "unit = \"g\"\noffsets = {}", 17, "an empty table"),
         ("unit = \"g\"", "unit = \"g\"\noffsets = 0.3", 17, "must be a word or a table"),
         ("unit = \"g\"", "unit = \"g\"\noffsets = { \"05\" = 0.3 }", 17, "\"05\", which is no source"),
