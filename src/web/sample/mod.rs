@@ -7,6 +7,7 @@ mod looks;
 mod notices;
 mod past;
 
+pub use looks::{WINDOW, values};
 pub use past::SampleHistory;
 
 use std::collections::BTreeMap;

@@ -6,12 +6,18 @@
 //! destructuring where it copies a struct, so that a new field cannot be forgotten.
 
 mod bank;
+mod health;
 mod look;
 mod notice;
+mod rows;
+mod setting;
 
 pub use bank::{BankBody, BankWholeBody, RefusalBody, SourceBody, WindowBody, WindowValueBody};
+pub use health::HealthBody;
 pub use look::{DependenceBody, DeviationBody, DigestBody, LookBody, SourceLookBody, TestBody};
 pub use notice::{AcknowledgeBody, AcknowledgementBody, NamedSourceBody, NoticeBody, SinceBody};
+pub use rows::Rows;
+pub use setting::SettingBody;
 
 use serde::Serialize;
 use utoipa::ToSchema;
