@@ -203,7 +203,7 @@ fn a_slip_is_told_from_sources_that_moved() {
     let (_, any, unsure) = slips(&[0.0; 12], 0, 1.5, 40);
     assert!(any == 0.0 && unsure >= 0.9, "even before: {any}, {unsure}");
     // Alternating offsets look the same after every second place.
-    let alternating: Vec<f64> = (0..12).map(|c| f64::from(c.is_multiple_of(2))).collect();
+    let alternating: Vec<f64> = (0_u8..12).map(|c| f64::from(c.is_multiple_of(2))).collect();
     let (_, any, unsure) = slips(&alternating, 1, 0.0, 40);
     assert!(any <= 0.05 && unsure >= 0.9, "alternating: {any}, {unsure}");
 }

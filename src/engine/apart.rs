@@ -4,7 +4,10 @@ use serde::{Deserialize, Serialize};
 
 use crate::model::{SourceIx, Time};
 use crate::notice::{Adjustment, NamedSource, Since};
-use crate::verdict::{Aspect, Began, Call, Effect, Estimate, FEWEST_AFTER, Located, Yardstick, cleared_margin, effect_of_adjustment, locate, size_since};
+use crate::verdict::{
+    Aspect, Began, Call, Effect, Estimate, FEWEST_AFTER, Located, Yardstick, cleared_margin,
+    effect_of_adjustment, locate, size_since,
+};
 
 use super::incident::Surroundings;
 

@@ -403,8 +403,7 @@ impl Incident {
             a.source == b.source && (a.deviation - b.deviation).abs() > (b.high - b.low) / 2.0
         });
         let told = |n: &Notice| n.adjustment.as_ref().map(|a| (a.stage(), a.effect));
-        let other =
-            set(n) != set(last) || n.priority != last.priority || told(n) != told(last);
+        let other = set(n) != set(last) || n.priority != last.priority || told(n) != told(last);
         (other || moved) && now.us_since(*at) >= SEND_EVERY_US
     }
 }

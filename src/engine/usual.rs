@@ -46,7 +46,8 @@ impl Watched {
             taking_part.iter().map(|s| (*s, Usual::default())).collect();
         let data = Data::gather(&self.state.windows, &who, least, wanted);
         let columns = data.columns();
-        let enough = columns.len() == taking_part.len() && columns.iter().all(|c| c.len() >= wanted);
+        let enough =
+            columns.len() == taking_part.len() && columns.iter().all(|c| c.len() >= wanted);
         if !enough {
             return;
         }

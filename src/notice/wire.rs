@@ -167,7 +167,7 @@ impl<'a> NoticeData<'a> {
 
 #[cfg(test)]
 mod tests {
-    use crate::verdict::{Estimate, PatternKind};
+    use crate::verdict::{Effect, Estimate, PatternKind};
 
     use super::*;
 
@@ -225,6 +225,18 @@ mod tests {
             common_movement: Some(-0.25),
             even_mean: Some(503.5),
             cost_per_hour: Some(12.5),
+            adjustment: Some(Adjustment {
+                source: "07".into(),
+                at: at(150),
+                amount: Some(1.5),
+                values: 20,
+                deviation: Some(Estimate {
+                    value: -0.25,
+                    low: -0.5,
+                    high: 0.0,
+                }),
+                effect: Effect::NotSure,
+            }),
         }
     }
 
@@ -268,7 +280,15 @@ mod tests {
             "slip": {"places": 1, "fit": 0.5},
             "common_movement": -0.25,
             "even_mean": 503.5,
-            "cost_per_hour": 12.5
+            "cost_per_hour": 12.5,
+            "adjustment": {
+                "source": "07",
+                "at": "1970-01-01T00:02:30Z",
+                "amount": 1.5,
+                "values": 20,
+                "deviation": {"value": -0.25, "low": -0.5, "high": 0.0},
+                "effect": "not_sure"
+            }
         });
         assert_eq!(json, wanted);
     }

@@ -134,7 +134,9 @@ impl Facts<'_> {
             effect,
         } = self.adjustment?;
         let c = &self.bank.characteristic;
-        let by = amount.map_or_else(String::new, |a| format!(" by {} {}", c.deviation(a), c.unit));
+        let by = amount.map_or_else(String::new, |a| {
+            format!(" by {} {}", c.deviation(a), c.unit)
+        });
         let told = deviation.map_or_else(String::new, |d| {
             format!(
                 " It stands at {} {} (95 %: {} to {}) over {values} values since.",

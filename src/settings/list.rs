@@ -76,7 +76,12 @@ impl Origins {
         let start = format!("{section}.");
         let below = self.0.range(start.clone()..);
         let below = below.take_while(|(path, _)| path.starts_with(&start));
-        let keys = below.map(|(path, (_, text))| (path[start.len()..].to_owned(), text.clone()));
+        let named = |path: &str| match &path[start.len()..] {
+            // The word alone stands for a table with that form.
+            "payload" => "payload.form".to_owned(),
+            key => key.to_owned(),
+        };
+        let keys = below.map(|(path, (_, text))| (named(path), text.clone()));
         keys.filter(|(key, _)| under.is_empty() || key.split('.').next() == Some(under))
             .collect()
     }

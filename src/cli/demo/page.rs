@@ -41,7 +41,11 @@ pub async fn enter(page: SocketAddr, path: &str, token: &str, json: &str) -> boo
 }
 
 async fn get(page: SocketAddr, path: &str) -> io::Result<String> {
-    exchange(page, &format!("GET {path} HTTP/1.0\r\nHost: {page}\r\n\r\n")).await
+    exchange(
+        page,
+        &format!("GET {path} HTTP/1.0\r\nHost: {page}\r\n\r\n"),
+    )
+    .await
 }
 
 /// One request and its whole answer. HTTP/1.0 asks for a body in one piece.
