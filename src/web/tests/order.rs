@@ -24,6 +24,7 @@ const ORDER: &[&str] = &[
     "access",
     "acknowledge",
     "wire",
+    "line",
     "pictures",
     "standing",
     "pages",
