@@ -198,11 +198,16 @@ impl Bar {
         let Some((contrast, own)) = series.contrast(start, aspect, yard) else {
             return false;
         };
-        // A handful of values often scatters little by chance: never believe less than the whole
-        // series' sd.
-        let known = match aspect {
-            Aspect::Level => sigma * (yard.factor / (series.values.len() - start) as f64).sqrt(),
-            Aspect::Spread => 0.0,
+        let n = (series.values.len() - start) as f64;
+        // A handful of values often scatters little or much by chance: never believe less than the whole
+        // series' sd, and more only beyond two standard errors of a variance.
+        let (own, known) = match aspect {
+            Aspect::Level => {
+                let believed = (1.0 - 2.0 * (2.0 / n).sqrt()).max(0.0);
+                let known = sigma * sigma / n + series.reference_error + series.usual_error;
+                (own * believed.sqrt(), (known * yard.factor).sqrt())
+            }
+            Aspect::Spread => (own, 0.0),
         };
         (self.half_width - contrast.abs()) / own.max(known) >= self.errors
     }
