@@ -19,7 +19,7 @@ use super::{
 const CHECKPOINT_EVERY_US: i64 = 600_000_000;
 
 /// Version of the encoded state.
-const STATE_VERSION: u8 = 2;
+const STATE_VERSION: u8 = 1;
 
 /// Why a checkpoint cannot be gone on from.
 #[derive(Clone, Debug, PartialEq, Eq, thiserror::Error)]
@@ -98,8 +98,8 @@ impl Engine {
         let unreadable = |_| RestoreError::Unreadable(own());
         let (mut state, rest): (State, _) =
             postcard::take_from_bytes(encoded).map_err(unreadable)?;
-        let told: Told = postcard::from_bytes(rest).map_err(unreadable)?;
-        self.post.restore(b, told);
+        self.post
+            .restore(b, Told::decode(rest).map_err(unreadable)?);
         let adapted = state.windows.adapt(&watched.bank);
         if !adapted {
             state.start_over(&watched.bank);

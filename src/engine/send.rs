@@ -25,6 +25,14 @@ impl Told {
         self.0.get(notice).is_some_and(|all| all.contains(outlet))
     }
 
+    /// What follows a bank's state in its checkpoint; checkpoints of before there were outlets end there.
+    pub fn decode(bytes: &[u8]) -> postcard::Result<Self> {
+        if bytes.is_empty() {
+            return Ok(Self::default());
+        }
+        postcard::from_bytes(bytes)
+    }
+
     fn note(&mut self, notice: &Name, outlet: &Name) {
         let all = self.0.entry(notice.clone()).or_default();
         all.insert(outlet.clone());
@@ -233,5 +241,20 @@ impl Post {
             ..view.clone()
         });
         all.collect()
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn what_was_told_is_read_back_and_nothing_is_read_from_older_checkpoints() {
+        let mut told = Told::default();
+        told.note(&"filler-2-2026-1".into(), &"phone".into());
+        let bytes = postcard::to_allocvec(&told).unwrap();
+        assert_eq!(Told::decode(&bytes), Ok(told));
+        assert_eq!(Told::decode(&[]), Ok(Told::default()));
+        assert!(Told::decode(&[9]).is_err());
     }
 }
