@@ -94,8 +94,8 @@ fn main(
             },
             None => (before_the_first_look(view)),
             Some(shown) => {
-                (looks::level_picture(view, shown))
-                (looks::spread_picture(view, shown))
+                (looks::level_picture(view, shown, when))
+                (looks::spread_picture(view, shown, when))
                 @match past {
                     Ok(past) => (history::section(scene, view, past, shown, when)),
                     Err(problem) => section class="picture" {
@@ -109,7 +109,7 @@ fn main(
         @if !when.is_past { (line::section(scene, view)) (watch::section(view)) }
         @if !view.looks.is_empty() { (looks::tests(scene, view, shown.map(|s| s.look.span))) }
         @if !when.is_past { (deliveries(scene, view)) }
-        section { h2 { "Another time" } (when.past_form(&page, times)) }
+        section class="another" { h2 { "Another time" } (when.past_form(&page, times)) }
     }
 }
 

@@ -125,7 +125,7 @@ pub fn section(
     html! {
         section id="time" class="picture" {
             h2 { (time_band::TITLE) }
-            (span_links(view, shown, "time"))
+            (span_links(view, shown, when, "time"))
             (when.stretches(&page, "time"))
             div id="probe" class=(frame) data-from=(past.from) data-to=(when.to) data-columns=(axis.columns)
                 data-rows=(view.sources.len()) data-looks=(looks_address(view)) data-span=(span) data-unit=(what.unit)

@@ -10,6 +10,7 @@ use crate::web::format;
 use crate::web::pictures::{deviations, row, spread};
 
 use super::frame::Scene;
+use super::when::When;
 
 /// What the pictures show.
 pub struct Shown {
@@ -54,15 +55,16 @@ fn now(view: &BankView, look: &Look) -> Look {
 }
 
 /// Now and the spans as links, the shown one marked.
-pub fn span_links(view: &BankView, shown: &Shown, anchor: &str) -> Markup {
+pub fn span_links(view: &BankView, shown: &Shown, when: &When, anchor: &str) -> Markup {
     let page = address::bank(&view.bank.name);
     let judged = view.looks.iter().filter(|l| !l.sources.is_empty());
     html! {
         p class="spans" {
-            a href={ (page) "#" (anchor) } aria-current=[shown.is_now.then_some("true")] { "Now" }
+            a href={ (page) (when.query_over(None)) "#" (anchor) } aria-current=[shown.is_now.then_some("true")] {
+                @if when.is_past { "Then" } @else { "Now" } }
             " or over the newest "
             @for look in judged {
-                a href={ (page) "?span=" (look.span) "#" (anchor) }
+                a href={ (page) (when.query_over(Some(look.span))) "#" (anchor) }
                     aria-current=[(!shown.is_now && look.span == shown.look.span).then_some("true")] { (look.span) }
                 " "
             }
@@ -97,13 +99,13 @@ pub fn csv(address: &str) -> Markup {
 }
 
 /// The picture of levels with its table.
-pub fn level_picture(view: &BankView, shown: &Shown) -> Markup {
+pub fn level_picture(view: &BankView, shown: &Shown, when: &When) -> Markup {
     let look = &shown.look;
     let unit = &view.bank.characteristic.unit;
     html! {
         section id="level" class="picture" {
             h2 { (deviations::TITLE) }
-            (span_links(view, shown, "level"))
+            (span_links(view, shown, when, "level"))
             @match deviations::draw(&view.bank, look) {
                 Some(picture) => {
                     (picture)
@@ -156,12 +158,12 @@ fn level_table(view: &BankView, look: &Look) -> Markup {
 }
 
 /// The picture of spreads with its table.
-pub fn spread_picture(view: &BankView, shown: &Shown) -> Markup {
+pub fn spread_picture(view: &BankView, shown: &Shown, when: &When) -> Markup {
     let look = &shown.look;
     html! {
         section id="spread" class="picture" {
             h2 { (spread::TITLE) }
-            (span_links(view, shown, "spread"))
+            (span_links(view, shown, when, "spread"))
             @match spread::draw(&view.bank, look) {
                 Some(picture) => {
                     (picture)

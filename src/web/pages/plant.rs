@@ -130,7 +130,7 @@ fn data_trouble(scene: &Scene<'_>, view: &BankView) -> Option<String> {
     };
     let newest = view.refusals.iter().filter(lately).max_by_key(|r| r.at)?;
     let word = newest.reason.word().replace('_', " ");
-    Some(format!("✕ data refused: {word}"))
+    Some(format!("✕ refused: {word}"))
 }
 
 fn since(scene: &Scene<'_>, view: &BankView, standing: &Standing) -> Markup {

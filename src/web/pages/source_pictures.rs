@@ -48,7 +48,7 @@ pub fn values(
     let room = if high > low { (high - low) * 0.08 } else { 1.0 };
     let range = (low - room, high + room);
     let scale = Scale::new(Spacing::Linear, range, (values::TOP, values::BOTTOM));
-    let ticks = scale.ticks(5);
+    let ticks = scale.ticks(7);
     let places = tick_places(&ticks);
     let times = axis.ticks(&scene.times);
     let picture = Values {

@@ -91,12 +91,21 @@ impl When {
 
     /// The query that shows this page again.
     pub fn query(&self) -> String {
-        self.query_for(self.is_cut.then_some((self.from, self.to)))
+        self.query_over(self.span)
+    }
+
+    /// The query that shows the same time over another span, or over the one that stands for it.
+    pub fn query_over(&self, span: Option<usize>) -> String {
+        self.write(span, self.is_cut.then_some((self.from, self.to)))
     }
 
     fn query_for(&self, cut: Option<(Time, Time)>) -> String {
+        self.write(self.span, cut)
+    }
+
+    fn write(&self, span: Option<usize>, cut: Option<(Time, Time)>) -> String {
         let mut parts: Vec<String> = Vec::new();
-        parts.extend(self.span.map(|span| format!("span={span}")));
+        parts.extend(span.map(|span| format!("span={span}")));
         let time = |key: &str, at: Time| format!("{key}={}", percent(&at.to_string()));
         parts.extend(self.is_past.then(|| time("at", self.seen)));
         if let Some((from, to)) = cut {

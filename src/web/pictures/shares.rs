@@ -51,7 +51,7 @@ impl Shares<'_> {
                     line class="grid" x1=(x) x2=(x) y1=(px(BOTTOM)) y2=(px(BOTTOM + 5.0)) {}
                     text class="tick" x=(x) y=(px(BOTTOM + 19.0)) text-anchor="middle" { (label) }
                 }
-                text class="tick" x="-8" y=(px(BOTTOM + 19.0)) text-anchor="end" { (self.unit) }
+                text class="tick" x="-8" y=(px(BOTTOM)) dy="0.2em" text-anchor="end" { (self.unit) }
             }
         }
     }

@@ -110,6 +110,7 @@ async fn a_bank_is_shown_as_it_was_seen() {
         "Raw values, counts and refusals of then are gone.",
         "How did each source stand over time?",
         "<strong>even</strong>",
+        "?span=40&amp;at=2026-07-03T13%3A30%3A00Z#level",
     ] {
         assert!(before.contains(words), "{words}");
     }

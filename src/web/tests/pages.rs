@@ -108,7 +108,7 @@ async fn the_plant_says_how_each_bank_stands() {
         "<strong>source silent</strong><span>05</span>",
         "<strong>3 calls</strong><span>90 days, budget 1</span>",
         "The last day: even 5 h, apart 1",
-        "✕ data refused: not a number",
+        "✕ refused: not a number",
         "6 of 10 values per source so far",
         "<strong>waiting</strong>",
         "Arrivals that belong to no bank",
