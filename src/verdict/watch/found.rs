@@ -3,6 +3,7 @@
 use super::Watch;
 use super::contrast::{Judged, Means};
 use super::hull::{Rise, Vertex};
+use super::scale::Scale;
 use super::thresholds::{Part, SPANS};
 use crate::model::SourceIx;
 
@@ -43,26 +44,48 @@ impl Watch {
         all
     }
 
-    fn found_few(&self) -> Option<Found> {
-        let (bars, scale) = (self.bars.as_ref()?, self.scale.as_ref()?);
-        let mut each: Vec<(f64, Vertex, usize, bool)> = Vec::new();
+    /// The evidence of every source and direction, the strongest first.
+    fn each_few(&self, scale: &Scale, threshold: f64) -> Vec<OfSource> {
+        let mut each: Vec<OfSource> = Vec::new();
         for (column, source) in self.columns.iter().enumerate() {
             let strand = &self.strands[usize::from(*source)];
             let margin = scale.margin(column, &self.terms);
             for (rise, above) in [(&strand.level.up, true), (&strand.level.down, false)] {
-                if let Some((squared, vertex)) = rise.best(margin) {
-                    let statistic = (squared / scale.paid(column)).sqrt();
-                    each.push((statistic, vertex, column, above));
+                let Some((squared, vertex)) = rise.best(margin) else {
+                    continue;
+                };
+                let mut statistic = (squared / scale.paid(column)).sqrt();
+                if statistic > threshold && self.columns.len() > 2 {
+                    statistic /= self.unrest(column, vertex.cycle).sqrt();
                 }
+                each.push(OfSource {
+                    statistic,
+                    vertex,
+                    column,
+                    above,
+                });
             }
         }
-        each.sort_by(|a, b| b.0.total_cmp(&a.0));
-        let (statistic, vertex, column, above) = *each.first()?;
+        each.sort_by(|a, b| b.statistic.total_cmp(&a.statistic));
+        each
+    }
+
+    fn found_few(&self) -> Option<Found> {
+        let (bars, scale) = (self.bars.as_ref()?, self.scale.as_ref()?);
         let threshold = bars.thresholds.few;
+        let each = self.each_few(scale, threshold);
+        let &OfSource {
+            statistic,
+            vertex,
+            column,
+            above,
+        } = each.first()?;
         // All that stand above the threshold by themselves, or the strongest.
-        let over = each.iter().filter(|e| e.0 > threshold || e.2 == column);
+        let over = each
+            .iter()
+            .filter(|e| e.statistic > threshold || e.column == column);
         let mut leading: Vec<SourceIx> = Vec::new();
-        for source in over.map(|e| SourceIx(self.columns[e.2])) {
+        for source in over.map(|e| SourceIx(self.columns[e.column])) {
             if !leading.contains(&source) {
                 leading.push(source);
             }
@@ -101,10 +124,18 @@ impl Watch {
             means.fill(&self.rows, span.cycles, &by);
             means.sort();
             if let Some(bars) = &bars.thresholds.split {
-                keep_stronger(&mut split, self.split_found(&means, &by, bars[i]));
+                self.keep_stronger(
+                    &mut split,
+                    self.split_found(&means, &by, bars[i]),
+                    span.cycles,
+                );
             }
             if let Some(bars) = &bars.thresholds.pair {
-                keep_stronger(&mut pair, self.pair_found(&means, &by, bars[i]));
+                self.keep_stronger(
+                    &mut pair,
+                    self.pair_found(&means, &by, bars[i]),
+                    span.cycles,
+                );
             }
         }
         split.into_iter().chain(pair).collect()
@@ -175,11 +206,35 @@ impl Watch {
             _ => &scatter.up,
         }
     }
+
+    /// Keeps the stronger of two contrasts; one that crosses has the noise of its sources taken into account.
+    fn keep_stronger(&self, best: &mut Option<Found>, new: Option<Found>, cycles: usize) {
+        let Some(mut new) = new else {
+            return;
+        };
+        if new.ratio() > 1.0 {
+            let from = self.cycle + 1 - (cycles as u64).min(self.cycle);
+            let of_side = |side: &[usize]| {
+                let unrest = side.iter().map(|c| self.unrest(*c, from)).sum::<f64>();
+                (
+                    unrest / (side.len() * side.len()) as f64,
+                    1.0 / side.len() as f64,
+                )
+            };
+            let (above, below) = (of_side(&new.sides.0), of_side(&new.sides.1));
+            new.statistic /= ((above.0 + below.0) / (above.1 + below.1)).sqrt();
+        }
+        if best.as_ref().is_none_or(|b| new.ratio() > b.ratio()) {
+            *best = Some(new);
+        }
+    }
 }
 
-fn keep_stronger(best: &mut Option<Found>, new: Option<Found>) {
-    let stronger = |new: &Found| best.as_ref().is_none_or(|b| new.ratio() > b.ratio());
-    if let Some(new) = new.filter(stronger) {
-        *best = Some(new);
-    }
+/// The evidence of one source in one direction.
+#[derive(Clone, Copy, Debug)]
+struct OfSource {
+    statistic: f64,
+    vertex: Vertex,
+    column: usize,
+    above: bool,
 }

@@ -13,7 +13,7 @@ const WIDTH: f64 = 1.0 / 32.0;
 /// Up to 8 sd; what is larger counts in the last bin.
 const BINS: usize = 256;
 /// No score is larger: a few wild values do not pass for a change of spread.
-const CAP: f64 = 2.5;
+const CAP: f64 = 3.5;
 
 /// No value is clipped nearer to the median than this, in sd.
 const LEAST_CLIP: f64 = 2.5;

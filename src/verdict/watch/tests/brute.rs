@@ -1,13 +1,11 @@
 //! Hulls, windows and starts against going through everything.
 
-use fastrand::Rng;
-
 use super::super::block::{self, Tally};
 use super::super::contrast::{Judged, Means};
 use super::super::hull::{Rise, Step};
 use super::super::residual::median;
 use super::super::rows::{HELD, Rows, Whole};
-use super::normal;
+use super::{Rng, normal};
 use crate::model::Time;
 use crate::verdict::track::Moment;
 
@@ -26,7 +24,7 @@ fn a_hull_finds_what_going_through_all_starts_finds() {
         let mut all: Vec<(f64, f64)> = Vec::new();
         for cycle in 0..1_500 {
             // Information time varies as it does when values are missing.
-            let time = 1.0 - 1.0 / (2 + rng.usize(0..5)) as f64;
+            let time = 1.0 - 1.0 / (2 + rng.below(5)) as f64;
             let value = normal(&mut rng) + drift;
             all.push((time, value));
             let step = Step {

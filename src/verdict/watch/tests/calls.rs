@@ -1,7 +1,7 @@
 //! What is called, and what is not.
 
 use super::super::{Part, Progress};
-use super::{Bench, normal, ratio_of, sources, terms, watch_of};
+use super::{Bench, Rng, normal, ratio_of, sources, terms, watch_of};
 use crate::model::SourceIx;
 use crate::verdict::track::Aspect;
 
@@ -196,7 +196,7 @@ fn noise_that_is_not_normal_is_scored() {
 fn sources_with_sds_of_their_own_are_weighed() {
     let noisy = |s: usize, z: f64| if s == 0 { 1.4 * z } else { z };
     let mut watch = watch_of(8, terms(0.0));
-    let mut rng = fastrand::Rng::with_seed(3);
+    let mut rng = Rng::with_seed(3);
     for place in 0..2_200 {
         let values: Vec<f64> = (0..8).map(|s| noisy(s, normal(&mut rng))).collect();
         assert_eq!(super::step(&mut watch, place, &values), None, "{place}");

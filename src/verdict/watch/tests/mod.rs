@@ -4,15 +4,36 @@ mod brute;
 mod calls;
 mod state;
 
-use fastrand::Rng;
-
 use super::{Crossing, Cycle, Part, Terms, Watch};
 use crate::model::{SourceIx, Time};
+
+/// Splitmix64 (Steele, Lea and Flood 2014): the same noise in every run.
+struct Rng(u64);
+
+impl Rng {
+    fn with_seed(seed: u64) -> Self {
+        Self(seed)
+    }
+
+    /// Uniform on [0, 1).
+    fn uniform(&mut self) -> f64 {
+        self.0 = self.0.wrapping_add(0x9E37_79B9_7F4A_7C15);
+        let mut z = self.0;
+        z = (z ^ (z >> 30)).wrapping_mul(0xBF58_476D_1CE4_E5B9);
+        z = (z ^ (z >> 27)).wrapping_mul(0x94D0_49BB_1331_11EB);
+        ((z ^ (z >> 31)) >> 11) as f64 / (1_u64 << 53) as f64
+    }
+
+    /// One of 0 … n - 1.
+    fn below(&mut self, n: usize) -> usize {
+        (self.uniform() * n as f64) as usize
+    }
+}
 
 /// A standard normal number (Marsaglia and Bray 1964).
 fn normal(rng: &mut Rng) -> f64 {
     loop {
-        let (u, v) = (2.0 * rng.f64() - 1.0, 2.0 * rng.f64() - 1.0);
+        let (u, v) = (2.0 * rng.uniform() - 1.0, 2.0 * rng.uniform() - 1.0);
         let s = u * u + v * v;
         if s > 0.0 && s < 1.0 {
             return u * (-2.0 * s.ln() / s).sqrt();

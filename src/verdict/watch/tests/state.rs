@@ -1,9 +1,7 @@
 //! State that goes on: written and read, joins and leaves, what was learnt.
 
-use fastrand::Rng;
-
 use super::super::{Frozen, Part, Progress, Watch};
-use super::{Bench, normal, ratio_of, sources, step, terms, watch_of};
+use super::{Bench, Rng, normal, ratio_of, sources, step, terms, watch_of};
 
 #[test]
 fn a_watch_read_back_goes_on_to_the_last_bit() {
@@ -14,7 +12,7 @@ fn a_watch_read_back_goes_on_to_the_last_bit() {
         let values: Vec<f64> = (0..12)
             .map(|s| {
                 let offset = if s == 1 && place > 1_300 { 1.5 } else { 0.0 };
-                let missing = rng.u8(0..20) == 0;
+                let missing = rng.below(20) == 0;
                 if missing {
                     f64::NAN
                 } else {
