@@ -5,8 +5,7 @@ use crate::model::{Bank, Name, SourceIx};
 use crate::stats;
 
 use super::data::{Data, Values};
-use super::examine::Began;
-use super::examine::Participant;
+use super::examine::{Began, Call, Participant};
 use super::level::Level;
 use super::look::Dependence;
 use super::pattern::{self, Machine, Pattern};
@@ -27,13 +26,14 @@ pub struct Causes {
     pub common_movement: Option<f64>,
 }
 
-/// Looks for the causes of a call about level that began at `start`. `reference` are those that stayed.
+/// Looks for the causes of a call about level that began at `start`. A slip moves many sources, so it is
+/// looked for when more than one is named.
 pub fn causes(
     bank: &Bank,
     who: &[Participant],
     data: &Data,
     start: &Began,
-    reference: &[SourceIx],
+    call: &Call,
     known: Option<Dependence>,
 ) -> Causes {
     let judged = |cut: Option<Data>| {
@@ -41,7 +41,7 @@ pub fn causes(
         let level = Level::judge(&cut, &vec![bank.margin; cut.sources.len()], None, known).ok()?;
         Some((cut, level))
     };
-    let common_movement = common_movement(data, start, reference);
+    let common_movement = common_movement(data, start, &call.reference);
     let Some((since, after)) = judged(data.since(start.start.place)) else {
         return Causes {
             common_movement,
@@ -54,7 +54,8 @@ pub fn causes(
             ..Causes::default()
         };
     };
-    let before = judged(data.before(start.earliest.place));
+    let earlier = (call.named.len() > 1).then(|| data.before(start.earliest.place));
+    let before = judged(earlier.flatten());
     let slip = before.and_then(|(cut, before)| {
         let places = |cut: &Data, level: &Level| places(cut, level, who, &machine);
         match slip::find(&places(&cut, &before)?, &places(&since, &after)?) {

@@ -76,7 +76,7 @@ impl Party<'_> {
         let call = self.renamed(data, call, &start, known);
         let (bank, who) = (self.bank, self.who);
         Call {
-            causes: causes(bank, who, data, &start, &call.reference, known),
+            causes: causes(bank, who, data, &start, &call, known),
             ..call
         }
     }
