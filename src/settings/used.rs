@@ -64,7 +64,8 @@ pub struct Broker {
     pub port: u16,
     /// Whether the connection is encrypted (`mqtts://`).
     pub tls: bool,
-    /// Client id of the connection that listens; the one that speaks appends `-notices`.
+    /// Client id of the connection that listens; the one that speaks appends `-notices`, the one
+    /// for Sparkplug `-sparkplug`.
     pub client_id: String,
     /// Version.
     pub protocol: Protocol,

@@ -26,9 +26,15 @@ const MOST_KEPT: usize = 5000;
 
 fn main() {
     let mut arguments = std::env::args().skip(1);
-    let seconds: u64 = arguments.next().and_then(|text| text.parse().ok()).unwrap_or(60);
+    let seconds: u64 = arguments
+        .next()
+        .and_then(|text| text.parse().ok())
+        .unwrap_or(60);
     let only = arguments.next();
-    let seed: u64 = arguments.next().and_then(|text| text.parse().ok()).unwrap_or(1);
+    let seed: u64 = arguments
+        .next()
+        .and_then(|text| text.parse().ok())
+        .unwrap_or(1);
     let told = std::panic::take_hook();
     std::panic::set_hook(Box::new(move |info| {
         if let Ok(tried) = TRIED.lock() {
@@ -72,8 +78,13 @@ fn run(target: &mut Target, time: Duration, seed: u64) {
         if seen.insert(outcome.clone()) && corpus.len() < MOST_KEPT {
             corpus.push(input);
         }
-        *outcomes.entry(outcome.split(' ').next().unwrap_or_default().to_owned()).or_default() += 1;
+        *outcomes
+            .entry(outcome.split(' ').next().unwrap_or_default().to_owned())
+            .or_default() += 1;
     }
     let (kept, kinds) = (corpus.len() - seeds, seen.len());
-    println!("{}: {tried} inputs from {seeds} seeds, {kinds} outcomes, {kept} kept; {outcomes:?}", target.name);
+    println!(
+        "{}: {tried} inputs from {seeds} seeds, {kinds} outcomes, {kept} kept; {outcomes:?}",
+        target.name
+    );
 }

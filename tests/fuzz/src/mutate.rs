@@ -2,10 +2,42 @@
 
 /// Pieces that decoders care about.
 const PIECES: &[&[u8]] = &[
-    b"{", b"}", b"[", b"]", b"\"", b":", b",", b";", b"\n", b"null", b"NaN", b"-", b"1e999", b"1e-999",
-    b"0", b"99999999999999999999", b"-0.0", b"\\u0000", b"\\ud800", b"\xff", b"\x00", b"\xe2\x80\xae",
-    b"\"v\":", b"\"t\":", b"\"bn\":", b"\"bver\":11", b"\"Payload\":", b"\"Messages\":[", b"\"UaType\":8",
-    b"\"Status\":2147483648", b"/", b"+", b"#", b"$SYS", b"spBv1.0/Q/NDEATH/n", b"\x80\x80\x80\x80\x80\x80\x80\x80\x80\x01",
+    b"{",
+    b"}",
+    b"[",
+    b"]",
+    b"\"",
+    b":",
+    b",",
+    b";",
+    b"\n",
+    b"null",
+    b"NaN",
+    b"-",
+    b"1e999",
+    b"1e-999",
+    b"0",
+    b"99999999999999999999",
+    b"-0.0",
+    b"\\u0000",
+    b"\\ud800",
+    b"\xff",
+    b"\x00",
+    b"\xe2\x80\xae",
+    b"\"v\":",
+    b"\"t\":",
+    b"\"bn\":",
+    b"\"bver\":11",
+    b"\"Payload\":",
+    b"\"Messages\":[",
+    b"\"UaType\":8",
+    b"\"Status\":2147483648",
+    b"/",
+    b"+",
+    b"#",
+    b"$SYS",
+    b"spBv1.0/Q/NDEATH/n",
+    b"\x80\x80\x80\x80\x80\x80\x80\x80\x80\x01",
 ];
 
 /// Makes inputs from others.
@@ -20,7 +52,10 @@ impl Mutator {
     /// One of the corpus, changed in one to eight places.
     pub fn mutated(&mut self, corpus: &[Vec<u8>]) -> Vec<u8> {
         let random = &mut self.0;
-        let mut input = corpus.get(random.usize(0..corpus.len().max(1))).cloned().unwrap_or_default();
+        let mut input = corpus
+            .get(random.usize(0..corpus.len().max(1)))
+            .cloned()
+            .unwrap_or_default();
         for _ in 0..random.usize(1..=8) {
             let at = random.usize(0..=input.len());
             let to = at + random.usize(0..=(input.len() - at).min(40));

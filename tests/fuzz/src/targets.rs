@@ -24,28 +24,75 @@ enum Kind {
     Topic,
 }
 
-const RECEIPT: Receipt = Receipt { epoch: 1, packet: None, hash: 0 };
-const NODE_KINDS: [&str; 6] = ["NBIRTH/n", "DBIRTH/n/d", "NDATA/n", "DDATA/n/d", "NDEATH/n", "DDEATH/n/d"];
+const RECEIPT: Receipt = Receipt {
+    epoch: 1,
+    packet: None,
+    hash: 0,
+};
+const NODE_KINDS: [&str; 6] = [
+    "NBIRTH/n",
+    "DBIRTH/n/d",
+    "NDATA/n",
+    "DDATA/n/d",
+    "NDEATH/n",
+    "DDEATH/n/d",
+];
 
 /// A target's name, its payload, and a word by which fixtures of that form are known.
 const FORMS: &[(&str, &str, &str)] = &[
     ("number", "\"number\"", "-"),
-    ("json", r#"{ form = "json", value = "/v", source = "/s", time = "/t", cycle = "/n", unit = "/u" }"#, "json"),
-    ("json-list", r#"{ form = "json", list = "/list", unit = "/unit", item = { source = "/id", value = "/v", time = "/t", cycle = "/n" } }"#, "json"),
-    ("json-by-source", r#"{ form = "json", by_source = "/heads", time = "/meta/at", cycle = "/meta/cycle" }"#, "json"),
-    ("json-counter", r#"{ form = "json", value = "/v", source = { counter = "/n", at_zero = "03" } }"#, "json"),
-    ("csv", r#"{ form = "csv", header = ["time", "head", "net"], time = "time", source = "head", value = "net" }"#, "csv"),
-    ("csv-comma", r#"{ form = "csv", decimal = "comma", source = 1, value = 2, cycle = 3 }"#, "csv"),
-    ("senml", r#"{ form = "senml", value = "urn:quayside:filler2:head{source}", cycle = "urn:quayside:filler2:turn" }"#, "senml"),
-    ("opc-ua", r#"{ form = "opc_ua_json", value = "Head{source}", cycle = "Cycle" }"#, "opc_ua_json"),
+    (
+        "json",
+        r#"{ form = "json", value = "/v", source = "/s", time = "/t", cycle = "/n", unit = "/u" }"#,
+        "json",
+    ),
+    (
+        "json-list",
+        r#"{ form = "json", list = "/list", unit = "/unit", item = { source = "/id", value = "/v", time = "/t", cycle = "/n" } }"#,
+        "json",
+    ),
+    (
+        "json-by-source",
+        r#"{ form = "json", by_source = "/heads", time = "/meta/at", cycle = "/meta/cycle" }"#,
+        "json",
+    ),
+    (
+        "json-counter",
+        r#"{ form = "json", value = "/v", source = { counter = "/n", at_zero = "03" } }"#,
+        "json",
+    ),
+    (
+        "csv",
+        r#"{ form = "csv", header = ["time", "head", "net"], time = "time", source = "head", value = "net" }"#,
+        "csv",
+    ),
+    (
+        "csv-comma",
+        r#"{ form = "csv", decimal = "comma", source = 1, value = 2, cycle = 3 }"#,
+        "csv",
+    ),
+    (
+        "senml",
+        r#"{ form = "senml", value = "urn:quayside:filler2:head{source}", cycle = "urn:quayside:filler2:turn" }"#,
+        "senml",
+    ),
+    (
+        "opc-ua",
+        r#"{ form = "opc_ua_json", value = "Head{source}", cycle = "Cycle" }"#,
+        "opc_ua_json",
+    ),
 ];
 
 /// Every target.
 pub fn targets() -> Vec<Target> {
     let fixtures = fixtures();
     let of_form = |word: &str| {
-        let fitting = fixtures.iter().filter(|(payload, _)| payload.contains(&format!("form = \"{word}\"")));
-        fitting.flat_map(|(_, messages)| messages.iter().map(|(_, bytes)| bytes.clone())).collect::<Vec<_>>()
+        let fitting = fixtures
+            .iter()
+            .filter(|(payload, _)| payload.contains(&format!("form = \"{word}\"")));
+        fitting
+            .flat_map(|(_, messages)| messages.iter().map(|(_, bytes)| bytes.clone()))
+            .collect::<Vec<_>>()
     };
     let mut all: Vec<Target> = FORMS
         .iter()
@@ -58,13 +105,32 @@ pub fn targets() -> Vec<Target> {
             Target { name, seeds, kind }
         })
         .collect();
-    let node = settings("spBv1.0/Q/+/n/d", r#"{ form = "sparkplug", value = "Head {source}", cycle = "Cycle", rebirth = true }"#);
-    let lives = fixtures.iter().filter(|(payload, _)| payload.contains("sparkplug"));
+    let node = settings(
+        "spBv1.0/Q/+/n/d",
+        r#"{ form = "sparkplug", value = "Head {source}", cycle = "Cycle", rebirth = true }"#,
+    );
+    let lives = fixtures
+        .iter()
+        .filter(|(payload, _)| payload.contains("sparkplug"));
     let seeds = lives.map(|(_, messages)| life(messages)).collect();
-    all.push(Target { name: "sparkplug", seeds, kind: Kind::Node(Box::new(node)) });
-    let seeds = ["a/+/b|a/1/b", "#|a/b", "+/+|/x", "$SYS/#|$SYS/broker", "a/{source}|a/7"];
+    all.push(Target {
+        name: "sparkplug",
+        seeds,
+        kind: Kind::Node(Box::new(node)),
+    });
+    let seeds = [
+        "a/+/b|a/1/b",
+        "#|a/b",
+        "+/+|/x",
+        "$SYS/#|$SYS/broker",
+        "a/{source}|a/7",
+    ];
     let seeds = seeds.map(|text| text.as_bytes().to_vec()).to_vec();
-    all.push(Target { name: "topics", seeds, kind: Kind::Topic });
+    all.push(Target {
+        name: "topics",
+        seeds,
+        kind: Kind::Topic,
+    });
     all
 }
 
@@ -85,16 +151,29 @@ type Messages = Vec<(String, Vec<u8>)>;
 
 /// What other libraries wrote: the payload of the bank, and the messages.
 fn fixtures() -> Vec<(String, Messages)> {
-    let files = [include_str!("../../fixtures/payloads/python.json"), include_str!("../../fixtures/payloads/node.json")];
+    let files = [
+        include_str!("../../fixtures/payloads/python.json"),
+        include_str!("../../fixtures/payloads/node.json"),
+    ];
     let mut all = Vec::new();
     for file in files {
         let cases: serde_json::Value = serde_json::from_str(file).expect("JSON");
         for case in cases.as_array().into_iter().flatten() {
-            let messages = case["messages"].as_array().into_iter().flatten().map(|message| {
-                let (topic, hex) = (message["topic"].as_str(), message["hex"].as_str());
-                (topic.unwrap_or_default().to_owned(), bytes(hex.unwrap_or_default()))
-            });
-            all.push((case["payload"].as_str().unwrap_or_default().to_owned(), messages.collect()));
+            let messages = case["messages"]
+                .as_array()
+                .into_iter()
+                .flatten()
+                .map(|message| {
+                    let (topic, hex) = (message["topic"].as_str(), message["hex"].as_str());
+                    (
+                        topic.unwrap_or_default().to_owned(),
+                        bytes(hex.unwrap_or_default()),
+                    )
+                });
+            all.push((
+                case["payload"].as_str().unwrap_or_default().to_owned(),
+                messages.collect(),
+            ));
         }
     }
     all
@@ -114,7 +193,10 @@ fn own_seeds(name: &str) -> Vec<Vec<u8>> {
     // One seed a line, but for lines themselves.
     text.flat_map(|text| match name.starts_with("csv") {
         true => vec![text],
-        false => text.split(|byte| *byte == b'\n').map(<[u8]>::to_vec).collect(),
+        false => text
+            .split(|byte| *byte == b'\n')
+            .map(<[u8]>::to_vec)
+            .collect(),
     })
     .collect()
 }
@@ -124,7 +206,10 @@ fn life(messages: &Messages) -> Vec<u8> {
     let mut all = Vec::new();
     for (topic, payload) in messages {
         let word = topic.split('/').nth(2).unwrap_or_default();
-        let kind = NODE_KINDS.iter().position(|kind| kind.starts_with(word)).unwrap_or(3);
+        let kind = NODE_KINDS
+            .iter()
+            .position(|kind| kind.starts_with(word))
+            .unwrap_or(3);
         let length = u16::try_from(payload.len()).unwrap_or(u16::MAX);
         all.push(kind as u8);
         all.extend(length.to_be_bytes());
@@ -140,7 +225,11 @@ impl Target {
         match &mut self.kind {
             Kind::Payload(decoder) => {
                 let arrival = decoder.decode("q/7", input, RECEIPT, now);
-                let arrival = match arrival.refusals.first().map(|refusal| refusal.reason.word()) {
+                let arrival = match arrival
+                    .refusals
+                    .first()
+                    .map(|refusal| refusal.reason.word())
+                {
                     Some("no_bank") => decoder.decode("q", input, RECEIPT, now),
                     _ => arrival,
                 };
@@ -179,7 +268,11 @@ impl Target {
                 let topics = Topics::new(&config.feeds);
                 let routed = topics.route(topic).count();
                 assert!(routed <= 1 && topics.filters().len() == 1);
-                format!("{} {}", if routed == 1 { "matches" } else { "not" }, topic.len().min(30))
+                format!(
+                    "{} {}",
+                    if routed == 1 { "matches" } else { "not" },
+                    topic.len().min(30)
+                )
             }
         }
     }
@@ -195,18 +288,31 @@ fn good(topic: &str) -> String {
 
 fn checked(arrival: &Arrival, bytes: usize) -> String {
     let (good, bad) = (arrival.measurements.len(), arrival.refusals.len());
-    assert!(good + bad <= (bytes + 2).min(MOST_ITEMS), "{good} and {bad} of {bytes} bytes");
+    assert!(
+        good + bad <= (bytes + 2).min(MOST_ITEMS),
+        "{good} and {bad} of {bytes} bytes"
+    );
     for m in &arrival.measurements {
-        assert!(!m.source.trim().is_empty() && m.source.len() <= MOST_SOURCE_BYTES, "{m:?}");
+        assert!(
+            !m.source.trim().is_empty() && m.source.len() <= MOST_SOURCE_BYTES,
+            "{m:?}"
+        );
         assert!(!m.source.chars().any(char::is_control), "{m:?}");
         assert!(m.value.to_f64().abs() <= 1000.0, "{m:?}");
     }
     for refusal in &arrival.refusals {
-        assert!(refusal.excerpt.chars().count() <= MOST_EXCERPT, "{refusal:?}");
-        assert!(!refusal.detail.is_empty() && !refusal.detail.ends_with('.'), "{refusal:?}");
+        assert!(
+            refusal.excerpt.chars().count() <= MOST_EXCERPT,
+            "{refusal:?}"
+        );
+        assert!(
+            !refusal.detail.is_empty() && !refusal.detail.ends_with('.'),
+            "{refusal:?}"
+        );
         assert!(!refusal.detail.chars().any(char::is_control), "{refusal:?}");
     }
-    let reasons: std::collections::BTreeSet<&str> = arrival.refusals.iter().map(|r| r.reason.word()).collect();
+    let reasons: std::collections::BTreeSet<&str> =
+        arrival.refusals.iter().map(|r| r.reason.word()).collect();
     let reasons: Vec<&str> = reasons.into_iter().collect();
     let word = match (good, bad) {
         (0, 0) => "nothing",
@@ -214,5 +320,10 @@ fn checked(arrival: &Arrival, bytes: usize) -> String {
         (0, _) => "refused",
         _ => "both",
     };
-    format!("{word} {}x{} {}", good.min(4), bad.min(4), reasons.join("+"))
+    format!(
+        "{word} {}x{} {}",
+        good.min(4),
+        bad.min(4),
+        reasons.join("+")
+    )
 }
