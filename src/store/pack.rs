@@ -203,8 +203,8 @@ fn pack_due(out: &mut Vec<u8>, due: &Due, banks: &[Name]) -> Result<(), DecodeEr
 
 fn unpack_due(rest: &mut Reader<'_>, banks: &[Name]) -> Result<Due, DecodeError> {
     let used = banks_used(rest, banks)?;
-    let ((silent, looks), rest): ((Vec<(BankIx, SourceIx)>, Vec<BankIx>), _) =
-        take_payload(rest.0)?;
+    let (silent, rest): (Vec<(BankIx, SourceIx)>, _) = take_payload(rest.0)?;
+    let (looks, rest): (Vec<BankIx>, _) = take_payload(rest)?;
     let onward: Vec<Onward> = match rest {
         [] => Vec::new(),
         rest => from_payload(rest)?,
