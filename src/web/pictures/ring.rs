@@ -79,7 +79,8 @@ impl Ring<'_> {
         let place = |r: f64| (px(r * sin), px(-r * cos));
         let (name_x, name_y) = place(OUTER + 14.0);
         html! {
-            g class={ "mark" @if mark.apart.is_some() { " apart" } } {
+            // Around a crowded ring the last name would stand on the first.
+            g class={ "mark" @if mark.apart.is_some() { " apart" } @if at + 1 == self.marks.len() { " last" } } {
                 title { (mark.words) }
                 @if let Some(figure) = mark.figure {
                     @let (x1, y1) = place(self.scale.place(figure.low));
