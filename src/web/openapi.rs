@@ -4,6 +4,7 @@ use axum::Json;
 use utoipa::openapi::security::{HttpAuthScheme, HttpBuilder, SecurityScheme};
 use utoipa::{Modify, OpenApi};
 
+use super::api::form::Form;
 use super::api::{banks, line, looks, notices, plant, stream};
 use super::problem::Problem;
 
@@ -37,7 +38,7 @@ impl Modify for Token {
         looks::list, looks::one, notices::list, notices::one, notices::acknowledge,
         plant::settings, plant::health, plant::refusals, stream::stream,
     ),
-    components(schemas(Problem)),
+    components(schemas(Problem, Form)),
     tags(
         (name = "banks", description = "What is compared, now"),
         (name = "looks", description = "What the examinations said, now and before"),

@@ -275,8 +275,14 @@ fn bank_summary(bank: &Bank, feed: &Feed) -> String {
         shares.level, shares.spread
     );
     if bank.is_watched() {
-        lines.add("decides", "the watch, on every cycle, with the whole budget".to_owned());
-        lines.add("at first", format!("the looks, while the watch learns: {alpha}"));
+        lines.add(
+            "decides",
+            "the watch, on every cycle, with the whole budget".to_owned(),
+        );
+        lines.add(
+            "at first",
+            format!("the looks, while the watch learns: {alpha}"),
+        );
     } else {
         lines.add("decides", format!("the looks: at most {alpha}"));
     }

@@ -5,7 +5,7 @@
 
 pub mod answers;
 pub mod banks;
-mod form;
+pub mod form;
 pub mod line;
 pub mod looks;
 pub mod notices;

@@ -1,5 +1,6 @@
 //! The interface, the metrics and health: forms and statuses.
 
+use std::collections::BTreeSet;
 use std::io::Write as _;
 use std::process::{Command, Stdio};
 use std::sync::Arc;
@@ -238,6 +239,13 @@ async fn the_document_describes_what_there_is() {
     );
     let paths = document["paths"].as_object().expect("paths");
     assert_eq!(paths.len(), 16);
+    let operations = paths
+        .values()
+        .flat_map(|p| p.as_object().expect("methods").values());
+    let ids: BTreeSet<_> = operations
+        .filter_map(|o| o["operationId"].as_str())
+        .collect();
+    assert_eq!(ids.len(), 17, "one name each: {ids:?}");
     let schema = &document["components"]["schemas"]["NoticeBody"]["properties"]["since"];
     assert!(!schema.is_null());
 }

@@ -302,9 +302,15 @@ fn acknowledgement(Acknowledgement { by, at, comment }: &Acknowledgement) -> Ack
 #[derive(Debug, Deserialize, ToSchema)]
 #[serde(deny_unknown_fields)]
 pub struct AcknowledgeBody {
-    /// The person's name.
+    /// The person's name, on one line.
+    #[schema(
+        min_length = 1,
+        max_length = 80,
+        pattern = "^[^\\x00-\\x1f\\x7f-\\x9f]*[^\\s\\x00-\\x1f\\x7f-\\x9f][^\\x00-\\x1f\\x7f-\\x9f]*$"
+    )]
     pub by: String,
     /// Anything worth saying.
+    #[schema(max_length = 2000)]
     #[serde(default)]
     pub comment: String,
 }
