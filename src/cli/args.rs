@@ -6,7 +6,9 @@
 use std::net::SocketAddr;
 use std::path::PathBuf;
 
-use clap::{Args, ValueEnum};
+use clap::{ArgGroup, Args, ValueEnum};
+
+use crate::settings::duration_us;
 
 /// Options of `evenrow watch`.
 #[derive(Args, Clone, Debug)]
@@ -70,6 +72,48 @@ pub struct RehearseArgs {
     /// Recordings in the order in which they were made; - for standard input
     #[arg(required = true, value_name = "RECORDING")]
     pub recordings: Vec<PathBuf>,
+}
+
+/// Options of `evenrow plan`.
+#[derive(Args, Clone, Debug)]
+#[command(group(ArgGroup::new("noise").required(true).args(["sd", "recording"])))]
+pub struct PlanArgs {
+    /// The configuration (TOML); its broker, store and port are not touched
+    #[arg(long, value_name = "FILE")]
+    pub config: PathBuf,
+    /// The bank to plan for; needed when there are several
+    #[arg(long, value_name = "NAME")]
+    pub bank: Option<String>,
+    /// Standard deviation of single values within a source, in the bank's unit
+    #[arg(long, value_name = "X", requires = "cycle", value_parser = above_zero)]
+    pub sd: Option<f64>,
+    /// Time between the values of a source, for example 4s or 500ms
+    #[arg(long, value_name = "DURATION", requires = "sd", value_parser = interval_us)]
+    pub cycle: Option<i64>,
+    /// Learn the standard deviation, the correlation of neighbours and the time between values from this
+    /// recording instead
+    #[arg(long, value_name = "FILE", conflicts_with_all = ["sd", "cycle"])]
+    pub recording: Option<PathBuf>,
+    /// Also draw "How soon is a drift found?" into this file
+    #[arg(long, value_name = "FILE.svg")]
+    pub picture: Option<PathBuf>,
+    /// Write one JSON object instead of tables
+    #[arg(long)]
+    pub json: bool,
+}
+
+/// A size is a plain number above zero.
+fn above_zero(text: &str) -> Result<f64, String> {
+    match text.parse::<f64>() {
+        Ok(size) if size.is_finite() && size > 0.0 => Ok(size),
+        _ => Err("it must be a number above 0, for example 1.2".to_owned()),
+    }
+}
+
+/// A length of time above zero, in microseconds.
+fn interval_us(text: &str) -> Result<i64, String> {
+    let read = duration_us(text).filter(|us| *us > 0);
+    read.ok_or_else(|| "it must be a time with its unit, for example 4s or 500ms".to_owned())
 }
 
 /// Options of `evenrow demo`.

@@ -31,3 +31,4 @@ pub use snapshot::{
     BankView, Cycles, OutletView, Plant, RefusalView, Snapshot, SourceState, SourceView, WatchView,
     WindowValue, WindowView,
 };
+pub use watching::watch_terms;

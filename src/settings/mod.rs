@@ -31,7 +31,7 @@ use fault::FaultList;
 
 pub use crate::model::Shift;
 pub use cautions::bank_cautions;
-pub use check::words as duration_words;
+pub use check::{duration_us, words as duration_words};
 pub use environment::environment;
 pub use fault::{Fault, Faults, Ink, Place};
 pub use forms::{
