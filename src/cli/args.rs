@@ -8,6 +8,7 @@ use std::path::PathBuf;
 
 use clap::{ArgGroup, Args, ValueEnum};
 
+use crate::model::Time;
 use crate::settings::duration_us;
 
 /// Options of `evenrow watch`.
@@ -72,6 +73,38 @@ pub struct RehearseArgs {
     /// Recordings in the order in which they were made; - for standard input
     #[arg(required = true, value_name = "RECORDING")]
     pub recordings: Vec<PathBuf>,
+}
+
+/// Options of `evenrow explain`.
+#[derive(Args, Clone, Debug)]
+pub struct ExplainArgs {
+    /// The configuration (TOML); the daemon that runs with it is asked, else its store is read
+    #[arg(long, value_name = "FILE")]
+    pub config: PathBuf,
+    /// The bank
+    pub bank: String,
+    /// The newest call (else look) at or before this time, for example 2026-03-01T06:00:00Z; the newest
+    /// call when it is missing
+    #[arg(long, value_name = "TIME", value_parser = moment, conflicts_with = "notice")]
+    pub at: Option<Time>,
+    /// The call that raised this notice
+    #[arg(long, value_name = "ID")]
+    pub notice: Option<String>,
+    /// Also write the values of the windows into this file
+    #[arg(long, value_name = "FILE")]
+    pub csv: Option<PathBuf>,
+    /// A token of the daemon, where it asks for one to look
+    #[arg(long, value_name = "FILE")]
+    pub token_file: Option<PathBuf>,
+    /// Write one JSON object instead of text
+    #[arg(long)]
+    pub json: bool,
+}
+
+/// A time in RFC 3339.
+fn moment(text: &str) -> Result<Time, String> {
+    Time::parse_rfc3339(text)
+        .map_err(|e| format!("it must be a time like 2026-03-01T06:00:00Z: {e}"))
 }
 
 /// Options of `evenrow plan`.

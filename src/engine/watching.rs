@@ -113,6 +113,7 @@ impl Watched {
     }
 
     fn call(&mut self, plant: &Plant, now: Time, crossing: &Crossing) -> Looked {
+        self.premises = Some(self.premises_of(now, Some(crossing)));
         let exam = self.examine(now, Need::WholeSpan, Some(crossing));
         self.conclude(plant, now, exam)
     }

@@ -25,6 +25,7 @@ mod steps;
 mod track;
 mod usual;
 pub mod watch;
+mod worked;
 
 pub use advice::{Standing, Suggestion, cost_per_hour, suggest};
 pub use causes::{Causes, causes};
@@ -41,3 +42,4 @@ pub use track::{
     values_to_clear,
 };
 pub use usual::{Usual, learn_usual};
+pub use worked::{Step, Worked, WorkedPair, WorkedTest, work_through};

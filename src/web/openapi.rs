@@ -4,7 +4,7 @@ use axum::Json;
 use utoipa::openapi::security::{HttpAuthScheme, HttpBuilder, SecurityScheme};
 use utoipa::{Modify, OpenApi};
 
-use super::api::{banks, line, notices};
+use super::api::{banks, explain, line, notices};
 
 /// How tokens are sent.
 struct Token;
@@ -33,6 +33,7 @@ impl Modify for Token {
     paths(
         banks::list, banks::one, banks::windows, banks::looks, banks::refusals,
         line::list, line::enter,
+        explain::bank_explained, explain::evidence,
         notices::list, notices::one, notices::acknowledge,
     ),
     tags(

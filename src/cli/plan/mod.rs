@@ -9,13 +9,13 @@ pub mod assumed;
 mod body;
 mod looks;
 mod noise;
-mod outcome;
+pub mod outcome;
 mod picture;
 mod recorded;
-mod scene;
+pub mod scene;
 mod setting;
 mod table;
-mod trial;
+pub mod trial;
 mod work;
 
 use std::fs;

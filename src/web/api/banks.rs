@@ -60,7 +60,7 @@ pub async fn windows(
         ))),
         Outcome::NotFound(why) => Err(Problem::not_found(&why)),
         Outcome::Refused(why) => Err(Problem::unavailable(&why)),
-        Outcome::Acknowledged(_) | Outcome::Line(_) => {
+        Outcome::Acknowledged(_) | Outcome::Line(_) | Outcome::Evidence(_) => {
             Err(Problem::internal("the answer was to another question"))
         }
     }
@@ -152,7 +152,11 @@ pub async fn refusals(
     Ok(Json(List::whole(items)))
 }
 
-fn time(key: &str, text: Option<String>) -> Result<Option<Time>, Problem> {
+/// A time in a query.
+///
+/// # Errors
+/// 400 when it is none.
+pub fn time(key: &str, text: Option<String>) -> Result<Option<Time>, Problem> {
     let parse = |text: String| {
         Time::parse_rfc3339(&text).map_err(|why| {
             Problem::bad_request(&format!(

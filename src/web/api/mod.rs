@@ -4,6 +4,7 @@
 //! [`super::wire`]) and who may ask (that is [`super::access`]).
 
 pub mod banks;
+pub mod explain;
 pub mod line;
 pub mod notices;
 
@@ -19,9 +20,11 @@ pub fn router() -> Router<App> {
         .route("/banks/{bank}", get(banks::one))
         .route("/banks/{bank}/windows", get(banks::windows))
         .route("/banks/{bank}/looks", get(banks::looks))
+        .route("/banks/{bank}/explain", get(explain::bank_explained))
         .route("/banks/{bank}/refusals", get(banks::refusals))
         .route("/banks/{bank}/events", get(line::list).post(line::enter))
         .route("/notices", get(notices::list))
         .route("/notices/{id}", get(notices::one))
+        .route("/notices/{id}/evidence", get(explain::evidence))
         .route("/notices/{id}/acknowledge", post(notices::acknowledge))
 }
