@@ -268,7 +268,21 @@ fn a_call_can_be_repeated_by_hand() {
         .min_by(|a, b| mean(a.1).total_cmp(&mean(b.1)))
         .map(|(s, _)| all[s].0.clone());
     assert_eq!(span.order.first().map(|p| p.source.clone()), lowest);
-    assert_eq!(lowest.as_deref(), Some("07"));
+    // Named on the values since the start, by the same steps.
+    let call = explained.call.as_ref().expect("the watch called");
+    assert_eq!(call.named, ["07"]);
+    let values = call.since.span;
+    let since: Vec<f64> = centred.iter().map(|g| mean(&g[160 - values..])).collect();
+    let centre = mean(&since);
+    let told = call.since.order.first().expect("somebody is lowest");
+    assert_eq!((told.source.as_str(), told.even), ("07", false));
+    let next = call.since.order.last().expect("somebody is highest");
+    let by_hand = since.iter().copied().fold(f64::NEG_INFINITY, f64::max) - since[6];
+    let told = next.mean.expect("a mean") - told.mean.expect("a mean");
+    assert!(
+        (told - by_hand).abs() < 1e-9,
+        "{told}, not {by_hand} about {centre}"
+    );
 }
 
 #[test]

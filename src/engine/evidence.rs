@@ -12,7 +12,10 @@ use serde::{Deserialize, Serialize};
 use crate::model::{Bank, LineEvent, Name, SourceIx, Time, Value};
 use crate::verdict::watch::thresholds::{Account, Basis, account, thresholds};
 use crate::verdict::watch::{Crossing, Reading};
-use crate::verdict::{Asked, Examination, Look, Need, Participant, Worked, examine, work_through};
+use crate::verdict::{
+    Asked, Call, Examination, Look, Need, Participant, Worked, examine, work_through,
+    work_through_since,
+};
 use crate::window::{Entry, Ring, Windows};
 
 use super::bank::Watched;
@@ -104,6 +107,11 @@ impl Evidence {
     /// The looks taken apart.
     pub fn work_through(&self, again: &Examination) -> Vec<Worked> {
         work_through(&self.premises.bank, &self.premises.who, again)
+    }
+
+    /// The naming of the watch's call taken apart; `None` when a look called.
+    pub fn work_through_since(&self, again: &Examination) -> Option<(Call, Worked)> {
+        work_through_since(&self.premises.bank, &self.premises.who, again)
     }
 
     fn recalled(&self) -> Windows {

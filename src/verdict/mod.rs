@@ -42,4 +42,4 @@ pub use track::{
     values_to_clear,
 };
 pub use usual::{Usual, learn_usual};
-pub use worked::{Step, Worked, WorkedPair, WorkedTest, work_through};
+pub use worked::{Step, Worked, WorkedPair, WorkedTest, work_through, work_through_since};

@@ -11,7 +11,7 @@ use crate::stats::{self, Summary, dist};
 
 use super::data::{Data, Need, Values};
 use super::even::NAMING_ALPHA;
-use super::examine::{Examination, Participant};
+use super::examine::{Call, Examination, Participant};
 use super::level::Level;
 use super::look::{Look, Method, TestEntry};
 use super::naming::Party;
@@ -83,6 +83,27 @@ pub fn work_through(bank: &Bank, who: &[Participant], exam: &Examination) -> Vec
     exam.looks.iter().filter_map(worked).collect()
 }
 
+/// Takes the naming of the watch's call apart: the values since its start. `None` when a look called, whose
+/// names come from its own span.
+pub fn work_through_since(
+    bank: &Bank,
+    who: &[Participant],
+    exam: &Examination,
+) -> Option<(Call, Worked)> {
+    let call = exam.crossed.clone()?;
+    let cut = exam.data.since(call.began?.start.place)?;
+    let look = exam.looks.last()?;
+    let party = Party { bank, who };
+    let level = party.level(&cut, look.dependence).ok()?;
+    let since = Look {
+        span: cut.columns().iter().map(Vec::len).max().unwrap_or(0),
+        tests: level.tests.clone(),
+        ..look.clone()
+    };
+    let apart = Apart { bank, who, exam };
+    Some((call, apart.cut(&since, &cut, &level)))
+}
+
 struct Apart<'a> {
     bank: &'a Bank,
     who: &'a [Participant],
@@ -97,13 +118,21 @@ impl Apart<'_> {
         };
         let cut = self.exam.data.cut(look.span, Need::WholeSpan)?;
         let level = party.level(&cut, look.dependence).ok()?;
-        let names = self.names(&cut);
-        let margins = party.margins(&cut);
+        Some(self.cut(look, &cut, &level))
+    }
+
+    fn cut(&self, look: &Look, cut: &Data, level: &Level) -> Worked {
+        let party = Party {
+            bank: self.bank,
+            who: self.who,
+        };
+        let names = self.names(cut);
+        let margins = party.margins(cut);
         let mut tests: Vec<WorkedTest> = look
             .tests
             .iter()
             .map(|entry| WorkedTest {
-                steps: self.steps(entry, look, &cut, &level, &margins),
+                steps: self.steps(entry, look, cut, level, &margins),
                 entry: entry.clone(),
             })
             .collect();
@@ -111,14 +140,14 @@ impl Apart<'_> {
         let mut order: Vec<(Name, f64)> = names.iter().cloned().zip(level.means.clone()).collect();
         order.sort_by(|a, b| a.1.total_cmp(&b.1));
         let even = names.iter().zip(&level.even).filter(|(_, even)| **even);
-        Some(Worked {
+        Worked {
             span: look.span,
             tests,
-            pairs: pairs(&names, &level, &margins, look.alpha_level),
+            pairs: pairs(&names, level, &margins, look.alpha_level),
             order,
             even: even.map(|(name, _)| name.clone()).collect(),
             naming_alpha: NAMING_ALPHA,
-        })
+        }
     }
 
     fn names(&self, cut: &Data) -> Vec<Name> {

@@ -138,7 +138,7 @@ fn from_store(
             let unit = &bank.characteristic.unit;
             let called = explain_bank(history, &bank.name, unit, wanted.at)?;
             match called {
-                None => explain_bank(history, &bank.name, unit, Some(now))?,
+                None if wanted.at.is_none() => explain_bank(history, &bank.name, unit, Some(now))?,
                 called => called,
             }
         }

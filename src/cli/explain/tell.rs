@@ -6,7 +6,9 @@ use comfy_table::{CellAlignment, Table, presets};
 use jiff::tz::TimeZone;
 
 use crate::model::Time;
-use crate::web::wire::{ExplanationBody, PartBody, SpanBody, WatchApartBody, WorkedTestBody};
+use crate::web::wire::{
+    CallApartBody, ExplanationBody, PartBody, SpanBody, WatchApartBody, WorkedTestBody,
+};
 
 /// Pairs shown in a table; the JSON form has them all.
 const MOST_PAIRS: usize = 10;
@@ -16,6 +18,9 @@ pub fn tell(explained: &ExplanationBody, zone: &TimeZone) -> String {
     let mut parts = vec![head(explained, zone)];
     if let Some(watch) = &explained.watch {
         parts.push(self::watch(watch, &explained.unit, zone));
+    }
+    if let Some(call) = &explained.call {
+        parts.push(self::call(call, explained));
     }
     parts.extend(explained.spans.iter().map(|s| span(s, explained)));
     parts.join("\n\n") + "\n"
@@ -50,6 +55,21 @@ fn head(explained: &ExplanationBody, zone: &TimeZone) -> String {
     }
     for event in &explained.line_events {
         let _ = write!(text, "\nLine event before: {event}");
+    }
+    text
+}
+
+/// The names of the watch's call.
+fn call(call: &CallApartBody, explained: &ExplanationBody) -> String {
+    let since = &call.since;
+    let mut text = format!(
+        "The call: {}, named {} on the {} values since the start",
+        since.finding.replace('_', " "),
+        call.named.join(", "),
+        since.span
+    );
+    if call.aspect == "level" {
+        text.push_str(&inside(since, &explained.unit));
     }
     text
 }
@@ -134,14 +154,21 @@ fn span(span: &SpanBody, explained: &ExplanationBody) -> String {
         "\nA look over this span may call level at p below {:.3e} and spread at p below {:.3e}.",
         span.alpha_level, span.alpha_spread
     );
+    text.push_str(&inside(span, &explained.unit));
+    text
+}
+
+/// Tests, pairs and naming, each on lines of their own.
+fn inside(span: &SpanBody, unit: &str) -> String {
+    let mut text = String::new();
     for one in &span.tests {
         let _ = write!(text, "\n{}", test(one));
     }
     if !span.pairs.is_empty() {
-        let _ = write!(text, "\n{}", pairs(span, &explained.unit));
+        let _ = write!(text, "\n{}", pairs(span, unit));
     }
     if !span.order.is_empty() {
-        let _ = write!(text, "\n{}", naming(span, &explained.unit));
+        let _ = write!(text, "\n{}", naming(span, unit));
     }
     text
 }

@@ -9,7 +9,7 @@ use utoipa::ToSchema;
 
 use crate::engine::{Evidence, Premises, WatchSaid, WindowView};
 use crate::model::{LineEvent, Name, SourceIx, Time};
-use crate::verdict::{Look, Worked, WorkedPair, WorkedTest};
+use crate::verdict::{Aspect, Examination, Finding, Look, Worked, WorkedPair, WorkedTest};
 
 use super::{finite, word};
 
@@ -141,6 +141,17 @@ pub struct WatchApartBody {
     pub parts: Vec<PartBody>,
 }
 
+/// The naming of the watch's call, on the values since its start.
+#[derive(Debug, Serialize, Deserialize, ToSchema)]
+pub struct CallApartBody {
+    /// `level` or `spread`.
+    pub aspect: String,
+    /// Who was named.
+    pub named: Vec<String>,
+    /// The values since the start, taken apart as a span is.
+    pub since: SpanBody,
+}
+
 /// A look and, where there was one, the call that was made with it, taken apart.
 #[derive(Debug, Serialize, Deserialize, ToSchema)]
 pub struct ExplanationBody {
@@ -168,6 +179,8 @@ pub struct ExplanationBody {
     pub spans: Vec<SpanBody>,
     /// The watch; `null` where sources share no cycle.
     pub watch: Option<WatchApartBody>,
+    /// The naming of the watch's call; `null` where a look called or nothing was called.
+    pub call: Option<CallApartBody>,
     /// What the line made.
     pub product: Option<String>,
     /// What was entered about the line before, oldest first.
@@ -211,6 +224,7 @@ impl ExplanationBody {
             decides: Some(decides.to_owned()),
             spans: evidence.looks.iter().map(span).collect(),
             watch: watch.as_ref().map(|w| watch_body(w, &evidence.premises)),
+            call: call_body(evidence, &again),
             product: product.as_ref().map(ToString::to_string),
             line_events: events.map(line_event).collect(),
             values_csv: Some(csv(evidence)),
@@ -233,11 +247,37 @@ impl ExplanationBody {
             decides: None,
             spans: same_moment.map(|look| span_body(look, None)).collect(),
             watch: None,
+            call: None,
             product: None,
             line_events: Vec::new(),
             values_csv: None,
         })
     }
+}
+
+fn call_body(evidence: &Evidence, again: &Examination) -> Option<CallApartBody> {
+    let (call, worked) = evidence.work_through_since(again)?;
+    let who = &evidence.premises.who;
+    let name = |s: &SourceIx| {
+        let one = who.iter().find(|p| p.source == *s)?;
+        Some(one.name.to_string())
+    };
+    let look = evidence.looks.last()?;
+    let mut since = span_body(look, Some(&worked));
+    since.span = worked.span;
+    since.finding = match call.aspect {
+        Aspect::Level => word(Finding::LevelApart),
+        Aspect::Spread => word(Finding::SpreadApart),
+    };
+    since.remark = String::new();
+    Some(CallApartBody {
+        aspect: match call.aspect {
+            Aspect::Level => "level".to_owned(),
+            Aspect::Spread => "spread".to_owned(),
+        },
+        named: call.named.iter().filter_map(name).collect(),
+        since,
+    })
 }
 
 /// A line event in one line.

@@ -14,8 +14,8 @@ mod watch;
 
 pub use bank::{BankBody, BankWholeBody, RefusalBody, SourceBody, WindowBody, WindowValueBody};
 pub use explanation::{
-    ExplanationBody, PartBody, PlaceBody, SpanBody, StepBody, WatchApartBody, WorkedPairBody,
-    WorkedTestBody,
+    CallApartBody, ExplanationBody, PartBody, PlaceBody, SpanBody, StepBody, WatchApartBody,
+    WorkedPairBody, WorkedTestBody,
 };
 pub use line::{LineEntryBody, LineEventBody, LineKind};
 pub use look::{DependenceBody, DeviationBody, DigestBody, LookBody, SourceLookBody, TestBody};
