@@ -40,6 +40,10 @@ impl Engine {
                 Some(b) => Outcome::Windows(b.window_views()),
                 None => no_bank(),
             }),
+            Command::Evidence { bank } => Done::answer(match self.banks.get(bank.index()) {
+                Some(b) => Outcome::Evidence(Box::new(b.evidence_now(now))),
+                None => no_bank(),
+            }),
             Command::Acknowledge { notice, comment } => {
                 let acknowledgement = Acknowledgement {
                     by: who.clone(),

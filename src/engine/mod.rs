@@ -10,6 +10,7 @@ mod commands;
 mod condition;
 mod core;
 mod event;
+mod evidence;
 mod history;
 mod incident;
 mod line;
@@ -26,6 +27,7 @@ mod watching;
 pub use self::core::Engine;
 pub use condition::{Condition, Part};
 pub use event::{Command, Due, Effect, Event, Onward, Outcome, Record, Ticket, Turn};
+pub use evidence::{Evidence, Premises, WatchSaid};
 pub use history::{History, HistoryError, Page};
 pub use restore::RestoreError;
 pub use snapshot::{
@@ -33,3 +35,4 @@ pub use snapshot::{
     WindowValue, WindowView,
 };
 pub use view::shown_look;
+pub use watching::watch_terms;

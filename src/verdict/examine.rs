@@ -1,5 +1,7 @@
 //! The look itself: every span examined, and what is called.
 
+use serde::{Deserialize, Serialize};
+
 use crate::model::{Bank, Name, Pairing, SourceIx, Time};
 use crate::stats;
 use crate::window::Windows;
@@ -19,7 +21,7 @@ use super::watch::Crossing;
 const FEWEST_INDEPENDENT: f64 = 4.0;
 
 /// One source as an examination sees it.
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub struct Participant {
     /// Which.
     pub source: SourceIx,

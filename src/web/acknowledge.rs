@@ -32,7 +32,7 @@ pub async fn submit(app: &App, id: &str, by: &str, comment: &str) -> Result<Arc<
             _ => Err(Problem::not_found(&why)),
         },
         Outcome::Refused(why) => Err(Problem::conflict(&why)),
-        Outcome::Windows(_) | Outcome::Line(_) => {
+        Outcome::Windows(_) | Outcome::Line(_) | Outcome::Evidence(_) => {
             Err(Problem::internal("the answer was to another question"))
         }
     }

@@ -5,7 +5,7 @@ use utoipa::openapi::security::{HttpAuthScheme, HttpBuilder, SecurityScheme};
 use utoipa::{Modify, OpenApi};
 
 use super::api::form::Form;
-use super::api::{banks, line, looks, notices, plant, stream};
+use super::api::{banks, explain, line, looks, notices, plant, stream};
 use super::problem::Problem;
 
 /// How tokens are sent.
@@ -35,6 +35,7 @@ impl Modify for Token {
     paths(
         banks::list, banks::one, banks::sources, banks::source, banks::windows, banks::refusals,
         line::list, line::enter,
+        explain::bank_explained, explain::evidence,
         looks::list, looks::one, notices::list, notices::one, notices::acknowledge,
         plant::settings, plant::health, plant::refusals, stream::stream,
     ),

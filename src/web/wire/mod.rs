@@ -6,6 +6,7 @@
 //! destructuring where it copies a struct, so that a new field cannot be forgotten.
 
 mod bank;
+mod explanation;
 mod health;
 mod line;
 mod look;
@@ -15,6 +16,10 @@ mod setting;
 mod watch;
 
 pub use bank::{BankBody, BankWholeBody, RefusalBody, SourceBody, WindowBody, WindowValueBody};
+pub use explanation::{
+    CallApartBody, ExplanationBody, PartBody, PlaceBody, SpanBody, StepBody, WatchApartBody,
+    WorkedPairBody, WorkedTestBody,
+};
 pub use health::{HealthBody, OutletBody};
 pub use line::{LineEntryBody, LineEventBody, LineKind};
 pub use look::{DependenceBody, DeviationBody, DigestBody, LookBody, SourceLookBody, TestBody};
