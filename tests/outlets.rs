@@ -89,6 +89,7 @@ fn delivery(number: u64, id: &str, state: State) -> Delivery {
         advice: "Check valve 07.".to_owned(),
         url: "http://127.0.0.1:7310/banks/filler%202".to_owned(),
         span: 40,
+        handling: evenrow::notice::Handling::default(),
     };
     Delivery {
         number,

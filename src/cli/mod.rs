@@ -3,9 +3,11 @@
 //! A command prints what it has to say and returns an [`Exit`]; only [`main`] turns that into a code.
 
 pub mod args;
+mod ask;
 pub mod configuration;
 pub mod demo;
 pub mod exit;
+mod handover;
 pub mod log;
 pub mod rehearse;
 pub mod signals;
@@ -36,6 +38,8 @@ enum Command {
     Demo(args::DemoArgs),
     /// Recorded measurements through the same engine, as fast as it goes
     Rehearse(args::RehearseArgs),
+    /// What one shift leaves to the next: calls, answers, line events, figures; HTML to print, or JSON
+    Handover(args::HandoverArgs),
     /// Check a configuration: every fault at once, with its line and what to do
     Vet(args::VetArgs),
 }
@@ -55,6 +59,7 @@ fn run(cli: Cli) -> Exit {
         #[cfg(feature = "demo")]
         Command::Demo(args) => demo::run(args),
         Command::Rehearse(args) => rehearse::run(args),
+        Command::Handover(args) => handover::run(args),
         Command::Vet(args) => vet::run(args),
     }
 }

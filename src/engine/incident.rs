@@ -6,8 +6,7 @@ use serde::{Deserialize, Serialize};
 
 use crate::model::{Name, SourceIx, Time};
 use crate::notice::{
-    Acknowledgement, Compared, Facts, Happening, Kind, NamedSource, Notice, Priority, SPREAD_UNIT,
-    State, after,
+    Compared, Facts, Handling, Happening, Kind, NamedSource, Notice, Priority, SPREAD_UNIT, State,
 };
 use crate::stats::dist;
 use crate::verdict::{
@@ -18,9 +17,7 @@ use crate::window::Windows;
 use super::Plant;
 use super::apart::{Adjusted, Apart, farness};
 use super::bank::Watched;
-
-/// Updates of an open notice are sent at most this often.
-const SEND_EVERY_US: i64 = 10_000_000;
+use super::papers::Sent;
 
 /// A source whose values lie outside the limits this often makes the notice a high one.
 const MUCH_OUTSIDE: f64 = 0.01;
@@ -36,7 +33,7 @@ pub struct Incident {
     /// The newest place in the windows at the call: evidence of a return comes from later ones.
     pub called_at: i64,
     /// The notice as it was last sent, and when.
-    pub sent: Option<(Time, Arc<Notice>)>,
+    pub sent: Sent,
 }
 
 /// What an incident needs to know of its bank.
@@ -80,7 +77,7 @@ impl Incident {
             plant: about.plant.name.clone(),
             bank: about.watched.bank.name.clone(),
             kind: kind(call),
-            state: after(State::Normal, Happening::Occurs),
+            state: State::Normal,
             priority: Priority::Medium,
             sources: Vec::new(),
             unit: match call.aspect {
@@ -101,6 +98,7 @@ impl Incident {
                 address(&about.watched.bank.name)
             ),
             span: call.span,
+            handling: Handling::default(),
         };
         let mut incident = Self {
             notice: Arc::new(notice),
@@ -110,13 +108,14 @@ impl Incident {
             apart,
             sent: None,
         };
+        incident.happen(Happening::Occurs, about.now);
         incident.tell(about);
         Some(incident)
     }
 
     /// Whether it still holds.
     pub fn is_active(&self) -> bool {
-        self.notice.state.is_active()
+        self.notice.holds()
     }
 
     /// The sources it is about now.
@@ -165,7 +164,7 @@ impl Incident {
             }
         }
         if self.apart.iter().all(|a| a.cleared) {
-            self.happen(Happening::Returns, about.now);
+            self.happen(about.plant.manners.returns(), about.now);
         }
         self.tell(about);
         back
@@ -232,27 +231,8 @@ impl Incident {
         self.called_at = self.called_at.max(from.saturating_sub(1));
     }
 
-    /// A person acknowledges; asking twice changes nothing.
-    pub fn acknowledge(&mut self, acknowledgement: Acknowledgement) {
-        let at = acknowledgement.at;
-        if after(self.notice.state, Happening::Acknowledged) == self.notice.state {
-            return;
-        }
-        Arc::make_mut(&mut self.notice).acknowledged = Some(acknowledgement);
-        self.happen(Happening::Acknowledged, at);
-    }
-
     fn happen(&mut self, happening: Happening, now: Time) {
-        let state = after(self.notice.state, happening);
-        if state == self.notice.state {
-            return;
-        }
-        let notice = Arc::make_mut(&mut self.notice);
-        notice.state = state;
-        notice.changed = now;
-        if happening == Happening::Returns {
-            notice.returned = Some(now);
-        }
+        Arc::make_mut(&mut self.notice).happen(happening, now);
     }
 
     /// Puts the present figures into the notice's fields and words.
@@ -351,28 +331,6 @@ impl Incident {
         let above = c.upper.map_or(0.0, |u| dist::normal::sf((u - mean) / sd));
         below + above
     }
-
-    /// Whether people should receive it now: another set, state or priority at once; another size
-    /// when it moved by more than half its interval; never sooner than ten seconds after the last.
-    pub fn wants_sending(&self, now: Time) -> bool {
-        let Some((at, last)) = &self.sent else {
-            return true;
-        };
-        let n = &self.notice;
-        let set = |n: &Notice| {
-            let mut names: Vec<Name> = n.sources.iter().map(|s| s.source.clone()).collect();
-            names.sort();
-            names
-        };
-        if n.state != last.state {
-            return true;
-        }
-        let moved = n.sources.iter().zip(&last.sources).any(|(a, b)| {
-            a.source == b.source && (a.deviation - b.deviation).abs() > (b.high - b.low) / 2.0
-        });
-        let other = set(n) != set(last) || n.priority != last.priority;
-        (other || moved) && now.us_since(*at) >= SEND_EVERY_US
-    }
 }
 
 /// Whether the sources are compared only with each other: of two, nobody is the culprit.
@@ -410,7 +368,7 @@ fn newest_place(windows: &Windows) -> i64 {
 }
 
 /// A name as part of an address (RFC 3986): everything but the unreserved is written in percents.
-fn address(name: &str) -> String {
+pub fn address(name: &str) -> String {
     let mut text = String::with_capacity(name.len());
     for byte in name.bytes() {
         if byte.is_ascii_alphanumeric() || b"-._~".contains(&byte) {

@@ -8,7 +8,7 @@ use serde::Serialize;
 
 use crate::model::Time;
 
-use super::{Acknowledgement, Kind, NamedSource, Notice, Priority, Since, State};
+use super::{Acknowledgement, CallOutcome, Kind, NamedSource, Notice, Priority, Since, State};
 
 /// The `data` of a notice's event, and a notice in the interface.
 #[derive(Clone, Copy, Debug, PartialEq, Serialize)]
@@ -49,6 +49,10 @@ pub struct NoticeData<'a> {
     pub acknowledged: Option<&'a Acknowledgement>,
     /// Values per source in the look that called.
     pub span: usize,
+    /// Until when it is shelved; null while it is not.
+    pub shelved_until: Option<Time>,
+    /// What came of it; null while nobody has said.
+    pub outcome: Option<CallOutcome>,
 }
 
 impl<'a> NoticeData<'a> {
@@ -74,6 +78,7 @@ impl<'a> NoticeData<'a> {
             advice,
             url,
             span,
+            handling,
         } = notice;
         Self {
             id,
@@ -94,6 +99,8 @@ impl<'a> NoticeData<'a> {
             returned: *returned,
             acknowledged: acknowledged.as_ref(),
             span: *span,
+            shelved_until: handling.shelved_until,
+            outcome: handling.outcome,
         }
     }
 }
@@ -136,6 +143,7 @@ mod tests {
             advice: "Check valve 07.".into(),
             url: "http://127.0.0.1:7310/banks/filler-2".into(),
             span: 40,
+            handling: crate::notice::Handling::default(),
         }
     }
 
@@ -165,7 +173,9 @@ mod tests {
             "changed": "1970-01-01T00:03:00Z",
             "returned": null,
             "acknowledged": {"by": "Ana", "at": "1970-01-01T00:03:00Z", "comment": ""},
-            "span": 40
+            "span": 40,
+            "shelved_until": null,
+            "outcome": null
         });
         assert_eq!(json, wanted);
     }

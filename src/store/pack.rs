@@ -7,7 +7,7 @@
 
 use std::collections::{BTreeMap, BTreeSet};
 
-use crate::engine::{Due, Event, Onward, Turn};
+use crate::engine::{Due, Event, Judged, Onward, Turn};
 use crate::model::{BankIx, Measurement, Name, Time, Value};
 
 use super::codec::{DecodeError, from_payload, to_payload};
@@ -179,12 +179,16 @@ fn pack_due(out: &mut Vec<u8>, due: &Due, banks: &[Name]) -> Result<(), DecodeEr
         silent,
         looks,
         onward,
+        upkeep,
+        conditions,
     } = due;
     let all: BTreeSet<BankIx> = silent
         .iter()
         .map(|(b, _)| b)
         .chain(looks)
         .chain(onward.iter().map(|o| &o.bank))
+        .chain(upkeep)
+        .chain(conditions.iter().map(|c| &c.bank))
         .copied()
         .collect();
     let used: Vec<BankIx> = all.into_iter().collect();
@@ -194,6 +198,11 @@ fn pack_due(out: &mut Vec<u8>, due: &Due, banks: &[Name]) -> Result<(), DecodeEr
         silent: silent.iter().map(|&(b, s)| (place(b), s)).collect(),
         looks: looks.iter().map(|&b| place(b)).collect(),
         onward: onward.iter().map(|o| at(o, place(o.bank))).collect(),
+        upkeep: upkeep.iter().map(|&b| place(b)).collect(),
+        conditions: conditions
+            .iter()
+            .map(|c| judged_at(c, place(c.bank)))
+            .collect(),
     };
     out.extend(to_payload(&written)?);
     Ok(())
@@ -215,7 +224,21 @@ fn unpack_due(rest: &mut Reader<'_>, banks: &[Name]) -> Result<Due, DecodeError>
             .iter()
             .filter_map(|o| Some(at(o, now(o.bank)?)))
             .collect(),
+        upkeep: written.upkeep.into_iter().filter_map(now).collect(),
+        conditions: written
+            .conditions
+            .iter()
+            .filter_map(|c| Some(judged_at(c, now(c.bank)?)))
+            .collect(),
     })
+}
+
+/// The same with its bank counted otherwise.
+fn judged_at(judged: &Judged, bank: BankIx) -> Judged {
+    Judged {
+        bank,
+        ..judged.clone()
+    }
 }
 
 /// The same with its bank counted otherwise.

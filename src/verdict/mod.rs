@@ -10,6 +10,7 @@ mod dependence;
 mod errors;
 mod even;
 mod examine;
+mod kept;
 mod level;
 mod look;
 mod pattern;
@@ -21,6 +22,7 @@ pub mod watch;
 
 pub use data::{Data, Need, Rows, Values};
 pub use examine::{Asked, Began, Call, Examination, Participant, examine};
+pub use kept::{BudgetKept, Came, Keeping, budget_kept};
 pub use level::Level;
 pub use look::{Dependence, Digest, Estimate, Finding, Look, Method, SourceLook, TestEntry};
 pub use pattern::{Machine, Pattern, PatternKind, find as find_pattern};

@@ -8,14 +8,15 @@
 //! encryption (a proxy in front does it) and any decision about sources.
 
 mod access;
-mod acknowledge;
 mod address;
 mod api;
 mod assets;
 mod days;
+mod deeds;
 mod dress;
 mod durations;
 mod format;
+pub mod handover;
 mod health;
 mod kept;
 mod line;

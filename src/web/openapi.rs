@@ -4,7 +4,7 @@ use axum::Json;
 use utoipa::openapi::security::{HttpAuthScheme, HttpBuilder, SecurityScheme};
 use utoipa::{Modify, OpenApi};
 
-use super::api::{banks, line, notices};
+use super::api::{banks, deeds, line, notices};
 
 /// How tokens are sent.
 struct Token;
@@ -33,7 +33,10 @@ impl Modify for Token {
     paths(
         banks::list, banks::one, banks::windows, banks::looks, banks::refusals,
         line::list, line::enter,
-        notices::list, notices::one, notices::acknowledge,
+        notices::list, notices::one,
+        deeds::acknowledge, deeds::comment, deeds::shelve, deeds::unshelve, deeds::out_of_service,
+        deeds::in_service,
+        super::pages::handover::data,
     ),
     tags(
         (name = "banks", description = "What is compared, now and before"),

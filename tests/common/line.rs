@@ -92,6 +92,7 @@ impl Line {
             zone: jiff::tz::TimeZone::UTC,
             pages: "http://127.0.0.1:7310".into(),
             routes: Vec::new(),
+            manners: evenrow::notice::Manners::default(),
         };
         Self {
             engine: Engine::new(plant, vec![Arc::new(bank)]),

@@ -74,6 +74,7 @@ fn perform(args: &RehearseArgs, settings: &Settings) -> Result<Ledger, RehearseE
         pages: settings.pages(),
         // Nothing leaves a rehearsal.
         routes: Vec::new(),
+        manners: settings.manners.clone(),
     };
     let engine = Engine::new(plant, settings.banks.clone());
     let mut conductor = Conductor::new(engine);

@@ -9,6 +9,7 @@ mod belief;
 mod broker;
 mod feed;
 mod known;
+mod notices;
 mod outlet;
 mod payload;
 mod payload_named;
@@ -40,6 +41,7 @@ pub(super) fn used(written: Written, faults: &mut FaultList) -> Option<Settings>
         broker,
         store,
         web,
+        notices,
         banks,
         outlets,
     } = written;
@@ -48,6 +50,7 @@ pub(super) fn used(written: Written, faults: &mut FaultList) -> Option<Settings>
     let broker = broker::broker(broker, name.as_deref().unwrap_or_default(), faults);
     let store = plant::store(store, faults);
     let web = plant::web(web, faults);
+    let manners = notices::manners(notices, faults);
     let zone = plant
         .as_ref()
         .map_or(TimeZone::UTC, |plant| plant.zone.clone());
@@ -60,6 +63,7 @@ pub(super) fn used(written: Written, faults: &mut FaultList) -> Option<Settings>
         broker: broker?,
         store: store?,
         web: web?,
+        manners,
         banks,
         feeds,
         outlets: outlets?,

@@ -60,7 +60,7 @@ pub async fn windows(
         ))),
         Outcome::NotFound(why) => Err(Problem::not_found(&why)),
         Outcome::Refused(why) => Err(Problem::unavailable(&why)),
-        Outcome::Acknowledged(_) | Outcome::Line(_) => {
+        Outcome::Notice(_) | Outcome::Line(_) => {
             Err(Problem::internal("the answer was to another question"))
         }
     }

@@ -4,6 +4,7 @@
 //! [`super::wire`]) and who may ask (that is [`super::access`]).
 
 pub mod banks;
+pub mod deeds;
 pub mod line;
 pub mod notices;
 
@@ -23,5 +24,10 @@ pub fn router() -> Router<App> {
         .route("/banks/{bank}/events", get(line::list).post(line::enter))
         .route("/notices", get(notices::list))
         .route("/notices/{id}", get(notices::one))
-        .route("/notices/{id}/acknowledge", post(notices::acknowledge))
+        .route("/notices/{id}/acknowledge", post(deeds::acknowledge))
+        .route("/notices/{id}/comment", post(deeds::comment))
+        .route("/notices/{id}/shelve", post(deeds::shelve))
+        .route("/notices/{id}/unshelve", post(deeds::unshelve))
+        .route("/notices/{id}/out-of-service", post(deeds::out_of_service))
+        .route("/notices/{id}/in-service", post(deeds::in_service))
 }

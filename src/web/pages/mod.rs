@@ -5,7 +5,9 @@
 //! state is called is in [`super::standing`]; everything else was decided by the engine).
 
 pub mod bank;
+pub mod deeds;
 pub mod frame;
+pub mod handover;
 mod history;
 pub mod line;
 mod looks;

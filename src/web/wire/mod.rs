@@ -6,15 +6,19 @@
 //! destructuring where it copies a struct, so that a new field cannot be forgotten.
 
 mod bank;
+mod deed;
 mod line;
 mod look;
 mod notice;
 mod watch;
 
-pub use bank::{BankBody, BankWholeBody, RefusalBody, SourceBody, WindowBody, WindowValueBody};
+pub use bank::{
+    BankBody, BankWholeBody, BudgetKeptBody, RefusalBody, SourceBody, WindowBody, WindowValueBody,
+};
+pub use deed::{AcknowledgeBody, CommentBody, EntryBody, SaidBody, ShelveBody};
 pub use line::{LineEntryBody, LineEventBody, LineKind};
 pub use look::{DependenceBody, DeviationBody, DigestBody, LookBody, SourceLookBody, TestBody};
-pub use notice::{AcknowledgeBody, AcknowledgementBody, NamedSourceBody, NoticeBody, SinceBody};
+pub use notice::{AcknowledgementBody, NamedSourceBody, NoticeBody, SinceBody};
 pub use watch::{WatchBody, WatchPartBody};
 
 use serde::Serialize;

@@ -1,12 +1,12 @@
 //! Notices.
 
-use serde::{Deserialize, Serialize};
+use serde::Serialize;
 use utoipa::ToSchema;
 
 use crate::model::Time;
 use crate::notice::{Acknowledgement, NamedSource, Notice, Since};
 
-use super::finite;
+use super::{EntryBody, finite};
 
 /// A source that a notice names.
 #[derive(Debug, Serialize, ToSchema)]
@@ -87,8 +87,17 @@ pub struct NoticeBody {
     pub advice: String,
     /// The bank's page.
     pub url: String,
-    /// The span of the look that called.
+    /// The span of the look that called; 0 for a condition.
     pub span: usize,
+    /// Whether the condition holds, whoever has set the notice aside.
+    pub holds: bool,
+    /// Until when it is shelved.
+    #[schema(value_type = Option<String>, format = DateTime)]
+    pub shelved_until: Option<Time>,
+    /// What came of it, as a person said.
+    pub outcome: Option<String>,
+    /// Who did what, oldest first.
+    pub log: Vec<EntryBody>,
 }
 
 impl From<&Notice> for NoticeBody {
@@ -112,6 +121,7 @@ impl From<&Notice> for NoticeBody {
             advice,
             url,
             span,
+            handling,
         } = notice;
         Self {
             id: id.to_string(),
@@ -132,6 +142,10 @@ impl From<&Notice> for NoticeBody {
             advice: advice.clone(),
             url: url.clone(),
             span: *span,
+            holds: notice.holds(),
+            shelved_until: handling.shelved_until,
+            outcome: handling.outcome.map(|o| o.word().to_owned()),
+            log: handling.entries.iter().map(EntryBody::from).collect(),
         }
     }
 }
@@ -177,15 +191,4 @@ fn acknowledgement(Acknowledgement { by, at, comment }: &Acknowledgement) -> Ack
         at: *at,
         comment: comment.clone(),
     }
-}
-
-/// What an acknowledgement says.
-#[derive(Debug, Deserialize, ToSchema)]
-#[serde(deny_unknown_fields)]
-pub struct AcknowledgeBody {
-    /// The person's name.
-    pub by: String,
-    /// Anything worth saying.
-    #[serde(default)]
-    pub comment: String,
 }
