@@ -54,8 +54,9 @@ fn made(args: &HandoverArgs, settings: &Settings) -> Result<Handover, String> {
         .as_deref()
         .or(settings.web.token_file.as_deref());
     match ask(settings, token_file, &path(args)).map_err(|e| e.to_string())? {
-        Asked::Answer(body) => serde_json::from_str(&body)
-            .map_err(|e| format!("the daemon's answer cannot be read ({e}); is it another version?")),
+        Asked::Answer(body) => serde_json::from_str(&body).map_err(|e| {
+            format!("the daemon's answer cannot be read ({e}); is it another version?")
+        }),
         Asked::NobodyThere => from_store(args, settings),
     }
 }

@@ -132,7 +132,7 @@ fn each_condition_says_what_since_when_and_what_to_do() {
             "filler-2: level is below declared by 0.80 g",
             "filler-2: level no longer below declared",
         ],
-        "499.20 g (surely below 499.60 g), declared 500 g",
+        "499.20 g (surely below 499.60), declared 500 g",
     );
     check(
         Kind::IntakeTrouble,

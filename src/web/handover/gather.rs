@@ -50,12 +50,7 @@ pub fn gather(
     });
     Ok(Handover {
         plant: settings.plant.name.to_string(),
-        zone: settings
-            .plant
-            .zone
-            .iana_name()
-            .unwrap_or("UTC")
-            .to_owned(),
+        zone: settings.plant.zone.iana_name().unwrap_or("UTC").to_owned(),
         shift: stretch.name.to_string(),
         date: stretch.date.to_string(),
         from: stretch.from,
@@ -128,11 +123,7 @@ fn bank_part(
         carried: carried.collect(),
         events: events.iter().map(|e| event(e, bank)).collect(),
         looked: look.as_ref().map(|l| l.at),
-        sources: look
-            .iter()
-            .flat_map(|l| &l.sources)
-            .map(source)
-            .collect(),
+        sources: look.iter().flat_map(|l| &l.sources).map(source).collect(),
         level: look
             .as_ref()
             .and_then(|l| LevelFigures::of(bank, l, interval_us, present.tolerable)),

@@ -86,7 +86,10 @@ fn named<'s>(shifts: &'s [Shift], name: &str) -> Result<&'s Shift, String> {
         let names: Vec<&str> = shifts.iter().map(|s| &*s.name).collect();
         match names.as_slice() {
             [] => format!("there is no shift \"{name}\": the plant has none ([[plant.shift]])"),
-            names => format!("there is no shift \"{name}\"; there are: {}", names.join(", ")),
+            names => format!(
+                "there is no shift \"{name}\"; there are: {}",
+                names.join(", ")
+            ),
         }
     })
 }

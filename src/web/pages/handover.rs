@@ -35,7 +35,11 @@ async fn made(app: &App, asked: Queried) -> Result<Handover, Problem> {
     let tolerable = match asked.tolerable.as_deref() {
         None | Some("") => Tolerable::No,
         Some("76/211/EEC") => Tolerable::Eec76211,
-        Some(_) => return Err(Problem::bad_request("`tolerable` is 76/211/EEC, or left out")),
+        Some(_) => {
+            return Err(Problem::bad_request(
+                "`tolerable` is 76/211/EEC, or left out",
+            ));
+        }
     };
     let filled = |text: Option<String>| text.filter(|t| !t.is_empty());
     let wanted = Wanted {
