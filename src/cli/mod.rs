@@ -10,6 +10,7 @@ pub mod exit;
 mod handover;
 pub mod log;
 pub mod rehearse;
+mod send_test;
 pub mod signals;
 mod vet;
 mod watch;

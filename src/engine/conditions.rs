@@ -8,11 +8,10 @@ use std::sync::Arc;
 
 use serde::{Deserialize, Serialize};
 
-use crate::model::{SourceIx, Time};
+use crate::model::{SourceIx, Time, address_name};
 use crate::notice::{ConditionFacts, Handling, Happening, Kind, Notice, Since, State, Trouble};
 
 use super::bank::Watched;
-use super::incident::address;
 use super::look::Freshness;
 use super::papers::Sent;
 use super::{Judged, Plant};
@@ -105,8 +104,14 @@ impl Watched {
             subject: String::new(),
             text: String::new(),
             advice: String::new(),
-            url: format!("{}/banks/{}", plant.pages, address(&bank.name)),
+            url: format!("{}/banks/{}", plant.pages, address_name(&bank.name)),
             span: 0,
+            pattern: None,
+            slip: None,
+            common_movement: None,
+            even_mean: None,
+            cost_per_hour: None,
+            adjustment: None,
             handling: Handling::default(),
         };
         Standing {

@@ -25,6 +25,7 @@ mod send;
 mod snapshot;
 mod source;
 mod stuck;
+mod usual;
 mod view;
 mod watching;
 
@@ -39,3 +40,4 @@ pub use snapshot::{
     BankView, Cycles, OutletView, Plant, RefusalView, Snapshot, SourceState, SourceView, WatchView,
     WindowValue, WindowView,
 };
+pub use view::shown_look;

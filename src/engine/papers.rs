@@ -227,7 +227,9 @@ pub fn wants_sending(notice: &Notice, sent: &Sent, now: Time) -> bool {
         let half = (b.high - b.low) / 2.0;
         a.source == b.source && half > 0.0 && (a.deviation - b.deviation).abs() > half
     });
-    let other = set(notice) != set(last) || notice.priority != last.priority;
+    let told = |n: &Notice| n.adjustment.as_ref().map(|a| (a.stage(), a.effect));
+    let other =
+        set(notice) != set(last) || notice.priority != last.priority || told(notice) != told(last);
     (other || moved) && now.us_since(*at) >= SEND_EVERY_US
 }
 

@@ -34,6 +34,12 @@ fn notice() -> Notice {
         advice: String::new(),
         url: String::new(),
         span: 40,
+        pattern: None,
+        slip: None,
+        common_movement: None,
+        even_mean: None,
+        cost_per_hour: None,
+        adjustment: None,
         handling: Handling::default(),
     };
     notice.happen(Happening::Occurs, at(0));

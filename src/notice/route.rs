@@ -124,6 +124,12 @@ mod tests {
             url: String::new(),
             span: 40,
             handling: crate::notice::Handling::default(),
+            pattern: None,
+            slip: None,
+            common_movement: None,
+            even_mean: None,
+            cost_per_hour: None,
+            adjustment: None,
         }
     }
 

@@ -128,6 +128,12 @@ pub(super) mod tests {
             url: "http://127.0.0.1:7310/banks/filler%202".to_owned(),
             span: 40,
             handling: crate::notice::Handling::default(),
+            pattern: None,
+            slip: None,
+            common_movement: None,
+            even_mean: None,
+            cost_per_hour: None,
+            adjustment: None,
         };
         Delivery {
             number,

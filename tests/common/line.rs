@@ -10,7 +10,7 @@ use evenrow::model::{
     Bank, BankIx, Budget, Characteristic, Layout, Measurement, Name, Offsets, Pairing, Sources,
     Time, US_PER_S, Value,
 };
-use evenrow::notice::{Kind, Manners, Notice};
+use evenrow::notice::{Kind, Manners, Notice, Route};
 
 pub const START: Time = Time::from_us(1_790_000_000 * US_PER_S);
 
@@ -87,13 +87,22 @@ pub struct Line {
 
 impl Line {
     pub fn new(bank: Bank, seed: u64) -> Self {
-        Self::with(bank, seed, |_| {})
+        Self::of(bank, seed, Vec::new(), Manners::default())
     }
 
     /// A line of a plant with other manners.
     pub fn with(bank: Bank, seed: u64, change: impl FnOnce(&mut Manners)) -> Self {
         let mut manners = Manners::default();
         change(&mut manners);
+        Self::of(bank, seed, Vec::new(), manners)
+    }
+
+    /// One whose notices go to outlets too.
+    pub fn with_routes(bank: Bank, seed: u64, routes: Vec<Route>) -> Self {
+        Self::of(bank, seed, routes, Manners::default())
+    }
+
+    fn of(bank: Bank, seed: u64, routes: Vec<Route>, manners: Manners) -> Self {
         let k = match &bank.sources {
             Sources::Listed(listed) => listed.len(),
             Sources::Discover { most } => usize::from(*most),
@@ -102,7 +111,7 @@ impl Line {
             name: "Quayside".into(),
             zone: jiff::tz::TimeZone::UTC,
             pages: "http://127.0.0.1:7310".into(),
-            routes: Vec::new(),
+            routes,
             manners,
         };
         Self {

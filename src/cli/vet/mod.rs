@@ -1,8 +1,11 @@
 //! `evenrow vet`: every fault of a configuration at once or, when it is good, what it means.
 //!
-//! Deliberately absent: connecting to anything. Files that the configuration names are looked at,
-//! and a missing one is a caution: the configuration may be meant for another machine.
+//! With `--broker` it also listens for a while ([`broker`]), with `--send-test` it sends one marked notice;
+//! otherwise it connects to nothing. Files that
+//! the configuration names are looked at, and a missing one is a caution: the configuration may be meant
+//! for another machine.
 
+mod broker;
 mod forms;
 
 use std::fmt::Write as _;
@@ -19,15 +22,48 @@ use crate::verdict::Shares;
 use super::args::VetArgs;
 use super::configuration;
 use super::exit::Exit;
+use super::send_test;
 
 /// Runs the command.
 pub fn run(args: VetArgs) -> Exit {
-    let VetArgs { config } = args;
+    let VetArgs {
+        config,
+        send_test,
+        broker,
+        listen,
+        json,
+    } = args;
     let settings = match configuration::read(&config) {
         Ok(settings) => settings,
         Err(exit) => return exit,
     };
+    if json {
+        return broker::run(&settings, &config, listen, broker::Form::Json);
+    }
     let text = format!("{}: good\n\n{}", config.display(), summary(&settings));
+    let said = say(&text);
+    if said != Exit::Done {
+        return said;
+    }
+    if broker {
+        let heard = broker::run(&settings, &config, listen, broker::Form::Text);
+        if heard != Exit::Done {
+            return heard;
+        }
+    }
+    if !send_test {
+        return Exit::Done;
+    }
+    match send_test::send(&settings) {
+        Ok(told) => say(&format!("\n{told}")),
+        Err(told) => {
+            say(&format!("\n{told}"));
+            Exit::Failed
+        }
+    }
+}
+
+fn say(text: &str) -> Exit {
     match std::io::stdout().write_all(text.as_bytes()) {
         Ok(()) => Exit::Done,
         Err(error) => {
@@ -74,6 +110,7 @@ fn plant(settings: &Settings) -> String {
         banks: _,
         feeds: _,
         outlets,
+        origins: _,
     } = settings;
     let mut lines = Lines(format!("plant {}\n", plant.name));
     let zone = plant.zone.iana_name().unwrap_or("without a name");
@@ -106,6 +143,8 @@ fn plant(settings: &Settings) -> String {
         ),
         ("broker.client_key_file", &broker.client_key_file),
         ("web.token_file", &web.token_file),
+        ("web.certificate_file", &web.certificate_file),
+        ("web.key_file", &web.key_file),
     ];
     let named = files
         .into_iter()

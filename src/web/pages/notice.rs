@@ -6,7 +6,7 @@ use maud::{Markup, html};
 use crate::model::signed;
 use crate::notice::{Act, Entry, Kind, Notice};
 use crate::web::access::Caller;
-use crate::web::address::percent;
+use crate::web::address;
 use crate::web::format;
 use crate::web::pictures::glyph::{self, Glyph};
 use crate::web::problem::Problem;
@@ -32,12 +32,7 @@ pub async fn page(
 ) -> Result<Markup, Problem> {
     let snapshot = app.now();
     let notice = app.notice(&snapshot, &id).await?;
-    let scene = Scene::new(
-        &app,
-        &snapshot,
-        &caller,
-        format!("/notices/{}", percent(&id)),
-    );
+    let scene = Scene::new(&app, &snapshot, &caller, address::notice(&id));
     let main = html! { (card(&scene, &notice, Place::Own)) };
     let live = bank(&snapshot, &notice.bank)
         .is_ok()
@@ -47,6 +42,7 @@ pub async fn page(
         Page {
             title: notice.subject.clone(),
             live,
+            script: None,
             way: "",
             main,
         },
@@ -58,7 +54,12 @@ pub fn shape(notice: &Notice) -> Glyph {
     if !notice.state.is_active() {
         return Glyph::Even;
     }
-    match notice.kind {
+    glyph_of(notice.kind)
+}
+
+/// The shape of what a kind of notice is about.
+pub fn glyph_of(kind: Kind) -> Glyph {
+    match kind {
         Kind::SpreadApart => Glyph::Spread,
         Kind::SourceSilent | Kind::SourceStuck => Glyph::Silent,
         Kind::IntakeTrouble | Kind::ClockWrong => Glyph::Trouble,
@@ -83,8 +84,8 @@ pub fn card(scene: &Scene<'_>, notice: &Notice, place: Place) -> Markup {
                     @else { h2 id=(name) { (notice.subject) } }
                     p class="quiet" { (notice.kind.words()) " · " (notice.state.words()) " · priority "
                         (notice.priority.word()) " · "
-                        @if place == Place::Own { a href={ "/banks/" (percent(&notice.bank)) } { (notice.bank) } }
-                        @else { a href={ "/notices/" (percent(&notice.id)) } { (notice.id) } } }
+                        @if place == Place::Own { a href=(address::bank(&notice.bank)) { (notice.bank) } }
+                        @else { a href=(address::notice(&notice.id)) { (notice.id) } } }
                 }
             }
             (named(scene, notice))
@@ -120,7 +121,7 @@ fn named(scene: &Scene<'_>, notice: &Notice) -> Markup {
         @if !notice.sources.is_empty() {
             ul class="named" {
                 @for source in &notice.sources {
-                    li { strong { (source.source) } " " span class="figure" { (figure(source.deviation)) }
+                    li { strong { a href=(address::source(&notice.bank, &source.source)) { (source.source) } } " " span class="figure" { (figure(source.deviation)) }
                         @if source.low != source.high { " " span class="quiet" { (figure(source.low)) " to " (figure(source.high)) } } }
                 }
             }

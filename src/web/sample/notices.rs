@@ -88,6 +88,12 @@ pub fn notice(bank: &Bank, names: &[Name], story: Story, looks: &[Arc<Look>]) ->
         url: format!("http://127.0.0.1:7310/banks/{}", bank.name),
         span,
         handling: Handling::default(),
+        pattern: None,
+        slip: None,
+        common_movement: None,
+        even_mean: None,
+        cost_per_hour: None,
+        adjustment: None,
     };
     notice.happen(Happening::Occurs, since.plus_us(65 * US_PER_S));
     Some(notice)

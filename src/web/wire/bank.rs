@@ -183,6 +183,12 @@ impl BankWholeBody {
     }
 }
 
+impl From<&SourceView> for SourceBody {
+    fn from(view: &SourceView) -> Self {
+        source(view)
+    }
+}
+
 fn source(view: &SourceView) -> SourceBody {
     let SourceView {
         source: _,

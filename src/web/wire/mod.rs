@@ -7,18 +7,24 @@
 
 mod bank;
 mod deed;
+mod health;
 mod line;
 mod look;
 mod notice;
+mod rows;
+mod setting;
 mod watch;
 
 pub use bank::{
     BankBody, BankWholeBody, BudgetKeptBody, RefusalBody, SourceBody, WindowBody, WindowValueBody,
 };
 pub use deed::{AcknowledgeBody, CommentBody, EntryBody, SaidBody, ShelveBody};
+pub use health::{HealthBody, OutletBody};
 pub use line::{LineEntryBody, LineEventBody, LineKind};
 pub use look::{DependenceBody, DeviationBody, DigestBody, LookBody, SourceLookBody, TestBody};
 pub use notice::{AcknowledgementBody, NamedSourceBody, NoticeBody, SinceBody};
+pub use rows::Rows;
+pub use setting::SettingBody;
 pub use watch::{WatchBody, WatchPartBody};
 
 use serde::Serialize;
