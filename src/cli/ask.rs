@@ -8,7 +8,7 @@ use std::path::Path;
 use std::time::Duration;
 
 use crate::settings::Settings;
-use crate::settings::connection::no_tls;
+use crate::settings::connection::{no_tls, server_tls};
 
 /// Longer than the daemon takes for any answer.
 const ANSWER_WITHIN: Duration = Duration::from_secs(30);
@@ -71,7 +71,12 @@ pub fn ask(settings: &Settings, token_file: Option<&Path>, path: &str) -> Result
         .enable_all()
         .build()
         .map_err(|e| way(e.to_string()))?;
-    let url = format!("http://{at}{path}");
+    // With a certificate the name in it counts, so the address that people use is asked.
+    let certificate = settings.web.certificate_file.as_deref();
+    let url = match certificate {
+        Some(_) => format!("{}{path}", settings.pages()),
+        None => format!("http://{at}{path}"),
+    };
     runtime.block_on(async {
         // Whether anybody listens is asked first: the client's errors do not tell it apart for sure.
         match tokio::net::TcpStream::connect(to).await {
@@ -81,7 +86,11 @@ pub fn ask(settings: &Settings, token_file: Option<&Path>, path: &str) -> Result
             }
             Err(e) => return Err(way(e.to_string())),
         }
-        let tls = no_tls().map_err(|e| way(e.to_string()))?;
+        let tls = match certificate {
+            Some(own) => server_tls(Some(own)),
+            None => no_tls(),
+        };
+        let tls = tls.map_err(|e| way(e.to_string()))?;
         let client = reqwest::Client::builder()
             .tls_backend_preconfigured(tls)
             .no_proxy()

@@ -86,6 +86,7 @@ pub async fn page(
         Page {
             title: format!("Handover {} {}", handover.shift, handover.date),
             live: None,
+            script: None,
             way: "/handover",
             main,
         },

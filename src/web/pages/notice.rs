@@ -6,7 +6,7 @@ use maud::{Markup, html};
 use crate::model::signed;
 use crate::notice::{Act, Entry, Kind, Notice};
 use crate::web::access::Caller;
-use crate::web::address;
+use crate::web::address::{self, percent};
 use crate::web::format;
 use crate::web::pictures::glyph::{self, Glyph};
 use crate::web::problem::Problem;
