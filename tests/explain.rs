@@ -175,6 +175,7 @@ fn plant(settings: &Settings) -> Plant {
         zone: settings.plant.zone.clone(),
         pages: settings.pages(),
         routes: Vec::new(),
+        manners: evenrow::notice::Manners::default(),
     }
 }
 

@@ -63,6 +63,37 @@ fn listening(text: &str) -> Result<Duration, String> {
     }
 }
 
+/// Options of `evenrow handover`.
+#[derive(Args, Clone, Debug)]
+pub struct HandoverArgs {
+    /// The configuration (TOML)
+    #[arg(long, value_name = "FILE")]
+    pub config: PathBuf,
+    /// The shift; without it the whole day where a date is given, else the newest shift
+    #[arg(long, value_name = "NAME")]
+    pub shift: Option<String>,
+    /// The day on which it began, as 2026-03-29
+    #[arg(long, value_name = "DATE")]
+    pub date: Option<String>,
+    /// Write JSON instead of HTML
+    #[arg(long)]
+    pub json: bool,
+    /// The file whose token asks the running daemon; without it the configured one
+    #[arg(long, value_name = "FILE")]
+    pub token_file: Option<PathBuf>,
+    /// Show the tolerable negative error of a rule beside the declared quantity
+    #[arg(long, value_name = "RULE", value_enum)]
+    pub tolerable: Option<TolerableError>,
+}
+
+/// Rules whose tolerable errors can be shown.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, ValueEnum)]
+pub enum TolerableError {
+    /// Directive 76/211/EEC, annex I
+    #[value(name = "76/211/EEC")]
+    Eec76211,
+}
+
 /// Options of `evenrow rehearse`.
 #[derive(Args, Clone, Debug)]
 pub struct RehearseArgs {

@@ -3,10 +3,12 @@
 //! A command prints what it has to say and returns an [`Exit`]; only [`main`] turns that into a code.
 
 pub mod args;
+mod ask;
 pub mod configuration;
 pub mod demo;
 pub mod exit;
 mod explain;
+mod handover;
 pub mod log;
 pub mod plan;
 pub mod rehearse;
@@ -43,6 +45,8 @@ enum Command {
     Explain(args::ExplainArgs),
     /// Before trusting a setting: what drift is found, how surely and how soon
     Plan(args::PlanArgs),
+    /// What one shift leaves to the next: calls, answers, line events, figures; HTML to print, or JSON
+    Handover(args::HandoverArgs),
     /// Check a configuration: every fault at once, with its line and what to do
     Vet(args::VetArgs),
 }
@@ -64,6 +68,7 @@ fn run(cli: Cli) -> Exit {
         Command::Rehearse(args) => rehearse::run(args),
         Command::Explain(args) => explain::run(args),
         Command::Plan(args) => plan::run(args),
+        Command::Handover(args) => handover::run(args),
         Command::Vet(args) => vet::run(args),
     }
 }

@@ -5,7 +5,7 @@ use std::sync::Arc;
 
 use crate::clock::Clock;
 use crate::model::{Name, Time, US_PER_S};
-use crate::notice::{Delivery, Kind, Notice, Priority, Since, State, Way};
+use crate::notice::{Delivery, Handling, Kind, Notice, Priority, Since, State, Way};
 use crate::outlets;
 use crate::settings::Settings;
 
@@ -97,6 +97,7 @@ fn test_of(settings: &Settings, way: Way, now: Time) -> Delivery {
         even_mean: None,
         cost_per_hour: None,
         adjustment: None,
+        handling: Handling::default(),
     };
     Delivery {
         number: u64::try_from(seconds).unwrap_or(0),

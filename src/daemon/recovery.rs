@@ -43,6 +43,7 @@ pub(super) fn recover(
         zone: settings.plant.zone.clone(),
         pages: settings.pages(),
         routes: settings.routes(),
+        manners: settings.manners.clone(),
     };
     let mut engine = Engine::new(plant, settings.banks.clone());
     for (bank, _, state) in &recovered.checkpoints {

@@ -63,6 +63,7 @@ fn recovery(script: &Script) -> Recovery {
         zone: jiff::tz::TimeZone::UTC,
         pages: "http://127.0.0.1:7310".to_owned(),
         routes: Vec::new(),
+        manners: crate::notice::Manners::default(),
     };
     let mut engine = Engine::new(plant, vec![bank]);
     for (bank, _, state) in &recovered.checkpoints {

@@ -1,20 +1,23 @@
 //! One bank: its windows, its sources and its incidents, and what a measurement or a look does to them.
 
-use std::collections::BTreeMap;
+use std::collections::{BTreeMap, VecDeque};
 use std::sync::Arc;
 
 use serde::{Deserialize, Serialize};
 
 use crate::model::{Bank, Measurement, Name, Reason, SourceIx, Sources, Time};
-use crate::notice::Kind;
+use crate::notice::{Kind, Notice};
 use crate::verdict::watch::{Crossing, Watch};
 use crate::verdict::{Asked, Examination, Look, Need, Participant, examine};
 use crate::window::{Accepted, Arriving, Windows};
 
+use super::conditions::Standing;
 use super::evidence::Premises;
 use super::incident::Incident;
+use super::judge::Senses;
 use super::line::Line;
 use super::natural::natural;
+use super::papers::{Raised, Tally};
 use super::source::{Source, usual_interval_us};
 use super::watching::{Pace, watch_for};
 use super::{RefusalView, WindowValue, WindowView};
@@ -55,6 +58,14 @@ pub struct State {
     pub pace: Pace,
     /// The line as its events left it.
     pub line: Line,
+    /// Conditions whose notices are open, oldest first.
+    pub conditions: Vec<Standing>,
+    /// The newest notices that are over, oldest first.
+    pub past: VecDeque<Arc<Notice>>,
+    /// What its calls came to.
+    pub tally: Tally,
+    /// The newest notices raised, oldest first.
+    pub raised_at: VecDeque<Raised>,
 }
 
 impl State {
@@ -95,6 +106,8 @@ pub struct Watched {
     pub last_checkpoint: Option<Time>,
     /// What the look that is under way rests on.
     pub premises: Option<Premises>,
+    /// What is only sensed, and begins afresh with the process.
+    pub senses: Senses,
 }
 
 impl Watched {
@@ -114,6 +127,10 @@ impl Watched {
             watch: watch_for(&bank),
             pace: Pace::default(),
             line: Line::default(),
+            conditions: Vec::new(),
+            past: VecDeque::new(),
+            tally: Tally::default(),
+            raised_at: VecDeque::new(),
         };
         Self::with_state(bank, state)
     }
@@ -132,6 +149,7 @@ impl Watched {
             next_silence_check: None,
             last_checkpoint: None,
             premises: None,
+            senses: Senses::default(),
         };
         let listed = match &watched.bank.sources {
             Sources::Listed(listed) => listed.clone(),

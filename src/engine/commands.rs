@@ -1,9 +1,7 @@
 //! What people ask for, and the answers.
 
-use std::sync::Arc;
-
 use crate::model::{BankIx, LineEvent, Name, Time};
-use crate::notice::{Acknowledgement, Notice};
+use crate::notice::{Deed, Said};
 
 use super::{Command, Effect, Engine, Event, Outcome, Record, Ticket};
 
@@ -44,13 +42,17 @@ impl Engine {
                 Some(b) => Outcome::Evidence(Box::new(b.evidence_now(now))),
                 None => no_bank(),
             }),
-            Command::Acknowledge { notice, comment } => {
-                let acknowledgement = Acknowledgement {
+            Command::Notice {
+                notice,
+                deed,
+                comment,
+            } => {
+                let said = Said {
                     by: who.clone(),
                     at: now,
                     comment: comment.clone(),
                 };
-                self.acknowledge(number, notice, acknowledgement)
+                self.act(number, notice, *deed, said)
             }
             Command::Line {
                 bank,
@@ -105,48 +107,35 @@ impl Engine {
         }
     }
 
-    fn acknowledge(&mut self, number: u64, id: &str, acknowledgement: Acknowledgement) -> Done {
-        let now = acknowledgement.at;
-        let Some((b, after, news)) = self.acknowledged(number, id, acknowledgement) else {
-            let why = format!("no open notice has the id \"{id}\"");
-            return Done::answer(Outcome::NotFound(why));
+    /// Does something with a notice that is open, or has been over for a little while.
+    fn act(&mut self, number: u64, id: &str, deed: Deed, said: Said) -> Done {
+        let (plant, now) = (self.plant.clone(), said.at);
+        let mut banks = self.banks.iter_mut().enumerate();
+        let found = banks.find_map(|(b, bank)| {
+            // A bank whose checkpoint contains this turn has it already.
+            let fresh = bank.state.turn < number;
+            let acted = fresh.then(|| bank.state.act(id, deed, said.clone(), &plant.manners))??;
+            Some((b, acted))
+        });
+        let (b, acted) = match found {
+            None => {
+                let why = format!("no open notice has the id \"{id}\"");
+                return Done::answer(Outcome::NotFound(why));
+            }
+            Some((_, Err(why))) => return Done::answer(Outcome::Refused(why)),
+            Some((b, Ok(acted))) => (b, acted),
         };
         let mut effects = Vec::new();
-        if news {
-            effects.push(Effect::Keep(Record::Notice(after.clone())));
+        if acted.news {
+            self.banks[b].mark(number);
+            effects.push(Effect::Keep(Record::Notice(acted.notice.clone())));
             self.send(b, number, now, &mut effects);
         }
         Done {
-            outcome: Outcome::Acknowledged(after),
+            outcome: Outcome::Notice(acted.notice),
             effects,
-            kept: news,
+            kept: acted.news,
         }
-    }
-
-    /// The bank, the notice after it, and whether anything changed.
-    fn acknowledged(
-        &mut self,
-        number: u64,
-        id: &str,
-        acknowledgement: Acknowledgement,
-    ) -> Option<(usize, Arc<Notice>, bool)> {
-        let own = |bank: &mut super::bank::Watched| {
-            let incidents = bank.state.incidents.iter();
-            let place = incidents.into_iter().position(|i| &*i.notice.id == id)?;
-            (bank.state.turn < number).then_some(place)
-        };
-        let mut banks = self.banks.iter_mut().enumerate();
-        let (b, i) = banks.find_map(|(b, bank)| Some((b, own(bank)?)))?;
-        let bank = &mut self.banks[b];
-        let incident = &mut bank.state.incidents[i];
-        let before = incident.notice.state;
-        incident.acknowledge(acknowledgement);
-        let news = incident.notice.state != before;
-        let after = incident.notice.clone();
-        if news {
-            bank.mark(number);
-        }
-        Some((b, after, news))
     }
 }
 

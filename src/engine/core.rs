@@ -2,16 +2,19 @@
 
 use std::sync::Arc;
 
-use crate::model::{Bank, BankIx, Measurement, Refusal, Time};
-use crate::notice::Delivery;
+use crate::model::{Bank, BankIx, Measurement, Reason, Refusal, Time};
+use crate::notice::{Delivery, Detail, Notice, Trouble};
 use crate::verdict::{Finding, Look, Need};
 
 use super::bank::{SILENCE_EVERY_US, Watched};
+use super::judge::Intake;
 use super::look::{Freshness, Looked};
 use super::restore::{self, RestoreError, checkpoint};
 use super::send::{Moment, Post};
 use super::view;
-use super::{Condition, Due, Effect, Event, Part, Plant, Record, RefusalView, Snapshot, Turn};
+use super::{
+    Condition, Due, Effect, Event, Judged, Part, Plant, Record, RefusalView, Snapshot, Turn,
+};
 
 /// A bank writes its whole state at least this often.
 const CHECKPOINT_EVERY_US: i64 = 600_000_000;
@@ -23,6 +26,8 @@ pub struct Engine {
     last_turn: u64,
     post: Post,
     broker: Condition,
+    /// Since when it is as it is.
+    broker_since: Time,
     store: Condition,
     refusals: Vec<RefusalView>,
     changed: bool,
@@ -40,6 +45,7 @@ impl Engine {
             banks: banks.into_iter().map(Watched::new).collect(),
             last_turn: 0,
             broker: Condition::Starting,
+            broker_since: Time::from_us(0),
             store: Condition::Starting,
             refusals: Vec::new(),
             changed: true,
@@ -147,7 +153,7 @@ impl Engine {
             }
             Event::Condition { part, condition } => {
                 match part {
-                    Part::Broker => self.broker = condition,
+                    Part::Broker => self.broker_is(condition, now),
                     Part::Store => self.store = condition,
                 }
                 (None, Vec::new())
@@ -176,6 +182,9 @@ impl Engine {
             match bank.accept(&m, now) {
                 Ok(()) => {
                     bank.mark(number);
+                    if let Some(taken) = m.taken {
+                        bank.senses.timed(&m.source, taken, now);
+                    }
                     let called = bank.watch(&self.plant, now);
                     kept.push(m);
                     if let Some(called) = called {
@@ -183,6 +192,9 @@ impl Engine {
                     }
                 }
                 Err(reason) => {
+                    if matches!(reason, Reason::TooFarAhead | Reason::TooOld) {
+                        bank.senses.refused(&m.source, now);
+                    }
                     let refusal = view::refusal_of(&m, reason, bank, now);
                     self.refuse(refusal, now);
                 }
@@ -219,15 +231,27 @@ impl Engine {
 
     fn what_is_due(&mut self, now: Time) -> Due {
         let mut due = Due::default();
+        let intake = self.intake();
         for (b, bank) in self.banks.iter_mut().enumerate() {
             let ix = BankIx(b as u16);
             if bank.next_silence_check.is_none_or(|at| at <= now) {
                 bank.next_silence_check = Some(now.plus_us(SILENCE_EVERY_US));
                 due.silent
                     .extend(bank.fallen_silent(now).into_iter().map(|s| (ix, s)));
+                // Trouble of the whole plant is told once, with the first bank.
+                let intake = (b == 0).then_some(&intake);
+                let judged = bank.judge(&self.plant.manners, intake, now).into_iter();
+                due.conditions.extend(judged.map(|(kind, troubles)| Judged {
+                    bank: ix,
+                    kind,
+                    troubles,
+                }));
             }
             if bank.state.look_due.is_some_and(|at| at <= now) {
                 due.looks.push(ix);
+            }
+            if bank.wants_upkeep(&self.plant.manners, now) {
+                due.upkeep.push(ix);
             }
         }
         due.onward = self.post.due(&self.banks, &self.plant, now);
@@ -252,12 +276,38 @@ impl Engine {
             bank.mark(number);
             self.tell(b.index(), looked, number, now, effects);
         }
+        for judged in due.conditions.iter().filter(|j| open(j.bank)) {
+            let bank = &mut self.banks[judged.bank.index()];
+            let changed = bank.condition(&self.plant, judged, now);
+            bank.mark(number);
+            let kept = changed.map(|(notice, _)| notice);
+            self.keep_and_send(judged.bank.index(), kept, number, now, effects);
+        }
+        for &b in due.upkeep.iter().filter(|b| open(**b)) {
+            let bank = &mut self.banks[b.index()];
+            let changed = bank.upkeep(&self.plant.manners, now);
+            bank.mark(number);
+            self.keep_and_send(b.index(), changed, number, now, effects);
+        }
         for onward in due.onward.iter().filter(|o| open(o.bank)) {
             let bank = &mut self.banks[onward.bank.index()];
             self.post
                 .go_on(onward, bank, Moment { turn: number, now }, effects);
             bank.mark(number);
         }
+    }
+
+    fn keep_and_send(
+        &mut self,
+        b: usize,
+        changed: impl IntoIterator<Item = Arc<Notice>>,
+        number: u64,
+        now: Time,
+        effects: &mut Vec<Effect>,
+    ) {
+        let kept = changed.into_iter().map(Record::Notice);
+        effects.extend(kept.map(Effect::Keep));
+        self.send(b, number, now, effects);
     }
 
     /// What a look brought, as effects.
@@ -316,11 +366,40 @@ impl Engine {
             .collect()
     }
 
+    /// The broker is another than before.
+    fn broker_is(&mut self, condition: Condition, now: Time) {
+        if condition != self.broker {
+            self.broker_since = now;
+        }
+        self.broker = condition;
+        if matches!(self.broker, Condition::Trouble(_)) {
+            self.banks.iter_mut().for_each(Watched::lose_hearing);
+        }
+        // Also a plant that has never heard anything is told why.
+        if let Some(first) = self.banks.first_mut() {
+            first.next_silence_check.get_or_insert(now);
+        }
+    }
+
+    fn intake(&self) -> Intake {
+        match &self.broker {
+            Condition::Starting => Intake::Unknown,
+            Condition::Well | Condition::Noted(_) => Intake::Well,
+            Condition::Trouble(what) => Intake::Trouble(Trouble {
+                source: None,
+                since: self.broker_since,
+                detail: Detail::Intake(what.clone()),
+            }),
+        }
+    }
+
     /// When [`Event::Deadline`] should come next.
     pub fn next_deadline(&self) -> Option<Time> {
         let onward = self.post.next_due(&self.banks, &self.plant);
         let banks = self.banks.iter().filter_map(next_deadline);
-        banks.chain(onward).min()
+        let manners = &self.plant.manners;
+        let upkeep = self.banks.iter().filter_map(|b| b.next_upkeep(manners));
+        banks.chain(onward).chain(upkeep).min()
     }
 
     /// Looks at every bank with whatever is there, without consequences: what a rehearsal ends with.
@@ -374,7 +453,7 @@ impl Engine {
 }
 
 fn next_deadline(bank: &Watched) -> Option<Time> {
-    let began = bank.state.began?;
+    let began = bank.state.began.or(bank.next_silence_check)?;
     let checkpoint = bank
         .last_checkpoint
         .map(|at| at.plus_us(CHECKPOINT_EVERY_US));

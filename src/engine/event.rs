@@ -5,7 +5,7 @@ use std::sync::Arc;
 use serde::{Deserialize, Serialize};
 
 use crate::model::{BankIx, LineChange, LineEvent, Measurement, Name, Refusal, SourceIx, Time};
-use crate::notice::{Delivery, Notice};
+use crate::notice::{Deed, Delivery, Kind, Notice, Trouble};
 use crate::verdict::{Digest, Look};
 
 use super::condition::{Condition, Part};
@@ -59,7 +59,7 @@ pub enum Event {
 }
 
 /// What was due at a deadline.
-#[derive(Clone, Debug, Default, PartialEq, Eq, Serialize, Deserialize)]
+#[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
 pub struct Due {
     /// Sources that have fallen silent.
     pub silent: Vec<(BankIx, SourceIx)>,
@@ -67,6 +67,21 @@ pub struct Due {
     pub looks: Vec<BankIx>,
     /// Notices that go to a further outlet.
     pub onward: Vec<Onward>,
+    /// Banks to whose notices time brings something.
+    pub upkeep: Vec<BankIx>,
+    /// Conditions that have begun, changed or gone.
+    pub conditions: Vec<Judged>,
+}
+
+/// What a condition of a bank has come to.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+pub struct Judged {
+    /// The bank.
+    pub bank: BankIx,
+    /// Which condition.
+    pub kind: Kind,
+    /// What is wrong; nothing when it is gone.
+    pub troubles: Vec<Trouble>,
 }
 
 /// A notice that has stood unacknowledged for long enough, or whose outlet's shift has begun.
@@ -83,10 +98,12 @@ pub struct Onward {
 /// What a person can ask for.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub enum Command {
-    /// Acknowledge a notice.
-    Acknowledge {
+    /// Do something with a notice.
+    Notice {
         /// [`Notice::id`].
         notice: Name,
+        /// What.
+        deed: Deed,
         /// What the person wrote; may be empty.
         comment: String,
     },
@@ -114,8 +131,8 @@ pub enum Command {
 /// The answer to a command.
 #[derive(Clone, Debug, PartialEq)]
 pub enum Outcome {
-    /// Acknowledged; the notice as it stands now. Asking twice gives the same.
-    Acknowledged(Arc<Notice>),
+    /// Done; the notice as it stands now. Asking twice gives the same.
+    Notice(Arc<Notice>),
     /// Taken in; the line event as it is kept.
     Line(LineEvent),
     /// The bank's windows, sources in display order.

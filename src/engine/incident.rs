@@ -6,8 +6,7 @@ use serde::{Deserialize, Serialize};
 
 use crate::model::{Name, SourceIx, Time, address_name};
 use crate::notice::{
-    Acknowledgement, Compared, Facts, Happening, Kind, NamedSource, Notice, Priority, SPREAD_UNIT,
-    State, after,
+    Compared, Facts, Handling, Happening, Kind, NamedSource, Notice, Priority, SPREAD_UNIT, State,
 };
 use crate::stats::dist;
 use crate::verdict::{
@@ -19,9 +18,7 @@ use crate::window::Windows;
 use super::Plant;
 use super::apart::{Adjusted, Apart, farness};
 use super::bank::Watched;
-
-/// Updates of an open notice are sent at most this often.
-const SEND_EVERY_US: i64 = 10_000_000;
+use super::papers::Sent;
 
 /// A source whose values lie outside the limits this often makes the notice a high one.
 const MUCH_OUTSIDE: f64 = 0.01;
@@ -37,7 +34,7 @@ pub struct Incident {
     /// The newest place in the windows at the call: evidence of a return comes from later ones.
     pub called_at: i64,
     /// The notice as it was last sent, and when.
-    pub sent: Option<(Time, Arc<Notice>)>,
+    pub sent: Sent,
 }
 
 /// What an incident needs to know of its bank.
@@ -81,7 +78,7 @@ impl Incident {
             plant: about.plant.name.clone(),
             bank: about.watched.bank.name.clone(),
             kind: kind(call, about),
-            state: after(State::Normal, Happening::Occurs),
+            state: State::Normal,
             priority: Priority::Medium,
             sources: Vec::new(),
             unit: match call.aspect {
@@ -102,6 +99,7 @@ impl Incident {
                 address_name(&about.watched.bank.name)
             ),
             span: call.span,
+            handling: Handling::default(),
             pattern: call.causes.pattern.clone(),
             slip: call.causes.slip,
             common_movement: call.causes.common_movement,
@@ -117,13 +115,14 @@ impl Incident {
             apart,
             sent: None,
         };
+        incident.happen(Happening::Occurs, about.now);
         incident.tell(about);
         Some(incident)
     }
 
     /// Whether it still holds.
     pub fn is_active(&self) -> bool {
-        self.notice.state.is_active()
+        self.notice.holds()
     }
 
     /// The sources it is about now.
@@ -173,7 +172,7 @@ impl Incident {
             }
         }
         if self.apart.iter().all(|a| a.cleared) {
-            self.happen(Happening::Returns, about.now);
+            self.happen(about.plant.manners.returns(), about.now);
         }
         self.tell(about);
         back
@@ -252,27 +251,8 @@ impl Incident {
         self.called_at = self.called_at.max(from.saturating_sub(1));
     }
 
-    /// A person acknowledges; asking twice changes nothing.
-    pub fn acknowledge(&mut self, acknowledgement: Acknowledgement) {
-        let at = acknowledgement.at;
-        if after(self.notice.state, Happening::Acknowledged) == self.notice.state {
-            return;
-        }
-        Arc::make_mut(&mut self.notice).acknowledged = Some(acknowledgement);
-        self.happen(Happening::Acknowledged, at);
-    }
-
     fn happen(&mut self, happening: Happening, now: Time) {
-        let state = after(self.notice.state, happening);
-        if state == self.notice.state {
-            return;
-        }
-        let notice = Arc::make_mut(&mut self.notice);
-        notice.state = state;
-        notice.changed = now;
-        if happening == Happening::Returns {
-            notice.returned = Some(now);
-        }
+        Arc::make_mut(&mut self.notice).happen(happening, now);
     }
 
     /// Puts the present figures into the notice's fields and words.
@@ -382,29 +362,6 @@ impl Incident {
         let below = c.lower.map_or(0.0, |l| dist::normal::sf((mean - l) / sd));
         let above = c.upper.map_or(0.0, |u| dist::normal::sf((u - mean) / sd));
         below + above
-    }
-
-    /// Whether people should receive it now: another set, state or priority at once; another size
-    /// when it moved by more than half its interval; never sooner than ten seconds after the last.
-    pub fn wants_sending(&self, now: Time) -> bool {
-        let Some((at, last)) = &self.sent else {
-            return true;
-        };
-        let n = &self.notice;
-        let set = |n: &Notice| {
-            let mut names: Vec<Name> = n.sources.iter().map(|s| s.source.clone()).collect();
-            names.sort();
-            names
-        };
-        if n.state != last.state {
-            return true;
-        }
-        let moved = n.sources.iter().zip(&last.sources).any(|(a, b)| {
-            a.source == b.source && (a.deviation - b.deviation).abs() > (b.high - b.low) / 2.0
-        });
-        let told = |n: &Notice| n.adjustment.as_ref().map(|a| (a.stage(), a.effect));
-        let other = set(n) != set(last) || n.priority != last.priority || told(n) != told(last);
-        (other || moved) && now.us_since(*at) >= SEND_EVERY_US
     }
 }
 

@@ -27,6 +27,8 @@ pub struct Line {
     pub stopped: Option<LineEvent>,
     /// When it last started.
     pub started: Option<Time>,
+    /// When it was last changed over.
+    pub changed_over: Option<Time>,
     /// What it makes, since the first changeover.
     pub product: Option<Name>,
     /// Target and declared quantity of that product, where a changeover gave them.
@@ -77,7 +79,10 @@ impl Watched {
                     declared,
                 },
                 _,
-            ) => self.changeover(product, *target, *declared),
+            ) => {
+                self.changeover(product, *target, *declared);
+                self.state.line.changed_over = Some(event.at);
+            }
             (LineChange::Stop, _) => self.stop(event)?,
             (LineChange::Start, _) => self.start(event.at)?,
             _ => {}

@@ -3,13 +3,14 @@
 use std::sync::Arc;
 
 use crate::model::{Name, SourceIx, Time, topic_name};
-use crate::notice::Notice;
+use crate::notice::{Happening, Kind, Notice};
 use crate::verdict::watch::Watch;
 use crate::verdict::{Aspect, Call, Examination, Finding, Look, Need, cleared_margin};
 
 use super::Plant;
 use super::bank::Watched;
 use super::incident::{Incident, Surroundings};
+use super::papers::remember;
 
 /// A look is kept whole at least this often.
 const KEEP_LOOK_EVERY_US: i64 = 3_600_000_000;
@@ -74,7 +75,10 @@ impl Watched {
         // examination still holds the values of before.
         let active = || self.state.incidents.iter().filter(|i| i.is_active());
         let open: Vec<Aspect> = active().map(|i| i.aspect).collect();
-        let about: Vec<SourceIx> = active().flat_map(Incident::about).collect();
+        let mut about: Vec<SourceIx> = active().flat_map(Incident::about).collect();
+        // One source, one cause, one notice: silent and stuck go before anything else.
+        about.extend(self.out_of_judgement());
+        about.extend(self.stuck_now());
         let mut changed = self.follow(&occasion);
         if let Some(mut call) = exam.crossed.clone() {
             call.named.retain(|s| !about.contains(s));
@@ -167,16 +171,28 @@ impl Watched {
         let is_open = |s: &SourceIx| self.state.incidents.iter().any(|i| i.is_about(*s));
         call.named.retain(|s| !is_open(s));
         let id = self.notice_id(occasion.plant, occasion.now);
-        let incident = Incident::begin(&call, id, &occasion.at(self, &[]))?;
-        self.state.notices += 1;
-        *self.raised.entry(incident.notice.kind).or_insert(0) += 1;
+        let mut incident = Incident::begin(&call, id, &occasion.at(self, &[]))?;
+        self.state
+            .take_over(Arc::make_mut(&mut incident.notice), occasion.now);
+        if self.holds_back(incident.notice.kind, &occasion.plant.manners, occasion.now) {
+            Arc::make_mut(&mut incident.notice).happen(Happening::HeldBack, occasion.now);
+        }
+        self.note_raised(incident.notice.kind, occasion.now);
         let raised = (incident.notice.clone(), Freshness::Raised);
         self.state.incidents.push(incident);
         Some(raised)
     }
 
+    /// Counts a notice that was raised.
+    pub fn note_raised(&mut self, kind: Kind, now: Time) {
+        self.state.notices += 1;
+        self.state.tally.calls += u64::from(kind.is_call());
+        *self.raised.entry(kind).or_insert(0) += 1;
+        remember(&mut self.state.raised_at, kind, now);
+    }
+
     /// Bank, year in the plant's zone, running number.
-    fn notice_id(&self, plant: &Plant, now: Time) -> Name {
+    pub fn notice_id(&self, plant: &Plant, now: Time) -> Name {
         let year = now.to_jiff().map_or(0, |t| {
             i64::from(t.to_zoned_datetime(plant.zone.clone()).year())
         });

@@ -8,27 +8,35 @@ mod apart;
 mod bank;
 mod commands;
 mod condition;
+mod conditions;
 mod core;
 mod event;
 mod evidence;
 mod history;
 mod incident;
+mod judge;
+mod level;
 mod line;
+mod load;
 mod look;
 mod natural;
+mod papers;
 mod restore;
 mod send;
 mod snapshot;
 mod source;
+mod stuck;
 mod usual;
 mod view;
 mod watching;
 
 pub use self::core::Engine;
 pub use condition::{Condition, Part};
-pub use event::{Command, Due, Effect, Event, Onward, Outcome, Record, Ticket, Turn};
+pub use event::{Command, Due, Effect, Event, Judged, Onward, Outcome, Record, Ticket, Turn};
 pub use evidence::{Evidence, Premises, WatchSaid};
 pub use history::{History, HistoryError, Page};
+pub use load::Load;
+pub use papers::{Raised, Tally};
 pub use restore::RestoreError;
 pub use snapshot::{
     BankView, Cycles, OutletView, Plant, RefusalView, Snapshot, SourceState, SourceView, WatchView,

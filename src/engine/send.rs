@@ -11,9 +11,10 @@ use std::sync::Arc;
 use serde::{Deserialize, Serialize};
 
 use crate::model::{BankIx, Name, Time};
-use crate::notice::{Delivery, Notice, Way};
+use crate::notice::{Delivery, Notice, State, Way};
 
 use super::bank::Watched;
+use super::papers::{is_repeat, wants_sending};
 use super::{Effect, Onward, OutletView, Plant, Record};
 
 /// The outlets that have each open notice of a bank.
@@ -95,17 +96,18 @@ impl Post {
         at: Moment,
         effects: &mut Vec<Effect>,
     ) {
-        for incident in &mut bank.state.incidents {
-            if !incident.wants_sending(at.now) {
+        for (notice, sent) in bank.state.papers_mut() {
+            let again = is_repeat(notice, sent, &plant.manners, at.now);
+            if !again && !wants_sending(notice, sent, at.now) {
                 continue;
             }
-            let notice = incident.notice.clone();
-            let before = incident.sent.replace((at.now, notice.clone()));
+            let notice = notice.clone();
+            let before = sent.replace((at.now, notice.clone()));
             self.deliver(Way::Mqtt, &notice, at, effects);
             for route in &plant.routes {
                 let goes = match &before {
                     Some((_, before)) if self.told[b].has(&notice.id, &route.outlet) => {
-                        route.wants(before, &notice)
+                        again || route.wants(before, &notice)
                     }
                     _ => route.takes(&notice, &plant.zone, at.now),
                 };
@@ -115,11 +117,10 @@ impl Post {
                 }
             }
         }
-        let incidents = &mut bank.state.incidents;
-        incidents.retain(|i| i.notice.state.is_open());
+        bank.state.file_away();
         self.told[b]
             .0
-            .retain(|id, _| incidents.iter().any(|i| i.notice.id == *id));
+            .retain(|id, _| bank.state.papers().any(|n| n.id == *id));
     }
 
     /// Sends one notice to an outlet that does not have it yet. Its bank's look may have ended it, or
@@ -132,12 +133,11 @@ impl Post {
         effects: &mut Vec<Effect>,
     ) {
         let b = onward.bank.index();
-        let mut incidents = bank.state.incidents.iter();
-        let Some(incident) = incidents.find(|i| i.notice.id == onward.notice) else {
+        let mut papers = bank.state.papers();
+        let Some(notice) = papers.find(|n| n.id == onward.notice).cloned() else {
             return;
         };
-        let notice = incident.notice.clone();
-        let is_wanted = notice.acknowledged.is_none() && notice.state.is_active();
+        let is_wanted = notice.state == State::Unacknowledged;
         if is_wanted && !self.told[b].has(&notice.id, &onward.outlet) {
             self.told[b].note(&notice.id, &onward.outlet);
             self.deliver(Way::Outlet(onward.outlet.clone()), &notice, at, effects);
@@ -178,10 +178,10 @@ impl Post {
         banks: &'a [Watched],
         plant: &'a Plant,
     ) -> impl Iterator<Item = (Onward, Time)> + 'a {
-        let open = banks.iter().enumerate().flat_map(|(b, bank)| {
-            let incidents = bank.state.incidents.iter();
-            incidents.map(move |i| (b, &i.notice))
-        });
+        let open = banks
+            .iter()
+            .enumerate()
+            .flat_map(|(b, bank)| bank.state.papers().map(move |notice| (b, notice)));
         open.flat_map(move |(b, notice)| {
             plant.routes.iter().filter_map(move |route| {
                 if self.told[b].has(&notice.id, &route.outlet) {

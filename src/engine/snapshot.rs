@@ -7,11 +7,12 @@ use std::sync::Arc;
 use serde::{Deserialize, Serialize};
 
 use crate::model::{Bank, LineEvent, Name, Reason, Refusal, SourceIx, Time, Value};
-use crate::notice::{Kind, Notice, Route};
+use crate::notice::{Kind, Manners, Notice, Route};
 use crate::verdict::watch::{Figures, Progress, Reading};
-use crate::verdict::{Estimate, Look};
+use crate::verdict::{BudgetKept, Estimate, Look};
 
 use super::condition::Condition;
+use super::papers::Raised;
 
 /// What the engine knows of the plant besides its banks.
 #[derive(Clone, Debug)]
@@ -24,6 +25,8 @@ pub struct Plant {
     pub pages: String,
     /// Where notices go besides the broker, in the order of the configuration.
     pub routes: Vec<Route>,
+    /// Its manners with notices.
+    pub manners: Manners,
 }
 
 /// The present.
@@ -111,6 +114,10 @@ pub struct BankView {
     pub newest_taken: Option<Time>,
     /// Mean of all sources over [`BankView::shown_span`], in the unit.
     pub mean: Option<f64>,
+    /// Whether it kept its call budget; `None` before any time has passed.
+    pub kept: Option<BudgetKept>,
+    /// The newest notices raised, oldest first.
+    pub raised_at: Vec<Raised>,
 }
 
 /// The watch of a bank, now.
@@ -190,6 +197,9 @@ pub struct SourceView {
     pub sd_ratio: Option<Estimate>,
     /// The kinds of open notices that name it.
     pub named: Vec<Kind>,
+    /// Received minus taken, the median of the newest values, in microseconds; negative where its clock
+    /// is ahead.
+    pub lag_us: Option<i64>,
 }
 
 /// The last refusal of one kind, and how many there were.

@@ -4,9 +4,10 @@ use std::sync::Arc;
 
 use crate::model::{Measurement, Reason, Refusal, SourceIx, Time};
 use crate::notice::Notice;
-use crate::verdict::{Aspect, Look, SourceLook};
+use crate::verdict::{Aspect, BudgetKept, Came, Look, SourceLook, budget_kept};
 
 use super::bank::Watched;
+use super::conditions::Standing;
 use super::incident::Incident;
 use super::{BankView, Condition, Cycles, Plant, RefusalView, Snapshot, SourceView, WatchView};
 
@@ -26,8 +27,8 @@ pub fn empty(plant: Arc<Plant>) -> Snapshot {
 /// A bank, now.
 pub fn bank_view(watched: &Watched) -> BankView {
     let state = &watched.state;
-    let mut open: Vec<Arc<Notice>> = state.incidents.iter().map(|i| i.notice.clone()).collect();
-    open.reverse();
+    let mut open: Vec<Arc<Notice>> = state.papers().cloned().collect();
+    open.sort_by_key(|n| std::cmp::Reverse(n.raised));
     let shown = shown_look(&state.looks, watched.bank.margin);
     let cycles = state.windows.blocks().map(|b| {
         let (closed, skipped, open) = b.counts();
@@ -63,7 +64,22 @@ pub fn bank_view(watched: &Watched) -> BankView {
         next_look: state.look_due,
         newest_taken: state.sources.iter().filter_map(|s| s.last_taken).max(),
         mean: shown.and_then(|l| mean(&l.sources)),
+        kept: kept(watched),
+        raised_at: state.raised_at.iter().copied().collect(),
     }
+}
+
+/// Until the newest moment that the bank knows of.
+fn kept(watched: &Watched) -> Option<BudgetKept> {
+    let state = &watched.state;
+    let tally = state.tally;
+    let came = Came {
+        calls: tally.calls,
+        told: tally.told,
+        nothing_found: tally.nothing_found,
+    };
+    let now = state.last_look.max(state.began)?;
+    budget_kept(watched.bank.budget, came, state.began?, now)
 }
 
 /// The look whose figures stand for "now": over the shortest span that still resolves half the
@@ -101,6 +117,12 @@ fn source_view(watched: &Watched, source: SourceIx, shown: Option<&Look>) -> Sou
     let deviation = followed(Aspect::Level).or(seen.and_then(|s| s.deviation));
     let sigma = shown.map_or(0.0, |l| l.sigma);
     let about = |i: &&Incident| i.is_about(source);
+    let incidents = watched.state.incidents.iter().filter(about);
+    let incidents = incidents.map(|i| i.notice.kind);
+    let names =
+        |c: &&Standing| c.notice.holds() && c.notice.sources.iter().any(|s| s.source == known.name);
+    let conditions = watched.state.conditions.iter().filter(names);
+    let conditions = conditions.map(|c| c.notice.kind);
     SourceView {
         source,
         name: known.name.clone(),
@@ -112,13 +134,8 @@ fn source_view(watched: &Watched, source: SourceIx, shown: Option<&Look>) -> Sou
         deviation,
         deviation_sigmas: deviation.filter(|_| sigma > 0.0).map(|d| d.value / sigma),
         sd_ratio: followed(Aspect::Spread).or(seen.and_then(|s| s.sd_ratio)),
-        named: watched
-            .state
-            .incidents
-            .iter()
-            .filter(about)
-            .map(|i| i.notice.kind)
-            .collect(),
+        named: incidents.chain(conditions).collect(),
+        lag_us: watched.senses.lag_us(&known.name),
     }
 }
 

@@ -101,13 +101,13 @@ impl Watched {
         (0..self.state.sources.len()).map(place).collect()
     }
 
-    /// Which sources the watch compares: those that take part and that no open notice is about.
+    /// Which sources the watch compares: those that take part and that no open notice is
+    /// about; a silent one is compared while it delivers.
     fn compared(&self) -> Vec<bool> {
         let mut compared: Vec<bool> = self.state.sources.iter().map(|s| s.takes_part()).collect();
-        for incident in &self.state.incidents {
-            for source in incident.about() {
-                compared[source.index()] = false;
-            }
+        let about = self.state.incidents.iter().flat_map(|i| i.about());
+        for source in about.chain(self.out_of_judgement()) {
+            compared[source.index()] = false;
         }
         compared
     }

@@ -5,6 +5,8 @@
 //! (that is `verdict`).
 
 mod advice;
+mod condition_words;
+mod handling;
 mod life;
 mod record;
 mod route;
@@ -13,7 +15,9 @@ mod tests;
 mod wire;
 mod words;
 
-pub use life::{Happening, TRANSITIONS, after};
+pub use condition_words::{ConditionFacts, Detail, Trouble};
+pub use handling::{Act, CallOutcome, Deed, Entry, Handling, Latching, Manners, Said, Shelving};
+pub use life::{ASIDE, Aside, BENEATH, DESIGN, Design, Happening, Life};
 pub use record::{
     Acknowledgement, Adjustment, Delivery, Kind, NamedSource, Notice, Priority, Since, State, Way,
 };

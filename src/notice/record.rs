@@ -7,6 +7,8 @@ use serde::{Deserialize, Serialize};
 use crate::model::{Name, Time};
 use crate::verdict::{Effect, Estimate, Pattern, Slip};
 
+use super::Handling;
+
 /// What a notice is about.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord, Hash, Serialize, Deserialize)]
 #[serde(rename_all = "snake_case")]
@@ -41,6 +43,11 @@ impl Kind {
         Self::ClockWrong,
         Self::IntakeTrouble,
     ];
+
+    /// Whether it is called within the call budget, or is a condition outside it.
+    pub const fn is_call(self) -> bool {
+        matches!(self, Self::LevelApart | Self::SpreadApart | Self::BankSplit)
+    }
 
     /// The word in topics, metrics and interfaces.
     pub const fn word(self) -> &'static str {
@@ -118,9 +125,21 @@ impl State {
         }
     }
 
-    /// Whether the condition still holds.
+    /// Every state.
+    pub const ALL: [Self; 7] = [
+        Self::Normal,
+        Self::Unacknowledged,
+        Self::Acknowledged,
+        Self::ReturnedUnacknowledged,
+        Self::Shelved,
+        Self::Suppressed,
+        Self::OutOfService,
+    ];
+
+    /// Whether the condition holds and nobody has set the notice aside ([`Notice::holds`] asks the
+    /// first alone).
     pub const fn is_active(self) -> bool {
-        !matches!(self, Self::Normal | Self::ReturnedUnacknowledged)
+        matches!(self, Self::Unacknowledged | Self::Acknowledged)
     }
 
     /// Whether the notice still asks for anything: not [`State::Normal`].
@@ -227,6 +246,8 @@ pub struct Notice {
     pub url: String,
     /// The span of the look that called.
     pub span: usize,
+    /// What people did with it.
+    pub handling: Handling,
     /// The machine's geometry explains it; level only.
     pub pattern: Option<Pattern>,
     /// All sources read as others; level only.

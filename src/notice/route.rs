@@ -123,6 +123,7 @@ mod tests {
             advice: String::new(),
             url: String::new(),
             span: 40,
+            handling: crate::notice::Handling::default(),
             pattern: None,
             slip: None,
             common_movement: None,

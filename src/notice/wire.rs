@@ -9,7 +9,9 @@ use serde::Serialize;
 use crate::model::Time;
 use crate::verdict::{Pattern, Slip};
 
-use super::{Acknowledgement, Adjustment, Kind, NamedSource, Notice, Priority, Since, State};
+use super::{
+    Acknowledgement, Adjustment, CallOutcome, Kind, NamedSource, Notice, Priority, Since, State,
+};
 
 /// The `data` of a notice's event, and a notice in the interface.
 #[derive(Clone, Copy, Debug, PartialEq, Serialize)]
@@ -50,6 +52,10 @@ pub struct NoticeData<'a> {
     pub acknowledged: Option<&'a Acknowledgement>,
     /// Values per source in the look that called.
     pub span: usize,
+    /// Until when it is shelved; null while it is not.
+    pub shelved_until: Option<Time>,
+    /// What came of it; null while nobody has said.
+    pub outcome: Option<CallOutcome>,
     /// What in the machine's geometry explains it; null when nothing does.
     pub pattern: Option<PatternData<'a>>,
     /// By how many places all sources seem to have slipped; null when they do not.
@@ -129,6 +135,7 @@ impl<'a> NoticeData<'a> {
             advice,
             url,
             span,
+            handling,
             pattern,
             slip,
             common_movement,
@@ -155,6 +162,8 @@ impl<'a> NoticeData<'a> {
             returned: *returned,
             acknowledged: acknowledged.as_ref(),
             span: *span,
+            shelved_until: handling.shelved_until,
+            outcome: handling.outcome,
             pattern: pattern.as_ref().map(PatternData::of),
             slip: *slip,
             common_movement: *common_movement,
@@ -205,6 +214,7 @@ mod tests {
             advice: "Check valve 07.".into(),
             url: "http://127.0.0.1:7310/banks/filler-2".into(),
             span: 40,
+            handling: crate::notice::Handling::default(),
             pattern: Some(Pattern {
                 kind: PatternKind::Wave {
                     highest: "01".into(),
@@ -267,6 +277,8 @@ mod tests {
             "returned": null,
             "acknowledged": {"by": "Ana", "at": "1970-01-01T00:03:00Z", "comment": ""},
             "span": 40,
+            "shelved_until": null,
+            "outcome": null,
             "pattern": {
                 "kind": "wave",
                 "words": "one wave around the ring",

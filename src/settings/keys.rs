@@ -42,6 +42,7 @@ pub(super) const KEYS: &[Key] = &[
     key("", "broker", "[broker]", "the section about the MQTT broker"),
     key("", "store", "[store]", "the section about the embedded store"),
     key("", "web", "[web]", "the section about pages and interface"),
+    key("", "notices", "[notices]", "the section about the manners with notices"),
     key("", "bank", "[[bank]]", "one section for each bank"),
     key("", "outlet", "[[outlet]]", "one section for each way out of a notice besides the broker"),
     key("plant", "name", "\"Quayside\"", "the plant's name, in notices, pages and topics"),
@@ -70,6 +71,12 @@ pub(super) const KEYS: &[Key] = &[
     key("web", "key_file", "\"/etc/evenrow/web.key\"", "the key of that certificate (PEM)"),
     key("web", "address", "\"https://evenrow.example\"", "the address that notices link to, where it is not that of `listen`"),
     key("web", "tls_in_front", "true", "the word that something in front of evenrow encrypts; without a certificate needed beyond loopback"),
+    key("notices", "longest_shelving", "\"8h\"", "how long a notice may be shelved at most"),
+    key("notices", "latching", "false", "whether a notice that returned wants to be acknowledged even where it was before"),
+    key("notices", "repeat_after", "\"4h\"", "after how long an unacknowledged notice is sent again; without it never"),
+    key("notices", "on_delay", "\"30s\"", "how long a source must be silent, stuck or wrong in time before people are told"),
+    key("notices", "off_delay", "\"30s\"", "how long it must be well again before its notice returns"),
+    key("notices", "settling", "\"2min\"", "how long notices are held back after a start or a changeover"),
     key("outlet", "name", "\"maintenance\"", "the outlet's name, in pages, metrics and logs"),
     key("outlet", "way", "\"webhook\"", "how notices leave: \"webhook\", \"mail\" or \"command\""),
     key("outlet", "url", "\"https://desk.quayside.example/notices\"", "where to: the receiver of a webhook, or the mail server (smtp:// with STARTTLS, or smtps://)"),
@@ -218,7 +225,7 @@ pub(super) fn title(section: &str) -> String {
     match section {
         "" => "the file".to_owned(),
         "bank" | "outlet" | "plant.shift" => format!("[[{section}]]"),
-        "plant" | "broker" | "store" | "web" => format!("[{section}]"),
+        "plant" | "broker" | "store" | "web" | "notices" => format!("[{section}]"),
         inner => format!("`{}`", inner.trim_start_matches("bank.")),
     }
 }

@@ -11,6 +11,7 @@ use std::path::PathBuf;
 use crate::model::{
     Bank, Characteristic, Layout, Name, Offsets, Pairing, Sources, US_PER_DAY, Value,
 };
+use crate::notice::{Latching, Manners};
 
 use super::check::words;
 use super::fault::Place;
@@ -163,6 +164,7 @@ impl Settings {
             broker,
             store,
             web,
+            manners,
             banks,
             feeds,
             // Shown as given, below.
@@ -174,6 +176,7 @@ impl Settings {
             ("broker".to_owned(), broker_keys(broker)),
             ("store".to_owned(), store_keys(store)),
             ("web".to_owned(), web_keys(web)),
+            ("notices".to_owned(), notices_keys(manners)),
         ];
         for (bank, feed) in banks.iter().zip(feeds) {
             let section = format!("bank.{}", bank.name);
@@ -280,6 +283,28 @@ fn web_keys(web: &WebSettings) -> Keys {
         ("key_file", path(key_file.as_ref())),
         ("tls_in_front", tls_in_front.to_string()),
         ("address", address.clone().unwrap_or_default()),
+    ])
+}
+
+fn notices_keys(manners: &Manners) -> Keys {
+    let Manners {
+        longest_shelving_us,
+        latching,
+        repeat_after_us,
+        on_delay_us,
+        off_delay_us,
+        settling_us,
+    } = manners;
+    keys([
+        ("longest_shelving", words(*longest_shelving_us)),
+        ("latching", (*latching == Latching::On).to_string()),
+        (
+            "repeat_after",
+            repeat_after_us.map_or_else(String::new, words),
+        ),
+        ("on_delay", words(*on_delay_us)),
+        ("off_delay", words(*off_delay_us)),
+        ("settling", words(*settling_us)),
     ])
 }
 

@@ -9,6 +9,7 @@ use std::path::PathBuf;
 use std::sync::Arc;
 
 use crate::model::{Bank, BankIx, Name, Shift};
+use crate::notice::Manners;
 
 use super::forms::{Belief, PayloadForm};
 
@@ -25,6 +26,8 @@ pub struct Settings {
     pub store: StoreSettings,
     /// Pages and interface.
     pub web: WebSettings,
+    /// The plant's manners with notices.
+    pub manners: Manners,
     /// The banks; a [`BankIx`] is a place in this list.
     pub banks: Vec<Arc<Bank>>,
     /// Where each bank's measurements come from, in the same order.

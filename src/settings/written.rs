@@ -16,6 +16,7 @@ pub(super) struct Written {
     pub(super) broker: WrittenBroker,
     pub(super) store: WrittenStore,
     pub(super) web: WrittenWeb,
+    pub(super) notices: WrittenNotices,
     pub(super) banks: Field<Vec<WrittenBank>>,
     pub(super) outlets: Field<Vec<WrittenOutlet>>,
 }
@@ -69,6 +70,17 @@ pub(super) struct WrittenWeb {
     pub(super) key_file: Field<String>,
     pub(super) address: Field<String>,
     pub(super) tls_in_front: Field<bool>,
+}
+
+/// `[notices]`.
+pub(super) struct WrittenNotices {
+    pub(super) place: Place,
+    pub(super) longest_shelving: Field<String>,
+    pub(super) latching: Field<bool>,
+    pub(super) repeat_after: Field<String>,
+    pub(super) on_delay: Field<String>,
+    pub(super) off_delay: Field<String>,
+    pub(super) settling: Field<String>,
 }
 
 /// `[[bank]]`.
@@ -146,6 +158,7 @@ impl Written {
             broker: WrittenBroker::read(part(&mut top, "broker", faults), faults),
             store: WrittenStore::read(part(&mut top, "store", faults), faults),
             web: WrittenWeb::read(part(&mut top, "web", faults), faults),
+            notices: WrittenNotices::read(part(&mut top, "notices", faults), faults),
             banks: top
                 .sections("bank", "bank", faults)
                 .map(|list, _| each(list, faults, WrittenBank::read)),
@@ -250,6 +263,22 @@ impl WrittenWeb {
             key_file: s.text("key_file", faults),
             address: s.text("address", faults),
             tls_in_front: s.flag("tls_in_front", faults),
+        };
+        s.close(faults);
+        written
+    }
+}
+
+impl WrittenNotices {
+    fn read(mut s: Section, faults: &mut FaultList) -> Self {
+        let written = Self {
+            place: s.place.clone(),
+            longest_shelving: s.text("longest_shelving", faults),
+            latching: s.flag("latching", faults),
+            repeat_after: s.text("repeat_after", faults),
+            on_delay: s.text("on_delay", faults),
+            off_delay: s.text("off_delay", faults),
+            settling: s.text("settling", faults),
         };
         s.close(faults);
         written

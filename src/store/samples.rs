@@ -127,6 +127,7 @@ pub(super) fn notice(id: &str, raised: Time, state: State) -> Arc<Notice> {
         advice: "Check its valve.".to_owned(),
         url: "http://127.0.0.1:7310/banks/filler-2".to_owned(),
         span: 160,
+        handling: crate::notice::Handling::default(),
         pattern: None,
         slip: None,
         common_movement: None,

@@ -39,6 +39,13 @@ fn address(file: &str) -> String {
     format!("/assets/{file}?{mark:08x}")
 }
 
+/// The style sheet as text, for a page that is a file of its own.
+pub fn style() -> String {
+    let found = Files::get("style.css");
+    let bytes = found.map(|f| f.data.into_owned()).unwrap_or_default();
+    String::from_utf8_lossy(&bytes).into_owned()
+}
+
 /// Gives a file.
 pub async fn answer(Path(file): Path<String>) -> Response {
     let Some(found) = Files::get(&file) else {

@@ -3,7 +3,7 @@
 use crate::engine::{Command, Outcome};
 use crate::model::LineEvent;
 
-use super::acknowledge::{comment, person};
+use super::deeds::{comment, person};
 use super::problem::Problem;
 use super::site::{App, bank};
 use super::wire::LineEntryBody;
@@ -39,7 +39,7 @@ pub async fn submit(app: &App, name: &str, entry: &LineEntryBody) -> Result<Line
         Outcome::Line(event) => Ok(event),
         Outcome::NotFound(why) => Err(Problem::not_found(&why)),
         Outcome::Refused(why) => Err(Problem::conflict(&why)),
-        Outcome::Acknowledged(_) | Outcome::Windows(_) | Outcome::Evidence(_) => {
+        Outcome::Notice(_) | Outcome::Windows(_) | Outcome::Evidence(_) => {
             Err(Problem::internal("the answer was to another question"))
         }
     }

@@ -5,12 +5,15 @@
 //! alert on. A p-value below some line happens every few hours in an even bank; the call budget is
 //! kept by the engine, and `evenrow_notice_active` is its word.
 
+mod notices;
+
 use axum::extract::State;
 use axum::http::header;
 use axum::response::{IntoResponse, Response};
 use prometheus::{GaugeVec, IntCounterVec, IntGauge, IntGaugeVec, Opts, Registry, TextEncoder};
 
 use crate::engine::{BankView, Condition, Snapshot, SourceState};
+use crate::model::Time;
 use crate::notice::Kind;
 use crate::verdict::{Look, Method, TestEntry};
 
@@ -28,7 +31,7 @@ const LOOKED_FOR: [Kind; 2] = [Kind::LevelApart, Kind::SpreadApart];
 
 /// Gives the metrics.
 pub async fn answer(State(app): State<App>) -> Response {
-    match text(&app.now(), &app.site.durations) {
+    match text(&app.now(), &app.site.durations, app.site.clock.now()) {
         Ok(text) => {
             let kind = [(
                 header::CONTENT_TYPE,
@@ -47,12 +50,13 @@ pub async fn answer(State(app): State<App>) -> Response {
 ///
 /// # Errors
 /// When the library refuses a name or cannot encode.
-pub fn text(snapshot: &Snapshot, durations: &Durations) -> Result<String, MetricsError> {
+pub fn text(snapshot: &Snapshot, durations: &Durations, now: Time) -> Result<String, MetricsError> {
     let families = Families::new()?;
     families.fill_plant(snapshot);
     for view in &snapshot.banks {
         families.fill_bank(view);
     }
+    notices::fill(&families.registry, snapshot, now)?;
     for histogram in durations.histograms() {
         families.registry.register(Box::new(histogram))?;
     }

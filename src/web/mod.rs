@@ -8,15 +8,16 @@
 //! direction (a test checks it). Deliberately absent: any decision about sources.
 
 mod access;
-mod acknowledge;
 mod address;
 mod api;
 mod assets;
 mod certificate;
 mod days;
+mod deeds;
 mod dress;
 mod durations;
 mod format;
+pub mod handover;
 mod health;
 mod kept;
 mod limiting;

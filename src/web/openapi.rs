@@ -5,7 +5,7 @@ use utoipa::openapi::security::{HttpAuthScheme, HttpBuilder, SecurityScheme};
 use utoipa::{Modify, OpenApi};
 
 use super::api::form::Form;
-use super::api::{banks, explain, line, looks, notices, plant, stream};
+use super::api::{banks, deeds, explain, line, looks, notices, plant, stream};
 use super::problem::Problem;
 
 /// How tokens are sent.
@@ -36,7 +36,11 @@ impl Modify for Token {
         banks::list, banks::one, banks::sources, banks::source, banks::windows, banks::refusals,
         line::list, line::enter,
         explain::bank_explained, explain::evidence,
-        looks::list, looks::one, notices::list, notices::one, notices::acknowledge,
+        looks::list, looks::one,
+        notices::list, notices::one,
+        deeds::acknowledge, deeds::comment, deeds::shelve, deeds::unshelve, deeds::out_of_service,
+        deeds::in_service,
+        super::pages::handover::data,
         plant::settings, plant::health, plant::refusals, stream::stream,
     ),
     components(schemas(Problem, Form)),

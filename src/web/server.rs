@@ -119,10 +119,9 @@ pub fn router(app: App) -> Router {
         .route("/about", get(pages::about::page))
         .route("/notices", get(pages::notices::list))
         .route("/notices/{id}", get(pages::notice::page))
-        .route(
-            "/notices/{id}/acknowledge",
-            post(pages::notice::acknowledge),
-        )
+        .route("/notices/{id}/{deed}", post(pages::deeds::enter))
+        .route("/handover", get(pages::handover::page))
+        .route("/api/v1/handover", get(pages::handover::data))
         .route("/live", get(live::stream))
         .route("/metrics", get(metrics::answer))
         .route("/api/v1/openapi.json", get(openapi::answer))

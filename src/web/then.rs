@@ -35,6 +35,8 @@ pub fn view(now: &BankView, looks: Vec<Look>, notices: Vec<Notice>) -> BankView 
         interval_us: None,
         next_look: None,
         newest_taken: None,
+        kept: None,
+        raised_at: Vec::new(),
     }
 }
 
@@ -59,5 +61,6 @@ fn source(now: &SourceView, shown: Option<&Look>, notices: &[Notice]) -> SourceV
         deviation_sigmas: deviation.filter(|_| sigma > 0.0).map(|d| d.value / sigma),
         sd_ratio: seen.and_then(|s| s.sd_ratio),
         named,
+        lag_us: None,
     }
 }

@@ -2,7 +2,7 @@
 
 use evenrow::engine::{Command, Effect, Event, Record, Ticket, Turn};
 use evenrow::model::{Name, Shift, US_PER_S};
-use evenrow::notice::{Priority, Route, State, Updates};
+use evenrow::notice::{Deed, Priority, Route, State, Updates};
 
 use crate::line::{Line, bank, even};
 
@@ -50,8 +50,9 @@ fn sent(line: &Line, way: &str) -> Vec<(i64, State)> {
 
 fn acknowledge(line: &mut Line) {
     let notice = line.raised()[0].clone();
-    let what = Command::Acknowledge {
+    let what = Command::Notice {
         notice,
+        deed: Deed::Acknowledge(None),
         comment: String::new(),
     };
     line.handle(Event::Command {

@@ -47,6 +47,7 @@ fn run(name: &str) -> Run {
         zone: settings.plant.zone.clone(),
         pages: settings.pages(),
         routes: Vec::new(),
+        manners: evenrow::notice::Manners::default(),
     };
     let how = How {
         banks: settings.banks.iter().map(|b| b.name.clone()).collect(),

@@ -98,6 +98,7 @@ fn settings(broker: Broker) -> Arc<Settings> {
             key_file: None,
             address: None,
         },
+        manners: evenrow::notice::Manners::default(),
         banks: vec![Arc::new(bank)],
         feeds: vec![feed],
         outlets: Vec::new(),

@@ -54,6 +54,7 @@ pub fn delivery(number: u64, id: &str, state: State) -> Delivery {
         even_mean: None,
         cost_per_hour: None,
         adjustment: None,
+        handling: evenrow::notice::Handling::default(),
     };
     Delivery {
         number,

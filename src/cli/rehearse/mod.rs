@@ -108,6 +108,7 @@ fn conductor(settings: &Settings) -> Conductor {
         pages: settings.pages(),
         // Nothing leaves a rehearsal.
         routes: Vec::new(),
+        manners: settings.manners.clone(),
     };
     Conductor::new(Engine::new(plant, settings.banks.clone()))
 }

@@ -106,6 +106,7 @@ fn plant(settings: &Settings) -> String {
         broker,
         store,
         web,
+        manners: _,
         banks: _,
         feeds: _,
         outlets,

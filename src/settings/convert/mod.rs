@@ -9,6 +9,7 @@ mod belief;
 mod broker;
 mod feed;
 mod known;
+mod notices;
 mod outlet;
 mod payload;
 mod payload_named;
@@ -41,6 +42,7 @@ pub(super) fn used(written: Written, origins: Origins, faults: &mut FaultList) -
         broker,
         store,
         web,
+        notices,
         banks,
         outlets,
     } = written;
@@ -49,6 +51,7 @@ pub(super) fn used(written: Written, origins: Origins, faults: &mut FaultList) -
     let broker = broker::broker(broker, name.as_deref().unwrap_or_default(), faults);
     let store = plant::store(store, faults);
     let web = plant::web(web, faults);
+    let manners = notices::manners(notices, faults);
     let zone = plant
         .as_ref()
         .map_or(TimeZone::UTC, |plant| plant.zone.clone());
@@ -61,6 +64,7 @@ pub(super) fn used(written: Written, origins: Origins, faults: &mut FaultList) -
         broker: broker?,
         store: store?,
         web: web?,
+        manners,
         banks,
         feeds,
         outlets: outlets?,

@@ -138,7 +138,7 @@ pub async fn windows(
         }
         Outcome::NotFound(why) => Err(Problem::not_found(&why)),
         Outcome::Refused(why) => Err(Problem::unavailable(&why)),
-        Outcome::Acknowledged(_) | Outcome::Line(_) | Outcome::Evidence(_) => {
+        Outcome::Notice(_) | Outcome::Line(_) | Outcome::Evidence(_) => {
             Err(Problem::internal("the answer was to another question"))
         }
     }

@@ -59,7 +59,7 @@ pub async fn bank_explained(
         Outcome::Evidence(evidence) => Ok(Json(ExplanationBody::of_evidence(&evidence, None))),
         Outcome::NotFound(why) => Err(Problem::not_found(&why)),
         Outcome::Refused(why) => Err(Problem::unavailable(&why)),
-        Outcome::Acknowledged(_) | Outcome::Line(_) | Outcome::Windows(_) => {
+        Outcome::Notice(_) | Outcome::Line(_) | Outcome::Windows(_) => {
             Err(Problem::internal("the answer was to another question"))
         }
     }

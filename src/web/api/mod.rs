@@ -5,6 +5,7 @@
 
 pub mod answers;
 pub mod banks;
+pub mod deeds;
 pub mod explain;
 pub mod form;
 pub mod line;
@@ -42,5 +43,10 @@ pub fn router() -> Router<App> {
         .route("/notices/{id}/evidence", get(explain::evidence))
         .layer(from_fn(unchanged::layer))
         .route("/stream", get(stream::stream))
-        .route("/notices/{id}/acknowledge", post(notices::acknowledge))
+        .route("/notices/{id}/acknowledge", post(deeds::acknowledge))
+        .route("/notices/{id}/comment", post(deeds::comment))
+        .route("/notices/{id}/shelve", post(deeds::shelve))
+        .route("/notices/{id}/unshelve", post(deeds::unshelve))
+        .route("/notices/{id}/out-of-service", post(deeds::out_of_service))
+        .route("/notices/{id}/in-service", post(deeds::in_service))
 }

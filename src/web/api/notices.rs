@@ -1,7 +1,7 @@
-//! Notices, and acknowledging them.
+//! Notices.
 
 use axum::Json;
-use axum::extract::rejection::{JsonRejection, QueryRejection};
+use axum::extract::rejection::QueryRejection;
 use axum::extract::{Path, Query, State};
 use axum::http::{HeaderMap, Uri};
 use axum::response::Response;
@@ -11,12 +11,11 @@ use utoipa::IntoParams;
 use crate::engine::{History, HistoryError, Page};
 use crate::model::Time;
 use crate::notice::Notice;
-use crate::web::acknowledge::submit;
 use crate::web::problem::Problem;
 use crate::web::site::App;
-use crate::web::wire::{AcknowledgeBody, List, NoticeBody};
+use crate::web::wire::{List, NoticeBody};
 
-use super::answers::{Faults, Usual};
+use super::answers::Usual;
 use super::form::{Form, Wish};
 use super::times;
 
@@ -43,6 +42,8 @@ pub struct NoticesWanted {
     kind: Option<String>,
     /// Only in this state, in the word of `state`.
     state: Option<String>,
+    /// Only of this priority: `low`, `medium` or `high`.
+    priority: Option<String>,
     /// Raised at or after this time (RFC 3339).
     #[param(value_type = Option<String>, format = DateTime)]
     from: Option<String>,
@@ -64,6 +65,7 @@ struct Filter {
     source: Option<String>,
     kind: Option<String>,
     state: Option<String>,
+    priority: Option<String>,
     from: Option<Time>,
     to: Option<Time>,
 }
@@ -75,6 +77,7 @@ impl Filter {
         same(&self.bank, &notice.bank)
             && same(&self.kind, notice.kind.word())
             && same(&self.state, notice.state.word())
+            && same(&self.priority, notice.priority.word())
             && self.source.as_ref().is_none_or(names)
             && self.from.is_none_or(|from| notice.raised >= from)
             && self.to.is_none_or(|to| notice.raised < to)
@@ -129,6 +132,7 @@ pub async fn list(
         source: wanted.source,
         kind: wanted.kind,
         state: wanted.state,
+        priority: wanted.priority,
         from: times::read("from", wanted.from)?,
         to: times::read("to", wanted.to)?,
     };
@@ -146,20 +150,5 @@ pub async fn one(
     Path(id): Path<String>,
 ) -> Result<Json<NoticeBody>, Problem> {
     let notice = app.notice(&app.now(), &id).await?;
-    Ok(Json(NoticeBody::from(notice.as_ref())))
-}
-
-/// Acknowledges a notice. Asking twice gives the same.
-#[utoipa::path(post, operation_id = "acknowledge_notice", path = "/api/v1/notices/{id}/acknowledge", tag = "notices",
-    params(("id" = String, Path, description = "The notice's id")),
-    request_body = AcknowledgeBody, security(("token" = [])),
-    responses((status = 200, description = "As it is now.", body = NoticeBody), Faults))]
-pub async fn acknowledge(
-    State(app): State<App>,
-    Path(id): Path<String>,
-    said: Result<Json<AcknowledgeBody>, JsonRejection>,
-) -> Result<Json<NoticeBody>, Problem> {
-    let Json(said) = said.map_err(|e| Problem::new(e.status(), &e.body_text()))?;
-    let notice = submit(&app, &id, &said.by, &said.comment).await?;
     Ok(Json(NoticeBody::from(notice.as_ref())))
 }

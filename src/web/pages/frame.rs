@@ -79,6 +79,7 @@ pub fn render(scene: &Scene<'_>, page: Page) -> Markup {
                     p class="plant" { (plant) }
                     nav aria-label="Pages" {
                         (way("/", "Plant", page.way)) (way("/notices", "Notices", page.way))
+                        (way("/handover", "Handover", page.way))
                         (way("/settings", "Settings", page.way)) (way("/about", "About", page.way))
                         (sign(scene))
                     }

@@ -6,7 +6,9 @@
 
 pub mod about;
 pub mod bank;
+pub mod deeds;
 pub mod frame;
+pub mod handover;
 mod history;
 mod letters;
 pub mod line;

@@ -1,14 +1,11 @@
 //! One notice: as a card on its bank's page, and as a page of its own; acknowledging it.
 
-use axum::extract::{Extension, Form, Path, State};
-use axum::response::{IntoResponse, Redirect, Response};
+use axum::extract::{Extension, Path, State};
 use maud::{Markup, html};
-use serde::Deserialize;
 
 use crate::model::signed;
-use crate::notice::{Kind, Notice, State as NoticeState};
-use crate::web::access::{Caller, SessionPass};
-use crate::web::acknowledge::submit;
+use crate::notice::{Act, Entry, Kind, Notice};
+use crate::web::access::Caller;
 use crate::web::address::{self, percent};
 use crate::web::format;
 use crate::web::pictures::glyph::{self, Glyph};
@@ -95,7 +92,7 @@ pub fn card(scene: &Scene<'_>, notice: &Notice, place: Place) -> Markup {
             @if !notice.advice.is_empty() { p class="advice" { strong { "To do " } (notice.advice) } }
             p class="text" { (rest_of_text(notice)) }
             (course(scene, notice))
-            (acknowledge_part(scene, notice))
+            (super::deeds::part(scene, notice))
         }
     }
 }
@@ -116,6 +113,7 @@ fn named(scene: &Scene<'_>, notice: &Notice) -> Markup {
     let what = found.map(|(_, view)| &view.bank.characteristic);
     let figure = |x: f64| match (notice.kind, what) {
         (Kind::SpreadApart, _) => format!("{}×", format::plain(x, 2)),
+        (kind, _) if !kind.is_call() => format!("{} {}", format::plain(x, 0), notice.unit),
         (_, Some(what)) => format!("{} {}", what.deviation(x), notice.unit),
         (_, None) => format!("{} {}", signed(x, 3), notice.unit),
     };
@@ -124,7 +122,7 @@ fn named(scene: &Scene<'_>, notice: &Notice) -> Markup {
             ul class="named" {
                 @for source in &notice.sources {
                     li { strong { a href=(address::source(&notice.bank, &source.source)) { (source.source) } } " " span class="figure" { (figure(source.deviation)) }
-                        " " span class="quiet" { (figure(source.low)) " to " (figure(source.high)) } }
+                        @if source.low != source.high { " " span class="quiet" { (figure(source.low)) " to " (figure(source.high)) } } }
                 }
             }
         }
@@ -141,78 +139,32 @@ fn course(scene: &Scene<'_>, notice: &Notice) -> Markup {
                 @if since.earliest != since.latest {
                     span class="quiet" { " between " (times.second(since.earliest)) " and " (times.second(since.latest)) } } } }
             div { dt { "called" } dd { (scene.time(notice.raised, &times.full(notice.raised)))
-                span class="quiet" { " by the look over " (notice.span) " values" } } }
+                @if notice.kind.is_call() { span class="quiet" { " by the look over " (notice.span) " values" } } } }
             @if let Some(at) = notice.returned { div { dt { "returned" } dd { (scene.time(at, &times.full(at))) } } }
             @if let Some(seen) = &notice.acknowledged {
                 div { dt { "acknowledged" } dd { (scene.time(seen.at, &times.full(seen.at))) " by " (seen.by)
                     @if !seen.comment.is_empty() { span class="comment" { "“" (seen.comment) "”" } } } }
             }
-        }
-    }
-}
-
-fn awaits(state: NoticeState) -> bool {
-    matches!(
-        state,
-        NoticeState::Unacknowledged | NoticeState::ReturnedUnacknowledged
-    )
-}
-
-fn acknowledge_part(scene: &Scene<'_>, notice: &Notice) -> Markup {
-    html! {
-        @if awaits(notice.state) {
-            @match (&scene.caller.session, &scene.app.tokens) {
-                (Some(pass), _) if scene.caller.rights.act => (form(scene, notice, pass)),
-                (Some(_), _) => p class="quiet" { "Your token may only look; acknowledging needs one that may act." },
-                (None, Some(_)) => p { a class="button" href={ "/sign-in?next=" (percent(&scene.here)) } { "Sign in to acknowledge" } },
-                (None, None) => p class="quiet" { "To acknowledge here, give evenrow a token file: "
-                    code { "token_file" } " under " code { "[web]" } "." },
+            @for entry in notice.handling.entries.iter().filter(|e| e.act != Act::Acknowledged) {
+                div { dt { (act(scene, entry)) } dd { (scene.time(entry.at, &times.full(entry.at))) " by " (entry.by)
+                    @if !entry.comment.is_empty() { span class="comment" { "“" (entry.comment) "”" } } } }
             }
         }
     }
 }
 
-fn form(scene: &Scene<'_>, notice: &Notice, pass: &SessionPass) -> Markup {
-    let id = &notice.id;
-    html! {
-        details class="act" id={ "act-" (id) } {
-            summary class="button" { "Acknowledge" }
-            form class="entry" method="post" action={ (address::notice(id)) "/acknowledge" } {
-                input type="hidden" name="field" value=(pass.field);
-                input type="hidden" name="back" value=(scene.here);
-                label for={ "by-" (id) } { "Your name" }
-                input id={ "by-" (id) } name="by" required maxlength="80" autocomplete="name";
-                label for={ "comment-" (id) } { "Comment, if you like" }
-                textarea id={ "comment-" (id) } name="comment" rows="2" maxlength="2000" {}
-                button { "Acknowledge" }
-            }
-        }
+/// What an entry of the record says.
+fn act(scene: &Scene<'_>, entry: &Entry) -> String {
+    match entry.act {
+        Act::Acknowledged => "acknowledged".to_owned(),
+        Act::Shelved(until, _) => format!("shelved until {}", scene.times.second(until)),
+        Act::Unshelved => "unshelved".to_owned(),
+        Act::ShelvingOver => "shelving over".to_owned(),
+        Act::TakenOut => "out of service".to_owned(),
+        Act::PutBack => "back in service".to_owned(),
+        Act::Told(outcome) => outcome.words().to_owned(),
+        Act::Commented => "comment".to_owned(),
     }
-}
-
-/// The filled form.
-#[derive(Deserialize)]
-pub struct Filled {
-    field: String,
-    by: String,
-    #[serde(default)]
-    comment: String,
-    #[serde(default)]
-    back: String,
-}
-
-/// Takes the form; the guard has seen to it that the caller may act.
-pub async fn acknowledge(
-    State(app): State<App>,
-    Extension(caller): Extension<Caller>,
-    Path(id): Path<String>,
-    Form(filled): Form<Filled>,
-) -> Result<Response, Problem> {
-    let back = crate::web::address::local(&filled.back);
-    if press(&app, caller, &filled.field)? == Pressed::Once {
-        submit(&app, &id, &filled.by, &filled.comment).await?;
-    }
-    Ok(Redirect::to(&back).into_response())
 }
 
 /// Whether a form's button was pressed for the first time.

@@ -15,14 +15,15 @@ use std::collections::BTreeMap;
 use std::sync::Arc;
 
 use crate::engine::{
-    BankView, Condition, Cycles, OutletView, Plant, RefusalView, Snapshot, SourceState, SourceView,
+    BankView, Condition, Cycles, OutletView, Plant, Raised, RefusalView, Snapshot, SourceState,
+    SourceView,
 };
 use crate::model::{
     Bank, BankIx, Characteristic, Layout, LineChange, LineEvent, Offsets, Pairing, Reason, Refusal,
     SourceIx, Sources, Time, US_PER_DAY, US_PER_S, Value,
 };
 use crate::notice::{Kind, Notice};
-use crate::verdict::{Estimate, Look};
+use crate::verdict::{BudgetKept, Came, Estimate, Look, budget_kept};
 
 use looks::look;
 use notices::notice;
@@ -179,6 +180,7 @@ pub fn view(bank: Bank, story: Story, seed: u64) -> BankView {
             deviation_sigmas: judged.and_then(|s| Some(s.deviation?.value / 1.2)),
             sd_ratio: followed(Kind::SpreadApart).or(judged.and_then(|s| s.sd_ratio)),
             named: named.map(|n| n.kind).collect(),
+            lag_us: (values > 0).then_some(240_000),
         }
     });
     let mut outcomes = BTreeMap::new();
@@ -193,7 +195,6 @@ pub fn view(bank: Bank, story: Story, seed: u64) -> BankView {
     BankView {
         sources: sources.collect(),
         raised: open.iter().map(|n| (n.kind, 1)).collect(),
-        open,
         outcomes,
         stopped: None,
         product: None,
@@ -213,10 +214,33 @@ pub fn view(bank: Bank, story: Story, seed: u64) -> BankView {
         next_look: (values > 0).then(|| moment().plus_us(18 * US_PER_S)),
         newest_taken: (values > 0).then(|| moment().plus_us(-US_PER_S)),
         mean: now_look.is_some().then_some(target + 0.027 * bank.margin),
+        kept: kept(&bank, values),
+        raised_at: raised_at(&open),
         shown_span: now_look.map(|l| l.span),
+        open,
         looks,
         bank: Arc::new(bank),
     }
+}
+
+/// Forty days with two calls, one of them for nothing.
+fn kept(bank: &Bank, values: usize) -> Option<BudgetKept> {
+    let came = Came {
+        calls: 2,
+        told: 2,
+        nothing_found: 1,
+    };
+    let began = moment().plus_us(-40 * 86_400 * US_PER_S);
+    let kept = budget_kept(bank.budget, came, began, moment());
+    kept.filter(|_| values > 0)
+}
+
+fn raised_at(open: &[Arc<Notice>]) -> Vec<Raised> {
+    let raised = open.iter().map(|n| Raised {
+        at: n.raised,
+        kind: n.kind,
+    });
+    raised.collect()
 }
 
 fn refusals() -> Vec<RefusalView> {
@@ -325,6 +349,7 @@ pub fn snapshot() -> Snapshot {
             zone: jiff::tz::TimeZone::get("Europe/Lisbon").expect("bundled"),
             pages: "http://127.0.0.1:7310".to_owned(),
             routes: Vec::new(),
+            manners: crate::notice::Manners::default(),
         }),
         broker: Condition::Well,
         store: Condition::Well,

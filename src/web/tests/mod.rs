@@ -22,7 +22,7 @@ use tower::ServiceExt as _;
 use crate::clock::Clock;
 use crate::engine::{Command, Outcome, Snapshot, WindowView};
 use crate::model::{LineChange, LineEvent, Value};
-use crate::notice::{Acknowledgement, Notice, State};
+use crate::notice::{Manners, Notice, Said};
 use crate::settings::{
     Broker, Origins, PlantSettings, Protocol, Settings, StoreSettings, WebSettings,
 };
@@ -119,6 +119,7 @@ fn settings(token_file: Option<PathBuf>) -> Settings {
             key_file: None,
             address: None,
         },
+        manners: Manners::default(),
         banks: Vec::new(),
         feeds: Vec::new(),
         outlets: Vec::new(),
@@ -131,7 +132,11 @@ async fn engine(mut asks: mpsc::Receiver<Ask>, snapshot: watch::Receiver<Arc<Sna
     while let Some(Ask { who, what, reply }) = asks.recv().await {
         let now = snapshot.borrow().clone();
         let outcome = match what {
-            Command::Acknowledge { notice, comment } => {
+            Command::Notice {
+                notice,
+                deed,
+                comment,
+            } => {
                 let open = now
                     .banks
                     .iter()
@@ -139,15 +144,19 @@ async fn engine(mut asks: mpsc::Receiver<Ask>, snapshot: watch::Receiver<Arc<Sna
                     .find(|n| n.id == notice);
                 match open {
                     None => Outcome::NotFound(format!("there is no notice \"{notice}\"")),
-                    Some(found) => Outcome::Acknowledged(Arc::new(Notice {
-                        state: State::Acknowledged,
-                        acknowledged: Some(Acknowledgement {
+                    Some(found) => {
+                        let mut notice = Notice::clone(found);
+                        let at = sample::moment();
+                        let said = Said {
                             by: who,
-                            at: sample::moment(),
+                            at,
                             comment,
-                        }),
-                        ..Notice::clone(found)
-                    })),
+                        };
+                        match notice.act(deed, said, &now.plant.manners) {
+                            Ok(_) => Outcome::Notice(Arc::new(notice)),
+                            Err(why) => Outcome::Refused(why),
+                        }
+                    }
                 }
             }
             Command::Line { change, reason, .. } => match change.source() {

@@ -1,13 +1,13 @@
 //! Notices.
 
-use serde::{Deserialize, Serialize};
+use serde::Serialize;
 use utoipa::ToSchema;
 
 use crate::model::Time;
 use crate::notice::{Acknowledgement, Adjustment, NamedSource, Notice, Since};
 use crate::verdict::{Pattern, Slip};
 
-use super::{EstimateBody, finite, word};
+use super::{EntryBody, EstimateBody, finite, word};
 
 /// A source that a notice names.
 #[derive(Debug, Serialize, ToSchema)]
@@ -119,8 +119,17 @@ pub struct NoticeBody {
     pub advice: String,
     /// The bank's page.
     pub url: String,
-    /// The span of the look that called.
+    /// The span of the look that called; 0 for a condition.
     pub span: usize,
+    /// Whether the condition holds, whoever has set the notice aside.
+    pub holds: bool,
+    /// Until when it is shelved.
+    #[schema(value_type = Option<String>, format = DateTime)]
+    pub shelved_until: Option<Time>,
+    /// What came of it, as a person said.
+    pub outcome: Option<String>,
+    /// Who did what, oldest first.
+    pub log: Vec<EntryBody>,
     /// What in the machine's geometry explains it.
     pub pattern: Option<PatternBody>,
     /// By how many places all sources seem to have slipped.
@@ -174,6 +183,7 @@ impl From<&Notice> for NoticeBody {
             advice,
             url,
             span,
+            handling,
             pattern,
             slip,
             common_movement,
@@ -200,6 +210,10 @@ impl From<&Notice> for NoticeBody {
             advice: advice.clone(),
             url: url.clone(),
             span: *span,
+            holds: notice.holds(),
+            shelved_until: handling.shelved_until,
+            outcome: handling.outcome.map(|o| o.word().to_owned()),
+            log: handling.entries.iter().map(EntryBody::from).collect(),
             pattern: pattern.as_ref().map(pattern_body),
             slip: slip.map(slip_body),
             common_movement: common_movement.and_then(finite),
@@ -296,21 +310,4 @@ fn acknowledgement(Acknowledgement { by, at, comment }: &Acknowledgement) -> Ack
         at: *at,
         comment: comment.clone(),
     }
-}
-
-/// What an acknowledgement says.
-#[derive(Debug, Deserialize, ToSchema)]
-#[serde(deny_unknown_fields)]
-pub struct AcknowledgeBody {
-    /// The person's name, on one line.
-    #[schema(
-        min_length = 1,
-        max_length = 80,
-        pattern = "^[^\\x00-\\x1f\\x7f-\\x9f]*[^\\s\\x00-\\x1f\\x7f-\\x9f][^\\x00-\\x1f\\x7f-\\x9f]*$"
-    )]
-    pub by: String,
-    /// Anything worth saying.
-    #[schema(max_length = 2000)]
-    #[serde(default)]
-    pub comment: String,
 }
