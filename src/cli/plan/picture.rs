@@ -21,14 +21,17 @@ const TOP: f64 = 84.0;
 const BOTTOM: f64 = 388.0;
 
 /// Times that people read, in seconds.
-const TICKS_S: [f64; 16] = [
+const TICKS_S: [f64; 19] = [
     0.1,
     1.0,
     5.0,
     15.0,
+    30.0,
     60.0,
+    120.0,
     300.0,
-    900.0,
+    600.0,
+    1_800.0,
     3_600.0,
     14_400.0,
     28_800.0,

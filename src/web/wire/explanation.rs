@@ -4,7 +4,9 @@
 
 use std::fmt::Write as _;
 
-use serde::{Deserialize, Serialize};
+use serde::de::Error as _;
+use serde::{Deserialize, Deserializer, Serialize};
+use serde_json::value::RawValue;
 use utoipa::ToSchema;
 
 use crate::engine::{Evidence, Premises, WatchSaid, WindowView};
@@ -13,12 +15,28 @@ use crate::verdict::{Aspect, Examination, Finding, Look, Worked, WorkedPair, Wor
 
 use super::{finite, word};
 
+/// A figure to its last bit: serde_json's own reading of decimals may miss by one.
+fn exact<'de, D: Deserializer<'de>>(from: D) -> Result<f64, D::Error> {
+    let number: Box<RawValue> = Deserialize::deserialize(from)?;
+    number.get().parse().map_err(D::Error::custom)
+}
+
+/// The same where there may be none.
+fn exact_or_none<'de, D: Deserializer<'de>>(from: D) -> Result<Option<f64>, D::Error> {
+    let number: Box<RawValue> = Deserialize::deserialize(from)?;
+    match number.get() {
+        "null" => Ok(None),
+        text => text.parse().map(Some).map_err(D::Error::custom),
+    }
+}
+
 /// A figure on the way to a test's result.
 #[derive(Debug, Serialize, Deserialize, ToSchema)]
 pub struct StepBody {
     /// What it is.
     pub what: String,
     /// The figure.
+    #[serde(deserialize_with = "exact_or_none")]
     pub value: Option<f64>,
 }
 
@@ -43,18 +61,25 @@ pub struct WorkedPairBody {
     /// The other.
     pub below: String,
     /// Difference of their means, in the unit.
+    #[serde(deserialize_with = "exact_or_none")]
     pub difference: Option<f64>,
     /// Its standard error, dependence paid.
+    #[serde(deserialize_with = "exact_or_none")]
     pub std_error: Option<f64>,
     /// Degrees of freedom, dependence paid.
+    #[serde(deserialize_with = "exact_or_none")]
     pub df: Option<f64>,
     /// What does not matter between the two, in the unit.
+    #[serde(deserialize_with = "exact")]
     pub margin: f64,
     /// sqrt(2) (difference − margin) / standard error.
+    #[serde(deserialize_with = "exact_or_none")]
     pub q: Option<f64>,
     /// Probability of any pair as far beyond its margin.
+    #[serde(deserialize_with = "exact_or_none")]
     pub p: Option<f64>,
     /// Lower end of the simultaneous interval at the look's own level, in the unit.
+    #[serde(deserialize_with = "exact_or_none")]
     pub low: Option<f64>,
 }
 
@@ -64,6 +89,7 @@ pub struct PlaceBody {
     /// The source.
     pub source: String,
     /// Its mean about the origin, cycle means taken off where sources share cycles, in the unit.
+    #[serde(deserialize_with = "exact_or_none")]
     pub mean: Option<f64>,
     /// Whether it belongs to the even set.
     pub even: bool,
@@ -79,8 +105,10 @@ pub struct SpanBody {
     /// Why nothing could be concluded, or what to mind.
     pub remark: String,
     /// Probability of a false call that level may spend at this look.
+    #[serde(deserialize_with = "exact")]
     pub alpha_level: f64,
     /// The same for spread.
+    #[serde(deserialize_with = "exact")]
     pub alpha_spread: f64,
     /// The tests, deciding ones first.
     pub tests: Vec<WorkedTestBody>,
@@ -89,6 +117,7 @@ pub struct SpanBody {
     /// The sources by their means, lowest first.
     pub order: Vec<PlaceBody>,
     /// Error rate of the names.
+    #[serde(deserialize_with = "exact_or_none")]
     pub naming_alpha: Option<f64>,
 }
 
@@ -98,14 +127,18 @@ pub struct PartBody {
     /// `few`, `split`, `pair`, `erratic` or `quiet`.
     pub part: String,
     /// Its statistic, on the scale of standard deviations.
+    #[serde(deserialize_with = "exact_or_none")]
     pub statistic: Option<f64>,
     /// Its threshold there.
+    #[serde(deserialize_with = "exact_or_none")]
     pub threshold: Option<f64>,
     /// The source that it points to most.
     pub source: Option<String>,
     /// Its share of the call budget.
+    #[serde(deserialize_with = "exact_or_none")]
     pub share: Option<f64>,
     /// Mean number of cycles to a false call of this part alone.
+    #[serde(deserialize_with = "exact_or_none")]
     pub cycles_per_false_call: Option<f64>,
     /// The formula of its threshold.
     pub formula: Option<String>,
@@ -115,16 +148,22 @@ pub struct PartBody {
 #[derive(Debug, Serialize, Deserialize, ToSchema)]
 pub struct WatchApartBody {
     /// Standard deviation of a single value within its source, in the unit.
+    #[serde(deserialize_with = "exact_or_none")]
     pub sigma: Option<f64>,
     /// Correlation of neighbours.
+    #[serde(deserialize_with = "exact_or_none")]
     pub phi: Option<f64>,
     /// What of it was paid for.
+    #[serde(deserialize_with = "exact_or_none")]
     pub phi_paid: Option<f64>,
     /// The margin in standard deviations, dependence paid.
+    #[serde(deserialize_with = "exact_or_none")]
     pub margin_sd: Option<f64>,
     /// Mean number of cycles to a false call that the budget allows.
+    #[serde(deserialize_with = "exact_or_none")]
     pub cycles_per_false_call: Option<f64>,
     /// Degrees of freedom of sigma; none when it counts as known.
+    #[serde(deserialize_with = "exact_or_none")]
     pub df: Option<f64>,
     /// The part that called.
     pub called: Option<String>,
@@ -170,8 +209,10 @@ pub struct ExplanationBody {
     /// The budget as configured then.
     pub false_calls: Option<String>,
     /// The margin as configured then, in the unit.
+    #[serde(deserialize_with = "exact_or_none")]
     pub margin: Option<f64>,
     /// Time between looks, in seconds.
+    #[serde(deserialize_with = "exact_or_none")]
     pub look_every_s: Option<f64>,
     /// Whether the looks or the watch decided.
     pub decides: Option<String>,
