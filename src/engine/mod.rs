@@ -17,6 +17,7 @@ mod look;
 mod natural;
 mod restore;
 mod send;
+mod shifts;
 mod snapshot;
 mod source;
 mod usual;
@@ -29,7 +30,7 @@ pub use event::{Command, Due, Effect, Event, Onward, Outcome, Record, Ticket, Tu
 pub use history::{History, HistoryError, Page};
 pub use restore::RestoreError;
 pub use snapshot::{
-    BankView, Cycles, OutletView, Plant, RefusalView, Snapshot, SourceState, SourceView, WatchView,
-    WindowValue, WindowView,
+    BankView, Cycles, OutletView, Plant, RefusalView, RunningShift, ShiftsView, Snapshot,
+    SourceState, SourceView, WatchView, WindowValue, WindowView,
 };
 pub use view::shown_look;

@@ -7,7 +7,7 @@ use super::bank::{State, Watched};
 use super::send::Told;
 
 /// Version of the encoded state.
-const STATE_VERSION: u8 = 3;
+const STATE_VERSION: u8 = 4;
 
 /// Why a checkpoint cannot be gone on from.
 #[derive(Clone, Debug, PartialEq, Eq, thiserror::Error)]

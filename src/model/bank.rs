@@ -5,7 +5,7 @@ use std::str::FromStr;
 
 use serde::{Deserialize, Serialize};
 
-use super::{Name, US_PER_DAY, US_PER_S, Value};
+use super::{Calendar, Name, US_PER_DAY, US_PER_S, Value};
 
 /// A bank by its place in the configuration, from 0.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord, Hash, Serialize, Deserialize)]
@@ -50,7 +50,7 @@ pub struct Characteristic {
 }
 
 /// Which sources a bank has.
-#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+#[derive(Clone, Debug, PartialEq)]
 pub enum Sources {
     /// Named in physical order.
     Listed(Vec<Name>),
@@ -59,6 +59,20 @@ pub enum Sources {
         /// The configured `most_sources`.
         most: u16,
     },
+    /// The shifts that take turns on one machine. A value is the mean of one shift's production on one
+    /// day; what arrives belongs to the shift in which it was taken.
+    Shifts(Calendar),
+}
+
+impl Sources {
+    /// The names, where they are known beforehand, in their order.
+    pub fn names(&self) -> Option<Vec<Name>> {
+        match self {
+            Self::Listed(names) => Some(names.clone()),
+            Self::Shifts(calendar) => Some(calendar.names().cloned().collect()),
+            Self::Discover { .. } => None,
+        }
+    }
 }
 
 /// How values of different sources belong together.
@@ -73,6 +87,9 @@ pub enum Pairing {
     },
     /// Not at all.
     None,
+    // Kept states name a pairing by its place, so new ones come last.
+    /// By production day, where the sources are shifts.
+    Day,
 }
 
 impl Pairing {
@@ -189,7 +206,7 @@ impl fmt::Display for Budget {
 }
 
 /// A bank as the engine uses it.
-#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+#[derive(Clone, Debug, PartialEq)]
 pub struct Bank {
     /// Its name, unique in the plant.
     pub name: Name,
@@ -237,9 +254,11 @@ impl Bank {
     }
 
     /// Whether the watch decides when to call. It needs cycles that sources share, and places that are
-    /// known: learnt ones come with chance of their own, which only the look pays for.
+    /// known: learnt ones come with chance of their own, which only the look pays for. With one value a
+    /// day it would learn for years, so banks of shifts are left to the look with the whole budget.
     pub fn is_watched(&self) -> bool {
-        self.pairing.is_paired() && self.offsets != Offsets::Learn
+        let shares_cycles = matches!(self.pairing, Pairing::Cycle | Pairing::Slot { .. });
+        shares_cycles && self.offsets != Offsets::Learn
     }
 
     /// Looks per second, as the budget counts them.

@@ -35,6 +35,7 @@ pub fn view(now: &BankView, looks: Vec<Look>, notices: Vec<Notice>) -> BankView 
         interval_us: None,
         next_look: None,
         newest_taken: None,
+        shifts: None,
     }
 }
 
