@@ -4,6 +4,7 @@
 //! Deliberately absent: clocks, files, formats, statistics.
 
 mod bank;
+mod calendar;
 mod figures;
 mod line_event;
 mod reason;
@@ -15,6 +16,7 @@ pub use bank::{
     Bank, BankIx, Budget, BudgetError, Characteristic, Group, Layout, Offsets, Pairing, SourceIx,
     Sources,
 };
+pub use calendar::{Calendar, Stretch};
 pub use figures::{fixed, signed};
 pub use line_event::{LineChange, LineEvent};
 pub use reason::{Reason, Refusal};

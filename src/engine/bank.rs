@@ -18,6 +18,7 @@ use super::judge::Senses;
 use super::line::Line;
 use super::natural::natural;
 use super::papers::{Raised, Tally};
+use super::shifts::Shifts;
 use super::source::{Source, usual_interval_us};
 use super::watching::{Pace, watch_for};
 use super::{RefusalView, WindowValue, WindowView};
@@ -66,6 +67,8 @@ pub struct State {
     pub tally: Tally,
     /// The newest notices raised, oldest first.
     pub raised_at: VecDeque<Raised>,
+    /// What gathers of the day, where the sources are shifts.
+    pub shifts: Shifts,
 }
 
 impl State {
@@ -82,6 +85,7 @@ impl State {
             self.watch.iter_mut().for_each(Watch::add_source);
         }
         self.pace = Pace::default();
+        self.shifts = Shifts::default();
         for incident in &mut self.incidents {
             incident.forget(&|_| true);
         }
@@ -131,6 +135,7 @@ impl Watched {
             past: VecDeque::new(),
             tally: Tally::default(),
             raised_at: VecDeque::new(),
+            shifts: Shifts::default(),
         };
         Self::with_state(bank, state)
     }
@@ -151,11 +156,9 @@ impl Watched {
             premises: None,
             senses: Senses::default(),
         };
-        let listed = match &watched.bank.sources {
-            Sources::Listed(listed) => listed.clone(),
-            Sources::Discover { .. } => Vec::new(),
-        };
-        let is_listed = matches!(watched.bank.sources, Sources::Listed(_));
+        let names = watched.bank.sources.names();
+        let is_listed = names.is_some();
+        let listed = names.unwrap_or_default();
         for (s, source) in watched.state.sources.iter_mut().enumerate() {
             source.retired = is_listed && !listed.contains(&source.name);
             let waited_for = !source.retired && !source.silent && !source.out_of_use;
@@ -171,6 +174,7 @@ impl Watched {
         for incident in &mut watched.state.incidents {
             incident.forget(&gone);
         }
+        watched.fit_shifts();
         watched.settle();
         watched.follow_product();
         watched.retune();
@@ -199,7 +203,7 @@ impl Watched {
 
     /// Whether the set of sources is known well enough to call a cycle complete.
     fn settle(&mut self) {
-        let listed = matches!(self.bank.sources, Sources::Listed(_));
+        let listed = !matches!(self.bank.sources, Sources::Discover { .. });
         let quiet = self.closed() >= self.state.newest_source_at + SETTLED_AFTER;
         self.state.windows.settle(listed || quiet);
     }
@@ -220,39 +224,19 @@ impl Watched {
         if stopped.is_some_and(|stop| taken >= stop.at) {
             return Err(Reason::LineStopped);
         }
-        let source = self.source(&m.source)?;
-        let arriving = Arriving {
-            source,
-            value: m.value,
-            taken,
-            time_given: m.taken.is_some(),
-            cycle: m.cycle,
+        let bank = self.bank.clone();
+        let accepted = if let Sources::Shifts(calendar) = &bank.sources {
+            self.gather(calendar, m, (taken, now))?
+        } else {
+            let arriving = Arriving {
+                source: self.source(&m.source)?,
+                value: m.value,
+                taken,
+                time_given: m.taken.is_some(),
+                cycle: m.cycle,
+            };
+            self.enter(&arriving, now)?
         };
-        let closed = self.closed();
-        // Whoever delivers is waited for again, from this very cycle on.
-        let was_silent = self.state.sources[source.index()].silent;
-        if was_silent {
-            self.state.windows.expect(source, true);
-        }
-        let accepted = self.state.windows.accept(&arriving).inspect_err(|_| {
-            // What is refused wakes nobody.
-        });
-        let accepted = match accepted {
-            Ok(accepted) => accepted,
-            Err(reason) => {
-                self.state.windows.expect(source, !was_silent);
-                return Err(reason);
-            }
-        };
-        let known = &mut self.state.sources[source.index()];
-        known.accepted += 1;
-        known.last_value = Some(m.value.to_f64());
-        known.last_taken = known.last_taken.max(Some(taken));
-        known.last_received = Some(now);
-        known.silent = false;
-        if closed != self.closed() {
-            self.settle();
-        }
         let outcome = match accepted {
             Accepted::InTurn => "accepted",
             Accepted::Late => "late",
@@ -261,6 +245,38 @@ impl Watched {
         self.state.began.get_or_insert(now);
         self.plan_look(now);
         Ok(())
+    }
+
+    /// Puts a value of a source, received at `now`, into its window.
+    ///
+    /// # Errors
+    /// The reason when the window refuses it.
+    pub fn enter(&mut self, arriving: &Arriving, now: Time) -> Result<Accepted, Reason> {
+        let source = arriving.source;
+        let closed = self.closed();
+        // Whoever delivers is waited for again, from this very cycle on.
+        let was_silent = self.state.sources[source.index()].silent;
+        if was_silent {
+            self.state.windows.expect(source, true);
+        }
+        let accepted = match self.state.windows.accept(arriving) {
+            Ok(accepted) => accepted,
+            Err(reason) => {
+                // What is refused wakes nobody.
+                self.state.windows.expect(source, !was_silent);
+                return Err(reason);
+            }
+        };
+        let known = &mut self.state.sources[source.index()];
+        known.accepted += 1;
+        known.last_value = Some(arriving.value.to_f64());
+        known.last_taken = known.last_taken.max(Some(arriving.taken));
+        known.last_received = Some(now);
+        known.silent = false;
+        if closed != self.closed() {
+            self.settle();
+        }
+        Ok(accepted)
     }
 
     /// A source by its name.
@@ -278,7 +294,7 @@ impl Watched {
             };
         }
         match self.bank.sources {
-            Sources::Listed(_) => Err(Reason::UnknownSource),
+            Sources::Listed(_) | Sources::Shifts(_) => Err(Reason::UnknownSource),
             Sources::Discover { most } if self.state.sources.len() >= usize::from(most) => {
                 Err(Reason::TooManySources)
             }
@@ -287,13 +303,16 @@ impl Watched {
     }
 
     /// Plans the next look; never further ahead than one period, so that a clock that was set back does
-    /// not stop the looks.
+    /// not stop the looks. A bank of shifts is looked at when a shift is over.
     pub fn plan_look(&mut self, now: Time) {
         let every = self.bank.look_every_us;
         let began = self.state.began.unwrap_or(now);
         let next = self.state.last_look.unwrap_or(began).plus_us(every);
         let planned = self.state.look_due.unwrap_or(next.max(now));
-        self.state.look_due = Some(planned.min(now.plus_us(every)));
+        self.state.look_due = match self.bank.sources {
+            Sources::Shifts(_) => self.state.shifts.next_end(),
+            _ => Some(planned.min(now.plus_us(every))),
+        };
         self.next_silence_check = self
             .next_silence_check
             .min(Some(now.plus_us(SILENCE_EVERY_US)));
@@ -350,14 +369,12 @@ impl Watched {
             .map(|s| SourceIx(s as u16))
             .filter(|s| !self.state.sources[s.index()].retired)
             .collect();
-        match &self.bank.sources {
-            Sources::Listed(listed) => {
-                let place = |s: &SourceIx| listed.iter().position(|n| *n == self.name(*s));
+        match self.bank.sources.names() {
+            Some(names) => {
+                let place = |s: &SourceIx| names.iter().position(|n| *n == self.name(*s));
                 order.sort_by_key(place);
             }
-            Sources::Discover { .. } => {
-                order.sort_by(|a, b| natural(&self.name(*a), &self.name(*b)))
-            }
+            None => order.sort_by(|a, b| natural(&self.name(*a), &self.name(*b))),
         }
         order
     }

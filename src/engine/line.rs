@@ -100,6 +100,7 @@ impl Watched {
     fn adjusted(&mut self, source: SourceIx, by: Option<f64>, at: Time) {
         let from = self.next_place();
         self.state.windows.start_fresh(source, from);
+        self.state.shifts.forget(Some(source));
         self.state.sources[source.index()].cleared_margin = 0.0;
         self.forget_usual();
         for incident in &mut self.state.incidents {
@@ -141,6 +142,7 @@ impl Watched {
 
     fn changeover(&mut self, product: &Name, target: Option<Value>, declared: Option<Value>) {
         let from = self.next_place();
+        self.state.shifts.forget(None);
         for s in 0..self.state.sources.len() {
             self.state.windows.start_fresh(SourceIx(s as u16), from);
             self.state.sources[s].cleared_margin = 0.0;

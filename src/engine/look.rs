@@ -52,9 +52,11 @@ impl<'a> Occasion<'a> {
 }
 
 impl Watched {
-    /// A look that is due: examines, follows the open incidents, begins new ones.
+    /// A look that is due: examines, follows the open incidents, begins new ones. Shifts that are over
+    /// enter first.
     pub fn look(&mut self, plant: &Plant, now: Time) -> Looked {
-        self.state.look_due = None;
+        self.end_shifts(now);
+        self.state.look_due = self.state.shifts.next_end();
         self.state.last_look = Some(now);
         self.follow_pace(now);
         self.learn_places();

@@ -23,6 +23,7 @@ mod natural;
 mod papers;
 mod restore;
 mod send;
+mod shifts;
 mod snapshot;
 mod source;
 mod stuck;
@@ -39,8 +40,8 @@ pub use load::Load;
 pub use papers::{Raised, Tally};
 pub use restore::RestoreError;
 pub use snapshot::{
-    BankView, Cycles, OutletView, Plant, RefusalView, Snapshot, SourceState, SourceView, WatchView,
-    WindowValue, WindowView,
+    BankView, Cycles, OutletView, Plant, RefusalView, RunningShift, ShiftsView, Snapshot,
+    SourceState, SourceView, WatchView, WindowValue, WindowView,
 };
 pub use view::shown_look;
 pub use watching::watch_terms;

@@ -118,6 +118,32 @@ pub struct BankView {
     pub kept: Option<BudgetKept>,
     /// The newest notices raised, oldest first.
     pub raised_at: Vec<Raised>,
+    /// What gathers of the day; `None` where the sources are no shifts.
+    pub shifts: Option<ShiftsView>,
+}
+
+/// The shifts of a bank whose sources they are, now.
+#[derive(Clone, Debug, PartialEq)]
+pub struct ShiftsView {
+    /// Those that run; the one that ends first comes first.
+    pub running: Vec<RunningShift>,
+    /// Shifts of a day that had fewer values than [`ShiftsView::fewest`], and did not enter.
+    pub skipped: u64,
+    /// Values without which a shift of a day does not enter.
+    pub fewest: u64,
+}
+
+/// A shift of a day, so far.
+#[derive(Clone, Debug, PartialEq)]
+pub struct RunningShift {
+    /// The shift.
+    pub name: Name,
+    /// When it is over.
+    pub end: Time,
+    /// Values so far.
+    pub count: u64,
+    /// Their mean, in the unit.
+    pub mean: f64,
 }
 
 /// The watch of a bank, now.

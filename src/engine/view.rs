@@ -2,14 +2,18 @@
 
 use std::sync::Arc;
 
-use crate::model::{Measurement, Reason, Refusal, SourceIx, Time};
+use crate::model::{Measurement, Reason, Refusal, SourceIx, Sources, Time};
 use crate::notice::Notice;
 use crate::verdict::{Aspect, BudgetKept, Came, Look, SourceLook, budget_kept};
 
 use super::bank::Watched;
 use super::conditions::Standing;
 use super::incident::Incident;
-use super::{BankView, Condition, Cycles, Plant, RefusalView, Snapshot, SourceView, WatchView};
+use super::shifts::{FEWEST_VALUES, Gathering};
+use super::{
+    BankView, Condition, Cycles, Plant, RefusalView, RunningShift, ShiftsView, Snapshot,
+    SourceView, WatchView,
+};
 
 /// A snapshot of nothing.
 pub fn empty(plant: Arc<Plant>) -> Snapshot {
@@ -66,6 +70,7 @@ pub fn bank_view(watched: &Watched) -> BankView {
         mean: shown.and_then(|l| mean(&l.sources)),
         kept: kept(watched),
         raised_at: state.raised_at.iter().copied().collect(),
+        shifts: shifts(watched),
     }
 }
 
@@ -80,6 +85,24 @@ fn kept(watched: &Watched) -> Option<BudgetKept> {
     };
     let now = state.last_look.max(state.began)?;
     budget_kept(watched.bank.budget, came, state.began?, now)
+}
+
+fn shifts(watched: &Watched) -> Option<ShiftsView> {
+    let Sources::Shifts(_) = watched.bank.sources else {
+        return None;
+    };
+    let shift = |g: &Gathering| RunningShift {
+        name: watched.name(g.source),
+        end: g.end,
+        count: g.count,
+        mean: g.mean(),
+    };
+    let shifts = &watched.state.shifts;
+    Some(ShiftsView {
+        running: shifts.running().map(shift).collect(),
+        skipped: shifts.skipped,
+        fewest: FEWEST_VALUES,
+    })
 }
 
 /// The look whose figures stand for "now": over the shortest span that still resolves half the
@@ -154,6 +177,11 @@ pub fn refusal_of(m: &Measurement, reason: Reason, watched: &Watched, now: Time)
         ),
         Reason::NoCycle => "the bank pairs by cycle and the payload carries none".to_owned(),
         Reason::Double => format!("source \"{}\" has already delivered this value", m.source),
+        Reason::OutsideShifts => {
+            format!(
+                "taken at {taken}, outside all shifts; each [[plant.shift]] is one or a part of one"
+            )
+        }
         Reason::LineStopped => format!("taken at {taken}, while the line stands; enter its start"),
         other => other.word().to_owned(),
     };

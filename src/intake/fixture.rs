@@ -3,7 +3,7 @@
 use crate::model::BankIx;
 use crate::settings::{
     Belief, Feed, Fields, Items, JsonForm, Of, PayloadForm, Pointer, RecordingColumns, SourceAt,
-    TimeForm, TopicTemplate,
+    TimeForm, ToldBy, TopicTemplate,
 };
 
 /// A template as written.
@@ -59,6 +59,7 @@ pub(super) fn feeds<'a>(from: impl IntoIterator<Item = (&'a str, PayloadForm)>) 
         payload,
         belief: Belief::default(),
         recording: RecordingColumns::default(),
+        told_by: ToldBy::Message,
     };
     (0..).zip(from).map(feed).collect()
 }

@@ -60,11 +60,13 @@ pub enum Reason {
     Unborn,
     /// Sent after its place in the sequence had been given up (Sparkplug).
     OutOfSequence,
+    /// Taken outside all shifts, where the shifts are what is compared.
+    OutsideShifts,
 }
 
 impl Reason {
     /// Every reason, in the order pages show them.
-    pub const ALL: [Self; 25] = [
+    pub const ALL: [Self; 26] = [
         Self::Empty,
         Self::TooLarge,
         Self::Malformed,
@@ -90,6 +92,7 @@ impl Reason {
         Self::BadQuality,
         Self::Unborn,
         Self::OutOfSequence,
+        Self::OutsideShifts,
     ];
 
     /// The one word used in metrics and the interface.
@@ -120,6 +123,7 @@ impl Reason {
             Self::BadQuality => "bad_quality",
             Self::Unborn => "unborn",
             Self::OutOfSequence => "out_of_sequence",
+            Self::OutsideShifts => "outside_shifts",
         }
     }
 }

@@ -24,14 +24,29 @@ pub struct Shift {
 impl Shift {
     /// Whether it is on at this time: from its start on, up to and without its end.
     pub fn is_on(&self, zone: &TimeZone, at: Time) -> bool {
-        let Some(day) = day_of(zone, at) else {
-            return false;
-        };
+        self.running(zone, at).is_some()
+    }
+
+    /// The day on which the shift began that is on at this time, with its start and end.
+    pub fn running(&self, zone: &TimeZone, at: Time) -> Option<(Date, (Time, Time))> {
+        let day = day_of(zone, at)?;
         let began = [day.yesterday().ok(), Some(day)].into_iter().flatten();
-        let stretches = began.filter_map(|day| self.stretch(zone, day));
-        stretches
-            .into_iter()
-            .any(|(from, to)| from <= at && at < to)
+        let mut stretches = began.filter_map(|day| Some((day, self.stretch(zone, day)?)));
+        stretches.find(|(_, (from, to))| *from <= at && at < *to)
+    }
+
+    /// Whether some time of day belongs to both.
+    pub fn overlaps(&self, other: &Self) -> bool {
+        self.holds(other.from) || other.holds(self.from)
+    }
+
+    /// Whether the clock on the wall shows this time of day during the shift.
+    fn holds(&self, clock: WallTime) -> bool {
+        if self.from < self.to {
+            self.from <= clock && clock < self.to
+        } else {
+            clock >= self.from || clock < self.to
+        }
     }
 
     /// The first moment at or after this time at which it is on. Without one only at the end of all
@@ -127,6 +142,24 @@ mod tests {
         let day = shift((6, 0), (6, 0));
         check(&day, "2026-01-08T05:59:59Z", "2026-01-08T05:59:59Z");
         check(&day, "2026-01-08T06:00:00Z", "2026-01-08T06:00:00Z");
+    }
+
+    #[test]
+    fn shifts_overlap_when_they_share_a_time_of_day() {
+        for (one, other, wanted) in [
+            (((6, 0), (14, 0)), ((14, 0), (22, 0)), false),
+            (((6, 0), (14, 0)), ((13, 59), (22, 0)), true),
+            (((6, 0), (14, 0)), ((8, 0), (9, 0)), true),
+            (((22, 0), (6, 0)), ((6, 0), (22, 0)), false),
+            (((22, 0), (6, 0)), ((5, 0), (9, 0)), true),
+            (((22, 0), (6, 0)), ((23, 0), (4, 0)), true),
+            (((6, 0), (6, 0)), ((1, 0), (2, 0)), true),
+            (((6, 0), (14, 0)), ((6, 0), (14, 0)), true),
+        ] {
+            let (a, b) = (shift(one.0, one.1), shift(other.0, other.1));
+            assert_eq!(a.overlaps(&b), wanted, "{a:?} {b:?}");
+            assert_eq!(b.overlaps(&a), wanted, "{b:?} {a:?}");
+        }
     }
 
     #[test]

@@ -90,11 +90,13 @@ fn no_margin(bank: &Bank) -> Option<String> {
     let general = "a margin of 0 calls every difference, however small, once enough values show it";
     let n = bank.window_length();
     Some(match (&bank.sources, size_called(bank)) {
-        (Sources::Listed(_), Some(size)) => format!(
+        (Sources::Listed(_) | Sources::Shifts(_), Some(size)) => format!(
             "{general}: over {n} values a source that is off by {size:.2} standard deviations is \
              called at about every second look, whether that matters or not"
         ),
-        (Sources::Listed(_) | Sources::Discover { .. }, _) => general.to_owned(),
+        (Sources::Listed(_) | Sources::Shifts(_) | Sources::Discover { .. }, _) => {
+            general.to_owned()
+        }
     })
 }
 
@@ -102,9 +104,7 @@ fn no_margin(bank: &Bank) -> Option<String> {
 /// not: the mean of a noncentral chi-square with k−1 degrees of freedom, k−1 + n d² (k−1)/k, set equal
 /// to the quantile at the look's alpha.
 fn size_called(bank: &Bank) -> Option<f64> {
-    let Sources::Listed(names) = &bank.sources else {
-        return None;
-    };
+    let names = bank.sources.names()?;
     let (k, n) = (names.len() as f64, bank.window_length() as f64);
     let df = k - 1.0;
     let quantile = chi_square::isf(Shares::of(bank).level, df).ok()?;

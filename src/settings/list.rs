@@ -334,10 +334,12 @@ fn bank_keys(bank: &Bank) -> Keys {
         Pairing::Cycle => "cycle".to_owned(),
         Pairing::Slot { length_us } => format!("slot of {}", words(*length_us)),
         Pairing::None => "none".to_owned(),
+        Pairing::Day => "day".to_owned(),
     };
     let sources = match sources {
         Sources::Listed(names) => names.join(", "),
         Sources::Discover { most } => format!("discover, at most {most}"),
+        Sources::Shifts(_) => "shifts".to_owned(),
     };
     let spans: Vec<String> = spans.iter().map(ToString::to_string).collect();
     let name_of = |n: &Option<Name>| n.as_ref().map_or_else(String::new, ToString::to_string);
@@ -421,6 +423,8 @@ fn feed_keys(feed: &Feed) -> Keys {
         // Shown as given.
         payload: _,
         belief: _,
+        // Follows from `sources`.
+        told_by: _,
         recording:
             RecordingColumns {
                 time,

@@ -42,7 +42,8 @@ pub use forms::{
 pub use list::{Origin, Origins, Setting};
 pub use used::{
     AtMost, Broker, Encryption, Feed, Mail, Mailbox, Means, Outlet, PlantSettings, Program,
-    Protocol, RecordingColumns, Settings, StoreSettings, TopicTemplate, WebSettings, Webhook,
+    Protocol, RecordingColumns, Settings, StoreSettings, ToldBy, TopicTemplate, WebSettings,
+    Webhook,
 };
 
 /// Reads the file and the variables laid over it ([`environment`] gives the process's).

@@ -132,6 +132,27 @@ pub struct Feed {
     pub belief: Belief,
     /// Names of the columns of recordings.
     pub recording: RecordingColumns,
+    /// What tells the source of a value.
+    pub told_by: ToldBy,
+}
+
+/// What tells the source of a value.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum ToldBy {
+    /// Topic or payload.
+    Message,
+    /// The time at which it was taken: the sources are shifts.
+    Time,
+}
+
+impl ToldBy {
+    /// What stands for the source where no message names one.
+    pub const fn stand_in(self) -> Option<&'static str> {
+        match self {
+            Self::Message => None,
+            Self::Time => Some("all shifts"),
+        }
+    }
 }
 
 /// A topic with at most one `{source}` standing for one whole level, `+` for any one level and `#`

@@ -361,7 +361,7 @@ fn sources(s: &mut Section, faults: &mut FaultList) -> Field<WrittenSources> {
         Kind::List(list) => Ok(WrittenSources::Listed(list)),
         other => Err(other.what()),
     };
-    s.either("sources", "a list or \"discover\"", faults, how)
+    s.either("sources", "a list, \"discover\" or \"shifts\"", faults, how)
 }
 
 fn pairing(s: &mut Section, faults: &mut FaultList) -> Field<WrittenPairing> {

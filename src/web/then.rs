@@ -37,6 +37,7 @@ pub fn view(now: &BankView, looks: Vec<Look>, notices: Vec<Notice>) -> BankView 
         newest_taken: None,
         kept: None,
         raised_at: Vec::new(),
+        shifts: None,
     }
 }
 

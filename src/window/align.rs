@@ -58,7 +58,7 @@ impl Blocks {
     /// A ledger in which everything up to `closed_to` is closed and nothing is open.
     pub fn closed_until(pairing: Pairing, closed_to: i64) -> Option<Self> {
         let blocks = match pairing {
-            Pairing::Cycle => Self::cycles(1),
+            Pairing::Cycle | Pairing::Day => Self::cycles(1),
             Pairing::Slot { .. } => Self::slots(),
             Pairing::None => return None,
         };

@@ -80,7 +80,7 @@ impl Windows {
             origin: bank.characteristic.target,
             rings: Vec::new(),
             blocks: match bank.pairing {
-                Pairing::Cycle => Some(Blocks::cycles(bank.wait_cycles)),
+                Pairing::Cycle | Pairing::Day => Some(Blocks::cycles(bank.wait_cycles)),
                 Pairing::Slot { .. } => Some(Blocks::slots()),
                 Pairing::None => None,
             },
@@ -181,7 +181,7 @@ impl Windows {
         match self.pairing {
             Pairing::None => Ok(arriving.taken.us()),
             Pairing::Slot { length_us } => Ok(arriving.taken.us().div_euclid(length_us.max(1))),
-            Pairing::Cycle => {
+            Pairing::Cycle | Pairing::Day => {
                 let cycle = arriving.cycle.ok_or(Reason::NoCycle)?;
                 if cycle.unsigned_abs() > MOST_CYCLE {
                     return Err(Reason::BadCycle);
@@ -232,7 +232,7 @@ impl Windows {
         let taken = Some(arriving.taken);
         match self.pairing {
             // One source has one value in a cycle, whatever time a second one claims.
-            Pairing::Cycle => ring.holds(place, None),
+            Pairing::Cycle | Pairing::Day => ring.holds(place, None),
             // Times in whole seconds repeat; where the payload counts, the number tells.
             Pairing::Slot { .. } | Pairing::None => {
                 arriving.time_given

@@ -106,6 +106,7 @@ impl Line {
         let k = match &bank.sources {
             Sources::Listed(listed) => listed.len(),
             Sources::Discover { most } => usize::from(*most),
+            Sources::Shifts(calendar) => calendar.names().len(),
         };
         let plant = Plant {
             name: "Quayside".into(),

@@ -54,6 +54,7 @@ fn run(name: &str) -> Run {
         bank: None,
         columns: RecordingColumns::default(),
         beliefs: Vec::new(),
+        told_by: Vec::new(),
     };
     let mut conductor = Conductor::new(Engine::new(plant, settings.banks.clone()));
     let (mut looks, mut changes) = (Vec::new(), Vec::new());

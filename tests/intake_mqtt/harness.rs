@@ -12,7 +12,7 @@ use evenrow::model::{
 };
 use evenrow::settings::{
     Belief, Broker, Feed, Origins, PayloadForm, PlantSettings, Protocol, RecordingColumns,
-    Settings, StoreSettings, TopicTemplate, WebSettings,
+    Settings, StoreSettings, ToldBy, TopicTemplate, WebSettings,
 };
 use tokio::sync::mpsc;
 use tokio_util::sync::CancellationToken;
@@ -78,6 +78,7 @@ fn settings(broker: Broker) -> Arc<Settings> {
         payload: PayloadForm::Number,
         belief: Belief::default(),
         recording: RecordingColumns::default(),
+        told_by: ToldBy::Message,
     };
     Arc::new(Settings {
         plant: PlantSettings {

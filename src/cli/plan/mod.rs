@@ -164,6 +164,7 @@ fn assume(args: &PlanArgs, settings: &Settings, at: usize) -> Result<Assumed, Pl
     if let (Some(sd), Some(interval_us)) = (args.sd, args.cycle) {
         let (sources, from) = match &bank.sources {
             Sources::Listed(listed) => (listed.len(), "as given".to_owned()),
+            Sources::Shifts(calendar) => (calendar.names().len(), "as given".to_owned()),
             Sources::Discover { most } => (
                 usize::from(*most),
                 format!("as given; sources as most_sources = {most} allows"),

@@ -146,6 +146,7 @@ fn how(args: &RehearseArgs, settings: &Settings) -> Result<How, RehearseError> {
             .iter()
             .map(|feed| feed.belief.clone())
             .collect(),
+        told_by: settings.feeds.iter().map(|feed| feed.told_by).collect(),
     })
 }
 

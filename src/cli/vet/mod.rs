@@ -298,6 +298,14 @@ fn sources(sources: &Sources) -> String {
             format!("{}: {}", names.len(), names.join(", "))
         }
         Sources::Discover { most } => format!("discovered, at most {most}"),
+        Sources::Shifts(calendar) => {
+            let names: Vec<&str> = calendar.names().map(AsRef::as_ref).collect();
+            let count = names.len();
+            format!(
+                "{count} shifts, by the time a value was taken: {}",
+                names.join(", ")
+            )
+        }
     }
 }
 
@@ -305,6 +313,7 @@ fn pairing(pairing: Pairing) -> String {
     match pairing {
         Pairing::Cycle => "by cycle".to_owned(),
         Pairing::Slot { length_us } => format!("by slots of {}", duration_words(length_us)),
+        Pairing::Day => "by production day, the date on which a shift began".to_owned(),
         Pairing::None => {
             "none: a movement that all sources share can hide their differences".to_owned()
         }

@@ -11,6 +11,7 @@ fn how(banks: &[&str]) -> How {
         bank: None,
         columns: RecordingColumns::default(),
         beliefs: Vec::new(),
+        told_by: Vec::new(),
     }
 }
 

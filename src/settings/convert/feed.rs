@@ -10,7 +10,7 @@ use crate::settings::raw::Node;
 use crate::settings::section::{Field, Spot};
 use crate::settings::written::{WrittenLimits, WrittenRecording};
 use crate::settings::written_payload::WrittenPayload;
-use crate::settings::{Feed, RecordingColumns, TopicTemplate};
+use crate::settings::{Feed, RecordingColumns, ToldBy, TopicTemplate};
 
 use super::belief::belief;
 use super::payload::{Around, payload};
@@ -35,6 +35,8 @@ pub(super) struct WrittenFeed {
     pub(super) listed: Vec<Name>,
     /// The zone of the plant.
     pub(super) zone: TimeZone,
+    /// What tells the source.
+    pub(super) told_by: ToldBy,
 }
 
 /// The feed, and what the rest of the bank must know of it even when something in it is faulty.
@@ -58,6 +60,7 @@ pub(super) fn feed(bank: BankIx, written: WrittenFeed, faults: &mut FaultList) -
         unit,
         listed,
         zone,
+        told_by,
     } = written;
     let mut check = Check::new("bank", &place, faults);
     let topic = check.required(topic, "topic");
@@ -69,6 +72,7 @@ pub(super) fn feed(bank: BankIx, written: WrittenFeed, faults: &mut FaultList) -
         unit,
         listed,
         zone,
+        told_by,
     };
     let payload = payload(written, around, faults);
     let belief = belief(sentinels, plausible, faults);
@@ -82,6 +86,7 @@ pub(super) fn feed(bank: BankIx, written: WrittenFeed, faults: &mut FaultList) -
         payload,
         belief,
         recording,
+        told_by,
     };
     Heard {
         feed: topic.zip(payload.form).zip(recording).map(whole),

@@ -68,7 +68,8 @@ fn is_source(
             check.add(place, message, hint);
             false
         }
-        Some(Sources::Listed(listed)) => {
+        Some(Sources::Listed(_) | Sources::Shifts(_)) => {
+            let listed = sources.and_then(Sources::names).unwrap_or_default();
             if listed.iter().any(|l| **l == *name) {
                 return true;
             }

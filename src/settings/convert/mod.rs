@@ -16,11 +16,10 @@ mod payload_named;
 mod payload_placed;
 mod plant;
 mod pointer;
+mod shifts;
 
 use std::collections::BTreeMap;
 use std::sync::Arc;
-
-use jiff::tz::TimeZone;
 
 use crate::model::{BankIx, topic_name};
 
@@ -52,11 +51,9 @@ pub(super) fn used(written: Written, origins: Origins, faults: &mut FaultList) -
     let store = plant::store(store, faults);
     let web = plant::web(web, faults);
     let manners = notices::manners(notices, faults);
-    let zone = plant
-        .as_ref()
-        .map_or(TimeZone::UTC, |plant| plant.zone.clone());
+    let of_plant = shifts::OfPlant::new(plant.as_ref());
     let known = outlet::Known::of(&banks, plant.as_ref());
-    let banks = every_bank(banks, &zone, faults);
+    let banks = every_bank(banks, &of_plant, faults);
     let outlets = every_outlet(outlets, &known, faults);
     let (banks, feeds) = banks?.into_iter().map(|(b, f)| (Arc::new(b), f)).unzip();
     Some(Settings {
@@ -76,7 +73,7 @@ type BankAndFeed = (crate::model::Bank, super::Feed);
 
 fn every_bank(
     banks: Field<Vec<WrittenBank>>,
-    zone: &TimeZone,
+    plant: &shifts::OfPlant,
     faults: &mut FaultList,
 ) -> Option<Vec<BankAndFeed>> {
     let nothing = "there is no bank, so there is nothing to watch";
@@ -95,7 +92,7 @@ fn every_bank(
     }
     let names = value.iter().filter_map(|bank| bank.name.peek());
     one_name_each("banks", names, faults);
-    let one = |(place, written)| bank::bank(BankIx(place), written, zone, faults);
+    let one = |(place, written)| bank::bank(BankIx(place), written, plant, faults);
     let all: Vec<_> = (0_u16..).zip(value).map(one).collect();
     all.into_iter().collect()
 }

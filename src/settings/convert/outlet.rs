@@ -384,11 +384,17 @@ impl Lists {
         let kinds = Kind::ALL.map(|k| (k.word(), k));
         let priorities = [Priority::Low, Priority::Medium, Priority::High].map(|p| (p.word(), p));
         let of_plant = known.shifts.as_deref().unwrap_or_default();
-        let shifts: Vec<_> = of_plant.iter().map(|s| (&*s.name, s.clone())).collect();
+        let shifts: Vec<_> = of_plant
+            .iter()
+            .map(|s| (&*s.name, s.name.clone()))
+            .collect();
         let on = match known.shifts {
             Some(_) => check.words(self.shifts, "shifts", "[[plant.shift]]", &shifts),
             None => None,
         };
+        // A shift with pauses stands there in parts.
+        let parts = |name: Name| of_plant.iter().filter(move |s| s.name == name).cloned();
+        let on: Option<Vec<Shift>> = on.map(|names| names.into_iter().flat_map(parts).collect());
         (
             check
                 .words(self.banks, "banks", "bank", &banks)

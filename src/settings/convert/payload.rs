@@ -10,7 +10,7 @@ use crate::settings::check::Check;
 use crate::settings::fault::{FaultList, Place};
 use crate::settings::section::{Field, Spot};
 use crate::settings::written_payload::{WrittenAt, WrittenPayload, WrittenSourceAt};
-use crate::settings::{PayloadForm, TopicTemplate};
+use crate::settings::{PayloadForm, ToldBy, TopicTemplate};
 
 /// What the rest of the bank says that the payload must agree with.
 pub(super) struct Around<'t> {
@@ -18,6 +18,7 @@ pub(super) struct Around<'t> {
     pub(super) unit: Option<String>,
     pub(super) listed: Vec<Name>,
     pub(super) zone: TimeZone,
+    pub(super) told_by: ToldBy,
 }
 
 /// The payload, and what the rest of the bank must know of it even when something in it is faulty.
@@ -131,7 +132,7 @@ pub(super) fn payload(
         });
     let without_cycle = nothing && !counted;
     if understood {
-        one_source(form, &written, around.topic, &mut check);
+        one_source(form, &written, &around, &mut check);
     }
     let mut maker = Maker { around, check };
     let form = match form {
@@ -171,14 +172,9 @@ fn meaningless(form: Form, name: &str) -> (String, String) {
     }
 }
 
-/// The source stands in one place: in the topic or in the payload.
-fn one_source(
-    form: Form,
-    written: &WrittenPayload,
-    topic: Option<(&TopicTemplate, &Place)>,
-    check: &mut Check<'_>,
-) {
-    let Some((topic, topic_place)) = topic else {
+/// The source stands in one place: in the topic or in the payload; and nowhere when the time tells it.
+fn one_source(form: Form, written: &WrittenPayload, around: &Around<'_>, check: &mut Check<'_>) {
+    let Some((topic, topic_place)) = around.topic else {
         return;
     };
     let item = written.item.peek().map(|spot| &spot.value);
@@ -194,6 +190,18 @@ fn one_source(
         in_name.map(|spot| &spot.place),
     ];
     let named: Vec<&Place> = places.into_iter().flatten().collect();
+    if around.told_by == ToldBy::Time {
+        let in_topic = topic.source_level.map(|_| topic_place);
+        if let Some(place) = named.into_iter().chain(in_topic).next() {
+            check.add(
+                place,
+                "a source is named, and with `sources = \"shifts\"` the time tells it",
+                "write + in the topic, or take the source out of `payload`; to compare sources within \
+                 shifts make another bank",
+            );
+        }
+        return;
+    }
     let sources = [Some(&written.source), item.map(|item| &item.source)];
     let nameless = templates && written.value.peek().is_none();
     let faulty = nameless

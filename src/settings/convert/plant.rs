@@ -1,5 +1,6 @@
 //! `[plant]`, `[store]` and `[web]`.
 
+use std::collections::BTreeSet;
 use std::net::{Ipv4Addr, SocketAddr};
 
 use jiff::civil::Time as WallTime;
@@ -30,22 +31,47 @@ pub(super) fn plant(written: WrittenPlant, faults: &mut FaultList) -> Option<Pla
         shifts,
     } = written;
     let shifts = shifts.given().map(|spot| spot.value).unwrap_or_default();
-    super::one_name_each(
-        "shifts",
-        shifts.iter().filter_map(|s| s.name.peek()),
-        faults,
-    );
+    let mut seen = BTreeSet::new();
+    let names = shifts.iter().filter_map(|s| s.name.peek());
+    // Those of one name are parts of one shift.
+    let each = names.clone().filter(|name| seen.insert(&name.value));
+    super::one_name_each("shifts", each, faults);
+    let names: Vec<Option<Spot<String>>> = shifts.iter().map(|s| s.name.peek().cloned()).collect();
     let mut check = Check::new("plant", &place, faults);
     let name = check.required(name, "name");
     let name = check.name(name, "name");
     let zone = check.required(time_zone, "time_zone");
     let zone = zone_of(zone, &mut check);
     let shifts: Vec<_> = shifts.into_iter().map(|s| shift(s, faults)).collect();
+    one_part_at_a_time(&shifts, &names, faults);
     Some(PlantSettings {
         name: name?,
         zone: zone?,
         shifts: shifts.into_iter().collect::<Option<_>>()?,
     })
+}
+
+/// Says which parts of one shift overlap.
+fn one_part_at_a_time(
+    shifts: &[Option<Shift>],
+    names: &[Option<Spot<String>>],
+    faults: &mut FaultList,
+) {
+    for (b, later) in shifts.iter().enumerate() {
+        let Some(later) = later else { continue };
+        let before = shifts[..b].iter().zip(names);
+        let mut overlap = before.filter_map(|(s, name)| Some((s.as_ref()?, name.as_ref()?)));
+        let overlap = overlap.find(|(s, _)| s.name == later.name && s.overlaps(later));
+        if let (Some((_, first)), Some(Some(name))) = (overlap, names.get(b)) {
+            let line = first.place.line().unwrap_or_default();
+            let message = format!(
+                "two shifts are called \"{}\" and overlap; the first is in line {line}",
+                later.name
+            );
+            let hint = "give each a name of its own; parts of one shift follow each other";
+            faults.add(&name.place, message, hint);
+        }
+    }
 }
 
 fn zone_of(field: Field<String>, check: &mut Check<'_>) -> Option<TimeZone> {

@@ -212,6 +212,7 @@ pub fn view(bank: Bank, story: Story, seed: u64) -> BankView {
         }),
         interval_us: (values > 0).then_some(720_000),
         next_look: (values > 0).then(|| moment().plus_us(18 * US_PER_S)),
+        shifts: None,
         newest_taken: (values > 0).then(|| moment().plus_us(-US_PER_S)),
         mean: now_look.is_some().then_some(target + 0.027 * bank.margin),
         kept: kept(&bank, values),
