@@ -5,6 +5,7 @@
 
 mod bank;
 mod figures;
+mod line_event;
 mod reason;
 mod time;
 mod value;
@@ -13,6 +14,7 @@ pub use bank::{
     Bank, BankIx, Budget, BudgetError, Characteristic, Layout, Pairing, SourceIx, Sources,
 };
 pub use figures::{fixed, signed};
+pub use line_event::{LineChange, LineEvent};
 pub use reason::{Reason, Refusal};
 pub use time::{Time, US_PER_DAY, US_PER_S};
 pub use value::{Value, ValueError};

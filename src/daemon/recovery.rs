@@ -46,7 +46,10 @@ pub(super) fn recover(
         match engine.restore(bank, state) {
             Ok(()) => {}
             Err(e @ RestoreError::NoSuchBank(_)) => info!("{e}"),
-            Err(e) => warn!("{e}; the bank goes on with what the journal holds"),
+            Err(e) => {
+                warn!("{e}; the bank goes on with what the journal holds");
+                engine.number_notices_after(bank, last_number(&*history, bank));
+            }
         }
     }
     let mut replayed = 0;
@@ -64,4 +67,26 @@ pub(super) fn recover(
         replayed,
         set_aside,
     })
+}
+
+/// Notices read at once.
+const PAGE: usize = 500;
+
+/// The largest running number among a bank's kept notices, so that no id is given twice; 0 when none
+/// can be read.
+fn last_number(history: &dyn History, bank: &str) -> u64 {
+    let mut last = 0;
+    let mut after = None;
+    loop {
+        let Ok(page) = history.notices(after.as_deref(), PAGE) else {
+            return last;
+        };
+        let own = page.items.iter().filter(|n| &*n.bank == bank);
+        let numbers = own.filter_map(|n| n.id.rsplit('-').next()?.parse().ok());
+        last = numbers.fold(last, u64::max);
+        after = page.next;
+        if after.is_none() {
+            return last;
+        }
+    }
 }

@@ -7,12 +7,15 @@ use serde::{Deserialize, Serialize};
 
 use crate::model::{Bank, Measurement, Name, Reason, SourceIx, Sources, Time};
 use crate::notice::Kind;
-use crate::verdict::{Examination, Look, Need, Participant, examine};
+use crate::verdict::watch::{Crossing, Watch};
+use crate::verdict::{Asked, Examination, Look, Need, Participant, examine};
 use crate::window::{Accepted, Arriving, Windows};
 
 use super::incident::Incident;
+use super::line::Line;
 use super::natural::natural;
 use super::source::{Source, usual_interval_us};
+use super::watching::{Pace, watch_for};
 use super::{RefusalView, WindowValue, WindowView};
 
 /// A clock may run ahead by this much; a value from further in the future is refused.
@@ -45,6 +48,12 @@ pub struct State {
     pub newest_source_at: u64,
     /// Notices made so far.
     pub notices: u64,
+    /// The watch, where sources share cycles.
+    pub watch: Option<Watch>,
+    /// The rate of cycles for which its thresholds hold.
+    pub pace: Pace,
+    /// The line as its events left it.
+    pub line: Line,
 }
 
 impl State {
@@ -56,6 +65,11 @@ impl State {
             self.windows.add_source();
             source.cleared_margin = 0.0;
         }
+        self.watch = watch_for(bank);
+        for _ in &self.sources {
+            self.watch.iter_mut().for_each(Watch::add_source);
+        }
+        self.pace = Pace::default();
         for incident in &mut self.incidents {
             incident.forget(&|_| true);
         }
@@ -94,6 +108,9 @@ impl Watched {
             began: None,
             newest_source_at: 0,
             notices: 0,
+            watch: watch_for(&bank),
+            pace: Pace::default(),
+            line: Line::default(),
         };
         Self::with_state(bank, state)
     }
@@ -119,7 +136,7 @@ impl Watched {
         let is_listed = matches!(watched.bank.sources, Sources::Listed(_));
         for (s, source) in watched.state.sources.iter_mut().enumerate() {
             source.retired = is_listed && !listed.contains(&source.name);
-            let waited_for = !source.retired && !source.silent;
+            let waited_for = !source.retired && !source.silent && !source.out_of_use;
             watched.state.windows.expect(SourceIx(s as u16), waited_for);
         }
         for name in listed {
@@ -133,12 +150,15 @@ impl Watched {
             incident.forget(&gone);
         }
         watched.settle();
+        watched.follow_product();
+        watched.retune();
         watched
     }
 
     fn add_source(&mut self, name: Name, discovered: bool) -> SourceIx {
         let ix = SourceIx(self.state.sources.len() as u16);
         self.state.windows.add_source();
+        self.state.watch.iter_mut().for_each(Watch::add_source);
         self.state
             .sources
             .push(Source::new(name.clone(), discovered));
@@ -173,6 +193,10 @@ impl Watched {
         }
         if now.us_since(taken) > self.bank.oldest_us {
             return Err(Reason::TooOld);
+        }
+        let stopped = self.state.line.stopped.as_ref();
+        if stopped.is_some_and(|stop| taken >= stop.at) {
+            return Err(Reason::LineStopped);
         }
         let source = self.source(&m.source)?;
         let arriving = Arriving {
@@ -217,6 +241,12 @@ impl Watched {
         Ok(())
     }
 
+    /// A source by its name.
+    pub fn source_named(&self, name: &Name) -> Option<SourceIx> {
+        let known = self.by_name.get(name).copied();
+        known.filter(|s| !self.state.sources[s.index()].retired)
+    }
+
     fn source(&mut self, name: &Name) -> Result<SourceIx, Reason> {
         if let Some(&ix) = self.by_name.get(name) {
             return if self.state.sources[ix.index()].retired {
@@ -236,7 +266,7 @@ impl Watched {
 
     /// Plans the next look; never further ahead than one period, so that a clock that was set back does
     /// not stop the looks.
-    fn plan_look(&mut self, now: Time) {
+    pub fn plan_look(&mut self, now: Time) {
         let every = self.bank.look_every_us;
         let began = self.state.began.unwrap_or(now);
         let next = self.state.last_look.unwrap_or(began).plus_us(every);
@@ -252,11 +282,17 @@ impl Watched {
         let Some(began) = self.state.began else {
             return Vec::new();
         };
+        let line = &self.state.line;
+        if line.stopped.is_some() {
+            return Vec::new();
+        }
+        let began = line.started.unwrap_or(began).max(began);
         let fallen = |(s, source): (usize, &Source)| {
             let ix = SourceIx(s as u16);
             let ring = self.state.windows.ring(ix);
             let since = source.silent_from(&self.bank, ring, began);
-            (!source.silent && !source.retired && since <= now).then_some(ix)
+            let judged = !source.silent && !source.retired && !source.out_of_use;
+            (judged && since <= now).then_some(ix)
         };
         self.state
             .sources
@@ -308,8 +344,8 @@ impl Watched {
         self.state.sources[source.index()].name.clone()
     }
 
-    /// Examines the windows without consequences.
-    pub fn examine(&self, now: Time, need: Need) -> Examination {
+    /// Examines the windows without consequences; a crossing of the watch decides what is called.
+    pub fn examine(&self, now: Time, need: Need, crossing: Option<&Crossing>) -> Examination {
         let takes_part = |s: &SourceIx| self.state.sources[s.index()].takes_part();
         let participant = |s: SourceIx| Participant {
             source: s,
@@ -326,7 +362,12 @@ impl Watched {
             .filter(takes_part)
             .map(participant)
             .collect();
-        examine(&self.bank, &self.state.windows, &who, now, need)
+        let asked = Asked {
+            at: now,
+            need,
+            crossing,
+        };
+        examine(&self.bank, &self.state.windows, &who, asked)
     }
 
     /// The usual time between values of a source: the median over the sources.

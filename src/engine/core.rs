@@ -2,52 +2,23 @@
 
 use std::sync::Arc;
 
-use crate::model::{Bank, BankIx, Measurement, Name, Refusal, Time};
-use crate::notice::{Acknowledgement, Delivery, Notice, Way};
+use crate::model::{Bank, BankIx, Measurement, Refusal, Time};
+use crate::notice::{Delivery, Way};
 use crate::verdict::{Finding, Look, Need};
 
-use super::bank::{SILENCE_EVERY_US, State, Watched};
-use super::look::Freshness;
+use super::bank::{SILENCE_EVERY_US, Watched};
+use super::look::{Freshness, Looked};
+use super::restore::{self, RestoreError, checkpoint};
 use super::view;
-use super::{
-    Command, Condition, Due, Effect, Event, Outcome, Part, Plant, Record, RefusalView, Snapshot,
-    Ticket, Turn,
-};
+use super::{Condition, Due, Effect, Event, Part, Plant, Record, RefusalView, Snapshot, Turn};
 
 /// A bank writes its whole state at least this often.
 const CHECKPOINT_EVERY_US: i64 = 600_000_000;
 
-/// Version of the encoded state.
-const STATE_VERSION: u8 = 1;
-
-/// Why a checkpoint cannot be gone on from.
-#[derive(Clone, Debug, PartialEq, Eq, thiserror::Error)]
-pub enum RestoreError {
-    /// No bank of this name is configured.
-    #[error("bank \"{0}\" is no longer configured; what was kept of it is left alone")]
-    NoSuchBank(String),
-    /// Written by another version.
-    #[error(
-        "the state of bank \"{bank}\" was written in form {version}, this program reads form {STATE_VERSION}"
-    )]
-    OtherVersion {
-        /// The bank.
-        bank: String,
-        /// The form found.
-        version: u8,
-    },
-    /// It cannot be decoded.
-    #[error("the state of bank \"{0}\" cannot be decoded")]
-    Unreadable(String),
-    /// Values kept under another pairing do not fit.
-    #[error("the pairing of bank \"{0}\" was changed, so its windows start afresh")]
-    PairingChanged(String),
-}
-
 /// Owns every bank.
 pub struct Engine {
-    plant: Arc<Plant>,
-    banks: Vec<Watched>,
+    pub(super) plant: Arc<Plant>,
+    pub(super) banks: Vec<Watched>,
     last_turn: u64,
     outbox: usize,
     outbox_trouble: Option<String>,
@@ -86,17 +57,7 @@ impl Engine {
         let own = || bank.to_owned();
         let found = self.banks.iter_mut().find(|b| &*b.bank.name == bank);
         let watched = found.ok_or_else(|| RestoreError::NoSuchBank(own()))?;
-        let (&version, encoded) = state
-            .split_first()
-            .ok_or_else(|| RestoreError::Unreadable(own()))?;
-        if version != STATE_VERSION {
-            return Err(RestoreError::OtherVersion {
-                bank: own(),
-                version,
-            });
-        }
-        let mut state: State =
-            postcard::from_bytes(encoded).map_err(|_| RestoreError::Unreadable(own()))?;
+        let mut state = restore::decode(bank, state)?;
         let adapted = state.windows.adapt(&watched.bank);
         if !adapted {
             state.start_over(&watched.bank);
@@ -124,6 +85,14 @@ impl Engine {
         self.changed = true;
     }
 
+    /// Numbers a bank's notices after `last`, where its state is lost and its notices are not.
+    pub fn number_notices_after(&mut self, bank: &str, last: u64) {
+        let found = self.banks.iter_mut().find(|b| &*b.bank.name == bank);
+        if let Some(bank) = found {
+            bank.state.notices = bank.state.notices.max(last);
+        }
+    }
+
     /// Applies a turn from the journal again. Banks whose checkpoint already contains it leave it
     /// alone; nothing is asked for, since what the turn asked for was done then.
     pub fn replay(&mut self, turn: Turn) {
@@ -149,11 +118,10 @@ impl Engine {
         self.changed = true;
         match event {
             Event::Measurements(all) => {
-                let kept = self.measurements(number, all, now);
-                (
-                    (!kept.is_empty()).then_some(Event::Measurements(kept)),
-                    Vec::new(),
-                )
+                let mut effects = Vec::new();
+                let kept = self.measurements(number, all, now, &mut effects);
+                let kept = (!kept.is_empty()).then_some(Event::Measurements(kept));
+                (kept, effects)
             }
             Event::Refusals(refusals) => {
                 for refusal in refusals {
@@ -167,7 +135,7 @@ impl Engine {
                 self.do_due(number, &due, now, &mut effects);
                 (Some(Event::Due(due)), effects)
             }
-            Event::Command { ticket, who, what } => self.command(number, ticket, who, what, now),
+            Event::Command { ticket, who, what } => self.command(number, (ticket, who), what, now),
             Event::Delivered { number } => {
                 self.outbox = self.outbox.saturating_sub(1);
                 self.outbox_trouble = None;
@@ -187,21 +155,32 @@ impl Engine {
         }
     }
 
-    fn measurements(&mut self, number: u64, all: Vec<Measurement>, now: Time) -> Vec<Measurement> {
+    fn measurements(
+        &mut self,
+        number: u64,
+        all: Vec<Measurement>,
+        now: Time,
+        effects: &mut Vec<Effect>,
+    ) -> Vec<Measurement> {
         let mut kept = Vec::with_capacity(all.len());
         let contained: Vec<bool> = self.banks.iter().map(|b| b.state.turn >= number).collect();
         for m in all {
-            let Some(bank) = self.banks.get_mut(m.bank.index()) else {
+            let b = m.bank.index();
+            let Some(bank) = self.banks.get_mut(b) else {
                 continue;
             };
-            if contained[m.bank.index()] {
+            if contained[b] {
                 continue;
             }
             bank.dirty = true;
             match bank.accept(&m, now) {
                 Ok(()) => {
                     bank.mark(number);
+                    let called = bank.watch(&self.plant, now);
                     kept.push(m);
+                    if let Some(called) = called {
+                        self.tell(b, called, number, now, effects);
+                    }
                 }
                 Err(reason) => {
                     let refusal = view::refusal_of(&m, reason, bank, now);
@@ -258,19 +237,32 @@ impl Engine {
         let contained: Vec<bool> = self.banks.iter().map(|b| b.state.turn >= number).collect();
         let open = |b: BankIx| contained.get(b.index()) == Some(&false);
         for &(b, source) in due.silent.iter().filter(|(b, _)| open(*b)) {
-            self.banks[b.index()].silence(source);
-            self.banks[b.index()].mark(number);
+            let bank = &mut self.banks[b.index()];
+            bank.silence(source);
+            bank.mark(number);
+            // Nobody waits for it any more, so cycles may have closed.
+            if let Some(called) = bank.watch(&self.plant, now) {
+                self.tell(b.index(), called, number, now, effects);
+            }
         }
         for &b in due.looks.iter().filter(|b| open(**b)) {
-            self.look(b.index(), number, now, effects);
-            self.banks[b.index()].mark(number);
+            let bank = &mut self.banks[b.index()];
+            let looked = bank.look(&self.plant, now);
+            bank.mark(number);
+            self.tell(b.index(), looked, number, now, effects);
         }
     }
 
-    fn look(&mut self, b: usize, number: u64, now: Time, effects: &mut Vec<Effect>) {
-        let plant = self.plant.clone();
-        let bank = &mut self.banks[b];
-        let looked = bank.look(&plant, now);
+    /// What a look brought, as effects.
+    fn tell(
+        &mut self,
+        b: usize,
+        looked: Looked,
+        number: u64,
+        now: Time,
+        effects: &mut Vec<Effect>,
+    ) {
+        let bank = &self.banks[b];
         let name = bank.bank.name.clone();
         for look in &looked.looks {
             effects.push(Effect::Keep(Record::Digest(name.clone(), look.digest())));
@@ -294,7 +286,7 @@ impl Engine {
     }
 
     /// Sends what people should receive now.
-    fn send(&mut self, b: usize, number: u64, now: Time, effects: &mut Vec<Effect>) {
+    pub(super) fn send(&mut self, b: usize, number: u64, now: Time, effects: &mut Vec<Effect>) {
         let mut already = effects
             .iter()
             .filter(|e| matches!(e, Effect::Deliver(_)))
@@ -322,83 +314,6 @@ impl Engine {
             .retain(|i| i.notice.state.is_open());
     }
 
-    fn command(
-        &mut self,
-        number: u64,
-        ticket: Ticket,
-        who: Name,
-        what: Command,
-        now: Time,
-    ) -> (Option<Event>, Vec<Effect>) {
-        match &what {
-            Command::Windows { bank } => {
-                let outcome = match self.banks.get(bank.index()) {
-                    Some(b) => Outcome::Windows(b.window_views()),
-                    None => Outcome::NotFound("there is no such bank".to_owned()),
-                };
-                (None, vec![Effect::Answer { ticket, outcome }])
-            }
-            Command::Acknowledge { notice, comment } => {
-                let by = who.clone();
-                let acknowledgement = Acknowledgement {
-                    by,
-                    at: now,
-                    comment: comment.clone(),
-                };
-                let Some((b, after, news)) = self.acknowledge(number, notice, acknowledgement)
-                else {
-                    let outcome =
-                        Outcome::NotFound(format!("no open notice has the id \"{notice}\""));
-                    return (None, vec![Effect::Answer { ticket, outcome }]);
-                };
-                let mut effects = Vec::new();
-                if news {
-                    effects.push(Effect::Keep(Record::Notice(after.clone())));
-                    self.send(b, number, now, &mut effects);
-                }
-                effects.push(Effect::Answer {
-                    ticket,
-                    outcome: Outcome::Acknowledged(after),
-                });
-                (
-                    news.then_some(Event::Command { ticket, who, what }),
-                    effects,
-                )
-            }
-        }
-    }
-
-    /// The bank, the notice after it, and whether anything changed.
-    fn acknowledge(
-        &mut self,
-        number: u64,
-        id: &str,
-        acknowledgement: Acknowledgement,
-    ) -> Option<(usize, Arc<Notice>, bool)> {
-        for (b, bank) in self.banks.iter_mut().enumerate() {
-            if bank.state.turn >= number {
-                continue;
-            }
-            let Some(incident) = bank
-                .state
-                .incidents
-                .iter_mut()
-                .find(|i| &*i.notice.id == id)
-            else {
-                continue;
-            };
-            let before = incident.notice.state;
-            incident.acknowledge(acknowledgement);
-            let news = incident.notice.state != before;
-            let after = incident.notice.clone();
-            if news {
-                bank.mark(number);
-            }
-            return Some((b, after, news));
-        }
-        None
-    }
-
     fn checkpoint_if_due(&mut self, b: usize, now: Time) -> Option<Effect> {
         let bank = &mut self.banks[b];
         let last = *bank.last_checkpoint.get_or_insert(now);
@@ -423,7 +338,7 @@ impl Engine {
         let all = self
             .banks
             .iter()
-            .flat_map(|b| b.examine(now, Need::Whatever).looks);
+            .flat_map(|b| b.examine(now, Need::Whatever, None).looks);
         all.map(Arc::new).collect()
     }
 
@@ -480,20 +395,4 @@ fn next_deadline(bank: &Watched) -> Option<Time> {
         .into_iter()
         .flatten()
         .min()
-}
-
-/// `last` is the last turn that was applied: whatever in it was not for this bank is contained too,
-/// so that a bank that stands idle does not hold the whole journal back.
-fn checkpoint(bank: &mut Watched, last: u64, now: Time) -> Record {
-    bank.state.turn = bank.state.turn.max(last);
-    bank.unsaved = false;
-    bank.last_checkpoint = Some(now);
-    let mut state = vec![STATE_VERSION];
-    // Encoding plain data into memory cannot fail.
-    state.extend(postcard::to_allocvec(&bank.state).unwrap_or_default());
-    Record::Checkpoint {
-        bank: bank.bank.name.clone(),
-        turn: bank.state.turn,
-        state,
-    }
 }

@@ -4,7 +4,7 @@ use std::sync::Arc;
 
 use serde::{Deserialize, Serialize};
 
-use crate::model::{BankIx, Measurement, Name, Refusal, SourceIx, Time};
+use crate::model::{BankIx, LineChange, LineEvent, Measurement, Name, Refusal, SourceIx, Time};
 use crate::notice::{Delivery, Notice};
 use crate::verdict::{Digest, Look};
 
@@ -76,6 +76,15 @@ pub enum Command {
         /// What the person wrote; may be empty.
         comment: String,
     },
+    /// Take in a line event.
+    Line {
+        /// Which bank.
+        bank: BankIx,
+        /// What happened.
+        change: LineChange,
+        /// Why, as the person wrote it; may be empty.
+        reason: String,
+    },
     /// The values in a bank's windows. Changes nothing.
     Windows {
         /// Which bank.
@@ -88,6 +97,8 @@ pub enum Command {
 pub enum Outcome {
     /// Acknowledged; the notice as it stands now. Asking twice gives the same.
     Acknowledged(Arc<Notice>),
+    /// Taken in; the line event as it is kept.
+    Line(LineEvent),
     /// The bank's windows, sources in display order.
     Windows(Vec<WindowView>),
     /// There is no such thing; says what.
@@ -124,6 +135,15 @@ pub enum Record {
     },
     /// The short form of a look of this bank.
     Digest(Name, Digest),
+    /// A line event of this bank; the turn tells those of one moment apart.
+    Line {
+        /// The bank's name.
+        bank: Name,
+        /// The turn that brought it.
+        turn: u64,
+        /// What happened.
+        event: LineEvent,
+    },
     /// A look worth keeping whole.
     Look(Arc<Look>),
     /// A notice as it stands now; replaces what was kept under its id.

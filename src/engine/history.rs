@@ -1,6 +1,6 @@
 //! How the past is read: implemented by the store, used by pages and interfaces.
 
-use crate::model::Time;
+use crate::model::{LineEvent, Time};
 use crate::notice::Notice;
 use crate::verdict::{Digest, Look};
 
@@ -31,6 +31,18 @@ pub trait History: Send + Sync {
         to: Time,
         most: usize,
     ) -> Result<Vec<Digest>, HistoryError>;
+
+    /// A bank's line events with `from <= at < to`, oldest first, the newest `most` of them.
+    ///
+    /// # Errors
+    /// When the store cannot be read.
+    fn line_events(
+        &self,
+        bank: &str,
+        from: Time,
+        to: Time,
+        most: usize,
+    ) -> Result<Vec<LineEvent>, HistoryError>;
 
     /// The newest look of a bank that was kept whole at or before `at`, one per span.
     ///

@@ -7,16 +7,16 @@ use serde::{Deserialize, Serialize};
 use crate::model::{Name, SourceIx, Time};
 use crate::notice::{
     Acknowledgement, Compared, Facts, Happening, Kind, NamedSource, Notice, Priority, SPREAD_UNIT,
-    Since, State, after,
+    State, after,
 };
 use crate::stats::dist;
 use crate::verdict::{
-    Aspect, Call, Estimate, Examination, Located, Shares, Yardstick, locate, returned, size_since,
-    values_to_clear,
+    Aspect, Call, Estimate, Examination, Shares, Yardstick, locate, returned, values_to_clear,
 };
 use crate::window::Windows;
 
 use super::Plant;
+use super::apart::{Adjusted, Apart, farness};
 use super::bank::Watched;
 
 /// Updates of an open notice are sent at most this often.
@@ -24,24 +24,6 @@ const SEND_EVERY_US: i64 = 10_000_000;
 
 /// A source whose values lie outside the limits this often makes the notice a high one.
 const MUCH_OUTSIDE: f64 = 0.01;
-
-/// A source that is apart, or was.
-#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
-pub struct Apart {
-    pub source: SourceIx,
-    pub located: Place,
-    pub size: Estimate,
-    /// The largest size seen.
-    pub worst: Estimate,
-    pub cleared: bool,
-}
-
-/// Since when, in the window's order and in time.
-#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
-pub struct Place {
-    pub start: i64,
-    pub since: Since,
-}
 
 /// One incident and its notice.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
@@ -69,7 +51,7 @@ pub struct Surroundings<'a> {
 }
 
 impl Surroundings<'_> {
-    fn yard<'b>(&self, aspect: Aspect, reference: &'b [SourceIx]) -> Yardstick<'b> {
+    pub fn yard<'b>(&self, aspect: Aspect, reference: &'b [SourceIx]) -> Yardstick<'b> {
         Yardstick {
             reference,
             margin: match aspect {
@@ -91,18 +73,7 @@ impl Surroundings<'_> {
 impl Incident {
     /// Begins an incident; `None` when nothing in the values bears the call out.
     pub fn begin(call: &Call, id: Name, about: &Surroundings) -> Option<Self> {
-        let yard = about.yard(call.aspect, &call.reference);
-        let apart: Vec<Apart> = call
-            .named
-            .iter()
-            .filter_map(|&source| {
-                Some((
-                    source,
-                    locate(&about.exam.data, source, call.aspect, &yard)?,
-                ))
-            })
-            .map(|(source, located)| Apart::new(source, &located))
-            .collect();
+        let apart = Apart::all(call, about);
         let first = apart.first()?;
         let notice = Notice {
             id,
@@ -183,7 +154,9 @@ impl Incident {
         let yard = about.yard(self.aspect, &self.reference);
         for one in self.apart.iter_mut().filter(|a| !a.cleared) {
             let data = &about.exam.data;
-            match returned(data, one.source, self.aspect, &yard, self.called_at) {
+            let after = one.adjusted.map_or(i64::MIN, |a| a.from.saturating_sub(1));
+            let after = after.max(self.called_at);
+            match returned(data, one.source, self.aspect, &yard, after) {
                 Some(from) => {
                     one.cleared = true;
                     back.push((one.source, from.place));
@@ -222,6 +195,41 @@ impl Incident {
                 self.reference = rest;
             }
         }
+    }
+
+    /// Takes in what the watch calls while this incident is open; says whether anybody joined.
+    pub fn admit(&mut self, call: &Call, about: &Surroundings) -> bool {
+        let joining = Apart::all(call, about);
+        if joining.is_empty() {
+            return false;
+        }
+        for one in joining {
+            self.reference.retain(|s| *s != one.source);
+            self.apart.retain(|a| a.source != one.source);
+            self.apart.push(one);
+        }
+        self.tell(about);
+        true
+    }
+
+    /// A source that it is about was adjusted: evidence counts from `from` on.
+    pub fn adjusted(&mut self, source: SourceIx, by: Option<f64>, at: Time, from: i64) {
+        if !self.is_about(source) {
+            return;
+        }
+        if let Some(one) = self.apart.iter_mut().find(|a| a.source == source) {
+            one.adjusted = Some(Adjusted {
+                at,
+                by,
+                from,
+                before: one.size,
+            });
+        }
+    }
+
+    /// Another product: evidence counts from `from` on.
+    pub fn changed_over(&mut self, from: i64) {
+        self.called_at = self.called_at.max(from.saturating_sub(1));
     }
 
     /// A person acknowledges; asking twice changes nothing.
@@ -364,68 +372,6 @@ impl Incident {
         });
         let other = set(n) != set(last) || n.priority != last.priority;
         (other || moved) && now.us_since(*at) >= SEND_EVERY_US
-    }
-}
-
-impl Apart {
-    fn new(source: SourceIx, located: &Located) -> Self {
-        Self {
-            source,
-            located: Place::of(located),
-            size: located.size,
-            worst: located.size,
-            cleared: false,
-        }
-    }
-
-    fn update(&mut self, about: &Surroundings, aspect: Aspect, yard: &Yardstick) {
-        let data = &about.exam.data;
-        // A start that has left the windows is kept: what is left would only seem to start later.
-        let reaches_back = data.oldest_place().is_some_and(|p| p < self.located.start);
-        if reaches_back && let Some(located) = locate(data, self.source, aspect, yard) {
-            self.located = Place::of(&located);
-            self.size = located.size;
-        } else if let Some(size) = size_since(data, self.source, aspect, yard, self.located.start) {
-            self.size = size;
-        }
-        if farness(aspect, &self.size) > farness(aspect, &self.worst) {
-            self.worst = self.size;
-        }
-    }
-
-    /// Its size now; what it was at worst once it is back.
-    fn told(&self, about: &Surroundings) -> NamedSource {
-        let size = if self.cleared {
-            &self.worst
-        } else {
-            &self.size
-        };
-        NamedSource {
-            source: about.watched.name(self.source),
-            deviation: size.value,
-            low: size.low,
-            high: size.high,
-        }
-    }
-}
-
-impl Place {
-    fn of(located: &Located) -> Self {
-        Self {
-            start: located.start.place,
-            since: Since {
-                at: located.start.taken,
-                earliest: located.earliest.taken,
-                latest: located.latest.taken,
-            },
-        }
-    }
-}
-
-fn farness(aspect: Aspect, size: &Estimate) -> f64 {
-    match aspect {
-        Aspect::Level => size.value.abs(),
-        Aspect::Spread => size.value.ln().abs(),
     }
 }
 

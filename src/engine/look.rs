@@ -4,6 +4,7 @@ use std::sync::Arc;
 
 use crate::model::{Name, SourceIx, Time, topic_name};
 use crate::notice::Notice;
+use crate::verdict::watch::Watch;
 use crate::verdict::{Aspect, Call, Examination, Finding, Look, Need, cleared_margin};
 
 use super::Plant;
@@ -54,7 +55,13 @@ impl Watched {
     pub fn look(&mut self, plant: &Plant, now: Time) -> Looked {
         self.state.look_due = None;
         self.state.last_look = Some(now);
-        let exam = self.examine(now, Need::WholeSpan);
+        self.follow_pace(now);
+        let exam = self.examine(now, Need::WholeSpan, None);
+        self.conclude(plant, now, exam)
+    }
+
+    /// What an examination means for the incidents: open ones follow it, new ones begin.
+    pub fn conclude(&mut self, plant: &Plant, now: Time, exam: Examination) -> Looked {
         let occasion = Occasion {
             plant,
             exam: &exam,
@@ -67,12 +74,20 @@ impl Watched {
         let open: Vec<Aspect> = active().map(|i| i.aspect).collect();
         let about: Vec<SourceIx> = active().flat_map(Incident::about).collect();
         let mut changed = self.follow(&occasion);
-        let mut calls = exam.calls.clone();
-        calls.retain(|c| !open.contains(&c.aspect));
-        for call in &mut calls {
+        if let Some(mut call) = exam.crossed.clone() {
             call.named.retain(|s| !about.contains(s));
+            call.reference.retain(|s| !about.contains(s));
+            changed.extend(self.admit_or_begin(call, &occasion));
+            // Whatever came of it, the same evidence is not to call twice.
+            self.state.watch.iter_mut().for_each(Watch::begin_afresh);
+        } else if !self.watch_decides() {
+            let mut calls = exam.calls.clone();
+            calls.retain(|c| !open.contains(&c.aspect));
+            for call in &mut calls {
+                call.named.retain(|s| !about.contains(s));
+            }
+            changed.extend(calls.into_iter().filter_map(|c| self.begin(c, &occasion)));
         }
-        changed.extend(self.begin(calls, &occasion));
         let looks: Vec<Arc<Look>> = exam.looks.into_iter().map(Arc::new).collect();
         self.state.looks.clone_from(&looks);
         // An incident that is over goes when its last word was sent, not before.
@@ -116,35 +131,46 @@ impl Watched {
             if incident.notice != before {
                 changed.push((incident.notice.clone(), Freshness::Changed));
             }
+            let aspect = incident.aspect;
             for (source, from) in back {
                 self.state.windows.start_fresh(source, from);
-                if incident.aspect == Aspect::Level {
-                    let cleared = cleared_margin(self.bank.margin, sigma);
-                    let known = &mut self.state.sources[source.index()].cleared_margin;
-                    *known = known.max(cleared);
-                }
+                self.watch_with(source, aspect, cleared_margin(self.bank.margin, sigma));
             }
         }
         self.state.incidents = incidents;
         changed
     }
 
-    /// New incidents, each about sources that no open one is about: one source and cause, one notice.
-    fn begin(&mut self, calls: Vec<Call>, occasion: &Occasion) -> Vec<(Arc<Notice>, Freshness)> {
-        let mut changed = Vec::new();
-        for mut call in calls {
-            let is_open = |s: &SourceIx| self.state.incidents.iter().any(|i| i.is_about(*s));
-            call.named.retain(|s| !is_open(s));
-            let id = self.notice_id(occasion.plant, occasion.now);
-            let Some(incident) = Incident::begin(&call, id, &occasion.at(self, &[])) else {
-                continue;
-            };
-            self.state.notices += 1;
-            *self.raised.entry(incident.notice.kind).or_insert(0) += 1;
-            changed.push((incident.notice.clone(), Freshness::Raised));
-            self.state.incidents.push(incident);
+    /// What the watch calls joins the open incident of its kind, or begins one.
+    fn admit_or_begin(
+        &mut self,
+        call: Call,
+        occasion: &Occasion,
+    ) -> Option<(Arc<Notice>, Freshness)> {
+        let mut incidents = std::mem::take(&mut self.state.incidents);
+        let same = |i: &&mut Incident| i.is_active() && i.aspect == call.aspect;
+        let joined = incidents.iter_mut().find(same).map(|incident| {
+            let admitted = incident.admit(&call, &occasion.at(self, &[]));
+            admitted.then(|| (incident.notice.clone(), Freshness::Changed))
+        });
+        self.state.incidents = incidents;
+        match joined {
+            Some(changed) => changed,
+            None => self.begin(call, occasion),
         }
-        changed
+    }
+
+    /// A new incident about sources that no open one is about: one source and cause, one notice.
+    fn begin(&mut self, mut call: Call, occasion: &Occasion) -> Option<(Arc<Notice>, Freshness)> {
+        let is_open = |s: &SourceIx| self.state.incidents.iter().any(|i| i.is_about(*s));
+        call.named.retain(|s| !is_open(s));
+        let id = self.notice_id(occasion.plant, occasion.now);
+        let incident = Incident::begin(&call, id, &occasion.at(self, &[]))?;
+        self.state.notices += 1;
+        *self.raised.entry(incident.notice.kind).or_insert(0) += 1;
+        let raised = (incident.notice.clone(), Freshness::Raised);
+        self.state.incidents.push(incident);
+        Some(raised)
     }
 
     /// Bank, year in the plant's zone, running number.

@@ -4,23 +4,29 @@
 //! Deliberately absent: tokio, files, sockets, clocks, random numbers, logs. What the engine wants
 //! done it says as an [`Effect`]; what happened to it comes as an [`Event`].
 
+mod apart;
 mod bank;
+mod commands;
 mod condition;
 mod core;
 mod event;
 mod history;
 mod incident;
+mod line;
 mod look;
 mod natural;
+mod restore;
 mod snapshot;
 mod source;
 mod view;
+mod watching;
 
-pub use self::core::{Engine, RestoreError};
+pub use self::core::Engine;
 pub use condition::{Condition, Part};
 pub use event::{Command, Due, Effect, Event, Outcome, Record, Ticket, Turn};
 pub use history::{History, HistoryError, Page};
+pub use restore::RestoreError;
 pub use snapshot::{
-    BankView, Cycles, Plant, RefusalView, Snapshot, SourceState, SourceView, WindowValue,
-    WindowView,
+    BankView, Cycles, Plant, RefusalView, Snapshot, SourceState, SourceView, WatchView,
+    WindowValue, WindowView,
 };

@@ -6,8 +6,9 @@ use std::sync::Arc;
 
 use serde::{Deserialize, Serialize};
 
-use crate::model::{Bank, Name, Reason, Refusal, SourceIx, Time, Value};
+use crate::model::{Bank, LineEvent, Name, Reason, Refusal, SourceIx, Time, Value};
 use crate::notice::{Kind, Notice};
+use crate::verdict::watch::{Figures, Progress, Reading};
 use crate::verdict::{Estimate, Look};
 
 use super::condition::Condition;
@@ -66,14 +67,33 @@ pub struct BankView {
     pub refusals: Vec<RefusalView>,
     /// How the cycles (or slots) came in; `None` without pairing.
     pub cycles: Option<Cycles>,
+    /// The stop, while the line stands.
+    pub stopped: Option<LineEvent>,
+    /// What the line makes, since the first changeover.
+    pub product: Option<Name>,
+    /// The newest line events, oldest first.
+    pub line_events: Vec<LineEvent>,
+    /// What the watch says of itself; `None` without pairing.
+    pub watch: Option<WatchView>,
     /// The usual time between values of a source.
     pub interval_us: Option<i64>,
     /// When the next look is due, if anything new has arrived.
     pub next_look: Option<Time>,
     /// The newest time of a measurement that was taken in.
     pub newest_taken: Option<Time>,
-    /// Mean of all sources over the longest span (of the newest look), in the unit.
+    /// Mean of all sources over [`BankView::shown_span`], in the unit.
     pub mean: Option<f64>,
+}
+
+/// The watch of a bank, now.
+#[derive(Clone, Debug, PartialEq)]
+pub struct WatchView {
+    /// Whether it decides yet.
+    pub progress: Progress,
+    /// How far each part is from its threshold; empty while it learns.
+    pub readings: Vec<Reading>,
+    /// What it learnt, and how the budget became its thresholds.
+    pub figures: Figures,
 }
 
 /// Counts of cycles or slots since the bank's windows began.
@@ -99,6 +119,8 @@ pub enum SourceState {
     Present,
     /// Has delivered nothing for longer than it may.
     Silent,
+    /// Taken out of use by a person.
+    OutOfUse,
 }
 
 impl SourceState {
@@ -109,11 +131,13 @@ impl SourceState {
             Self::New => "new",
             Self::Present => "present",
             Self::Silent => "silent",
+            Self::OutOfUse => "out_of_use",
         }
     }
 }
 
-/// A source, now. Figures come from the newest look that could judge it, over the longest such span.
+/// A source, now. Figures come from the newest look over [`BankView::shown_span`]; those of a source
+/// that an open notice names rest on the values since it left.
 #[derive(Clone, Debug)]
 pub struct SourceView {
     /// Which.

@@ -30,6 +30,10 @@ pub struct Source {
     pub last_taken: Option<Time>,
     pub last_received: Option<Time>,
     pub silent: bool,
+    /// Taken out of use by a person.
+    pub out_of_use: bool,
+    /// When it was last put back in use.
+    pub in_use_since: Option<Time>,
     /// The margin with which it is watched since it cleared, where that is above the bank's.
     pub cleared_margin: f64,
 }
@@ -45,12 +49,17 @@ impl Source {
             last_taken: None,
             last_received: None,
             silent: false,
+            out_of_use: false,
+            in_use_since: None,
             cleared_margin: 0.0,
         }
     }
 
     pub fn state(&self) -> SourceState {
         match self {
+            Self {
+                out_of_use: true, ..
+            } => SourceState::OutOfUse,
             Self { silent: true, .. } => SourceState::Silent,
             Self { accepted: 0, .. } => SourceState::Awaited,
             Self {
@@ -65,10 +74,11 @@ impl Source {
     /// Whether looks compare it.
     pub fn takes_part(&self) -> bool {
         let enough = if self.discovered { NEW_UNTIL } else { 1 };
-        !self.retired && self.accepted >= enough
+        !self.retired && !self.out_of_use && self.accepted >= enough
     }
 
-    /// When it counts as silent if nothing arrives; `began` stands in for a source that never did.
+    /// When it counts as silent if nothing arrives; `began` is when the bank or the line last started, and
+    /// nobody is silent for what came before.
     pub fn silent_from(&self, bank: &Bank, ring: &Ring, began: Time) -> Time {
         let limit = bank.silent_after_us.unwrap_or_else(|| {
             let usual = usual_interval_us(ring).unwrap_or(0);
@@ -76,7 +86,8 @@ impl Source {
                 .saturating_mul(SILENT_INTERVALS)
                 .max(SILENT_AT_LEAST_US)
         });
-        self.last_received.unwrap_or(began).plus_us(limit)
+        let heard = self.last_received.max(self.in_use_since);
+        heard.unwrap_or(began).max(began).plus_us(limit)
     }
 }
 

@@ -8,7 +8,7 @@ use crate::verdict::{Aspect, Look, SourceLook};
 
 use super::bank::Watched;
 use super::incident::Incident;
-use super::{BankView, Condition, Cycles, Plant, RefusalView, Snapshot, SourceView};
+use super::{BankView, Condition, Cycles, Plant, RefusalView, Snapshot, SourceView, WatchView};
 
 /// A snapshot of nothing.
 pub fn empty(plant: Arc<Plant>) -> Snapshot {
@@ -52,6 +52,14 @@ pub fn bank_view(watched: &Watched) -> BankView {
         outcomes: watched.outcomes.clone(),
         refusals: watched.refusals.clone(),
         cycles,
+        stopped: state.line.stopped.clone(),
+        product: state.line.product.clone(),
+        line_events: state.line.newest.iter().cloned().collect(),
+        watch: state.watch.as_ref().map(|w| WatchView {
+            progress: w.progress(),
+            readings: w.readings(),
+            figures: w.figures(),
+        }),
         interval_us: watched.interval_us(),
         next_look: state.look_due,
         newest_taken: state.sources.iter().filter_map(|s| s.last_taken).max(),
@@ -130,6 +138,7 @@ pub fn refusal_of(m: &Measurement, reason: Reason, watched: &Watched, now: Time)
         ),
         Reason::NoCycle => "the bank pairs by cycle and the payload carries none".to_owned(),
         Reason::Double => format!("source \"{}\" has already delivered this value", m.source),
+        Reason::LineStopped => format!("taken at {taken}, while the line stands; enter its start"),
         other => other.word().to_owned(),
     };
     Refusal {

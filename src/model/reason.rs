@@ -45,11 +45,13 @@ pub enum Reason {
     TooOld,
     /// Taken more than five minutes ahead of now.
     TooFarAhead,
+    /// Taken while the line stands.
+    LineStopped,
 }
 
 impl Reason {
     /// Every reason, in the order pages show them.
-    pub const ALL: [Self; 18] = [
+    pub const ALL: [Self; 19] = [
         Self::Empty,
         Self::TooLarge,
         Self::Malformed,
@@ -68,6 +70,7 @@ impl Reason {
         Self::Double,
         Self::TooOld,
         Self::TooFarAhead,
+        Self::LineStopped,
     ];
 
     /// The one word used in metrics and the interface.
@@ -91,6 +94,7 @@ impl Reason {
             Self::Double => "double",
             Self::TooOld => "too_old",
             Self::TooFarAhead => "too_far_ahead",
+            Self::LineStopped => "line_stopped",
         }
     }
 }

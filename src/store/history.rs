@@ -5,7 +5,7 @@ use std::sync::Arc;
 use serde::de::DeserializeOwned;
 
 use crate::engine::{History, HistoryError, Page};
-use crate::model::Time;
+use crate::model::{LineEvent, Time};
 use crate::notice::Notice;
 use crate::verdict::{Digest, Look};
 
@@ -26,6 +26,22 @@ impl Past {
     fn get<T: DeserializeOwned>(&self, key: &[u8]) -> Result<Option<T>, ReadError> {
         let value = self.0.get(key)?;
         value.map(|value| self.record(key, &value)).transpose()
+    }
+
+    /// A bank's records of a sort with `from <= at < to`, oldest first, the newest `most` of them.
+    fn of_times<T: DeserializeOwned>(
+        &self,
+        sort: Sort,
+        bank: &str,
+        (from, to): (Time, Time),
+        most: usize,
+    ) -> Result<Vec<T>, ReadError> {
+        let prefix = keys::of_bank(sort, bank);
+        let from = keys::times_from(&prefix, from);
+        let to = keys::times_from(&prefix, to);
+        let page = self.0.page(&from, &to, Order::Falling, most)?;
+        let newest_last = page.iter().rev();
+        newest_last.map(|(k, v)| self.record(k, v)).collect()
     }
 
     fn newest_per_span(&self, bank: &str, at: Time) -> Result<Vec<Look>, ReadError> {
@@ -96,15 +112,19 @@ impl History for Past {
         to: Time,
         most: usize,
     ) -> Result<Vec<Digest>, HistoryError> {
-        let prefix = keys::of_bank(Sort::Digest, bank);
-        let from = keys::digests_from(&prefix, from);
-        let to = keys::digests_from(&prefix, to);
-        let page = self.0.page(&from, &to, Order::Falling, most);
-        let page = page.map_err(|e| wrong(e.into()))?;
-        let newest_last = page.iter().rev();
-        newest_last
-            .map(|(key, value)| self.record(key, value).map_err(wrong))
-            .collect()
+        self.of_times(Sort::Digest, bank, (from, to), most)
+            .map_err(wrong)
+    }
+
+    fn line_events(
+        &self,
+        bank: &str,
+        from: Time,
+        to: Time,
+        most: usize,
+    ) -> Result<Vec<LineEvent>, HistoryError> {
+        self.of_times(Sort::Line, bank, (from, to), most)
+            .map_err(wrong)
     }
 
     fn looks_at(&self, bank: &str, at: Time) -> Result<Vec<Look>, HistoryError> {

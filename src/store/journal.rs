@@ -164,6 +164,10 @@ impl<S: Shelf> Journal<S> {
                 let key = keys::digest(bank, digest.at, digest.span);
                 self.put(ops, key, &to_payload(digest).map_err(encode)?);
             }
+            Record::Line { bank, turn, event } => {
+                let key = keys::line_event(bank, event.at, *turn);
+                self.put(ops, key, &to_payload(event).map_err(encode)?);
+            }
             Record::Look(look) => {
                 let key = keys::look(&look.bank, look.span, look.at);
                 self.replace(ops, key, &to_payload(look).map_err(encode)?)?;

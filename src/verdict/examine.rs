@@ -9,7 +9,8 @@ use super::level::Level;
 use super::look::{Dependence, Finding, Look, SourceLook};
 use super::shares::Shares;
 use super::spread::{Spread, Within};
-use super::track::{self, Aspect, Yardstick};
+use super::track::{self, Aspect, Moment, Yardstick};
+use super::watch::Crossing;
 
 /// With fewer independent values per source than this, dependence has eaten the window.
 const FEWEST_INDEPENDENT: f64 = 4.0;
@@ -39,8 +40,32 @@ pub struct Call {
     pub named: Vec<SourceIx>,
     /// Everybody they were compared with.
     pub reference: Vec<SourceIx>,
-    /// The span of the look that called.
+    /// The span of the look that called, or the shortest that holds what the watch called on.
     pub span: usize,
+    /// Since when, as the watch has it; `None` when a look called.
+    pub began: Option<Began>,
+}
+
+/// Since when sources are apart, with the set of starts that the values allow at 95 %.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub struct Began {
+    /// The most likely start.
+    pub start: Moment,
+    /// The earliest.
+    pub earliest: Moment,
+    /// The latest.
+    pub latest: Moment,
+}
+
+/// What an examination is for.
+#[derive(Clone, Copy, Debug)]
+pub struct Asked<'a> {
+    /// When.
+    pub at: Time,
+    /// How much a span must hold.
+    pub need: Need,
+    /// What the watch found, when that is the reason.
+    pub crossing: Option<&'a Crossing>,
 }
 
 /// What a look at all spans says.
@@ -50,6 +75,8 @@ pub struct Examination {
     pub looks: Vec<Look>,
     /// What is called, at most one for each aspect; spread first.
     pub calls: Vec<Call>,
+    /// What the watch's crossing calls, with its names.
+    pub crossed: Option<Call>,
     /// The values it rests on.
     pub data: Data,
     /// How much dependence enlarges variances.
@@ -57,13 +84,8 @@ pub struct Examination {
 }
 
 /// Looks at a bank over all its spans. `who` are the sources that take part, in display order.
-pub fn examine(
-    bank: &Bank,
-    windows: &Windows,
-    who: &[Participant],
-    at: Time,
-    need: Need,
-) -> Examination {
+pub fn examine(bank: &Bank, windows: &Windows, who: &[Participant], asked: Asked) -> Examination {
+    let Asked { at, need, crossing } = asked;
     let order: Vec<SourceIx> = who.iter().map(|p| p.source).collect();
     let look = Looking {
         bank,
@@ -89,7 +111,12 @@ pub fn examine(
         .filter_map(|aspect| strongest(&spans, aspect))
         .map(|(call, margins)| look.rename(&data, call, &margins, known))
         .collect();
+    let crossed = crossing.map(|c| {
+        let call = look.call_of_crossing(&data, c);
+        look.rename(&data, call, &look.margins(&data), known)
+    });
     Examination {
+        crossed,
         looks: spans.into_iter().map(|s| s.look).collect(),
         calls,
         data,
@@ -254,6 +281,35 @@ impl Looking<'_> {
         (0..cut.sources.len()).map(one).collect()
     }
 
+    /// What a crossing of the watch calls before the values since its start are asked for the names.
+    fn call_of_crossing(&self, data: &Data, crossing: &Crossing) -> Call {
+        let leads = |s: &SourceIx| crossing.leading.contains(s);
+        let all = self.who.iter().map(|p| p.source);
+        let (named, rest): (Vec<SourceIx>, Vec<SourceIx>) = all.partition(leads);
+        Call {
+            aspect: crossing.aspect,
+            reference: if rest.is_empty() { named.clone() } else { rest },
+            named,
+            span: self.span_since(data, crossing.start.place),
+            began: Some(Began {
+                start: crossing.start,
+                earliest: crossing.earliest,
+                latest: crossing.latest,
+            }),
+        }
+    }
+
+    /// The shortest span that holds the values since a place, or the longest there is.
+    fn span_since(&self, data: &Data, start: i64) -> usize {
+        let since = data.since(start);
+        let values = since.map_or(usize::MAX, |d| {
+            d.columns().iter().map(Vec::len).max().unwrap_or(0)
+        });
+        let spans = &self.bank.spans;
+        let holds = spans.iter().copied().find(|s| *s >= values);
+        holds.unwrap_or_else(|| self.bank.window_length())
+    }
+
     /// Names again on the values since the estimated start, which the calling span mixes with older
     /// ones.
     fn rename(&self, data: &Data, call: Call, margins: &[f64], known: Option<Dependence>) -> Call {
@@ -266,11 +322,10 @@ impl Looking<'_> {
             factor: known.map_or(1.0, |d| d.variance_factor),
             family: self.who.len(),
         };
-        let starts = call
-            .named
-            .iter()
-            .filter_map(|s| track::locate(data, *s, call.aspect, &yard));
-        let Some(start) = starts.map(|l| l.start.place).min() else {
+        let locate = |s: &SourceIx| track::locate(data, *s, call.aspect, &yard);
+        let starts = call.named.iter().filter_map(locate);
+        let told = call.began.map(|b| b.start.place);
+        let Some(start) = told.or_else(|| starts.map(|l| l.start.place).min()) else {
             return call;
         };
         let Some(since) = data.since(start) else {
@@ -281,9 +336,10 @@ impl Looking<'_> {
             return call;
         }
         match Level::judge(&since, &self.margins(&since), known) {
-            Ok(level) if level.even.contains(&false) => {
-                call_of(&since, Aspect::Level, &named_level(&level), call.span)
-            }
+            Ok(level) if level.even.contains(&false) => Call {
+                began: call.began,
+                ..call_of(&since, Aspect::Level, &named_level(&level), call.span)
+            },
             _ => call,
         }
     }
@@ -325,6 +381,7 @@ fn call_of(cut: &Data, aspect: Aspect, named: &[bool], span: usize) -> Call {
         named: pick(true),
         reference,
         span,
+        began: None,
     }
 }
 

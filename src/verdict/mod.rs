@@ -14,9 +14,10 @@ mod shares;
 mod spread;
 mod steps;
 mod track;
+pub mod watch;
 
 pub use data::{Data, Need, Rows, Values};
-pub use examine::{Call, Examination, Participant, examine};
+pub use examine::{Asked, Began, Call, Examination, Participant, examine};
 pub use look::{Dependence, Digest, Estimate, Finding, Look, Method, SourceLook, TestEntry};
 pub use shares::Shares;
 pub use track::{

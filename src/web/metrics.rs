@@ -70,6 +70,7 @@ struct Families {
     p: GaugeVec,
     f: GaugeVec,
     alpha: GaugeVec,
+    watch: GaugeVec,
     active: IntGaugeVec,
     notices: IntCounterVec,
     broker: IntGauge,
@@ -122,6 +123,7 @@ impl Families {
                 LOOK_ALPHA,
                 &["bank", "kind", "span"],
             )?,
+            watch: figures(r, "evenrow_watch_ratio", WATCH_RATIO, &["bank", "part"])?,
             active: gauges(r, "evenrow_notice_active", ACTIVE, &["bank", "kind"])?,
             notices: counters(r, "evenrow_notices_total", NOTICES, &["bank", "kind"])?,
             broker: gauge(r, "evenrow_broker_connected", BROKER)?,
@@ -181,6 +183,10 @@ impl Families {
         self.fill_sources(view);
         for look in &view.looks {
             self.fill_look(bank, look);
+        }
+        for reading in view.watch.iter().flat_map(|w| &w.readings) {
+            let labels = [bank, reading.part.key()];
+            self.watch.with_label_values(&labels).set(reading.ratio);
         }
     }
 
@@ -283,7 +289,8 @@ const MEASUREMENTS: &str = "Measurements since the process started by outcome: a
 const WINDOW_VALUES: &str = "Values in a source's window now.";
 const SOURCES: &str = "Sources of a bank by state: awaited, new, present, silent.";
 const DEVIATION: &str = "Deviation of a source from the even set without it, in standard deviations \
-    within sources, over the longest span that could be judged. Shows size; it is not corrected for \
+    within sources: since it left where an open notice names it, else over the shortest span that \
+    resolves the margin. Shows size; it is not corrected for \
     how often one looks, so do not alert on it.";
 const NAMED: &str = "1 while an open notice of this kind names the source, else 0. Join it with \
     evenrow_notice_active on (bank, kind): the names of one notice share one family-wise error rate.";
@@ -296,6 +303,9 @@ const LOOK_F: &str = "F of the test that decides on this kind at the newest look
     Welch's where pairs beyond the margin decide.";
 const LOOK_ALPHA: &str =
     "The share of the call budget that one look over this span spends on this kind.";
+const WATCH_RATIO: &str = "Statistic of a part of the watch over its threshold: few (single sources), \
+    split (groups), pair (two sources apart), erratic, quiet. Above 1 the watch calls. It begins anew after \
+    a call; evenrow_notice_active is what to alert on.";
 const ACTIVE: &str = "Notices of this kind whose condition holds now. Alert on this and join \
     evenrow_source_named for the names: it is the only series that keeps the bank's call budget. \
     p-values and deviations do not.";

@@ -4,7 +4,7 @@ use axum::Json;
 use utoipa::openapi::security::{HttpAuthScheme, HttpBuilder, SecurityScheme};
 use utoipa::{Modify, OpenApi};
 
-use super::api::{banks, notices};
+use super::api::{banks, line, notices};
 
 /// How tokens are sent.
 struct Token;
@@ -32,6 +32,7 @@ impl Modify for Token {
     ),
     paths(
         banks::list, banks::one, banks::windows, banks::looks, banks::refusals,
+        line::list, line::enter,
         notices::list, notices::one, notices::acknowledge,
     ),
     tags(

@@ -24,6 +24,8 @@ pub struct Blocks {
     delivered_open: Vec<u32>,
     closed: u64,
     skipped: u64,
+    /// Blocks that closed with enough sources and that nobody has taken over yet, oldest first.
+    untaken: Vec<i64>,
     /// Whether all sources are known, so that "all have delivered" means something.
     settled: bool,
 }
@@ -60,6 +62,7 @@ impl Blocks {
             delivered_open: Vec::new(),
             closed: 0,
             skipped: 0,
+            untaken: Vec::new(),
             settled: true,
         }
     }
@@ -140,6 +143,7 @@ impl Blocks {
         let present = first.present.iter().filter(|p| **p).count();
         if present >= 2 && 2 * present >= self.waited_for() {
             self.closed += 1;
+            self.untaken.push(first.block);
         } else {
             self.skipped += 1;
         }
@@ -148,6 +152,11 @@ impl Blocks {
 
     fn waited_for(&self) -> usize {
         self.expected.iter().filter(|e| **e).count()
+    }
+
+    /// The blocks that have closed with enough sources since they were last asked for, oldest first.
+    pub fn take_closed(&mut self) -> Vec<i64> {
+        std::mem::take(&mut self.untaken)
     }
 
     /// The newest closed block; `i64::MIN` before the first.

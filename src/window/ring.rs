@@ -88,6 +88,13 @@ impl Ring {
         }
     }
 
+    /// Moves every offset.
+    pub fn shift(&mut self, by: f64) {
+        for entry in &mut self.entries {
+            entry.offset += by;
+        }
+    }
+
     /// Values before `place` no longer count.
     pub fn start_fresh(&mut self, place: i64) {
         self.fresh_from = self.fresh_from.max(place);
@@ -102,6 +109,14 @@ impl Ring {
     /// All values held, oldest first.
     pub fn iter(&self) -> impl DoubleEndedIterator<Item = &Entry> {
         self.entries.iter()
+    }
+
+    /// The value at `place`, if it counts. Made for places near the newest.
+    pub fn at(&self, place: i64) -> Option<&Entry> {
+        let mut from_newest = self.entries.iter().rev();
+        from_newest
+            .find(|e| e.place <= place)
+            .filter(|e| e.place == place && place >= self.fresh_from)
     }
 
     /// The newest value.

@@ -10,9 +10,9 @@
 //! | `drops` | the broker's own count of messages that it dropped |
 //!
 //! What must hold:
-//! - The task that polls the connection never waits for anything else, so that keep-alive goes on
-//!   while the store stands still; what arrives meanwhile fits the queue, because the broker sends at
-//!   most a receive maximum of messages that are not acknowledged.
+//! - The task that polls the connection waits for nothing else while the queue has room, so that
+//!   keep-alive goes on while the store stands still; the queue has four times the room of what the
+//!   broker may send unacknowledged. A broker that sends still more is not read any further and waits.
 //! - A message is acknowledged once, after its receipt came back, on the connection on which the
 //!   broker last delivered it.
 //! - Subscribing happens on every connection, whatever the broker says it remembers.

@@ -60,16 +60,19 @@ pub async fn windows(
         ))),
         Outcome::NotFound(why) => Err(Problem::not_found(&why)),
         Outcome::Refused(why) => Err(Problem::unavailable(&why)),
-        Outcome::Acknowledged(_) => Err(Problem::internal("the answer was to another question")),
+        Outcome::Acknowledged(_) | Outcome::Line(_) => {
+            Err(Problem::internal("the answer was to another question"))
+        }
     }
 }
 
-/// Which looks.
+/// Which times.
 #[derive(Debug, Default, Deserialize, IntoParams)]
 #[into_params(parameter_in = Query)]
 #[serde(deny_unknown_fields)]
-pub struct LooksWanted {
-    /// At or after this time (RFC 3339); a day before `to` when it is missing.
+pub struct TimesWanted {
+    /// At or after this time (RFC 3339); a day before `to` for looks, thirty for line events, when it is
+    /// missing.
     from: Option<String>,
     /// Before this time (RFC 3339); now when it is missing.
     to: Option<String>,
@@ -80,31 +83,45 @@ pub struct LooksWanted {
 /// Short forms of past looks, oldest first. `next`, when there is one, is the `to` that gives those
 /// before.
 #[utoipa::path(get, path = "/api/v1/banks/{bank}/looks", tag = "banks",
-    params(("bank" = String, Path, description = "The bank's name"), LooksWanted),
+    params(("bank" = String, Path, description = "The bank's name"), TimesWanted),
     responses((status = 200, body = List<DigestBody>), (status = 400, body = Problem),
         (status = 404, body = Problem), (status = 503, body = Problem),
         (status = "default", body = Problem)))]
 pub async fn looks(
     State(app): State<App>,
     Path(name): Path<String>,
-    wanted: Result<Query<LooksWanted>, QueryRejection>,
+    wanted: Result<Query<TimesWanted>, QueryRejection>,
 ) -> Result<Json<List<DigestBody>>, Problem> {
     bank(&app.now(), &name)?;
-    let Query(wanted) = wanted.map_err(|e| Problem::bad_request(&e.body_text()))?;
-    let to = time("to", wanted.to)?.unwrap_or_else(|| app.site.clock.now().plus_us(1));
-    let from = time("from", wanted.from)?.unwrap_or_else(|| to.plus_us(-US_PER_DAY));
-    let most = wanted.most.unwrap_or(MOST_LOOKS);
-    if !(1..=MOST_LOOKS).contains(&most) {
-        return Err(Problem::bad_request(
-            "`most` must be a whole number from 1 to 1000",
-        ));
-    }
+    let (from, to, most) = range(&app, wanted, US_PER_DAY)?;
     let found = app
         .history(move |h| h.digests(&name, from, to, most))
         .await?;
     let (found, next) = whole_moments(found, most);
     let items = found.into_iter().map(Into::into).collect();
     Ok(Json(List { items, next }))
+}
+
+/// From, to and the most of what is asked for; `usual_us` back from `to` when `from` is missing.
+///
+/// # Errors
+/// 400 for what cannot be read.
+pub fn range(
+    app: &App,
+    wanted: Result<Query<TimesWanted>, QueryRejection>,
+    usual_us: i64,
+) -> Result<(Time, Time, usize), Problem> {
+    let Query(wanted) = wanted.map_err(|e| Problem::bad_request(&e.body_text()))?;
+    let to = time("to", wanted.to)?.unwrap_or_else(|| app.site.clock.now().plus_us(1));
+    let from = time("from", wanted.from)?.unwrap_or_else(|| to.plus_us(-usual_us));
+    let most = wanted.most.unwrap_or(MOST_LOOKS);
+    if (1..=MOST_LOOKS).contains(&most) {
+        Ok((from, to, most))
+    } else {
+        Err(Problem::bad_request(
+            "`most` must be a whole number from 1 to 1000",
+        ))
+    }
 }
 
 /// A full part may begin in the middle of one moment's looks: leaves those to the next part, whose

@@ -15,7 +15,7 @@ use crate::web::site::{App, bank};
 use super::frame::{Page, Scene, render};
 use super::history::{self, Past};
 use super::standing::Standing;
-use super::{looks, notice, sources};
+use super::{looks, notice, sources, watch};
 
 /// Eight hours of looks each second; a bound on what one page reads.
 const MOST_DIGESTS: usize = 30_000;
@@ -93,6 +93,7 @@ fn main(
                 }
             }
         }
+        (watch::section(view))
         @if !view.looks.is_empty() { (looks::tests(scene, view, shown.as_ref().map(|s| s.look.span))) }
         section {
             h2 { "What do the sources deliver?" }

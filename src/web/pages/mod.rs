@@ -14,3 +14,4 @@ pub mod plant;
 pub mod signin;
 mod sources;
 pub mod standing;
+mod watch;

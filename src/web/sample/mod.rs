@@ -6,6 +6,7 @@
 mod looks;
 mod notices;
 mod past;
+mod watch;
 
 pub use past::SampleHistory;
 
@@ -16,8 +17,8 @@ use crate::engine::{
     BankView, Condition, Cycles, Plant, RefusalView, Snapshot, SourceState, SourceView,
 };
 use crate::model::{
-    Bank, BankIx, Characteristic, Layout, Pairing, Reason, Refusal, SourceIx, Sources, Time,
-    US_PER_DAY, US_PER_S, Value,
+    Bank, BankIx, Characteristic, Layout, LineChange, LineEvent, Pairing, Reason, Refusal,
+    SourceIx, Sources, Time, US_PER_DAY, US_PER_S, Value,
 };
 use crate::notice::{Kind, Notice};
 use crate::verdict::{Estimate, Look};
@@ -186,6 +187,10 @@ pub fn view(bank: Bank, story: Story, seed: u64) -> BankView {
         open,
         outcomes,
         refusals: if values > 0 { refusals() } else { Vec::new() },
+        stopped: None,
+        product: None,
+        line_events: line_events(story),
+        watch: Some(watch::watch(&bank, names.len(), story, values)),
         cycles: Some(Cycles {
             closed: 40_176,
             skipped: 2,
@@ -296,4 +301,20 @@ pub fn snapshot() -> Snapshot {
 
 fn named(word: &str, count: usize) -> Vec<String> {
     (1..=count).map(|n| format!("{word} {n}")).collect()
+}
+
+/// What people entered: a source that moved was adjusted before.
+fn line_events(story: Story) -> Vec<LineEvent> {
+    let Story::Level(at, ..) = story else {
+        return Vec::new();
+    };
+    vec![LineEvent {
+        at: moment().plus_us(-5400 * US_PER_S),
+        by: "R. Matos".into(),
+        change: LineChange::Adjustment {
+            source: format!("{:02}", at + 1).into(),
+            by: Some(0.4),
+        },
+        reason: "valve seat cleaned".to_owned(),
+    }]
 }

@@ -3,7 +3,7 @@
 use std::sync::Arc;
 
 use crate::engine::{BankView, History, HistoryError, Page, Snapshot};
-use crate::model::{Name, Time, US_PER_S};
+use crate::model::{LineEvent, Name, Time, US_PER_S};
 use crate::notice::Notice;
 use crate::verdict::{Digest, Look};
 
@@ -64,6 +64,21 @@ impl History for SampleHistory {
                 all.push(look(&view.bank, &names, story, *span, at, 9).digest());
             }
         }
+        let skip = all.len().saturating_sub(most);
+        Ok(all.split_off(skip))
+    }
+
+    fn line_events(
+        &self,
+        bank: &str,
+        from: Time,
+        to: Time,
+        most: usize,
+    ) -> Result<Vec<LineEvent>, HistoryError> {
+        let found = self.snapshot.banks.iter().find(|b| &*b.bank.name == bank);
+        let events = found.into_iter().flat_map(|b| &b.line_events);
+        let in_range = events.filter(|e| (from..to).contains(&e.at)).cloned();
+        let mut all: Vec<LineEvent> = in_range.collect();
         let skip = all.len().saturating_sub(most);
         Ok(all.split_off(skip))
     }

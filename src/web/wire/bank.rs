@@ -8,7 +8,7 @@ use utoipa::ToSchema;
 use crate::engine::{BankView, RefusalView, SourceView, WindowView};
 use crate::model::{Refusal, Time};
 
-use super::{EstimateBody, LookBody, NoticeBody, finite};
+use super::{EstimateBody, LookBody, NoticeBody, WatchBody, finite};
 
 /// A bank in the list of banks.
 #[derive(Debug, Serialize, ToSchema)]
@@ -33,7 +33,7 @@ pub struct BankBody {
     pub standing: String,
     /// Names of its open notices.
     pub open_notices: Vec<String>,
-    /// Mean of all sources over the longest span.
+    /// Mean of all sources over the span that stands for now.
     pub mean: Option<f64>,
     /// Newest time of a measurement that was taken in.
     #[schema(value_type = Option<String>, format = DateTime)]
@@ -52,6 +52,8 @@ pub struct BankWholeBody {
     pub sources: Vec<SourceBody>,
     /// The newest look of each span, shortest first.
     pub looks: Vec<LookBody>,
+    /// The watch; `null` where sources share no cycle, because the looks decide there.
+    pub watch: Option<WatchBody>,
     /// Its open notices, newest first.
     pub notices: Vec<NoticeBody>,
 }
@@ -118,6 +120,7 @@ impl BankWholeBody {
                 .iter()
                 .map(|l| LookBody::from(l.as_ref()))
                 .collect(),
+            watch: WatchBody::of(view),
             notices: view
                 .open
                 .iter()

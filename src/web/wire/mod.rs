@@ -6,12 +6,16 @@
 //! destructuring where it copies a struct, so that a new field cannot be forgotten.
 
 mod bank;
+mod line;
 mod look;
 mod notice;
+mod watch;
 
 pub use bank::{BankBody, BankWholeBody, RefusalBody, SourceBody, WindowBody, WindowValueBody};
+pub use line::{LineEntryBody, LineEventBody, LineKind};
 pub use look::{DependenceBody, DeviationBody, DigestBody, LookBody, SourceLookBody, TestBody};
 pub use notice::{AcknowledgeBody, AcknowledgementBody, NamedSourceBody, NoticeBody, SinceBody};
+pub use watch::{WatchBody, WatchPartBody};
 
 use serde::Serialize;
 use utoipa::ToSchema;
