@@ -59,7 +59,8 @@ impl Setup {
             spread_margin: 1.5,
             arl0: 50_000.0,
             look_every: 1000,
-            learn: 2500,
+            // Sigma is learnt from cycles times k - 1.
+            learn: 2500.max(7500 / (k.max(2) as i64 - 1)),
             pairing: Pairing::Cycle,
         }
     }

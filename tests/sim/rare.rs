@@ -89,8 +89,10 @@ fn one(rig: &mut dyn Stepper, feed: &mut Feed) -> f64 {
         feed.cycle(&mut values);
         mixture.add(&values);
         if rig.step(&values) {
-            let counts = cycle >= SETTLE;
-            return if counts { 1.0 / mixture.ratio() } else { 0.0 };
+            let weight = 1.0 / mixture.ratio();
+            // A ratio beyond the range of a double has a weight of nothing.
+            let counts = cycle >= SETTLE && weight.is_finite();
+            return if counts { weight } else { 0.0 };
         }
     }
     0.0

@@ -7,6 +7,7 @@ use std::sync::{Arc, Mutex};
 use evenrow::engine::{Effect, Engine, Event, Plant, Record};
 use evenrow::model::{Bank, BankIx, Budget, Measurement, Name, Pairing, Time, US_PER_S, Value};
 use evenrow::notice::{Kind, Notice};
+use evenrow::verdict::watch::Progress;
 
 use super::crew::Crew;
 use super::feed::{Feed, Setup};
@@ -168,6 +169,17 @@ impl Rig {
         other
     }
 
+    /// A row about the watch says nothing while the looks still decide.
+    fn check_learnt(&mut self, setup: &Setup) {
+        let snapshot = self.engine.snapshot();
+        let progress = snapshot.banks[0].watch.as_ref().map(|w| w.progress);
+        assert!(
+            matches!(progress, None | Some(Progress::Watching)),
+            "after {} cycles the watch has not learnt: {progress:?}, {setup:?}",
+            setup.learn
+        );
+    }
+
     fn state(&mut self) -> (Vec<u8>, u64) {
         let mut records = self.engine.checkpoints(self.now()).into_iter();
         let Some(Record::Checkpoint { state, turn, .. }) = records.next() else {
@@ -277,6 +289,7 @@ fn learn(setup: &Setup, seed: u64) -> Learnt {
             rig.step(&values);
         }
         if rig.notices.is_empty() {
+            rig.check_learnt(setup);
             let (state, turn) = rig.state();
             return Learnt {
                 state,
