@@ -155,6 +155,8 @@ pub enum Measure {
         change: Change,
         after: i64,
     },
+    /// Share of calls that are about spread, and that name exactly the sources that changed.
+    Spread { setup: Setup, change: Change },
     /// The set of possible starts at the call: share that holds the true one, mean width in cycles.
     Since { setup: Setup, change: Change },
     /// Cycles from a full return to the end of the notice.
@@ -194,6 +196,7 @@ impl Measure {
                 change,
                 after,
             } => notices::names(setup, change, *after, runs),
+            Self::Spread { setup, change } => notices::spread(setup, change, runs),
             Self::Since { setup, change } => notices::since(setup, change, runs),
             Self::Clearing { setup, change } => {
                 vec![notices::clearing(setup, change, runs)]

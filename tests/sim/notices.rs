@@ -7,6 +7,7 @@ use super::measure::{Change, until_call};
 use super::rig::{Rig, Start, Stepper};
 use super::table::Figure;
 use evenrow::model::US_PER_S;
+use evenrow::notice::Kind;
 
 /// Who is not called within this many cycles is not called.
 const MOST: i64 = 20_000;
@@ -66,6 +67,18 @@ pub fn names(setup: &Setup, change: &Change, after: i64, runs: &Runs) -> Vec<Fig
     let exact: Vec<bool> = all.iter().map(|r| r.is_some_and(|r| r.0)).collect();
     let wrong: Vec<bool> = all.iter().map(|r| r.is_some_and(|r| r.1)).collect();
     vec![Figure::share(&exact), Figure::share(&wrong)]
+}
+
+/// Share of calls that are about spread, and share that name exactly those that changed.
+pub fn spread(setup: &Setup, change: &Change, runs: &Runs) -> Vec<Figure> {
+    let moved = change.sources();
+    let all = called(setup, change, runs, |c| {
+        let about_spread = c.rig.notices[0].kind == Kind::SpreadApart;
+        (about_spread, c.rig.named() == moved)
+    });
+    let about_spread: Vec<bool> = all.iter().flatten().map(|r| r.0).collect();
+    let exact: Vec<bool> = all.iter().flatten().map(|r| r.1).collect();
+    vec![Figure::share(&about_spread), Figure::share(&exact)]
 }
 
 /// Share of calls whose set of starts holds the true one, and the set's mean width in cycles.

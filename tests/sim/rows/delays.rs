@@ -2,7 +2,7 @@
 
 use super::super::feed::Setup;
 use super::super::measure::{Against, Change, Measure};
-use super::super::table::Bound::{Anything, AtLeast, AtMost};
+use super::super::table::Bound::{AtLeast, AtMost};
 use super::super::table::Row;
 use super::{GLR_OF_12_AT_50_000, asked};
 
@@ -124,15 +124,34 @@ pub fn spread(rows: &mut Vec<Row>) {
         rows.push(Row {
             what: "one of 12 turns erratic",
             case,
-            measure: Measure::Names {
+            measure: Measure::Spread {
                 setup: setup(),
                 change: Change::sd(0, sd),
-                after: 0,
             },
             runs: [100, 1000],
             asked: vec![
+                asked(
+                    "called as spread",
+                    AtLeast(0.85),
+                    AtLeast(0.90),
+                    AtLeast(0.95),
+                ),
                 asked("named exactly", AtLeast(0.85), AtLeast(0.90), AtLeast(0.95)),
-                asked("any wrong name", AtMost(0.12), Anything, Anything),
+            ],
+        });
+    }
+    for step in [2.5, 3.0] {
+        rows.push(Row {
+            what: "one of 12 steps in level",
+            case: format!("{step} sd"),
+            measure: Measure::Spread {
+                setup: Setup::even(12),
+                change: Change::levels([(0, step)]),
+            },
+            runs: [100, 2000],
+            asked: vec![
+                asked("called as spread", AtMost(0.05), AtMost(0.02), AtMost(0.01)),
+                asked("named exactly", AtLeast(0.88), AtLeast(0.95), AtLeast(0.98)),
             ],
         });
     }

@@ -8,13 +8,13 @@ use super::super::trouble;
 use super::asked;
 
 pub fn names(rows: &mut Vec<Row>) {
-    let setup = |margin: f64| Setup {
-        margin,
-        look_every: 10,
-        ..Setup::even(12)
-    };
-    let names = |setup: Setup, change: Change, after: f64| Measure::Names {
-        setup,
+    // Names follow the looks: several come before they are asked for.
+    let names = |margin: f64, change: Change, after: f64| Measure::Names {
+        setup: Setup {
+            margin,
+            look_every: (after as i64 / 4).clamp(1, 10),
+            ..Setup::even(12)
+        },
         change,
         after: after.ceil() as i64,
     };
@@ -22,7 +22,7 @@ pub fn names(rows: &mut Vec<Row>) {
         rows.push(Row {
             what: "names at the call, one of 12, m = 0",
             case: format!("{delta} sd"),
-            measure: names(setup(0.0), Change::levels([(0, delta)]), 0.0),
+            measure: names(0.0, Change::levels([(0, delta)]), 0.0),
             runs: [if delta < 1.0 { 60 } else { 120 }, 2000],
             asked: vec![
                 asked("exactly right", AtLeast(0.88), AtLeast(0.95), AtLeast(0.98)),
@@ -33,7 +33,7 @@ pub fn names(rows: &mut Vec<Row>) {
             what: "names after another 32/delta² cycles, three of 12, m = 0",
             case: format!("{delta} sd"),
             measure: names(
-                setup(0.0),
+                0.0,
                 Change::levels((0..3).map(|s| (s, delta))),
                 32.0 / (delta * delta),
             ),
@@ -52,7 +52,7 @@ pub fn names(rows: &mut Vec<Row>) {
             what: "one of 12 up, another down, named after another 32/excess² cycles",
             case: format!("to ±(0.9 m + {beyond} sd), m {margin}"),
             measure: names(
-                setup(margin),
+                margin,
                 Change::levels([(0, far), (1, -far)]),
                 32.0 / (apart * apart),
             ),
@@ -90,20 +90,20 @@ pub fn since(rows: &mut Vec<Row>) {
 }
 
 pub fn clearing(rows: &mut Vec<Row>) {
-    for (margin, h, solid, aim) in [
-        (0.0, 0.25, 310.0, 210.0),
-        (0.5, 0.5, 90.0, 60.0),
-        (1.0, 1.0, 25.0, 16.0),
+    for (margin, h, look_every, solid, aim) in [
+        (0.0, 0.25, 10, 310.0, 210.0),
+        (0.5, 0.5, 2, 90.0, 60.0),
+        (1.0, 1.0, 1, 25.0, 16.0),
     ] {
         let setup = || Setup {
             margin,
-            look_every: 5,
+            look_every,
             ..Setup::even(12)
         };
         let away = Change::levels([(0, h + 1.5)]);
         rows.push(Row {
             what: "clearing, one of 12",
-            case: format!("h {h} sd, a look every 5"),
+            case: format!("h {h} sd, a look every {look_every}"),
             measure: Measure::Clearing {
                 setup: setup(),
                 change: away.clone(),
@@ -118,16 +118,16 @@ pub fn clearing(rows: &mut Vec<Row>) {
         });
         rows.push(Row {
             what: "clearing, one of 12",
-            case: format!("h {h} sd, stays at 1.2 h"),
+            case: format!("h {h} sd, stays at 1.2 h, a look every 50"),
             measure: Measure::WrongClearing {
                 setup: Setup {
-                    look_every: 20,
+                    look_every: 50,
                     ..setup()
                 },
                 change: away,
                 stay: Change::levels([(0, 1.2 * h)]),
             },
-            runs: [20, 500],
+            runs: [12, 500],
             asked: vec![asked(
                 "cleared within 5 000 cycles",
                 AtMost(0.15),

@@ -244,7 +244,8 @@ pub fn unpaired(rows: &mut Vec<Row>) {
             arl0: 2000.0,
             look_every: 10,
             learn: 200,
-            spread_margin: 4.0,
+            // Level alone.
+            spread_margin: 1e6,
             pairing: Pairing::None,
             ..Setup::even(4)
         };
