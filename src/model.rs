@@ -7,15 +7,18 @@ mod bank;
 mod figures;
 mod line_event;
 mod reason;
+mod shift;
 mod time;
 mod value;
 
 pub use bank::{
-    Bank, BankIx, Budget, BudgetError, Characteristic, Layout, Pairing, SourceIx, Sources,
+    Bank, BankIx, Budget, BudgetError, Characteristic, Group, Layout, Offsets, Pairing, SourceIx,
+    Sources,
 };
 pub use figures::{fixed, signed};
 pub use line_event::{LineChange, LineEvent};
 pub use reason::{Reason, Refusal};
+pub use shift::Shift;
 pub use time::{Time, US_PER_DAY, US_PER_S};
 pub use value::{Value, ValueError};
 

@@ -196,7 +196,7 @@ fn what_was_kept_goes_on_and_what_no_longer_fits_ends() {
         if !fits {
             assert!(matches!(restored, Err(RestoreError::PairingChanged(_))));
         }
-        other.engine.resume(5000, 0);
+        other.engine.resume(5000, &[]);
         other.cycle = line.cycle;
         other.k = 6;
         other.run(100, even);

@@ -55,6 +55,7 @@ fn settings(port: u16, protocol: Protocol) -> Settings {
         },
         banks: Vec::new(),
         feeds: Vec::new(),
+        outlets: Vec::new(),
     }
 }
 

@@ -3,12 +3,13 @@
 use std::sync::Arc;
 
 use crate::model::{Bank, BankIx, Measurement, Refusal, Time};
-use crate::notice::{Delivery, Way};
+use crate::notice::Delivery;
 use crate::verdict::{Finding, Look, Need};
 
 use super::bank::{SILENCE_EVERY_US, Watched};
 use super::look::{Freshness, Looked};
 use super::restore::{self, RestoreError, checkpoint};
+use super::send::{Moment, Post};
 use super::view;
 use super::{Condition, Due, Effect, Event, Part, Plant, Record, RefusalView, Snapshot, Turn};
 
@@ -20,8 +21,7 @@ pub struct Engine {
     pub(super) plant: Arc<Plant>,
     pub(super) banks: Vec<Watched>,
     last_turn: u64,
-    outbox: usize,
-    outbox_trouble: Option<String>,
+    post: Post,
     broker: Condition,
     store: Condition,
     refusals: Vec<RefusalView>,
@@ -35,11 +35,10 @@ impl Engine {
         let plant = Arc::new(plant);
         let mut engine = Self {
             snapshot: Arc::new(view::empty(plant.clone())),
+            post: Post::new(&plant, banks.len()),
             plant,
             banks: banks.into_iter().map(Watched::new).collect(),
             last_turn: 0,
-            outbox: 0,
-            outbox_trouble: None,
             broker: Condition::Starting,
             store: Condition::Starting,
             refusals: Vec::new(),
@@ -55,9 +54,11 @@ impl Engine {
     /// [`RestoreError`]; the bank then starts afresh.
     pub fn restore(&mut self, bank: &str, state: &[u8]) -> Result<(), RestoreError> {
         let own = || bank.to_owned();
-        let found = self.banks.iter_mut().find(|b| &*b.bank.name == bank);
-        let watched = found.ok_or_else(|| RestoreError::NoSuchBank(own()))?;
-        let mut state = restore::decode(bank, state)?;
+        let found = self.banks.iter().position(|b| &*b.bank.name == bank);
+        let b = found.ok_or_else(|| RestoreError::NoSuchBank(own()))?;
+        let watched = &mut self.banks[b];
+        let (mut state, told) = restore::decode(bank, state)?;
+        self.post.restore(b, told);
         let adapted = state.windows.adapt(&watched.bank);
         if !adapted {
             state.start_over(&watched.bank);
@@ -72,10 +73,10 @@ impl Engine {
     }
 
     /// Goes on counting after what the store holds, when all of it has been replayed: the number of
-    /// the last turn, and how many deliveries wait.
-    pub fn resume(&mut self, last_turn: u64, outbox: usize) {
+    /// the last turn, and the deliveries that wait.
+    pub fn resume(&mut self, last_turn: u64, outbox: &[Delivery]) {
         self.last_turn = self.last_turn.max(last_turn);
-        self.outbox = outbox;
+        self.post.resume(outbox);
         // What was replayed has been counted before this process began.
         for bank in &mut self.banks {
             bank.outcomes.clear();
@@ -137,12 +138,11 @@ impl Engine {
             }
             Event::Command { ticket, who, what } => self.command(number, (ticket, who), what, now),
             Event::Delivered { number } => {
-                self.outbox = self.outbox.saturating_sub(1);
-                self.outbox_trouble = None;
+                self.post.delivered(number);
                 (None, vec![Effect::Keep(Record::Delivered { number })])
             }
-            Event::NotDelivered { why, .. } => {
-                self.outbox_trouble = Some(why);
+            Event::NotDelivered { number, why } => {
+                self.post.not_delivered(number, why);
                 (None, Vec::new())
             }
             Event::Condition { part, condition } => {
@@ -230,6 +230,7 @@ impl Engine {
                 due.looks.push(ix);
             }
         }
+        due.onward = self.post.due(&self.banks, &self.plant, now);
         due
     }
 
@@ -250,6 +251,12 @@ impl Engine {
             let looked = bank.look(&self.plant, now);
             bank.mark(number);
             self.tell(b.index(), looked, number, now, effects);
+        }
+        for onward in due.onward.iter().filter(|o| open(o.bank)) {
+            let bank = &mut self.banks[onward.bank.index()];
+            self.post
+                .go_on(onward, bank, Moment { turn: number, now }, effects);
+            bank.mark(number);
         }
     }
 
@@ -285,52 +292,34 @@ impl Engine {
         self.send(b, number, now, effects);
     }
 
-    /// Sends what people should receive now.
-    pub(super) fn send(&mut self, b: usize, number: u64, now: Time, effects: &mut Vec<Effect>) {
-        let mut already = effects
-            .iter()
-            .filter(|e| matches!(e, Effect::Deliver(_)))
-            .count() as u64;
-        for incident in &mut self.banks[b].state.incidents {
-            if !incident.wants_sending(now) {
-                continue;
-            }
-            incident.sent = Some((now, incident.notice.clone()));
-            let delivery = Delivery {
-                // A turn sends far fewer than 2^16 notices.
-                number: (number << 16) + already,
-                way: Way::Mqtt,
-                at: now,
-                notice: incident.notice.clone(),
-            };
-            already += 1;
-            self.outbox += 1;
-            effects.push(Effect::Keep(Record::Delivery(delivery.clone())));
-            effects.push(Effect::Deliver(delivery));
-        }
-        self.banks[b]
-            .state
-            .incidents
-            .retain(|i| i.notice.state.is_open());
+    pub(super) fn send(&mut self, b: usize, turn: u64, now: Time, effects: &mut Vec<Effect>) {
+        let (bank, at) = (&mut self.banks[b], Moment { turn, now });
+        self.post.send(b, bank, &self.plant, at, effects);
     }
 
     fn checkpoint_if_due(&mut self, b: usize, now: Time) -> Option<Effect> {
         let bank = &mut self.banks[b];
         let last = *bank.last_checkpoint.get_or_insert(now);
         let due = bank.is_behind(self.last_turn) && now.us_since(last) >= CHECKPOINT_EVERY_US;
-        due.then(|| Effect::Keep(checkpoint(bank, self.last_turn, now)))
+        let told = self.post.told(b);
+        due.then(|| Effect::Keep(checkpoint(bank, told, self.last_turn, now)))
     }
 
     /// The state of every bank that changed since its last checkpoint; for the end of the program.
     pub fn checkpoints(&mut self, now: Time) -> Vec<Record> {
-        let last = self.last_turn;
-        let behind = self.banks.iter_mut().filter(|b| b.is_behind(last));
-        behind.map(|b| checkpoint(b, last, now)).collect()
+        let (last, post) = (self.last_turn, &self.post);
+        let banks = self.banks.iter_mut().enumerate();
+        let behind = banks.filter_map(|(b, bank)| bank.is_behind(last).then_some((b, bank)));
+        behind
+            .map(|(b, bank)| checkpoint(bank, post.told(b), last, now))
+            .collect()
     }
 
     /// When [`Event::Deadline`] should come next.
     pub fn next_deadline(&self) -> Option<Time> {
-        self.banks.iter().filter_map(next_deadline).min()
+        let onward = self.post.next_due(&self.banks, &self.plant);
+        let banks = self.banks.iter().filter_map(next_deadline);
+        banks.chain(onward).min()
     }
 
     /// Looks at every bank with whatever is there, without consequences: what a rehearsal ends with.
@@ -377,8 +366,7 @@ impl Engine {
             store: self.store.clone(),
             banks: banks.collect(),
             refusals: self.refusals.clone(),
-            outbox: self.outbox,
-            outbox_trouble: self.outbox_trouble.clone(),
+            outlets: self.post.views(),
         });
         self.snapshot.clone()
     }

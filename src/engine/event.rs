@@ -64,6 +64,19 @@ pub struct Due {
     pub silent: Vec<(BankIx, SourceIx)>,
     /// Banks to look at.
     pub looks: Vec<BankIx>,
+    /// Notices that go to a further outlet.
+    pub onward: Vec<Onward>,
+}
+
+/// A notice that has stood unacknowledged for long enough, or whose outlet's shift has begun.
+#[derive(Clone, Debug, PartialEq, Eq, Serialize, Deserialize)]
+pub struct Onward {
+    /// Its bank.
+    pub bank: BankIx,
+    /// [`Notice::id`].
+    pub notice: Name,
+    /// Where it goes.
+    pub outlet: Name,
 }
 
 /// What a person can ask for.

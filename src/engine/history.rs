@@ -44,6 +44,20 @@ pub trait History: Send + Sync {
         most: usize,
     ) -> Result<Vec<LineEvent>, HistoryError>;
 
+    /// The newest short form of a look over `span` in each of `parts` equal stretches of the time from
+    /// `range.0` until before `range.1`, oldest first; a stretch without one gives none. Reads no more than it gives,
+    /// so a picture of a day costs as much as one of an hour.
+    ///
+    /// # Errors
+    /// When the store cannot be read.
+    fn digests_thinned(
+        &self,
+        bank: &str,
+        span: usize,
+        range: (Time, Time),
+        parts: usize,
+    ) -> Result<Vec<Digest>, HistoryError>;
+
     /// The newest look of a bank that was kept whole at or before `at`, one per span.
     ///
     /// # Errors

@@ -16,6 +16,7 @@ mod line;
 mod look;
 mod natural;
 mod restore;
+mod send;
 mod snapshot;
 mod source;
 mod view;
@@ -23,10 +24,10 @@ mod watching;
 
 pub use self::core::Engine;
 pub use condition::{Condition, Part};
-pub use event::{Command, Due, Effect, Event, Outcome, Record, Ticket, Turn};
+pub use event::{Command, Due, Effect, Event, Onward, Outcome, Record, Ticket, Turn};
 pub use history::{History, HistoryError, Page};
 pub use restore::RestoreError;
 pub use snapshot::{
-    BankView, Cycles, Plant, RefusalView, Snapshot, SourceState, SourceView, WatchView,
+    BankView, Cycles, OutletView, Plant, RefusalView, Snapshot, SourceState, SourceView, WatchView,
     WindowValue, WindowView,
 };

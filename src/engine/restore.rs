@@ -4,9 +4,10 @@ use crate::model::Time;
 
 use super::Record;
 use super::bank::{State, Watched};
+use super::send::Told;
 
 /// Version of the encoded state.
-const STATE_VERSION: u8 = 2;
+const STATE_VERSION: u8 = 3;
 
 /// Why a checkpoint cannot be gone on from.
 #[derive(Clone, Debug, PartialEq, Eq, thiserror::Error)]
@@ -33,7 +34,7 @@ pub enum RestoreError {
 }
 
 /// Reads what [`checkpoint`] wrote.
-pub fn decode(bank: &str, state: &[u8]) -> Result<State, RestoreError> {
+pub fn decode(bank: &str, state: &[u8]) -> Result<(State, Told), RestoreError> {
     let unreadable = || RestoreError::Unreadable(bank.to_owned());
     let (&version, encoded) = state.split_first().ok_or_else(unreadable)?;
     if version != STATE_VERSION {
@@ -47,13 +48,13 @@ pub fn decode(bank: &str, state: &[u8]) -> Result<State, RestoreError> {
 
 /// A bank's whole state. `last` is the last turn that was applied: whatever in it was not for this bank is contained too,
 /// so that a bank that stands idle does not hold the whole journal back.
-pub fn checkpoint(bank: &mut Watched, last: u64, now: Time) -> Record {
+pub fn checkpoint(bank: &mut Watched, told: &Told, last: u64, now: Time) -> Record {
     bank.state.turn = bank.state.turn.max(last);
     bank.unsaved = false;
     bank.last_checkpoint = Some(now);
     let mut state = vec![STATE_VERSION];
     // Encoding plain data into memory cannot fail.
-    state.extend(postcard::to_allocvec(&bank.state).unwrap_or_default());
+    state.extend(postcard::to_allocvec(&(&bank.state, told)).unwrap_or_default());
     Record::Checkpoint {
         bank: bank.bank.name.clone(),
         turn: bank.state.turn,

@@ -7,7 +7,7 @@ use std::sync::Arc;
 use serde::{Deserialize, Serialize};
 
 use crate::model::{Bank, LineEvent, Name, Reason, Refusal, SourceIx, Time, Value};
-use crate::notice::{Kind, Notice};
+use crate::notice::{Kind, Notice, Route};
 use crate::verdict::watch::{Figures, Progress, Reading};
 use crate::verdict::{Estimate, Look};
 
@@ -22,6 +22,8 @@ pub struct Plant {
     pub zone: jiff::tz::TimeZone,
     /// Where the pages are, without a slash at the end (`http://127.0.0.1:7310`).
     pub pages: String,
+    /// Where notices go besides the broker, in the order of the configuration.
+    pub routes: Vec<Route>,
 }
 
 /// The present.
@@ -39,10 +41,36 @@ pub struct Snapshot {
     pub banks: Vec<Arc<BankView>>,
     /// Refusals that belong to no bank.
     pub refusals: Vec<RefusalView>,
+    /// The ways out: the broker first, then the outlets in the order of the configuration.
+    pub outlets: Vec<OutletView>,
+}
+
+/// A way out, now.
+#[derive(Clone, Debug, PartialEq, Eq)]
+pub struct OutletView {
+    /// Its name.
+    pub name: Name,
     /// Deliveries not yet confirmed.
-    pub outbox: usize,
-    /// What the outlets last complained of.
-    pub outbox_trouble: Option<String>,
+    pub waiting: usize,
+    /// What it last complained of; none when its last delivery was confirmed.
+    pub trouble: Option<String>,
+    /// Deliveries confirmed since the process started.
+    pub delivered: u64,
+    /// Failures told since the process started; what failed is kept and sent again.
+    pub failed: u64,
+}
+
+impl OutletView {
+    /// A way out that nothing has been sent on.
+    pub fn new(name: Name) -> Self {
+        Self {
+            name,
+            waiting: 0,
+            trouble: None,
+            delivered: 0,
+            failed: 0,
+        }
+    }
 }
 
 /// A bank, now.

@@ -19,8 +19,7 @@ pub fn empty(plant: Arc<Plant>) -> Snapshot {
         store: Condition::Starting,
         banks: Vec::new(),
         refusals: Vec::new(),
-        outbox: 0,
-        outbox_trouble: None,
+        outlets: Vec::new(),
     }
 }
 

@@ -35,9 +35,9 @@ enum Level {
 
 impl Topics {
     /// The topics of these feeds.
-    pub fn new(feeds: &[Feed]) -> Self {
+    pub fn new<'f>(feeds: impl IntoIterator<Item = &'f Feed>) -> Self {
         let routes: Vec<_> = feeds
-            .iter()
+            .into_iter()
             .map(|feed| (feed.bank, Pattern::new(&feed.topic)))
             .collect();
         let mut kept: Vec<&Pattern> = Vec::new();

@@ -91,6 +91,40 @@ pub enum Layout {
     Ring,
 }
 
+/// Sources that share a part, so that its fault moves them together.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+pub struct Group {
+    /// What they share ("supply a").
+    pub name: Name,
+    /// The sources, in physical order.
+    pub members: Vec<Name>,
+}
+
+/// What is known of lasting differences between sources.
+#[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
+pub enum Offsets {
+    /// Nothing: sources are compared as they are.
+    #[default]
+    None,
+    /// Each source is compared with its own usual place.
+    Learn,
+    /// These, in the unit, are subtracted; a source that is not listed has none.
+    Table(Vec<(Name, f64)>),
+}
+
+impl Offsets {
+    /// The known offset of a source, in the unit.
+    pub fn of(&self, source: &str) -> f64 {
+        match self {
+            Self::None | Self::Learn => 0.0,
+            Self::Table(table) => {
+                let known = table.iter().find(|(name, _)| **name == *source);
+                known.map_or(0.0, |(_, offset)| *offset)
+            }
+        }
+    }
+}
+
 /// How many false calls per time a bank may cause.
 #[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
 pub struct Budget {
@@ -115,6 +149,16 @@ impl Budget {
         } else {
             Err(BudgetError)
         }
+    }
+
+    /// False calls allowed in [`Budget::days`].
+    pub fn calls(self) -> f64 {
+        self.calls
+    }
+
+    /// The days that the allowance is for.
+    pub fn days(self) -> f64 {
+        self.days
     }
 
     /// False calls allowed per microsecond of calendar time.
@@ -174,8 +218,16 @@ pub struct Bank {
     pub silent_after_us: Option<i64>,
     /// A value taken longer ago than this is refused.
     pub oldest_us: i64,
-    /// How pages draw the sources.
+    /// How the sources stand in the machine: where patterns are looked for, and how pages draw them.
     pub layout: Layout,
+    /// Sources that share a part.
+    pub groups: Vec<Group>,
+    /// What one unit given away costs; the currency is the plant's own.
+    pub cost_per_unit: Option<f64>,
+    /// The source that all others are compared with.
+    pub reference: Option<Name>,
+    /// What is known of lasting differences.
+    pub offsets: Offsets,
 }
 
 impl Bank {

@@ -47,11 +47,24 @@ pub enum Reason {
     TooFarAhead,
     /// Taken while the line stands.
     LineStopped,
+    // Kept records name a reason by its place, so new ones come last.
+    /// One of the `sentinels`: the instrument's word for having no value.
+    Sentinel,
+    /// Outside `plausible`: no value of this characteristic can lie there.
+    Implausible,
+    /// The unit in the payload is not the bank's.
+    WrongUnit,
+    /// The sender itself says that the value is not good.
+    BadQuality,
+    /// Sent without a birth before it, so it cannot be said what it means (Sparkplug).
+    Unborn,
+    /// Sent after its place in the sequence had been given up (Sparkplug).
+    OutOfSequence,
 }
 
 impl Reason {
     /// Every reason, in the order pages show them.
-    pub const ALL: [Self; 19] = [
+    pub const ALL: [Self; 25] = [
         Self::Empty,
         Self::TooLarge,
         Self::Malformed,
@@ -71,6 +84,12 @@ impl Reason {
         Self::TooOld,
         Self::TooFarAhead,
         Self::LineStopped,
+        Self::Sentinel,
+        Self::Implausible,
+        Self::WrongUnit,
+        Self::BadQuality,
+        Self::Unborn,
+        Self::OutOfSequence,
     ];
 
     /// The one word used in metrics and the interface.
@@ -95,6 +114,12 @@ impl Reason {
             Self::TooOld => "too_old",
             Self::TooFarAhead => "too_far_ahead",
             Self::LineStopped => "line_stopped",
+            Self::Sentinel => "sentinel",
+            Self::Implausible => "implausible",
+            Self::WrongUnit => "wrong_unit",
+            Self::BadQuality => "bad_quality",
+            Self::Unborn => "unborn",
+            Self::OutOfSequence => "out_of_sequence",
         }
     }
 }

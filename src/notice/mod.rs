@@ -6,6 +6,7 @@
 
 mod life;
 mod record;
+mod route;
 mod wire;
 mod words;
 
@@ -13,5 +14,6 @@ pub use life::{Happening, TRANSITIONS, after};
 pub use record::{
     Acknowledgement, Delivery, Kind, NamedSource, Notice, Priority, Since, State, Way,
 };
+pub use route::{Route, Updates};
 pub use wire::NoticeData;
 pub use words::{Compared, Facts, MOST_SUBJECT, SPREAD_UNIT, Words};

@@ -229,17 +229,32 @@ pub struct Notice {
 }
 
 /// A way out of the house.
-#[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord, Hash, Serialize, Deserialize)]
+#[derive(Clone, Debug, PartialEq, Eq, PartialOrd, Ord, Hash, Serialize, Deserialize)]
 #[serde(rename_all = "snake_case")]
 pub enum Way {
     /// The plant's broker.
     Mqtt,
+    /// An outlet of this name.
+    Outlet(Name),
+}
+
+impl Way {
+    /// The name in pages, metrics and logs; no outlet may be called as the broker is.
+    pub fn name(&self) -> &str {
+        match self {
+            Self::Mqtt => Self::MQTT,
+            Self::Outlet(name) => name,
+        }
+    }
+
+    /// The name of the way to the plant's broker.
+    pub const MQTT: &'static str = "mqtt";
 }
 
 /// One notice on its way out: kept in the store until its outlet has confirmed it.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub struct Delivery {
-    /// Rises by one for each delivery of the plant; receivers may use it to drop a repeat.
+    /// Rises with each delivery of the plant; receivers may use it to drop a repeat.
     pub number: u64,
     /// Where to.
     pub way: Way,

@@ -14,11 +14,13 @@ pub mod connection;
 mod convert;
 mod environment;
 mod fault;
+mod forms;
 mod keys;
 mod raw;
 mod section;
 mod used;
 mod written;
+mod written_payload;
 
 #[cfg(test)]
 mod tests;
@@ -27,13 +29,18 @@ use std::path::Path;
 
 use fault::FaultList;
 
+pub use crate::model::Shift;
 pub use cautions::bank_cautions;
 pub use check::words as duration_words;
 pub use environment::environment;
 pub use fault::{Fault, Faults, Ink, Place};
+pub use forms::{
+    Belief, CsvForm, DecimalMark, Fields, Items, JsonForm, NameTemplate, Of, OpcUaForm,
+    PayloadForm, Pointer, Rebirth, SenMlForm, SourceAt, SparkplugForm, TimeForm, Turn, UnitAt,
+};
 pub use used::{
-    Broker, Feed, JsonPointers, PayloadForm, PlantSettings, Protocol, RecordingColumns, Settings,
-    Shift, StoreSettings, TimeForm, TopicTemplate, WebSettings,
+    AtMost, Broker, Encryption, Feed, Mail, Mailbox, Means, Outlet, PlantSettings, Program,
+    Protocol, RecordingColumns, Settings, StoreSettings, TopicTemplate, WebSettings, Webhook,
 };
 
 /// Reads the file and the variables laid over it ([`environment`] gives the process's).

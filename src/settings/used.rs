@@ -1,10 +1,16 @@
 //! The configuration as used. Every value is checked and complete.
 
+mod outlet;
+
+pub use outlet::{AtMost, Encryption, Mail, Mailbox, Means, Outlet, Program, Webhook};
+
 use std::net::SocketAddr;
 use std::path::PathBuf;
 use std::sync::Arc;
 
-use crate::model::{Bank, BankIx, Name};
+use crate::model::{Bank, BankIx, Name, Shift};
+
+use super::forms::{Belief, PayloadForm};
 
 /// Everything the daemon is told.
 #[derive(Clone, Debug)]
@@ -21,6 +27,8 @@ pub struct Settings {
     pub banks: Vec<Arc<Bank>>,
     /// Where each bank's measurements come from, in the same order.
     pub feeds: Vec<Feed>,
+    /// The ways out of a notice besides the broker.
+    pub outlets: Vec<Outlet>,
 }
 
 /// The plant.
@@ -32,17 +40,6 @@ pub struct PlantSettings {
     pub zone: jiff::tz::TimeZone,
     /// Its shifts, in the order written.
     pub shifts: Vec<Shift>,
-}
-
-/// A shift by the clock on the wall; one that ends at or before its start ends the next day.
-#[derive(Clone, Debug, PartialEq)]
-pub struct Shift {
-    /// Its name.
-    pub name: Name,
-    /// Start.
-    pub from: jiff::civil::Time,
-    /// End.
-    pub to: jiff::civil::Time,
 }
 
 /// The protocol's version.
@@ -119,6 +116,8 @@ pub struct Feed {
     pub topic: TopicTemplate,
     /// What is in a payload.
     pub payload: PayloadForm,
+    /// What of it is believed.
+    pub belief: Belief,
     /// Names of the columns of recordings.
     pub recording: RecordingColumns,
 }
@@ -131,43 +130,6 @@ pub struct TopicTemplate {
     pub levels: Vec<String>,
     /// Which level names the source.
     pub source_level: Option<usize>,
-}
-
-/// The form of a payload.
-#[derive(Clone, Debug, PartialEq, Eq)]
-pub enum PayloadForm {
-    /// The whole payload is one decimal number.
-    Number,
-    /// A JSON document.
-    Json(JsonPointers),
-}
-
-/// Where things stand in a JSON document, as RFC 6901 pointers.
-#[derive(Clone, Debug, PartialEq, Eq)]
-pub struct JsonPointers {
-    /// The value.
-    pub value: String,
-    /// The source, when it is not in the topic.
-    pub source: Option<String>,
-    /// The time taken.
-    pub time: Option<String>,
-    /// How that is written.
-    pub time_form: TimeForm,
-    /// The cycle.
-    pub cycle: Option<String>,
-}
-
-/// How a time is written.
-#[derive(Clone, Copy, Debug, PartialEq, Eq)]
-pub enum TimeForm {
-    /// RFC 3339 text, or a number: seconds below 1e11, milliseconds from there on.
-    Auto,
-    /// RFC 3339 text with offset.
-    Rfc3339,
-    /// Seconds since the Unix epoch, fractions allowed.
-    EpochSeconds,
-    /// Milliseconds since the Unix epoch.
-    EpochMilliseconds,
 }
 
 /// Names of the columns of a recording.
@@ -202,6 +164,11 @@ impl Settings {
     /// The settings of a bank's feed.
     pub fn feed(&self, bank: BankIx) -> &Feed {
         &self.feeds[bank.index()]
+    }
+
+    /// Which notices go to which outlet.
+    pub fn routes(&self) -> Vec<crate::notice::Route> {
+        self.outlets.iter().map(|o| o.route.clone()).collect()
     }
 
     /// Where people find the pages, without a slash at the end.

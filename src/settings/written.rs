@@ -1,9 +1,14 @@
 //! The configuration as written: every key optional, every value with its place, types checked and
 //! meaning not.
 
+mod outlet;
+
+pub(super) use outlet::WrittenOutlet;
+
 use super::fault::{FaultList, Place};
 use super::raw::{Kind, Node, Table};
-use super::section::{Field, Section, Spot};
+use super::section::{Field, Section};
+use super::written_payload::{WrittenPayload, payload};
 
 /// The whole.
 pub(super) struct Written {
@@ -12,6 +17,7 @@ pub(super) struct Written {
     pub(super) store: WrittenStore,
     pub(super) web: WrittenWeb,
     pub(super) banks: Field<Vec<WrittenBank>>,
+    pub(super) outlets: Field<Vec<WrittenOutlet>>,
 }
 
 /// `[plant]`.
@@ -76,6 +82,8 @@ pub(super) struct WrittenBank {
     pub(super) limits: Field<WrittenLimits>,
     pub(super) topic: Field<String>,
     pub(super) payload: Field<WrittenPayload>,
+    pub(super) sentinels: Field<Vec<Node>>,
+    pub(super) plausible: Field<WrittenLimits>,
     pub(super) sources: Field<WrittenSources>,
     pub(super) most_sources: Field<i64>,
     pub(super) pairing: Field<WrittenPairing>,
@@ -88,25 +96,17 @@ pub(super) struct WrittenBank {
     pub(super) silent_after: Field<String>,
     pub(super) oldest_days: Field<i64>,
     pub(super) layout: Field<String>,
+    pub(super) groups: Field<Node>,
+    pub(super) cost_per_unit: Field<String>,
+    pub(super) reference: Field<String>,
     pub(super) offsets: Field<Node>,
     pub(super) recording: Field<WrittenRecording>,
 }
 
-/// `limits`.
+/// `limits` and `plausible`.
 pub(super) struct WrittenLimits {
     pub(super) lower: Field<String>,
     pub(super) upper: Field<String>,
-}
-
-/// `payload`, with the word alone standing for a table with that form.
-pub(super) struct WrittenPayload {
-    pub(super) place: Place,
-    pub(super) form: Field<String>,
-    pub(super) value: Field<String>,
-    pub(super) source: Field<String>,
-    pub(super) time: Field<String>,
-    pub(super) time_form: Field<String>,
-    pub(super) cycle: Field<String>,
 }
 
 /// `sources`: a word or a list.
@@ -147,6 +147,9 @@ impl Written {
             banks: top
                 .sections("bank", "bank", faults)
                 .map(|list, _| each(list, faults, WrittenBank::read)),
+            outlets: top
+                .sections("outlet", "outlet", faults)
+                .map(|list, _| each(list, faults, WrittenOutlet::read)),
         };
         top.close(faults);
         written
@@ -265,6 +268,10 @@ impl WrittenBank {
                 .map(|section, _| WrittenLimits::read(section, faults)),
             topic: s.text("topic", faults),
             payload: payload(&mut s, faults),
+            sentinels: s.list("sentinels", faults),
+            plausible: s
+                .section("plausible", "bank.plausible", faults)
+                .map(|section, _| WrittenLimits::read(section, faults)),
             sources: sources(&mut s, faults),
             most_sources: s.whole("most_sources", faults),
             pairing: pairing(&mut s, faults),
@@ -277,6 +284,9 @@ impl WrittenBank {
             silent_after: s.text("silent_after", faults),
             oldest_days: s.whole("oldest_days", faults),
             layout: s.text("layout", faults),
+            groups: s.node("groups"),
+            cost_per_unit: s.number("cost_per_unit", faults),
+            reference: s.text("reference", faults),
             offsets: s.node("offsets"),
             recording: s
                 .section("recording", "bank.recording", faults)
@@ -298,34 +308,6 @@ impl WrittenLimits {
     }
 }
 
-impl WrittenPayload {
-    fn read(mut s: Section, faults: &mut FaultList) -> Self {
-        let written = Self {
-            place: s.place.clone(),
-            form: s.text("form", faults),
-            value: s.text("value", faults),
-            source: s.text("source", faults),
-            time: s.text("time", faults),
-            time_form: s.text("time_form", faults),
-            cycle: s.text("cycle", faults),
-        };
-        s.close(faults);
-        written
-    }
-
-    fn of_form(form: String, place: Place) -> Self {
-        Self {
-            place: place.clone(),
-            form: Field::Given(Spot { value: form, place }),
-            value: Field::Absent,
-            source: Field::Absent,
-            time: Field::Absent,
-            time_form: Field::Absent,
-            cycle: Field::Absent,
-        }
-    }
-}
-
 impl WrittenRecording {
     fn read(mut s: Section, faults: &mut FaultList) -> Self {
         let written = Self {
@@ -338,18 +320,6 @@ impl WrittenRecording {
         s.close(faults);
         written
     }
-}
-
-fn payload(s: &mut Section, faults: &mut FaultList) -> Field<WrittenPayload> {
-    let how = |kind, place: &Place, faults: &mut FaultList| match kind {
-        Kind::Text(form) => Ok(WrittenPayload::of_form(form, place.clone())),
-        Kind::Table(table) => {
-            let section = Section::new("bank.payload", place.clone(), table);
-            Ok(WrittenPayload::read(section, faults))
-        }
-        other => Err(other.what()),
-    };
-    s.either("payload", "a word or a table", faults, how)
 }
 
 fn sources(s: &mut Section, faults: &mut FaultList) -> Field<WrittenSources> {

@@ -14,6 +14,10 @@ use super::keys::{self, Sort};
 use super::recover::{ReadError, payload};
 use super::shelf::{Order, Shelf};
 
+/// Looks of one moment, one per span, are among this many records before the end of a stretch. A bank
+/// has a handful of spans; one that is seldom judged over `span` is sought no further back.
+const NEAREST: usize = 24;
+
 /// Reads a shelf.
 pub(super) struct Past(pub(super) Arc<dyn Shelf>);
 
@@ -64,6 +68,23 @@ impl Past {
             };
             from = keys::looks_from(&prefix, next, Time::from_us(i64::MIN));
         }
+    }
+
+    /// The newest digest over `span` with `from <= at < to`.
+    fn newest_over(
+        &self,
+        prefix: &[u8],
+        span: usize,
+        (from, to): (Time, Time),
+    ) -> Result<Option<Digest>, ReadError> {
+        let from = keys::times_from(prefix, from);
+        let to = keys::times_from(prefix, to);
+        let some = self.0.page(&from, &to, Order::Falling, NEAREST)?;
+        let mut those = some.iter();
+        let found = those.find(|(key, _)| keys::digest_span_of(key) == Some(span));
+        found
+            .map(|(key, value)| self.record(key, value))
+            .transpose()
     }
 
     fn page_of_notices(&self, after: Option<&str>, most: usize) -> Result<Page<Notice>, ReadError> {
@@ -125,6 +146,24 @@ impl History for Past {
     ) -> Result<Vec<LineEvent>, HistoryError> {
         self.of_times(Sort::Line, bank, (from, to), most)
             .map_err(wrong)
+    }
+
+    fn digests_thinned(
+        &self,
+        bank: &str,
+        span: usize,
+        (from, to): (Time, Time),
+        parts: usize,
+    ) -> Result<Vec<Digest>, HistoryError> {
+        let prefix = keys::of_bank(Sort::Digest, bank);
+        let length = to.us_since(from).max(0) as f64;
+        let edge = |part: usize| {
+            let share = part as f64 / parts.max(1) as f64;
+            from.plus_us((length * share) as i64)
+        };
+        let parts = (0..parts).map(|part| (edge(part), edge(part + 1)));
+        let found = parts.filter_map(|part| self.newest_over(&prefix, span, part).transpose());
+        found.map(|digest| digest.map_err(wrong)).collect()
     }
 
     fn looks_at(&self, bank: &str, at: Time) -> Result<Vec<Look>, HistoryError> {

@@ -148,6 +148,12 @@ pub(super) fn line_event(bank: &str, at: Time, turn: u64) -> Vec<u8> {
     [&times_from(&prefix, at)[..], &turn.to_be_bytes()].concat()
 }
 
+/// The span in a key of [`digest`].
+pub(super) fn digest_span_of(key: &[u8]) -> Option<usize> {
+    let bytes = key.get(key.len().checked_sub(4)?..)?;
+    usize::try_from(u32::from_be_bytes(bytes.try_into().ok()?)).ok()
+}
+
 /// Where a bank's looks over `span` from `at` on begin.
 pub(super) fn looks_from(bank_prefix: &[u8], span: u32, at: Time) -> Vec<u8> {
     [bank_prefix, &span.to_be_bytes()[..], &time(at)].concat()

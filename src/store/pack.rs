@@ -7,7 +7,7 @@
 
 use std::collections::{BTreeMap, BTreeSet};
 
-use crate::engine::{Due, Event, Turn};
+use crate::engine::{Due, Event, Onward, Turn};
 use crate::model::{BankIx, Measurement, Name, Time, Value};
 
 use super::codec::{DecodeError, from_payload, to_payload};
@@ -175,11 +175,16 @@ fn banks_used(rest: &mut Reader<'_>, banks: &[Name]) -> Result<Vec<Option<BankIx
 }
 
 fn pack_due(out: &mut Vec<u8>, due: &Due, banks: &[Name]) -> Result<(), DecodeError> {
-    let Due { silent, looks } = due;
+    let Due {
+        silent,
+        looks,
+        onward,
+    } = due;
     let all: BTreeSet<BankIx> = silent
         .iter()
         .map(|(b, _)| b)
         .chain(looks)
+        .chain(onward.iter().map(|o| &o.bank))
         .copied()
         .collect();
     let used: Vec<BankIx> = all.into_iter().collect();
@@ -188,6 +193,7 @@ fn pack_due(out: &mut Vec<u8>, due: &Due, banks: &[Name]) -> Result<(), DecodeEr
     let written = Due {
         silent: silent.iter().map(|&(b, s)| (place(b), s)).collect(),
         looks: looks.iter().map(|&b| place(b)).collect(),
+        onward: onward.iter().map(|o| at(o, place(o.bank))).collect(),
     };
     out.extend(to_payload(&written)?);
     Ok(())
@@ -204,7 +210,20 @@ fn unpack_due(rest: &mut Reader<'_>, banks: &[Name]) -> Result<Due, DecodeError>
             .filter_map(|(b, s)| Some((now(b)?, s)))
             .collect(),
         looks: written.looks.into_iter().filter_map(now).collect(),
+        onward: written
+            .onward
+            .iter()
+            .filter_map(|o| Some(at(o, now(o.bank)?)))
+            .collect(),
     })
+}
+
+/// The same with its bank counted otherwise.
+fn at(onward: &Onward, bank: BankIx) -> Onward {
+    Onward {
+        bank,
+        ..onward.clone()
+    }
 }
 
 fn put_one(

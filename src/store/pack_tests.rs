@@ -3,7 +3,7 @@
 use proptest::prelude::*;
 
 use super::*;
-use crate::engine::{Command, Condition, Part, Ticket};
+use crate::engine::{Command, Condition, Onward, Part, Ticket};
 use crate::model::SourceIx;
 use crate::store::samples::{banks, batch_of, measurement};
 
@@ -92,6 +92,11 @@ fn other_events_come_back_as_they_were() {
         Event::Due(Due {
             silent: vec![(BankIx(2), SourceIx(7)), (BankIx(0), SourceIx(0))],
             looks: vec![BankIx(1), BankIx(2)],
+            onward: vec![Onward {
+                bank: BankIx(1),
+                notice: "capper-2026-0003".into(),
+                outlet: "night phone".into(),
+            }],
         }),
         Event::Delivered { number: 9 },
         Event::NotDelivered {
@@ -135,6 +140,7 @@ fn banks_keep_their_measurements_when_the_configuration_changes_its_order() {
         Event::Due(Due {
             silent: silent.iter().map(|&b| (BankIx(b), SourceIx(5))).collect(),
             looks: looks.iter().copied().map(BankIx).collect(),
+            onward: Vec::new(),
         })
     };
     let payload = pack(&turn(0, due(&[2, 0], &[1, 2])), &before).unwrap();
@@ -150,6 +156,7 @@ fn a_measurement_of_no_bank_is_not_written() {
     let due = Event::Due(Due {
         silent: Vec::new(),
         looks,
+        onward: Vec::new(),
     });
     assert!(pack(&turn(0, due), &banks()).is_err());
 }

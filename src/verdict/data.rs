@@ -34,6 +34,23 @@ pub struct Rows {
 }
 
 impl Rows {
+    /// An empty table.
+    pub fn new(columns: usize) -> Self {
+        Self {
+            columns,
+            ..Self::default()
+        }
+    }
+
+    /// Adds a row after the others: its cycle or slot, when its first value was taken, and its cells, of
+    /// which those that are not given are missing.
+    pub fn push(&mut self, place: i64, taken: Time, cells: &[f64]) {
+        let end = self.cells.len() + self.columns;
+        self.places.push((place, taken));
+        self.cells.extend(cells.iter().take(self.columns));
+        self.cells.resize(end, f64::NAN);
+    }
+
     /// Number of rows.
     pub fn len(&self) -> usize {
         self.places.len()

@@ -9,6 +9,7 @@ use crate::stats::{self, Blocked, Degenerate, Df, Summary, Test, dist};
 
 use super::data::{Data, Values};
 use super::dependence;
+use super::errors::Errors;
 use super::even::{Means, NAMING_ALPHA};
 use super::look::{Dependence, Estimate, Method, TestEntry};
 
@@ -31,6 +32,10 @@ pub struct Level {
     pub dependence: Option<Dependence>,
     /// What spread is judged on: residuals within the cycle, or the raw values.
     pub within: Vec<Vec<f64>>,
+    /// The sources' means, in the unit, about a centre of their own.
+    pub means: Vec<f64>,
+    /// How surely those differ.
+    pub errors: Errors,
 }
 
 impl Level {
@@ -73,7 +78,7 @@ fn paired(data: &Data, blocked: Blocked, margins: &[f64], known: Option<Dependen
     let factor = dependence.map_or(1.0, |d| d.variance_factor);
     let variance = blocked.ms_residual * factor;
     let df = (blocked.residual_df / factor).max(1.0);
-    let error = |i: usize, j: usize| ((variance * blocked.difference_variance(i, j)).sqrt(), df);
+    let errors = Errors::new(k, |i, j| (variance * blocked.difference_variance(i, j), df));
     let paid = dist::f::sf(blocked.test.statistic / factor, (k - 1) as f64, df);
     let mut tests = vec![entry(
         Method::BlockedAnova,
@@ -85,19 +90,30 @@ fn paired(data: &Data, blocked: Blocked, margins: &[f64], known: Option<Dependen
     tests.extend(classical(&columns, Form::Raw));
     let centre = grand_mean(&columns);
     let means: Vec<f64> = blocked.effects.iter().map(|e| e + centre).collect();
-    let judged = Judged::new(&means, &error, margins);
-    let pairwise = |i: usize, j: usize| variance * blocked.difference_variance(i, j);
+    let judged = Judged::new(&means, &errors, margins);
     Level {
         tests,
         deviations: deviations(&means, &judged.even, |one, set| {
-            (contrast_variance(&pairwise, one, set), df)
+            (errors.of_contrast(&against(k, one, set)).max(0.0), df)
         }),
         sigma: blocked.ms_residual.sqrt(),
         even: judged.even,
         pair_p: judged.pair_p,
         dependence,
         within,
+        means,
+        errors,
     }
+}
+
+/// Weights of (one - mean of set).
+fn against(k: usize, one: usize, set: &[usize]) -> Vec<f64> {
+    let mut weights = vec![0.0; k];
+    for &j in set {
+        weights[j] -= 1.0 / set.len() as f64;
+    }
+    weights[one] += 1.0;
+    weights
 }
 
 fn alone(data: &Data, margins: &[f64], known: Option<Dependence>) -> Result<Level, Degenerate> {
@@ -108,14 +124,15 @@ fn alone(data: &Data, margins: &[f64], known: Option<Dependence>) -> Result<Leve
     let thinned: Vec<Summary> = summaries.iter().map(|s| thin(s, factor)).collect();
     let pairs = stats::games_howell_from(&thinned)?;
     let k = summaries.len();
-    let mut errors = vec![(0.0, 1.0); k * k];
+    let mut cells = vec![(0.0, 1.0); k * k];
     for p in &pairs {
-        errors[p.a * k + p.b] = (p.std_error, p.df);
-        errors[p.b * k + p.a] = (p.std_error, p.df);
+        let cell = (p.std_error * p.std_error, p.df);
+        cells[p.a * k + p.b] = cell;
+        cells[p.b * k + p.a] = cell;
     }
-    let error = |i: usize, j: usize| errors[i * k + j];
+    let errors = Errors::new(k, |i, j| cells[i * k + j]);
     let means: Vec<f64> = summaries.iter().map(|s| s.mean).collect();
-    let judged = Judged::new(&means, &error, margins);
+    let judged = Judged::new(&means, &errors, margins);
     let any_margin = margins.iter().any(|m| *m > 0.0);
     let mut tests = classical(&columns, Form::AsDecided);
     if any_margin {
@@ -137,6 +154,8 @@ fn alone(data: &Data, margins: &[f64], known: Option<Dependence>) -> Result<Leve
         pair_p,
         dependence,
         within: columns,
+        means,
+        errors,
     })
 }
 
@@ -148,8 +167,9 @@ struct Judged {
 }
 
 impl Judged {
-    fn new(means: &[f64], error: &dyn Fn(usize, usize) -> (f64, f64), margins: &[f64]) -> Self {
+    fn new(means: &[f64], errors: &Errors, margins: &[f64]) -> Self {
         let margin = |i: usize, j: usize| margins[i].max(margins[j]);
+        let error = &|i: usize, j: usize| errors.of(i, j);
         let all = Means {
             means,
             error,
@@ -249,19 +269,6 @@ fn grand_mean(columns: &[Vec<f64>]) -> f64 {
 fn pooled_sd(summaries: &[Summary]) -> f64 {
     let df: usize = summaries.iter().map(|s| s.n.saturating_sub(1)).sum();
     (summaries.iter().map(|s| s.ss).sum::<f64>() / df.max(1) as f64).sqrt()
-}
-
-/// Variance of (one - mean of set) from the variances of differences: for weights c adding up to
-/// zero it is -1/2 sum c_a c_b Var(a - b).
-fn contrast_variance(difference: &impl Fn(usize, usize) -> f64, one: usize, set: &[usize]) -> f64 {
-    let size = set.len() as f64;
-    let to_set: f64 = set.iter().map(|&j| difference(one, j)).sum();
-    let inside: f64 = set
-        .iter()
-        .flat_map(|&a| set.iter().map(move |&b| (a, b)))
-        .map(|(a, b)| if a == b { 0.0 } else { difference(a, b) })
-        .sum();
-    (to_set / size - inside / (2.0 * size * size)).max(0.0)
 }
 
 /// Variance of (one - mean of set) of independent means, and its Welch–Satterthwaite df.

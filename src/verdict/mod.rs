@@ -4,12 +4,15 @@
 //! Pure: no clock, no randomness, no input or output. Statistics come from [`crate::stats`]; this
 //! room decides what they mean for a bank. Start reading at [`examine()`].
 
+mod contrast;
 mod data;
 mod dependence;
+mod errors;
 mod even;
 mod examine;
 mod level;
 mod look;
+mod pattern;
 mod shares;
 mod spread;
 mod steps;
@@ -18,7 +21,9 @@ pub mod watch;
 
 pub use data::{Data, Need, Rows, Values};
 pub use examine::{Asked, Began, Call, Examination, Participant, examine};
+pub use level::Level;
 pub use look::{Dependence, Digest, Estimate, Finding, Look, Method, SourceLook, TestEntry};
+pub use pattern::{Machine, Pattern, PatternKind, find as find_pattern};
 pub use shares::Shares;
 pub use track::{
     Aspect, Located, Moment, Yardstick, cleared_margin, locate, returned, size_since,

@@ -75,7 +75,8 @@ struct Families {
     notices: IntCounterVec,
     broker: IntGauge,
     store: IntGauge,
-    outbox: IntGauge,
+    outbox: IntGaugeVec,
+    deliveries: IntCounterVec,
     build: IntGaugeVec,
 }
 
@@ -128,7 +129,13 @@ impl Families {
             notices: counters(r, "evenrow_notices_total", NOTICES, &["bank", "kind"])?,
             broker: gauge(r, "evenrow_broker_connected", BROKER)?,
             store: gauge(r, "evenrow_store_writable", STORE)?,
-            outbox: gauge(r, "evenrow_deliveries_waiting", OUTBOX)?,
+            outbox: gauges(r, "evenrow_outbox_deliveries", OUTBOX, &["outlet"])?,
+            deliveries: counters(
+                r,
+                "evenrow_deliveries_total",
+                DELIVERIES,
+                &["outlet", "outcome"],
+            )?,
             build: gauges(r, "evenrow_build_info", BUILD, &["version"])?,
             registry,
         })
@@ -140,7 +147,17 @@ impl Families {
         };
         self.broker.set(well(&snapshot.broker));
         self.store.set(well(&snapshot.store));
-        self.outbox.set(whole(snapshot.outbox));
+        for outlet in &snapshot.outlets {
+            let name = &*outlet.name;
+            self.outbox
+                .with_label_values(&[name])
+                .set(whole(outlet.waiting));
+            for (outcome, count) in [("delivered", outlet.delivered), ("failed", outlet.failed)] {
+                self.deliveries
+                    .with_label_values(&[name, outcome])
+                    .inc_by(count);
+            }
+        }
         self.build
             .with_label_values(&[env!("CARGO_PKG_VERSION")])
             .set(1);
@@ -312,5 +329,8 @@ const ACTIVE: &str = "Notices of this kind whose condition holds now. Alert on t
 const NOTICES: &str = "Notices raised since the process started.";
 const BROKER: &str = "1 while the broker is connected and every subscription confirmed, else 0.";
 const STORE: &str = "1 while the store is recovered and takes commits, else 0.";
-const OUTBOX: &str = "Deliveries of notices that no outlet has confirmed yet.";
+const OUTBOX: &str =
+    "Deliveries of notices that an outlet has not confirmed yet; mqtt is the broker.";
+const DELIVERIES: &str = "Deliveries of notices since the process started: delivered, or failed for \
+    a reason that was told. What failed is kept and sent again, so it may be counted more than once.";
 const BUILD: &str = "Always 1; the version stands in the label.";

@@ -18,7 +18,7 @@ use tower_http::timeout::TimeoutLayer;
 
 use super::site::{App, Site};
 use super::tokens::TokenError;
-use super::{access, api, assets, health, live, metrics, openapi, pages, problem, signin};
+use super::{access, api, assets, dress, health, live, metrics, openapi, pages, sharing, signin};
 
 /// A comment of a few pages fits; nothing we take is larger.
 const BODY_LIMIT_BYTES: usize = 64 * 1024;
@@ -75,6 +75,7 @@ pub fn router(app: App) -> Router {
     let guarded = Router::new()
         .route("/", get(pages::plant::page))
         .route("/banks/{bank}", get(pages::bank::page))
+        .route("/banks/{bank}/events", post(pages::line::enter))
         .route("/notices", get(pages::notices::list))
         .route("/notices/{id}", get(pages::notice::page))
         .route(
@@ -85,6 +86,7 @@ pub fn router(app: App) -> Router {
         .route("/metrics", get(metrics::answer))
         .route("/api/v1/openapi.json", get(openapi::answer))
         .nest("/api/v1", api::router())
+        .layer(from_fn_with_state(app.clone(), sharing::layer))
         .layer(from_fn_with_state(app.clone(), access::guard));
     let open = Router::new()
         .route("/sign-in", get(signin::form).post(signin::enter))
@@ -99,7 +101,7 @@ pub fn router(app: App) -> Router {
             StatusCode::REQUEST_TIMEOUT,
             REQUEST_TIMEOUT,
         ))
-        .layer(from_fn_with_state(app.clone(), problem::dress))
+        .layer(from_fn_with_state(app.clone(), dress::dress))
         .layer(CompressionLayer::new())
         .layer(map_response(headers))
         .with_state(app)

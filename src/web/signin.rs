@@ -8,12 +8,12 @@ use std::time::Duration;
 
 use axum::Form;
 use axum::extract::{Query, State};
-use axum::http::{HeaderMap, HeaderName, Uri, header};
+use axum::http::{HeaderMap, HeaderName, header};
 use axum::response::{IntoResponse, Redirect, Response};
-use percent_encoding::{AsciiSet, NON_ALPHANUMERIC, utf8_percent_encode};
 use serde::Deserialize;
 
 use super::access::{NO_TOKEN_FILE, cookie, from_elsewhere};
+use super::address::local;
 use super::pages;
 use super::problem::Problem;
 use super::sessions::{self, LASTS_US};
@@ -44,12 +44,6 @@ pub struct Entered {
 #[derive(Deserialize)]
 pub struct Leaving {
     field: String,
-}
-
-/// The sign-in address that leads back to this one.
-pub fn address_with_return(uri: &Uri) -> String {
-    let back = uri.path_and_query().map_or("/", |p| p.as_str());
-    format!("/sign-in?next={}", percent(back))
 }
 
 /// The form.
@@ -143,45 +137,4 @@ fn set_cookie(app: &App, name: &str, text: &str, lasts_s: u32) -> (HeaderName, S
     let text =
         format!("{name}={text}; Path=/; Max-Age={lasts_s}; HttpOnly; SameSite=Strict{secure}");
     (header::SET_COOKIE, text)
-}
-
-/// Only an address of our own, else the plant's page: no sign-in link may lead to another host.
-pub fn local(next: &str) -> String {
-    let own = next.starts_with('/')
-        && !next.starts_with("//")
-        && !next.contains(['\\', '\r', '\n', '\t'])
-        && next.is_ascii();
-    if own { next } else { "/" }.to_owned()
-}
-
-/// Everything but RFC 3986's unreserved characters.
-const RESERVED: &AsciiSet = &NON_ALPHANUMERIC
-    .remove(b'-')
-    .remove(b'_')
-    .remove(b'.')
-    .remove(b'~');
-
-/// Percent-encodes a text for one part of a path or one value of a query.
-pub fn percent(text: &str) -> String {
-    utf8_percent_encode(text, RESERVED).to_string()
-}
-
-#[cfg(test)]
-mod tests {
-    use super::*;
-
-    #[test]
-    fn the_way_back_stays_in_the_house() {
-        for (next, to) in [
-            ("/banks/filler-2?span=40", "/banks/filler-2?span=40"),
-            ("//elsewhere", "/"),
-            ("/\\elsewhere", "/"),
-            ("http://elsewhere", "/"),
-            ("", "/"),
-            ("/a\r\nb", "/"),
-        ] {
-            assert_eq!(local(next), to, "{next:?}");
-        }
-        assert_eq!(percent("filler 2/ä"), "filler%202%2F%C3%A4");
-    }
 }

@@ -4,7 +4,8 @@ use proptest::prelude::*;
 
 use super::*;
 use crate::model::{
-    Bank, Budget, Characteristic, Layout, Pairing, Reason, SourceIx, Sources, Time, US_PER_S, Value,
+    Bank, Budget, Characteristic, Layout, Offsets, Pairing, Reason, SourceIx, Sources, Time,
+    US_PER_S, Value,
 };
 
 fn bank(pairing: Pairing, spans: &[usize]) -> Bank {
@@ -31,6 +32,10 @@ fn bank(pairing: Pairing, spans: &[usize]) -> Bank {
         silent_after_us: None,
         oldest_us: i64::MAX,
         layout: Layout::Row,
+        groups: Vec::new(),
+        cost_per_unit: None,
+        reference: None,
+        offsets: Offsets::None,
     }
 }
 

@@ -7,8 +7,8 @@ use std::sync::Arc;
 
 use evenrow::engine::{Effect, Engine, Event, Plant, Record};
 use evenrow::model::{
-    Bank, BankIx, Budget, Characteristic, Layout, Measurement, Name, Pairing, Sources, Time,
-    US_PER_S, Value,
+    Bank, BankIx, Budget, Characteristic, Layout, Measurement, Name, Offsets, Pairing, Sources,
+    Time, US_PER_S, Value,
 };
 use evenrow::notice::Notice;
 
@@ -39,6 +39,10 @@ pub fn bank(k: usize) -> Bank {
         silent_after_us: None,
         oldest_us: 30 * 86_400 * US_PER_S,
         layout: Layout::Row,
+        groups: Vec::new(),
+        cost_per_unit: None,
+        reference: None,
+        offsets: Offsets::None,
     }
 }
 
@@ -87,6 +91,7 @@ impl Line {
             name: "Quayside".into(),
             zone: jiff::tz::TimeZone::UTC,
             pages: "http://127.0.0.1:7310".into(),
+            routes: Vec::new(),
         };
         Self {
             engine: Engine::new(plant, vec![Arc::new(bank)]),

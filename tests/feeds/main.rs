@@ -46,6 +46,7 @@ fn run(name: &str) -> Run {
         name: settings.plant.name.clone(),
         zone: settings.plant.zone.clone(),
         pages: settings.pages(),
+        routes: Vec::new(),
     };
     let how = How {
         banks: settings.banks.iter().map(|b| b.name.clone()).collect(),

@@ -8,7 +8,7 @@ use std::time::Duration;
 use evenrow::engine::Condition;
 use evenrow::intake::mqtt::{self, Arrival, FromBroker, IntakeError, Receipt};
 use evenrow::model::{
-    Bank, BankIx, Budget, Characteristic, Layout, Pairing, Reason, Sources, US_PER_DAY,
+    Bank, BankIx, Budget, Characteristic, Layout, Offsets, Pairing, Reason, Sources, US_PER_DAY,
 };
 use evenrow::settings::{
     Broker, Feed, PayloadForm, PlantSettings, Protocol, RecordingColumns, Settings, StoreSettings,
@@ -64,6 +64,10 @@ fn settings(broker: Broker) -> Arc<Settings> {
         silent_after_us: None,
         oldest_us: 30 * US_PER_DAY,
         layout: Layout::Row,
+        groups: Vec::new(),
+        cost_per_unit: None,
+        reference: None,
+        offsets: Offsets::None,
     };
     let feed = Feed {
         bank: BankIx(0),
@@ -93,6 +97,7 @@ fn settings(broker: Broker) -> Arc<Settings> {
         },
         banks: vec![Arc::new(bank)],
         feeds: vec![feed],
+        outlets: Vec::new(),
     })
 }
 

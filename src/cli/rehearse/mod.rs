@@ -72,6 +72,8 @@ fn perform(args: &RehearseArgs, settings: &Settings) -> Result<Ledger, RehearseE
         name: settings.plant.name.clone(),
         zone: settings.plant.zone.clone(),
         pages: settings.pages(),
+        // Nothing leaves a rehearsal.
+        routes: Vec::new(),
     };
     let engine = Engine::new(plant, settings.banks.clone());
     let mut conductor = Conductor::new(engine);

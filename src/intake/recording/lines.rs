@@ -90,7 +90,7 @@ impl Lines {
                 Fault::new(Reason::FieldMissing, words)
             })
         };
-        let time = |raw: &RawValue| json::time(raw, TimeForm::Auto);
+        let time = |raw: &RawValue| json::time(raw, &TimeForm::Auto);
         let source = json::source(needed(&self.columns.source)?)?.into_owned();
         let value = json::value(needed(&self.columns.value)?);
         let bank = at(&self.columns.bank)?.map(json::source).transpose()?;

@@ -208,7 +208,7 @@ impl Columns {
     fn row(&self, line: u64, record: &StringRecord) -> Row {
         let cell = |at: usize| record.get(at).unwrap_or("");
         let filled = |at: Option<usize>| at.map(cell).filter(|text| !text.is_empty());
-        let time = |text: &str| -> Result<Time, Fault> { times::from_cell(text, TimeForm::Auto) };
+        let time = |text: &str| -> Result<Time, Fault> { times::from_cell(text, &TimeForm::Auto) };
         let values = match &self.form {
             Form::Long { source, value } => {
                 vec![(cell(*source).to_owned(), number::value(cell(*value)))]

@@ -2,6 +2,8 @@
 
 use std::collections::BTreeSet;
 
+use jiff::tz::TimeZone;
+
 use crate::model::{Bank, BankIx, Budget, Characteristic, Layout, Name, Pairing, Sources, Value};
 use crate::settings::Feed;
 use crate::settings::check::{Check, D, S, unfit};
@@ -13,6 +15,7 @@ use crate::settings::written::{WrittenBank, WrittenLimits, WrittenPairing, Writt
 use crate::stats::dist::studentized_range;
 
 use super::feed::{WrittenFeed, feed};
+use super::known::{WrittenKnown, known as known_of};
 
 /// Spans when nothing else is said: a factor 4 apart, as the call budget's arithmetic prefers.
 const SPANS: [usize; 4] = [10, 40, 160, 640];
@@ -37,6 +40,7 @@ const OLDEST_DAYS: i64 = 30;
 pub(super) fn bank(
     ix: BankIx,
     written: WrittenBank,
+    zone: &TimeZone,
     faults: &mut FaultList,
 ) -> Option<(Bank, Feed)> {
     let WrittenBank {
@@ -51,6 +55,8 @@ pub(super) fn bank(
         limits,
         topic,
         payload,
+        sentinels,
+        plausible,
         sources,
         most_sources,
         pairing,
@@ -63,6 +69,9 @@ pub(super) fn bank(
         silent_after,
         oldest_days,
         layout,
+        groups,
+        cost_per_unit,
+        reference,
         offsets,
         recording,
     } = written;
@@ -72,7 +81,12 @@ pub(super) fn bank(
             place: place.clone(),
             topic,
             payload,
+            sentinels,
+            plausible,
             recording,
+            unit: unit.peek().map(|spot| spot.value.clone()),
+            listed: listed_names(&sources),
+            zone: zone.clone(),
         },
         faults,
     );
@@ -91,11 +105,18 @@ pub(super) fn bank(
         limits,
     };
     let margin = margin_of(margin, measured.resolution.as_ref(), &mut check);
+    let is_declared = measured.declared.is_some();
     let characteristic = measured.characteristic(&mut check);
     let sources = who(sources, most_sources, heard.source_in_topic, &mut check);
     let pairing = pairing_of(pairing, heard.without_cycle, &mut check);
     waits_for_cycles(&wait_cycles, pairing, &mut check);
-    no_offsets(offsets, &mut check);
+    let known = WrittenKnown {
+        groups,
+        cost_per_unit,
+        reference,
+        offsets,
+    };
+    let known = known_of(known, sources.as_ref(), is_declared, &mut check);
     let spans = spans_of(spans, &mut check);
     let look_every_us = check.duration_us(look_every, "look_every", S..=7 * D);
     let look_every_us = look_every_us.unwrap_or(LOOK_EVERY_US);
@@ -122,6 +143,10 @@ pub(super) fn bank(
         silent_after_us,
         oldest_us: oldest_days.unwrap_or(OLDEST_DAYS) * D,
         layout: layout.map_or(Layout::Row, |spot| spot.value),
+        groups: known.groups,
+        cost_per_unit: known.cost_per_unit,
+        reference: known.reference,
+        offsets: known.offsets,
     };
     Some((bank, heard.feed?))
 }
@@ -252,6 +277,18 @@ fn who(
     }
 }
 
+/// The names of listed sources, good or not.
+fn listed_names(field: &Field<WrittenSources>) -> Vec<Name> {
+    let Some(WrittenSources::Listed(list)) = field.peek().map(|spot| &spot.value) else {
+        return Vec::new();
+    };
+    let name = |node: &Node| match &node.kind {
+        Kind::Text(name) => Some(Name::from(name.as_str())),
+        _ => None,
+    };
+    list.iter().filter_map(name).collect()
+}
+
 fn listed(
     list: Vec<Node>,
     place: &Place,
@@ -338,20 +375,6 @@ fn waits_for_cycles(field: &Field<i64>, pairing: Option<Pairing>, check: &mut Ch
             message,
             "take it out, or write `pairing = \"cycle\"`",
         );
-    }
-}
-
-fn no_offsets(field: Field<Node>, check: &mut Check<'_>) {
-    let Some(Spot { value, place }) = field.given() else {
-        return;
-    };
-    match value.kind {
-        Kind::Text(word) if word == "none" => {}
-        _ => check.add(
-            &place,
-            "`offsets` other than \"none\" are not in this version",
-            "take it out; in this version sources are compared as they are, without known offsets",
-        ),
     }
 }
 

@@ -1,5 +1,7 @@
 //! One change to the good configuration each, and the fault it must give.
 
+use crate::model::{Group, Offsets};
+
 use super::{check, good_with};
 
 /// What is changed, what it becomes, the line of the fault, and words of its message and hint.
@@ -105,13 +107,75 @@ fn what_a_bank_measures() {
         ("unit = \"g\"", "unit = \"g\"\nlimits = { lowest = 1, upper = 2 }", 17, "did you mean `lower`"),
         ("unit = \"g\"", "unit = \"g\"\ntarget = 9.0\nlimits = { lower = 1, upper = 2 }", 17, "`target` lies outside"),
         ("unit = \"g\"", "unit = \"g\"\nlayout = \"rign\"", 17, "\"row\" or \"ring\"|did you mean \"ring\""),
-        ("unit = \"g\"", "unit = \"g\"\noffsets = \"learn\"", 17, "not in this version"),
-        ("unit = \"g\"", "unit = \"g\"\noffsets = { \"01\" = 0.3 }", 17, "not in this version"),
-        ("unit = \"g\"", "unit = \"g\"\nreference = \"01\"", 17, "`reference` is not in this version"),
-        ("unit = \"g\"", "unit = \"g\"\ngroups = { a = [\"01\"] }", 17, "`groups` is not in this version"),
-        ("unit = \"g\"", "unit = \"g\"\ncost_per_unit = 0.002", 17, "`cost_per_unit` is not in this version"),
         ("unit = \"g\"", "unit = \"g\"\nmargins = 1", 17, "no key `margins`|did you mean `margin`"),
     ]);
+}
+
+#[test]
+#[rustfmt::skip]
+fn what_is_known_of_the_sources() {
+    let discovered = "{ form = \"json\", value = \"/v\", cycle = \"/n\" }\nsources = \"discover\"";
+    let listed = "{ form = \"json\", value = \"/v\", cycle = \"/n\" }\nsources = [\"01\", \"02\", \"03\", \"04\"]";
+    for (known, words) in [
+        ("groups = { \"supply a\" = [\"01\"] }", "`groups` names a source"),
+        ("offsets = { \"01\" = 0.3, \"02\" = 1 }", "`offsets` names a source"),
+        ("reference = \"01\"", "`reference` names a source"),
+    ] {
+        let text = good_with(listed, discovered).replace("unit = \"g\"", &format!("unit = \"g\"\n{known}"));
+        check(&text, 17, &format!("{words}|are discovered|list the sources"));
+    }
+    check_all(&[
+        ("unit = \"g\"", "unit = \"g\"\ngroups = { \"a\" = [] }", 17, "group \"a\" is empty"),
+        ("unit = \"g\"", "unit = \"g\"\ngroups = { \" \" = [\"01\"] }", 17, "a group's name is empty"),
+        ("unit = \"g\"", "unit = \"g\"\ngroups = { a = \"01\" }", 17, "group \"a\" is text and must be a list"),
+        ("unit = \"g\"", "unit = \"g\"\ngroups = { a = [1] }", 17, "holds a whole number and must hold names"),
+        ("unit = \"g\"", "unit = \"g\"\ngroups = { a = [\"1\"] }", 17, "\"1\", which is no source|stands in `sources`"),
+        ("unit = \"g\"", "unit = \"g\"\ngroups = { a = [\"01\", \"01\"] }", 17, "names \"01\" twice"),
+        ("unit = \"g\"", "unit = \"g\"\ngroups = { a = [\"01\", \"02\", \"03\", \"04\"] }", 17, "holds every source|leave some out"),
+        ("unit = \"g\"", "unit = \"g\"\ngroups = [\"01\"]", 17, "`groups` is a list and must be a table"),
+        ("unit = \"g\"", "unit = \"g\"\ndeclared = 5\ncost_per_unit = 0", 18, "`cost_per_unit` must be above 0"),
+        ("unit = \"g\"", "unit = \"g\"\ncost_per_unit = 0.002", 17, "without `declared`"),
+        ("unit = \"g\"", "unit = \"g\"\nreference = \"001\"", 17, "\"001\", which is no source|did you mean \"01\""),
+        ("unit = \"g\"", "unit = \"g\"\nreference = \"01\"\noffsets = \"learn\"", 17, "nothing with `offsets = \"learn\"`"),
+        ("unit = \"g\"", "unit = \"g\"\nreference = 1", 17, "must be text"),
+        ("unit = \"g\"", "unit = \"g\"\noffsets = \"lern\"", 17, "\"none\" or \"learn\"|did you mean \"learn\""),
+        ("unit = \"g\"", "unit = \"g\"\noffsets = {}", 17, "an empty table"),
+        ("unit = \"g\"", "unit = \"g\"\noffsets = 0.3", 17, "must be a word or a table"),
+        ("unit = \"g\"", "unit = \"g\"\noffsets = { \"05\" = 0.3 }", 17, "\"05\", which is no source"),
+        ("unit = \"g\"", "unit = \"g\"\noffsets = { \"01\" = \"0.3\" }", 17, "offset of \"01\" is text"),
+        ("unit = \"g\"", "unit = \"g\"\noffsets = { \"01\" = nan }", 17, "not a finite number"),
+    ]);
+}
+
+#[test]
+fn what_is_known_is_used_as_written() {
+    let known = "unit = \"g\"\ndeclared = 5\ncost_per_unit = 0.002\nreference = \"02\"\n\
+                 groups = { b = [\"03\", \"01\"], \"supply a\" = [\"02\"] }\n\
+                 offsets = { \"04\" = -0.3, \"01\" = 1 }";
+    let settings = super::settings(&good_with("unit = \"g\"", known)).expect("good");
+    let bank = &settings.banks[0];
+    let group = |name: &str, members: &[&str]| Group {
+        name: name.into(),
+        members: members.iter().map(|m| (*m).into()).collect(),
+    };
+    assert_eq!(
+        bank.groups,
+        [group("b", &["01", "03"]), group("supply a", &["02"])]
+    );
+    assert_eq!(bank.cost_per_unit, Some(0.002));
+    assert_eq!(bank.reference.as_deref(), Some("02"));
+    let table = Offsets::Table(vec![("01".into(), 1.0), ("04".into(), -0.3)]);
+    assert_eq!(bank.offsets, table);
+    for (text, offsets) in [
+        ("offsets = \"none\"", Offsets::None),
+        ("offsets = \"learn\"", Offsets::Learn),
+    ] {
+        let text = good_with("unit = \"g\"", &format!("unit = \"g\"\n{text}"));
+        assert_eq!(
+            super::settings(&text).expect("good").banks[0].offsets,
+            offsets
+        );
+    }
 }
 
 #[test]
@@ -160,10 +224,10 @@ fn where_a_bank_hears_from() {
         ("value = \"/v\"", "value = \"/v~2\"", 19, "neither 0 nor 1|~0"),
         ("value = \"/v\", ", "", 19, "`value` is missing in `payload`"),
         ("form = \"json\", ", "", 19, "`form` is missing in `payload`"),
-        ("form = \"json\"", "form = \"xml\"", 19, "`form` must be \"number\" or \"json\""),
+        ("form = \"json\"", "form = \"xml\"", 19, "`form` must be \"number\", \"json\", \"csv\", \"sparkplug\", \"opc_ua_json\" or \"senml\""),
         ("cycle = \"/n\"", "cycle = \"/n\", time_form = \"rfc3339\"", 19, "`time_form` is given without `time`"),
         ("cycle = \"/n\"", "cycle = \"/n\", time = \"/t\", time_form = \"epoch\"", 19, "`time_form` must be|did you mean \"epoch_"),
-        ("cycle = \"/n\"", "cycle = \"/n\", unit = \"/u\"", 19, "`payload` has no key `unit`|belongs in [[bank]]"),
+        ("cycle = \"/n\"", "cycle = \"/n\", units = \"/u\"", 19, "`payload` has no key `units`|did you mean `unit`"),
         ("{ form = \"json\", value = \"/v\", cycle = \"/n\" }", "7", 19, "a word or a table"),
         ("{ form = \"json\", value = \"/v\", cycle = \"/n\" }", "\"numbr\"", 19, "did you mean \"number\""),
         ("{ form = \"json\", value = \"/v\", cycle = \"/n\" }", "\"number\"", 21, "pairing by cycle needs the cycle"),

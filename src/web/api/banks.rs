@@ -9,9 +9,9 @@ use utoipa::IntoParams;
 use crate::engine::{Command, Outcome};
 use crate::model::{Time, US_PER_DAY};
 use crate::verdict::Digest;
-use crate::web::pages::standing::Standing;
 use crate::web::problem::Problem;
 use crate::web::site::{App, bank};
+use crate::web::standing::Standing;
 use crate::web::wire::{BankBody, BankWholeBody, DigestBody, List, RefusalBody, WindowBody};
 
 /// Looks of a day at the default settings are 11 520; a part holds a tenth of them.

@@ -5,20 +5,16 @@ use axum::extract::rejection::{JsonRejection, QueryRejection};
 use axum::extract::{Path, Query, State};
 use axum::http::StatusCode;
 
-use crate::engine::{Command, Outcome};
-use crate::model::{LineEvent, US_PER_DAY};
+use crate::model::US_PER_DAY;
+use crate::web::line::submit;
 use crate::web::problem::Problem;
 use crate::web::site::{App, bank};
 use crate::web::wire::{LineEntryBody, LineEventBody, List};
 
 use super::banks::{TimesWanted, range};
-use super::notices::{comment, person};
 
 /// Days that are given when no time is asked for.
 const USUAL_DAYS: i64 = 30;
-
-/// A product code or source name on a form.
-const LONGEST_WORD: usize = 120;
 
 /// Line events, oldest first; the newest in the range.
 #[utoipa::path(get, path = "/api/v1/banks/{bank}/events", tag = "banks",
@@ -55,38 +51,4 @@ pub async fn enter(
     let Json(entry) = entry.map_err(|e| Problem::new(e.status(), &e.body_text()))?;
     let event = submit(&app, &name, &entry).await?;
     Ok((StatusCode::CREATED, Json((&event).into())))
-}
-
-/// Checks and sends a line event, for the interface and the pages.
-///
-/// # Errors
-/// 400 for what is missing or too long, else what the engine says.
-pub async fn submit(app: &App, name: &str, entry: &LineEntryBody) -> Result<LineEvent, Problem> {
-    let (ix, _) = bank(&app.now(), name).map(|(ix, b)| (ix, b.clone()))?;
-    let by = person(&entry.by)?;
-    let reason = comment(&entry.reason)?;
-    let words = [&entry.source, &entry.product];
-    let too_long = |w: &&Option<String>| {
-        w.as_ref()
-            .is_some_and(|w| w.chars().count() > LONGEST_WORD || w.chars().any(char::is_control))
-    };
-    if words.iter().any(|w| too_long(w)) {
-        return Err(Problem::bad_request(
-            "a source or product has at most 120 characters on one line",
-        ));
-    }
-    let change = entry.change().map_err(|why| Problem::bad_request(&why))?;
-    let what = Command::Line {
-        bank: ix,
-        change,
-        reason: reason.to_owned(),
-    };
-    match app.ask(by.into(), what).await? {
-        Outcome::Line(event) => Ok(event),
-        Outcome::NotFound(why) => Err(Problem::not_found(&why)),
-        Outcome::Refused(why) => Err(Problem::conflict(&why)),
-        Outcome::Acknowledged(_) | Outcome::Windows(_) => {
-            Err(Problem::internal("the answer was to another question"))
-        }
-    }
 }

@@ -36,12 +36,12 @@
     while (old) { const gone = old; old = old.nextSibling; gone.remove(); }
   };
 
-  let asking = false, again = false;
+  let asking = false, again = false, version = "";
   const refresh = async () => {
     if (asking) { again = true; return; }
     asking = true;
     try {
-      const answer = await fetch(location.pathname + location.search, { headers: { Accept: "text/html" }, redirect: "error" });
+      const answer = await fetch(location.pathname + location.search, { headers: { Accept: "text/html", ...(version && { "Evenrow-At-Least": version }) }, redirect: "error" });
       if (!answer.ok) throw new Error(answer.statusText);
       const page = new DOMParser().parseFromString(await answer.text(), "text/html");
       const next = page.getElementById("main");
@@ -56,8 +56,8 @@
     if (stream || document.hidden) return;
     stream = new EventSource(main().dataset.live);
     let lost = false;
-    stream.addEventListener("changed", refresh);
-    stream.addEventListener("open", () => { if (lost) refresh(); lost = false; say(""); });
+    stream.addEventListener("changed", (event) => { version = event.data; refresh(); });
+    stream.addEventListener("open", () => { if (lost) { version = ""; refresh(); } lost = false; say(""); });
     stream.addEventListener("error", () => {
       lost = true;
       say("Not live: connection lost, figures are from then.");

@@ -6,16 +6,16 @@ use serde::Deserialize;
 
 use crate::engine::{BankView, SourceState};
 use crate::web::access::Caller;
+use crate::web::address::percent;
 use crate::web::format::{self, span_of_time};
 use crate::web::pictures::glyph;
 use crate::web::problem::Problem;
-use crate::web::signin::percent;
 use crate::web::site::{App, bank};
 
 use super::frame::{Page, Scene, render};
 use super::history::{self, Past};
-use super::standing::Standing;
-use super::{looks, notice, sources, watch};
+use super::{line, looks, notice, sources, watch};
+use crate::web::standing::Standing;
 
 /// Eight hours of looks each second; a bound on what one page reads.
 const MOST_DIGESTS: usize = 30_000;
@@ -93,6 +93,7 @@ fn main(
                 }
             }
         }
+        (line::section(scene, view))
         (watch::section(view))
         @if !view.looks.is_empty() { (looks::tests(scene, view, shown.as_ref().map(|s| s.look.span))) }
         section {

@@ -5,11 +5,11 @@ use maud::{DOCTYPE, Markup, PreEscaped, html};
 use crate::engine::{Condition, Snapshot};
 use crate::model::Time;
 use crate::web::access::Caller;
+use crate::web::address::percent;
 use crate::web::assets;
 use crate::web::format::Times;
 use crate::web::pictures::glyph::{self, Glyph};
 use crate::web::problem::Problem;
-use crate::web::signin::percent;
 use crate::web::site::App;
 
 /// Everything a page is made from.
@@ -130,17 +130,20 @@ fn trouble(scene: &Scene<'_>) -> Markup {
         Condition::Noted(what) => Some((format!("{name}: good to know"), what.clone())),
         Condition::Trouble(why) => Some((format!("{name} trouble"), why.clone())),
     };
-    let outbox = snapshot.outbox_trouble.as_ref().map(|why| {
-        let waiting = format!("{} waiting. {why}", snapshot.outbox);
-        ("Notices are not leaving".to_owned(), waiting)
+    let outlets = snapshot.outlets.iter().filter_map(|outlet| {
+        let waiting = format!("{} waiting. {}", outlet.waiting, outlet.trouble.as_ref()?);
+        Some((
+            format!("Notices are not leaving by {}", outlet.name),
+            waiting,
+        ))
     });
-    let all = [
+    let parts = [
         part("Broker", &snapshot.broker),
         part("Store", &snapshot.store),
-        outbox,
     ];
+    let all = parts.into_iter().flatten().chain(outlets);
     html! {
-        @for (head, why) in all.into_iter().flatten() {
+        @for (head, why) in all {
             div class="trouble" role="status" {
                 (glyph::draw(Glyph::Trouble))
                 p { strong { (head) } @if !why.is_empty() { " " (why) } }

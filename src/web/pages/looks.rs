@@ -5,9 +5,9 @@ use maud::{Markup, html};
 use crate::engine::BankView;
 use crate::notice::Kind;
 use crate::verdict::{Estimate, Look, Method, TestEntry};
+use crate::web::address::percent;
 use crate::web::format;
 use crate::web::pictures::{deviations, row, spread};
-use crate::web::signin::percent;
 
 use super::frame::Scene;
 

@@ -8,12 +8,12 @@ use serde::Deserialize;
 use crate::model::signed;
 use crate::notice::{Kind, Notice, State as NoticeState};
 use crate::web::access::{Caller, SessionPass};
-use crate::web::api::notices::submit;
+use crate::web::acknowledge::submit;
+use crate::web::address::percent;
 use crate::web::format;
 use crate::web::pictures::glyph::{self, Glyph};
 use crate::web::problem::Problem;
 use crate::web::sessions::Field;
-use crate::web::signin::percent;
 use crate::web::site::{App, bank};
 
 use super::frame::{Page, Scene, render};
@@ -207,23 +207,36 @@ pub async fn acknowledge(
     Path(id): Path<String>,
     Form(filled): Form<Filled>,
 ) -> Result<Response, Problem> {
-    let back = crate::web::signin::local(&filled.back);
+    let back = crate::web::address::local(&filled.back);
+    if press(&app, caller, &filled.field)? == Pressed::Once {
+        submit(&app, &id, &filled.by, &filled.comment).await?;
+    }
+    Ok(Redirect::to(&back).into_response())
+}
+
+/// Whether a form's button was pressed for the first time.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum Pressed {
+    /// It was: do it.
+    Once,
+    /// It was pressed twice: once is enough.
+    Again,
+}
+
+/// Spends a form's one-time field.
+///
+/// # Errors
+/// 403 without a session, or when the form was too old.
+pub fn press(app: &App, caller: Caller, field: &str) -> Result<Pressed, Problem> {
     let pass = caller.session.ok_or_else(|| {
         Problem::forbidden("this form works for a signed-in person; with a token use the interface")
     })?;
-    match app
-        .sessions
-        .spend(&pass.id, &filled.field, app.site.clock.now())
-    {
-        Field::Fresh => {}
-        // The button was pressed twice: once is enough.
-        Field::Repeated => return Ok(Redirect::to(&back).into_response()),
-        Field::Wrong => {
-            return Err(Problem::forbidden(
-                "this form was too old; go back, load the page again and acknowledge once more",
-            ));
-        }
+    let spent = app.sessions.spend(&pass.id, field, app.site.clock.now());
+    match spent {
+        Field::Fresh => Ok(Pressed::Once),
+        Field::Repeated => Ok(Pressed::Again),
+        Field::Wrong => Err(Problem::forbidden(
+            "this form was too old; go back, load the page again and send it once more",
+        )),
     }
-    submit(&app, &id, &filled.by, &filled.comment).await?;
-    Ok(Redirect::to(&back).into_response())
 }

@@ -6,9 +6,9 @@ use serde::Deserialize;
 
 use crate::notice::Notice;
 use crate::web::access::Caller;
+use crate::web::address::percent;
 use crate::web::pictures::glyph;
 use crate::web::problem::Problem;
-use crate::web::signin::percent;
 use crate::web::site::App;
 
 use super::frame::{Page, Scene, render};

@@ -7,7 +7,9 @@
 //! what is passed in.
 
 pub mod band;
+pub mod day;
 pub mod deviations;
+pub mod enclosed;
 pub mod evidence;
 pub mod glyph;
 pub mod mini;

@@ -1,6 +1,6 @@
 //! A plant made by hand, for tests of pages and metrics and for looking at them.
 //!
-//! Seven banks, one per way of standing. Figures are made up but hang together: a source that a notice
+//! Twelve banks, at least one per way of standing. Figures are made up but hang together: a source that a notice
 //! names has moved in the looks too. The same seed gives the same plant.
 
 mod looks;
@@ -14,10 +14,10 @@ use std::collections::BTreeMap;
 use std::sync::Arc;
 
 use crate::engine::{
-    BankView, Condition, Cycles, Plant, RefusalView, Snapshot, SourceState, SourceView,
+    BankView, Condition, Cycles, OutletView, Plant, RefusalView, Snapshot, SourceState, SourceView,
 };
 use crate::model::{
-    Bank, BankIx, Characteristic, Layout, LineChange, LineEvent, Pairing, Reason, Refusal,
+    Bank, BankIx, Characteristic, Layout, LineChange, LineEvent, Offsets, Pairing, Reason, Refusal,
     SourceIx, Sources, Time, US_PER_DAY, US_PER_S, Value,
 };
 use crate::notice::{Kind, Notice};
@@ -69,6 +69,10 @@ pub fn bank(
         silent_after_us: None,
         oldest_us: 30 * US_PER_DAY,
         layout: Layout::Row,
+        groups: Vec::new(),
+        cost_per_unit: None,
+        reference: None,
+        offsets: Offsets::None,
     }
 }
 
@@ -186,11 +190,15 @@ pub fn view(bank: Bank, story: Story, seed: u64) -> BankView {
         raised: open.iter().map(|n| (n.kind, 1)).collect(),
         open,
         outcomes,
-        refusals: if values > 0 { refusals() } else { Vec::new() },
         stopped: None,
         product: None,
         line_events: line_events(story),
         watch: Some(watch::watch(&bank, names.len(), story, values)),
+        refusals: if seed % 5 == 1 {
+            refusals()
+        } else {
+            Vec::new()
+        },
         cycles: Some(Cycles {
             closed: 40_176,
             skipped: 2,
@@ -279,6 +287,31 @@ pub fn snapshot() -> Snapshot {
             Story::Young(0),
             7,
         ),
+        view(
+            bank("filler-5", "filler 5", content(), &numbered(24), 0.8),
+            Story::Even,
+            8,
+        ),
+        view(
+            bank("labels", "labeller 1", diameter(), &numbered(8), 0.02),
+            Story::Even,
+            9,
+        ),
+        view(
+            bank("weigher", "line 9", content(), &numbered(14), 0.8),
+            Story::Spread(3, 2.2),
+            10,
+        ),
+        view(
+            bank("mould-c", "mould c", diameter(), &named("cavity", 8), 0.02),
+            Story::Even,
+            11,
+        ),
+        view(
+            bank("scales", "packing", content(), &numbered(4), 0.8),
+            Story::Level(1, 1.9, 200),
+            12,
+        ),
     ];
     Snapshot {
         version: 1,
@@ -286,6 +319,7 @@ pub fn snapshot() -> Snapshot {
             name: "Quayside".into(),
             zone: jiff::tz::TimeZone::get("Europe/Lisbon").expect("bundled"),
             pages: "http://127.0.0.1:7310".to_owned(),
+            routes: Vec::new(),
         }),
         broker: Condition::Well,
         store: Condition::Well,
@@ -294,8 +328,7 @@ pub fn snapshot() -> Snapshot {
             reason: Reason::NoBank,
             ..refusals().remove(0)
         }],
-        outbox: 0,
-        outbox_trouble: None,
+        outlets: vec![OutletView::new("mqtt".into())],
     }
 }
 

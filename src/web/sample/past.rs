@@ -1,5 +1,6 @@
 //! The past of the sample plant.
 
+use std::collections::BTreeMap;
 use std::sync::Arc;
 
 use crate::engine::{BankView, History, HistoryError, Page, Snapshot};
@@ -31,6 +32,11 @@ impl SampleHistory {
             Story::Young(6),
             Story::Level(77, 2.1, 50),
             Story::Young(0),
+            Story::Even,
+            Story::Even,
+            Story::Spread(3, 2.2),
+            Story::Even,
+            Story::Level(1, 1.9, 200),
         ];
         self.snapshot.banks.iter().cloned().zip(stories).collect()
     }
@@ -81,6 +87,22 @@ impl History for SampleHistory {
         let mut all: Vec<LineEvent> = in_range.collect();
         let skip = all.len().saturating_sub(most);
         Ok(all.split_off(skip))
+    }
+
+    fn digests_thinned(
+        &self,
+        bank: &str,
+        span: usize,
+        (from, to): (Time, Time),
+        parts: usize,
+    ) -> Result<Vec<Digest>, HistoryError> {
+        let step = to.us_since(from) / i64::try_from(parts.max(1)).unwrap_or(1);
+        let all = self.digests(bank, from, to, usize::MAX)?;
+        let mut newest: BTreeMap<i64, Digest> = BTreeMap::new();
+        for digest in all.into_iter().filter(|d| d.span == span) {
+            newest.insert(digest.at.us_since(from) / step.max(1), digest);
+        }
+        Ok(newest.into_values().collect())
     }
 
     fn looks_at(&self, _bank: &str, _at: Time) -> Result<Vec<Look>, HistoryError> {

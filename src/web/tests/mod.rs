@@ -18,7 +18,7 @@ use tower::ServiceExt as _;
 
 use crate::clock::Clock;
 use crate::engine::{Command, Outcome, Snapshot, WindowValue, WindowView};
-use crate::model::Value;
+use crate::model::{LineChange, LineEvent, Value};
 use crate::notice::{Acknowledgement, Notice, State};
 use crate::settings::{Broker, PlantSettings, Protocol, Settings, StoreSettings, WebSettings};
 
@@ -114,6 +114,7 @@ fn settings(token_file: Option<PathBuf>) -> Settings {
         },
         banks: Vec::new(),
         feeds: Vec::new(),
+        outlets: Vec::new(),
     }
 }
 
@@ -141,6 +142,20 @@ async fn engine(mut asks: mpsc::Receiver<Ask>, snapshot: watch::Receiver<Arc<Sna
                     })),
                 }
             }
+            Command::Line { change, reason, .. } => match change.source() {
+                Some(source) if &**source == "none" => {
+                    Outcome::NotFound("bank \"filler-2\" has no source \"none\"".to_owned())
+                }
+                _ if change == LineChange::Start => {
+                    Outcome::Refused("the line runs already".to_owned())
+                }
+                _ => Outcome::Line(LineEvent {
+                    at: sample::moment(),
+                    by: who,
+                    change,
+                    reason,
+                }),
+            },
             Command::Windows { bank } => {
                 let sources = now.banks.get(bank.index()).map(|b| b.sources.clone());
                 let window = |name| WindowView {

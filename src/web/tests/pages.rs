@@ -4,7 +4,7 @@ use std::sync::Arc;
 
 use axum::http::StatusCode;
 
-use crate::engine::{Condition, Snapshot};
+use crate::engine::{Condition, OutletView, Snapshot};
 use crate::web::sample::{self, Story};
 
 use super::{Bench, Listening};
@@ -114,8 +114,12 @@ async fn trouble_is_said_plainly() {
     now.broker =
         Condition::Trouble("connection refused at 127.0.0.1:1883, trying again in 8 s".into());
     now.store = Condition::Trouble("the disk is full".into());
-    now.outbox = 2;
-    now.outbox_trouble = Some("the broker is away".into());
+    now.outlets[0].waiting = 2;
+    now.outlets[0].trouble = Some("the broker is away".into());
+    now.outlets.push(OutletView {
+        trouble: Some("the desk answered 410".into()),
+        ..OutletView::new("desk".into())
+    });
     bench.snapshot.send_replace(Arc::new(now));
     let page = bench.page("/").await.body;
     for words in [
@@ -124,6 +128,9 @@ async fn trouble_is_said_plainly() {
         "Store trouble",
         "the disk is full",
         "2 waiting",
+        "Notices are not leaving by mqtt",
+        "Notices are not leaving by desk",
+        "the desk answered 410",
     ] {
         assert!(page.contains(words), "{words}");
     }

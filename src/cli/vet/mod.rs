@@ -3,14 +3,16 @@
 //! Deliberately absent: connecting to anything. Files that the configuration names are looked at,
 //! and a missing one is a caution: the configuration may be meant for another machine.
 
+mod forms;
+
 use std::fmt::Write as _;
 use std::fs::File;
 use std::io::Write as _;
-use std::path::Path;
+use std::path::{Path, PathBuf};
 
 use crate::model::{Bank, Pairing, Sources};
 use crate::settings::{
-    Broker, Feed, JsonPointers, PayloadForm, Protocol, Settings, bank_cautions, duration_words,
+    Broker, Feed, Means, Outlet, Protocol, Settings, bank_cautions, duration_words,
 };
 use crate::verdict::Shares;
 
@@ -70,6 +72,7 @@ fn plant(settings: &Settings) -> String {
         web,
         banks: _,
         feeds: _,
+        outlets,
     } = settings;
     let mut lines = Lines(format!("plant {}\n", plant.name));
     let zone = plant.zone.iana_name().unwrap_or("without a name");
@@ -89,6 +92,9 @@ fn plant(settings: &Settings) -> String {
     };
     lines.add("store", format!("{}, {kept}", store.folder.display()));
     lines.add("pages", settings.pages());
+    for outlet in outlets {
+        lines.add("outlet", outlet_line(outlet));
+    }
     lines.cautions(settings.cautions());
     let files = [
         ("broker.password_file", &broker.password_file),
@@ -104,6 +110,8 @@ fn plant(settings: &Settings) -> String {
         .into_iter()
         .filter_map(|(key, file)| Some((key, file.as_deref()?)));
     lines.cautions(named.filter_map(|(key, file)| unreadable(key, file)));
+    let named = outlets.iter().flat_map(outlet_files);
+    lines.cautions(named.filter_map(|(key, file)| unreadable(&key, file)));
     lines.0
 }
 
@@ -114,6 +122,63 @@ fn unreadable(key: &str, file: &Path) -> Option<String> {
         "{key}: {} cannot be read here: {error}",
         file.display()
     ))
+}
+
+/// The files that an outlet names, each with its key.
+fn outlet_files(outlet: &Outlet) -> Vec<(String, &Path)> {
+    let files: Vec<(&str, Option<&PathBuf>)> = match &outlet.means {
+        Means::Webhook(w) => vec![
+            ("secret_file", Some(&w.secret_file)),
+            ("ca_file", w.ca_file.as_ref()),
+        ],
+        Means::Mail(m) => vec![
+            ("password_file", m.password_file.as_ref()),
+            ("ca_file", m.ca_file.as_ref()),
+        ],
+        Means::Command(p) => vec![("program", Some(&p.path))],
+    };
+    let named = files.into_iter().filter_map(|(key, file)| {
+        let key = format!("outlet {}, {key}", outlet.name);
+        Some((key, file?.as_path()))
+    });
+    named.collect()
+}
+
+/// Where an outlet leads, and what goes there.
+fn outlet_line(outlet: &Outlet) -> String {
+    let where_to = match &outlet.means {
+        Means::Webhook(w) => w.url.clone(),
+        Means::Mail(m) => {
+            let to: Vec<&str> = m.to.iter().map(|t| t.address.as_str()).collect();
+            format!("{} by {}:{}", to.join(", "), m.host, m.port)
+        }
+        Means::Command(p) => p.path.display().to_string(),
+    };
+    let route = &outlet.route;
+    let mut what = Vec::new();
+    let mut list = |of: &str, names: Vec<&str>| {
+        if !names.is_empty() {
+            what.push(format!("{of} {}", names.join(", ")));
+        }
+    };
+    list("banks", route.banks.iter().map(|b| &**b).collect());
+    list("kinds", route.kinds.iter().map(|k| k.word()).collect());
+    list(
+        "priorities",
+        route.priorities.iter().map(|p| p.word()).collect(),
+    );
+    list("shifts", route.shifts.iter().map(|s| &*s.name).collect());
+    if route.escalate_after_us > 0 {
+        what.push(format!(
+            "unacknowledged for {}",
+            duration_words(route.escalate_after_us)
+        ));
+    }
+    if what.is_empty() {
+        what.push("every notice".to_owned());
+    }
+    let (name, way) = (&outlet.name, outlet.means.word());
+    format!("{name}, {way} to {where_to}: {}", what.join("; "))
 }
 
 fn broker_line(broker: &Broker) -> String {
@@ -145,7 +210,10 @@ fn bank_summary(bank: &Bank, feed: &Feed) -> String {
     lines.add("measures", format!("{} in {unit}", characteristic.name));
     lines.add("sources", sources(&bank.sources));
     lines.add("topic", feed.topic.levels.join("/"));
-    lines.add("payload", payload(&feed.payload));
+    lines.add("payload", forms::payload(&feed.payload));
+    if let Some(refused) = forms::belief(&feed.belief, unit) {
+        lines.add("refuses", refused);
+    }
     lines.add("pairing", pairing(bank.pairing));
     let spans: Vec<String> = bank.spans.iter().map(usize::to_string).collect();
     lines.add(
@@ -182,26 +250,6 @@ fn sources(sources: &Sources) -> String {
         }
         Sources::Discover { most } => format!("discovered, at most {most}"),
     }
-}
-
-fn payload(form: &PayloadForm) -> String {
-    let JsonPointers {
-        value,
-        source,
-        time,
-        time_form: _,
-        cycle,
-    } = match form {
-        PayloadForm::Number => return "a number".to_owned(),
-        PayloadForm::Json(pointers) => pointers,
-    };
-    let mut text = format!("JSON with the value at \"{value}\"");
-    for (name, pointer) in [("source", source), ("time", time), ("cycle", cycle)] {
-        if let Some(pointer) = pointer {
-            text.push_str(&format!(", {name} at \"{pointer}\""));
-        }
-    }
-    text
 }
 
 fn pairing(pairing: Pairing) -> String {
