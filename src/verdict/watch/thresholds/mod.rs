@@ -11,6 +11,12 @@
 //! | two sources apart | studentized range or union bound, one alpha for all spans | [`pair`], [`spans`] |
 //! | spread, up and down | the same rate on normal scores | [`scores`] |
 //! | all | shares of the budget; dependence; t for an estimated sigma | [`shares`], [`dependence`] |
+//!
+//! Realised / nominal mean cycles of level's parts together, sigma known, level's budget 3 000 cycles,
+//! simulated (error 0.04 to 0.08): margin 0: k = 3, 4, 12, 60: 1.09, 1.20, 1.06, 1.04 (30 000 cycles, k = 4,
+//! 12: 1.03, 1.07; phi 0.1, k = 12: 1.07). Half the bank at the margin, 0.25, 0.5, 1 sd: k = 4: 1.07, 1.04, 1.32;
+//! k = 12: 1.07, 1.04, 1.54; one source there: k = 4: 1.15, 1.21, 1.21; k = 12: 1.66, 1.70 (0.25, 0.5). Two
+//! sources, margin 0.25 and 1: 1.03, 1.04. Offsets well inside the margin call far less.
 
 mod account;
 mod dependence;

@@ -167,7 +167,7 @@ fn each_part_calls_as_rarely_as_it_is_given() {
         (Part::Pair, 0.5, &half, 0.9, 1.8),
     ];
     for &(part, margin, offsets, least, most) in cases {
-        let ratio = realised(part, margin, offsets, 300);
+        let ratio = realised(part, margin, offsets, 200);
         assert!(
             (least..most).contains(&ratio),
             "{part:?}, margin {margin}: {ratio}"
