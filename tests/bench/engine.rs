@@ -14,7 +14,7 @@ mod line;
 use std::sync::Arc;
 use std::time::Instant;
 
-use evenrow::engine::{Effect, Engine, Event, Plant, Record};
+use evenrow::engine::{Effect, Engine, Event, Record};
 use evenrow::model::{BankIx, Measurement, Name, Time, US_PER_S, Value};
 use feed::{Feed, Setup};
 use line::{START, bank, head};
@@ -38,13 +38,8 @@ impl Bench {
     fn new(k: usize, look_every: i64) -> Self {
         let mut bank = bank(k);
         bank.look_every_us = look_every * US_PER_S;
-        let plant = Plant {
-            name: "Quayside".into(),
-            zone: jiff::tz::TimeZone::UTC,
-            pages: "http://127.0.0.1:7310".into(),
-        };
         Self {
-            engine: Engine::new(plant, vec![Arc::new(bank)]),
+            engine: Engine::new(line::plant(), vec![Arc::new(bank)]),
             feed: Feed::new(&Setup::even(k), 1),
             names: (1..=k).map(head).collect(),
             cycle: 0,

@@ -46,6 +46,16 @@ pub fn bank(k: usize) -> Bank {
     }
 }
 
+/// The plant of these tests.
+pub fn plant() -> Plant {
+    Plant {
+        name: "Quayside".into(),
+        zone: jiff::tz::TimeZone::UTC,
+        pages: "http://127.0.0.1:7310".into(),
+        routes: Vec::new(),
+    }
+}
+
 pub fn head(number: usize) -> Name {
     format!("{number:02}").into()
 }
@@ -87,14 +97,8 @@ impl Line {
             Sources::Listed(listed) => listed.len(),
             Sources::Discover { most } => usize::from(*most),
         };
-        let plant = Plant {
-            name: "Quayside".into(),
-            zone: jiff::tz::TimeZone::UTC,
-            pages: "http://127.0.0.1:7310".into(),
-            routes: Vec::new(),
-        };
         Self {
-            engine: Engine::new(plant, vec![Arc::new(bank)]),
+            engine: Engine::new(plant(), vec![Arc::new(bank)]),
             k,
             cycle: 0,
             noise: Normal::new(seed),

@@ -4,7 +4,7 @@
 use std::collections::BTreeMap;
 use std::sync::{Arc, Mutex};
 
-use evenrow::engine::{Effect, Engine, Event, Plant, Record};
+use evenrow::engine::{Effect, Engine, Event, Record};
 use evenrow::model::{Bank, BankIx, Budget, Measurement, Name, Pairing, Time, US_PER_S, Value};
 use evenrow::notice::{Kind, Notice};
 use evenrow::verdict::watch::Progress;
@@ -127,17 +127,12 @@ impl Rig {
 
     /// The same for a bank of one's own.
     pub fn of(bank: Bank) -> Self {
-        let plant = Plant {
-            name: "Quayside".into(),
-            zone: jiff::tz::TimeZone::UTC,
-            pages: "http://127.0.0.1:7310".into(),
-        };
         Self {
             cycle: 0,
             counter: 0,
             names: (1..=MOST_SOURCES).map(head).collect(),
             bank: bank.name.clone(),
-            engine: Engine::new(plant, vec![Arc::new(bank)]),
+            engine: Engine::new(line::plant(), vec![Arc::new(bank)]),
             notices: Vec::new(),
         }
     }
@@ -155,7 +150,7 @@ impl Rig {
         self.engine
             .restore(&self.bank, state)
             .expect("a state of this very bank");
-        self.engine.resume(turn, 0);
+        self.engine.resume(turn, &[]);
         self.cycle = cycle;
     }
 
