@@ -2,6 +2,8 @@
 
 #[path = "common/line.rs"]
 mod line;
+#[path = "engine_story/routes.rs"]
+mod routes;
 
 use evenrow::notice::{Kind, State};
 use line::{Line, bank, even};

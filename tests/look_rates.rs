@@ -71,6 +71,7 @@ fn called(case: &Case, alpha: f64, margin: f64, runs: usize, seed: u64) -> (f64,
         let asked = Asked {
             at: Time::from_us(US_PER_S),
             need: Need::WholeSpan,
+            interval_us: None,
             crossing: None,
         };
         let exam = examine(&bank, &windows, &who, asked);

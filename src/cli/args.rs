@@ -34,6 +34,9 @@ pub struct VetArgs {
     /// The configuration (TOML)
     #[arg(long, value_name = "FILE")]
     pub config: PathBuf,
+    /// Send one notice that is marked as a test by every way out, and say what became of each
+    #[arg(long)]
+    pub send_test: bool,
 }
 
 /// Options of `evenrow rehearse`.

@@ -8,6 +8,7 @@ pub mod demo;
 pub mod exit;
 pub mod log;
 pub mod rehearse;
+mod send_test;
 pub mod signals;
 mod vet;
 mod watch;

@@ -365,6 +365,7 @@ impl Watched {
         let asked = Asked {
             at: now,
             need,
+            interval_us: self.slowest_interval_us(),
             crossing,
         };
         examine(&self.bank, &self.state.windows, &who, asked)
@@ -381,6 +382,13 @@ impl Watched {
             .collect();
         all.sort_unstable();
         all.get(all.len() / 2).copied()
+    }
+
+    /// The time between values of the slowest source that delivers.
+    fn slowest_interval_us(&self) -> Option<i64> {
+        let sources = self.state.sources.iter().zip(self.state.windows.rings());
+        let delivers = sources.filter(|(s, _)| s.takes_part() && !s.silent);
+        delivers.filter_map(|(_, r)| usual_interval_us(r)).max()
     }
 
     /// Every window, in display order.

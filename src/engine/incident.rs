@@ -11,7 +11,7 @@ use crate::notice::{
 };
 use crate::stats::dist;
 use crate::verdict::{
-    Aspect, Call, Estimate, Examination, Shares, Yardstick, locate, returned, values_to_clear,
+    Aspect, Call, Estimate, Examination, Yardstick, locate, returned, values_to_clear,
 };
 use crate::window::Windows;
 
@@ -396,7 +396,7 @@ fn kind(call: &Call) -> Kind {
 }
 
 fn share(about: &Surroundings, aspect: Aspect) -> f64 {
-    let shares = Shares::of(&about.watched.bank);
+    let shares = about.exam.shares;
     match aspect {
         Aspect::Level => shares.level,
         Aspect::Spread => shares.spread,

@@ -19,7 +19,7 @@ use crate::settings::{Outlet, Program};
 use super::letter::Letter;
 use super::postman::{Carrier, Failure};
 
-/// Of what a program says, so many last lines are told.
+/// Of each stream that a program writes, so many last lines are told.
 const LINES_TOLD: usize = 5;
 /// Of each line, so many bytes.
 const BYTES_TOLD: usize = 200;
@@ -110,7 +110,7 @@ async fn work(running: &mut Running, event: Vec<u8>, said: &Said) -> std::io::Re
     let child = &mut running.child;
     let (stdin, stdout, stderr) = (child.stdin.take(), child.stdout.take(), child.stderr.take());
     let output = async {
-        tokio::join!(listen(stdout, said), listen(stderr, said));
+        tokio::join!(listen(stdout, &said.out), listen(stderr, &said.err));
     };
     let hand_over = hand_over(stdin, &event);
     tokio::pin!(output, hand_over);
@@ -140,7 +140,7 @@ async fn hand_over(stdin: Option<ChildStdin>, event: &[u8]) {
 }
 
 /// Keeps the last lines.
-async fn listen(stream: Option<impl AsyncRead + Unpin>, said: &Said) {
+async fn listen(stream: Option<impl AsyncRead + Unpin>, said: &Tail) {
     let Some(stream) = stream else {
         return;
     };
@@ -164,11 +164,18 @@ async fn listen(stream: Option<impl AsyncRead + Unpin>, said: &Said) {
     said.keep(&mut line);
 }
 
-/// The last lines of what a program says.
+/// The last lines of what a program says on either stream.
 #[derive(Default)]
-struct Said(Mutex<VecDeque<String>>);
+struct Said {
+    out: Tail,
+    err: Tail,
+}
 
-impl Said {
+/// The last lines of one stream.
+#[derive(Default)]
+struct Tail(Mutex<VecDeque<String>>);
+
+impl Tail {
     fn keep(&self, line: &mut Vec<u8>) {
         let text = String::from_utf8_lossy(line).trim().to_owned();
         line.clear();
@@ -183,12 +190,18 @@ impl Said {
         }
     }
 
-    fn told(&self) -> String {
+    fn lines(&self) -> Vec<String> {
         let lines = self.0.lock().unwrap_or_else(PoisonError::into_inner);
+        lines.iter().cloned().collect()
+    }
+}
+
+impl Said {
+    fn told(&self) -> String {
+        let lines = [self.out.lines(), self.err.lines()].concat();
         if lines.is_empty() {
             return String::new();
         }
-        let lines: Vec<&str> = lines.iter().map(String::as_str).collect();
         format!(", saying \"{}\"", lines.join(" / "))
     }
 }

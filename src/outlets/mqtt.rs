@@ -8,6 +8,7 @@
 //! its topic is emptied when it is normal.
 
 mod link;
+mod trial;
 
 use std::sync::Arc;
 use std::time::Duration;
@@ -22,6 +23,8 @@ use crate::model::Time;
 use crate::notice::{Delivery, State};
 use crate::settings::Settings;
 use crate::settings::connection::{Backoff, Secrets};
+
+pub use trial::send_test;
 
 use self::link::{Driver, Message, Signal, Speaker};
 use super::door::{Came, Door};

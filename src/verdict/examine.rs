@@ -64,6 +64,8 @@ pub struct Asked<'a> {
     pub at: Time,
     /// How much a span must hold.
     pub need: Need,
+    /// Time between values of the slowest source, where it is known.
+    pub interval_us: Option<i64>,
     /// What the watch found, when that is the reason.
     pub crossing: Option<&'a Crossing>,
 }
@@ -81,17 +83,27 @@ pub struct Examination {
     pub data: Data,
     /// How much dependence enlarges variances.
     pub factor: f64,
+    /// What each look may spend.
+    pub shares: Shares,
 }
 
 /// Looks at a bank over all its spans. `who` are the sources that take part, in display order.
 pub fn examine(bank: &Bank, windows: &Windows, who: &[Participant], asked: Asked) -> Examination {
-    let Asked { at, need, crossing } = asked;
+    let Asked {
+        at,
+        need,
+        interval_us,
+        crossing,
+    } = asked;
     let order: Vec<SourceIx> = who.iter().map(|p| p.source).collect();
     let look = Looking {
         bank,
         who,
         at,
-        shares: Shares::of(bank),
+        shares: match interval_us.filter(|_| !bank.pairing.is_paired()) {
+            Some(us) => Shares::overlapping(bank, who.len(), us),
+            None => Shares::of(bank),
+        },
         origin: windows.origin().to_f64(),
     };
     let delivering = who.iter().filter(|p| !p.silent).count();
@@ -116,6 +128,7 @@ pub fn examine(bank: &Bank, windows: &Windows, who: &[Participant], asked: Asked
         look.rename(&data, call, &look.margins(&data), known)
     });
     Examination {
+        shares: look.shares,
         crossed,
         looks: spans.into_iter().map(|s| s.look).collect(),
         calls,

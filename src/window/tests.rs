@@ -273,7 +273,12 @@ proptest! {
             prop_assert!(taken_in || ring.len() == before);
             let order: Vec<i64> = ring.iter().map(|e| e.place).collect();
             prop_assert!(order.is_sorted());
-            prop_assert!(!taken_in || known.insert((s, second, cycle)), "nothing enters twice");
+            known.insert((s, second, cycle));
+            for place in &order {
+                let held = order.iter().filter(|p| *p == place).count();
+                let sent = known.iter().filter(|k| k.0 == s && k.1 * US_PER_S == *place);
+                prop_assert!(paired || held <= sent.count(), "nothing stands there twice");
+            }
             if paired {
                 let mut once = order.clone();
                 once.dedup();

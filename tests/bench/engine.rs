@@ -39,7 +39,7 @@ impl Bench {
         let mut bank = bank(k);
         bank.look_every_us = look_every * US_PER_S;
         Self {
-            engine: Engine::new(line::plant(), vec![Arc::new(bank)]),
+            engine: Engine::new(line::plant(Vec::new()), vec![Arc::new(bank)]),
             feed: Feed::new(&Setup::even(k), 1),
             names: (1..=k).map(head).collect(),
             cycle: 0,

@@ -10,7 +10,7 @@ use evenrow::model::{
     Bank, BankIx, Budget, Characteristic, Layout, Measurement, Name, Offsets, Pairing, Sources,
     Time, US_PER_S, Value,
 };
-use evenrow::notice::Notice;
+use evenrow::notice::{Notice, Route};
 
 pub const START: Time = Time::from_us(1_790_000_000 * US_PER_S);
 
@@ -46,13 +46,13 @@ pub fn bank(k: usize) -> Bank {
     }
 }
 
-/// The plant of these tests.
-pub fn plant() -> Plant {
+/// The plant of these tests, with these ways out.
+pub fn plant(routes: Vec<Route>) -> Plant {
     Plant {
         name: "Quayside".into(),
         zone: jiff::tz::TimeZone::UTC,
         pages: "http://127.0.0.1:7310".into(),
-        routes: Vec::new(),
+        routes,
     }
 }
 
@@ -93,12 +93,17 @@ pub struct Line {
 
 impl Line {
     pub fn new(bank: Bank, seed: u64) -> Self {
+        Self::with_routes(bank, seed, Vec::new())
+    }
+
+    /// One whose notices go to outlets too.
+    pub fn with_routes(bank: Bank, seed: u64, routes: Vec<Route>) -> Self {
         let k = match &bank.sources {
             Sources::Listed(listed) => listed.len(),
             Sources::Discover { most } => usize::from(*most),
         };
         Self {
-            engine: Engine::new(plant(), vec![Arc::new(bank)]),
+            engine: Engine::new(plant(routes), vec![Arc::new(bank)]),
             k,
             cycle: 0,
             noise: Normal::new(seed),

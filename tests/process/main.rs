@@ -13,6 +13,7 @@ mod disk;
 mod encrypted;
 mod http;
 mod line;
+mod outlet;
 mod page;
 mod rubbish;
 mod scraped;

@@ -132,7 +132,7 @@ impl Rig {
             counter: 0,
             names: (1..=MOST_SOURCES).map(head).collect(),
             bank: bank.name.clone(),
-            engine: Engine::new(line::plant(), vec![Arc::new(bank)]),
+            engine: Engine::new(line::plant(Vec::new()), vec![Arc::new(bank)]),
             notices: Vec::new(),
         }
     }

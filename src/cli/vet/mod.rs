@@ -1,7 +1,8 @@
 //! `evenrow vet`: every fault of a configuration at once or, when it is good, what it means.
 //!
-//! Deliberately absent: connecting to anything. Files that the configuration names are looked at,
-//! and a missing one is a caution: the configuration may be meant for another machine.
+//! Deliberately absent: connecting to anything unasked (`send_test` does it when asked). Files that the
+//! configuration names are looked at, and a missing one is a caution: the configuration may be meant
+//! for another machine.
 
 mod forms;
 
@@ -19,15 +20,30 @@ use crate::verdict::Shares;
 use super::args::VetArgs;
 use super::configuration;
 use super::exit::Exit;
+use super::send_test;
 
 /// Runs the command.
 pub fn run(args: VetArgs) -> Exit {
-    let VetArgs { config } = args;
+    let VetArgs { config, send_test } = args;
     let settings = match configuration::read(&config) {
         Ok(settings) => settings,
         Err(exit) => return exit,
     };
     let text = format!("{}: good\n\n{}", config.display(), summary(&settings));
+    let said = say(&text);
+    if !send_test || said != Exit::Done {
+        return said;
+    }
+    match send_test::send(&settings) {
+        Ok(told) => say(&format!("\n{told}")),
+        Err(told) => {
+            say(&format!("\n{told}"));
+            Exit::Failed
+        }
+    }
+}
+
+fn say(text: &str) -> Exit {
     match std::io::stdout().write_all(text.as_bytes()) {
         Ok(()) => Exit::Done,
         Err(error) => {

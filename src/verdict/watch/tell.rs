@@ -130,7 +130,7 @@ impl Watch {
             phi: learnt.phi(),
             phi_paid: learnt.phi_paid(),
             df: learnt.df(),
-            account: self.bars.as_ref().map(|b| account(&b.basis)),
+            account: self.bars.as_ref().map(|b| account(&b.basis, &b.thresholds)),
         }
     }
 

@@ -2,7 +2,7 @@
 
 use crate::engine::WatchView;
 use crate::model::{Bank, SourceIx};
-use crate::verdict::watch::thresholds::{Basis, account};
+use crate::verdict::watch::thresholds::{Basis, account, thresholds};
 use crate::verdict::watch::{Figures, Part, Progress, Reading};
 
 use super::Story;
@@ -14,14 +14,15 @@ const NEEDED: u32 = 500;
 /// The watch of a bank with so many values per source.
 pub fn watch(bank: &Bank, sources: usize, story: Story, values: usize) -> WatchView {
     let learning = (values as u32) < NEEDED;
-    let account = account(&Basis {
+    let basis = Basis {
         sources,
         margin_sd: 1.0 / SIGMA,
         spread_margin: bank.spread_margin,
         cycles_per_false_call: 10_800_000.0,
         phi: 0.0,
         df: 30_000.0,
-    });
+    };
+    let account = account(&basis, &thresholds(&basis));
     let (far, part, leading) = match story {
         Story::Spread(at, _) => (0.83, Part::Erratic, at),
         Story::Level(at, _, _) => (0.91, Part::Few, at),

@@ -210,7 +210,7 @@ async fn the_document_describes_what_there_is() {
         document["openapi"]
     );
     let paths = document["paths"].as_object().expect("paths");
-    assert_eq!(paths.len(), 8);
+    assert_eq!(paths.len(), 9);
     let schema = &document["components"]["schemas"]["NoticeBody"]["properties"]["since"];
     assert!(!schema.is_null());
 }

@@ -2,7 +2,7 @@
 
 use super::shares::Part;
 use super::spans::SPANS;
-use super::{Basis, Thresholds, thresholds};
+use super::{Basis, Thresholds};
 use serde::{Deserialize, Serialize};
 
 /// One part's entry.
@@ -29,16 +29,15 @@ pub struct Account {
     pub parts: Vec<Entry>,
 }
 
-/// How the budget becomes thresholds, part by part.
-pub fn account(basis: &Basis) -> Account {
+/// How the budget became thresholds, part by part; working these out anew would take milliseconds.
+pub fn account(basis: &Basis, found: &Thresholds) -> Account {
     let basis = basis.clamped();
-    let found = thresholds(&basis);
     let entry = |part: Part| {
         Some(Entry {
             part,
             share: part.share(basis.sources)?,
             cycles_per_false_call: part.cycles(&basis)?,
-            thresholds: of_part(&found, part)?,
+            thresholds: of_part(found, part)?,
             formula: formula(part, &basis),
         })
     };

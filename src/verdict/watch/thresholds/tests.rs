@@ -362,7 +362,8 @@ fn any_basis_gives_finite_thresholds() {
 #[test]
 fn the_account_shows_every_part_that_is_on() {
     for (k, parts) in [(2, 1), (3, 4), (4, 5), (60, 5)] {
-        let account = account(&basis(k, 0.2));
+        let basis = basis(k, 0.2);
+        let account = account(&basis, &thresholds(&basis));
         assert_eq!(account.parts.len(), parts, "k {k}");
         for entry in &account.parts {
             let spans = matches!(entry.part, Part::Split | Part::Pair);
