@@ -1,5 +1,7 @@
 //! How a row is measured: rates of false calls, delays against an oracle, and what is asked of notices.
 
+use evenrow::notice::Kind;
+
 use super::crew::{Crew, Runs};
 use super::feed::{Feed, Setup};
 use super::notices;
@@ -14,6 +16,9 @@ const ORACLE_RUNS: usize = 4000;
 
 /// Cycles before a change, at most; it comes at a random one of them.
 const QUIET: i64 = 200;
+
+/// Level's share of the budget.
+const LEVEL_SHARE: f64 = 0.8;
 
 /// Who is not called within this many cycles counts as called then.
 const MOST_DELAY: i64 = 30_000;
@@ -130,7 +135,8 @@ fn weights(k: usize, moved: usize, sd: f64) -> Vec<f64> {
 pub enum Measure {
     /// Mean run length of the two-sided CUSUM over the published one: the harness checks itself.
     Published { h: f64, shift: f64, arl: f64 },
-    /// Mean cycles to a false call over what the budget allows.
+    /// Mean cycles to a false call over what the budget allows: all, level alone, spread alone, each
+    /// over its share.
     FalseCalls {
         setup: Setup,
         start: Start,
@@ -178,9 +184,7 @@ impl Measure {
     pub fn take(&self, runs: &Runs) -> Vec<Figure> {
         match self {
             Self::Published { h, shift, arl } => vec![published(*h, *shift, *arl, runs)],
-            Self::FalseCalls { setup, start, most } => {
-                vec![false_calls(setup, *start, *most, runs)]
-            }
+            Self::FalseCalls { setup, start, most } => false_calls(setup, *start, *most, runs),
             Self::Rare { setup } => vec![rare::rate(setup, runs)],
             Self::RareGlr { setup, threshold } => vec![rare::of_glr(setup, *threshold, runs)],
             Self::Delay {
@@ -239,22 +243,31 @@ fn published(h: f64, shift: f64, arl: f64, runs: &Runs) -> Figure {
     Figure::mean(&lengths).times(1.0 / arl)
 }
 
-fn false_calls(setup: &Setup, start: Start, most: i64, runs: &Runs) -> Figure {
+fn false_calls(setup: &Setup, start: Start, most: i64, runs: &Runs) -> Vec<Figure> {
     let starts = start.prepare(setup);
     let all = runs.each(|run, seed| {
         let (mut rig, mut feed) = starts.begin(run, seed);
-        until_call(&mut rig, &mut feed, most)
+        let cycles = until_call(&mut rig, &mut feed, most).0;
+        (cycles, rig.notices.first().map(|n| n.kind))
     });
     let cycles: i64 = all.iter().map(|(cycles, _)| cycles).sum();
-    let calls = all.iter().filter(|(_, called)| *called).count();
-    // Without any call the figure is a lower limit, and its error says that nothing is known.
-    let counted = calls.max(1) as f64;
-    let ratio = cycles as f64 / counted / setup.arl0;
-    Figure {
-        value: ratio,
-        error: ratio / counted.sqrt(),
-        count: calls,
-    }
+    let kinds: Vec<Kind> = all.iter().filter_map(|(_, kind)| *kind).collect();
+    let spread = kinds.iter().filter(|k| **k == Kind::SpreadApart).count();
+    let each = |calls: usize, share: f64| {
+        // Without any call the figure is a lower limit, and its error says that nothing is known.
+        let counted = calls.max(1) as f64;
+        let ratio = cycles as f64 / counted / setup.arl0 * share;
+        Figure {
+            value: ratio,
+            error: ratio / counted.sqrt(),
+            count: calls,
+        }
+    };
+    vec![
+        each(kinds.len(), 1.0),
+        each(kinds.len() - spread, LEVEL_SHARE),
+        each(spread, 1.0 - LEVEL_SHARE),
+    ]
 }
 
 /// Mean cycles from the change to the call; runs that called before it do not count.

@@ -190,7 +190,9 @@ impl Judged {
 
     fn verdict(&self) -> &'static str {
         let value = self.figure.value;
-        let by_itself = if self.asked.aim.holds(value) {
+        let by_itself = if matches!(self.asked.solid, Bound::Anything) {
+            "told"
+        } else if self.asked.aim.holds(value) {
             "aim"
         } else if self.asked.solid.holds(value) {
             "solid"
