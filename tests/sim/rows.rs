@@ -1,8 +1,9 @@
 //! The table: every row of what the whole must show, as data.
 //!
 //! Short bounds are wide enough for chance at the short form's number of runs and narrow enough that a
-//! watch whose thresholds, sums or names are wrong fails; what is solid and what is the aim is judged in
-//! the full form, and shown in both.
+//! watch whose thresholds, sums or names are wrong fails. Where what is solid is missed, the short bound
+//! holds what is reached, so that it does not get worse unseen; the verdict says that it is missed. What
+//! is solid is judged in the full form.
 
 mod delays;
 mod notices;
