@@ -53,6 +53,19 @@ pub fn topic_name(name: &str) -> String {
     name.chars().map(safe).collect()
 }
 
+/// A name as part of an address (RFC 3986): everything but the unreserved is written in percents.
+pub fn address_name(name: &str) -> String {
+    let mut text = String::with_capacity(name.len());
+    for byte in name.bytes() {
+        if byte.is_ascii_alphanumeric() || b"-._~".contains(&byte) {
+            text.push(char::from(byte));
+        } else {
+            text.push_str(&format!("%{byte:02X}"));
+        }
+    }
+    text
+}
+
 #[cfg(test)]
 mod tests {
     use super::topic_name;

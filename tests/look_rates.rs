@@ -9,7 +9,7 @@ mod line;
 
 use evenrow::model::{Bank, Budget, Pairing, SourceIx, US_PER_S};
 use evenrow::model::{Time, Value};
-use evenrow::verdict::{Asked, Aspect, Need, Participant, Shares, examine};
+use evenrow::verdict::{Asked, Aspect, Need, Participant, Shares, Usual, examine};
 use evenrow::window::{Arriving, Windows};
 use line::{Normal, bank, head};
 
@@ -62,6 +62,7 @@ fn called(case: &Case, alpha: f64, margin: f64, runs: usize, seed: u64) -> (f64,
         name: head(s + 1),
         margin,
         silent: false,
+        usual: Some(Usual::default()),
     };
     let who: Vec<Participant> = (0..case.k).map(participant).collect();
     let mut noise = Normal::new(seed);

@@ -5,8 +5,11 @@
 #[cfg(feature = "demo")]
 use std::net::SocketAddr;
 use std::path::PathBuf;
+use std::time::Duration;
 
 use clap::{Args, ValueEnum};
+
+use crate::settings::duration_from_words;
 
 /// Options of `evenrow watch`.
 #[derive(Args, Clone, Debug)]
@@ -37,6 +40,25 @@ pub struct VetArgs {
     /// Send one notice that is marked as a test by every way out, and say what became of each
     #[arg(long)]
     pub send_test: bool,
+    /// Also connect to the broker and listen for a while, without writing anything there: what matches,
+    /// what would be refused, and a bank proposed from what was heard
+    #[arg(long)]
+    pub broker: bool,
+    /// How long to listen
+    #[arg(long, value_name = "DURATION", default_value = "30s", requires = "broker", value_parser = listening)]
+    pub listen: Duration,
+    /// One JSON object instead of text
+    #[arg(long, requires = "broker")]
+    pub json: bool,
+}
+
+/// A time to listen is between a second and a day.
+fn listening(text: &str) -> Result<Duration, String> {
+    let us = duration_from_words(text).and_then(|us| u64::try_from(us).ok());
+    match us {
+        Some(us) if (1_000_000..=86_400_000_000).contains(&us) => Ok(Duration::from_micros(us)),
+        _ => Err("a time to listen is a number with its unit, for example 30s or 5min".to_owned()),
+    }
 }
 
 /// Options of `evenrow rehearse`.

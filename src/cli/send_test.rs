@@ -91,6 +91,12 @@ fn test_of(settings: &Settings, way: Way, now: Time) -> Delivery {
         advice: "Nothing: this is a test.".to_owned(),
         url: settings.pages(),
         span: 0,
+        pattern: None,
+        slip: None,
+        common_movement: None,
+        even_mean: None,
+        cost_per_hour: None,
+        adjustment: None,
     };
     Delivery {
         number: u64::try_from(seconds).unwrap_or(0),

@@ -71,7 +71,7 @@ pub enum RunError {
     #[error("task \"{name}\" ended unexpectedly: {why}")]
     Task {
         /// Its name.
-        name: &'static str,
+        name: Name,
         /// Why.
         why: String,
     },
@@ -177,7 +177,7 @@ fn start(
             reports_in.clone(),
             end.clone(),
         );
-        tasks.start("outlet", run);
+        tasks.start(format!("outlet {}", outlet.name), run);
     }
     let ways = Ways {
         receipts,

@@ -3,8 +3,11 @@
 use serde::{Deserialize, Serialize};
 
 use crate::model::{SourceIx, Time};
-use crate::notice::{NamedSource, Since};
-use crate::verdict::{Aspect, Began, Call, Estimate, Located, Yardstick, locate, size_since};
+use crate::notice::{Adjustment, NamedSource, Since};
+use crate::verdict::{
+    Aspect, Began, Call, Effect, Estimate, FEWEST_AFTER, Located, Yardstick, cleared_margin,
+    effect_of_adjustment, locate, size_since,
+};
 
 use super::incident::Surroundings;
 
@@ -92,6 +95,12 @@ impl Apart {
 
     pub fn update(&mut self, about: &Surroundings, aspect: Aspect, yard: &Yardstick) {
         let data = &about.exam.data;
+        if let Some(adjusted) = self.adjusted {
+            // What it was before the adjustment is over, and its start stays what it was.
+            let since = size_since(data, self.source, aspect, yard, adjusted.from);
+            self.size = since.unwrap_or(self.size);
+            return;
+        }
         // A start that has left the windows is kept: what is left would only seem to start later.
         let reaches_back = data.oldest_place().is_some_and(|p| p < self.located.start);
         if reaches_back && let Some(located) = locate(data, self.source, aspect, yard) {
@@ -103,6 +112,29 @@ impl Apart {
         if farness(aspect, &self.size) > farness(aspect, &self.worst) {
             self.worst = self.size;
         }
+    }
+
+    /// Its last adjustment, and what the values since say of it.
+    pub fn adjustment(&self, about: &Surroundings, aspect: Aspect) -> Option<Adjustment> {
+        let adjusted = self.adjusted.filter(|_| aspect == Aspect::Level)?;
+        let ring = about.watched.state.windows.ring(self.source);
+        let values = ring.iter().rev().take_while(|e| e.place >= adjusted.from);
+        let values = values.count();
+        let margin = about.watched.bank.margin;
+        let widths = (margin, cleared_margin(margin, about.sigma()));
+        let effect = if self.cleared {
+            Effect::Worked
+        } else {
+            effect_of_adjustment(&adjusted.before, &self.size, values, widths)
+        };
+        Some(Adjustment {
+            source: about.watched.name(self.source),
+            at: adjusted.at,
+            amount: adjusted.by,
+            values,
+            deviation: (values >= FEWEST_AFTER).then_some(self.size),
+            effect,
+        })
     }
 
     /// Its size now; what it was at worst once it is back.

@@ -355,6 +355,7 @@ impl Watched {
                 .margin
                 .max(self.state.sources[s.index()].cleared_margin),
             silent: self.state.sources[s.index()].silent,
+            usual: self.usual(s),
         };
         let who: Vec<Participant> = self
             .display_order()

@@ -4,14 +4,15 @@ use std::sync::Arc;
 
 use serde::{Deserialize, Serialize};
 
-use crate::model::{Name, SourceIx, Time};
+use crate::model::{Name, SourceIx, Time, address_name};
 use crate::notice::{
     Acknowledgement, Compared, Facts, Happening, Kind, NamedSource, Notice, Priority, SPREAD_UNIT,
     State, after,
 };
 use crate::stats::dist;
 use crate::verdict::{
-    Aspect, Call, Estimate, Examination, Yardstick, locate, returned, values_to_clear,
+    Aspect, Call, Estimate, Examination, Yardstick, cost_per_hour, locate, returned,
+    values_to_clear,
 };
 use crate::window::Windows;
 
@@ -79,7 +80,7 @@ impl Incident {
             id,
             plant: about.plant.name.clone(),
             bank: about.watched.bank.name.clone(),
-            kind: kind(call),
+            kind: kind(call, about),
             state: after(State::Normal, Happening::Occurs),
             priority: Priority::Medium,
             sources: Vec::new(),
@@ -98,9 +99,15 @@ impl Incident {
             url: format!(
                 "{}/banks/{}",
                 about.plant.pages,
-                address(&about.watched.bank.name)
+                address_name(&about.watched.bank.name)
             ),
             span: call.span,
+            pattern: call.causes.pattern.clone(),
+            slip: call.causes.slip,
+            common_movement: call.causes.common_movement,
+            even_mean: None,
+            cost_per_hour: None,
+            adjustment: None,
         };
         let mut incident = Self {
             notice: Arc::new(notice),
@@ -150,6 +157,7 @@ impl Incident {
     /// where the evidence of each return begins.
     pub fn follow(&mut self, about: &Surroundings) -> Vec<(SourceIx, i64)> {
         self.join(about);
+        self.explain(about);
         let mut back = Vec::new();
         let yard = about.yard(self.aspect, &self.reference);
         for one in self.apart.iter_mut().filter(|a| !a.cleared) {
@@ -169,6 +177,18 @@ impl Incident {
         }
         self.tell(about);
         back
+    }
+
+    /// What explains it is found again as values arrive; a look that no longer calls changes nothing.
+    fn explain(&mut self, about: &Surroundings) {
+        let Some(call) = about.exam.calls.iter().find(|c| c.aspect == self.aspect) else {
+            return;
+        };
+        let causes = call.causes.clone();
+        let notice = Arc::make_mut(&mut self.notice);
+        notice.pattern = causes.pattern;
+        notice.slip = causes.slip;
+        notice.common_movement = causes.common_movement;
     }
 
     /// Sources that the look names besides, each beyond chance at the look's own share of the budget:
@@ -265,6 +285,9 @@ impl Incident {
             farness(self.aspect, &b.size).total_cmp(&farness(self.aspect, &a.size))
         });
         let sources: Vec<NamedSource> = named.iter().map(|a| a.told(about)).collect();
+        let adjusted = named.iter().filter(|a| a.adjusted.is_some());
+        let newest = adjusted.max_by_key(|a| a.adjusted.map(|a| a.at));
+        let adjustment = newest.and_then(|a| a.adjustment(about, self.aspect));
         let all: Vec<SourceIx> = self.apart.iter().map(|a| a.source).collect();
         let since = named[0].located.since;
         let facts = Facts {
@@ -277,20 +300,29 @@ impl Incident {
             compared: if is_pair(&all, &self.reference) {
                 Compared::Mutually
             } else {
-                Compared::WithEven
+                Compared::of(&about.watched.bank, self.notice.kind)
             },
             even_mean: self.even_mean(about),
+            pattern: self.notice.pattern.as_ref(),
+            slip: self.notice.slip,
+            common_movement: self.notice.common_movement,
+            cost_per_hour: cost_per_hour(&about.watched.bank, &about.exam.looks, about.interval_us),
             clears_in_us: self.clears_in_us(about),
             returned: self.notice.returned,
+            adjustment: adjustment.as_ref(),
             url: &self.notice.url,
         };
         let words = facts.words();
+        let (even_mean, cost) = (facts.even_mean, facts.cost_per_hour);
         let priority = self.priority(about, &sources);
         let changed = self.notice.sources != sources || self.notice.since != since;
         let notice = Arc::make_mut(&mut self.notice);
         if changed {
             notice.changed = about.now;
         }
+        notice.even_mean = even_mean;
+        notice.cost_per_hour = cost;
+        notice.adjustment = adjustment;
         notice.sources = sources;
         notice.since = since;
         notice.priority = priority;
@@ -370,7 +402,8 @@ impl Incident {
         let moved = n.sources.iter().zip(&last.sources).any(|(a, b)| {
             a.source == b.source && (a.deviation - b.deviation).abs() > (b.high - b.low) / 2.0
         });
-        let other = set(n) != set(last) || n.priority != last.priority;
+        let told = |n: &Notice| n.adjustment.as_ref().map(|a| (a.stage(), a.effect));
+        let other = set(n) != set(last) || n.priority != last.priority || told(n) != told(last);
         (other || moved) && now.us_since(*at) >= SEND_EVERY_US
     }
 }
@@ -380,11 +413,13 @@ fn is_pair(named: &[SourceIx], reference: &[SourceIx]) -> bool {
     named.iter().any(|s| reference.contains(s))
 }
 
-fn kind(call: &Call) -> Kind {
+fn kind(call: &Call, about: &Surroundings) -> Kind {
     match call.aspect {
         Aspect::Level if is_pair(&call.named, &call.reference) => Kind::LevelApart,
         Aspect::Spread => Kind::SpreadApart,
         // From four sources on, half of them apart means two groups and no culprit.
+        // Compared with one reference source, how many are apart says nothing of a split.
+        Aspect::Level if about.watched.bank.reference.is_some() => Kind::LevelApart,
         Aspect::Level
             if call.named.len() + call.reference.len() >= 4
                 && call.named.len() >= call.reference.len() =>
@@ -407,17 +442,4 @@ fn share(about: &Surroundings, aspect: Aspect) -> f64 {
 fn newest_place(windows: &Windows) -> i64 {
     let newest = windows.rings().iter().filter_map(|r| r.newest());
     newest.map(|e| e.place).max().unwrap_or(i64::MIN)
-}
-
-/// A name as part of an address (RFC 3986): everything but the unreserved is written in percents.
-fn address(name: &str) -> String {
-    let mut text = String::with_capacity(name.len());
-    for byte in name.bytes() {
-        if byte.is_ascii_alphanumeric() || b"-._~".contains(&byte) {
-            text.push(char::from(byte));
-        } else {
-            text.push_str(&format!("%{byte:02X}"));
-        }
-    }
-    text
 }

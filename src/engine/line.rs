@@ -96,6 +96,7 @@ impl Watched {
         let from = self.next_place();
         self.state.windows.start_fresh(source, from);
         self.state.sources[source.index()].cleared_margin = 0.0;
+        self.forget_usual();
         for incident in &mut self.state.incidents {
             incident.adjusted(source, by, at, from);
         }
@@ -139,6 +140,7 @@ impl Watched {
             self.state.windows.start_fresh(SourceIx(s as u16), from);
             self.state.sources[s].cleared_margin = 0.0;
         }
+        self.forget_usual();
         let line = &mut self.state.line;
         if let Some(watch) = &mut self.state.watch {
             if let (Some(before), Some(learnt)) = (line.product.take(), watch.learnt()) {
@@ -193,7 +195,7 @@ impl Watched {
     }
 
     /// The first place that nothing has been delivered into yet.
-    fn next_place(&self) -> i64 {
+    pub fn next_place(&self) -> i64 {
         let rings = self.state.windows.rings().iter();
         let newest = rings.filter_map(|r| r.newest()).map(|e| e.place).max();
         newest.map_or(i64::MIN, |place| place.saturating_add(1))

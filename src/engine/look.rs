@@ -56,6 +56,7 @@ impl Watched {
         self.state.look_due = None;
         self.state.last_look = Some(now);
         self.follow_pace(now);
+        self.learn_places();
         let exam = self.examine(now, Need::WholeSpan, None);
         self.conclude(plant, now, exam)
     }

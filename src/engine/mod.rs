@@ -19,6 +19,7 @@ mod restore;
 mod send;
 mod snapshot;
 mod source;
+mod usual;
 mod view;
 mod watching;
 
@@ -31,3 +32,4 @@ pub use snapshot::{
     BankView, Cycles, OutletView, Plant, RefusalView, Snapshot, SourceState, SourceView, WatchView,
     WindowValue, WindowView,
 };
+pub use view::shown_look;

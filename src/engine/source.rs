@@ -3,6 +3,7 @@
 use serde::{Deserialize, Serialize};
 
 use crate::model::{Bank, Name, Time};
+use crate::verdict::Usual;
 use crate::window::Ring;
 
 use super::SourceState;
@@ -34,6 +35,8 @@ pub struct Source {
     pub out_of_use: bool,
     /// When it was last put back in use.
     pub in_use_since: Option<Time>,
+    /// Where it usually stands, once that is learnt.
+    pub usual: Option<Usual>,
     /// The margin with which it is watched since it cleared, where that is above the bank's.
     pub cleared_margin: f64,
 }
@@ -51,6 +54,7 @@ impl Source {
             silent: false,
             out_of_use: false,
             in_use_since: None,
+            usual: None,
             cleared_margin: 0.0,
         }
     }

@@ -68,7 +68,7 @@ pub fn bank_view(watched: &Watched) -> BankView {
 
 /// The look whose figures stand for "now": over the shortest span that still resolves half the
 /// margin, else over the longest that could be judged. A longer window only mixes in the past.
-fn shown_look(looks: &[Arc<Look>], margin: f64) -> Option<&Look> {
+pub fn shown_look(looks: &[Arc<Look>], margin: f64) -> Option<&Look> {
     let judged = || looks.iter().filter(|l| !l.sources.is_empty());
     let resolves = |l: &&Arc<Look>| {
         let widths = l

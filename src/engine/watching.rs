@@ -72,6 +72,7 @@ impl Watched {
     /// which is the next step's business.
     fn step_over(&mut self, closed: &[i64]) -> Option<Crossing> {
         let compared = self.compared();
+        let places: Vec<f64> = self.known_places();
         let active = self.state.incidents.iter().any(|i| i.is_active());
         let watch = self.state.watch.as_mut()?;
         watch.compare(&compared);
@@ -80,6 +81,8 @@ impl Watched {
         let mut first = None;
         for &place in closed {
             if let Some(taken) = self.state.windows.cycle(place, &mut values) {
+                let each = values.iter_mut().zip(&places);
+                each.for_each(|(value, usual)| *value -= usual);
                 let cycle = Cycle {
                     place,
                     taken,
@@ -90,6 +93,12 @@ impl Watched {
             }
         }
         first
+    }
+
+    /// Where sources are known to stand; not a number where that is not known, so that it is not compared.
+    fn known_places(&self) -> Vec<f64> {
+        let place = |s| self.usual(SourceIx(s as u16)).map_or(f64::NAN, |u| u.place);
+        (0..self.state.sources.len()).map(place).collect()
     }
 
     /// Which sources the watch compares: those that take part and that no open notice is about.
@@ -137,10 +146,10 @@ impl Watched {
     }
 }
 
-/// A watch for a bank that nothing is known of; `None` where sources share no cycle.
+/// A watch for a bank that nothing is known of; `None` where the looks decide for good.
 pub fn watch_for(bank: &Bank) -> Option<Watch> {
-    let paired = bank.pairing.is_paired();
-    paired.then(|| Watch::new(terms(bank, None)))
+    let watched = bank.is_watched();
+    watched.then(|| Watch::new(terms(bank, None)))
 }
 
 /// Before the bank's rate of cycles is known, one cycle a look stands in; the look decides then.

@@ -81,14 +81,16 @@ impl Nodes {
         if payload.len() > self.most_bytes {
             let (got, most) = (payload.len(), self.most_bytes);
             let detail = format!("the payload has {got} bytes, the limit is {most}");
-            let fault = Fault::new(Reason::TooLarge, detail);
-            return self.outcome(vec![Told::Refused {
-                topic: topic.to_owned(),
-                fault,
-            }]);
+            return self.refused(topic, Fault::new(Reason::TooLarge, detail));
         }
         let told = self.session.take(topic, payload, now);
         self.outcome(told)
+    }
+
+    /// Refuses a message that is not even looked into.
+    pub fn refused(&mut self, topic: &str, fault: Fault) -> Outcome {
+        let topic = topic.to_owned();
+        self.outcome(vec![Told::Refused { topic, fault }])
     }
 
     /// When [`Nodes::tick`] has something to do.

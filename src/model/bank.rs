@@ -236,6 +236,12 @@ impl Bank {
         self.spans.iter().copied().max().unwrap_or(2)
     }
 
+    /// Whether the watch decides when to call. It needs cycles that sources share, and places that are
+    /// known: learnt ones come with chance of their own, which only the look pays for.
+    pub fn is_watched(&self) -> bool {
+        self.pairing.is_paired() && self.offsets != Offsets::Learn
+    }
+
     /// Looks per second, as the budget counts them.
     pub fn looks_per_s(&self) -> f64 {
         US_PER_S as f64 / self.look_every_us as f64

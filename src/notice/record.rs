@@ -5,6 +5,7 @@ use std::sync::Arc;
 use serde::{Deserialize, Serialize};
 
 use crate::model::{Name, Time};
+use crate::verdict::{Effect, Estimate, Pattern, Slip};
 
 /// What a notice is about.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord, Hash, Serialize, Deserialize)]
@@ -226,6 +227,19 @@ pub struct Notice {
     pub url: String,
     /// The span of the look that called.
     pub span: usize,
+    /// The machine's geometry explains it; level only.
+    pub pattern: Option<Pattern>,
+    /// All sources read as others; level only.
+    pub slip: Option<Slip>,
+    /// How far the sources that stayed moved together since the start, in the bank's unit. It is no
+    /// divergence and never raises a notice.
+    pub common_movement: Option<f64>,
+    /// Mean of the sources that the named ones are compared with, in the bank's unit.
+    pub even_mean: Option<f64>,
+    /// What the bank gives away in an hour, where a cost is configured.
+    pub cost_per_hour: Option<f64>,
+    /// The last adjustment of a named source since it left, and what became of it.
+    pub adjustment: Option<Adjustment>,
 }
 
 /// A way out of the house.
@@ -262,4 +276,33 @@ pub struct Delivery {
     pub at: Time,
     /// The notice as it stood then.
     pub notice: Arc<Notice>,
+}
+
+/// An adjustment of a named source, and what the values since say of it.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+pub struct Adjustment {
+    /// The source.
+    pub source: Name,
+    /// When it was entered.
+    pub at: Time,
+    /// By how much, in the bank's unit, where that was said.
+    pub amount: Option<f64>,
+    /// Values of the source since.
+    pub values: usize,
+    /// Its deviation over those, in the bank's unit; none before there are enough.
+    pub deviation: Option<Estimate>,
+    /// What became of it.
+    pub effect: Effect,
+}
+
+impl Adjustment {
+    /// Values after which people are told anew: 10, 20 and 40.
+    pub fn stage(&self) -> usize {
+        match self.values {
+            0..10 => 0,
+            10..20 => 10,
+            20..40 => 20,
+            _ => 40,
+        }
+    }
 }

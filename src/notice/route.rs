@@ -123,6 +123,12 @@ mod tests {
             advice: String::new(),
             url: String::new(),
             span: 40,
+            pattern: None,
+            slip: None,
+            common_movement: None,
+            even_mean: None,
+            cost_per_hour: None,
+            adjustment: None,
         }
     }
 

@@ -56,7 +56,8 @@ impl Lanes {
         }
     }
 
-    /// Takes one in. It is due at once, and so is what waits before it in its lane.
+    /// Takes one in. It is due at once, and so is what waits before it in its lane; the schedule begins
+    /// anew.
     pub fn push(&mut self, delivery: Delivery, now: Duration) {
         let notice = &delivery.notice.id;
         let found = self.lanes.iter().position(|l| l.notice == *notice);
@@ -72,6 +73,7 @@ impl Lanes {
         });
         let lane = &mut self.lanes[at];
         lane.queue.push(delivery);
+        lane.failures = 0;
         lane.due = lane.due.min(now);
     }
 
@@ -215,7 +217,10 @@ mod tests {
         lanes.push(delivery(3, "a", State::Acknowledged), s(3));
         assert_eq!(lanes.next(s(3)), Next::Now);
         assert_eq!(numbers(lanes.take_one()), [1]);
-        assert_eq!(lanes.confirmed(s(4)), [1]);
+        lanes.failed(s(3), 0.0);
+        assert_eq!(lanes.next(s(3)), Next::In(s(5)));
+        assert_eq!(numbers(lanes.take_one()), [1]);
+        assert_eq!(lanes.confirmed(s(8)), [1]);
         assert_eq!(numbers(lanes.take_one()), [3]);
     }
 

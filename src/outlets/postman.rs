@@ -108,7 +108,6 @@ impl Postman {
     /// # Errors
     /// When nobody takes the reports any more.
     pub async fn walk(mut self, carrier: &impl Carrier) -> Result<(), OutletError> {
-        // What came before is one lot: newer figures replace older ones before anything is sent.
         while let Some(wait) = self.wait() {
             if wait.is_zero()
                 && let Some(letter) = self.take()

@@ -278,8 +278,8 @@ pub(super) fn unfit(name: &str) -> Option<String> {
     }
 }
 
-/// Reads a duration; a day has 24 hours.
-pub(super) fn duration_us(text: &str) -> Option<i64> {
+/// Reads a duration with its unit, in microseconds; a day has 24 hours. `None` when it is none.
+pub fn duration_us(text: &str) -> Option<i64> {
     let span = SpanParser::new().parse_span(text.trim()).ok()?;
     let duration = span.to_duration(SpanRelativeTo::days_are_24_hours()).ok()?;
     i64::try_from(duration.as_micros()).ok()

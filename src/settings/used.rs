@@ -12,6 +12,8 @@ use crate::model::{Bank, BankIx, Name, Shift};
 
 use super::forms::{Belief, PayloadForm};
 
+use super::list::Origins;
+
 /// Everything the daemon is told.
 #[derive(Clone, Debug)]
 pub struct Settings {
@@ -29,6 +31,8 @@ pub struct Settings {
     pub feeds: Vec<Feed>,
     /// The ways out of a notice besides the broker.
     pub outlets: Vec<Outlet>,
+    /// Where the values that were given stand.
+    pub origins: Origins,
 }
 
 /// The plant.
@@ -60,7 +64,8 @@ pub struct Broker {
     pub port: u16,
     /// Whether the connection is encrypted (`mqtts://`).
     pub tls: bool,
-    /// Client id of the connection that listens; the one that speaks appends `-notices`.
+    /// Client id of the connection that listens; the one that speaks appends `-notices`, the one
+    /// for Sparkplug `-sparkplug`.
     pub client_id: String,
     /// Version.
     pub protocol: Protocol,
@@ -101,9 +106,13 @@ pub struct WebSettings {
     pub listen: SocketAddr,
     /// One token per line, optionally preceded by `look ` or `act `.
     pub token_file: Option<PathBuf>,
+    /// PEM file of the certificate chain with which we encrypt; without it we do not.
+    pub certificate_file: Option<PathBuf>,
+    /// PEM file of its key.
+    pub key_file: Option<PathBuf>,
     /// Said explicitly: something in front of us encrypts.
     pub tls_in_front: bool,
-    /// The address people use, when it is not `http://{listen}`.
+    /// The address people use, when it is not that of `listen`.
     pub address: Option<String>,
 }
 
@@ -175,6 +184,7 @@ impl Settings {
     pub fn pages(&self) -> String {
         match &self.web.address {
             Some(address) => address.trim_end_matches('/').to_owned(),
+            None if self.web.certificate_file.is_some() => format!("https://{}", self.web.listen),
             None => format!("http://{}", self.web.listen),
         }
     }

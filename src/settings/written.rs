@@ -65,6 +65,8 @@ pub(super) struct WrittenWeb {
     pub(super) place: Place,
     pub(super) listen: Field<String>,
     pub(super) token_file: Field<String>,
+    pub(super) certificate_file: Field<String>,
+    pub(super) key_file: Field<String>,
     pub(super) address: Field<String>,
     pub(super) tls_in_front: Field<bool>,
 }
@@ -244,6 +246,8 @@ impl WrittenWeb {
             place: s.place.clone(),
             listen: s.text("listen", faults),
             token_file: s.text("token_file", faults),
+            certificate_file: s.text("certificate_file", faults),
+            key_file: s.text("key_file", faults),
             address: s.text("address", faults),
             tls_in_front: s.flag("tls_in_front", faults),
         };

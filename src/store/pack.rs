@@ -8,9 +8,9 @@
 use std::collections::{BTreeMap, BTreeSet};
 
 use crate::engine::{Due, Event, Onward, Turn};
-use crate::model::{BankIx, Measurement, Name, Time, Value};
+use crate::model::{BankIx, Measurement, Name, SourceIx, Time, Value};
 
-use super::codec::{DecodeError, from_payload, to_payload};
+use super::codec::{DecodeError, from_payload, take_payload, to_payload};
 
 /// The event follows as postcard.
 const PLAIN: u8 = 0;
@@ -190,31 +190,32 @@ fn pack_due(out: &mut Vec<u8>, due: &Due, banks: &[Name]) -> Result<(), DecodeEr
     let used: Vec<BankIx> = all.into_iter().collect();
     put_banks(out, &used, banks)?;
     let place = |bank: BankIx| BankIx(used.partition_point(|b| *b < bank) as u16);
-    let written = Due {
-        silent: silent.iter().map(|&(b, s)| (place(b), s)).collect(),
-        looks: looks.iter().map(|&b| place(b)).collect(),
-        onward: onward.iter().map(|o| at(o, place(o.bank))).collect(),
-    };
-    out.extend(to_payload(&written)?);
+    let silent: Vec<_> = silent.iter().map(|&(b, s)| (place(b), s)).collect();
+    let looks: Vec<_> = looks.iter().map(|&b| place(b)).collect();
+    let onward: Vec<_> = onward.iter().map(|o| at(o, place(o.bank))).collect();
+    out.extend(to_payload(&(silent, looks))?);
+    // What came later than the first version follows, where there is any.
+    if !onward.is_empty() {
+        out.extend(to_payload(&onward)?);
+    }
     Ok(())
 }
 
 fn unpack_due(rest: &mut Reader<'_>, banks: &[Name]) -> Result<Due, DecodeError> {
     let used = banks_used(rest, banks)?;
-    let written: Due = from_payload(rest.0)?;
+    let ((silent, looks), rest): ((Vec<(BankIx, SourceIx)>, Vec<BankIx>), _) =
+        take_payload(rest.0)?;
+    let onward: Vec<Onward> = match rest {
+        [] => Vec::new(),
+        rest => from_payload(rest)?,
+    };
     let now = |place: BankIx| used.get(place.index()).copied().flatten();
+    let silent = silent.into_iter().filter_map(|(b, s)| Some((now(b)?, s)));
+    let onward = onward.iter().filter_map(|o| Some(at(o, now(o.bank)?)));
     Ok(Due {
-        silent: written
-            .silent
-            .into_iter()
-            .filter_map(|(b, s)| Some((now(b)?, s)))
-            .collect(),
-        looks: written.looks.into_iter().filter_map(now).collect(),
-        onward: written
-            .onward
-            .iter()
-            .filter_map(|o| Some(at(o, now(o.bank)?)))
-            .collect(),
+        silent: silent.collect(),
+        looks: looks.into_iter().filter_map(now).collect(),
+        onward: onward.collect(),
     })
 }
 

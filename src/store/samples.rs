@@ -124,6 +124,12 @@ pub(super) fn notice(id: &str, raised: Time, state: State) -> Arc<Notice> {
         advice: "Check its valve.".to_owned(),
         url: "http://127.0.0.1:7310/banks/filler-2".to_owned(),
         span: 160,
+        pattern: None,
+        slip: None,
+        common_movement: None,
+        even_mean: None,
+        cost_per_hour: None,
+        adjustment: None,
     })
 }
 

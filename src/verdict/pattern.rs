@@ -17,21 +17,12 @@ use super::contrast::{Contrast, Fit};
 use super::even::Means;
 use super::level::Level;
 use super::look::Estimate;
+use super::parsimony::{
+    DECISIVELY, EVEN_ABOVE, PER_PARAMETER, choice, nobodys_variance, one_by_one, squares,
+};
 
 /// Family-wise error rate of the contrasts.
 const ALPHA: f64 = 0.01;
-
-/// What remains without the pattern counts as even above this probability. Smaller than the customary
-/// 0.05, because that alone would leave one true pattern in twenty unnamed.
-const EVEN_ABOVE: f64 = 0.01;
-
-/// What a free parameter must explain to be worth its place, in squared standard errors; naming
-/// a source costs the choice among the sources on top, 2 ln k.
-const PER_PARAMETER: f64 = 1.0;
-
-/// By so much more, in squared standard errors, a pattern must explain than naming does: whoever is
-/// named goes on being watched, whoever is explained away is not.
-const DECISIVELY: f64 = 2.0;
 
 /// Fewer sources show no pattern that naming them would not show better: of four, one that moved passed
 /// for a slope in one case of nine (simulated).
@@ -69,6 +60,35 @@ pub enum PatternKind {
         /// The configured group.
         name: Name,
     },
+}
+
+impl PatternKind {
+    /// The word in interfaces.
+    pub const fn word(&self) -> &'static str {
+        match self {
+            Self::Wave { .. } => "wave",
+            Self::Slope { .. } => "slope",
+            Self::OddFromEven => "odd_from_even",
+            Self::HalfFromHalf { .. } => "half_from_half",
+            Self::Group { .. } => "group",
+        }
+    }
+
+    /// Where a wave is highest.
+    pub fn highest(&self) -> Option<&Name> {
+        match self {
+            Self::Wave { highest, .. } => Some(highest),
+            _ => None,
+        }
+    }
+
+    /// The configured group.
+    pub fn group(&self) -> Option<&Name> {
+        match self {
+            Self::Group { name } => Some(name),
+            _ => None,
+        }
+    }
 }
 
 /// A pattern that explains how the sources stand apart.
@@ -133,8 +153,10 @@ pub fn find(level: &Level, names: &[Name], machine: &Machine) -> Option<Pattern>
         .filter(|(_, p)| *p < ALPHA)
         .min_by(|a, b| a.0.score.total_cmp(&b.0.score))?;
     let (tried, p) = best;
-    let score = tried.score + 2.0 * (family as f64).ln() + DECISIVELY;
-    let explains = score < one_by_one(level, machine.margin) && is_even(level, &tried.fit, machine);
+    let score = tried.score + choice(family) + DECISIVELY;
+    let variance = nobodys_variance(level, machine.margin);
+    let explains =
+        score < one_by_one(&level.means, variance) && is_even(level, &tried.fit, machine);
     explains.then(|| tried.told(p, family, machine))?
 }
 
@@ -199,7 +221,7 @@ struct Tried<'a> {
 impl<'a> Tried<'a> {
     fn new(shape: Shape<'a>, contrast: &Contrast, level: &Level, margin: f64) -> Option<Self> {
         let fit = contrast.fit(&level.means, &level.errors, margin)?;
-        let left = squares(&fit.remainder) / within(level, margin);
+        let left = squares(&fit.remainder) / nobodys_variance(level, margin);
         let score = left + PER_PARAMETER * fit.coefficients.len() as f64;
         Some(Self { shape, fit, score })
     }
@@ -291,36 +313,6 @@ fn words(kind: &PatternKind, effect: f64) -> String {
         } => format!("the half up to {first_ends} {above} the half from {second_begins} on"),
         PatternKind::Group { name } => format!("{name} {above} the rest"),
     }
-}
-
-fn squares(values: &[f64]) -> f64 {
-    values.iter().map(|v| v * v).sum()
-}
-
-/// Variance of a source's mean about the others that is nobody's fault: chance, and lasting offsets
-/// within the margin, taken as spread evenly over it.
-fn within(level: &Level, margin: f64) -> f64 {
-    level.errors.mean_variance() + margin * margin / 12.0
-}
-
-/// The best that naming sources one by one can do: what is left when `s` of them are set free and the
-/// others share one level, and what those `s` cost; the smallest over `s`.
-fn one_by_one(level: &Level, margin: f64) -> f64 {
-    let mut means = level.means.clone();
-    means.sort_by(f64::total_cmp);
-    let k = means.len();
-    let variance = within(level, margin);
-    let each = PER_PARAMETER + 2.0 * (k as f64).ln();
-    let kept = |from: usize, length: usize| {
-        let s = stats::summarize(&means[from..from + length]);
-        s.ss / variance
-    };
-    // Whoever is kept is a run of neighbours: that leaves the least.
-    let freed = |s: usize| {
-        let runs = (0..=s).map(|from| kept(from, k - s));
-        runs.fold(f64::INFINITY, f64::min) + each * s as f64
-    };
-    (0..=k / 2).map(freed).fold(f64::INFINITY, f64::min)
 }
 
 /// Whether what remains without a pattern is even: by the blocked test, or, with a margin, no pair

@@ -28,7 +28,7 @@ impl Shares {
     /// The budget divided by looks times spans, so that all looks over all spans together stay inside
     /// it whatever they have in common (union bound).
     pub fn of(bank: &Bank) -> Self {
-        let own = if bank.pairing.is_paired() {
+        let own = if bank.is_watched() {
             WHILE_LEARNING
         } else {
             1.0

@@ -32,8 +32,10 @@ pub async fn dress(State(app): State<App>, request: Request, next: Next) -> Resp
     } else {
         problem.into_response()
     };
-    if let Some(allow) = response.headers().get(header::ALLOW) {
-        dressed.headers_mut().insert(header::ALLOW, allow.clone());
+    for name in [header::ALLOW, header::RETRY_AFTER] {
+        if let Some(text) = response.headers().get(&name) {
+            dressed.headers_mut().insert(name, text.clone());
+        }
     }
     dressed
 }

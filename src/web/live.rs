@@ -21,7 +21,7 @@ use crate::engine::{BankView, Condition, OutletView, Snapshot};
 use super::site::App;
 
 /// Proxies cut connections that say nothing for a minute.
-const KEEP_ALIVE: Duration = Duration::from_secs(20);
+pub const KEEP_ALIVE: Duration = Duration::from_secs(20);
 
 /// What a page wants to hear about.
 #[derive(Debug, Deserialize)]

@@ -4,20 +4,23 @@
 //! (`pages`, `pictures`, [`wire`], [`metrics`]), and nothing of the plant. What must hold: pages of the
 //! present and metrics are functions of the snapshot; the past comes through
 //! [`crate::engine::History`]; a change goes out as an [`Ask`] and never touches state. Everything a
-//! page needs is embedded, and no page asks another host for anything. Deliberately absent:
-//! encryption (a proxy in front does it) and any decision about sources.
+//! page needs is embedded, and no page asks another host for anything; modules use each other in one
+//! direction (a test checks it). Deliberately absent: any decision about sources.
 
 mod access;
 mod acknowledge;
 mod address;
 mod api;
 mod assets;
+mod certificate;
 mod days;
 mod dress;
 mod durations;
 mod format;
 mod health;
 mod kept;
+mod limiting;
+mod limits;
 mod line;
 mod live;
 pub mod metrics;
@@ -26,6 +29,7 @@ mod pages;
 mod pictures;
 mod problem;
 mod pulse;
+mod readings;
 #[cfg(test)]
 mod sample;
 mod server;
@@ -37,6 +41,7 @@ mod standing;
 mod story;
 #[cfg(test)]
 mod tests;
+mod then;
 pub mod tokens;
 pub mod wire;
 

@@ -4,7 +4,8 @@ use axum::Json;
 use utoipa::openapi::security::{HttpAuthScheme, HttpBuilder, SecurityScheme};
 use utoipa::{Modify, OpenApi};
 
-use super::api::{banks, line, notices};
+use super::api::{banks, line, looks, notices, plant, stream};
+use super::problem::Problem;
 
 /// How tokens are sent.
 struct Token;
@@ -31,13 +32,19 @@ impl Modify for Token {
         license(name = "MIT", identifier = "MIT"),
     ),
     paths(
-        banks::list, banks::one, banks::windows, banks::looks, banks::refusals,
+        banks::list, banks::one, banks::sources, banks::source, banks::windows, banks::refusals,
         line::list, line::enter,
-        notices::list, notices::one, notices::acknowledge,
+        looks::list, looks::one, notices::list, notices::one, notices::acknowledge,
+        plant::settings, plant::health, plant::refusals, stream::stream,
     ),
+    components(schemas(Problem)),
     tags(
-        (name = "banks", description = "What is compared, now and before"),
+        (name = "banks", description = "What is compared, now"),
+        (name = "looks", description = "What the examinations said, now and before"),
         (name = "notices", description = "What people receive and act on"),
+        (name = "refusals", description = "What arrived and could not be used"),
+        (name = "plant", description = "Settings and health"),
+        (name = "stream", description = "What changes, as it changes"),
     ),
     modifiers(&Token),
 )]

@@ -1,6 +1,6 @@
 //! Signing in and out: the token is entered once, then a cookie stands for it.
 //!
-//! The cookie is `HttpOnly` and `SameSite=Strict`, and `Secure` where something in front encrypts.
+//! The cookie is `HttpOnly` and `SameSite=Strict`, and `Secure` where connections are encrypted.
 //! The sign-in form carries a one-time field that must equal a second cookie made with it: there is
 //! no session yet that could hold it.
 
@@ -23,6 +23,10 @@ use super::site::App;
 const WRONG_TOKEN_PAUSE: Duration = Duration::from_millis(300);
 /// How long an opened sign-in form is good for, in seconds.
 const FORM_LASTS_S: u32 = 3600;
+
+/// Marks the answer to a wrong token, for whoever counts them.
+#[derive(Clone, Copy, Debug)]
+pub struct WrongToken;
 
 /// Where to go afterwards.
 #[derive(Debug, Default, Deserialize)]
@@ -88,11 +92,10 @@ pub async fn enter(
         .and_then(|t| t.rights(entered.token.trim()));
     let Some(rights) = rights else {
         tokio::time::sleep(WRONG_TOKEN_PAUSE).await;
-        return show(
-            &app,
-            &next,
-            Some("This token is not known. It stands in the token file."),
-        );
+        let complaint = "This token is not known. It stands in the token file.";
+        let mut again = show(&app, &next, Some(complaint));
+        again.extensions_mut().insert(WrongToken);
+        return again;
     };
     match app.sessions.start(rights, app.site.clock.now()) {
         Ok(id) => {
@@ -129,7 +132,8 @@ fn form_cookie(app: &App) -> String {
 }
 
 fn set_cookie(app: &App, name: &str, text: &str, lasts_s: u32) -> (HeaderName, String) {
-    let secure = if app.site.settings.web.tls_in_front {
+    let web = &app.site.settings.web;
+    let secure = if web.tls_in_front || web.certificate_file.is_some() {
         "; Secure"
     } else {
         ""

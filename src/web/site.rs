@@ -21,6 +21,7 @@ use super::days::{Day, Days};
 use super::durations::Durations;
 use super::format::Times;
 use super::kept::Kept;
+use super::limits::Limits;
 use super::problem::Problem;
 use super::pulse;
 use super::sessions::Sessions;
@@ -88,6 +89,8 @@ pub struct App {
     pub kept: Arc<Kept>,
     /// The last day of every bank.
     pub days: Arc<Days>,
+    /// How much one address may ask.
+    pub limits: Arc<Limits>,
 }
 
 impl App {
@@ -114,6 +117,7 @@ impl App {
             pulse: pulse::start(site.snapshot.clone(), shutdown.clone()),
             kept: Arc::default(),
             days: Arc::default(),
+            limits: Arc::default(),
             shutdown,
             site,
         })

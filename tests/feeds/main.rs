@@ -52,6 +52,7 @@ fn run(name: &str) -> Run {
         banks: settings.banks.iter().map(|b| b.name.clone()).collect(),
         bank: None,
         columns: RecordingColumns::default(),
+        beliefs: Vec::new(),
     };
     let mut conductor = Conductor::new(Engine::new(plant, settings.banks.clone()));
     let (mut looks, mut changes) = (Vec::new(), Vec::new());

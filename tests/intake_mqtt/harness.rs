@@ -11,8 +11,8 @@ use evenrow::model::{
     Bank, BankIx, Budget, Characteristic, Layout, Offsets, Pairing, Reason, Sources, US_PER_DAY,
 };
 use evenrow::settings::{
-    Broker, Feed, PayloadForm, PlantSettings, Protocol, RecordingColumns, Settings, StoreSettings,
-    TopicTemplate, WebSettings,
+    Belief, Broker, Feed, Origins, PayloadForm, PlantSettings, Protocol, RecordingColumns,
+    Settings, StoreSettings, TopicTemplate, WebSettings,
 };
 use tokio::sync::mpsc;
 use tokio_util::sync::CancellationToken;
@@ -76,6 +76,7 @@ fn settings(broker: Broker) -> Arc<Settings> {
             source_level: Some(1),
         },
         payload: PayloadForm::Number,
+        belief: Belief::default(),
         recording: RecordingColumns::default(),
     };
     Arc::new(Settings {
@@ -93,11 +94,14 @@ fn settings(broker: Broker) -> Arc<Settings> {
             listen: ([127, 0, 0, 1], 0).into(),
             token_file: None,
             tls_in_front: false,
+            certificate_file: None,
+            key_file: None,
             address: None,
         },
         banks: vec![Arc::new(bank)],
         feeds: vec![feed],
         outlets: Vec::new(),
+        origins: Origins::default(),
     })
 }
 

@@ -5,7 +5,9 @@ use std::time::Duration;
 
 use evenrow::notice::State;
 use evenrow::outlets::{Report, mqtt};
-use evenrow::settings::{Broker, PlantSettings, Protocol, Settings, StoreSettings, WebSettings};
+use evenrow::settings::{
+    Broker, Origins, PlantSettings, Protocol, Settings, StoreSettings, WebSettings,
+};
 use serde_json::Value;
 
 use crate::common::mosquitto::{Mosquitto, Seen};
@@ -43,11 +45,14 @@ fn settings(port: u16, protocol: Protocol) -> Settings {
             listen: ([127, 0, 0, 1], 0).into(),
             token_file: None,
             tls_in_front: false,
+            certificate_file: None,
+            key_file: None,
             address: None,
         },
         banks: Vec::new(),
         feeds: Vec::new(),
         outlets: Vec::new(),
+        origins: Origins::default(),
     }
 }
 

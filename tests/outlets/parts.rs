@@ -48,6 +48,12 @@ pub fn delivery(number: u64, id: &str, state: State) -> Delivery {
         advice: "Check valve 07.".to_owned(),
         url: "http://127.0.0.1:7310/banks/filler%202".to_owned(),
         span: 40,
+        pattern: None,
+        slip: None,
+        common_movement: None,
+        even_mean: None,
+        cost_per_hour: None,
+        adjustment: None,
     };
     Delivery {
         number,

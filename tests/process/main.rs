@@ -11,6 +11,7 @@ mod browser;
 mod daemon;
 mod disk;
 mod encrypted;
+mod everypage;
 mod http;
 mod line;
 mod outlet;

@@ -122,7 +122,17 @@ fn what_was_taken_and_not_confirmed_comes_again_under_the_same_id() {
     let again = first(&seen);
     assert_eq!(one.header("webhook-id"), again.header("webhook-id"));
     assert_eq!(one.body, again.body);
-    daemon.end(&[]);
+    daemon.kill(&[]);
+
+    // Without the outlet in the configuration nobody will ever take it.
+    let config = plant.path("evenrow.toml");
+    let text = fs::read_to_string(&config).expect("text");
+    let (kept, _) = text.split_once("[[outlet]]").expect("it comes last");
+    fs::write(&config, kept).expect("written");
+    let daemon = plant.start_ready();
+    daemon.wait_log(&["WARN", "no longer configured", "desk"]);
+    daemon.end(&["no longer configured"]);
+    plant.start_ready().end(&[]);
 }
 
 #[test]

@@ -117,6 +117,11 @@ fn how(args: &RehearseArgs, settings: &Settings) -> Result<How, RehearseError> {
         banks: names,
         bank,
         columns,
+        beliefs: settings
+            .feeds
+            .iter()
+            .map(|feed| feed.belief.clone())
+            .collect(),
     })
 }
 

@@ -1,9 +1,11 @@
 //! `evenrow vet`: every fault of a configuration at once or, when it is good, what it means.
 //!
-//! Deliberately absent: connecting to anything unasked (`send_test` does it when asked). Files that the
-//! configuration names are looked at, and a missing one is a caution: the configuration may be meant
+//! With `--broker` it also listens for a while ([`broker`]), with `--send-test` it sends one marked notice;
+//! otherwise it connects to nothing. Files that
+//! the configuration names are looked at, and a missing one is a caution: the configuration may be meant
 //! for another machine.
 
+mod broker;
 mod forms;
 
 use std::fmt::Write as _;
@@ -24,15 +26,33 @@ use super::send_test;
 
 /// Runs the command.
 pub fn run(args: VetArgs) -> Exit {
-    let VetArgs { config, send_test } = args;
+    let VetArgs {
+        config,
+        send_test,
+        broker,
+        listen,
+        json,
+    } = args;
     let settings = match configuration::read(&config) {
         Ok(settings) => settings,
         Err(exit) => return exit,
     };
+    if json {
+        return broker::run(&settings, &config, listen, broker::Form::Json);
+    }
     let text = format!("{}: good\n\n{}", config.display(), summary(&settings));
     let said = say(&text);
-    if !send_test || said != Exit::Done {
+    if said != Exit::Done {
         return said;
+    }
+    if broker {
+        let heard = broker::run(&settings, &config, listen, broker::Form::Text);
+        if heard != Exit::Done {
+            return heard;
+        }
+    }
+    if !send_test {
+        return Exit::Done;
     }
     match send_test::send(&settings) {
         Ok(told) => say(&format!("\n{told}")),
@@ -89,6 +109,7 @@ fn plant(settings: &Settings) -> String {
         banks: _,
         feeds: _,
         outlets,
+        origins: _,
     } = settings;
     let mut lines = Lines(format!("plant {}\n", plant.name));
     let zone = plant.zone.iana_name().unwrap_or("without a name");
@@ -121,6 +142,8 @@ fn plant(settings: &Settings) -> String {
         ),
         ("broker.client_key_file", &broker.client_key_file),
         ("web.token_file", &web.token_file),
+        ("web.certificate_file", &web.certificate_file),
+        ("web.key_file", &web.key_file),
     ];
     let named = files
         .into_iter()

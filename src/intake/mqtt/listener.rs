@@ -18,7 +18,7 @@ use crate::settings::connection::{Backoff, Secrets};
 
 use super::drops::{self, Drops};
 use super::ledger::{Delivery, Ledger};
-use super::link::{Heard, Link, Message, Retained, Speaker};
+use super::link::{Heard, Link, Message, Retained, Role, Speaker};
 use super::queue::Queue;
 use super::{FromBroker, IntakeError};
 
@@ -147,7 +147,7 @@ impl Listener {
             Ok(Err(error)) => return End::Lost(error.to_string()),
             Err(stop) => return stop.into(),
         };
-        let (mut link, speaker) = Link::new(&self.settings.broker, &secrets);
+        let (mut link, speaker) = Link::new(&self.settings.broker, &secrets, Role::Measurements);
         self.speaker = Some(speaker);
         let end = match self.listen(&mut link, stage).await {
             Ok(never) => match never {},

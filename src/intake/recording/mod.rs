@@ -2,7 +2,7 @@
 //! or gzip, from a file or from standard input.
 //!
 //! ```text
-//! let how = How { banks, bank: Some(BankIx(0)), columns: RecordingColumns::default() };
+//! let how = How { banks, bank: Some(BankIx(0)), columns: RecordingColumns::default(), beliefs };
 //! for row in recording::open(&Source::named("week.csv.gz"), &how)? {
 //!     match row {
 //!         Ok(recorded) => …            // one measurement, in the order of the file
@@ -30,10 +30,10 @@ use std::collections::VecDeque;
 use std::path::{Path, PathBuf};
 
 use crate::model::{BankIx, Measurement, Name, Reason, Refusal, Time};
-use crate::settings::RecordingColumns;
+use crate::settings::{Belief, RecordingColumns};
 
 use super::names::Names;
-use super::payload::{Fault as PayloadFault, excerpt};
+use super::payload::{Fault as PayloadFault, believed, excerpt};
 
 pub use input::MOST_LINE_BYTES;
 
@@ -75,6 +75,8 @@ pub struct How {
     pub bank: Option<BankIx>,
     /// The names of the columns.
     pub columns: RecordingColumns,
+    /// What is believed of the values of each bank, by [`BankIx`]; without an entry everything.
+    pub beliefs: Vec<Belief>,
 }
 
 /// One measurement of a recording.
@@ -306,6 +308,7 @@ struct Judge {
     banks: Vec<Name>,
     /// The bank of rows that name none.
     otherwise: Option<BankIx>,
+    beliefs: Vec<Belief>,
     names: Names,
 }
 
@@ -315,6 +318,7 @@ impl Judge {
         Self {
             banks: how.banks.clone(),
             otherwise: how.bank.or(only),
+            beliefs: how.beliefs.clone(),
             names: Names::default(),
         }
     }
@@ -361,6 +365,12 @@ impl Judge {
         };
         for (source, value) in row.values {
             let value = super::payload::checked_source(&source).and(value);
+            let value = match self.beliefs.get(bank.index()) {
+                Some(belief) => value.and_then(|value| {
+                    believed(belief, value).map_err(|fault| fault.of_source(&source))
+                }),
+                None => value,
+            };
             out.push_back(match value {
                 Ok(value) => Ok(Recorded {
                     line,

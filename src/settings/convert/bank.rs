@@ -4,7 +4,9 @@ use std::collections::BTreeSet;
 
 use jiff::tz::TimeZone;
 
-use crate::model::{Bank, BankIx, Budget, Characteristic, Layout, Name, Pairing, Sources, Value};
+use crate::model::{
+    Bank, BankIx, Budget, Characteristic, Layout, Name, Offsets, Pairing, Sources, Value,
+};
 use crate::settings::Feed;
 use crate::settings::check::{Check, D, S, unfit};
 use crate::settings::fault::{FaultList, Place};
@@ -21,6 +23,8 @@ use super::known::{WrittenKnown, known as known_of};
 const SPANS: [usize; 4] = [10, 40, 160, 640];
 /// The longest span: 60 sources of as many values are 100 MB.
 const LONGEST_SPAN: i64 = 100_000;
+/// The longest span where places are learnt.
+const LONGEST_LEARNT: i64 = 640;
 /// Every span takes its share of the budget; more than these would leave none.
 const MOST_SPANS: usize = 20;
 /// Time between looks when nothing else is said.
@@ -117,6 +121,8 @@ pub(super) fn bank(
         offsets,
     };
     let known = known_of(known, sources.as_ref(), is_declared, &mut check);
+    let learns = known.offsets == Offsets::Learn;
+    no_long_spans(&spans, learns, &mut check);
     let spans = spans_of(spans, &mut check);
     let look_every_us = check.duration_us(look_every, "look_every", S..=7 * D);
     let look_every_us = look_every_us.unwrap_or(LOOK_EVERY_US);
@@ -411,6 +417,22 @@ fn spans_of(field: Field<Vec<Node>>, check: &mut Check<'_>) -> Option<Vec<usize>
         }
     }
     Some(spans)
+}
+
+/// A place that is learnt is not known better than from as many values.
+fn no_long_spans(spans: &Field<Vec<Node>>, learns: bool, check: &mut Check<'_>) {
+    let long = |node: &&Node| matches!(node.kind, Kind::Whole(Some(n)) if n > LONGEST_LEARNT);
+    let Some(node) = spans
+        .peek()
+        .filter(|_| learns)
+        .and_then(|s| s.value.iter().find(long))
+    else {
+        return;
+    };
+    let message = format!("with `offsets = \"learn\"` no span may be longer than {LONGEST_LEARNT}");
+    let hint = "over longer windows the chance in the learnt places would pass for a difference; write \
+                the offsets as a table to look further";
+    check.add(&node.place, message, hint);
 }
 
 /// The call budget.

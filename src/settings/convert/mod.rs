@@ -26,6 +26,7 @@ use crate::model::{BankIx, topic_name};
 use super::Settings;
 use super::check::unfit;
 use super::fault::{FaultList, Place};
+use super::list::Origins;
 use super::section::{Field, Spot};
 use super::written::{Written, WrittenBank, WrittenOutlet};
 
@@ -34,7 +35,7 @@ use super::written::{Written, WrittenBank, WrittenOutlet};
 const MOST_BANKS: usize = 1000;
 
 /// The settings as used; `None` when a fault was found.
-pub(super) fn used(written: Written, faults: &mut FaultList) -> Option<Settings> {
+pub(super) fn used(written: Written, origins: Origins, faults: &mut FaultList) -> Option<Settings> {
     let Written {
         plant,
         broker,
@@ -63,6 +64,7 @@ pub(super) fn used(written: Written, faults: &mut FaultList) -> Option<Settings>
         banks,
         feeds,
         outlets: outlets?,
+        origins,
     })
 }
 

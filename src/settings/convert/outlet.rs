@@ -139,16 +139,16 @@ fn name_of(field: Field<String>, check: &mut Check<'_>) -> Option<Name> {
 }
 
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
-enum Kept {
+enum By {
     Webhook,
     Mail,
     Command,
 }
 
-const WAYS: &[(&str, Kept)] = &[
-    ("webhook", Kept::Webhook),
-    ("mail", Kept::Mail),
-    ("command", Kept::Command),
+const WAYS: &[(&str, By)] = &[
+    ("webhook", By::Webhook),
+    ("mail", By::Mail),
+    ("command", By::Command),
 ];
 
 const UPDATES: &[(&str, Updates)] = &[("states", Updates::States), ("all", Updates::All)];
@@ -168,22 +168,22 @@ struct KeysOfWays {
 }
 
 impl KeysOfWays {
-    fn means(self, way: Kept, check: &mut Check<'_>) -> Option<Means> {
+    fn means(self, way: By, check: &mut Check<'_>) -> Option<Means> {
         self.strangers(way, check);
         match way {
-            Kept::Webhook => self.webhook(check).map(Means::Webhook),
-            Kept::Mail => self.mail(check).map(Means::Mail),
-            Kept::Command => self.command(check).map(Means::Command),
+            By::Webhook => self.webhook(check).map(Means::Webhook),
+            By::Mail => self.mail(check).map(Means::Mail),
+            By::Command => self.command(check).map(Means::Command),
         }
     }
 
     /// Says which keys mean nothing on this way.
-    fn strangers(&self, way: Kept, check: &mut Check<'_>) {
-        use Kept::{Command, Mail, Webhook};
+    fn strangers(&self, way: By, check: &mut Check<'_>) {
+        use By::{Command, Mail, Webhook};
         let place = |field: &Field<String>| field.peek().map(|s| s.place.clone());
         let list = |field: &Field<Vec<Node>>| field.peek().map(|s| s.place.clone());
         let flag = self.in_clear.peek().map(|s| s.place.clone());
-        let all: [(&str, Option<Place>, &[Kept]); 10] = [
+        let all: [(&str, Option<Place>, &[By]); 10] = [
             ("url", place(&self.url), &[Webhook, Mail]),
             ("secret_file", place(&self.secret_file), &[Webhook]),
             ("ca_file", place(&self.ca_file), &[Webhook, Mail]),
@@ -195,7 +195,7 @@ impl KeysOfWays {
             ("program", place(&self.program), &[Command]),
             ("arguments", list(&self.arguments), &[Command]),
         ];
-        let known = WAYS.iter().find(|(_, kept)| *kept == way);
+        let known = WAYS.iter().find(|(_, by)| *by == way);
         let word = known.map_or("", |(word, _)| word);
         for (name, place, ways) in all {
             if let Some(place) = place.filter(|_| !ways.contains(&way)) {

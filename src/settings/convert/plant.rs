@@ -127,6 +127,8 @@ pub(super) fn web(written: WrittenWeb, faults: &mut FaultList) -> Option<WebSett
         place,
         listen,
         token_file,
+        certificate_file,
+        key_file,
         address,
         tls_in_front,
     } = written;
@@ -134,9 +136,13 @@ pub(super) fn web(written: WrittenWeb, faults: &mut FaultList) -> Option<WebSett
     let listen = listen_at(listen, &mut check);
     let token_missing = matches!(token_file, Field::Absent);
     let token_file = check.path(token_file, "token_file").map(|spot| spot.value);
+    both_or_neither(&certificate_file, &key_file, &mut check);
+    let encrypts = !matches!(certificate_file, Field::Absent);
+    let certificate_file = check.path(certificate_file, "certificate_file");
+    let key_file = check.path(key_file, "key_file");
     let in_clear = match &tls_in_front {
-        Field::Given(spot) => !spot.value,
-        Field::Absent => true,
+        Field::Given(spot) => !spot.value && !encrypts,
+        Field::Absent => !encrypts,
         Field::Faulty => false,
     };
     if let Some(listen) = listen.as_ref().filter(|at| !at.value.ip().is_loopback()) {
@@ -146,8 +152,24 @@ pub(super) fn web(written: WrittenWeb, faults: &mut FaultList) -> Option<WebSett
         listen: listen.map_or(LISTEN, |spot| spot.value),
         token_file,
         tls_in_front: tls_in_front.given().is_some_and(|spot| spot.value),
+        certificate_file: certificate_file.map(|spot| spot.value),
+        key_file: key_file.map(|spot| spot.value),
         address: page_address(address, &mut check),
     })
+}
+
+/// A certificate is nothing without its key.
+fn both_or_neither(certificate: &Field<String>, key: &Field<String>, check: &mut Check<'_>) {
+    let (alone, missing) = match (certificate, key) {
+        (Field::Given(spot), Field::Absent) => (spot, "key_file"),
+        (Field::Absent, Field::Given(spot)) => (spot, "certificate_file"),
+        _ => return,
+    };
+    check.add(
+        &alone.place,
+        format!("`{missing}` is missing beside this"),
+        keys::example("web", missing),
+    );
 }
 
 fn listen_at(field: Field<String>, check: &mut Check<'_>) -> Option<Spot<SocketAddr>> {
@@ -182,8 +204,8 @@ fn beyond_loopback(
         check.add(
             &listen.place,
             format!("{at} can be reached from other machines, and tokens would travel in clear"),
-            "put something in front that encrypts and say `tls_in_front = true`, or listen on \
-             \"127.0.0.1:7310\"",
+            "give `certificate_file` and `key_file`, or put something in front that encrypts and say \
+             `tls_in_front = true`, or listen on \"127.0.0.1:7310\"",
         );
     }
 }

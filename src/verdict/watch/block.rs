@@ -11,7 +11,7 @@ pub const CYCLES: u32 = 50;
 const FEWEST: f64 = 25.0;
 
 /// What one source's values in the running block add up to.
-#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+#[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
 pub struct Tally {
     n: f64,
     time: f64,
@@ -20,22 +20,8 @@ pub struct Tally {
     products: f64,
     pairs: f64,
     pair_sum: f64,
-    last: f64,
-}
-
-impl Default for Tally {
-    fn default() -> Self {
-        Self {
-            n: 0.0,
-            time: 0.0,
-            sum: 0.0,
-            squares: 0.0,
-            products: 0.0,
-            pairs: 0.0,
-            pair_sum: 0.0,
-            last: f64::NAN,
-        }
-    }
+    /// The value of the cycle before.
+    last: Option<f64>,
 }
 
 /// One source's share of a closed block.
@@ -55,18 +41,20 @@ impl Tally {
     /// Takes in a residual whose variance is `time` times that of a single value; NaN is missing.
     #[inline]
     pub fn add(&mut self, r: f64, time: f64) {
-        if !r.is_nan() {
-            self.n += 1.0;
-            self.time += time;
-            self.sum += r;
-            self.squares += r * r;
-            if !self.last.is_nan() {
-                self.products += r * self.last;
-                self.pair_sum += r + self.last;
-                self.pairs += 1.0;
-            }
+        if r.is_nan() {
+            self.last = None;
+            return;
         }
-        self.last = r;
+        self.n += 1.0;
+        self.time += time;
+        self.sum += r;
+        self.squares += r * r;
+        if let Some(last) = self.last {
+            self.products += r * last;
+            self.pair_sum += r + last;
+            self.pairs += 1.0;
+        }
+        self.last = Some(r);
     }
 
     /// Ends the block of a source.
@@ -91,13 +79,9 @@ impl Tally {
 /// From Cov(x_s, x_t) = rho^|s-t| alone; at rho = 0 they are -(n-1)/n^2 and (n-1)/n.
 fn expected(rho: f64) -> (f64, f64) {
     let n = f64::from(CYCLES);
-    let (mut power, mut with_first, mut with_all) = (1.0, 0.0, 0.0);
-    for lag in 0..CYCLES {
-        with_first += power;
-        let twice = if lag == 0 { 1.0 } else { 2.0 };
-        with_all += twice * f64::from(CYCLES - lag) * power;
-        power *= rho;
-    }
+    // Sums of rho^j and of (n - j) rho^j over j = 0 … n - 1 (twice but for j = 0), as geometric series.
+    let with_first = (1.0 - rho.powi(CYCLES as i32)) / (1.0 - rho);
+    let with_all = n + 2.0 * rho / (1.0 - rho) * (n - with_first);
     let of_mean = with_all / (n * n);
     let products = (n - 1.0) * rho - (n + 1.0) * of_mean + 2.0 * with_first / n;
     (products / n, 1.0 - of_mean)

@@ -105,6 +105,13 @@ impl Rise {
     #[inline]
     fn push(&mut self, new: Vertex, margin: f64) {
         let vertices = &mut self.vertices;
+        // By far the most frequent case: the only start that is left lies above the newest one.
+        if let [only] = vertices.as_mut_slice()
+            && new.sum - only.sum <= margin * (new.time - only.time)
+        {
+            *only = new;
+            return;
+        }
         while let [.., a, b] = vertices.as_slice() {
             let before = (b.sum - a.sum) * (new.time - b.time);
             let after = (new.sum - b.sum) * (b.time - a.time);

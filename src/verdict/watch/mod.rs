@@ -20,14 +20,19 @@ mod bars;
 mod block;
 mod contrast;
 mod first;
+mod follow;
+mod found;
 mod hull;
 mod learning;
+mod learnt;
 mod past;
 mod residual;
 mod rows;
 mod scale;
 mod scatter;
+mod scores;
 mod shape;
+mod since;
 mod step;
 mod tell;
 pub mod thresholds;
@@ -41,7 +46,7 @@ use bars::Bars;
 use first::First;
 use hull::Rise;
 use learning::Learner;
-pub use learning::Learnt;
+pub use learnt::Learnt;
 pub use past::{ContrastBlocks, Since, Stretch};
 use rows::Rows;
 use scale::Scale;
@@ -266,13 +271,14 @@ impl Watch {
         self.past = past::Past::default();
     }
 
-    /// What was learnt, once learning is over: to be kept per product code.
+    /// What was learnt, once learning is over: to be kept per product code. `None` also while something
+    /// taken up has not proved itself.
     pub fn learnt(&self) -> Option<Learnt> {
         self.learner.is_done().then(|| self.learner.learnt.clone())
     }
 
-    /// Goes on with what was learnt when this product was last made. Its noise is believed for 100
-    /// cycles; when it differs by then, learning begins anew.
+    /// Goes on with what was learnt when this product was last made: decides again after 100 cycles, or,
+    /// when their noise differs from it, begins to learn anew.
     pub fn take_up(&mut self, learnt: Learnt) {
         self.learner.take_up(learnt);
         self.first = First::default();
@@ -287,3 +293,6 @@ impl Watch {
         self.begin_afresh();
     }
 }
+
+#[cfg(test)]
+mod tests;

@@ -198,22 +198,26 @@ impl ContrastBlocks {
     ) -> Option<Since> {
         let (mut n, mut rise) = (0.0, 0.0);
         let mut newest_first = Vec::with_capacity(self.stretches.len());
-        for stretch in self.stretches.iter().rev() {
+        for (i, stretch) in self.stretches.iter().enumerate().rev() {
             if let (Some(a), Some(b)) = (stretch.mean(above), stretch.mean(below)) {
                 let cycles = f64::from(stretch.cycles);
                 n += cycles;
                 rise += cycles * (a - b - margin);
-                newest_first.push((f64::max(rise, 0.0).powi(2) / n / variance, stretch.at));
+                newest_first.push((f64::max(rise, 0.0).powi(2) / n / variance, i));
             }
         }
         let best = newest_first.iter().max_by(|a, b| a.0.total_cmp(&b.0))?;
-        let within = |s: &&(f64, Moment)| s.0 >= best.0 - SET_95;
-        let latest = newest_first.iter().find(within)?;
-        let earliest = newest_first.iter().rfind(within)?;
+        let within = |s: &&(f64, usize)| s.0 >= best.0 - SET_95;
+        let latest = newest_first.iter().find(within)?.1;
+        let earliest = newest_first.iter().rfind(within)?.1;
+        // Within a block nothing is resolved: the set reaches to its neighbours.
+        let is_block = |i: usize| self.stretches.get(i).is_some_and(|s| s.cycles > 1);
+        let earliest = earliest - usize::from(earliest > 0 && is_block(earliest - 1));
+        let latest = latest + usize::from(is_block(latest) && latest + 1 < self.stretches.len());
         (best.0 > 0.0).then_some(Since {
-            start: best.1,
-            earliest: earliest.1,
-            latest: latest.1,
+            start: self.stretches[best.1].at,
+            earliest: self.stretches[earliest].at,
+            latest: self.stretches[latest].at,
         })
     }
 }

@@ -1,14 +1,11 @@
 //! From the values of a cycle to residuals: clipped about the median of the sources present, less the
 //! mean of the clipped values. What moves all sources alike leaves no trace.
 //!
-//! Clipped at three sd plus the margin: an outlier of one source moves neither its own evidence nor the
+//! Clipped at some sd plus the margin: an outlier of one source moves neither its own evidence nor the
 //! others' mean without bound, and an offset within the margin is never cut (without the margin in the
-//! limit, real offsets would be silenced).
+//! limit, real offsets would be silenced). How many sd, the shape of the noise says.
 
 use super::scale::Own;
-
-/// Values are clipped this many sd beyond the margin.
-pub const CLIP_SD: f64 = 3.0;
 
 /// The residuals of one cycle, by column; kept between cycles to save allocations.
 #[derive(Clone, Debug, Default)]
@@ -17,6 +14,8 @@ pub struct Residuals {
     pub values: Vec<f64>,
     /// A source's share in the mean; 0 where missing.
     pub shares: Vec<f64>,
+    /// What clipping took off.
+    pub excess: Vec<f64>,
     sorted: Vec<f64>,
 }
 
@@ -33,27 +32,32 @@ impl Residuals {
             return present;
         }
         let median = median(&mut self.sorted);
-        let clipped = |v: f64, limit: f64| {
+        self.excess.clear();
+        for (column, v) in self.values.iter_mut().enumerate() {
+            let limit = own.get(column).map_or(limit, |own| own.limit);
             // Infinite values are refused long before; here they are as good as missing.
-            let there = v.is_finite();
-            if there {
-                (v - median).clamp(-limit, limit)
-            } else {
-                f64::NAN
-            }
-        };
+            let apart = if v.is_finite() { *v - median } else { f64::NAN };
+            *v = apart.clamp(-limit, limit);
+            self.excess.push(apart - *v);
+        }
         if own.is_empty() {
-            for v in &mut self.values {
-                *v = clipped(*v, limit);
-            }
             self.centre(present);
         } else {
-            for (v, own) in self.values.iter_mut().zip(own) {
-                *v = clipped(*v, own.limit);
-            }
             self.centre_weighted(own);
         }
         present
+    }
+
+    /// Gives every present residual the same share, as when they were worked out.
+    pub fn share_alike(&mut self) {
+        let present = self.values.iter().filter(|v| !v.is_nan()).count();
+        let share = 1.0 / present.max(1) as f64;
+        self.shares.clear();
+        let shares = self
+            .values
+            .iter()
+            .map(|v| if v.is_nan() { 0.0 } else { share });
+        self.shares.extend(shares);
     }
 
     fn centre(&mut self, present: usize) {

@@ -4,8 +4,12 @@ use serde::{Deserialize, Serialize};
 
 use super::Terms;
 use super::contrast::Judged;
-use super::learning::Learnt;
-use super::residual::CLIP_SD;
+use super::learnt::Learnt;
+
+/// Before the shape of the noise is known.
+const FIRST_CLIP: f64 = 3.0;
+/// Deviations after which it is.
+const SHAPE_KNOWN: u32 = 2_000;
 
 /// Rounding alone has the step's width over the square root of 12 as its sd.
 const ROUNDING_VARIANCE: f64 = 1.0 / 12.0;
@@ -17,6 +21,8 @@ pub struct Scale {
     pub sigma: f64,
     /// Whether the resolution speaks rather than the noise.
     pub floored: bool,
+    /// Values are clipped this many sd beyond the margin.
+    pub clip_sd: f64,
     /// The correlation that is paid for.
     pub phi: f64,
     /// Sd, weight and clip limit by column where sources differ; empty where not.
@@ -47,21 +53,34 @@ impl Scale {
         (usable > 0.0 && usable.is_finite()).then(|| Self {
             sigma: usable,
             floored: sigma < floor,
+            clip_sd: FIRST_CLIP,
             ..Self::default()
         })
     }
 
-    /// The scale after what was learnt, for the compared sources.
-    pub fn of_learnt(learnt: &mut Learnt, columns: &[u16], terms: &Terms) -> Option<Self> {
+    /// The scale after what was learnt, for the compared sources; where the noise is normal, values are
+    /// clipped `most_clip` sd beyond the margin.
+    pub fn of_learnt(
+        learnt: &mut Learnt,
+        columns: &[u16],
+        terms: &Terms,
+        most_clip: f64,
+    ) -> Option<Self> {
         let mut scale = Self::of_sigma(learnt.variance()?.sqrt(), terms)?;
         scale.phi = learnt.phi_paid();
+        if let Some(scores) = learnt.scores() {
+            // The limit belongs to the values before they are scored.
+            scale.clip_sd = scores.limit / scale.sigma;
+        } else if learnt.shape().total() >= SHAPE_KNOWN {
+            scale.clip_sd = learnt.shape().clip_sd(most_clip);
+        }
         let own = learnt
             .own_variances(columns)
             .into_iter()
             .map(|variance| Own {
                 variance,
                 weight: 1.0 / variance,
-                limit: CLIP_SD * variance.sqrt() + terms.margin,
+                limit: scale.clip_sd * variance.sqrt() + terms.margin,
             });
         scale.own = own.collect();
         Some(scale)
@@ -102,6 +121,6 @@ impl Scale {
 
     /// Distance from the median beyond which values are clipped, in the unit, where sources do not differ.
     pub fn limit(&self, terms: &Terms) -> f64 {
-        CLIP_SD * self.sigma + terms.margin
+        self.clip_sd * self.sigma + terms.margin
     }
 }

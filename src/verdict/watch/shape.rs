@@ -13,7 +13,10 @@ const WIDTH: f64 = 1.0 / 32.0;
 /// Up to 8 sd; what is larger counts in the last bin.
 const BINS: usize = 256;
 /// No score is larger: a few wild values do not pass for a change of spread.
-const CAP: f64 = 2.5;
+const CAP: f64 = 3.5;
+
+/// No value is clipped nearer to the median than this, in sd.
+const LEAST_CLIP: f64 = 2.5;
 
 /// Sizes of deviations as counted, and their scores.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
@@ -43,6 +46,26 @@ impl Shape {
         let bin = (e.abs() / WIDTH) as usize;
         self.counts[bin.min(BINS - 1)] += 1;
         self.total += 1;
+    }
+
+    /// Where values are clipped, in sd: where the tails begin to hold clearly more than twice what normal ones
+    /// do, within [2.5, `most`]. Below, offsets and steps would be cut as well; above, a few wild values
+    /// in a row would pass for a step.
+    pub fn clip_sd(&self, most: f64) -> f64 {
+        let n = f64::from(self.total);
+        let mut beyond = n;
+        for (bin, count) in self.counts.iter().enumerate() {
+            let edge = bin as f64 * WIDTH;
+            if edge >= most {
+                break;
+            }
+            let twice = 2.0 * n * 2.0 * normal::sf(edge);
+            if edge >= LEAST_CLIP && beyond > twice + 4.0 * twice.sqrt() + 4.0 {
+                return edge;
+            }
+            beyond -= f64::from(*count);
+        }
+        most.max(LEAST_CLIP)
     }
 
     /// How many were counted.

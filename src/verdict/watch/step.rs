@@ -1,14 +1,11 @@
 //! One cycle through the watch.
 
-use super::bars::Bars;
-use super::block::CYCLES;
 use super::contrast::Means;
 use super::first::{self, First};
+use super::found::Found;
 use super::hull::Step;
-use super::learning::Ended;
 use super::residual::Residuals;
 use super::scale::Scale;
-use super::tell::Found;
 use super::thresholds::{Part, SPANS};
 use super::{Crossing, Cycle, Frozen, Moment, Watch};
 
@@ -108,6 +105,9 @@ impl Watch {
             self.scale = Some(scale);
             return None;
         }
+        if let Some(scores) = self.learner.learnt.scores() {
+            scores.apply(&mut work.residuals);
+        }
         self.cycle += 1;
         self.rows.push(at, &work.residuals.values);
         self.past.push(self.cycle, at, &work.residuals.values);
@@ -176,7 +176,8 @@ impl Watch {
         let present = |s: &u16| self.strands[usize::from(*s)].scatter.present;
         let all: f64 = self.columns.iter().map(present).sum();
         let (mut erratic, mut quiet) = (false, false);
-        let per_sd = 1.0 / scale.sigma;
+        // Nearly always all sources have the same share.
+        let mut per_sd = (f64::NAN, 0.0);
         for (column, source) in self.columns.iter().enumerate() {
             let r = residuals.values[column];
             if r.is_nan() {
@@ -184,13 +185,16 @@ impl Watch {
             }
             let scatter = &mut self.strands[usize::from(*source)].scatter;
             let time = 1.0 - residuals.shares[column];
-            let Some(e) = scatter.deviation(r * per_sd / time.sqrt()) else {
+            if time != per_sd.0 {
+                per_sd = (time, 1.0 / (scale.sigma * time.sqrt()));
+            }
+            let Some(e) = scatter.deviation(r * per_sd.1) else {
                 continue;
             };
             let others = ((all - scatter.present) / (k - 1) as f64).max(f64::MIN_POSITIVE);
             scatter.enter(e, k);
             if learns {
-                self.learner.count(e);
+                self.learner.count(e + residuals.excess[column] * per_sd.1);
             }
             if let Some(bars) = &self.bars {
                 let seen = e.abs() / others.sqrt();
@@ -243,51 +247,6 @@ impl Watch {
         (split, pair)
     }
 
-    fn end_cycle(&mut self) {
-        if self.frozen == Frozen::Yes {
-            return;
-        }
-        let (scale, columns) = (&self.scale, &self.columns);
-        let relative = |source: usize| {
-            let own = scale.as_ref().and_then(|scale| {
-                let column = columns.iter().position(|c| usize::from(*c) == source)?;
-                Some(scale.sigma * scale.sigma / scale.own.get(column)?.variance)
-            });
-            own.unwrap_or(1.0)
-        };
-        if self.learner.end_cycle(self.columns.len(), &relative) == Ended::Block {
-            self.refresh();
-        }
-    }
-
-    /// Brings scale and thresholds up to what was learnt.
-    pub(super) fn refresh(&mut self) {
-        if let Some(scale) = Scale::of_learnt(&mut self.learner.learnt, &self.columns, &self.terms)
-        {
-            self.scale = Some(scale);
-        }
-        self.refresh_allowed();
-        let Some(scale) = self.scale.as_ref().filter(|_| self.learner.is_done()) else {
-            self.bars = None;
-            return;
-        };
-        let df = self.learner.learnt.df();
-        let wanted = Bars::basis(&self.terms, scale, self.columns.len(), df);
-        if self.bars.as_ref().is_none_or(|held| held.is_stale(&wanted)) {
-            self.bars = Some(Bars::new(wanted, &self.terms));
-        }
-    }
-
-    /// Brings the margins of single sources to their columns.
-    pub(super) fn refresh_allowed(&mut self) {
-        let more = |s: &u16| (self.strands[usize::from(*s)].margin - self.terms.margin).max(0.0);
-        let allowed: Vec<f64> = self.columns.iter().map(more).collect();
-        if let Some(scale) = &mut self.scale {
-            let some = allowed.iter().any(|more| *more > 0.0);
-            scale.allowed = if some { allowed } else { Vec::new() };
-        }
-    }
-
     fn crossing(&mut self, crossed: Crossed) -> Option<Crossing> {
         let mut found: Vec<Found> = self.found();
         found.retain(|f| crossed.has(f.part) && f.ratio() > 1.0);
@@ -307,15 +266,5 @@ impl Watch {
             return None;
         }
         self.tell_crossing(&spread)
-    }
-
-    /// Number of cycles that learning has seen and takes.
-    pub(super) fn learning_cycles(&self) -> (u32, u32) {
-        let seen = self.learner.learnt.cycles() + self.learner.in_block().min(CYCLES);
-        let first = self.first.cycles.len() as u32;
-        (
-            seen + first,
-            super::learning::Learner::needed(self.columns.len()),
-        )
     }
 }

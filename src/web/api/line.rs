@@ -3,7 +3,10 @@
 use axum::Json;
 use axum::extract::rejection::{JsonRejection, QueryRejection};
 use axum::extract::{Path, Query, State};
-use axum::http::StatusCode;
+use axum::http::{HeaderMap, StatusCode, Uri};
+use axum::response::Response;
+use serde::Deserialize;
+use utoipa::IntoParams;
 
 use crate::model::US_PER_DAY;
 use crate::web::line::submit;
@@ -11,28 +14,53 @@ use crate::web::problem::Problem;
 use crate::web::site::{App, bank};
 use crate::web::wire::{LineEntryBody, LineEventBody, List};
 
-use super::banks::{TimesWanted, range};
+use super::answers::Usual;
+use super::form::{Form, Wish};
+use super::times;
 
 /// Days that are given when no time is asked for.
 const USUAL_DAYS: i64 = 30;
 
+/// Line events given at once.
+const MOST: usize = 1000;
+
+/// Which line events.
+#[derive(Debug, Default, Deserialize, IntoParams)]
+#[into_params(parameter_in = Query)]
+#[serde(deny_unknown_fields)]
+pub struct LineWanted {
+    /// At or after this time (RFC 3339); thirty days before `to` when it is missing.
+    from: Option<String>,
+    /// Before this time (RFC 3339); now when it is missing.
+    to: Option<String>,
+    /// At most so many, 1 to 1000; 1000 when it is missing. The newest in the range are given.
+    most: Option<usize>,
+    /// `csv` for comma-separated values; else what the Accept header says, else JSON.
+    form: Option<Form>,
+}
+
 /// Line events, oldest first; the newest in the range.
 #[utoipa::path(get, path = "/api/v1/banks/{bank}/events", tag = "banks",
-    params(("bank" = String, Path, description = "The bank's name"), TimesWanted),
-    responses((status = 200, body = List<LineEventBody>), (status = 400, body = Problem),
-        (status = 404, body = Problem), (status = 503, body = Problem),
-        (status = "default", body = Problem)))]
+    params(("bank" = String, Path, description = "The bank's name"), LineWanted),
+    responses((status = 200, content((List<LineEventBody> = "application/json"), (String = "text/csv"))), Usual))]
 pub async fn list(
     State(app): State<App>,
     Path(name): Path<String>,
-    wanted: Result<Query<TimesWanted>, QueryRejection>,
-) -> Result<Json<List<LineEventBody>>, Problem> {
+    wanted: Result<Query<LineWanted>, QueryRejection>,
+    headers: HeaderMap,
+    uri: Uri,
+) -> Result<Response, Problem> {
     bank(&app.now(), &name)?;
-    let (from, to, most) = range(&app, wanted, USUAL_DAYS * US_PER_DAY)?;
+    let Query(wanted) = wanted.map_err(|e| Problem::bad_request(&e.body_text()))?;
+    let to = times::read("to", wanted.to)?.unwrap_or_else(|| app.site.clock.now().plus_us(1));
+    let usual = || to.plus_us(-USUAL_DAYS * US_PER_DAY);
+    let from = times::read("from", wanted.from)?.unwrap_or_else(usual);
+    let most = times::most(wanted.most, MOST, MOST)?;
     let found = app
         .history(move |h| h.line_events(&name, from, to, most))
         .await?;
-    Ok(Json(List::whole(found.iter().map(Into::into).collect())))
+    let items: Vec<LineEventBody> = found.iter().map(Into::into).collect();
+    Wish::new(wanted.form, &headers, uri).answer(List::whole(items))
 }
 
 /// Enters a line event.

@@ -3,56 +3,141 @@
 use axum::Json;
 use axum::extract::rejection::{JsonRejection, QueryRejection};
 use axum::extract::{Path, Query, State};
+use axum::http::{HeaderMap, Uri};
+use axum::response::Response;
 use serde::Deserialize;
 use utoipa::IntoParams;
 
+use crate::engine::{History, HistoryError, Page};
+use crate::model::Time;
+use crate::notice::Notice;
 use crate::web::acknowledge::submit;
 use crate::web::problem::Problem;
 use crate::web::site::App;
 use crate::web::wire::{AcknowledgeBody, List, NoticeBody};
+
+use super::answers::{Faults, Usual};
+use super::form::{Form, Wish};
+use super::times;
 
 /// Notices given at once when nothing else is asked.
 const USUAL: usize = 100;
 /// Most notices given at once.
 const MOST: usize = 1000;
 
+/// Notices read from the store at a time.
+const PART: usize = 200;
+/// Notices gone through for one answer; where nothing fits among them, `next` goes on from there.
+const MOST_READ: usize = 4000;
+
 /// Which notices.
 #[derive(Debug, Default, Deserialize, IntoParams)]
 #[into_params(parameter_in = Query)]
 #[serde(deny_unknown_fields)]
 pub struct NoticesWanted {
+    /// Only this bank's.
+    bank: Option<String>,
+    /// Only those that name this source.
+    source: Option<String>,
+    /// Only of this kind, in the word of `kind`.
+    kind: Option<String>,
+    /// Only in this state, in the word of `state`.
+    state: Option<String>,
+    /// Raised at or after this time (RFC 3339).
+    from: Option<String>,
+    /// Raised before this time (RFC 3339).
+    to: Option<String>,
     /// The `next` of the part before.
     after: Option<String>,
     /// At most so many, 1 to 1000; 100 when it is missing.
     most: Option<usize>,
+    /// `csv` for comma-separated values; else what the Accept header says, else JSON.
+    form: Option<Form>,
+}
+
+/// The query, read.
+struct Filter {
+    bank: Option<String>,
+    source: Option<String>,
+    kind: Option<String>,
+    state: Option<String>,
+    from: Option<Time>,
+    to: Option<Time>,
+}
+
+impl Filter {
+    fn lets(&self, notice: &Notice) -> bool {
+        let same = |asked: &Option<String>, is: &str| asked.as_ref().is_none_or(|a| a == is);
+        let names = |s: &String| notice.sources.iter().any(|n| *n.source == **s);
+        same(&self.bank, &notice.bank)
+            && same(&self.kind, notice.kind.word())
+            && same(&self.state, notice.state.word())
+            && self.source.as_ref().is_none_or(names)
+            && self.from.is_none_or(|from| notice.raised >= from)
+            && self.to.is_none_or(|to| notice.raised < to)
+    }
+
+    /// Reads parts until `most` are found, or there are no more, or enough was gone through.
+    fn read(
+        &self,
+        history: &dyn History,
+        after: Option<String>,
+        most: usize,
+    ) -> Result<Page<Notice>, HistoryError> {
+        let (mut items, mut after, mut read) = (Vec::new(), after, 0);
+        loop {
+            let part = history.notices(after.as_deref(), PART)?;
+            read += part.items.len();
+            let past = part.items.last().map(|n| n.raised);
+            for notice in part.items {
+                if items.len() == most {
+                    let next = items.last().map(|n: &Notice| n.id.to_string());
+                    return Ok(Page { items, next });
+                }
+                if self.lets(&notice) {
+                    items.push(notice);
+                }
+            }
+            after = part.next;
+            let over = self.from.zip(past).is_some_and(|(from, past)| past < from);
+            if over || after.is_none() {
+                return Ok(Page { items, next: None });
+            }
+            if read >= MOST_READ {
+                return Ok(Page { items, next: after });
+            }
+        }
+    }
 }
 
 /// Notices, newest first.
 #[utoipa::path(get, path = "/api/v1/notices", tag = "notices", params(NoticesWanted),
-    responses((status = 200, body = List<NoticeBody>), (status = 400, body = Problem),
-        (status = 503, body = Problem), (status = "default", body = Problem)))]
+    responses((status = 200, content((List<NoticeBody> = "application/json"), (String = "text/csv"))), Usual))]
 pub async fn list(
     State(app): State<App>,
     wanted: Result<Query<NoticesWanted>, QueryRejection>,
-) -> Result<Json<List<NoticeBody>>, Problem> {
+    headers: HeaderMap,
+    uri: Uri,
+) -> Result<Response, Problem> {
     let Query(wanted) = wanted.map_err(|e| Problem::bad_request(&e.body_text()))?;
-    let most = wanted.most.unwrap_or(USUAL);
-    if !(1..=MOST).contains(&most) {
-        return Err(Problem::bad_request(
-            "`most` must be a whole number from 1 to 1000",
-        ));
-    }
-    let page = app
-        .history(move |h| h.notices(wanted.after.as_deref(), most))
-        .await?;
-    Ok(Json(List::part(page)))
+    let most = times::most(wanted.most, USUAL, MOST)?;
+    let filter = Filter {
+        bank: wanted.bank,
+        source: wanted.source,
+        kind: wanted.kind,
+        state: wanted.state,
+        from: times::read("from", wanted.from)?,
+        to: times::read("to", wanted.to)?,
+    };
+    let after = wanted.after;
+    let page = app.history(move |h| filter.read(h, after, most)).await?;
+    Wish::new(wanted.form, &headers, uri).answer(List::<NoticeBody>::part(page))
 }
 
 /// One notice.
 #[utoipa::path(get, path = "/api/v1/notices/{id}", tag = "notices",
     params(("id" = String, Path, description = "The notice's id")),
-    responses((status = 200, body = NoticeBody), (status = 404, body = Problem),
-        (status = 503, body = Problem), (status = "default", body = Problem)))]
+    responses((status = 200, body = NoticeBody), Usual))]
 pub async fn one(
     State(app): State<App>,
     Path(id): Path<String>,
@@ -65,10 +150,7 @@ pub async fn one(
 #[utoipa::path(post, path = "/api/v1/notices/{id}/acknowledge", tag = "notices",
     params(("id" = String, Path, description = "The notice's id")),
     request_body = AcknowledgeBody, security(("token" = [])),
-    responses((status = 200, body = NoticeBody), (status = 400, body = Problem),
-        (status = 401, body = Problem), (status = 403, body = Problem),
-        (status = 404, body = Problem), (status = 409, body = Problem),
-        (status = 503, body = Problem), (status = "default", body = Problem)))]
+    responses((status = 200, body = NoticeBody), Faults))]
 pub async fn acknowledge(
     State(app): State<App>,
     Path(id): Path<String>,

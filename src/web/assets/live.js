@@ -10,16 +10,18 @@
   const readers = (node, name) => (name === "open" && node.localName === "details")
     || (name === "value" && node.localName === "input" && node.type !== "hidden");
 
+  // What the time band's script has added.
+  const own = new Set(["tabindex", "role", "aria-label", "data-awake"]);
   const attributes = (from, to) => {
     for (const { name } of [...from.attributes])
-      if (!to.hasAttribute(name) && !(kept.has(name) && readers(from, name))) from.removeAttribute(name);
+      if (!(from.id === "probe" && own.has(name)) && !to.hasAttribute(name) && !(kept.has(name) && readers(from, name))) from.removeAttribute(name);
     for (const { name, value } of to.attributes)
       if (from.getAttribute(name) !== value && !(kept.has(name) && readers(from, name))) from.setAttribute(name, value);
   };
   const alike = (a, b) => a.nodeType === b.nodeType && a.nodeName === b.nodeName && (a.id || "") === (b.id || "");
   const swap = (from, to) => {
     if (from.nodeType !== Node.ELEMENT_NODE) { if (from.nodeValue !== to.nodeValue) from.nodeValue = to.nodeValue; return; }
-    if (from.id === "live-state" || from.isEqualNode(to)) return;
+    if (from.id === "live-state" || from.id === "reading" || from.isEqualNode(to)) return;
     attributes(from, to);
     if (from.localName === "textarea") return;
     let old = from.firstChild;

@@ -44,12 +44,21 @@ impl<'a> Scene<'a> {
     }
 }
 
+/// A script that makes something easier; without it the page is whole.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum Script {
+    /// Values of the time band by pointer and keys, and its zoom.
+    Band,
+}
+
 /// A page's own parts.
 pub struct Page {
     /// What the browser's tab says before the plant's name.
     pub title: String,
     /// What the stream of changes is asked for; `None` for a page that does not change by itself.
     pub live: Option<String>,
+    /// A script besides the one that keeps the page current.
+    pub script: Option<Script>,
     /// Which of the ways to go is this.
     pub way: &'static str,
     /// The contents.
@@ -62,14 +71,15 @@ pub fn render(scene: &Scene<'_>, page: Page) -> Markup {
     html! {
         (DOCTYPE)
         html lang="en" {
-            (head(&format!("{} · {plant}", page.title), page.live.is_some()))
-            body {
+            (head(&format!("{} · {plant}", page.title), page.live.is_some(), page.script))
+            body data-zone=[scene.times.zone.iana_name()] {
                 a class="skip" href="#main" { "To the contents" }
                 header class="top" {
                     a class="home" href="/" { (glyph::draw(Glyph::Apart)) span { "evenrow" } }
                     p class="plant" { (plant) }
                     nav aria-label="Pages" {
                         (way("/", "Plant", page.way)) (way("/notices", "Notices", page.way))
+                        (way("/settings", "Settings", page.way)) (way("/about", "About", page.way))
                         (sign(scene))
                     }
                 }
@@ -88,7 +98,7 @@ pub fn render(scene: &Scene<'_>, page: Page) -> Markup {
     }
 }
 
-fn head(title: &str, is_live: bool) -> Markup {
+fn head(title: &str, is_live: bool, script: Option<Script>) -> Markup {
     html! {
         head {
             meta charset="utf-8";
@@ -98,7 +108,10 @@ fn head(title: &str, is_live: bool) -> Markup {
             link rel="icon" href=(PreEscaped(assets::ICON));
             link rel="stylesheet" href=(*assets::STYLE);
             @if is_live {
-                script src=(*assets::SCRIPT) defer {}
+                script src=(*assets::LIVE) defer {}
+            }
+            @if script == Some(Script::Band) {
+                script src=(*assets::BAND) defer {}
             }
         }
     }
@@ -160,7 +173,7 @@ fn cautions() -> Markup {
                   and the plant’s procedures before touching a machine. Net-content rules are those of the \
                   local authority; figures here are information for the packer." }
             p class="quiet" { "evenrow " (env!("CARGO_PKG_VERSION")) " · "
-                a href="/api/v1/openapi.json" { "interface" } " · " a href="/metrics" { "metrics" } }
+                a href="/about" { "about" } " · " a href="/api/v1/openapi.json" { "interface" } " · " a href="/metrics" { "metrics" } }
         }
     }
 }
@@ -170,7 +183,7 @@ pub fn error(app: &App, problem: &Problem) -> Markup {
     html! {
         (DOCTYPE)
         html lang="en" {
-            (head(&format!("{} · evenrow", problem.title), false))
+            (head(&format!("{} · evenrow", problem.title), false, None))
             body {
                 header class="top" { a class="home" href="/" { (glyph::draw(Glyph::Apart)) span { "evenrow" } } }
                 main id="main" {
@@ -193,7 +206,7 @@ pub fn alone(title: &str, body: Markup) -> Markup {
     html! {
         (DOCTYPE)
         html lang="en" {
-            (head(&format!("{title} · evenrow"), false))
+            (head(&format!("{title} · evenrow"), false, None))
             body {
                 header class="top" { a class="home" href="/" { (glyph::draw(Glyph::Apart)) span { "evenrow" } } }
                 main id="main" { section class="alone" { (body) } }

@@ -4,14 +4,20 @@
 //! zone; a state is a word, then a shape, then a colour. Deliberately absent: decisions (what a bank's
 //! state is called is in [`super::standing`]; everything else was decided by the engine).
 
+pub mod about;
 pub mod bank;
 pub mod frame;
 mod history;
+mod letters;
 pub mod line;
 mod looks;
 pub mod notice;
 pub mod notices;
 pub mod plant;
+pub mod settings;
 pub mod signin;
+pub mod source;
+mod source_pictures;
 mod sources;
 mod watch;
+mod when;

@@ -9,7 +9,7 @@ use crate::model::signed;
 use crate::notice::{Kind, Notice, State as NoticeState};
 use crate::web::access::{Caller, SessionPass};
 use crate::web::acknowledge::submit;
-use crate::web::address::percent;
+use crate::web::address::{self, percent};
 use crate::web::format;
 use crate::web::pictures::glyph::{self, Glyph};
 use crate::web::problem::Problem;
@@ -35,12 +35,7 @@ pub async fn page(
 ) -> Result<Markup, Problem> {
     let snapshot = app.now();
     let notice = app.notice(&snapshot, &id).await?;
-    let scene = Scene::new(
-        &app,
-        &snapshot,
-        &caller,
-        format!("/notices/{}", percent(&id)),
-    );
+    let scene = Scene::new(&app, &snapshot, &caller, address::notice(&id));
     let main = html! { (card(&scene, &notice, Place::Own)) };
     let live = bank(&snapshot, &notice.bank)
         .is_ok()
@@ -50,6 +45,7 @@ pub async fn page(
         Page {
             title: notice.subject.clone(),
             live,
+            script: None,
             way: "",
             main,
         },
@@ -61,7 +57,12 @@ pub fn shape(notice: &Notice) -> Glyph {
     if !notice.state.is_active() {
         return Glyph::Even;
     }
-    match notice.kind {
+    glyph_of(notice.kind)
+}
+
+/// The shape of what a kind of notice is about.
+pub fn glyph_of(kind: Kind) -> Glyph {
+    match kind {
         Kind::SpreadApart => Glyph::Spread,
         Kind::SourceSilent | Kind::SourceStuck => Glyph::Silent,
         Kind::IntakeTrouble | Kind::ClockWrong => Glyph::Trouble,
@@ -86,8 +87,8 @@ pub fn card(scene: &Scene<'_>, notice: &Notice, place: Place) -> Markup {
                     @else { h2 id=(name) { (notice.subject) } }
                     p class="quiet" { (notice.kind.words()) " · " (notice.state.words()) " · priority "
                         (notice.priority.word()) " · "
-                        @if place == Place::Own { a href={ "/banks/" (percent(&notice.bank)) } { (notice.bank) } }
-                        @else { a href={ "/notices/" (percent(&notice.id)) } { (notice.id) } } }
+                        @if place == Place::Own { a href=(address::bank(&notice.bank)) { (notice.bank) } }
+                        @else { a href=(address::notice(&notice.id)) { (notice.id) } } }
                 }
             }
             (named(scene, notice))
@@ -122,7 +123,7 @@ fn named(scene: &Scene<'_>, notice: &Notice) -> Markup {
         @if !notice.sources.is_empty() {
             ul class="named" {
                 @for source in &notice.sources {
-                    li { strong { (source.source) } " " span class="figure" { (figure(source.deviation)) }
+                    li { strong { a href=(address::source(&notice.bank, &source.source)) { (source.source) } } " " span class="figure" { (figure(source.deviation)) }
                         " " span class="quiet" { (figure(source.low)) " to " (figure(source.high)) } }
                 }
             }
@@ -176,7 +177,7 @@ fn form(scene: &Scene<'_>, notice: &Notice, pass: &SessionPass) -> Markup {
     html! {
         details class="act" id={ "act-" (id) } {
             summary class="button" { "Acknowledge" }
-            form class="entry" method="post" action={ "/notices/" (percent(id)) "/acknowledge" } {
+            form class="entry" method="post" action={ (address::notice(id)) "/acknowledge" } {
                 input type="hidden" name="field" value=(pass.field);
                 input type="hidden" name="back" value=(scene.here);
                 label for={ "by-" (id) } { "Your name" }

@@ -6,7 +6,7 @@ use std::sync::Arc;
 use axum::extract::{Extension, State};
 use maud::{Markup, html};
 
-use crate::engine::{BankView, RefusalView};
+use crate::engine::{BankView, OutletView, RefusalView};
 use crate::model::{Name, Reason, US_PER_S};
 use crate::web::access::Caller;
 use crate::web::address;
@@ -44,12 +44,14 @@ pub async fn page(State(app): State<App>, Extension(caller): Extension<Caller>) 
         }
         @if let Err(problem) = &days { p class="empty" { "The last day is missing: " (problem.detail) } }
         (strangers(&scene, &snapshot.refusals))
+        (ways_out(&snapshot.outlets))
     };
     render(
         &scene,
         Page {
             title: "Plant".to_owned(),
             live: Some("/live".to_owned()),
+            script: None,
             way: "/",
             main,
         },
@@ -128,7 +130,7 @@ fn data_trouble(scene: &Scene<'_>, view: &BankView) -> Option<String> {
     };
     let newest = view.refusals.iter().filter(lately).max_by_key(|r| r.at)?;
     let word = newest.reason.word().replace('_', " ");
-    Some(format!("✕ data refused: {word}"))
+    Some(format!("✕ refused: {word}"))
 }
 
 fn since(scene: &Scene<'_>, view: &BankView, standing: &Standing) -> Markup {
@@ -147,6 +149,18 @@ fn since(scene: &Scene<'_>, view: &BankView, standing: &Standing) -> Markup {
             Some(at) => html! { span { "last look " (scene.time(at, &scene.times.second(at))) } },
             None => html! { span { "no look yet" } },
         },
+    }
+}
+
+/// Where notices leave, and how many wait there; said where there is more than the broker.
+fn ways_out(outlets: &[OutletView]) -> Markup {
+    let one = |o: &OutletView| match o.waiting {
+        0 => o.name.to_string(),
+        waiting => format!("{} ({waiting} waiting)", o.name),
+    };
+    let all: Vec<String> = outlets.iter().map(one).collect();
+    html! {
+        @if all.len() > 1 { p class="asof" { "Notices leave by " (all.join(", ")) "." } }
     }
 }
 

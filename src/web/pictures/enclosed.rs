@@ -14,8 +14,8 @@ use super::{deviations, px, spread};
 const WIDTH: f64 = 820.0;
 const LEFT: f64 = 72.0;
 const RIGHT: f64 = 24.0;
-const TOP: f64 = 44.0;
-const BELOW: f64 = 100.0;
+const TOP: f64 = 62.0;
+const BELOW: f64 = 90.0;
 
 /// The light look of the pages, in plain colours: programs that show mail know no variables.
 const INK: &str = "text{fill:#5a5c60;font:13px sans-serif}.title{fill:#1b1c1e;font-size:15px;font-weight:600}\
@@ -23,7 +23,7 @@ const INK: &str = "text{fill:#5a5c60;font:13px sans-serif}.title{fill:#1b1c1e;fo
 .interval{stroke:#1b1c1e;stroke-width:1.75;stroke-linecap:round;stroke-opacity:.62}\
 .point{stroke:#1b1c1e;stroke-width:1.4}.catch{stroke:none}\
 .apart .interval{stroke:#b3124f;stroke-opacity:1;stroke-width:2.5}\
-.held{overflow:visible}.held .point{fill:#b3124f;stroke:#b3124f}\
+.plot,.held{overflow:visible}.held .point{fill:#b3124f;stroke:#b3124f}\
 .tag,.apart .name{fill:#b3124f;font-weight:700}\
 .crowd .name:not(.r10):not(.r5),.many .beside,.crowd .beside{display:none}.apart .name.name{display:inline}";
 
@@ -45,7 +45,9 @@ pub fn picture_of(view: &BankView, notice: &Notice) -> Option<String> {
             style { (PreEscaped(INK)) }
             rect width="100%" height="100%" fill="#fffefa" {}
             text class="title" x="16" y="24" { (view.bank.name) ": " (title) }
-            svg class="held" x=(px(LEFT)) y=(px(TOP)) width=(px(WIDTH - LEFT - RIGHT))
+            // The look mixes in values from before; the notice tells the size since it began.
+            text x="16" y="44" { "Over the newest " (look.span) " values of each source." }
+            svg overflow="visible" x=(px(LEFT)) y=(px(TOP)) width=(px(WIDTH - LEFT - RIGHT))
                 height=(px(BOTTOM + BELOW)) { (row) }
         }
     };
@@ -86,6 +88,8 @@ mod tests {
             assert!(svg.contains(part), "{part:?} is not in {svg}");
         }
         assert!(!svg.contains("var("), "no style sheet comes along");
+        let named = svg.matches("class=\"held\"").count();
+        assert_eq!(named, 1, "one diamond, for the one that is named");
         notice.kind = Kind::SourceSilent;
         assert_eq!(picture_of(view, &notice), None);
     }

@@ -1,7 +1,7 @@
 //! "Whose values scatter more or less than the others'?": ratios of standard deviations with their
 //! intervals, on a scale on which equal ratios look equal.
 
-use maud::Markup;
+use maud::{Markup, html};
 
 use crate::model::Bank;
 use crate::verdict::{Estimate, Look};
@@ -47,11 +47,12 @@ pub fn draw(bank: &Bank, look: &Look) -> Option<Markup> {
             .into_iter()
             .map(|t| (t, format!("{t}×")))
             .collect(),
+        lines: Vec::new(),
         even_at: 1.0,
         band,
         unit: "",
     };
-    Some(row.draw())
+    Some(html! { div class="frame" { (row.draw()) } })
 }
 
 /// The word for a named source.

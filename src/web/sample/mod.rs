@@ -8,6 +8,7 @@ mod notices;
 mod past;
 mod watch;
 
+pub use looks::{WINDOW, values};
 pub use past::SampleHistory;
 
 use std::collections::BTreeMap;

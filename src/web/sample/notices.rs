@@ -85,6 +85,12 @@ pub fn notice(bank: &Bank, names: &[Name], story: Story, looks: &[Arc<Look>]) ->
         advice,
         url: format!("http://127.0.0.1:7310/banks/{}", bank.name),
         span,
+        pattern: None,
+        slip: None,
+        common_movement: None,
+        even_mean: None,
+        cost_per_hour: None,
+        adjustment: None,
     })
 }
 

@@ -105,8 +105,21 @@ impl History for SampleHistory {
         Ok(newest.into_values().collect())
     }
 
-    fn looks_at(&self, _bank: &str, _at: Time) -> Result<Vec<Look>, HistoryError> {
-        Ok(Vec::new())
+    /// As if a look was kept whole each half hour.
+    fn looks_at(&self, bank: &str, at: Time) -> Result<Vec<Look>, HistoryError> {
+        const HALF_HOUR_US: i64 = 1800 * US_PER_S;
+        let stories = self.stories();
+        let kept = Time::from_us(at.us().div_euclid(HALF_HOUR_US) * HALF_HOUR_US);
+        let reaches = moment().us_since(at) < 6 * 3600 * US_PER_S;
+        let found = stories.into_iter().find(|(v, _)| &*v.bank.name == bank);
+        let Some((view, story)) = found.filter(|_| reaches) else {
+            return Ok(Vec::new());
+        };
+        let names: Vec<Name> = view.sources.iter().map(|s| s.name.clone()).collect();
+        let spans = view.bank.spans.iter();
+        Ok(spans
+            .map(|span| look(&view.bank, &names, story, *span, kept, 9))
+            .collect())
     }
 
     fn notices(&self, after: Option<&str>, most: usize) -> Result<Page<Notice>, HistoryError> {

@@ -25,8 +25,15 @@ async fn every_reading_address_answers() {
         ("/api/v1/banks/filler-2/windows", "items"),
         ("/api/v1/banks/filler-2/looks", "items"),
         ("/api/v1/banks/filler-2/looks?most=4", "next"),
+        ("/api/v1/banks/filler-2/sources", "items"),
+        ("/api/v1/banks/filler-2/sources/07", "deviation"),
+        ("/api/v1/banks/filler-2/windows?source=07", "items"),
+        ("/api/v1/banks/filler-2/looks/40", "tests"),
         ("/api/v1/banks/filler-2/refusals", "items"),
         ("/api/v1/banks/filler-2/events", "items"),
+        ("/api/v1/refusals", "items"),
+        ("/api/v1/settings", "items"),
+        ("/api/v1/health", "store"),
         ("/api/v1/notices", "items"),
         ("/api/v1/notices?most=1", "next"),
         ("/api/v1/notices/filler-2-2026-0007", "id"),
@@ -54,6 +61,26 @@ async fn errors_are_problems_everywhere() {
         ("GET", "/api/v1/banks/none", vec![], "", 404),
         ("GET", "/api/v1/banks/none/windows", vec![], "", 404),
         ("GET", "/api/v1/notices/none", vec![], "", 404),
+        (
+            "GET",
+            "/api/v1/banks/filler-2/sources/none",
+            vec![],
+            "",
+            404,
+        ),
+        (
+            "GET",
+            "/api/v1/banks/filler-2/windows?source=none",
+            vec![],
+            "",
+            404,
+        ),
+        ("GET", "/api/v1/banks/filler-2/looks/41", vec![], "", 404),
+        ("GET", "/api/v1/banks/filler-2/looks/x", vec![], "", 400),
+        ("GET", "/api/v1/banks?form=xml", vec![], "", 400),
+        ("GET", "/api/v1/stream?bank=none", vec![], "", 404),
+        ("GET", "/banks/filler-2?at=yesterday", vec![], "", 400),
+        ("GET", "/banks/filler-2/sources/none", vec![], "", 404),
         ("GET", "/assets/none.js", vec![], "", 404),
         ("POST", "/api/v1/banks", vec![token, JSON], "{}", 405),
         (
@@ -210,7 +237,7 @@ async fn the_document_describes_what_there_is() {
         document["openapi"]
     );
     let paths = document["paths"].as_object().expect("paths");
-    assert_eq!(paths.len(), 9);
+    assert_eq!(paths.len(), 16);
     let schema = &document["components"]["schemas"]["NoticeBody"]["properties"]["since"];
     assert!(!schema.is_null());
 }

@@ -130,6 +130,12 @@ impl BankWholeBody {
     }
 }
 
+impl From<&SourceView> for SourceBody {
+    fn from(view: &SourceView) -> Self {
+        source(view)
+    }
+}
+
 fn source(view: &SourceView) -> SourceBody {
     let SourceView {
         source: _,

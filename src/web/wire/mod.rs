@@ -6,15 +6,21 @@
 //! destructuring where it copies a struct, so that a new field cannot be forgotten.
 
 mod bank;
+mod health;
 mod line;
 mod look;
 mod notice;
+mod rows;
+mod setting;
 mod watch;
 
 pub use bank::{BankBody, BankWholeBody, RefusalBody, SourceBody, WindowBody, WindowValueBody};
+pub use health::{HealthBody, OutletBody};
 pub use line::{LineEntryBody, LineEventBody, LineKind};
 pub use look::{DependenceBody, DeviationBody, DigestBody, LookBody, SourceLookBody, TestBody};
 pub use notice::{AcknowledgeBody, AcknowledgementBody, NamedSourceBody, NoticeBody, SinceBody};
+pub use rows::Rows;
+pub use setting::SettingBody;
 pub use watch::{WatchBody, WatchPartBody};
 
 use serde::Serialize;
