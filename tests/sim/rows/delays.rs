@@ -116,7 +116,7 @@ pub fn spread(rows: &mut Vec<Row>) {
             runs: [100, 2000],
             asked: vec![asked(
                 "delay / oracle",
-                AtMost(4.5),
+                AtMost(3.0),
                 AtMost(2.4),
                 AtMost(1.8),
             )],
@@ -132,7 +132,7 @@ pub fn spread(rows: &mut Vec<Row>) {
             asked: vec![
                 asked(
                     "called as spread",
-                    AtLeast(0.25),
+                    AtLeast(0.50),
                     AtLeast(0.90),
                     AtLeast(0.95),
                 ),

@@ -25,8 +25,8 @@ pub fn names(rows: &mut Vec<Row>) {
             measure: names(0.0, Change::levels([(0, delta)]), 0.0),
             runs: [if delta < 1.0 { 60 } else { 120 }, 2000],
             asked: vec![
-                asked("exactly right", AtLeast(0.88), AtLeast(0.95), AtLeast(0.98)),
-                asked("any wrong name", AtMost(0.12), AtMost(0.05), AtMost(0.02)),
+                asked("exactly right", AtLeast(0.82), AtLeast(0.95), AtLeast(0.98)),
+                asked("any wrong name", AtMost(0.18), AtMost(0.05), AtMost(0.02)),
             ],
         });
         rows.push(Row {
@@ -39,8 +39,8 @@ pub fn names(rows: &mut Vec<Row>) {
             ),
             runs: [if delta < 1.0 { 40 } else { 80 }, 2000],
             asked: vec![
-                asked("exactly right", AtLeast(0.30), AtLeast(0.90), AtLeast(0.95)),
-                asked("any wrong name", AtMost(0.50), Anything, Anything),
+                asked("exactly right", AtLeast(0.45), AtLeast(0.90), AtLeast(0.95)),
+                asked("any wrong name", AtMost(0.35), Anything, Anything),
             ],
         });
     }

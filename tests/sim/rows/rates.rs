@@ -79,7 +79,7 @@ pub fn rates(form: Form, rows: &mut Vec<Row>) {
             normal,
         ));
     }
-    let shapes = [Within(0.2, 4.5), Within(0.75, 3.0), Within(0.8, 1.5)];
+    let shapes = [Within(0.5, 4.5), Within(0.75, 3.0), Within(0.8, 1.5)];
     for (name, noise, resolution) in [
         ("t with 3 df", Noise::T3, 0.0),
         ("lognormal", Noise::Lognormal, 0.0),
