@@ -67,10 +67,7 @@ fn settings() -> Settings {
 }
 
 fn names(bank: &Bank) -> Vec<Name> {
-    match &bank.sources {
-        evenrow::model::Sources::Listed(names) => names.clone(),
-        evenrow::model::Sources::Discover { .. } => Vec::new(),
-    }
+    bank.sources.names().unwrap_or_default()
 }
 
 /// A figure that differs from source to source and from look to look.
@@ -138,6 +135,7 @@ fn view(bank: &Arc<Bank>, at: Time) -> Arc<BankView> {
         deviation_sigmas: Some(0.1),
         sd_ratio: newest.sources[i].sd_ratio,
         named: Vec::new(),
+        lag_us: None,
     };
     Arc::new(BankView {
         sources: names.iter().enumerate().map(source).collect(),
@@ -148,6 +146,13 @@ fn view(bank: &Arc<Bank>, at: Time) -> Arc<BankView> {
         outcomes: BTreeMap::from([("accepted", 1_000_000)]),
         refusals: Vec::new(),
         cycles: None,
+        stopped: None,
+        product: None,
+        line_events: Vec::new(),
+        watch: None,
+        kept: None,
+        raised_at: Vec::new(),
+        shifts: None,
         interval_us: Some(720_000),
         next_look: Some(at.plus_us(EVERY_US)),
         newest_taken: Some(at),
@@ -163,13 +168,14 @@ fn snapshot(version: u64, banks: Vec<Arc<BankView>>) -> Snapshot {
             name: "Quayside".into(),
             zone: jiff::tz::TimeZone::get("Europe/Lisbon").expect("bundled"),
             pages: "http://127.0.0.1".to_owned(),
+            routes: Vec::new(),
+            manners: evenrow::notice::Manners::default(),
         }),
         broker: Condition::Well,
         store: Condition::Well,
         banks,
         refusals: Vec::new(),
-        outbox: 0,
-        outbox_trouble: None,
+        outlets: Vec::new(),
     }
 }
 

@@ -46,6 +46,17 @@ pub fn bank(k: usize) -> Bank {
     }
 }
 
+/// The plant of these tests, with these ways out.
+pub fn plant(routes: Vec<Route>, manners: Manners) -> Plant {
+    Plant {
+        name: "Quayside".into(),
+        zone: jiff::tz::TimeZone::UTC,
+        pages: "http://127.0.0.1:7310".into(),
+        routes,
+        manners,
+    }
+}
+
 pub fn head(number: usize) -> Name {
     format!("{number:02}").into()
 }
@@ -108,15 +119,8 @@ impl Line {
             Sources::Discover { most } => usize::from(*most),
             Sources::Shifts(calendar) => calendar.names().len(),
         };
-        let plant = Plant {
-            name: "Quayside".into(),
-            zone: jiff::tz::TimeZone::UTC,
-            pages: "http://127.0.0.1:7310".into(),
-            routes,
-            manners,
-        };
         Self {
-            engine: Engine::new(plant, vec![Arc::new(bank)]),
+            engine: Engine::new(plant(routes, manners), vec![Arc::new(bank)]),
             k,
             cycle: 0,
             noise: Normal::new(seed),
