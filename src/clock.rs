@@ -2,7 +2,9 @@
 
 use std::sync::Arc;
 use std::sync::atomic::{AtomicI64, Ordering};
-use std::time::{Duration, Instant, SystemTime, UNIX_EPOCH};
+use std::time::{Duration, SystemTime, UNIX_EPOCH};
+
+use tokio::time::Instant;
 
 use crate::model::Time;
 
@@ -42,7 +44,8 @@ impl Clock {
     }
 }
 
-/// Measures how long something takes, for metrics and messages.
+/// Measures how long something takes, for metrics, messages and waits. Its time is tokio's, which a
+/// test can pause.
 #[derive(Clone, Copy, Debug)]
 pub struct Stopwatch(Instant);
 

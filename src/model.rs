@@ -4,16 +4,23 @@
 //! Deliberately absent: clocks, files, formats, statistics.
 
 mod bank;
+mod calendar;
 mod figures;
+mod line_event;
 mod reason;
+mod shift;
 mod time;
 mod value;
 
 pub use bank::{
-    Bank, BankIx, Budget, BudgetError, Characteristic, Layout, Pairing, SourceIx, Sources,
+    Bank, BankIx, Budget, BudgetError, Characteristic, Group, Layout, Offsets, Pairing, SourceIx,
+    Sources,
 };
+pub use calendar::{Calendar, Stretch};
 pub use figures::{fixed, signed};
+pub use line_event::{LineChange, LineEvent};
 pub use reason::{Reason, Refusal};
+pub use shift::Shift;
 pub use time::{Time, US_PER_DAY, US_PER_S};
 pub use value::{Value, ValueError};
 
@@ -46,6 +53,19 @@ pub fn topic_name(name: &str) -> String {
         c => c,
     };
     name.chars().map(safe).collect()
+}
+
+/// A name as part of an address (RFC 3986): everything but the unreserved is written in percents.
+pub fn address_name(name: &str) -> String {
+    let mut text = String::with_capacity(name.len());
+    for byte in name.bytes() {
+        if byte.is_ascii_alphanumeric() || b"-._~".contains(&byte) {
+            text.push(char::from(byte));
+        } else {
+            text.push_str(&format!("%{byte:02X}"));
+        }
+    }
+    text
 }
 
 #[cfg(test)]

@@ -9,7 +9,7 @@ mod line;
 
 use evenrow::model::{Bank, Budget, Pairing, SourceIx, US_PER_S};
 use evenrow::model::{Time, Value};
-use evenrow::verdict::{Aspect, Need, Participant, Shares, examine};
+use evenrow::verdict::{Asked, Aspect, Need, Participant, Shares, Usual, examine};
 use evenrow::window::{Arriving, Windows};
 use line::{Normal, bank, head};
 
@@ -62,19 +62,20 @@ fn called(case: &Case, alpha: f64, margin: f64, runs: usize, seed: u64) -> (f64,
         name: head(s + 1),
         margin,
         silent: false,
+        usual: Some(Usual::default()),
     };
     let who: Vec<Participant> = (0..case.k).map(participant).collect();
     let mut noise = Normal::new(seed);
     let mut counts = [0_usize; 2];
     for _ in 0..runs {
         let windows = windows(case, &bank, &mut noise);
-        let exam = examine(
-            &bank,
-            &windows,
-            &who,
-            Time::from_us(US_PER_S),
-            Need::WholeSpan,
-        );
+        let asked = Asked {
+            at: Time::from_us(US_PER_S),
+            need: Need::WholeSpan,
+            interval_us: None,
+            crossing: None,
+        };
+        let exam = examine(&bank, &windows, &who, asked);
         for call in exam.calls {
             counts[usize::from(call.aspect == Aspect::Spread)] += 1;
         }
@@ -117,6 +118,7 @@ fn alike_sources_are_called_no_more_often_than_the_share_allows() {
         let shares = Shares::of(&with_alpha(
             Bank {
                 spans: vec![span],
+                pairing,
                 ..bank(k)
             },
             alpha,

@@ -3,11 +3,16 @@
 //! A command prints what it has to say and returns an [`Exit`]; only [`main`] turns that into a code.
 
 pub mod args;
+mod ask;
 pub mod configuration;
 pub mod demo;
 pub mod exit;
+mod explain;
+mod handover;
 pub mod log;
+pub mod plan;
 pub mod rehearse;
+mod send_test;
 pub mod signals;
 mod vet;
 mod watch;
@@ -36,6 +41,12 @@ enum Command {
     Demo(args::DemoArgs),
     /// Recorded measurements through the same engine, as fast as it goes
     Rehearse(args::RehearseArgs),
+    /// A look and a call taken apart so that they can be repeated by hand
+    Explain(args::ExplainArgs),
+    /// Before trusting a setting: what drift is found, how surely and how soon
+    Plan(args::PlanArgs),
+    /// What one shift leaves to the next: calls, answers, line events, figures; HTML to print, or JSON
+    Handover(args::HandoverArgs),
     /// Check a configuration: every fault at once, with its line and what to do
     Vet(args::VetArgs),
 }
@@ -55,6 +66,9 @@ fn run(cli: Cli) -> Exit {
         #[cfg(feature = "demo")]
         Command::Demo(args) => demo::run(args),
         Command::Rehearse(args) => rehearse::run(args),
+        Command::Explain(args) => explain::run(args),
+        Command::Plan(args) => plan::run(args),
+        Command::Handover(args) => handover::run(args),
         Command::Vet(args) => vet::run(args),
     }
 }

@@ -16,7 +16,7 @@ use crate::clock::{Clock, Stopwatch};
 use crate::engine::{Condition, Effect, Engine, Event, Outcome, Part, Record, Snapshot, Ticket};
 use crate::intake::mqtt::Receipt;
 use crate::model::Name;
-use crate::notice::Delivery;
+use crate::notice::{Delivery, Way};
 use crate::store::{Batch, Retained, SetAside, Store};
 use crate::web::{Ask, Durations};
 
@@ -42,8 +42,8 @@ const ASIDE_SHOWN: Duration = Duration::from_secs(600);
 pub(super) struct Ways {
     /// To the broker, as acknowledgements.
     pub(super) receipts: mpsc::Sender<Vec<Receipt>>,
-    /// To the outlet.
-    pub(super) deliveries: mpsc::Sender<Delivery>,
+    /// To each way out.
+    pub(super) deliveries: BTreeMap<Way, mpsc::Sender<Delivery>>,
     /// To pages and metrics.
     pub(super) present: watch::Sender<Arc<Snapshot>>,
 }
@@ -105,7 +105,9 @@ impl House {
         most_in_flight: usize,
         ways: Ways,
     ) -> Self {
+        let gone = recovery.orphans.into_iter();
         let owed = Todo {
+            records: gone.map(|number| Record::Delivered { number }).collect(),
             deliveries: recovery.outbox,
             ..Todo::default()
         };
@@ -218,7 +220,9 @@ impl House {
             }
         }
         for delivery in todo.deliveries {
-            let _ = self.ways.deliveries.send(delivery).await;
+            if let Some(way) = self.ways.deliveries.get(&delivery.way) {
+                let _ = way.send(delivery).await;
+            }
         }
         Ok(())
     }

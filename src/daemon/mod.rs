@@ -25,6 +25,7 @@ mod tasks;
 mod unsettled;
 mod waiting;
 
+use std::collections::BTreeMap;
 use std::sync::Arc;
 
 use tokio::net::TcpListener;
@@ -33,8 +34,10 @@ use tokio_util::sync::CancellationToken;
 use tracing::{error, info, warn};
 
 use crate::clock::{Clock, Stopwatch};
+use crate::engine::Snapshot;
 use crate::intake;
 use crate::model::Name;
+use crate::notice::Way;
 use crate::outlets;
 use crate::settings::Settings;
 use crate::store::{self, OpenError, Opened, ReadError};
@@ -68,7 +71,7 @@ pub enum RunError {
     #[error("task \"{name}\" ended unexpectedly: {why}")]
     Task {
         /// Its name.
-        name: &'static str,
+        name: Name,
         /// Why.
         why: String,
     },
@@ -155,12 +158,27 @@ fn start(
     let (feed_in, feed) = mpsc::channel(most_in_flight);
     let (receipts, receipts_out) = mpsc::channel(MOST_WAITING);
     let (asks_in, asks) = mpsc::channel(MOST_WAITING);
-    let (deliveries, deliveries_out) = mpsc::channel(MOST_WAITING);
+    let (mqtt, mqtt_out) = mpsc::channel(MOST_WAITING);
+    let mut deliveries = BTreeMap::from([(Way::Mqtt, mqtt)]);
     let (reports_in, reports) = mpsc::channel(MOST_WAITING);
 
     let already = recovery.unacknowledged.clone();
     let history = Arc::clone(&recovery.history);
     let (present, snapshot) = watch::channel(recovery.engine.snapshot());
+    let end = tasks.end();
+    for outlet in &settings.outlets {
+        let (way, taken) = mpsc::channel(MOST_WAITING);
+        deliveries.insert(Way::Outlet(outlet.name.clone()), way);
+        let picture = picture(snapshot.clone());
+        let run = outlets::run(
+            outlet.clone(),
+            picture,
+            taken,
+            reports_in.clone(),
+            end.clone(),
+        );
+        tasks.start(format!("outlet {}", outlet.name), run);
+    }
     let ways = Ways {
         receipts,
         deliveries,
@@ -174,7 +192,6 @@ fn start(
         ways,
     );
 
-    let end = tasks.end();
     let runtime = tokio::runtime::Handle::current();
     let inputs = Inputs {
         feed,
@@ -187,12 +204,7 @@ fn start(
     });
     tasks.start(
         "notices",
-        outlets::mqtt::run(
-            Arc::clone(&settings),
-            deliveries_out,
-            reports_in,
-            end.clone(),
-        ),
+        outlets::mqtt::run(Arc::clone(&settings), mqtt_out, reports_in, end.clone()),
     );
     tasks.start(
         "broker",
@@ -213,6 +225,15 @@ fn start(
         clock,
     };
     tasks.start("pages", web::serve(listener, site, end));
+}
+
+/// How the sources of a notice's bank stand now, for whoever reads of it.
+fn picture(present: watch::Receiver<Arc<Snapshot>>) -> outlets::Picture {
+    Arc::new(move |notice| {
+        let present = Arc::clone(&present.borrow());
+        let bank = present.banks.iter().find(|b| b.bank.name == notice.bank)?;
+        web::picture_of(bank, notice)
+    })
 }
 
 /// Without a service manager this does nothing.

@@ -10,6 +10,8 @@ use tokio::task::{Id, JoinError, JoinSet};
 use tokio_util::sync::CancellationToken;
 use tracing::{error, warn};
 
+use crate::model::Name;
+
 use super::RunError;
 
 /// The whole end takes less than five seconds; the rest is for the process itself.
@@ -18,7 +20,7 @@ const GRACE: Duration = Duration::from_millis(4_500);
 /// The running tasks.
 pub(super) struct Tasks {
     set: JoinSet<Result<(), RunError>>,
-    names: HashMap<Id, &'static str>,
+    names: HashMap<Id, Name>,
     end: CancellationToken,
     grace: Duration,
 }
@@ -42,12 +44,14 @@ impl Tasks {
     /// Starts a task.
     pub(super) fn start<E: Display + Send + 'static>(
         &mut self,
-        name: &'static str,
+        name: impl Into<Name>,
         task: impl Future<Output = Result<(), E>> + Send + 'static,
     ) {
+        let name: Name = name.into();
+        let own = name.clone();
         let named = async move {
             task.await.map_err(|e| RunError::Task {
-                name,
+                name: own,
                 why: e.to_string(),
             })
         };
@@ -62,7 +66,7 @@ impl Tasks {
         task: impl FnOnce() -> Result<(), RunError> + Send + 'static,
     ) {
         let handle = self.set.spawn_blocking(task);
-        self.names.insert(handle.id(), name);
+        self.names.insert(handle.id(), name.into());
     }
 
     /// Waits until all have ended, and says why when they were not asked to.
@@ -88,7 +92,7 @@ impl Tasks {
             }
         });
         if all.await.is_err() {
-            let late: Vec<&str> = self.names.values().copied().collect();
+            let late: Vec<&str> = self.names.values().map(|n| &**n).collect();
             warn!(
                 "cut off at the end, since they took too long: {}",
                 late.join(", ")
@@ -115,12 +119,13 @@ impl Tasks {
         }
     }
 
-    fn name(&self, ended: &Result<(Id, Result<(), RunError>), JoinError>) -> &'static str {
+    fn name(&self, ended: &Result<(Id, Result<(), RunError>), JoinError>) -> Name {
         let id = match ended {
             Ok((id, _)) => *id,
             Err(e) => e.id(),
         };
-        self.names.get(&id).copied().unwrap_or("without a name")
+        let known = self.names.get(&id).cloned();
+        known.unwrap_or_else(|| "without a name".into())
     }
 
     /// How a task ended; a panic is a failure.

@@ -13,9 +13,9 @@ use super::*;
 use crate::engine::{Command, Condition, Engine, Event, Outcome, Plant, Snapshot};
 use crate::intake::mqtt::{Arrival, FromBroker, Receipt};
 use crate::model::{
-    Bank, BankIx, Characteristic, Layout, Measurement, Name, Pairing, Sources, Time, Value,
+    Bank, BankIx, Characteristic, Layout, Measurement, Name, Offsets, Pairing, Sources, Time, Value,
 };
-use crate::notice::Delivery;
+use crate::notice::{Delivery, Way};
 use crate::outlets::Report;
 use crate::store::Script;
 use crate::web::Ask;
@@ -48,6 +48,10 @@ fn bank() -> Arc<Bank> {
         silent_after_us: None,
         oldest_us: 30 * crate::model::US_PER_DAY,
         layout: Layout::Row,
+        groups: Vec::new(),
+        cost_per_unit: None,
+        reference: None,
+        offsets: Offsets::None,
     })
 }
 
@@ -58,6 +62,8 @@ fn recovery(script: &Script) -> Recovery {
         name: "Quayside".into(),
         zone: jiff::tz::TimeZone::UTC,
         pages: "http://127.0.0.1:7310".to_owned(),
+        routes: Vec::new(),
+        manners: crate::notice::Manners::default(),
     };
     let mut engine = Engine::new(plant, vec![bank]);
     for (bank, _, state) in &recovered.checkpoints {
@@ -68,12 +74,13 @@ fn recovery(script: &Script) -> Recovery {
         engine.replay(turn.unwrap());
         replayed += 1;
     }
-    engine.resume(recovered.last_turn, recovered.outbox.len());
+    engine.resume(recovered.last_turn, &recovered.outbox);
     Recovery {
         engine,
         store: Box::new(store),
         history,
         outbox: recovered.outbox,
+        orphans: Vec::new(),
         unacknowledged: recovered.unacknowledged,
         replayed,
         set_aside: None,
@@ -91,7 +98,8 @@ struct Bench {
 fn bench(script: &Script) -> Bench {
     let mut recovery = recovery(script);
     let (receipts, receipts_out) = mpsc::channel(100);
-    let (deliveries, deliveries_out) = mpsc::channel(100);
+    let (mqtt, deliveries_out) = mpsc::channel(100);
+    let deliveries = BTreeMap::from([(Way::Mqtt, mqtt)]);
     let (present, snapshot) = watch::channel(recovery.engine.snapshot());
     let ways = Ways {
         receipts,

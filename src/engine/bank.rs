@@ -1,18 +1,26 @@
 //! One bank: its windows, its sources and its incidents, and what a measurement or a look does to them.
 
-use std::collections::BTreeMap;
+use std::collections::{BTreeMap, VecDeque};
 use std::sync::Arc;
 
 use serde::{Deserialize, Serialize};
 
 use crate::model::{Bank, Measurement, Name, Reason, SourceIx, Sources, Time};
-use crate::notice::Kind;
-use crate::verdict::{Examination, Look, Need, Participant, examine};
+use crate::notice::{Kind, Notice};
+use crate::verdict::watch::{Crossing, Watch};
+use crate::verdict::{Asked, Examination, Look, Need, Participant, examine};
 use crate::window::{Accepted, Arriving, Windows};
 
+use super::conditions::Standing;
+use super::evidence::Premises;
 use super::incident::Incident;
+use super::judge::Senses;
+use super::line::Line;
 use super::natural::natural;
+use super::papers::{Raised, Tally};
+use super::shifts::Shifts;
 use super::source::{Source, usual_interval_us};
+use super::watching::{Pace, watch_for};
 use super::{RefusalView, WindowValue, WindowView};
 
 /// A clock may run ahead by this much; a value from further in the future is refused.
@@ -45,6 +53,22 @@ pub struct State {
     pub newest_source_at: u64,
     /// Notices made so far.
     pub notices: u64,
+    /// The watch, where sources share cycles.
+    pub watch: Option<Watch>,
+    /// The rate of cycles for which its thresholds hold.
+    pub pace: Pace,
+    /// The line as its events left it.
+    pub line: Line,
+    /// Conditions whose notices are open, oldest first.
+    pub conditions: Vec<Standing>,
+    /// The newest notices that are over, oldest first.
+    pub past: VecDeque<Arc<Notice>>,
+    /// What its calls came to.
+    pub tally: Tally,
+    /// The newest notices raised, oldest first.
+    pub raised_at: VecDeque<Raised>,
+    /// What gathers of the day, where the sources are shifts.
+    pub shifts: Shifts,
 }
 
 impl State {
@@ -56,6 +80,12 @@ impl State {
             self.windows.add_source();
             source.cleared_margin = 0.0;
         }
+        self.watch = watch_for(bank);
+        for _ in &self.sources {
+            self.watch.iter_mut().for_each(Watch::add_source);
+        }
+        self.pace = Pace::default();
+        self.shifts = Shifts::default();
         for incident in &mut self.incidents {
             incident.forget(&|_| true);
         }
@@ -78,6 +108,10 @@ pub struct Watched {
     pub unsaved: bool,
     pub next_silence_check: Option<Time>,
     pub last_checkpoint: Option<Time>,
+    /// What the look that is under way rests on.
+    pub premises: Option<Premises>,
+    /// What is only sensed, and begins afresh with the process.
+    pub senses: Senses,
 }
 
 impl Watched {
@@ -94,6 +128,14 @@ impl Watched {
             began: None,
             newest_source_at: 0,
             notices: 0,
+            watch: watch_for(&bank),
+            pace: Pace::default(),
+            line: Line::default(),
+            conditions: Vec::new(),
+            past: VecDeque::new(),
+            tally: Tally::default(),
+            raised_at: VecDeque::new(),
+            shifts: Shifts::default(),
         };
         Self::with_state(bank, state)
     }
@@ -111,15 +153,15 @@ impl Watched {
             unsaved: false,
             next_silence_check: None,
             last_checkpoint: None,
+            premises: None,
+            senses: Senses::default(),
         };
-        let listed = match &watched.bank.sources {
-            Sources::Listed(listed) => listed.clone(),
-            Sources::Discover { .. } => Vec::new(),
-        };
-        let is_listed = matches!(watched.bank.sources, Sources::Listed(_));
+        let names = watched.bank.sources.names();
+        let is_listed = names.is_some();
+        let listed = names.unwrap_or_default();
         for (s, source) in watched.state.sources.iter_mut().enumerate() {
             source.retired = is_listed && !listed.contains(&source.name);
-            let waited_for = !source.retired && !source.silent;
+            let waited_for = !source.retired && !source.silent && !source.out_of_use;
             watched.state.windows.expect(SourceIx(s as u16), waited_for);
         }
         for name in listed {
@@ -132,13 +174,17 @@ impl Watched {
         for incident in &mut watched.state.incidents {
             incident.forget(&gone);
         }
+        watched.fit_shifts();
         watched.settle();
+        watched.follow_product();
+        watched.retune();
         watched
     }
 
     fn add_source(&mut self, name: Name, discovered: bool) -> SourceIx {
         let ix = SourceIx(self.state.sources.len() as u16);
         self.state.windows.add_source();
+        self.state.watch.iter_mut().for_each(Watch::add_source);
         self.state
             .sources
             .push(Source::new(name.clone(), discovered));
@@ -157,7 +203,7 @@ impl Watched {
 
     /// Whether the set of sources is known well enough to call a cycle complete.
     fn settle(&mut self) {
-        let listed = matches!(self.bank.sources, Sources::Listed(_));
+        let listed = !matches!(self.bank.sources, Sources::Discover { .. });
         let quiet = self.closed() >= self.state.newest_source_at + SETTLED_AFTER;
         self.state.windows.settle(listed || quiet);
     }
@@ -174,39 +220,23 @@ impl Watched {
         if now.us_since(taken) > self.bank.oldest_us {
             return Err(Reason::TooOld);
         }
-        let source = self.source(&m.source)?;
-        let arriving = Arriving {
-            source,
-            value: m.value,
-            taken,
-            time_given: m.taken.is_some(),
-            cycle: m.cycle,
-        };
-        let closed = self.closed();
-        // Whoever delivers is waited for again, from this very cycle on.
-        let was_silent = self.state.sources[source.index()].silent;
-        if was_silent {
-            self.state.windows.expect(source, true);
+        let stopped = self.state.line.stopped.as_ref();
+        if stopped.is_some_and(|stop| taken >= stop.at) {
+            return Err(Reason::LineStopped);
         }
-        let accepted = self.state.windows.accept(&arriving).inspect_err(|_| {
-            // What is refused wakes nobody.
-        });
-        let accepted = match accepted {
-            Ok(accepted) => accepted,
-            Err(reason) => {
-                self.state.windows.expect(source, !was_silent);
-                return Err(reason);
-            }
+        let bank = self.bank.clone();
+        let accepted = if let Sources::Shifts(calendar) = &bank.sources {
+            self.gather(calendar, m, (taken, now))?
+        } else {
+            let arriving = Arriving {
+                source: self.source(&m.source)?,
+                value: m.value,
+                taken,
+                time_given: m.taken.is_some(),
+                cycle: m.cycle,
+            };
+            self.enter(&arriving, now)?
         };
-        let known = &mut self.state.sources[source.index()];
-        known.accepted += 1;
-        known.last_value = Some(m.value.to_f64());
-        known.last_taken = known.last_taken.max(Some(taken));
-        known.last_received = Some(now);
-        known.silent = false;
-        if closed != self.closed() {
-            self.settle();
-        }
         let outcome = match accepted {
             Accepted::InTurn => "accepted",
             Accepted::Late => "late",
@@ -215,6 +245,44 @@ impl Watched {
         self.state.began.get_or_insert(now);
         self.plan_look(now);
         Ok(())
+    }
+
+    /// Puts a value of a source, received at `now`, into its window.
+    ///
+    /// # Errors
+    /// The reason when the window refuses it.
+    pub fn enter(&mut self, arriving: &Arriving, now: Time) -> Result<Accepted, Reason> {
+        let source = arriving.source;
+        let closed = self.closed();
+        // Whoever delivers is waited for again, from this very cycle on.
+        let was_silent = self.state.sources[source.index()].silent;
+        if was_silent {
+            self.state.windows.expect(source, true);
+        }
+        let accepted = match self.state.windows.accept(arriving) {
+            Ok(accepted) => accepted,
+            Err(reason) => {
+                // What is refused wakes nobody.
+                self.state.windows.expect(source, !was_silent);
+                return Err(reason);
+            }
+        };
+        let known = &mut self.state.sources[source.index()];
+        known.accepted += 1;
+        known.last_value = Some(arriving.value.to_f64());
+        known.last_taken = known.last_taken.max(Some(arriving.taken));
+        known.last_received = Some(now);
+        known.silent = false;
+        if closed != self.closed() {
+            self.settle();
+        }
+        Ok(accepted)
+    }
+
+    /// A source by its name.
+    pub fn source_named(&self, name: &Name) -> Option<SourceIx> {
+        let known = self.by_name.get(name).copied();
+        known.filter(|s| !self.state.sources[s.index()].retired)
     }
 
     fn source(&mut self, name: &Name) -> Result<SourceIx, Reason> {
@@ -226,7 +294,7 @@ impl Watched {
             };
         }
         match self.bank.sources {
-            Sources::Listed(_) => Err(Reason::UnknownSource),
+            Sources::Listed(_) | Sources::Shifts(_) => Err(Reason::UnknownSource),
             Sources::Discover { most } if self.state.sources.len() >= usize::from(most) => {
                 Err(Reason::TooManySources)
             }
@@ -235,13 +303,16 @@ impl Watched {
     }
 
     /// Plans the next look; never further ahead than one period, so that a clock that was set back does
-    /// not stop the looks.
-    fn plan_look(&mut self, now: Time) {
+    /// not stop the looks. A bank of shifts is looked at when a shift is over.
+    pub fn plan_look(&mut self, now: Time) {
         let every = self.bank.look_every_us;
         let began = self.state.began.unwrap_or(now);
         let next = self.state.last_look.unwrap_or(began).plus_us(every);
         let planned = self.state.look_due.unwrap_or(next.max(now));
-        self.state.look_due = Some(planned.min(now.plus_us(every)));
+        self.state.look_due = match self.bank.sources {
+            Sources::Shifts(_) => self.state.shifts.next_end(),
+            _ => Some(planned.min(now.plus_us(every))),
+        };
         self.next_silence_check = self
             .next_silence_check
             .min(Some(now.plus_us(SILENCE_EVERY_US)));
@@ -252,11 +323,17 @@ impl Watched {
         let Some(began) = self.state.began else {
             return Vec::new();
         };
+        let line = &self.state.line;
+        if line.stopped.is_some() {
+            return Vec::new();
+        }
+        let began = line.started.unwrap_or(began).max(began);
         let fallen = |(s, source): (usize, &Source)| {
             let ix = SourceIx(s as u16);
             let ring = self.state.windows.ring(ix);
             let since = source.silent_from(&self.bank, ring, began);
-            (!source.silent && !source.retired && since <= now).then_some(ix)
+            let judged = !source.silent && !source.retired && !source.out_of_use;
+            (judged && since <= now).then_some(ix)
         };
         self.state
             .sources
@@ -292,14 +369,12 @@ impl Watched {
             .map(|s| SourceIx(s as u16))
             .filter(|s| !self.state.sources[s.index()].retired)
             .collect();
-        match &self.bank.sources {
-            Sources::Listed(listed) => {
-                let place = |s: &SourceIx| listed.iter().position(|n| *n == self.name(*s));
+        match self.bank.sources.names() {
+            Some(names) => {
+                let place = |s: &SourceIx| names.iter().position(|n| *n == self.name(*s));
                 order.sort_by_key(place);
             }
-            Sources::Discover { .. } => {
-                order.sort_by(|a, b| natural(&self.name(*a), &self.name(*b)))
-            }
+            None => order.sort_by(|a, b| natural(&self.name(*a), &self.name(*b))),
         }
         order
     }
@@ -308,8 +383,20 @@ impl Watched {
         self.state.sources[source.index()].name.clone()
     }
 
-    /// Examines the windows without consequences.
-    pub fn examine(&self, now: Time, need: Need) -> Examination {
+    /// Examines the windows without consequences; a crossing of the watch decides what is called.
+    pub fn examine(&self, now: Time, need: Need, crossing: Option<&Crossing>) -> Examination {
+        let who = self.participants();
+        let asked = Asked {
+            at: now,
+            need,
+            interval_us: self.slowest_interval_us(),
+            crossing,
+        };
+        examine(&self.bank, &self.state.windows, &who, asked)
+    }
+
+    /// The sources that a look compares, in display order.
+    pub fn participants(&self) -> Vec<Participant> {
         let takes_part = |s: &SourceIx| self.state.sources[s.index()].takes_part();
         let participant = |s: SourceIx| Participant {
             source: s,
@@ -319,14 +406,10 @@ impl Watched {
                 .margin
                 .max(self.state.sources[s.index()].cleared_margin),
             silent: self.state.sources[s.index()].silent,
+            usual: self.usual(s),
         };
-        let who: Vec<Participant> = self
-            .display_order()
-            .into_iter()
-            .filter(takes_part)
-            .map(participant)
-            .collect();
-        examine(&self.bank, &self.state.windows, &who, now, need)
+        let in_order = self.display_order().into_iter();
+        in_order.filter(takes_part).map(participant).collect()
     }
 
     /// The usual time between values of a source: the median over the sources.
@@ -340,6 +423,13 @@ impl Watched {
             .collect();
         all.sort_unstable();
         all.get(all.len() / 2).copied()
+    }
+
+    /// The time between values of the slowest source that delivers.
+    pub fn slowest_interval_us(&self) -> Option<i64> {
+        let sources = self.state.sources.iter().zip(self.state.windows.rings());
+        let delivers = sources.filter(|(s, _)| s.takes_part() && !s.silent);
+        delivers.filter_map(|(_, r)| usual_interval_us(r)).max()
     }
 
     /// Every window, in display order.

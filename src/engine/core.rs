@@ -2,56 +2,32 @@
 
 use std::sync::Arc;
 
-use crate::model::{Bank, BankIx, Measurement, Name, Refusal, Time};
-use crate::notice::{Acknowledgement, Delivery, Notice, Way};
+use crate::model::{Bank, BankIx, Measurement, Reason, Refusal, Time};
+use crate::notice::{Delivery, Detail, Notice, Trouble};
 use crate::verdict::{Finding, Look, Need};
 
-use super::bank::{SILENCE_EVERY_US, State, Watched};
-use super::look::Freshness;
+use super::bank::{SILENCE_EVERY_US, Watched};
+use super::judge::Intake;
+use super::look::{Freshness, Looked};
+use super::restore::{self, RestoreError, checkpoint};
+use super::send::{Moment, Post};
 use super::view;
 use super::{
-    Command, Condition, Due, Effect, Event, Outcome, Part, Plant, Record, RefusalView, Snapshot,
-    Ticket, Turn,
+    Condition, Due, Effect, Event, Judged, Part, Plant, Record, RefusalView, Snapshot, Turn,
 };
 
 /// A bank writes its whole state at least this often.
 const CHECKPOINT_EVERY_US: i64 = 600_000_000;
 
-/// Version of the encoded state.
-const STATE_VERSION: u8 = 1;
-
-/// Why a checkpoint cannot be gone on from.
-#[derive(Clone, Debug, PartialEq, Eq, thiserror::Error)]
-pub enum RestoreError {
-    /// No bank of this name is configured.
-    #[error("bank \"{0}\" is no longer configured; what was kept of it is left alone")]
-    NoSuchBank(String),
-    /// Written by another version.
-    #[error(
-        "the state of bank \"{bank}\" was written in form {version}, this program reads form {STATE_VERSION}"
-    )]
-    OtherVersion {
-        /// The bank.
-        bank: String,
-        /// The form found.
-        version: u8,
-    },
-    /// It cannot be decoded.
-    #[error("the state of bank \"{0}\" cannot be decoded")]
-    Unreadable(String),
-    /// Values kept under another pairing do not fit.
-    #[error("the pairing of bank \"{0}\" was changed, so its windows start afresh")]
-    PairingChanged(String),
-}
-
 /// Owns every bank.
 pub struct Engine {
-    plant: Arc<Plant>,
-    banks: Vec<Watched>,
+    pub(super) plant: Arc<Plant>,
+    pub(super) banks: Vec<Watched>,
     last_turn: u64,
-    outbox: usize,
-    outbox_trouble: Option<String>,
+    post: Post,
     broker: Condition,
+    /// Since when it is as it is.
+    broker_since: Time,
     store: Condition,
     refusals: Vec<RefusalView>,
     changed: bool,
@@ -64,12 +40,12 @@ impl Engine {
         let plant = Arc::new(plant);
         let mut engine = Self {
             snapshot: Arc::new(view::empty(plant.clone())),
+            post: Post::new(&plant, banks.len()),
             plant,
             banks: banks.into_iter().map(Watched::new).collect(),
             last_turn: 0,
-            outbox: 0,
-            outbox_trouble: None,
             broker: Condition::Starting,
+            broker_since: Time::from_us(0),
             store: Condition::Starting,
             refusals: Vec::new(),
             changed: true,
@@ -84,19 +60,11 @@ impl Engine {
     /// [`RestoreError`]; the bank then starts afresh.
     pub fn restore(&mut self, bank: &str, state: &[u8]) -> Result<(), RestoreError> {
         let own = || bank.to_owned();
-        let found = self.banks.iter_mut().find(|b| &*b.bank.name == bank);
-        let watched = found.ok_or_else(|| RestoreError::NoSuchBank(own()))?;
-        let (&version, encoded) = state
-            .split_first()
-            .ok_or_else(|| RestoreError::Unreadable(own()))?;
-        if version != STATE_VERSION {
-            return Err(RestoreError::OtherVersion {
-                bank: own(),
-                version,
-            });
-        }
-        let mut state: State =
-            postcard::from_bytes(encoded).map_err(|_| RestoreError::Unreadable(own()))?;
+        let found = self.banks.iter().position(|b| &*b.bank.name == bank);
+        let b = found.ok_or_else(|| RestoreError::NoSuchBank(own()))?;
+        let watched = &mut self.banks[b];
+        let (mut state, told) = restore::decode(bank, state)?;
+        self.post.restore(b, told);
         let adapted = state.windows.adapt(&watched.bank);
         if !adapted {
             state.start_over(&watched.bank);
@@ -111,10 +79,10 @@ impl Engine {
     }
 
     /// Goes on counting after what the store holds, when all of it has been replayed: the number of
-    /// the last turn, and how many deliveries wait.
-    pub fn resume(&mut self, last_turn: u64, outbox: usize) {
+    /// the last turn, and the deliveries that wait.
+    pub fn resume(&mut self, last_turn: u64, outbox: &[Delivery]) {
         self.last_turn = self.last_turn.max(last_turn);
-        self.outbox = outbox;
+        self.post.resume(outbox);
         // What was replayed has been counted before this process began.
         for bank in &mut self.banks {
             bank.outcomes.clear();
@@ -122,6 +90,14 @@ impl Engine {
             bank.dirty = true;
         }
         self.changed = true;
+    }
+
+    /// Numbers a bank's notices after `last`, where its state is lost and its notices are not.
+    pub fn number_notices_after(&mut self, bank: &str, last: u64) {
+        let found = self.banks.iter_mut().find(|b| &*b.bank.name == bank);
+        if let Some(bank) = found {
+            bank.state.notices = bank.state.notices.max(last);
+        }
     }
 
     /// Applies a turn from the journal again. Banks whose checkpoint already contains it leave it
@@ -149,11 +125,10 @@ impl Engine {
         self.changed = true;
         match event {
             Event::Measurements(all) => {
-                let kept = self.measurements(number, all, now);
-                (
-                    (!kept.is_empty()).then_some(Event::Measurements(kept)),
-                    Vec::new(),
-                )
+                let mut effects = Vec::new();
+                let kept = self.measurements(number, all, now, &mut effects);
+                let kept = (!kept.is_empty()).then_some(Event::Measurements(kept));
+                (kept, effects)
             }
             Event::Refusals(refusals) => {
                 for refusal in refusals {
@@ -167,19 +142,18 @@ impl Engine {
                 self.do_due(number, &due, now, &mut effects);
                 (Some(Event::Due(due)), effects)
             }
-            Event::Command { ticket, who, what } => self.command(number, ticket, who, what, now),
+            Event::Command { ticket, who, what } => self.command(number, (ticket, who), what, now),
             Event::Delivered { number } => {
-                self.outbox = self.outbox.saturating_sub(1);
-                self.outbox_trouble = None;
+                self.post.delivered(number);
                 (None, vec![Effect::Keep(Record::Delivered { number })])
             }
-            Event::NotDelivered { why, .. } => {
-                self.outbox_trouble = Some(why);
+            Event::NotDelivered { number, why } => {
+                self.post.not_delivered(number, why);
                 (None, Vec::new())
             }
             Event::Condition { part, condition } => {
                 match part {
-                    Part::Broker => self.broker = condition,
+                    Part::Broker => self.broker_is(condition, now),
                     Part::Store => self.store = condition,
                 }
                 (None, Vec::new())
@@ -187,23 +161,40 @@ impl Engine {
         }
     }
 
-    fn measurements(&mut self, number: u64, all: Vec<Measurement>, now: Time) -> Vec<Measurement> {
+    fn measurements(
+        &mut self,
+        number: u64,
+        all: Vec<Measurement>,
+        now: Time,
+        effects: &mut Vec<Effect>,
+    ) -> Vec<Measurement> {
         let mut kept = Vec::with_capacity(all.len());
         let contained: Vec<bool> = self.banks.iter().map(|b| b.state.turn >= number).collect();
         for m in all {
-            let Some(bank) = self.banks.get_mut(m.bank.index()) else {
+            let b = m.bank.index();
+            let Some(bank) = self.banks.get_mut(b) else {
                 continue;
             };
-            if contained[m.bank.index()] {
+            if contained[b] {
                 continue;
             }
             bank.dirty = true;
             match bank.accept(&m, now) {
                 Ok(()) => {
                     bank.mark(number);
+                    if let Some(taken) = m.taken {
+                        bank.senses.timed(&m.source, taken, now);
+                    }
+                    let called = bank.watch(&self.plant, now);
                     kept.push(m);
+                    if let Some(called) = called {
+                        self.tell(b, called, number, now, effects);
+                    }
                 }
                 Err(reason) => {
+                    if matches!(reason, Reason::TooFarAhead | Reason::TooOld) {
+                        bank.senses.refused(&m.source, now);
+                    }
                     let refusal = view::refusal_of(&m, reason, bank, now);
                     self.refuse(refusal, now);
                 }
@@ -240,17 +231,30 @@ impl Engine {
 
     fn what_is_due(&mut self, now: Time) -> Due {
         let mut due = Due::default();
+        let intake = self.intake();
         for (b, bank) in self.banks.iter_mut().enumerate() {
             let ix = BankIx(b as u16);
             if bank.next_silence_check.is_none_or(|at| at <= now) {
                 bank.next_silence_check = Some(now.plus_us(SILENCE_EVERY_US));
                 due.silent
                     .extend(bank.fallen_silent(now).into_iter().map(|s| (ix, s)));
+                // Trouble of the whole plant is told once, with the first bank.
+                let intake = (b == 0).then_some(&intake);
+                let judged = bank.judge(&self.plant.manners, intake, now).into_iter();
+                due.conditions.extend(judged.map(|(kind, troubles)| Judged {
+                    bank: ix,
+                    kind,
+                    troubles,
+                }));
             }
             if bank.state.look_due.is_some_and(|at| at <= now) {
                 due.looks.push(ix);
             }
+            if bank.wants_upkeep(&self.plant.manners, now) {
+                due.upkeep.push(ix);
+            }
         }
+        due.onward = self.post.due(&self.banks, &self.plant, now);
         due
     }
 
@@ -258,19 +262,66 @@ impl Engine {
         let contained: Vec<bool> = self.banks.iter().map(|b| b.state.turn >= number).collect();
         let open = |b: BankIx| contained.get(b.index()) == Some(&false);
         for &(b, source) in due.silent.iter().filter(|(b, _)| open(*b)) {
-            self.banks[b.index()].silence(source);
-            self.banks[b.index()].mark(number);
+            let bank = &mut self.banks[b.index()];
+            bank.silence(source);
+            bank.mark(number);
+            // Nobody waits for it any more, so cycles may have closed.
+            if let Some(called) = bank.watch(&self.plant, now) {
+                self.tell(b.index(), called, number, now, effects);
+            }
         }
         for &b in due.looks.iter().filter(|b| open(**b)) {
-            self.look(b.index(), number, now, effects);
-            self.banks[b.index()].mark(number);
+            let bank = &mut self.banks[b.index()];
+            let looked = bank.look(&self.plant, now);
+            bank.mark(number);
+            self.tell(b.index(), looked, number, now, effects);
+        }
+        for judged in due.conditions.iter().filter(|j| open(j.bank)) {
+            let bank = &mut self.banks[judged.bank.index()];
+            let changed = bank.condition(&self.plant, judged, now);
+            bank.mark(number);
+            let kept = changed.map(|(notice, _)| notice);
+            self.keep_and_send(judged.bank.index(), kept, number, now, effects);
+        }
+        for &b in due.upkeep.iter().filter(|b| open(**b)) {
+            let bank = &mut self.banks[b.index()];
+            let changed = bank.upkeep(&self.plant.manners, now);
+            bank.mark(number);
+            self.keep_and_send(b.index(), changed, number, now, effects);
+        }
+        for onward in due.onward.iter().filter(|o| open(o.bank)) {
+            let bank = &mut self.banks[onward.bank.index()];
+            self.post
+                .go_on(onward, bank, Moment { turn: number, now }, effects);
+            bank.mark(number);
         }
     }
 
-    fn look(&mut self, b: usize, number: u64, now: Time, effects: &mut Vec<Effect>) {
-        let plant = self.plant.clone();
+    fn keep_and_send(
+        &mut self,
+        b: usize,
+        changed: impl IntoIterator<Item = Arc<Notice>>,
+        number: u64,
+        now: Time,
+        effects: &mut Vec<Effect>,
+    ) {
+        let kept = changed.into_iter().map(Record::Notice);
+        effects.extend(kept.map(Effect::Keep));
+        self.send(b, number, now, effects);
+    }
+
+    /// What a look brought, as effects.
+    fn tell(
+        &mut self,
+        b: usize,
+        looked: Looked,
+        number: u64,
+        now: Time,
+        effects: &mut Vec<Effect>,
+    ) {
         let bank = &mut self.banks[b];
-        let looked = bank.look(&plant, now);
+        let premises = bank.premises.take();
+        let bank = &self.banks[b];
         let name = bank.bank.name.clone();
         for look in &looked.looks {
             effects.push(Effect::Keep(Record::Digest(name.clone(), look.digest())));
@@ -281,141 +332,74 @@ impl Engine {
         for (notice, freshness) in looked.changed {
             effects.push(Effect::Keep(Record::Notice(notice.clone())));
             if freshness == Freshness::Raised
-                && let Some(look) = looked.looks.iter().find(|l| l.span == notice.span)
+                && let Some(premises) = &premises
             {
                 effects.push(Effect::Keep(Record::Evidence {
                     notice: notice.id.clone(),
-                    look: look.clone(),
-                    windows: bank.window_views(),
+                    evidence: Box::new(bank.evidence(&looked.looks, premises)),
                 }));
             }
         }
         self.send(b, number, now, effects);
     }
 
-    /// Sends what people should receive now.
-    fn send(&mut self, b: usize, number: u64, now: Time, effects: &mut Vec<Effect>) {
-        let mut already = effects
-            .iter()
-            .filter(|e| matches!(e, Effect::Deliver(_)))
-            .count() as u64;
-        for incident in &mut self.banks[b].state.incidents {
-            if !incident.wants_sending(now) {
-                continue;
-            }
-            incident.sent = Some((now, incident.notice.clone()));
-            let delivery = Delivery {
-                // A turn sends far fewer than 2^16 notices.
-                number: (number << 16) + already,
-                way: Way::Mqtt,
-                at: now,
-                notice: incident.notice.clone(),
-            };
-            already += 1;
-            self.outbox += 1;
-            effects.push(Effect::Keep(Record::Delivery(delivery.clone())));
-            effects.push(Effect::Deliver(delivery));
-        }
-        self.banks[b]
-            .state
-            .incidents
-            .retain(|i| i.notice.state.is_open());
-    }
-
-    fn command(
-        &mut self,
-        number: u64,
-        ticket: Ticket,
-        who: Name,
-        what: Command,
-        now: Time,
-    ) -> (Option<Event>, Vec<Effect>) {
-        match &what {
-            Command::Windows { bank } => {
-                let outcome = match self.banks.get(bank.index()) {
-                    Some(b) => Outcome::Windows(b.window_views()),
-                    None => Outcome::NotFound("there is no such bank".to_owned()),
-                };
-                (None, vec![Effect::Answer { ticket, outcome }])
-            }
-            Command::Acknowledge { notice, comment } => {
-                let by = who.clone();
-                let acknowledgement = Acknowledgement {
-                    by,
-                    at: now,
-                    comment: comment.clone(),
-                };
-                let Some((b, after, news)) = self.acknowledge(number, notice, acknowledgement)
-                else {
-                    let outcome =
-                        Outcome::NotFound(format!("no open notice has the id \"{notice}\""));
-                    return (None, vec![Effect::Answer { ticket, outcome }]);
-                };
-                let mut effects = Vec::new();
-                if news {
-                    effects.push(Effect::Keep(Record::Notice(after.clone())));
-                    self.send(b, number, now, &mut effects);
-                }
-                effects.push(Effect::Answer {
-                    ticket,
-                    outcome: Outcome::Acknowledged(after),
-                });
-                (
-                    news.then_some(Event::Command { ticket, who, what }),
-                    effects,
-                )
-            }
-        }
-    }
-
-    /// The bank, the notice after it, and whether anything changed.
-    fn acknowledge(
-        &mut self,
-        number: u64,
-        id: &str,
-        acknowledgement: Acknowledgement,
-    ) -> Option<(usize, Arc<Notice>, bool)> {
-        for (b, bank) in self.banks.iter_mut().enumerate() {
-            if bank.state.turn >= number {
-                continue;
-            }
-            let Some(incident) = bank
-                .state
-                .incidents
-                .iter_mut()
-                .find(|i| &*i.notice.id == id)
-            else {
-                continue;
-            };
-            let before = incident.notice.state;
-            incident.acknowledge(acknowledgement);
-            let news = incident.notice.state != before;
-            let after = incident.notice.clone();
-            if news {
-                bank.mark(number);
-            }
-            return Some((b, after, news));
-        }
-        None
+    pub(super) fn send(&mut self, b: usize, turn: u64, now: Time, effects: &mut Vec<Effect>) {
+        let (bank, at) = (&mut self.banks[b], Moment { turn, now });
+        self.post.send(b, bank, &self.plant, at, effects);
     }
 
     fn checkpoint_if_due(&mut self, b: usize, now: Time) -> Option<Effect> {
         let bank = &mut self.banks[b];
         let last = *bank.last_checkpoint.get_or_insert(now);
         let due = bank.is_behind(self.last_turn) && now.us_since(last) >= CHECKPOINT_EVERY_US;
-        due.then(|| Effect::Keep(checkpoint(bank, self.last_turn, now)))
+        let told = self.post.told(b);
+        due.then(|| Effect::Keep(checkpoint(bank, told, self.last_turn, now)))
     }
 
     /// The state of every bank that changed since its last checkpoint; for the end of the program.
     pub fn checkpoints(&mut self, now: Time) -> Vec<Record> {
-        let last = self.last_turn;
-        let behind = self.banks.iter_mut().filter(|b| b.is_behind(last));
-        behind.map(|b| checkpoint(b, last, now)).collect()
+        let (last, post) = (self.last_turn, &self.post);
+        let banks = self.banks.iter_mut().enumerate();
+        let behind = banks.filter_map(|(b, bank)| bank.is_behind(last).then_some((b, bank)));
+        behind
+            .map(|(b, bank)| checkpoint(bank, post.told(b), last, now))
+            .collect()
+    }
+
+    /// The broker is another than before.
+    fn broker_is(&mut self, condition: Condition, now: Time) {
+        if condition != self.broker {
+            self.broker_since = now;
+        }
+        self.broker = condition;
+        if matches!(self.broker, Condition::Trouble(_)) {
+            self.banks.iter_mut().for_each(Watched::lose_hearing);
+        }
+        // Also a plant that has never heard anything is told why.
+        if let Some(first) = self.banks.first_mut() {
+            first.next_silence_check.get_or_insert(now);
+        }
+    }
+
+    fn intake(&self) -> Intake {
+        match &self.broker {
+            Condition::Starting => Intake::Unknown,
+            Condition::Well | Condition::Noted(_) => Intake::Well,
+            Condition::Trouble(what) => Intake::Trouble(Trouble {
+                source: None,
+                since: self.broker_since,
+                detail: Detail::Intake(what.clone()),
+            }),
+        }
     }
 
     /// When [`Event::Deadline`] should come next.
     pub fn next_deadline(&self) -> Option<Time> {
-        self.banks.iter().filter_map(next_deadline).min()
+        let onward = self.post.next_due(&self.banks, &self.plant);
+        let banks = self.banks.iter().filter_map(next_deadline);
+        let manners = &self.plant.manners;
+        let upkeep = self.banks.iter().filter_map(|b| b.next_upkeep(manners));
+        banks.chain(onward).chain(upkeep).min()
     }
 
     /// Looks at every bank with whatever is there, without consequences: what a rehearsal ends with.
@@ -423,7 +407,7 @@ impl Engine {
         let all = self
             .banks
             .iter()
-            .flat_map(|b| b.examine(now, Need::Whatever).looks);
+            .flat_map(|b| b.examine(now, Need::Whatever, None).looks);
         all.map(Arc::new).collect()
     }
 
@@ -462,15 +446,14 @@ impl Engine {
             store: self.store.clone(),
             banks: banks.collect(),
             refusals: self.refusals.clone(),
-            outbox: self.outbox,
-            outbox_trouble: self.outbox_trouble.clone(),
+            outlets: self.post.views(),
         });
         self.snapshot.clone()
     }
 }
 
 fn next_deadline(bank: &Watched) -> Option<Time> {
-    let began = bank.state.began?;
+    let began = bank.state.began.or(bank.next_silence_check)?;
     let checkpoint = bank
         .last_checkpoint
         .map(|at| at.plus_us(CHECKPOINT_EVERY_US));
@@ -480,20 +463,4 @@ fn next_deadline(bank: &Watched) -> Option<Time> {
         .into_iter()
         .flatten()
         .min()
-}
-
-/// `last` is the last turn that was applied: whatever in it was not for this bank is contained too,
-/// so that a bank that stands idle does not hold the whole journal back.
-fn checkpoint(bank: &mut Watched, last: u64, now: Time) -> Record {
-    bank.state.turn = bank.state.turn.max(last);
-    bank.unsaved = false;
-    bank.last_checkpoint = Some(now);
-    let mut state = vec![STATE_VERSION];
-    // Encoding plain data into memory cannot fail.
-    state.extend(postcard::to_allocvec(&bank.state).unwrap_or_default());
-    Record::Checkpoint {
-        bank: bank.bank.name.clone(),
-        turn: bank.state.turn,
-        state,
-    }
 }

@@ -4,11 +4,12 @@ use std::sync::Arc;
 
 use serde::{Deserialize, Serialize};
 
-use crate::model::{BankIx, Measurement, Name, Refusal, SourceIx, Time};
-use crate::notice::{Delivery, Notice};
+use crate::model::{BankIx, LineChange, LineEvent, Measurement, Name, Refusal, SourceIx, Time};
+use crate::notice::{Deed, Delivery, Kind, Notice, Trouble};
 use crate::verdict::{Digest, Look};
 
 use super::condition::{Condition, Part};
+use super::evidence::Evidence;
 use super::snapshot::WindowView;
 
 /// Links a command to the person who waits for its answer; only the daemon knows who that is.
@@ -58,26 +59,70 @@ pub enum Event {
 }
 
 /// What was due at a deadline.
-#[derive(Clone, Debug, Default, PartialEq, Eq, Serialize, Deserialize)]
+#[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
 pub struct Due {
     /// Sources that have fallen silent.
     pub silent: Vec<(BankIx, SourceIx)>,
     /// Banks to look at.
     pub looks: Vec<BankIx>,
+    /// Notices that go to a further outlet.
+    pub onward: Vec<Onward>,
+    /// Banks to whose notices time brings something.
+    pub upkeep: Vec<BankIx>,
+    /// Conditions that have begun, changed or gone.
+    pub conditions: Vec<Judged>,
+}
+
+/// What a condition of a bank has come to.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+pub struct Judged {
+    /// The bank.
+    pub bank: BankIx,
+    /// Which condition.
+    pub kind: Kind,
+    /// What is wrong; nothing when it is gone.
+    pub troubles: Vec<Trouble>,
+}
+
+/// A notice that has stood unacknowledged for long enough, or whose outlet's shift has begun.
+#[derive(Clone, Debug, PartialEq, Eq, Serialize, Deserialize)]
+pub struct Onward {
+    /// Its bank.
+    pub bank: BankIx,
+    /// [`Notice::id`].
+    pub notice: Name,
+    /// Where it goes.
+    pub outlet: Name,
 }
 
 /// What a person can ask for.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub enum Command {
-    /// Acknowledge a notice.
-    Acknowledge {
+    /// Do something with a notice.
+    Notice {
         /// [`Notice::id`].
         notice: Name,
+        /// What.
+        deed: Deed,
         /// What the person wrote; may be empty.
         comment: String,
     },
+    /// Take in a line event.
+    Line {
+        /// Which bank.
+        bank: BankIx,
+        /// What happened.
+        change: LineChange,
+        /// Why, as the person wrote it; may be empty.
+        reason: String,
+    },
     /// The values in a bank's windows. Changes nothing.
     Windows {
+        /// Which bank.
+        bank: BankIx,
+    },
+    /// What a look at the bank would rest on now, with that look. Changes nothing.
+    Evidence {
         /// Which bank.
         bank: BankIx,
     },
@@ -86,10 +131,14 @@ pub enum Command {
 /// The answer to a command.
 #[derive(Clone, Debug, PartialEq)]
 pub enum Outcome {
-    /// Acknowledged; the notice as it stands now. Asking twice gives the same.
-    Acknowledged(Arc<Notice>),
+    /// Done; the notice as it stands now. Asking twice gives the same.
+    Notice(Arc<Notice>),
+    /// Taken in; the line event as it is kept.
+    Line(LineEvent),
     /// The bank's windows, sources in display order.
     Windows(Vec<WindowView>),
+    /// A look taken just now, and what it rests on.
+    Evidence(Box<Evidence>),
     /// There is no such thing; says what.
     NotFound(String),
     /// It cannot be done now; says why.
@@ -124,6 +173,15 @@ pub enum Record {
     },
     /// The short form of a look of this bank.
     Digest(Name, Digest),
+    /// A line event of this bank; the turn tells those of one moment apart.
+    Line {
+        /// The bank's name.
+        bank: Name,
+        /// The turn that brought it.
+        turn: u64,
+        /// What happened.
+        event: LineEvent,
+    },
     /// A look worth keeping whole.
     Look(Arc<Look>),
     /// A notice as it stands now; replaces what was kept under its id.
@@ -132,10 +190,8 @@ pub enum Record {
     Evidence {
         /// [`Notice::id`].
         notice: Name,
-        /// The look that called.
-        look: Arc<Look>,
-        /// The windows then.
-        windows: Vec<WindowView>,
+        /// What the call rests on.
+        evidence: Box<Evidence>,
     },
     /// Into the outbox.
     Delivery(Delivery),

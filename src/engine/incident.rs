@@ -4,44 +4,24 @@ use std::sync::Arc;
 
 use serde::{Deserialize, Serialize};
 
-use crate::model::{Name, SourceIx, Time};
+use crate::model::{Name, SourceIx, Time, address_name};
 use crate::notice::{
-    Acknowledgement, Compared, Facts, Happening, Kind, NamedSource, Notice, Priority, SPREAD_UNIT,
-    Since, State, after,
+    Compared, Facts, Handling, Happening, Kind, NamedSource, Notice, Priority, SPREAD_UNIT, State,
 };
 use crate::stats::dist;
 use crate::verdict::{
-    Aspect, Call, Estimate, Examination, Located, Shares, Yardstick, locate, returned, size_since,
+    Aspect, Call, Estimate, Examination, Yardstick, cost_per_hour, locate, returned,
     values_to_clear,
 };
 use crate::window::Windows;
 
 use super::Plant;
+use super::apart::{Adjusted, Apart, farness};
 use super::bank::Watched;
-
-/// Updates of an open notice are sent at most this often.
-const SEND_EVERY_US: i64 = 10_000_000;
+use super::papers::Sent;
 
 /// A source whose values lie outside the limits this often makes the notice a high one.
 const MUCH_OUTSIDE: f64 = 0.01;
-
-/// A source that is apart, or was.
-#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
-pub struct Apart {
-    pub source: SourceIx,
-    pub located: Place,
-    pub size: Estimate,
-    /// The largest size seen.
-    pub worst: Estimate,
-    pub cleared: bool,
-}
-
-/// Since when, in the window's order and in time.
-#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
-pub struct Place {
-    pub start: i64,
-    pub since: Since,
-}
 
 /// One incident and its notice.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
@@ -54,7 +34,7 @@ pub struct Incident {
     /// The newest place in the windows at the call: evidence of a return comes from later ones.
     pub called_at: i64,
     /// The notice as it was last sent, and when.
-    pub sent: Option<(Time, Arc<Notice>)>,
+    pub sent: Sent,
 }
 
 /// What an incident needs to know of its bank.
@@ -69,7 +49,7 @@ pub struct Surroundings<'a> {
 }
 
 impl Surroundings<'_> {
-    fn yard<'b>(&self, aspect: Aspect, reference: &'b [SourceIx]) -> Yardstick<'b> {
+    pub fn yard<'b>(&self, aspect: Aspect, reference: &'b [SourceIx]) -> Yardstick<'b> {
         Yardstick {
             reference,
             margin: match aspect {
@@ -91,25 +71,14 @@ impl Surroundings<'_> {
 impl Incident {
     /// Begins an incident; `None` when nothing in the values bears the call out.
     pub fn begin(call: &Call, id: Name, about: &Surroundings) -> Option<Self> {
-        let yard = about.yard(call.aspect, &call.reference);
-        let apart: Vec<Apart> = call
-            .named
-            .iter()
-            .filter_map(|&source| {
-                Some((
-                    source,
-                    locate(&about.exam.data, source, call.aspect, &yard)?,
-                ))
-            })
-            .map(|(source, located)| Apart::new(source, &located))
-            .collect();
+        let apart = Apart::all(call, about);
         let first = apart.first()?;
         let notice = Notice {
             id,
             plant: about.plant.name.clone(),
             bank: about.watched.bank.name.clone(),
-            kind: kind(call),
-            state: after(State::Normal, Happening::Occurs),
+            kind: kind(call, about),
+            state: State::Normal,
             priority: Priority::Medium,
             sources: Vec::new(),
             unit: match call.aspect {
@@ -127,9 +96,16 @@ impl Incident {
             url: format!(
                 "{}/banks/{}",
                 about.plant.pages,
-                address(&about.watched.bank.name)
+                address_name(&about.watched.bank.name)
             ),
             span: call.span,
+            handling: Handling::default(),
+            pattern: call.causes.pattern.clone(),
+            slip: call.causes.slip,
+            common_movement: call.causes.common_movement,
+            even_mean: None,
+            cost_per_hour: None,
+            adjustment: None,
         };
         let mut incident = Self {
             notice: Arc::new(notice),
@@ -139,13 +115,14 @@ impl Incident {
             apart,
             sent: None,
         };
+        incident.happen(Happening::Occurs, about.now);
         incident.tell(about);
         Some(incident)
     }
 
     /// Whether it still holds.
     pub fn is_active(&self) -> bool {
-        self.notice.state.is_active()
+        self.notice.holds()
     }
 
     /// The sources it is about now.
@@ -179,11 +156,14 @@ impl Incident {
     /// where the evidence of each return begins.
     pub fn follow(&mut self, about: &Surroundings) -> Vec<(SourceIx, i64)> {
         self.join(about);
+        self.explain(about);
         let mut back = Vec::new();
         let yard = about.yard(self.aspect, &self.reference);
         for one in self.apart.iter_mut().filter(|a| !a.cleared) {
             let data = &about.exam.data;
-            match returned(data, one.source, self.aspect, &yard, self.called_at) {
+            let after = one.adjusted.map_or(i64::MIN, |a| a.from.saturating_sub(1));
+            let after = after.max(self.called_at);
+            match returned(data, one.source, self.aspect, &yard, after) {
                 Some(from) => {
                     one.cleared = true;
                     back.push((one.source, from.place));
@@ -192,10 +172,22 @@ impl Incident {
             }
         }
         if self.apart.iter().all(|a| a.cleared) {
-            self.happen(Happening::Returns, about.now);
+            self.happen(about.plant.manners.returns(), about.now);
         }
         self.tell(about);
         back
+    }
+
+    /// What explains it is found again as values arrive; a look that no longer calls changes nothing.
+    fn explain(&mut self, about: &Surroundings) {
+        let Some(call) = about.exam.calls.iter().find(|c| c.aspect == self.aspect) else {
+            return;
+        };
+        let causes = call.causes.clone();
+        let notice = Arc::make_mut(&mut self.notice);
+        notice.pattern = causes.pattern;
+        notice.slip = causes.slip;
+        notice.common_movement = causes.common_movement;
     }
 
     /// Sources that the look names besides, each beyond chance at the look's own share of the budget:
@@ -224,27 +216,43 @@ impl Incident {
         }
     }
 
-    /// A person acknowledges; asking twice changes nothing.
-    pub fn acknowledge(&mut self, acknowledgement: Acknowledgement) {
-        let at = acknowledgement.at;
-        if after(self.notice.state, Happening::Acknowledged) == self.notice.state {
+    /// Takes in what the watch calls while this incident is open; says whether anybody joined.
+    pub fn admit(&mut self, call: &Call, about: &Surroundings) -> bool {
+        let joining = Apart::all(call, about);
+        if joining.is_empty() {
+            return false;
+        }
+        for one in joining {
+            self.reference.retain(|s| *s != one.source);
+            self.apart.retain(|a| a.source != one.source);
+            self.apart.push(one);
+        }
+        self.tell(about);
+        true
+    }
+
+    /// A source that it is about was adjusted: evidence counts from `from` on.
+    pub fn adjusted(&mut self, source: SourceIx, by: Option<f64>, at: Time, from: i64) {
+        if !self.is_about(source) {
             return;
         }
-        Arc::make_mut(&mut self.notice).acknowledged = Some(acknowledgement);
-        self.happen(Happening::Acknowledged, at);
+        if let Some(one) = self.apart.iter_mut().find(|a| a.source == source) {
+            one.adjusted = Some(Adjusted {
+                at,
+                by,
+                from,
+                before: one.size,
+            });
+        }
+    }
+
+    /// Another product: evidence counts from `from` on.
+    pub fn changed_over(&mut self, from: i64) {
+        self.called_at = self.called_at.max(from.saturating_sub(1));
     }
 
     fn happen(&mut self, happening: Happening, now: Time) {
-        let state = after(self.notice.state, happening);
-        if state == self.notice.state {
-            return;
-        }
-        let notice = Arc::make_mut(&mut self.notice);
-        notice.state = state;
-        notice.changed = now;
-        if happening == Happening::Returns {
-            notice.returned = Some(now);
-        }
+        Arc::make_mut(&mut self.notice).happen(happening, now);
     }
 
     /// Puts the present figures into the notice's fields and words.
@@ -257,6 +265,9 @@ impl Incident {
             farness(self.aspect, &b.size).total_cmp(&farness(self.aspect, &a.size))
         });
         let sources: Vec<NamedSource> = named.iter().map(|a| a.told(about)).collect();
+        let adjusted = named.iter().filter(|a| a.adjusted.is_some());
+        let newest = adjusted.max_by_key(|a| a.adjusted.map(|a| a.at));
+        let adjustment = newest.and_then(|a| a.adjustment(about, self.aspect));
         let all: Vec<SourceIx> = self.apart.iter().map(|a| a.source).collect();
         let since = named[0].located.since;
         let facts = Facts {
@@ -269,20 +280,29 @@ impl Incident {
             compared: if is_pair(&all, &self.reference) {
                 Compared::Mutually
             } else {
-                Compared::WithEven
+                Compared::of(&about.watched.bank, self.notice.kind)
             },
             even_mean: self.even_mean(about),
+            pattern: self.notice.pattern.as_ref(),
+            slip: self.notice.slip,
+            common_movement: self.notice.common_movement,
+            cost_per_hour: cost_per_hour(&about.watched.bank, &about.exam.looks, about.interval_us),
             clears_in_us: self.clears_in_us(about),
             returned: self.notice.returned,
+            adjustment: adjustment.as_ref(),
             url: &self.notice.url,
         };
         let words = facts.words();
+        let (even_mean, cost) = (facts.even_mean, facts.cost_per_hour);
         let priority = self.priority(about, &sources);
         let changed = self.notice.sources != sources || self.notice.since != since;
         let notice = Arc::make_mut(&mut self.notice);
         if changed {
             notice.changed = about.now;
         }
+        notice.even_mean = even_mean;
+        notice.cost_per_hour = cost;
+        notice.adjustment = adjustment;
         notice.sources = sources;
         notice.since = since;
         notice.priority = priority;
@@ -343,90 +363,6 @@ impl Incident {
         let above = c.upper.map_or(0.0, |u| dist::normal::sf((u - mean) / sd));
         below + above
     }
-
-    /// Whether people should receive it now: another set, state or priority at once; another size
-    /// when it moved by more than half its interval; never sooner than ten seconds after the last.
-    pub fn wants_sending(&self, now: Time) -> bool {
-        let Some((at, last)) = &self.sent else {
-            return true;
-        };
-        let n = &self.notice;
-        let set = |n: &Notice| {
-            let mut names: Vec<Name> = n.sources.iter().map(|s| s.source.clone()).collect();
-            names.sort();
-            names
-        };
-        if n.state != last.state {
-            return true;
-        }
-        let moved = n.sources.iter().zip(&last.sources).any(|(a, b)| {
-            a.source == b.source && (a.deviation - b.deviation).abs() > (b.high - b.low) / 2.0
-        });
-        let other = set(n) != set(last) || n.priority != last.priority;
-        (other || moved) && now.us_since(*at) >= SEND_EVERY_US
-    }
-}
-
-impl Apart {
-    fn new(source: SourceIx, located: &Located) -> Self {
-        Self {
-            source,
-            located: Place::of(located),
-            size: located.size,
-            worst: located.size,
-            cleared: false,
-        }
-    }
-
-    fn update(&mut self, about: &Surroundings, aspect: Aspect, yard: &Yardstick) {
-        let data = &about.exam.data;
-        // A start that has left the windows is kept: what is left would only seem to start later.
-        let reaches_back = data.oldest_place().is_some_and(|p| p < self.located.start);
-        if reaches_back && let Some(located) = locate(data, self.source, aspect, yard) {
-            self.located = Place::of(&located);
-            self.size = located.size;
-        } else if let Some(size) = size_since(data, self.source, aspect, yard, self.located.start) {
-            self.size = size;
-        }
-        if farness(aspect, &self.size) > farness(aspect, &self.worst) {
-            self.worst = self.size;
-        }
-    }
-
-    /// Its size now; what it was at worst once it is back.
-    fn told(&self, about: &Surroundings) -> NamedSource {
-        let size = if self.cleared {
-            &self.worst
-        } else {
-            &self.size
-        };
-        NamedSource {
-            source: about.watched.name(self.source),
-            deviation: size.value,
-            low: size.low,
-            high: size.high,
-        }
-    }
-}
-
-impl Place {
-    fn of(located: &Located) -> Self {
-        Self {
-            start: located.start.place,
-            since: Since {
-                at: located.start.taken,
-                earliest: located.earliest.taken,
-                latest: located.latest.taken,
-            },
-        }
-    }
-}
-
-fn farness(aspect: Aspect, size: &Estimate) -> f64 {
-    match aspect {
-        Aspect::Level => size.value.abs(),
-        Aspect::Spread => size.value.ln().abs(),
-    }
 }
 
 /// Whether the sources are compared only with each other: of two, nobody is the culprit.
@@ -434,11 +370,13 @@ fn is_pair(named: &[SourceIx], reference: &[SourceIx]) -> bool {
     named.iter().any(|s| reference.contains(s))
 }
 
-fn kind(call: &Call) -> Kind {
+fn kind(call: &Call, about: &Surroundings) -> Kind {
     match call.aspect {
         Aspect::Level if is_pair(&call.named, &call.reference) => Kind::LevelApart,
         Aspect::Spread => Kind::SpreadApart,
         // From four sources on, half of them apart means two groups and no culprit.
+        // Compared with one reference source, how many are apart says nothing of a split.
+        Aspect::Level if about.watched.bank.reference.is_some() => Kind::LevelApart,
         Aspect::Level
             if call.named.len() + call.reference.len() >= 4
                 && call.named.len() >= call.reference.len() =>
@@ -450,7 +388,7 @@ fn kind(call: &Call) -> Kind {
 }
 
 fn share(about: &Surroundings, aspect: Aspect) -> f64 {
-    let shares = Shares::of(&about.watched.bank);
+    let shares = about.exam.shares;
     match aspect {
         Aspect::Level => shares.level,
         Aspect::Spread => shares.spread,
@@ -461,17 +399,4 @@ fn share(about: &Surroundings, aspect: Aspect) -> f64 {
 fn newest_place(windows: &Windows) -> i64 {
     let newest = windows.rings().iter().filter_map(|r| r.newest());
     newest.map(|e| e.place).max().unwrap_or(i64::MIN)
-}
-
-/// A name as part of an address (RFC 3986): everything but the unreserved is written in percents.
-fn address(name: &str) -> String {
-    let mut text = String::with_capacity(name.len());
-    for byte in name.bytes() {
-        if byte.is_ascii_alphanumeric() || b"-._~".contains(&byte) {
-            text.push(char::from(byte));
-        } else {
-            text.push_str(&format!("%{byte:02X}"));
-        }
-    }
-    text
 }

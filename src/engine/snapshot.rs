@@ -6,11 +6,13 @@ use std::sync::Arc;
 
 use serde::{Deserialize, Serialize};
 
-use crate::model::{Bank, Name, Reason, Refusal, SourceIx, Time, Value};
-use crate::notice::{Kind, Notice};
-use crate::verdict::{Estimate, Look};
+use crate::model::{Bank, LineEvent, Name, Reason, Refusal, SourceIx, Time, Value};
+use crate::notice::{Kind, Manners, Notice, Route};
+use crate::verdict::watch::{Figures, Progress, Reading};
+use crate::verdict::{BudgetKept, Estimate, Look};
 
 use super::condition::Condition;
+use super::papers::Raised;
 
 /// What the engine knows of the plant besides its banks.
 #[derive(Clone, Debug)]
@@ -21,6 +23,10 @@ pub struct Plant {
     pub zone: jiff::tz::TimeZone,
     /// Where the pages are, without a slash at the end (`http://127.0.0.1:7310`).
     pub pages: String,
+    /// Where notices go besides the broker, in the order of the configuration.
+    pub routes: Vec<Route>,
+    /// Its manners with notices.
+    pub manners: Manners,
 }
 
 /// The present.
@@ -38,10 +44,36 @@ pub struct Snapshot {
     pub banks: Vec<Arc<BankView>>,
     /// Refusals that belong to no bank.
     pub refusals: Vec<RefusalView>,
+    /// The ways out: the broker first, then the outlets in the order of the configuration.
+    pub outlets: Vec<OutletView>,
+}
+
+/// A way out, now.
+#[derive(Clone, Debug, PartialEq, Eq)]
+pub struct OutletView {
+    /// Its name.
+    pub name: Name,
     /// Deliveries not yet confirmed.
-    pub outbox: usize,
-    /// What the outlets last complained of.
-    pub outbox_trouble: Option<String>,
+    pub waiting: usize,
+    /// What it last complained of; none when its last delivery was confirmed.
+    pub trouble: Option<String>,
+    /// Deliveries confirmed since the process started.
+    pub delivered: u64,
+    /// Failures told since the process started; what failed is kept and sent again.
+    pub failed: u64,
+}
+
+impl OutletView {
+    /// A way out that nothing has been sent on.
+    pub fn new(name: Name) -> Self {
+        Self {
+            name,
+            waiting: 0,
+            trouble: None,
+            delivered: 0,
+            failed: 0,
+        }
+    }
 }
 
 /// A bank, now.
@@ -66,14 +98,63 @@ pub struct BankView {
     pub refusals: Vec<RefusalView>,
     /// How the cycles (or slots) came in; `None` without pairing.
     pub cycles: Option<Cycles>,
+    /// The stop, while the line stands.
+    pub stopped: Option<LineEvent>,
+    /// What the line makes, since the first changeover.
+    pub product: Option<Name>,
+    /// The newest line events, oldest first.
+    pub line_events: Vec<LineEvent>,
+    /// What the watch says of itself; `None` without pairing.
+    pub watch: Option<WatchView>,
     /// The usual time between values of a source.
     pub interval_us: Option<i64>,
     /// When the next look is due, if anything new has arrived.
     pub next_look: Option<Time>,
     /// The newest time of a measurement that was taken in.
     pub newest_taken: Option<Time>,
-    /// Mean of all sources over the longest span (of the newest look), in the unit.
+    /// Mean of all sources over [`BankView::shown_span`], in the unit.
     pub mean: Option<f64>,
+    /// Whether it kept its call budget; `None` before any time has passed.
+    pub kept: Option<BudgetKept>,
+    /// The newest notices raised, oldest first.
+    pub raised_at: Vec<Raised>,
+    /// What gathers of the day; `None` where the sources are no shifts.
+    pub shifts: Option<ShiftsView>,
+}
+
+/// The shifts of a bank whose sources they are, now.
+#[derive(Clone, Debug, PartialEq)]
+pub struct ShiftsView {
+    /// Those that run; the one that ends first comes first.
+    pub running: Vec<RunningShift>,
+    /// Shifts of a day that had fewer values than [`ShiftsView::fewest`], and did not enter.
+    pub skipped: u64,
+    /// Values without which a shift of a day does not enter.
+    pub fewest: u64,
+}
+
+/// A shift of a day, so far.
+#[derive(Clone, Debug, PartialEq)]
+pub struct RunningShift {
+    /// The shift.
+    pub name: Name,
+    /// When it is over.
+    pub end: Time,
+    /// Values so far.
+    pub count: u64,
+    /// Their mean, in the unit.
+    pub mean: f64,
+}
+
+/// The watch of a bank, now.
+#[derive(Clone, Debug, PartialEq)]
+pub struct WatchView {
+    /// Whether it decides yet.
+    pub progress: Progress,
+    /// How far each part is from its threshold; empty while it learns.
+    pub readings: Vec<Reading>,
+    /// What it learnt, and how the budget became its thresholds.
+    pub figures: Figures,
 }
 
 /// Counts of cycles or slots since the bank's windows began.
@@ -99,6 +180,8 @@ pub enum SourceState {
     Present,
     /// Has delivered nothing for longer than it may.
     Silent,
+    /// Taken out of use by a person.
+    OutOfUse,
 }
 
 impl SourceState {
@@ -109,11 +192,13 @@ impl SourceState {
             Self::New => "new",
             Self::Present => "present",
             Self::Silent => "silent",
+            Self::OutOfUse => "out_of_use",
         }
     }
 }
 
-/// A source, now. Figures come from the newest look that could judge it, over the longest such span.
+/// A source, now. Figures come from the newest look over [`BankView::shown_span`]; those of a source
+/// that an open notice names rest on the values since it left.
 #[derive(Clone, Debug)]
 pub struct SourceView {
     /// Which.
@@ -138,6 +223,9 @@ pub struct SourceView {
     pub sd_ratio: Option<Estimate>,
     /// The kinds of open notices that name it.
     pub named: Vec<Kind>,
+    /// Received minus taken, the median of the newest values, in microseconds; negative where its clock
+    /// is ahead.
+    pub lag_us: Option<i64>,
 }
 
 /// The last refusal of one kind, and how many there were.

@@ -3,6 +3,7 @@
 use serde::{Deserialize, Serialize};
 
 use crate::model::{Bank, Name, Time};
+use crate::verdict::Usual;
 use crate::window::Ring;
 
 use super::SourceState;
@@ -30,6 +31,12 @@ pub struct Source {
     pub last_taken: Option<Time>,
     pub last_received: Option<Time>,
     pub silent: bool,
+    /// Taken out of use by a person.
+    pub out_of_use: bool,
+    /// When it was last put back in use.
+    pub in_use_since: Option<Time>,
+    /// Where it usually stands, once that is learnt.
+    pub usual: Option<Usual>,
     /// The margin with which it is watched since it cleared, where that is above the bank's.
     pub cleared_margin: f64,
 }
@@ -45,12 +52,18 @@ impl Source {
             last_taken: None,
             last_received: None,
             silent: false,
+            out_of_use: false,
+            in_use_since: None,
+            usual: None,
             cleared_margin: 0.0,
         }
     }
 
     pub fn state(&self) -> SourceState {
         match self {
+            Self {
+                out_of_use: true, ..
+            } => SourceState::OutOfUse,
             Self { silent: true, .. } => SourceState::Silent,
             Self { accepted: 0, .. } => SourceState::Awaited,
             Self {
@@ -65,10 +78,11 @@ impl Source {
     /// Whether looks compare it.
     pub fn takes_part(&self) -> bool {
         let enough = if self.discovered { NEW_UNTIL } else { 1 };
-        !self.retired && self.accepted >= enough
+        !self.retired && !self.out_of_use && self.accepted >= enough
     }
 
-    /// When it counts as silent if nothing arrives; `began` stands in for a source that never did.
+    /// When it counts as silent if nothing arrives; `began` is when the bank or the line last started, and
+    /// nobody is silent for what came before.
     pub fn silent_from(&self, bank: &Bank, ring: &Ring, began: Time) -> Time {
         let limit = bank.silent_after_us.unwrap_or_else(|| {
             let usual = usual_interval_us(ring).unwrap_or(0);
@@ -76,7 +90,8 @@ impl Source {
                 .saturating_mul(SILENT_INTERVALS)
                 .max(SILENT_AT_LEAST_US)
         });
-        self.last_received.unwrap_or(began).plus_us(limit)
+        let heard = self.last_received.max(self.in_use_since);
+        heard.unwrap_or(began).max(began).plus_us(limit)
     }
 }
 

@@ -2,22 +2,22 @@
 //! receipt with which it is acknowledged once all of them are durable or counted.
 //!
 //! Pure: bytes in, words out. What must hold: a message gives at least one measurement or refusal,
-//! so nothing vanishes; the receipt's hash stays the same from version to version, because it is
+//! so nothing vanishes, unless its form says itself that it carries no values (a keep-alive); the receipt's hash stays the same from version to version, because it is
 //! compared with what an earlier process kept.
 
-use crate::model::{Measurement, Reason, Refusal};
-use crate::settings::Feed;
+use crate::model::{BankIx, Measurement, Reason, Refusal, Time};
+use crate::settings::{Belief, Feed, PayloadForm};
 
 use super::names::Names;
-use super::payload::{self, Fault, excerpt};
+use super::payload::{self, Decodings, Fault, Message, Reader, excerpt};
 use super::topics::Topics;
 
 /// What one message became.
 #[derive(Clone, Debug, PartialEq)]
 pub struct Arrival {
-    /// One per bank that took it.
+    /// At least one per bank that took it.
     pub measurements: Vec<Measurement>,
-    /// One per bank that could not, or one without a bank.
+    /// One for each item that a bank could not take, or one without a bank.
     pub refusals: Vec<Refusal>,
     /// Give it back when everything above is durable or counted.
     pub receipt: Receipt,
@@ -55,12 +55,23 @@ fn fnv1a<'a>(bytes: impl Iterator<Item = &'a u8>) -> u64 {
     })
 }
 
+impl Arrival {
+    /// Nothing yet.
+    pub(super) fn empty(receipt: Receipt) -> Self {
+        Self {
+            measurements: Vec::new(),
+            refusals: Vec::new(),
+            receipt,
+        }
+    }
+}
+
 /// Turns messages into measurements and refusals.
 #[derive(Debug)]
 pub struct Decoder {
-    /// By bank.
-    feeds: Vec<Feed>,
-    most_bytes: usize,
+    /// By bank; `None` where a payload means nothing without those before it (Sparkplug).
+    readers: Vec<Option<Reader>>,
+    beliefs: Vec<Belief>,
     topics: Topics,
     names: Names,
 }
@@ -68,10 +79,14 @@ pub struct Decoder {
 impl Decoder {
     /// For these feeds, in the order of the banks; a payload larger than `most_bytes` is refused.
     pub fn new(feeds: Vec<Feed>, most_bytes: usize) -> Self {
+        let reader = |feed: &Feed| match &feed.payload {
+            PayloadForm::Sparkplug(_) => None,
+            form => Some(Reader::new(form.clone(), most_bytes)),
+        };
         Self {
-            topics: Topics::new(&feeds),
-            feeds,
-            most_bytes,
+            topics: Topics::new(feeds.iter().filter(|feed| reader(feed).is_some())),
+            readers: feeds.iter().map(reader).collect(),
+            beliefs: feeds.into_iter().map(|feed| feed.belief).collect(),
             names: Names::default(),
         }
     }
@@ -81,35 +96,31 @@ impl Decoder {
         self.topics.filters()
     }
 
-    /// Decodes a message for every bank it belongs to.
-    pub fn decode(&mut self, topic: &str, payload: &[u8], receipt: Receipt) -> Arrival {
-        let mut arrival = Arrival {
-            measurements: Vec::new(),
-            refusals: Vec::new(),
-            receipt,
-        };
+    /// Decodes a message that arrives `now` for every bank it belongs to.
+    pub fn decode(&mut self, topic: &str, payload: &[u8], receipt: Receipt, now: Time) -> Arrival {
+        let mut arrival = Arrival::empty(receipt);
+        let mut nobody = true;
         for (bank, topic_source) in self.topics.route(topic) {
-            let Some(feed) = self.feeds.get(bank.index()) else {
+            let reader = self.readers.get_mut(bank.index()).and_then(Option::as_mut);
+            let belief = self.beliefs.get(bank.index());
+            let (Some(reader), Some(belief)) = (reader, belief) else {
                 continue;
             };
-            match payload::decode(&feed.payload, payload, topic_source, self.most_bytes) {
-                Ok(decoded) => arrival.measurements.push(Measurement {
-                    bank,
-                    source: self.names.shared(&decoded.source),
-                    value: decoded.value,
-                    taken: decoded.taken,
-                    cycle: decoded.cycle,
-                }),
-                Err(Fault { reason, detail }) => arrival.refusals.push(Refusal {
-                    bank: Some(bank),
-                    reason,
-                    topic: self.names.shared(&excerpt(topic.as_bytes())),
-                    detail,
-                    excerpt: excerpt(payload),
-                }),
-            }
+            nobody = false;
+            let message = Message {
+                payload,
+                topic_source,
+                now,
+            };
+            let decoded = reader.read(message);
+            let from = From {
+                bank,
+                topic,
+                payload,
+            };
+            enter(&mut arrival, from, belief, decoded, &mut self.names);
         }
-        if arrival.measurements.is_empty() && arrival.refusals.is_empty() {
+        if nobody {
             let detail = "the topic belongs to no bank; if the configuration changed, the broker \
                           may still hold an earlier subscription of this client id";
             arrival.refusals = self.refusals(topic, payload, Reason::NoBank, detail);
@@ -139,6 +150,47 @@ impl Decoder {
             refusals.push(refusal(None));
         }
         refusals
+    }
+}
+
+/// Where decodings come from.
+#[derive(Clone, Copy, Debug)]
+pub(super) struct From<'m> {
+    pub(super) bank: BankIx,
+    pub(super) topic: &'m str,
+    pub(super) payload: &'m [u8],
+}
+
+/// Adds what a message became for one bank, as far as it is believed.
+pub(super) fn enter(
+    arrival: &mut Arrival,
+    from: From<'_>,
+    belief: &Belief,
+    decoded: Decodings<'_>,
+    names: &mut Names,
+) {
+    for one in decoded {
+        let one = one.and_then(|one| {
+            let value = payload::believed(belief, one.value);
+            let value = value.map_err(|fault| fault.of_source(&one.source))?;
+            Ok(payload::Decoded { value, ..one })
+        });
+        match one {
+            Ok(decoded) => arrival.measurements.push(Measurement {
+                bank: from.bank,
+                source: names.shared(&decoded.source),
+                value: decoded.value,
+                taken: decoded.taken,
+                cycle: decoded.cycle,
+            }),
+            Err(Fault { reason, detail }) => arrival.refusals.push(Refusal {
+                bank: Some(from.bank),
+                reason,
+                topic: names.shared(&excerpt(from.topic.as_bytes())),
+                detail,
+                excerpt: excerpt(from.payload),
+            }),
+        }
     }
 }
 
@@ -175,12 +227,12 @@ mod tests {
     fn one_message_serves_every_bank_it_belongs_to() {
         let feeds = [
             ("line/{source}/net", PayloadForm::Number),
-            ("line/+/net", PayloadForm::Json(fixture::pointers())),
+            ("line/+/net", fixture::json(fixture::fields())),
             ("line/#", PayloadForm::Number),
         ];
         let mut decoder = Decoder::new(fixture::feeds(feeds), 4096);
         assert_eq!(decoder.filters(), ["line/#"]);
-        let got = decoder.decode("line/07/net", b"503.1", RECEIPT);
+        let got = decoder.decode("line/07/net", b"503.1", RECEIPT, Time::from_us(0));
         let [measurement] = got.measurements.as_slice() else {
             panic!("{got:?}")
         };
@@ -199,7 +251,7 @@ mod tests {
     fn a_topic_of_no_bank_is_refused_without_one() {
         let feeds = fixture::feeds([("line/{source}", PayloadForm::Number)]);
         let mut decoder = Decoder::new(feeds, 4096);
-        let got = decoder.decode("other/\u{1b}7", b"503.1", RECEIPT);
+        let got = decoder.decode("other/\u{1b}7", b"503.1", RECEIPT, Time::from_us(0));
         let [refusal] = got.refusals.as_slice() else {
             panic!("{got:?}")
         };

@@ -6,6 +6,7 @@
 //! | [`topics`] | which filters to subscribe, and which banks a topic belongs to. Pure |
 //! | [`names`] | one shared copy of each name, in bounded memory |
 //! | [`arrival`] | one message -> its measurements and refusals for all banks. Pure |
+//! | [`nodes`] | the same for Sparkplug's edge nodes, whose messages build on each other. Pure |
 //! | [`mqtt`] | the connection that listens |
 //! | [`recording`] | CSV and JSON lines from files, for `rehearse` |
 //!
@@ -18,6 +19,7 @@ pub mod arrival;
 mod fixture;
 pub mod mqtt;
 pub mod names;
+pub mod nodes;
 pub mod payload;
 pub mod recording;
 pub mod topics;

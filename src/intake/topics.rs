@@ -14,7 +14,16 @@ use crate::settings::{Feed, TopicTemplate};
 #[derive(Clone, Debug)]
 pub struct Topics {
     filters: Vec<String>,
-    routes: Vec<(BankIx, Pattern)>,
+    routes: Vec<Route>,
+}
+
+/// Which topics belong to a bank.
+#[derive(Clone, Debug)]
+struct Route {
+    bank: BankIx,
+    pattern: Pattern,
+    /// What stands for the source, where no message names one.
+    stand_in: Option<&'static str>,
 }
 
 /// A template taken apart.
@@ -35,13 +44,15 @@ enum Level {
 
 impl Topics {
     /// The topics of these feeds.
-    pub fn new(feeds: &[Feed]) -> Self {
-        let routes: Vec<_> = feeds
-            .iter()
-            .map(|feed| (feed.bank, Pattern::new(&feed.topic)))
-            .collect();
+    pub fn new<'f>(feeds: impl IntoIterator<Item = &'f Feed>) -> Self {
+        let route = |feed: &Feed| Route {
+            bank: feed.bank,
+            pattern: Pattern::new(&feed.topic),
+            stand_in: feed.told_by.stand_in(),
+        };
+        let routes: Vec<_> = feeds.into_iter().map(route).collect();
         let mut kept: Vec<&Pattern> = Vec::new();
-        for (_, pattern) in &routes {
+        for pattern in routes.iter().map(|route| &route.pattern) {
             if !kept.iter().any(|other| other.covers(pattern)) {
                 kept.retain(|other| !pattern.covers(other));
                 kept.push(pattern);
@@ -56,14 +67,14 @@ impl Topics {
         &self.filters
     }
 
-    /// The banks that a topic belongs to, each with the source that the topic names.
+    /// The banks that a topic belongs to, each with the source that the topic names, or what stands for it.
     pub fn route<'t>(
         &self,
         topic: &'t str,
     ) -> impl Iterator<Item = (BankIx, Option<&'t str>)> + use<'_, 't> {
-        self.routes.iter().filter_map(move |(bank, pattern)| {
-            let source = pattern.matches(topic)?;
-            Some((*bank, source))
+        self.routes.iter().filter_map(move |route| {
+            let source = route.pattern.matches(topic)?;
+            Some((route.bank, source.or(route.stand_in)))
         })
     }
 }

@@ -5,7 +5,7 @@ use std::str::FromStr;
 
 use serde::{Deserialize, Serialize};
 
-use super::{Name, US_PER_DAY, US_PER_S, Value};
+use super::{Calendar, Name, US_PER_DAY, US_PER_S, Value};
 
 /// A bank by its place in the configuration, from 0.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord, Hash, Serialize, Deserialize)]
@@ -49,8 +49,9 @@ pub struct Characteristic {
     pub upper: Option<f64>,
 }
 
-/// Which sources a bank has.
+/// Which sources a bank has. Kept with evidence as names alone: what the values mean then is in the values.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+#[serde(from = "KeptSources", into = "KeptSources")]
 pub enum Sources {
     /// Named in physical order.
     Listed(Vec<Name>),
@@ -59,6 +60,46 @@ pub enum Sources {
         /// The configured `most_sources`.
         most: u16,
     },
+    /// The shifts that take turns on one machine. A value is the mean of one shift's production on one
+    /// day; what arrives belongs to the shift in which it was taken.
+    Shifts(Calendar),
+}
+
+/// [`Sources`] as kept: shifts as the names they have.
+#[derive(Serialize, Deserialize)]
+enum KeptSources {
+    Listed(Vec<Name>),
+    Discover { most: u16 },
+}
+
+impl From<Sources> for KeptSources {
+    fn from(sources: Sources) -> Self {
+        match sources {
+            Sources::Listed(names) => Self::Listed(names),
+            Sources::Discover { most } => Self::Discover { most },
+            Sources::Shifts(calendar) => Self::Listed(calendar.names().cloned().collect()),
+        }
+    }
+}
+
+impl From<KeptSources> for Sources {
+    fn from(kept: KeptSources) -> Self {
+        match kept {
+            KeptSources::Listed(names) => Self::Listed(names),
+            KeptSources::Discover { most } => Self::Discover { most },
+        }
+    }
+}
+
+impl Sources {
+    /// The names, where they are known beforehand, in their order.
+    pub fn names(&self) -> Option<Vec<Name>> {
+        match self {
+            Self::Listed(names) => Some(names.clone()),
+            Self::Shifts(calendar) => Some(calendar.names().cloned().collect()),
+            Self::Discover { .. } => None,
+        }
+    }
 }
 
 /// How values of different sources belong together.
@@ -73,6 +114,9 @@ pub enum Pairing {
     },
     /// Not at all.
     None,
+    // Kept states name a pairing by its place, so new ones come last.
+    /// By production day, where the sources are shifts.
+    Day,
 }
 
 impl Pairing {
@@ -89,6 +133,40 @@ pub enum Layout {
     Row,
     /// Around a rotary machine.
     Ring,
+}
+
+/// Sources that share a part, so that its fault moves them together.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+pub struct Group {
+    /// What they share ("supply a").
+    pub name: Name,
+    /// The sources, in physical order.
+    pub members: Vec<Name>,
+}
+
+/// What is known of lasting differences between sources.
+#[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
+pub enum Offsets {
+    /// Nothing: sources are compared as they are.
+    #[default]
+    None,
+    /// Each source is compared with its own usual place.
+    Learn,
+    /// These, in the unit, are subtracted; a source that is not listed has none.
+    Table(Vec<(Name, f64)>),
+}
+
+impl Offsets {
+    /// The known offset of a source, in the unit.
+    pub fn of(&self, source: &str) -> f64 {
+        match self {
+            Self::None | Self::Learn => 0.0,
+            Self::Table(table) => {
+                let known = table.iter().find(|(name, _)| **name == *source);
+                known.map_or(0.0, |(_, offset)| *offset)
+            }
+        }
+    }
 }
 
 /// How many false calls per time a bank may cause.
@@ -115,6 +193,16 @@ impl Budget {
         } else {
             Err(BudgetError)
         }
+    }
+
+    /// False calls allowed in [`Budget::days`].
+    pub fn calls(self) -> f64 {
+        self.calls
+    }
+
+    /// The days that the allowance is for.
+    pub fn days(self) -> f64 {
+        self.days
     }
 
     /// False calls allowed per microsecond of calendar time.
@@ -174,14 +262,30 @@ pub struct Bank {
     pub silent_after_us: Option<i64>,
     /// A value taken longer ago than this is refused.
     pub oldest_us: i64,
-    /// How pages draw the sources.
+    /// How the sources stand in the machine: where patterns are looked for, and how pages draw them.
     pub layout: Layout,
+    /// Sources that share a part.
+    pub groups: Vec<Group>,
+    /// What one unit given away costs; the currency is the plant's own.
+    pub cost_per_unit: Option<f64>,
+    /// The source that all others are compared with.
+    pub reference: Option<Name>,
+    /// What is known of lasting differences.
+    pub offsets: Offsets,
 }
 
 impl Bank {
     /// The longest span: how many values a source's window holds.
     pub fn window_length(&self) -> usize {
         self.spans.iter().copied().max().unwrap_or(2)
+    }
+
+    /// Whether the watch decides when to call. It needs cycles that sources share, and places that are
+    /// known: learnt ones come with chance of their own, which only the look pays for. With one value a
+    /// day it would learn for years, so banks of shifts are left to the look with the whole budget.
+    pub fn is_watched(&self) -> bool {
+        let shares_cycles = matches!(self.pairing, Pairing::Cycle | Pairing::Slot { .. });
+        shares_cycles && self.offsets != Offsets::Learn
     }
 
     /// Looks per second, as the budget counts them.

@@ -45,11 +45,28 @@ pub enum Reason {
     TooOld,
     /// Taken more than five minutes ahead of now.
     TooFarAhead,
+    /// Taken while the line stands.
+    LineStopped,
+    // Kept records name a reason by its place, so new ones come last.
+    /// One of the `sentinels`: the instrument's word for having no value.
+    Sentinel,
+    /// Outside `plausible`: no value of this characteristic can lie there.
+    Implausible,
+    /// The unit in the payload is not the bank's.
+    WrongUnit,
+    /// The sender itself says that the value is not good.
+    BadQuality,
+    /// Sent without a birth before it, so it cannot be said what it means (Sparkplug).
+    Unborn,
+    /// Sent after its place in the sequence had been given up (Sparkplug).
+    OutOfSequence,
+    /// Taken outside all shifts, where the shifts are what is compared.
+    OutsideShifts,
 }
 
 impl Reason {
     /// Every reason, in the order pages show them.
-    pub const ALL: [Self; 18] = [
+    pub const ALL: [Self; 26] = [
         Self::Empty,
         Self::TooLarge,
         Self::Malformed,
@@ -68,6 +85,14 @@ impl Reason {
         Self::Double,
         Self::TooOld,
         Self::TooFarAhead,
+        Self::LineStopped,
+        Self::Sentinel,
+        Self::Implausible,
+        Self::WrongUnit,
+        Self::BadQuality,
+        Self::Unborn,
+        Self::OutOfSequence,
+        Self::OutsideShifts,
     ];
 
     /// The one word used in metrics and the interface.
@@ -91,6 +116,14 @@ impl Reason {
             Self::Double => "double",
             Self::TooOld => "too_old",
             Self::TooFarAhead => "too_far_ahead",
+            Self::LineStopped => "line_stopped",
+            Self::Sentinel => "sentinel",
+            Self::Implausible => "implausible",
+            Self::WrongUnit => "wrong_unit",
+            Self::BadQuality => "bad_quality",
+            Self::Unborn => "unborn",
+            Self::OutOfSequence => "out_of_sequence",
+            Self::OutsideShifts => "outside_shifts",
         }
     }
 }

@@ -5,6 +5,9 @@ use std::sync::Arc;
 use serde::{Deserialize, Serialize};
 
 use crate::model::{Name, Time};
+use crate::verdict::{Effect, Estimate, Pattern, Slip};
+
+use super::Handling;
 
 /// What a notice is about.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord, Hash, Serialize, Deserialize)]
@@ -40,6 +43,11 @@ impl Kind {
         Self::ClockWrong,
         Self::IntakeTrouble,
     ];
+
+    /// Whether it is called within the call budget, or is a condition outside it.
+    pub const fn is_call(self) -> bool {
+        matches!(self, Self::LevelApart | Self::SpreadApart | Self::BankSplit)
+    }
 
     /// The word in topics, metrics and interfaces.
     pub const fn word(self) -> &'static str {
@@ -117,9 +125,21 @@ impl State {
         }
     }
 
-    /// Whether the condition still holds.
+    /// Every state.
+    pub const ALL: [Self; 7] = [
+        Self::Normal,
+        Self::Unacknowledged,
+        Self::Acknowledged,
+        Self::ReturnedUnacknowledged,
+        Self::Shelved,
+        Self::Suppressed,
+        Self::OutOfService,
+    ];
+
+    /// Whether the condition holds and nobody has set the notice aside ([`Notice::holds`] asks the
+    /// first alone).
     pub const fn is_active(self) -> bool {
-        !matches!(self, Self::Normal | Self::ReturnedUnacknowledged)
+        matches!(self, Self::Unacknowledged | Self::Acknowledged)
     }
 
     /// Whether the notice still asks for anything: not [`State::Normal`].
@@ -226,20 +246,50 @@ pub struct Notice {
     pub url: String,
     /// The span of the look that called.
     pub span: usize,
+    /// What people did with it.
+    pub handling: Handling,
+    /// The machine's geometry explains it; level only.
+    pub pattern: Option<Pattern>,
+    /// All sources read as others; level only.
+    pub slip: Option<Slip>,
+    /// How far the sources that stayed moved together since the start, in the bank's unit. It is no
+    /// divergence and never raises a notice.
+    pub common_movement: Option<f64>,
+    /// Mean of the sources that the named ones are compared with, in the bank's unit.
+    pub even_mean: Option<f64>,
+    /// What the bank gives away in an hour, where a cost is configured.
+    pub cost_per_hour: Option<f64>,
+    /// The last adjustment of a named source since it left, and what became of it.
+    pub adjustment: Option<Adjustment>,
 }
 
 /// A way out of the house.
-#[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord, Hash, Serialize, Deserialize)]
+#[derive(Clone, Debug, PartialEq, Eq, PartialOrd, Ord, Hash, Serialize, Deserialize)]
 #[serde(rename_all = "snake_case")]
 pub enum Way {
     /// The plant's broker.
     Mqtt,
+    /// An outlet of this name.
+    Outlet(Name),
+}
+
+impl Way {
+    /// The name in pages, metrics and logs; no outlet may be called as the broker is.
+    pub fn name(&self) -> &str {
+        match self {
+            Self::Mqtt => Self::MQTT,
+            Self::Outlet(name) => name,
+        }
+    }
+
+    /// The name of the way to the plant's broker.
+    pub const MQTT: &'static str = "mqtt";
 }
 
 /// One notice on its way out: kept in the store until its outlet has confirmed it.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub struct Delivery {
-    /// Rises by one for each delivery of the plant; receivers may use it to drop a repeat.
+    /// Rises with each delivery of the plant; receivers may use it to drop a repeat.
     pub number: u64,
     /// Where to.
     pub way: Way,
@@ -247,4 +297,33 @@ pub struct Delivery {
     pub at: Time,
     /// The notice as it stood then.
     pub notice: Arc<Notice>,
+}
+
+/// An adjustment of a named source, and what the values since say of it.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+pub struct Adjustment {
+    /// The source.
+    pub source: Name,
+    /// When it was entered.
+    pub at: Time,
+    /// By how much, in the bank's unit, where that was said.
+    pub amount: Option<f64>,
+    /// Values of the source since.
+    pub values: usize,
+    /// Its deviation over those, in the bank's unit; none before there are enough.
+    pub deviation: Option<Estimate>,
+    /// What became of it.
+    pub effect: Effect,
+}
+
+impl Adjustment {
+    /// Values after which people are told anew: 10, 20 and 40.
+    pub fn stage(&self) -> usize {
+        match self.values {
+            0..10 => 0,
+            10..20 => 10,
+            20..40 => 20,
+            _ => 40,
+        }
+    }
 }

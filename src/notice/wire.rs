@@ -7,8 +7,11 @@
 use serde::Serialize;
 
 use crate::model::Time;
+use crate::verdict::{Pattern, Slip};
 
-use super::{Acknowledgement, Kind, NamedSource, Notice, Priority, Since, State};
+use super::{
+    Acknowledgement, Adjustment, CallOutcome, Kind, NamedSource, Notice, Priority, Since, State,
+};
 
 /// The `data` of a notice's event, and a notice in the interface.
 #[derive(Clone, Copy, Debug, PartialEq, Serialize)]
@@ -49,6 +52,64 @@ pub struct NoticeData<'a> {
     pub acknowledged: Option<&'a Acknowledgement>,
     /// Values per source in the look that called.
     pub span: usize,
+    /// Until when it is shelved; null while it is not.
+    pub shelved_until: Option<Time>,
+    /// What came of it; null while nobody has said.
+    pub outcome: Option<CallOutcome>,
+    /// What in the machine's geometry explains it; null when nothing does.
+    pub pattern: Option<PatternData<'a>>,
+    /// By how many places all sources seem to have slipped; null when they do not.
+    pub slip: Option<Slip>,
+    /// How far the sources that stayed moved together since the start, in the bank's unit.
+    pub common_movement: Option<f64>,
+    /// Mean of the sources that the named ones are compared with, in the bank's unit.
+    pub even_mean: Option<f64>,
+    /// What the bank gives away in an hour, in the currency of `cost_per_unit`; null without that.
+    pub cost_per_hour: Option<f64>,
+    /// The last adjustment of a named source since it left, and what became of it; null without one.
+    pub adjustment: Option<&'a Adjustment>,
+}
+
+/// A pattern in its shared form: flat, so that a template can read it.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize)]
+pub struct PatternData<'a> {
+    /// `wave`, `slope`, `odd_from_even`, `half_from_half` or `group`.
+    pub kind: &'static str,
+    /// What it is, for people, without its size.
+    pub words: &'a str,
+    /// Its size in the bank's unit.
+    pub effect: f64,
+    /// Lower end of the interval.
+    pub low: f64,
+    /// Upper end.
+    pub high: f64,
+    /// Probability of as large a one by chance.
+    pub p: f64,
+    /// The source at which a wave is highest.
+    pub highest: Option<&'a str>,
+    /// The configured group.
+    pub group: Option<&'a str>,
+}
+
+impl<'a> PatternData<'a> {
+    fn of(pattern: &'a Pattern) -> Self {
+        let Pattern {
+            kind,
+            effect,
+            p,
+            words,
+        } = pattern;
+        Self {
+            kind: kind.word(),
+            words,
+            effect: effect.value,
+            low: effect.low,
+            high: effect.high,
+            p: *p,
+            highest: kind.highest().map(|n| &**n),
+            group: kind.group().map(|n| &**n),
+        }
+    }
 }
 
 impl<'a> NoticeData<'a> {
@@ -74,6 +135,13 @@ impl<'a> NoticeData<'a> {
             advice,
             url,
             span,
+            handling,
+            pattern,
+            slip,
+            common_movement,
+            even_mean,
+            cost_per_hour,
+            adjustment,
         } = notice;
         Self {
             id,
@@ -94,12 +162,22 @@ impl<'a> NoticeData<'a> {
             returned: *returned,
             acknowledged: acknowledged.as_ref(),
             span: *span,
+            shelved_until: handling.shelved_until,
+            outcome: handling.outcome,
+            pattern: pattern.as_ref().map(PatternData::of),
+            slip: *slip,
+            common_movement: *common_movement,
+            even_mean: *even_mean,
+            cost_per_hour: *cost_per_hour,
+            adjustment: adjustment.as_ref(),
         }
     }
 }
 
 #[cfg(test)]
 mod tests {
+    use crate::verdict::{Effect, Estimate, PatternKind};
+
     use super::*;
 
     fn notice() -> Notice {
@@ -136,6 +214,39 @@ mod tests {
             advice: "Check valve 07.".into(),
             url: "http://127.0.0.1:7310/banks/filler-2".into(),
             span: 40,
+            handling: crate::notice::Handling::default(),
+            pattern: Some(Pattern {
+                kind: PatternKind::Wave {
+                    highest: "01".into(),
+                    lowest: "07".into(),
+                },
+                effect: Estimate {
+                    value: 1.25,
+                    low: 1.0,
+                    high: 1.5,
+                },
+                p: 0.0001,
+                words: "one wave around the ring".to_owned(),
+            }),
+            slip: Some(Slip {
+                places: 1,
+                fit: 0.5,
+            }),
+            common_movement: Some(-0.25),
+            even_mean: Some(503.5),
+            cost_per_hour: Some(12.5),
+            adjustment: Some(Adjustment {
+                source: "07".into(),
+                at: at(150),
+                amount: Some(1.5),
+                values: 20,
+                deviation: Some(Estimate {
+                    value: -0.25,
+                    low: -0.5,
+                    high: 0.0,
+                }),
+                effect: Effect::NotSure,
+            }),
         }
     }
 
@@ -165,7 +276,31 @@ mod tests {
             "changed": "1970-01-01T00:03:00Z",
             "returned": null,
             "acknowledged": {"by": "Ana", "at": "1970-01-01T00:03:00Z", "comment": ""},
-            "span": 40
+            "span": 40,
+            "shelved_until": null,
+            "outcome": null,
+            "pattern": {
+                "kind": "wave",
+                "words": "one wave around the ring",
+                "effect": 1.25,
+                "low": 1.0,
+                "high": 1.5,
+                "p": 0.0001,
+                "highest": "01",
+                "group": null
+            },
+            "slip": {"places": 1, "fit": 0.5},
+            "common_movement": -0.25,
+            "even_mean": 503.5,
+            "cost_per_hour": 12.5,
+            "adjustment": {
+                "source": "07",
+                "at": "1970-01-01T00:02:30Z",
+                "amount": 1.5,
+                "values": 20,
+                "deviation": {"value": -0.25, "low": -0.5, "high": 0.0},
+                "effect": "not_sure"
+            }
         });
         assert_eq!(json, wanted);
     }

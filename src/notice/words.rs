@@ -4,9 +4,10 @@
 
 use jiff::tz::TimeZone;
 
-use crate::model::{Bank, Characteristic, Time, Value, fixed};
+use crate::model::{Bank, Name, Offsets, Time, Value, fixed};
+use crate::verdict::{Pattern, PatternKind, Slip};
 
-use super::{Kind, NamedSource, Since};
+use super::{Adjustment, Kind, NamedSource, Since};
 
 /// Characters a lock screen shows.
 pub const MOST_SUBJECT: usize = 70;
@@ -38,21 +39,48 @@ pub struct Facts<'a> {
     pub compared: Compared,
     /// Mean of those, in the unit.
     pub even_mean: Option<f64>,
+    /// What in the machine's geometry explains it.
+    pub pattern: Option<&'a Pattern>,
+    /// Whether all sources read as others.
+    pub slip: Option<Slip>,
+    /// How far those that stayed moved together since the start, in the unit.
+    pub common_movement: Option<f64>,
+    /// What the bank gives away in an hour.
+    pub cost_per_hour: Option<f64>,
     /// Time in which the notice clears if the fault is mended now, in microseconds.
     pub clears_in_us: Option<i64>,
     /// When the condition was seen to be gone.
     pub returned: Option<Time>,
+    /// The last adjustment, and what became of it.
+    pub adjustment: Option<&'a Adjustment>,
     /// The page.
     pub url: &'a str,
 }
 
 /// What the named sources were compared with.
-#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+#[derive(Clone, Debug, PartialEq, Eq)]
 pub enum Compared {
     /// The even set.
     WithEven,
+    /// The even set, everybody's own usual place taken off.
+    WithUsual,
     /// Each other: the bank has two sources.
     Mutually,
+    /// The configured reference source.
+    WithReference(Name),
+}
+
+impl Compared {
+    /// How a bank's sources are compared in level (`kind` says whether it is about that), unless they
+    /// are two.
+    pub fn of(bank: &Bank, kind: Kind) -> Self {
+        match (&bank.reference, &bank.offsets) {
+            _ if kind == Kind::SpreadApart => Self::WithEven,
+            (Some(name), _) => Self::WithReference(name.clone()),
+            (None, Offsets::Learn) => Self::WithUsual,
+            (None, _) => Self::WithEven,
+        }
+    }
 }
 
 /// The words of a notice.
@@ -72,11 +100,17 @@ impl Facts<'_> {
         let advice = self.advice();
         let mut lines = match self.returned {
             Some(at) => vec![self.what_was(at)],
-            None => vec![self.what()],
+            None => {
+                let first = self.slipped().into_iter().chain(self.patterned());
+                first.chain([self.what()]).collect()
+            }
         };
         lines.extend(self.details());
         lines.push(self.since_when());
+        lines.extend(self.moved_together());
         lines.extend(self.bank_level());
+        lines.extend(self.given_away());
+        lines.extend(self.adjusted());
         if self.returned.is_none() {
             lines.push(advice.clone());
             lines.extend(self.clears_in());
@@ -90,6 +124,35 @@ impl Facts<'_> {
         }
     }
 
+    fn adjusted(&self) -> Option<String> {
+        let Adjustment {
+            source,
+            at,
+            amount,
+            values,
+            deviation,
+            effect,
+        } = self.adjustment?;
+        let c = &self.bank.characteristic;
+        let by = amount.map_or_else(String::new, |a| {
+            format!(" by {} {}", c.deviation(a), c.unit)
+        });
+        let told = deviation.map_or_else(String::new, |d| {
+            format!(
+                " It stands at {} {} (95 %: {} to {}) over {values} values since.",
+                c.deviation(d.value),
+                c.unit,
+                c.deviation(d.low),
+                c.deviation(d.high)
+            )
+        });
+        let at = self.clock(*at);
+        Some(format!(
+            "{source} was adjusted{by} at {at}: {}.{told}",
+            effect.words()
+        ))
+    }
+
     fn subject(&self) -> String {
         let bank = &self.bank.name;
         let (long, short) = match self.returned {
@@ -98,7 +161,7 @@ impl Facts<'_> {
                 format!("{bank}: {} sources even again", self.sources.len()),
             ),
             None => (
-                format!("{bank}: {}{}", self.who_and_how(), self.how_much()),
+                format!("{bank}: {}{}", self.in_short(), self.how_much()),
                 format!(
                     "{bank}: {} sources, {}",
                     self.sources.len(),
@@ -114,8 +177,60 @@ impl Facts<'_> {
         whole.chars().take(MOST_SUBJECT).collect()
     }
 
+    /// One cause before the names.
+    fn in_short(&self) -> String {
+        match (self.slip, self.pattern) {
+            (Some(slip), _) => slip_words(slip),
+            (None, Some(pattern)) => pattern.words.clone(),
+            (None, None) => self.who_and_how(),
+        }
+    }
+
+    fn slipped(&self) -> Option<String> {
+        let slip = self.slip?;
+        Some(format!(
+            "{} ({}): {}. Nobody need have moved: the position signal may have.",
+            self.bank.name,
+            self.bank.characteristic.name,
+            slip_words(slip)
+        ))
+    }
+
+    fn patterned(&self) -> Option<String> {
+        let Pattern {
+            kind,
+            effect,
+            words,
+            ..
+        } = self.pattern?;
+        let c = &self.bank.characteristic;
+        let told = |v: f64| match kind {
+            // What stands above and what below is in the words.
+            PatternKind::Wave { .. } => fixed(v, c.places() + 1),
+            _ => c.deviation(v),
+        };
+        let size = match kind {
+            PatternKind::Wave { .. } => "amplitude",
+            PatternKind::Slope { .. } => "from end to end",
+            _ => "apart by",
+        };
+        Some(format!(
+            "{} ({}): {words}, {size} {} {} (95 %: {} to {} {}). It explains what is named below.",
+            self.bank.name,
+            c.name,
+            told(effect.value),
+            c.unit,
+            told(effect.low),
+            told(effect.high),
+            c.unit
+        ))
+    }
+
     /// The size without its sign, where one source (or a pair) has one.
     fn how_much(&self) -> String {
+        if self.slip.is_some() || self.pattern.is_some() {
+            return String::new();
+        }
         let single = match (self.sources, self.is_pair()) {
             ([one], _) | ([one, _], true) => one,
             _ => return String::new(),
@@ -131,7 +246,7 @@ impl Facts<'_> {
         }
     }
 
-    fn is_pair(&self) -> bool {
+    pub(super) fn is_pair(&self) -> bool {
         self.compared == Compared::Mutually && self.sources.len() == 2
     }
 
@@ -161,7 +276,7 @@ impl Facts<'_> {
         }
     }
 
-    fn all(&self, holds: impl Fn(&NamedSource) -> bool) -> bool {
+    pub(super) fn all(&self, holds: impl Fn(&NamedSource) -> bool) -> bool {
         self.sources.iter().all(holds)
     }
 
@@ -202,10 +317,13 @@ impl Facts<'_> {
     }
 
     fn detail(&self, s: &NamedSource) -> String {
-        let against = if self.is_pair() {
-            format!("against {}", self.sources[1].source)
-        } else {
-            format!("against the {} even ones", self.others)
+        let against = match &self.compared {
+            Compared::Mutually if self.is_pair() => {
+                format!("against {}", self.sources[1].source)
+            }
+            Compared::WithReference(name) => format!("against {name}, the reference"),
+            Compared::WithUsual => "against its own usual place".to_owned(),
+            _ => format!("against the {} even ones", self.others),
         };
         let c = &self.bank.characteristic;
         let interval = match self.kind {
@@ -284,11 +402,40 @@ impl Facts<'_> {
         } else {
             format!(" ({})", known.join(", "))
         };
+        let who = match &self.compared {
+            Compared::WithReference(name) => format!("{name} stands"),
+            _ => "The even ones stand".to_owned(),
+        };
+        Some(format!("{who} at {} {}{known}.", c.mean(mean), c.unit))
+    }
+
+    /// What the others did since the start: no divergence, and no excuse for one.
+    fn moved_together(&self) -> Option<String> {
+        let c = &self.bank.characteristic;
+        let by = self.common_movement.filter(|_| self.is_about_level())?;
+        let who = match &self.compared {
+            Compared::WithReference(name) => format!("{name} itself"),
+            _ => "the others together".to_owned(),
+        };
         Some(format!(
-            "The even ones stand at {} {}{known}.",
-            c.mean(mean),
+            "Since then {who} moved by {} {}, which is apart from this.",
+            c.deviation(by),
             c.unit
         ))
+    }
+
+    fn given_away(&self) -> Option<String> {
+        let cost = self
+            .cost_per_hour
+            .filter(|c| *c > 0.0 && self.returned.is_none())?;
+        Some(format!(
+            "At this level the bank gives away {} an hour (mean less declared, times rate and cost).",
+            fixed(cost, 2)
+        ))
+    }
+
+    fn is_about_level(&self) -> bool {
+        matches!(self.kind, Kind::LevelApart | Kind::BankSplit)
     }
 
     fn clears_in(&self) -> Option<String> {
@@ -302,50 +449,11 @@ impl Facts<'_> {
             "If that mends it, this notice clears in about {about}."
         ))
     }
+}
 
-    fn advice(&self) -> String {
-        match self.kind {
-            Kind::SpreadApart if self.all(|s| s.deviation < 1.0) => {
-                "Check that the instrument or signal of this source is alive: values this steady are rarely good news.".to_owned()
-            }
-            Kind::SpreadApart => "Check valve, seal, supply and sensor of what is named; an adjustment of its level will not steady it.".to_owned(),
-            Kind::BankSplit => "One cause is likelier than many: check what the named sources share (supply, drive, lot, instrument) before adjusting any.".to_owned(),
-            _ if self.is_pair() => self.pair_advice(),
-            _ => self.adjustments(),
-        }
-    }
-
-    fn pair_advice(&self) -> String {
-        "Two sources alone do not tell which of them left: compare both with the target before adjusting.".to_owned()
-    }
-
-    fn adjustments(&self) -> String {
-        let c = &self.bank.characteristic;
-        let sure: Vec<&NamedSource> = self
-            .sources
-            .iter()
-            .filter(|s| s.low > self.bank.margin || s.high < -self.bank.margin)
-            .collect();
-        if sure.is_empty() {
-            return "The size is not sure yet: watch the next looks before adjusting.".to_owned();
-        }
-        let steps: Vec<String> = sure.iter().map(|s| self.adjustment(s, c)).collect();
-        format!("Suggested: {}.", steps.join("; "))
-    }
-
-    /// The negative of the deviation; never down while the even ones are not above the target.
-    fn adjustment(&self, s: &NamedSource, c: &Characteristic) -> String {
-        let by = format!("{} {}", c.deviation(-s.deviation), c.unit);
-        let low_bank = match (self.even_mean, c.target) {
-            (Some(mean), Some(target)) => mean <= target.to_f64(),
-            _ => false,
-        };
-        if s.deviation > 0.0 && low_bank {
-            return format!(
-                "do not lower {}: the even ones are not above the target, so bring the bank to its level first",
-                s.source
-            );
-        }
-        format!("adjust {} by {by}", s.source)
+fn slip_words(slip: Slip) -> String {
+    match slip.places {
+        1 => "every source reads as the one before it".to_owned(),
+        n => format!("every source reads as the one {n} places before it"),
     }
 }

@@ -8,8 +8,8 @@
 //! its topic is emptied when it is normal.
 
 mod link;
+mod trial;
 
-use std::collections::VecDeque;
 use std::sync::Arc;
 use std::time::Duration;
 
@@ -24,7 +24,10 @@ use crate::notice::{Delivery, State};
 use crate::settings::Settings;
 use crate::settings::connection::{Backoff, Secrets};
 
+pub use trial::send_test;
+
 use self::link::{Driver, Message, Signal, Speaker};
+use super::door::{Came, Door};
 use super::queue::Queue;
 use super::{OutletError, Report, cloud_event, topic};
 
@@ -47,14 +50,10 @@ pub async fn run(
 ) -> Result<(), OutletError> {
     let mut outlet = Outlet {
         settings,
-        deliveries,
-        reports,
-        shutdown,
+        door: Door::new(deliveries, reports, shutdown),
         clock: Clock::System,
         queue: Queue::default(),
-        unreported: VecDeque::new(),
         complaint: None,
-        more_may_come: true,
         ending: None,
     };
     let mut backoff = Backoff::default();
@@ -70,7 +69,7 @@ pub async fn run(
             break;
         }
     }
-    outlet.hand_over_reports().await;
+    outlet.door.close().await;
     Ok(())
 }
 
@@ -100,16 +99,11 @@ enum UnderWay {
 
 struct Outlet {
     settings: Arc<Settings>,
-    deliveries: mpsc::Receiver<Delivery>,
-    reports: mpsc::Sender<Report>,
-    shutdown: CancellationToken,
+    door: Door,
     clock: Clock,
     queue: Queue,
-    unreported: VecDeque<Report>,
     /// The number and reason last complained of, so that each is told once.
     complaint: Option<(Option<u64>, String)>,
-    /// Whether somebody can still send deliveries.
-    more_may_come: bool,
     /// Runs once the end was asked for.
     ending: Option<Stopwatch>,
 }
@@ -133,7 +127,7 @@ impl Outlet {
             under_way: UnderWay::Nothing,
             published: Stopwatch::start(),
         };
-        self.queue.connection_lost();
+        self.queue.lost();
         loop {
             let end = match self.next_signal(&mut driver, &mut talk).await? {
                 Next::Signal(signal) => self.act(signal, &mut talk),
@@ -166,9 +160,9 @@ impl Outlet {
             Signal::Confirmed => match talk.confirmed() {
                 UnderWay::Goodbye => return Ok(Go::Leave),
                 UnderWay::Notice => {
-                    let done = self.queue.confirmed();
-                    self.unreported
-                        .extend(done.into_iter().map(Report::Delivered));
+                    for number in self.queue.confirmed() {
+                        self.door.report(Report::Delivered(number));
+                    }
                     self.complaint = None;
                 }
                 // A broker may take the status and no notices, so that alone is no success.
@@ -244,23 +238,10 @@ impl Outlet {
     /// One thing for the house: a delivery, a report, or the wish to end. Dropped half-way it loses
     /// nothing.
     async fn house(&mut self) -> Result<House, OutletError> {
-        let ending = self.ending.is_some();
-        tokio::select! {
-            biased;
-            delivery = self.deliveries.recv(), if self.more_may_come => match delivery {
-                Some(delivery) => self.queue.push(delivery),
-                None => self.more_may_come = false,
-            },
-            permit = self.reports.reserve(), if !self.unreported.is_empty() => {
-                let permit = permit.map_err(|_| OutletError::ReportsClosed)?;
-                if let Some(report) = self.unreported.pop_front() {
-                    permit.send(report);
-                }
-            }
-            () = self.shutdown.cancelled(), if !ending => return Ok(House::End),
-            () = std::future::ready(()), if !self.more_may_come && !ending => return Ok(House::End),
-            // With nothing left to serve the connection alone goes on.
-            () = std::future::pending() => {}
+        match self.door.next().await? {
+            Came::Delivery(delivery) => self.queue.push(delivery),
+            Came::End => return Ok(House::End),
+            Came::Nothing => {}
         }
         Ok(House::Served)
     }
@@ -295,21 +276,9 @@ impl Outlet {
         if let Some(number) = number
             && self.complaint != now
         {
-            self.unreported
-                .push_back(Report::NotDelivered { number, why });
+            self.door.report(Report::NotDelivered { number, why });
         }
         self.complaint = now;
-    }
-
-    /// The last reports, as far as the house still takes them.
-    async fn hand_over_reports(&mut self) {
-        while let Some(report) = self.unreported.pop_front() {
-            let sent = self.reports.send_timeout(report, END_WITHIN / 4).await;
-            if sent.is_err() {
-                // What is not reported is sent again after the next start.
-                break;
-            }
-        }
     }
 
     /// What stands on the status topic.

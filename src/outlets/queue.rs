@@ -13,7 +13,8 @@ use crate::notice::Delivery;
 #[derive(Debug, Default)]
 pub struct Queue {
     waiting: VecDeque<Waiting>,
-    head_is_out: bool,
+    /// So many of the first are out.
+    out: usize,
 }
 
 #[derive(Debug)]
@@ -28,9 +29,8 @@ impl Queue {
         if self.waiting.iter().any(|w| w.has(delivery.number)) {
             return;
         }
-        let fixed = usize::from(self.head_is_out);
         let same = |w: &&mut Waiting| w.delivery.notice.id == delivery.notice.id;
-        let newest = self.waiting.iter_mut().skip(fixed).rev().find(same);
+        let newest = self.waiting.iter_mut().skip(self.out).rev().find(same);
         match newest {
             Some(w) if w.delivery.notice.state == delivery.notice.state => {
                 w.replaced.push(w.delivery.number);
@@ -46,8 +46,14 @@ impl Queue {
     /// The next one to send; it counts as out from here on.
     pub fn send_head(&mut self) -> Option<&Delivery> {
         let head = self.waiting.front()?;
-        self.head_is_out = true;
+        self.out = 1;
         Some(&head.delivery)
+    }
+
+    /// Everything that waits, oldest first; all of it counts as out from here on.
+    pub fn send_all(&mut self) -> impl Iterator<Item = &Delivery> {
+        self.out = self.waiting.len();
+        self.waiting.iter().map(|w| &w.delivery)
     }
 
     /// The number that is told about when sending fails.
@@ -55,22 +61,17 @@ impl Queue {
         self.waiting.front().map(|w| w.delivery.number)
     }
 
-    /// The other side has confirmed the head: the numbers that are done with, oldest first.
+    /// The other side has confirmed what is out: the numbers that are done with, oldest first.
     pub fn confirmed(&mut self) -> Vec<u64> {
-        if !std::mem::take(&mut self.head_is_out) {
-            return Vec::new();
-        }
-        let Some(done) = self.waiting.pop_front() else {
-            return Vec::new();
-        };
-        let mut numbers = done.replaced;
-        numbers.push(done.delivery.number);
-        numbers
+        let out = std::mem::take(&mut self.out);
+        let done = self.waiting.drain(..out);
+        let numbers = done.flat_map(|w| w.replaced.into_iter().chain([w.delivery.number]));
+        numbers.collect()
     }
 
-    /// The connection is gone: the head may or may not have arrived, so it is to be sent again.
-    pub fn connection_lost(&mut self) {
-        self.head_is_out = false;
+    /// What is out may or may not have arrived, so it is to be sent again.
+    pub fn lost(&mut self) {
+        self.out = 0;
     }
 
     /// How many wait.
@@ -126,6 +127,13 @@ pub(super) mod tests {
             advice: "Check valve 07.".to_owned(),
             url: "http://127.0.0.1:7310/banks/filler%202".to_owned(),
             span: 40,
+            handling: crate::notice::Handling::default(),
+            pattern: None,
+            slip: None,
+            common_movement: None,
+            even_mean: None,
+            cost_per_hour: None,
+            adjustment: None,
         };
         Delivery {
             number,
@@ -147,7 +155,7 @@ pub(super) mod tests {
         queue.push(delivery(2, "b", State::Unacknowledged));
         assert!(queue.confirmed().is_empty());
         assert_eq!(sent(&mut queue), Some(1));
-        queue.connection_lost();
+        queue.lost();
         assert!(queue.confirmed().is_empty());
         assert_eq!(sent(&mut queue), Some(1));
         assert_eq!(queue.confirmed(), [1]);
@@ -175,6 +183,20 @@ pub(super) mod tests {
         assert_eq!(sent(&mut queue), Some(5));
         assert_eq!(queue.confirmed(), [5]);
         assert_eq!(sent(&mut queue), Some(6));
+    }
+
+    #[test]
+    fn all_can_be_out_at_once() {
+        let mut queue = Queue::default();
+        queue.push(delivery(1, "a", State::Unacknowledged));
+        queue.push(delivery(2, "a", State::Unacknowledged));
+        queue.push(delivery(3, "a", State::Acknowledged));
+        let out: Vec<u64> = queue.send_all().map(|d| d.number).collect();
+        assert_eq!(out, [2, 3]);
+        queue.push(delivery(4, "a", State::Acknowledged));
+        assert_eq!(queue.confirmed(), [1, 2, 3]);
+        assert_eq!(queue.confirmed(), Vec::<u64>::new());
+        assert_eq!(sent(&mut queue), Some(4));
     }
 
     #[test]
@@ -207,7 +229,7 @@ pub(super) mod tests {
                         if let Some(d) = queue.send_head() { seen.push((d.notice.id.clone(), d.number)); }
                         done.extend(queue.confirmed());
                     }
-                    _ => { queue.send_head(); queue.connection_lost(); }
+                    _ => { queue.send_head(); queue.lost(); }
                 }
             }
             while let Some(d) = queue.send_head() {

@@ -8,6 +8,11 @@ pub fn status(plant: &str) -> String {
     format!("evenrow/{}/status", topic_name(plant))
 }
 
+/// Where a test notice is published and taken back.
+pub fn test(plant: &str) -> String {
+    format!("evenrow/{}/test", topic_name(plant))
+}
+
 /// Where a notice stands while it is open.
 pub fn notice(notice: &Notice) -> String {
     format!(

@@ -4,8 +4,8 @@ use crate::model::{Bank, Pairing, Sources};
 use crate::stats::dist::chi_square;
 use crate::verdict::Shares;
 
-use super::Settings;
 use super::check::words;
+use super::{Encryption, Means, Outlet, Settings};
 
 /// Below this a spread is judged from too few values to say much.
 const SHORT_SPAN: usize = 5;
@@ -23,18 +23,38 @@ impl Settings {
     pub fn cautions(&self) -> Vec<String> {
         let mut all = Vec::new();
         let broker = &self.broker;
-        let local = matches!(broker.host.as_str(), "localhost" | "127.0.0.1" | "::1");
-        if broker.password_file.is_some() && !broker.tls && !local {
+        if broker.password_file.is_some() && !broker.tls && !is_here(&broker.host) {
             let host = &broker.host;
             all.push(format!(
                 "the password travels to {host} in clear; mqtts:// would encrypt it"
             ));
         }
+        all.extend(self.outlets.iter().filter_map(in_clear));
         if self.web.token_file.is_none() {
             all.push("without a token file nobody can acknowledge a notice".to_owned());
         }
         all
     }
+}
+
+fn is_here(host: &str) -> bool {
+    matches!(host, "localhost" | "127.0.0.1" | "::1" | "[::1]")
+}
+
+/// Says when an outlet sends unencrypted to another machine.
+fn in_clear(outlet: &Outlet) -> Option<String> {
+    let host = match &outlet.means {
+        Means::Webhook(w) => {
+            let uri: http::Uri = w.url.parse().ok()?;
+            let plain = uri.scheme_str() == Some("http");
+            plain.then(|| uri.host().unwrap_or_default().to_owned())?
+        }
+        Means::Mail(m) if m.encryption == Encryption::InClear => m.host.clone(),
+        Means::Mail(_) | Means::Command(_) => return None,
+    };
+    let name = &outlet.name;
+    let caution = format!("notices of outlet \"{name}\" travel to {host} in clear");
+    (!is_here(&host)).then_some(caution)
 }
 
 /// What holds for one bank.
@@ -70,11 +90,13 @@ fn no_margin(bank: &Bank) -> Option<String> {
     let general = "a margin of 0 calls every difference, however small, once enough values show it";
     let n = bank.window_length();
     Some(match (&bank.sources, size_called(bank)) {
-        (Sources::Listed(_), Some(size)) => format!(
+        (Sources::Listed(_) | Sources::Shifts(_), Some(size)) => format!(
             "{general}: over {n} values a source that is off by {size:.2} standard deviations is \
              called at about every second look, whether that matters or not"
         ),
-        (Sources::Listed(_) | Sources::Discover { .. }, _) => general.to_owned(),
+        (Sources::Listed(_) | Sources::Shifts(_) | Sources::Discover { .. }, _) => {
+            general.to_owned()
+        }
     })
 }
 
@@ -82,9 +104,7 @@ fn no_margin(bank: &Bank) -> Option<String> {
 /// not: the mean of a noncentral chi-square with k−1 degrees of freedom, k−1 + n d² (k−1)/k, set equal
 /// to the quantile at the look's alpha.
 fn size_called(bank: &Bank) -> Option<f64> {
-    let Sources::Listed(names) = &bank.sources else {
-        return None;
-    };
+    let names = bank.sources.names()?;
     let (k, n) = (names.len() as f64, bank.window_length() as f64);
     let df = k - 1.0;
     let quantile = chi_square::isf(Shares::of(bank).level, df).ok()?;

@@ -13,6 +13,7 @@ use crate::model::{Name, Value};
 
 use super::fault::{FaultList, Place};
 use super::keys;
+use super::raw::{Kind, Node};
 use super::section::{Field, Spot};
 
 /// Microseconds of a second, of which durations are written.
@@ -56,7 +57,12 @@ impl<'f> Check<'f> {
     }
 
     /// Notes a fault of a key; the hint is the key's example.
-    fn wrong<T>(&mut self, place: &Place, name: &str, what: impl std::fmt::Display) -> Option<T> {
+    pub(super) fn wrong<T>(
+        &mut self,
+        place: &Place,
+        name: &str,
+        what: impl std::fmt::Display,
+    ) -> Option<T> {
         let hint = keys::example(self.section, name);
         self.faults.none(place, format!("`{name}` {what}"), hint)
     }
@@ -164,6 +170,63 @@ impl<'f> Check<'f> {
         }
     }
 
+    /// A list of texts. What holds something else is told of, item by item.
+    pub(super) fn texts(
+        &mut self,
+        field: Field<Vec<Node>>,
+        name: &str,
+    ) -> Option<Vec<Spot<String>>> {
+        let Spot { value: list, .. } = field.given()?;
+        let mut texts = Vec::with_capacity(list.len());
+        let mut all_good = true;
+        for Node { place, kind } in list {
+            match kind {
+                Kind::Text(value) => texts.push(Spot { value, place }),
+                other => {
+                    let what = format!("holds {} and must hold text in quotes", other.what());
+                    let _: Option<()> = self.wrong(&place, name, what);
+                    all_good = false;
+                }
+            }
+        }
+        all_good.then_some(texts)
+    }
+
+    /// A list of some of a few words; `what` is what they are ("kind of notice").
+    pub(super) fn words<T: Clone>(
+        &mut self,
+        field: Field<Vec<Node>>,
+        name: &str,
+        what: &str,
+        known: &[(&str, T)],
+    ) -> Option<Vec<T>> {
+        let texts = self.texts(field, name)?;
+        let mut found = Vec::with_capacity(texts.len());
+        let mut all_good = true;
+        for Spot { value, place } in texts {
+            let same = known.iter().find(|(word, _)| *word == value);
+            if let Some((_, meant)) = same {
+                found.push(meant.clone());
+                continue;
+            }
+            all_good = false;
+            let hint = match keys::nearest(&value, known.iter().map(|(word, _)| *word)) {
+                Some(near) => format!("did you mean \"{near}\"?"),
+                None if known.is_empty() => format!("take `{name}` out"),
+                None => {
+                    let all: Vec<_> = known
+                        .iter()
+                        .map(|(word, _)| format!("\"{word}\""))
+                        .collect();
+                    format!("there are {}", all.join(", "))
+                }
+            };
+            let message = format!("`{name}`: there is no {what} \"{}\"", value.escape_debug());
+            self.faults.add(&place, message, hint);
+        }
+        all_good.then_some(found)
+    }
+
     /// One of a few words.
     pub(super) fn word<T: Copy>(
         &mut self,
@@ -215,8 +278,8 @@ pub(super) fn unfit(name: &str) -> Option<String> {
     }
 }
 
-/// Reads a duration; a day has 24 hours.
-fn duration_us(text: &str) -> Option<i64> {
+/// Reads a duration ("30s", "1.5 s", "5min") as microseconds; a day has 24 hours. `None` when it is none.
+pub fn duration_us(text: &str) -> Option<i64> {
     let span = SpanParser::new().parse_span(text.trim()).ok()?;
     let duration = span.to_duration(SpanRelativeTo::days_are_24_hours()).ok()?;
     i64::try_from(duration.as_micros()).ok()

@@ -1,5 +1,5 @@
 //! The broker's settings turned into connection options, the same for the connection that listens
-//! and the one that speaks.
+//! and the one that speaks; and what other connections need of it: passwords and authorities.
 //!
 //! Secrets and certificates are read anew for each connection, so a renewed password or certificate
 //! needs no restart, and they are kept nowhere else. Owns the wait between two attempts and the
@@ -53,10 +53,10 @@ pub enum ConnectionFileError {
         wanted: &'static str,
     },
     /// No `ca_file` is given and the system trusts nobody.
-    #[error("the system has no trusted authorities; give `broker.ca_file`")]
+    #[error("the system has no trusted authorities; give `ca_file`")]
     NoSystemAuthorities,
     /// Certificate and key are readable and do not work.
-    #[error("the certificates of the broker's settings cannot be used: {0}")]
+    #[error("the certificates that the settings name cannot be used: {0}")]
     Unusable(#[from] rustls::Error),
 }
 
@@ -154,17 +154,42 @@ fn read(what: &'static str, file: &Path) -> Result<Vec<u8>, ConnectionFileError>
 }
 
 /// The first line of a file, so that the line end an editor adds is no part of the password.
-fn password(file: &Path) -> Result<String, ConnectionFileError> {
+///
+/// # Errors
+/// When the file cannot be read.
+pub fn password(file: &Path) -> Result<String, ConnectionFileError> {
     let bytes = read("the password file", file)?;
     let text = String::from_utf8_lossy(&bytes);
     Ok(text.lines().next().unwrap_or_default().to_owned())
 }
 
-fn tls(broker: &Broker) -> Result<Arc<ClientConfig>, ConnectionFileError> {
+/// Encryption towards a server that needs no certificate of ours.
+///
+/// # Errors
+/// When the authorities cannot be read.
+pub fn server_tls(ca_file: Option<&Path>) -> Result<ClientConfig, ConnectionFileError> {
+    Ok(trusting(authorities(ca_file)?)?.with_no_client_auth())
+}
+
+/// What a client needs that never encrypts: nobody is trusted.
+///
+/// # Errors
+/// When the encryption itself is not as it was built.
+pub fn no_tls() -> Result<ClientConfig, ConnectionFileError> {
+    Ok(trusting(rustls::RootCertStore::empty())?.with_no_client_auth())
+}
+
+fn trusting(
+    authorities: rustls::RootCertStore,
+) -> Result<rustls::ConfigBuilder<ClientConfig, rustls::client::WantsClientCert>, rustls::Error> {
     let provider = Arc::new(rustls::crypto::ring::default_provider());
-    let builder = ClientConfig::builder_with_provider(provider)
-        .with_safe_default_protocol_versions()?
-        .with_root_certificates(authorities(broker.ca_file.as_deref())?);
+    let builder = ClientConfig::builder_with_provider(provider);
+    let builder = builder.with_safe_default_protocol_versions()?;
+    Ok(builder.with_root_certificates(authorities))
+}
+
+fn tls(broker: &Broker) -> Result<Arc<ClientConfig>, ConnectionFileError> {
+    let builder = trusting(authorities(broker.ca_file.as_deref())?)?;
     let own = (&broker.client_certificate_file, &broker.client_key_file);
     let config = match own {
         (Some(certificate), Some(key)) => {
@@ -180,7 +205,7 @@ fn authorities(file: Option<&Path>) -> Result<rustls::RootCertStore, ConnectionF
     let mut store = rustls::RootCertStore::empty();
     match file {
         Some(file) => {
-            for certificate in certificates("the authorities' file", file)? {
+            for certificate in authority_certificates(file)? {
                 store.add(certificate)?;
             }
         }
@@ -193,6 +218,16 @@ fn authorities(file: Option<&Path>) -> Result<rustls::RootCertStore, ConnectionF
         }
     }
     Ok(store)
+}
+
+/// The authorities in a file.
+///
+/// # Errors
+/// When the file cannot be read or holds none.
+pub fn authority_certificates(
+    file: &Path,
+) -> Result<Vec<CertificateDer<'static>>, ConnectionFileError> {
+    certificates("the authorities' file", file)
 }
 
 fn certificates(

@@ -14,11 +14,14 @@ pub mod connection;
 mod convert;
 mod environment;
 mod fault;
+mod forms;
 mod keys;
+mod list;
 mod raw;
 mod section;
 mod used;
 mod written;
+mod written_payload;
 
 #[cfg(test)]
 mod tests;
@@ -27,13 +30,20 @@ use std::path::Path;
 
 use fault::FaultList;
 
+pub use crate::model::Shift;
 pub use cautions::bank_cautions;
-pub use check::words as duration_words;
+pub use check::{duration_us as duration_from_words, words as duration_words};
 pub use environment::environment;
 pub use fault::{Fault, Faults, Ink, Place};
+pub use forms::{
+    Belief, CsvForm, DecimalMark, Fields, Items, JsonForm, NameTemplate, Of, OpcUaForm,
+    PayloadForm, Pointer, Rebirth, SenMlForm, SourceAt, SparkplugForm, TimeForm, Turn, UnitAt,
+};
+pub use list::{Origin, Origins, Setting};
 pub use used::{
-    Broker, Feed, JsonPointers, PayloadForm, PlantSettings, Protocol, RecordingColumns, Settings,
-    Shift, StoreSettings, TimeForm, TopicTemplate, WebSettings,
+    AtMost, Broker, Encryption, Feed, Mail, Mailbox, Means, Outlet, PlantSettings, Program,
+    Protocol, RecordingColumns, Settings, StoreSettings, ToldBy, TopicTemplate, WebSettings,
+    Webhook,
 };
 
 /// Reads the file and the variables laid over it ([`environment`] gives the process's).
@@ -77,8 +87,9 @@ impl Settings {
         let mut faults = FaultList::default();
         let settings = raw::from_text(text, &mut faults).and_then(|mut root| {
             environment::lay_over(&mut root, variables, &mut faults);
+            let origins = Origins::of(&root);
             let written = written::Written::read(root, &mut faults);
-            convert::used(written, &mut faults)
+            convert::used(written, origins, &mut faults)
         });
         match settings {
             Some(settings) if faults.is_empty() => Ok(settings),

@@ -15,9 +15,10 @@ pub(super) struct Spot<T> {
 }
 
 /// What became of a key.
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Default)]
 pub(super) enum Field<T> {
     /// It is not there.
+    #[default]
     Absent,
     /// It is there and wrong, which has been said.
     Faulty,

@@ -1,6 +1,8 @@
 //! Configurations and the faults they must give, as data.
 
 mod cases;
+mod outlets;
+mod payloads;
 mod shipped;
 
 use super::{Fault, Faults, Place, Settings};

@@ -1,10 +1,19 @@
 //! The configuration as used. Every value is checked and complete.
 
+mod outlet;
+
+pub use outlet::{AtMost, Encryption, Mail, Mailbox, Means, Outlet, Program, Webhook};
+
 use std::net::SocketAddr;
 use std::path::PathBuf;
 use std::sync::Arc;
 
-use crate::model::{Bank, BankIx, Name};
+use crate::model::{Bank, BankIx, Name, Shift};
+use crate::notice::Manners;
+
+use super::forms::{Belief, PayloadForm};
+
+use super::list::Origins;
 
 /// Everything the daemon is told.
 #[derive(Clone, Debug)]
@@ -17,10 +26,16 @@ pub struct Settings {
     pub store: StoreSettings,
     /// Pages and interface.
     pub web: WebSettings,
+    /// The plant's manners with notices.
+    pub manners: Manners,
     /// The banks; a [`BankIx`] is a place in this list.
     pub banks: Vec<Arc<Bank>>,
     /// Where each bank's measurements come from, in the same order.
     pub feeds: Vec<Feed>,
+    /// The ways out of a notice besides the broker.
+    pub outlets: Vec<Outlet>,
+    /// Where the values that were given stand.
+    pub origins: Origins,
 }
 
 /// The plant.
@@ -32,17 +47,6 @@ pub struct PlantSettings {
     pub zone: jiff::tz::TimeZone,
     /// Its shifts, in the order written.
     pub shifts: Vec<Shift>,
-}
-
-/// A shift by the clock on the wall; one that ends at or before its start ends the next day.
-#[derive(Clone, Debug, PartialEq)]
-pub struct Shift {
-    /// Its name.
-    pub name: Name,
-    /// Start.
-    pub from: jiff::civil::Time,
-    /// End.
-    pub to: jiff::civil::Time,
 }
 
 /// The protocol's version.
@@ -63,7 +67,8 @@ pub struct Broker {
     pub port: u16,
     /// Whether the connection is encrypted (`mqtts://`).
     pub tls: bool,
-    /// Client id of the connection that listens; the one that speaks appends `-notices`.
+    /// Client id of the connection that listens; the one that speaks appends `-notices`, the one
+    /// for Sparkplug `-sparkplug`.
     pub client_id: String,
     /// Version.
     pub protocol: Protocol,
@@ -104,9 +109,13 @@ pub struct WebSettings {
     pub listen: SocketAddr,
     /// One token per line, optionally preceded by `look ` or `act `.
     pub token_file: Option<PathBuf>,
+    /// PEM file of the certificate chain with which we encrypt; without it we do not.
+    pub certificate_file: Option<PathBuf>,
+    /// PEM file of its key.
+    pub key_file: Option<PathBuf>,
     /// Said explicitly: something in front of us encrypts.
     pub tls_in_front: bool,
-    /// The address people use, when it is not `http://{listen}`.
+    /// The address people use, when it is not that of `listen`.
     pub address: Option<String>,
 }
 
@@ -119,8 +128,31 @@ pub struct Feed {
     pub topic: TopicTemplate,
     /// What is in a payload.
     pub payload: PayloadForm,
+    /// What of it is believed.
+    pub belief: Belief,
     /// Names of the columns of recordings.
     pub recording: RecordingColumns,
+    /// What tells the source of a value.
+    pub told_by: ToldBy,
+}
+
+/// What tells the source of a value.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum ToldBy {
+    /// Topic or payload.
+    Message,
+    /// The time at which it was taken: the sources are shifts.
+    Time,
+}
+
+impl ToldBy {
+    /// What stands for the source where no message names one.
+    pub const fn stand_in(self) -> Option<&'static str> {
+        match self {
+            Self::Message => None,
+            Self::Time => Some("all shifts"),
+        }
+    }
 }
 
 /// A topic with at most one `{source}` standing for one whole level, `+` for any one level and `#`
@@ -131,43 +163,6 @@ pub struct TopicTemplate {
     pub levels: Vec<String>,
     /// Which level names the source.
     pub source_level: Option<usize>,
-}
-
-/// The form of a payload.
-#[derive(Clone, Debug, PartialEq, Eq)]
-pub enum PayloadForm {
-    /// The whole payload is one decimal number.
-    Number,
-    /// A JSON document.
-    Json(JsonPointers),
-}
-
-/// Where things stand in a JSON document, as RFC 6901 pointers.
-#[derive(Clone, Debug, PartialEq, Eq)]
-pub struct JsonPointers {
-    /// The value.
-    pub value: String,
-    /// The source, when it is not in the topic.
-    pub source: Option<String>,
-    /// The time taken.
-    pub time: Option<String>,
-    /// How that is written.
-    pub time_form: TimeForm,
-    /// The cycle.
-    pub cycle: Option<String>,
-}
-
-/// How a time is written.
-#[derive(Clone, Copy, Debug, PartialEq, Eq)]
-pub enum TimeForm {
-    /// RFC 3339 text, or a number: seconds below 1e11, milliseconds from there on.
-    Auto,
-    /// RFC 3339 text with offset.
-    Rfc3339,
-    /// Seconds since the Unix epoch, fractions allowed.
-    EpochSeconds,
-    /// Milliseconds since the Unix epoch.
-    EpochMilliseconds,
 }
 
 /// Names of the columns of a recording.
@@ -204,10 +199,16 @@ impl Settings {
         &self.feeds[bank.index()]
     }
 
+    /// Which notices go to which outlet.
+    pub fn routes(&self) -> Vec<crate::notice::Route> {
+        self.outlets.iter().map(|o| o.route.clone()).collect()
+    }
+
     /// Where people find the pages, without a slash at the end.
     pub fn pages(&self) -> String {
         match &self.web.address {
             Some(address) => address.trim_end_matches('/').to_owned(),
+            None if self.web.certificate_file.is_some() => format!("https://{}", self.web.listen),
             None => format!("http://{}", self.web.listen),
         }
     }

@@ -1,9 +1,14 @@
 //! The configuration as written: every key optional, every value with its place, types checked and
 //! meaning not.
 
+mod outlet;
+
+pub(super) use outlet::WrittenOutlet;
+
 use super::fault::{FaultList, Place};
 use super::raw::{Kind, Node, Table};
-use super::section::{Field, Section, Spot};
+use super::section::{Field, Section};
+use super::written_payload::{WrittenPayload, payload};
 
 /// The whole.
 pub(super) struct Written {
@@ -11,7 +16,9 @@ pub(super) struct Written {
     pub(super) broker: WrittenBroker,
     pub(super) store: WrittenStore,
     pub(super) web: WrittenWeb,
+    pub(super) notices: WrittenNotices,
     pub(super) banks: Field<Vec<WrittenBank>>,
+    pub(super) outlets: Field<Vec<WrittenOutlet>>,
 }
 
 /// `[plant]`.
@@ -59,8 +66,21 @@ pub(super) struct WrittenWeb {
     pub(super) place: Place,
     pub(super) listen: Field<String>,
     pub(super) token_file: Field<String>,
+    pub(super) certificate_file: Field<String>,
+    pub(super) key_file: Field<String>,
     pub(super) address: Field<String>,
     pub(super) tls_in_front: Field<bool>,
+}
+
+/// `[notices]`.
+pub(super) struct WrittenNotices {
+    pub(super) place: Place,
+    pub(super) longest_shelving: Field<String>,
+    pub(super) latching: Field<bool>,
+    pub(super) repeat_after: Field<String>,
+    pub(super) on_delay: Field<String>,
+    pub(super) off_delay: Field<String>,
+    pub(super) settling: Field<String>,
 }
 
 /// `[[bank]]`.
@@ -76,6 +96,8 @@ pub(super) struct WrittenBank {
     pub(super) limits: Field<WrittenLimits>,
     pub(super) topic: Field<String>,
     pub(super) payload: Field<WrittenPayload>,
+    pub(super) sentinels: Field<Vec<Node>>,
+    pub(super) plausible: Field<WrittenLimits>,
     pub(super) sources: Field<WrittenSources>,
     pub(super) most_sources: Field<i64>,
     pub(super) pairing: Field<WrittenPairing>,
@@ -88,25 +110,17 @@ pub(super) struct WrittenBank {
     pub(super) silent_after: Field<String>,
     pub(super) oldest_days: Field<i64>,
     pub(super) layout: Field<String>,
+    pub(super) groups: Field<Node>,
+    pub(super) cost_per_unit: Field<String>,
+    pub(super) reference: Field<String>,
     pub(super) offsets: Field<Node>,
     pub(super) recording: Field<WrittenRecording>,
 }
 
-/// `limits`.
+/// `limits` and `plausible`.
 pub(super) struct WrittenLimits {
     pub(super) lower: Field<String>,
     pub(super) upper: Field<String>,
-}
-
-/// `payload`, with the word alone standing for a table with that form.
-pub(super) struct WrittenPayload {
-    pub(super) place: Place,
-    pub(super) form: Field<String>,
-    pub(super) value: Field<String>,
-    pub(super) source: Field<String>,
-    pub(super) time: Field<String>,
-    pub(super) time_form: Field<String>,
-    pub(super) cycle: Field<String>,
 }
 
 /// `sources`: a word or a list.
@@ -144,9 +158,13 @@ impl Written {
             broker: WrittenBroker::read(part(&mut top, "broker", faults), faults),
             store: WrittenStore::read(part(&mut top, "store", faults), faults),
             web: WrittenWeb::read(part(&mut top, "web", faults), faults),
+            notices: WrittenNotices::read(part(&mut top, "notices", faults), faults),
             banks: top
                 .sections("bank", "bank", faults)
                 .map(|list, _| each(list, faults, WrittenBank::read)),
+            outlets: top
+                .sections("outlet", "outlet", faults)
+                .map(|list, _| each(list, faults, WrittenOutlet::read)),
         };
         top.close(faults);
         written
@@ -241,8 +259,26 @@ impl WrittenWeb {
             place: s.place.clone(),
             listen: s.text("listen", faults),
             token_file: s.text("token_file", faults),
+            certificate_file: s.text("certificate_file", faults),
+            key_file: s.text("key_file", faults),
             address: s.text("address", faults),
             tls_in_front: s.flag("tls_in_front", faults),
+        };
+        s.close(faults);
+        written
+    }
+}
+
+impl WrittenNotices {
+    fn read(mut s: Section, faults: &mut FaultList) -> Self {
+        let written = Self {
+            place: s.place.clone(),
+            longest_shelving: s.text("longest_shelving", faults),
+            latching: s.flag("latching", faults),
+            repeat_after: s.text("repeat_after", faults),
+            on_delay: s.text("on_delay", faults),
+            off_delay: s.text("off_delay", faults),
+            settling: s.text("settling", faults),
         };
         s.close(faults);
         written
@@ -265,6 +301,10 @@ impl WrittenBank {
                 .map(|section, _| WrittenLimits::read(section, faults)),
             topic: s.text("topic", faults),
             payload: payload(&mut s, faults),
+            sentinels: s.list("sentinels", faults),
+            plausible: s
+                .section("plausible", "bank.plausible", faults)
+                .map(|section, _| WrittenLimits::read(section, faults)),
             sources: sources(&mut s, faults),
             most_sources: s.whole("most_sources", faults),
             pairing: pairing(&mut s, faults),
@@ -277,6 +317,9 @@ impl WrittenBank {
             silent_after: s.text("silent_after", faults),
             oldest_days: s.whole("oldest_days", faults),
             layout: s.text("layout", faults),
+            groups: s.node("groups"),
+            cost_per_unit: s.number("cost_per_unit", faults),
+            reference: s.text("reference", faults),
             offsets: s.node("offsets"),
             recording: s
                 .section("recording", "bank.recording", faults)
@@ -298,34 +341,6 @@ impl WrittenLimits {
     }
 }
 
-impl WrittenPayload {
-    fn read(mut s: Section, faults: &mut FaultList) -> Self {
-        let written = Self {
-            place: s.place.clone(),
-            form: s.text("form", faults),
-            value: s.text("value", faults),
-            source: s.text("source", faults),
-            time: s.text("time", faults),
-            time_form: s.text("time_form", faults),
-            cycle: s.text("cycle", faults),
-        };
-        s.close(faults);
-        written
-    }
-
-    fn of_form(form: String, place: Place) -> Self {
-        Self {
-            place: place.clone(),
-            form: Field::Given(Spot { value: form, place }),
-            value: Field::Absent,
-            source: Field::Absent,
-            time: Field::Absent,
-            time_form: Field::Absent,
-            cycle: Field::Absent,
-        }
-    }
-}
-
 impl WrittenRecording {
     fn read(mut s: Section, faults: &mut FaultList) -> Self {
         let written = Self {
@@ -340,25 +355,13 @@ impl WrittenRecording {
     }
 }
 
-fn payload(s: &mut Section, faults: &mut FaultList) -> Field<WrittenPayload> {
-    let how = |kind, place: &Place, faults: &mut FaultList| match kind {
-        Kind::Text(form) => Ok(WrittenPayload::of_form(form, place.clone())),
-        Kind::Table(table) => {
-            let section = Section::new("bank.payload", place.clone(), table);
-            Ok(WrittenPayload::read(section, faults))
-        }
-        other => Err(other.what()),
-    };
-    s.either("payload", "a word or a table", faults, how)
-}
-
 fn sources(s: &mut Section, faults: &mut FaultList) -> Field<WrittenSources> {
     let how = |kind, _: &Place, _: &mut FaultList| match kind {
         Kind::Text(word) => Ok(WrittenSources::Word(word)),
         Kind::List(list) => Ok(WrittenSources::Listed(list)),
         other => Err(other.what()),
     };
-    s.either("sources", "a list or \"discover\"", faults, how)
+    s.either("sources", "a list, \"discover\" or \"shifts\"", faults, how)
 }
 
 fn pairing(s: &mut Section, faults: &mut FaultList) -> Field<WrittenPairing> {

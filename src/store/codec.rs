@@ -131,6 +131,14 @@ pub(super) fn from_payload<T: DeserializeOwned>(payload: &[u8]) -> Result<T, Dec
     postcard::from_bytes(payload).map_err(|e| DecodeError::Content(e.to_string()))
 }
 
+/// The plain record at the start of a payload, and what follows it.
+///
+/// # Errors
+/// When the payload begins with something else.
+pub(super) fn take_payload<T: DeserializeOwned>(payload: &[u8]) -> Result<(T, &[u8]), DecodeError> {
+    postcard::take_from_bytes(payload).map_err(|e| DecodeError::Content(e.to_string()))
+}
+
 #[cfg(test)]
 mod tests {
     use super::*;

@@ -4,8 +4,8 @@ use std::sync::Arc;
 
 use serde::de::DeserializeOwned;
 
-use crate::engine::{History, HistoryError, Page};
-use crate::model::Time;
+use crate::engine::{Evidence, History, HistoryError, Page};
+use crate::model::{LineEvent, Time};
 use crate::notice::Notice;
 use crate::verdict::{Digest, Look};
 
@@ -13,6 +13,10 @@ use super::codec::from_payload;
 use super::keys::{self, Sort};
 use super::recover::{ReadError, payload};
 use super::shelf::{Order, Shelf};
+
+/// Looks of one moment, one per span, are among this many records before the end of a stretch. A bank
+/// has a handful of spans; one that is seldom judged over `span` is sought no further back.
+const NEAREST: usize = 24;
 
 /// Reads a shelf.
 pub(super) struct Past(pub(super) Arc<dyn Shelf>);
@@ -26,6 +30,22 @@ impl Past {
     fn get<T: DeserializeOwned>(&self, key: &[u8]) -> Result<Option<T>, ReadError> {
         let value = self.0.get(key)?;
         value.map(|value| self.record(key, &value)).transpose()
+    }
+
+    /// A bank's records of a sort with `from <= at < to`, oldest first, the newest `most` of them.
+    fn of_times<T: DeserializeOwned>(
+        &self,
+        sort: Sort,
+        bank: &str,
+        (from, to): (Time, Time),
+        most: usize,
+    ) -> Result<Vec<T>, ReadError> {
+        let prefix = keys::of_bank(sort, bank);
+        let from = keys::times_from(&prefix, from);
+        let to = keys::times_from(&prefix, to);
+        let page = self.0.page(&from, &to, Order::Falling, most)?;
+        let newest_last = page.iter().rev();
+        newest_last.map(|(k, v)| self.record(k, v)).collect()
     }
 
     fn newest_per_span(&self, bank: &str, at: Time) -> Result<Vec<Look>, ReadError> {
@@ -48,6 +68,23 @@ impl Past {
             };
             from = keys::looks_from(&prefix, next, Time::from_us(i64::MIN));
         }
+    }
+
+    /// The newest digest over `span` with `from <= at < to`.
+    fn newest_over(
+        &self,
+        prefix: &[u8],
+        span: usize,
+        (from, to): (Time, Time),
+    ) -> Result<Option<Digest>, ReadError> {
+        let from = keys::times_from(prefix, from);
+        let to = keys::times_from(prefix, to);
+        let some = self.0.page(&from, &to, Order::Falling, NEAREST)?;
+        let mut those = some.iter();
+        let found = those.find(|(key, _)| keys::digest_span_of(key) == Some(span));
+        found
+            .map(|(key, value)| self.record(key, value))
+            .transpose()
     }
 
     fn page_of_notices(&self, after: Option<&str>, most: usize) -> Result<Page<Notice>, ReadError> {
@@ -96,15 +133,37 @@ impl History for Past {
         to: Time,
         most: usize,
     ) -> Result<Vec<Digest>, HistoryError> {
+        self.of_times(Sort::Digest, bank, (from, to), most)
+            .map_err(wrong)
+    }
+
+    fn line_events(
+        &self,
+        bank: &str,
+        from: Time,
+        to: Time,
+        most: usize,
+    ) -> Result<Vec<LineEvent>, HistoryError> {
+        self.of_times(Sort::Line, bank, (from, to), most)
+            .map_err(wrong)
+    }
+
+    fn digests_thinned(
+        &self,
+        bank: &str,
+        span: usize,
+        (from, to): (Time, Time),
+        parts: usize,
+    ) -> Result<Vec<Digest>, HistoryError> {
         let prefix = keys::of_bank(Sort::Digest, bank);
-        let from = keys::digests_from(&prefix, from);
-        let to = keys::digests_from(&prefix, to);
-        let page = self.0.page(&from, &to, Order::Falling, most);
-        let page = page.map_err(|e| wrong(e.into()))?;
-        let newest_last = page.iter().rev();
-        newest_last
-            .map(|(key, value)| self.record(key, value).map_err(wrong))
-            .collect()
+        let length = to.us_since(from).max(0) as f64;
+        let edge = |part: usize| {
+            let share = part as f64 / parts.max(1) as f64;
+            from.plus_us((length * share) as i64)
+        };
+        let parts = (0..parts).map(|part| (edge(part), edge(part + 1)));
+        let found = parts.filter_map(|part| self.newest_over(&prefix, span, part).transpose());
+        found.map(|digest| digest.map_err(wrong)).collect()
     }
 
     fn looks_at(&self, bank: &str, at: Time) -> Result<Vec<Look>, HistoryError> {
@@ -117,5 +176,9 @@ impl History for Past {
 
     fn notice(&self, id: &str) -> Result<Option<Notice>, HistoryError> {
         self.get(&keys::notice(id)).map_err(wrong)
+    }
+
+    fn evidence(&self, id: &str) -> Result<Option<Evidence>, HistoryError> {
+        self.get(&keys::evidence(id)).map_err(wrong)
     }
 }

@@ -164,6 +164,10 @@ impl<S: Shelf> Journal<S> {
                 let key = keys::digest(bank, digest.at, digest.span);
                 self.put(ops, key, &to_payload(digest).map_err(encode)?);
             }
+            Record::Line { bank, turn, event } => {
+                let key = keys::line_event(bank, event.at, *turn);
+                self.put(ops, key, &to_payload(event).map_err(encode)?);
+            }
             Record::Look(look) => {
                 let key = keys::look(&look.bank, look.span, look.at);
                 self.replace(ops, key, &to_payload(look).map_err(encode)?)?;
@@ -173,12 +177,8 @@ impl<S: Shelf> Journal<S> {
                 self.replace(ops, keys::notice(&notice.id), &payload)?;
                 self.put(ops, keys::raised(notice.raised, &notice.id), &[]);
             }
-            Record::Evidence {
-                notice,
-                look,
-                windows,
-            } => {
-                let payload = to_payload(&(look, windows)).map_err(encode)?;
+            Record::Evidence { notice, evidence } => {
+                let payload = to_payload(evidence).map_err(encode)?;
                 self.replace(ops, keys::evidence(notice), &payload)?;
             }
             Record::Delivery(delivery) => {

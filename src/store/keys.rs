@@ -15,6 +15,8 @@ const CHECKPOINT: u8 = b'c';
 const DIGEST: u8 = b'd';
 const EVIDENCE: u8 = b'e';
 const TURN: u8 = b'j';
+/// Line events of a bank.
+const LINE: u8 = b'k';
 const LOOK: u8 = b'l';
 const NOTICE: u8 = b'n';
 const DELIVERY: u8 = b'o';
@@ -29,6 +31,7 @@ pub(super) enum Sort {
     Checkpoint,
     Digest,
     Turn,
+    Line,
     Look,
     Delivery,
     Raised,
@@ -40,6 +43,7 @@ impl Sort {
             Self::Checkpoint => CHECKPOINT,
             Self::Digest => DIGEST,
             Self::Turn => TURN,
+            Self::Line => LINE,
             Self::Look => LOOK,
             Self::Delivery => DELIVERY,
             Self::Raised => RAISED,
@@ -128,14 +132,26 @@ pub(super) fn beyond(prefix: &[u8]) -> Vec<u8> {
     [prefix, &[u8::MAX; 16]].concat()
 }
 
-/// Where a bank's digests from `at` on begin.
-pub(super) fn digests_from(bank_prefix: &[u8], at: Time) -> Vec<u8> {
+/// Where a bank's digests or line events from `at` on begin.
+pub(super) fn times_from(bank_prefix: &[u8], at: Time) -> Vec<u8> {
     [bank_prefix, &time(at)].concat()
 }
 
 pub(super) fn digest(bank: &str, at: Time, span: usize) -> Vec<u8> {
     let prefix = of_bank(Sort::Digest, bank);
-    [&digests_from(&prefix, at)[..], &length(span)].concat()
+    [&times_from(&prefix, at)[..], &length(span)].concat()
+}
+
+/// A line event of a bank; the turn tells those of one moment apart.
+pub(super) fn line_event(bank: &str, at: Time, turn: u64) -> Vec<u8> {
+    let prefix = of_bank(Sort::Line, bank);
+    [&times_from(&prefix, at)[..], &turn.to_be_bytes()].concat()
+}
+
+/// The span in a key of [`digest`].
+pub(super) fn digest_span_of(key: &[u8]) -> Option<usize> {
+    let bytes = key.get(key.len().checked_sub(4)?..)?;
+    usize::try_from(u32::from_be_bytes(bytes.try_into().ok()?)).ok()
 }
 
 /// Where a bank's looks over `span` from `at` on begin.

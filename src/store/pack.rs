@@ -7,10 +7,10 @@
 
 use std::collections::{BTreeMap, BTreeSet};
 
-use crate::engine::{Due, Event, Turn};
-use crate::model::{BankIx, Measurement, Name, Time, Value};
+use crate::engine::{Due, Event, Judged, Onward, Turn};
+use crate::model::{BankIx, Measurement, Name, SourceIx, Time, Value};
 
-use super::codec::{DecodeError, from_payload, to_payload};
+use super::codec::{DecodeError, from_payload, take_payload, to_payload};
 
 /// The event follows as postcard.
 const PLAIN: u8 = 0;
@@ -175,36 +175,84 @@ fn banks_used(rest: &mut Reader<'_>, banks: &[Name]) -> Result<Vec<Option<BankIx
 }
 
 fn pack_due(out: &mut Vec<u8>, due: &Due, banks: &[Name]) -> Result<(), DecodeError> {
-    let Due { silent, looks } = due;
+    let Due {
+        silent,
+        looks,
+        onward,
+        upkeep,
+        conditions,
+    } = due;
     let all: BTreeSet<BankIx> = silent
         .iter()
         .map(|(b, _)| b)
         .chain(looks)
+        .chain(onward.iter().map(|o| &o.bank))
+        .chain(upkeep)
+        .chain(conditions.iter().map(|c| &c.bank))
         .copied()
         .collect();
     let used: Vec<BankIx> = all.into_iter().collect();
     put_banks(out, &used, banks)?;
     let place = |bank: BankIx| BankIx(used.partition_point(|b| *b < bank) as u16);
-    let written = Due {
-        silent: silent.iter().map(|&(b, s)| (place(b), s)).collect(),
-        looks: looks.iter().map(|&b| place(b)).collect(),
-    };
-    out.extend(to_payload(&written)?);
+    let silent: Vec<_> = silent.iter().map(|&(b, s)| (place(b), s)).collect();
+    let looks: Vec<_> = looks.iter().map(|&b| place(b)).collect();
+    let onward: Vec<_> = onward.iter().map(|o| at(o, place(o.bank))).collect();
+    let upkeep: Vec<_> = upkeep.iter().map(|&b| place(b)).collect();
+    let judged = conditions.iter().map(|c| judged_at(c, place(c.bank)));
+    let judged: Vec<_> = judged.collect();
+    out.extend(to_payload(&(silent, looks))?);
+    // What came later than the first version follows, as far as there is any.
+    let later = !upkeep.is_empty() || !judged.is_empty();
+    if later || !onward.is_empty() {
+        out.extend(to_payload(&onward)?);
+    }
+    if later {
+        out.extend(to_payload(&(upkeep, judged))?);
+    }
     Ok(())
 }
 
 fn unpack_due(rest: &mut Reader<'_>, banks: &[Name]) -> Result<Due, DecodeError> {
     let used = banks_used(rest, banks)?;
-    let written: Due = from_payload(rest.0)?;
+    let (silent, rest): (Vec<(BankIx, SourceIx)>, _) = take_payload(rest.0)?;
+    let (looks, rest): (Vec<BankIx>, _) = take_payload(rest)?;
+    let (onward, rest): (Vec<Onward>, _) = match rest {
+        [] => (Vec::new(), rest),
+        rest => take_payload(rest)?,
+    };
+    let (upkeep, judged): (Vec<BankIx>, Vec<Judged>) = match rest {
+        [] => Default::default(),
+        rest => from_payload(rest)?,
+    };
     let now = |place: BankIx| used.get(place.index()).copied().flatten();
+    let silent = silent.into_iter().filter_map(|(b, s)| Some((now(b)?, s)));
+    let onward = onward.iter().filter_map(|o| Some(at(o, now(o.bank)?)));
+    let judged = judged
+        .iter()
+        .filter_map(|c| Some(judged_at(c, now(c.bank)?)));
     Ok(Due {
-        silent: written
-            .silent
-            .into_iter()
-            .filter_map(|(b, s)| Some((now(b)?, s)))
-            .collect(),
-        looks: written.looks.into_iter().filter_map(now).collect(),
+        silent: silent.collect(),
+        looks: looks.into_iter().filter_map(now).collect(),
+        onward: onward.collect(),
+        upkeep: upkeep.into_iter().filter_map(now).collect(),
+        conditions: judged.collect(),
     })
+}
+
+/// The same with its bank counted otherwise.
+fn judged_at(judged: &Judged, bank: BankIx) -> Judged {
+    Judged {
+        bank,
+        ..judged.clone()
+    }
+}
+
+/// The same with its bank counted otherwise.
+fn at(onward: &Onward, bank: BankIx) -> Onward {
+    Onward {
+        bank,
+        ..onward.clone()
+    }
 }
 
 fn put_one(

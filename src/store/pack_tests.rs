@@ -3,8 +3,9 @@
 use proptest::prelude::*;
 
 use super::*;
-use crate::engine::{Command, Condition, Part, Ticket};
+use crate::engine::{Command, Condition, Judged, Onward, Part, Ticket};
 use crate::model::SourceIx;
+use crate::notice::{CallOutcome, Deed, Detail, Kind, Trouble};
 use crate::store::samples::{banks, batch_of, measurement};
 
 fn same(turn: &Turn, banks: &[Name]) {
@@ -92,6 +93,21 @@ fn other_events_come_back_as_they_were() {
         Event::Due(Due {
             silent: vec![(BankIx(2), SourceIx(7)), (BankIx(0), SourceIx(0))],
             looks: vec![BankIx(1), BankIx(2)],
+            onward: vec![Onward {
+                bank: BankIx(1),
+                notice: "capper-2026-0003".into(),
+                outlet: "night phone".into(),
+            }],
+            upkeep: vec![BankIx(2)],
+            conditions: vec![Judged {
+                bank: BankIx(1),
+                kind: Kind::SourceSilent,
+                troubles: vec![Trouble {
+                    source: Some("03".into()),
+                    since: Time::from_us(-4),
+                    detail: Detail::Silent,
+                }],
+            }],
         }),
         Event::Delivered { number: 9 },
         Event::NotDelivered {
@@ -105,8 +121,9 @@ fn other_events_come_back_as_they_were() {
         Event::Command {
             ticket: Ticket(3),
             who: "Ana".into(),
-            what: Command::Acknowledge {
+            what: Command::Notice {
                 notice: "filler-2-2026-1".into(),
+                deed: Deed::Acknowledge(Some(CallOutcome::NothingFound)),
                 comment: "on it".to_owned(),
             },
         },
@@ -135,6 +152,8 @@ fn banks_keep_their_measurements_when_the_configuration_changes_its_order() {
         Event::Due(Due {
             silent: silent.iter().map(|&b| (BankIx(b), SourceIx(5))).collect(),
             looks: looks.iter().copied().map(BankIx).collect(),
+            upkeep: looks.iter().copied().map(BankIx).collect(),
+            ..Due::default()
         })
     };
     let payload = pack(&turn(0, due(&[2, 0], &[1, 2])), &before).unwrap();
@@ -148,8 +167,8 @@ fn a_measurement_of_no_bank_is_not_written() {
     assert!(pack(&turn(0, Event::Measurements(all)), &banks()).is_err());
     let looks = vec![BankIx(9)];
     let due = Event::Due(Due {
-        silent: Vec::new(),
         looks,
+        ..Due::default()
     });
     assert!(pack(&turn(0, due), &banks()).is_err());
 }

@@ -34,7 +34,7 @@ pub(super) fn retain(
     let looks_before = days(keep_days.max(1));
 
     let mut ops = old_turns(shelf, banks, turns_before)?;
-    for sort in [Sort::Digest, Sort::Look] {
+    for sort in [Sort::Digest, Sort::Line, Sort::Look] {
         old_of_banks(shelf, sort, looks_before, &mut ops)?;
     }
     let count = ops.len();
@@ -85,7 +85,7 @@ fn old_turns(
     Ok(ops)
 }
 
-/// The digests or looks of every bank from before `before`.
+/// The digests, line events or looks of every bank from before `before`.
 fn old_of_banks(
     shelf: &dyn Shelf,
     sort: Sort,
@@ -98,7 +98,7 @@ fn old_of_banks(
         let Some(prefix) = first.first().and_then(|(key, _)| group(sort, key)) else {
             break;
         };
-        let to = keys::digests_from(&prefix, before);
+        let to = keys::times_from(&prefix, before);
         let page = shelf.page(&prefix, &to, Order::Rising, MOST_REMOVED - ops.len())?;
         for (key, value) in &page {
             ops.push(Op::Remove(key.clone()));

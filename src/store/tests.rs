@@ -174,6 +174,7 @@ fn history_gives_the_same_answers_on_both() {
         for s in 0..10 {
             records.push(digest("filler-2", at(s), 40));
             records.push(digest("capper", at(s), 40));
+            records.push(digest("filler-2", at(s), 160));
             records.push(Record::Look(look("filler-2", at(s), 40)));
             let state = State::Unacknowledged;
             records.push(Record::Notice(notice(&format!("n-{s}"), at(s), state)));
@@ -186,9 +187,21 @@ fn history_gives_the_same_answers_on_both() {
             let some = history.digests("filler-2", at(from), at(to), most).unwrap();
             some.iter().map(|d| d.at).collect()
         };
-        assert_eq!(times(2, 5, 100), [at(2), at(3), at(4)]);
-        assert_eq!(times(0, 100, 2), [at(8), at(9)]);
+        assert_eq!(times(2, 4, 100), [at(2), at(2), at(3), at(3)]);
+        assert_eq!(times(0, 100, 2), [at(9), at(9)]);
         assert_eq!(times(5, 2, 100), []);
+
+        let thinned = |span, from, to, parts| -> Vec<(usize, Time)> {
+            let range = (at(from), at(to));
+            let some = history.digests_thinned("filler-2", span, range, parts);
+            some.unwrap().iter().map(|d| (d.span, d.at)).collect()
+        };
+        // Two parts of four seconds, then one that nothing lies in.
+        assert_eq!(thinned(40, 0, 8, 2), [(40, at(3)), (40, at(7))]);
+        assert_eq!(thinned(160, 0, 40, 2), [(160, at(9))]);
+        assert_eq!(thinned(80, 0, 8, 2), []);
+        assert_eq!(thinned(40, 8, 0, 2), []);
+        assert_eq!(thinned(40, 0, 8, 0), []);
 
         let looks = |s| -> Vec<(usize, Time)> {
             let some = history.looks_at("filler-2", at(s)).unwrap();

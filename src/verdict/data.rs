@@ -1,8 +1,12 @@
 //! What a look works on: the newest values of each source, side by side where the bank pairs.
 
+use std::ops::Range;
+
 use crate::model::{SourceIx, Time};
 use crate::stats::Blocks;
 use crate::window::{Entry, Windows};
+
+use super::usual::Usual;
 
 /// A source with fewer values than this is left out of a look: its own spread is unknown.
 const FEWEST_VALUES: usize = 5;
@@ -12,8 +16,10 @@ const FEWEST_VALUES: usize = 5;
 pub struct Data {
     /// Who takes part, in display order; a place in this list is a column.
     pub sources: Vec<SourceIx>,
-    /// The values.
+    /// The values, each source's usual place taken off.
     pub values: Values,
+    /// Those places, a source each.
+    pub usual: Vec<Usual>,
 }
 
 /// Values, paired or not; all are offsets from the bank's origin.
@@ -33,7 +39,42 @@ pub struct Rows {
     cells: Vec<f64>,
 }
 
+impl Values {
+    fn take_off(&mut self, usual: &[Usual]) {
+        match self {
+            Self::Paired(rows) => {
+                let rows = rows.cells.chunks_exact_mut(usual.len().max(1));
+                for (cell, known) in rows.flat_map(|row| row.iter_mut().zip(usual)) {
+                    *cell -= known.place;
+                }
+            }
+            Self::Alone(series) => {
+                for (values, known) in series.iter_mut().zip(usual) {
+                    values.iter_mut().for_each(|e| e.offset -= known.place);
+                }
+            }
+        }
+    }
+}
+
 impl Rows {
+    /// An empty table.
+    pub fn new(columns: usize) -> Self {
+        Self {
+            columns,
+            ..Self::default()
+        }
+    }
+
+    /// Adds a row after the others: its cycle or slot, when its first value was taken, and its cells, of
+    /// which those that are not given are missing.
+    pub fn push(&mut self, place: i64, taken: Time, cells: &[f64]) {
+        let end = self.cells.len() + self.columns;
+        self.places.push((place, taken));
+        self.cells.extend(cells.iter().take(self.columns));
+        self.cells.resize(end, f64::NAN);
+    }
+
     /// Number of rows.
     pub fn len(&self) -> usize {
         self.places.len()
@@ -100,14 +141,30 @@ pub enum Need {
 impl Data {
     /// The newest `longest` values of the sources in `who`; where the bank pairs, of the cycles in which
     /// at least `least` of them are present.
-    pub fn gather(windows: &Windows, who: &[SourceIx], least: usize, longest: usize) -> Self {
-        let values = match windows.blocks() {
-            Some(blocks) => Values::Paired(rows(windows, who, least, longest, blocks.closed_to())),
-            None => Values::Alone(who.iter().map(|&s| newest(windows, s, longest)).collect()),
+    pub fn gather(
+        windows: &Windows,
+        who: &[(SourceIx, Usual)],
+        least: usize,
+        longest: usize,
+    ) -> Self {
+        let sources: Vec<SourceIx> = who.iter().map(|w| w.0).collect();
+        let mut values = match windows.blocks() {
+            Some(blocks) => {
+                Values::Paired(rows(windows, &sources, least, longest, blocks.closed_to()))
+            }
+            None => Values::Alone(
+                sources
+                    .iter()
+                    .map(|&s| newest(windows, s, longest))
+                    .collect(),
+            ),
         };
+        let usual: Vec<Usual> = who.iter().map(|w| w.1).collect();
+        values.take_off(&usual);
         Self {
-            sources: who.to_vec(),
+            sources,
             values,
+            usual,
         }
     }
 
@@ -124,7 +181,7 @@ impl Data {
                     return None;
                 }
                 let from = rows.len().saturating_sub(span);
-                self.cut_rows(rows, from, least)
+                self.cut_rows(rows, from..rows.len(), least)
             }
             Values::Alone(series) => self.cut_series(series, span, least, need),
         }
@@ -132,41 +189,54 @@ impl Data {
 
     /// The rows (or values taken) from the place `from` on, with at least two values each.
     pub fn since(&self, from: i64) -> Option<Self> {
+        self.between(from, i64::MAX)
+    }
+
+    /// The rows (or values taken) before the place `to`, with at least two values each.
+    pub fn before(&self, to: i64) -> Option<Self> {
+        self.between(i64::MIN, to)
+    }
+
+    fn between(&self, from: i64, to: i64) -> Option<Self> {
         match &self.values {
             Values::Paired(rows) => {
-                let first = rows.places.partition_point(|p| p.0 < from);
-                self.cut_rows(rows, first, 2)
+                let at = |place: i64| rows.places.partition_point(|p| p.0 < place);
+                let end = if to == i64::MAX { rows.len() } else { at(to) };
+                self.cut_rows(rows, at(from)..end, 2)
             }
             Values::Alone(series) => {
-                let newer = |s: &Vec<Entry>| {
-                    let first = s.partition_point(|e| e.place < from);
-                    s[first..].to_vec()
-                };
-                let cut: Vec<Vec<Entry>> = series.iter().map(newer).collect();
+                let inside = |e: &&Entry| e.place >= from && (e.place < to || to == i64::MAX);
+                let cut = |s: &Vec<Entry>| s.iter().filter(inside).copied().collect();
+                let cut: Vec<Vec<Entry>> = series.iter().map(cut).collect();
                 self.keep_series(&cut, 2)
             }
         }
     }
 
-    fn cut_rows(&self, rows: &Rows, from: usize, least: usize) -> Option<Self> {
+    fn cut_rows(&self, rows: &Rows, range: Range<usize>, least: usize) -> Option<Self> {
         let enough = |&c: &usize| {
-            (from..rows.len())
-                .filter(|&r| !rows.row(r)[c].is_nan())
-                .take(least)
-                .count()
-                == least
+            let present = range.clone().filter(|&r| !rows.row(r)[c].is_nan());
+            present.take(least).count() == least
         };
         let keep: Vec<usize> = (0..rows.columns).filter(enough).collect();
-        if keep.len() < 2 || rows.len() - from < 2 {
+        if keep.len() < 2 || range.len() < 2 {
             return None;
         }
         let mut cut = rows.keep_columns(&keep);
-        cut.cells.drain(..from * keep.len());
-        cut.places.drain(..from);
-        Some(Self {
+        cut.cells.truncate(range.end * keep.len());
+        cut.places.truncate(range.end);
+        cut.cells.drain(..range.start * keep.len());
+        cut.places.drain(..range.start);
+        Some(self.kept(&keep, Values::Paired(cut)))
+    }
+
+    /// The same with these columns' values alone.
+    fn kept(&self, keep: &[usize], values: Values) -> Self {
+        Self {
             sources: keep.iter().map(|&c| self.sources[c]).collect(),
-            values: Values::Paired(cut),
-        })
+            usual: keep.iter().map(|&c| self.usual[c]).collect(),
+            values,
+        }
     }
 
     fn cut_series(
@@ -189,9 +259,9 @@ impl Data {
         let keep: Vec<usize> = (0..series.len())
             .filter(|&c| series[c].len() >= least)
             .collect();
-        (keep.len() >= 2).then(|| Self {
-            sources: keep.iter().map(|&c| self.sources[c]).collect(),
-            values: Values::Alone(keep.iter().map(|&c| series[c].clone()).collect()),
+        (keep.len() >= 2).then(|| {
+            let values = keep.iter().map(|&c| series[c].clone()).collect();
+            self.kept(&keep, Values::Alone(values))
         })
     }
 

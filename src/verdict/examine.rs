@@ -1,24 +1,27 @@
 //! The look itself: every span examined, and what is called.
 
+use serde::{Deserialize, Serialize};
+
 use crate::model::{Bank, Name, Pairing, SourceIx, Time};
 use crate::stats;
 use crate::window::Windows;
 
+use super::causes::Causes;
 use super::data::{Data, Need};
 use super::level::Level;
 use super::look::{Dependence, Finding, Look, SourceLook};
+use super::naming::{Party, call_of, named_level};
 use super::shares::Shares;
 use super::spread::{Spread, Within};
-use super::track::{self, Aspect, Yardstick};
+use super::track::{Aspect, Moment};
+use super::usual::Usual;
+use super::watch::Crossing;
 
 /// With fewer independent values per source than this, dependence has eaten the window.
 const FEWEST_INDEPENDENT: f64 = 4.0;
 
-/// Fewest cycles on which sources are named again after the start is known.
-const FEWEST_TO_RENAME: usize = 5;
-
 /// One source as an examination sees it.
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub struct Participant {
     /// Which.
     pub source: SourceIx,
@@ -28,6 +31,8 @@ pub struct Participant {
     pub margin: f64,
     /// Whether it delivers nothing now; a cycle then counts without it.
     pub silent: bool,
+    /// Where it usually stands; `None` while that is being learnt, and it is not compared until then.
+    pub usual: Option<Usual>,
 }
 
 /// A call: sources left the even set.
@@ -39,8 +44,37 @@ pub struct Call {
     pub named: Vec<SourceIx>,
     /// Everybody they were compared with.
     pub reference: Vec<SourceIx>,
-    /// The span of the look that called.
+    /// The span of the look that called, or that of the look which says most plainly what the watch called
+    /// on.
     pub span: usize,
+    /// Since when, as the watch has it; `None` when a look called.
+    pub began: Option<Began>,
+    /// What explains it besides names.
+    pub causes: Causes,
+}
+
+/// Since when sources are apart, with the set of starts that the values allow at 95 %.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub struct Began {
+    /// The most likely start.
+    pub start: Moment,
+    /// The earliest.
+    pub earliest: Moment,
+    /// The latest.
+    pub latest: Moment,
+}
+
+/// What an examination is for.
+#[derive(Clone, Copy, Debug)]
+pub struct Asked<'a> {
+    /// When.
+    pub at: Time,
+    /// How much a span must hold.
+    pub need: Need,
+    /// Time between values of the slowest source, where it is known.
+    pub interval_us: Option<i64>,
+    /// What the watch found, when that is the reason.
+    pub crossing: Option<&'a Crossing>,
 }
 
 /// What a look at all spans says.
@@ -50,31 +84,39 @@ pub struct Examination {
     pub looks: Vec<Look>,
     /// What is called, at most one for each aspect; spread first.
     pub calls: Vec<Call>,
+    /// What the watch's crossing calls, with its names.
+    pub crossed: Option<Call>,
     /// The values it rests on.
     pub data: Data,
     /// How much dependence enlarges variances.
     pub factor: f64,
+    /// What each look may spend.
+    pub shares: Shares,
 }
 
 /// Looks at a bank over all its spans. `who` are the sources that take part, in display order.
-pub fn examine(
-    bank: &Bank,
-    windows: &Windows,
-    who: &[Participant],
-    at: Time,
-    need: Need,
-) -> Examination {
-    let order: Vec<SourceIx> = who.iter().map(|p| p.source).collect();
+pub fn examine(bank: &Bank, windows: &Windows, who: &[Participant], asked: Asked) -> Examination {
+    let Asked {
+        at,
+        need,
+        interval_us,
+        crossing,
+    } = asked;
+    let placed = who.iter().filter_map(|p| Some((p.source, p.usual?)));
+    let placed: Vec<(SourceIx, Usual)> = placed.collect();
     let look = Looking {
         bank,
         who,
         at,
-        shares: Shares::of(bank),
+        shares: match interval_us.filter(|_| !bank.is_watched()) {
+            Some(us) => Shares::overlapping(bank, who.len(), us),
+            None => Shares::of(bank),
+        },
         origin: windows.origin().to_f64(),
     };
     let delivering = who.iter().filter(|p| !p.silent).count();
     let least = delivering.div_ceil(2).max(2);
-    let data = Data::gather(windows, &order, least, bank.window_length());
+    let data = Data::gather(windows, &placed, least, bank.window_length());
     let mut known: Option<Dependence> = None;
     let mut spans = Vec::new();
     // Longest first: it knows best how much successive values resemble each other.
@@ -87,9 +129,15 @@ pub fn examine(
     let calls = [Aspect::Spread, Aspect::Level]
         .into_iter()
         .filter_map(|aspect| strongest(&spans, aspect))
-        .map(|(call, margins)| look.rename(&data, call, &margins, known))
+        .map(|call| look.party().name_again(&data, call, known))
         .collect();
+    let crossed = crossing.map(|c| {
+        let call = look.call_of_crossing(&spans, c);
+        look.party().name_again(&data, call, known)
+    });
     Examination {
+        shares: look.shares,
+        crossed,
         looks: spans.into_iter().map(|s| s.look).collect(),
         calls,
         data,
@@ -100,21 +148,20 @@ pub fn examine(
 /// One span's look and what it calls.
 struct Seen {
     look: Look,
-    margins: Vec<f64>,
     level: Option<(f64, Call)>,
     spread: Option<(f64, Call)>,
 }
 
-fn strongest(spans: &[Seen], aspect: Aspect) -> Option<(Call, Vec<f64>)> {
+fn strongest(spans: &[Seen], aspect: Aspect) -> Option<Call> {
     let of = |s: &Seen| match aspect {
         Aspect::Level => s.level.clone(),
         Aspect::Spread => s.spread.clone(),
     };
-    let calls = spans
+    let best = spans
         .iter()
-        .filter_map(|s| of(s).map(|(p, call)| (p, call, s.margins.clone())));
-    let best = calls.min_by(|a, b| a.0.total_cmp(&b.0))?;
-    Some((best.1, best.2))
+        .filter_map(of)
+        .min_by(|a, b| a.0.total_cmp(&b.0))?;
+    Some(best.1)
 }
 
 struct Looking<'a> {
@@ -127,28 +174,28 @@ struct Looking<'a> {
 
 impl Looking<'_> {
     fn over(&self, data: &Data, span: usize, need: Need, known: Option<Dependence>) -> Seen {
+        if data.sources.len() < 2 && self.who.iter().any(|p| p.usual.is_none()) {
+            return self.nothing(span, "usual places are still being learnt".to_owned());
+        }
         let Some(cut) = data.cut(span, need) else {
             return self.nothing(span, "the window is not filled yet".to_owned());
         };
-        let margins = self.margins(&cut);
-        match Level::judge(&cut, &margins, known) {
-            Ok(level) => self.seen(&cut, span, margins, level),
+        match self.party().level(&cut, known) {
+            Ok(level) => self.seen(&cut, span, level),
             Err(why) => self.nothing(span, why.to_string()),
         }
     }
 
-    fn margins(&self, cut: &Data) -> Vec<f64> {
-        let margin = |s: &SourceIx| {
-            let own = self.who.iter().find(|p| p.source == *s);
-            own.map_or(self.bank.margin, |p| p.margin)
-        };
-        cut.sources.iter().map(margin).collect()
+    fn party(&self) -> Party<'_> {
+        Party {
+            bank: self.bank,
+            who: self.who,
+        }
     }
 
     fn nothing(&self, span: usize, remark: String) -> Seen {
         Seen {
             look: self.blank(span, Finding::NotEnoughData, remark),
-            margins: Vec::new(),
             level: None,
             spread: None,
         }
@@ -170,7 +217,7 @@ impl Looking<'_> {
         }
     }
 
-    fn seen(&self, cut: &Data, span: usize, margins: Vec<f64>, level: Level) -> Seen {
+    fn seen(&self, cut: &Data, span: usize, level: Level) -> Seen {
         let factor = level.dependence.map_or(1.0, |d| d.variance_factor);
         let within = if self.bank.pairing == Pairing::None {
             Within::Raw
@@ -179,7 +226,10 @@ impl Looking<'_> {
         };
         let spread = Spread::judge(&level.within, within, self.bank.spread_margin, factor);
         let spread_call = spread.as_ref().filter(|s| s.calls(self.shares.spread));
-        let level_named = level.calls(self.shares.level).then(|| named_level(&level));
+        let reference = self.party().reference(cut);
+        let level_named = level
+            .calls(self.shares.level)
+            .then(|| named_level(&level, reference));
         let finding = match (spread_call, &level_named) {
             (Some(_), _) => Finding::SpreadApart,
             (None, Some(_)) => Finding::LevelApart,
@@ -202,12 +252,11 @@ impl Looking<'_> {
         if self.bank.pairing != Pairing::None {
             look.tests.extend(raw_spread(cut));
         }
-        let call = |aspect, named: &[bool]| call_of(cut, aspect, named, span);
+        let call = |aspect, named: &[bool], reference| call_of(cut, aspect, named, span, reference);
         Seen {
-            level: level_named.map(|n| (level.deciding_p(), call(Aspect::Level, &n))),
-            spread: spread_call.map(|s| (s.p, call(Aspect::Spread, &s.named))),
+            level: level_named.map(|n| (level.deciding_p(), call(Aspect::Level, &n, reference))),
+            spread: spread_call.map(|s| (s.p, call(Aspect::Spread, &s.named, None))),
             look,
-            margins,
         }
     }
 
@@ -218,6 +267,10 @@ impl Looking<'_> {
                 "{missing} of {} sources have too few values for this span",
                 self.who.len()
             );
+        }
+        if self.bank.reference.is_some() && self.party().reference(cut).is_none() {
+            return "the reference source delivers nothing: sources are compared with each other"
+                .to_owned();
         }
         if spread.is_none() && self.bank.pairing != Pairing::None && cut.sources.len() == 2 {
             return "two sources that share cycles mirror each other: spread is not judged"
@@ -243,7 +296,7 @@ impl Looking<'_> {
                 source: cut.sources[c],
                 name: name.map_or_else(|| "".into(), |p| p.name.clone()),
                 n: summary.n,
-                mean: self.origin + summary.mean,
+                mean: self.origin + cut.usual[c].place + summary.mean,
                 sd: spread.map_or_else(own_sd, |s| s.sds[c]),
                 deviation: level.deviations[c],
                 sd_ratio: spread.and_then(|s| s.ratios[c]),
@@ -254,77 +307,36 @@ impl Looking<'_> {
         (0..cut.sources.len()).map(one).collect()
     }
 
-    /// Names again on the values since the estimated start, which the calling span mixes with older
-    /// ones.
-    fn rename(&self, data: &Data, call: Call, margins: &[f64], known: Option<Dependence>) -> Call {
-        if call.aspect == Aspect::Spread {
-            return call;
-        }
-        let yard = Yardstick {
-            reference: &call.reference,
-            margin: margins.iter().copied().fold(0.0, f64::max),
-            factor: known.map_or(1.0, |d| d.variance_factor),
-            family: self.who.len(),
+    /// The span whose look says most plainly what the watch called on.
+    fn most_telling(&self, spans: &[Seen], aspect: Aspect) -> usize {
+        let p_of = |look: &Look| match aspect {
+            Aspect::Level => look.level_test().map(|t| t.p_paid),
+            Aspect::Spread => look.spread_test().map(|t| t.p_paid),
         };
-        let starts = call
-            .named
+        let judged = spans
             .iter()
-            .filter_map(|s| track::locate(data, *s, call.aspect, &yard));
-        let Some(start) = starts.map(|l| l.start.place).min() else {
-            return call;
-        };
-        let Some(since) = data.since(start) else {
-            return call;
-        };
-        let enough = since.columns().iter().all(|c| c.len() >= FEWEST_TO_RENAME);
-        if !enough || since.sources.len() < call.named.len() + call.reference.len() {
-            return call;
-        }
-        match Level::judge(&since, &self.margins(&since), known) {
-            Ok(level) if level.even.contains(&false) => {
-                call_of(&since, Aspect::Level, &named_level(&level), call.span)
-            }
-            _ => call,
-        }
+            .filter_map(|s| Some((p_of(&s.look)?, s.look.span)));
+        let plainest = judged.min_by(|a, b| a.0.total_cmp(&b.0));
+        plainest.map_or_else(|| self.bank.window_length(), |(_, span)| span)
     }
-}
 
-/// Whoever is outside the even set; of two sources, both. When the pairs single nobody out although
-/// the test calls, the one farthest off in standard errors.
-fn named_level(level: &Level) -> Vec<bool> {
-    let k = level.even.len();
-    if k == 2 {
-        return vec![true; 2];
-    }
-    let mut named: Vec<bool> = level.even.iter().map(|e| !e).collect();
-    if !named.contains(&true) {
-        let farness = |i: usize| {
-            level.deviations[i].map_or(0.0, |d| {
-                d.value.abs() / (d.high - d.low).max(f64::MIN_POSITIVE)
-            })
-        };
-        if let Some(worst) = (0..k).max_by(|&a, &b| farness(a).total_cmp(&farness(b))) {
-            named[worst] = true;
+    /// What a crossing of the watch calls before the values since its start are asked for the names.
+    fn call_of_crossing(&self, spans: &[Seen], crossing: &Crossing) -> Call {
+        let leads = |s: &SourceIx| crossing.leading.contains(s);
+        let all = self.who.iter().map(|p| p.source);
+        let (named, rest): (Vec<SourceIx>, Vec<SourceIx>) = all.partition(leads);
+        Call {
+            aspect: crossing.aspect,
+            reference: if rest.is_empty() { named.clone() } else { rest },
+            named,
+            span: self.most_telling(spans, crossing.aspect),
+            began: Some(Began {
+                start: crossing.start,
+                earliest: crossing.earliest,
+                latest: crossing.latest,
+            }),
+            causes: Causes::default(),
         }
-    }
-    named
-}
-
-fn call_of(cut: &Data, aspect: Aspect, named: &[bool], span: usize) -> Call {
-    let pick = |yes: bool| -> Vec<SourceIx> {
-        let those = cut.sources.iter().zip(named).filter(|(_, n)| **n == yes);
-        those.map(|(s, _)| *s).collect()
-    };
-    let mut reference = pick(false);
-    if reference.is_empty() {
-        // Two sources: each is compared with the other.
-        reference.clone_from(&cut.sources);
-    }
-    Call {
-        aspect,
-        named: pick(true),
-        reference,
-        span,
     }
 }
 

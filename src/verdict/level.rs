@@ -9,7 +9,8 @@ use crate::stats::{self, Blocked, Degenerate, Df, Summary, Test, dist};
 
 use super::data::{Data, Values};
 use super::dependence;
-use super::even::{Means, NAMING_ALPHA};
+use super::errors::Errors;
+use super::judged::Judged;
 use super::look::{Dependence, Estimate, Method, TestEntry};
 
 /// Intervals shown to people hold together for all sources with this probability.
@@ -31,25 +32,36 @@ pub struct Level {
     pub dependence: Option<Dependence>,
     /// What spread is judged on: residuals within the cycle, or the raw values.
     pub within: Vec<Vec<f64>>,
+    /// The sources' means, in the unit, about a centre of their own.
+    pub means: Vec<f64>,
+    /// How surely those differ.
+    pub errors: Errors,
 }
 
 impl Level {
     /// Judges a cut of the data. `margins` holds each column's margin; a pair's is the larger one.
-    /// `known` is the bank's dependence as estimated from more values than these.
+    /// With a `reference` (a column) the others are compared with it alone. `known` is the bank's
+    /// dependence as estimated from more values than these.
     ///
     /// # Errors
     /// [`Degenerate`] when nothing can be said.
     pub fn judge(
         data: &Data,
         margins: &[f64],
+        reference: Option<usize>,
         known: Option<Dependence>,
     ) -> Result<Self, Degenerate> {
+        let terms = Terms {
+            margins,
+            reference,
+            known,
+        };
         match &data.values {
             Values::Paired(rows) => {
                 let blocked = stats::blocked_anova(&rows.blocks(0))?;
-                Ok(paired(data, blocked, margins, known))
+                Ok(paired(data, blocked, &terms))
             }
-            Values::Alone(_) => alone(data, margins, known),
+            Values::Alone(_) => alone(data, &terms),
         }
     }
 
@@ -66,15 +78,45 @@ impl Level {
     }
 }
 
-fn paired(data: &Data, blocked: Blocked, margins: &[f64], known: Option<Dependence>) -> Level {
+/// On what terms sources are compared.
+struct Terms<'a> {
+    margins: &'a [f64],
+    reference: Option<usize>,
+    known: Option<Dependence>,
+}
+
+impl Terms<'_> {
+    fn judge(&self, n: &[usize], means: &[f64], errors: &Errors) -> Judged {
+        match self.reference {
+            Some(reference) => Judged::against(reference, n, means, errors, self.margins),
+            None => Judged::every_pair(means, errors, self.margins),
+        }
+    }
+
+    /// What everybody's deviation is from.
+    fn set(&self, even: &[bool]) -> Vec<bool> {
+        match self.reference {
+            Some(reference) => (0..even.len()).map(|i| i == reference).collect(),
+            None => even.to_vec(),
+        }
+    }
+}
+
+fn paired(data: &Data, blocked: Blocked, terms: &Terms) -> Level {
     let k = data.sources.len();
     let within: Vec<Vec<f64>> = (0..k).map(|c| blocked.residuals.source_values(c)).collect();
-    let dependence = known.or_else(|| dependence::estimate(&within));
+    let dependence = terms.known.or_else(|| dependence::estimate(&within));
     let factor = dependence.map_or(1.0, |d| d.variance_factor);
     let variance = blocked.ms_residual * factor;
     let df = (blocked.residual_df / factor).max(1.0);
-    let error = |i: usize, j: usize| ((variance * blocked.difference_variance(i, j)).sqrt(), df);
-    let paid = dist::f::sf(blocked.test.statistic / factor, (k - 1) as f64, df);
+    let share = |i: usize| data.usual[i].share;
+    let errors = Errors::new(k, |i, j| {
+        let own = blocked.difference_variance(i, j);
+        (variance * (own + share(i) + share(j)), df)
+    });
+    // Learnt places have chance of their own, of which the textbook's F knows nothing.
+    let learnt = variance / errors.mean_variance() * mean_variance(&blocked);
+    let paid = dist::f::sf(blocked.test.statistic / factor * learnt, (k - 1) as f64, df);
     let mut tests = vec![entry(
         Method::BlockedAnova,
         blocked.test,
@@ -85,38 +127,61 @@ fn paired(data: &Data, blocked: Blocked, margins: &[f64], known: Option<Dependen
     tests.extend(classical(&columns, Form::Raw));
     let centre = grand_mean(&columns);
     let means: Vec<f64> = blocked.effects.iter().map(|e| e + centre).collect();
-    let judged = Judged::new(&means, &error, margins);
-    let pairwise = |i: usize, j: usize| variance * blocked.difference_variance(i, j);
+    let n: Vec<usize> = columns.iter().map(Vec::len).collect();
+    let judged = terms.judge(&n, &means, &errors);
     Level {
         tests,
-        deviations: deviations(&means, &judged.even, |one, set| {
-            (contrast_variance(&pairwise, one, set), df)
+        deviations: deviations(&means, &terms.set(&judged.even), |one, set| {
+            (errors.of_contrast(&against(k, one, set)).max(0.0), df)
         }),
         sigma: blocked.ms_residual.sqrt(),
         even: judged.even,
         pair_p: judged.pair_p,
         dependence,
         within,
+        means,
+        errors,
     }
 }
 
-fn alone(data: &Data, margins: &[f64], known: Option<Dependence>) -> Result<Level, Degenerate> {
+/// The mean variance of an effect in squared sigmas, as the differences show it.
+fn mean_variance(blocked: &Blocked) -> f64 {
+    Errors::new(blocked.effects.len(), |i, j| {
+        (blocked.difference_variance(i, j), 1.0)
+    })
+    .mean_variance()
+}
+
+/// Weights of (one - mean of set) over `k` sources.
+pub fn against(k: usize, one: usize, set: &[usize]) -> Vec<f64> {
+    let mut weights = vec![0.0; k];
+    for &j in set {
+        weights[j] -= 1.0 / set.len() as f64;
+    }
+    weights[one] += 1.0;
+    weights
+}
+
+fn alone(data: &Data, terms: &Terms) -> Result<Level, Degenerate> {
     let columns = data.columns();
-    let dependence = known.or_else(|| dependence::estimate(&columns));
+    let dependence = terms.known.or_else(|| dependence::estimate(&columns));
     let factor = dependence.map_or(1.0, |d| d.variance_factor);
     let summaries: Vec<Summary> = columns.iter().map(|c| stats::summarize(c)).collect();
-    let thinned: Vec<Summary> = summaries.iter().map(|s| thin(s, factor)).collect();
+    let each = summaries.iter().zip(&data.usual);
+    let thinned: Vec<Summary> = each.map(|(s, u)| thin(s, factor, u.share)).collect();
     let pairs = stats::games_howell_from(&thinned)?;
     let k = summaries.len();
-    let mut errors = vec![(0.0, 1.0); k * k];
+    let mut cells = vec![(0.0, 1.0); k * k];
     for p in &pairs {
-        errors[p.a * k + p.b] = (p.std_error, p.df);
-        errors[p.b * k + p.a] = (p.std_error, p.df);
+        let cell = (p.std_error * p.std_error, p.df);
+        cells[p.a * k + p.b] = cell;
+        cells[p.b * k + p.a] = cell;
     }
-    let error = |i: usize, j: usize| errors[i * k + j];
+    let errors = Errors::new(k, |i, j| cells[i * k + j]);
     let means: Vec<f64> = summaries.iter().map(|s| s.mean).collect();
-    let judged = Judged::new(&means, &error, margins);
-    let any_margin = margins.iter().any(|m| *m > 0.0);
+    let n: Vec<usize> = thinned.iter().map(|s| s.n).collect();
+    let judged = terms.judge(&n, &means, &errors);
+    let any_margin = terms.margins.iter().any(|m| *m > 0.0);
     let mut tests = classical(&columns, Form::AsDecided);
     if any_margin {
         tests.push(beyond_margin(&judged));
@@ -129,7 +194,7 @@ fn alone(data: &Data, margins: &[f64], known: Option<Dependence>) -> Result<Leve
     let variance = |i: usize| thinned[i].variance().unwrap_or(0.0) / thinned[i].n as f64;
     Ok(Level {
         tests,
-        deviations: deviations(&means, &judged.even, |one, set| {
+        deviations: deviations(&means, &terms.set(&judged.even), |one, set| {
             welch_contrast(&thinned, &variance, one, set)
         }),
         sigma: pooled_sd(&summaries),
@@ -137,36 +202,9 @@ fn alone(data: &Data, margins: &[f64], known: Option<Dependence>) -> Result<Leve
         pair_p,
         dependence,
         within: columns,
+        means,
+        errors,
     })
-}
-
-/// The even set and the most striking pair.
-struct Judged {
-    even: Vec<bool>,
-    pair_p: f64,
-    largest: f64,
-}
-
-impl Judged {
-    fn new(means: &[f64], error: &dyn Fn(usize, usize) -> (f64, f64), margins: &[f64]) -> Self {
-        let margin = |i: usize, j: usize| margins[i].max(margins[j]);
-        let all = Means {
-            means,
-            error,
-            margin: &margin,
-        };
-        let k = means.len();
-        let beyond = |i: usize, j: usize| {
-            ((means[i] - means[j]).abs() - margin(i, j)).max(0.0) / error(i, j).0
-        };
-        let pairs = (0..k).flat_map(|i| (i + 1..k).map(move |j| (i, j)));
-        Self {
-            even: all.even_set(NAMING_ALPHA),
-            pair_p: all.smallest_p(),
-            largest: std::f64::consts::SQRT_2
-                * pairs.map(|(i, j)| beyond(i, j)).fold(0.0, f64::max),
-        }
-    }
 }
 
 /// Whether a test is computed on raw values beside a deciding form on residuals.
@@ -230,9 +268,11 @@ fn beyond_margin(judged: &Judged) -> TestEntry {
     }
 }
 
-/// A summary with as many values as independent ones would tell as much (at least two).
-fn thin(s: &Summary, factor: f64) -> Summary {
-    let n = ((s.n as f64 / factor) as usize).clamp(2, s.n.max(2));
+/// A summary with as many values as independent ones, about a place that is known, would tell as much
+/// (at least two).
+fn thin(s: &Summary, factor: f64, share: f64) -> Summary {
+    let about_known = 1.0 / (1.0 / s.n as f64 + share);
+    let n = ((about_known / factor) as usize).clamp(2, s.n.max(2));
     let variance = s.variance().unwrap_or(0.0);
     Summary {
         n,
@@ -249,19 +289,6 @@ fn grand_mean(columns: &[Vec<f64>]) -> f64 {
 fn pooled_sd(summaries: &[Summary]) -> f64 {
     let df: usize = summaries.iter().map(|s| s.n.saturating_sub(1)).sum();
     (summaries.iter().map(|s| s.ss).sum::<f64>() / df.max(1) as f64).sqrt()
-}
-
-/// Variance of (one - mean of set) from the variances of differences: for weights c adding up to
-/// zero it is -1/2 sum c_a c_b Var(a - b).
-fn contrast_variance(difference: &impl Fn(usize, usize) -> f64, one: usize, set: &[usize]) -> f64 {
-    let size = set.len() as f64;
-    let to_set: f64 = set.iter().map(|&j| difference(one, j)).sum();
-    let inside: f64 = set
-        .iter()
-        .flat_map(|&a| set.iter().map(move |&b| (a, b)))
-        .map(|(a, b)| if a == b { 0.0 } else { difference(a, b) })
-        .sum();
-    (to_set / size - inside / (2.0 * size * size)).max(0.0)
 }
 
 /// Variance of (one - mean of set) of independent means, and its Welch–Satterthwaite df.
@@ -299,13 +326,20 @@ fn deviations(
     error: impl Fn(usize, &[usize]) -> (f64, f64),
 ) -> Vec<Option<Estimate>> {
     let k = means.len();
+    // In a paired bank all share their degrees of freedom, and the quantile costs more than the rest.
+    let mut quantile = (f64::NAN, None);
+    let mut t = |df: f64| {
+        if df != quantile.0 {
+            quantile = (df, dist::t::isf(SHOWN_ALPHA / (2 * k) as f64, df).ok());
+        }
+        quantile.1
+    };
     let deviation = |one: usize| {
         let set = others(even, one);
         let (variance, df) = error(one, &set);
         let reference = set.iter().map(|&j| means[j]).sum::<f64>() / set.len() as f64;
-        let t = dist::t::isf(SHOWN_ALPHA / (2 * k) as f64, df.max(1.0)).ok()?;
         let value = means[one] - reference;
-        let half = t * variance.sqrt();
+        let half = t(df.max(1.0))? * variance.sqrt();
         let finite = value.is_finite() && half.is_finite();
         finite.then_some(Estimate {
             value,

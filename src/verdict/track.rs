@@ -7,7 +7,7 @@
 use crate::model::{SourceIx, Time};
 use crate::stats::{self, dist};
 
-use super::data::{Data, Values};
+use super::data::{Data, Rows, Values};
 use super::look::Estimate;
 use super::steps::without_step;
 
@@ -69,6 +69,12 @@ pub const STILL: f64 = 0.01;
 
 /// Evidence of a return has at least this many values.
 const FEWEST_TO_CLEAR: f64 = 5.0;
+
+/// A lasting change of level shows only in the stretch it happens in.
+const STRETCH: usize = 50;
+
+/// With fewer stretches one that holds a step would weigh too much.
+const FEWEST_STRETCHES: usize = 6;
 
 /// Fewest values behind a size.
 const FEWEST: usize = 2;
@@ -192,11 +198,16 @@ impl Bar {
         let Some((contrast, own)) = series.contrast(start, aspect, yard) else {
             return false;
         };
-        // A handful of values often scatters little by chance: never believe less than the whole
-        // series' sd.
-        let known = match aspect {
-            Aspect::Level => sigma * (yard.factor / (series.values.len() - start) as f64).sqrt(),
-            Aspect::Spread => 0.0,
+        let n = (series.values.len() - start) as f64;
+        // A handful of values often scatters little or much by chance: never believe less than the whole
+        // series' sd, and more only beyond two standard errors of a variance.
+        let (own, known) = match aspect {
+            Aspect::Level => {
+                let believed = (1.0 - 2.0 * (2.0 / n).sqrt()).max(0.0);
+                let known = sigma * sigma / n + series.reference_error + series.usual_error;
+                (own * believed.sqrt(), (known * yard.factor).sqrt())
+            }
+            Aspect::Spread => (own, 0.0),
         };
         (self.half_width - contrast.abs()) / own.max(known) >= self.errors
     }
@@ -224,6 +235,8 @@ struct Series {
     reference_share: f64,
     /// Variance of the reference's mean, where it is one number for the whole series.
     reference_error: f64,
+    /// What the usual places add to the variance of the contrast, where they were learnt.
+    usual_error: f64,
 }
 
 impl Series {
@@ -272,6 +285,10 @@ impl Series {
             let size = others.len() as f64;
             series.reference_error = series.reference_variance * values / (size * size);
         }
+        let share = |c: &usize| data.usual[*c].share;
+        let size = others.len() as f64;
+        let shares = share(&column) + others.iter().map(share).sum::<f64>() / (size * size);
+        series.usual_error = shares * series.sigma().powi(2);
         Some(series)
     }
 
@@ -283,11 +300,18 @@ impl Series {
             reference_variance: 0.0,
             reference_share,
             reference_error: 0.0,
+            usual_error: 0.0,
         }
     }
 
-    /// Standard deviation of the contrast, a step taken out.
+    /// Standard deviation of the contrast, steps taken out: about the means of stretches, where there are
+    /// enough, because an incident that came and went has two steps; else the best single step.
     fn sigma(&self) -> f64 {
+        if self.values.len() >= FEWEST_STRETCHES * STRETCH {
+            let stretches = self.values.rchunks_exact(STRETCH).map(stats::summarize);
+            let (ss, count) = stretches.fold((0.0, 0), |(ss, n), s| (ss + s.ss, n + 1));
+            return (ss / ((STRETCH - 1) * count) as f64).sqrt();
+        }
         let flat = without_step(&self.values);
         let df = flat.len().saturating_sub(2).max(1);
         (flat.iter().map(|v| v * v).sum::<f64>() / df as f64).sqrt()
@@ -301,7 +325,7 @@ impl Series {
         match aspect {
             Aspect::Level => {
                 let own = s.variance()? / s.n as f64;
-                let se = ((own + self.reference_error) * yard.factor).sqrt();
+                let se = ((own + self.reference_error + self.usual_error) * yard.factor).sqrt();
                 (se > 0.0).then_some((s.mean, se))
             }
             Aspect::Spread => {
@@ -342,25 +366,38 @@ fn mean_of_present(columns: &[usize], row: &[f64]) -> Option<f64> {
 /// Variance of a reference source about the others of the reference, steps taken out; for a single
 /// one, about its own mean.
 fn reference_variance(data: &Data, columns: &[usize]) -> f64 {
-    let variances = columns.iter().map(|&c| {
-        let (values, share) = match &data.values {
-            Values::Paired(rows) if columns.len() > 1 => {
-                let rest: Vec<usize> = columns.iter().copied().filter(|o| *o != c).collect();
-                let each = (0..rows.len()).filter_map(|r| {
-                    let row = rows.row(r);
-                    let mean = mean_of_present(&rest, row)?;
-                    (!row[c].is_nan()).then(|| row[c] - mean)
-                });
-                (each.collect(), 1.0 + 1.0 / rest.len() as f64)
-            }
-            Values::Paired(rows) => (rows.column(c, 0), 1.0),
-            Values::Alone(all) => (offsets(&all[c]), 1.0),
-        };
-        let flat = without_step(&values);
+    let count = columns.len() as f64;
+    let contrasts = match &data.values {
+        Values::Paired(rows) if columns.len() > 1 => about_the_rest(rows, columns),
+        Values::Paired(rows) => vec![rows.column(columns[0], 0)],
+        Values::Alone(all) => columns.iter().map(|&c| offsets(&all[c])).collect(),
+    };
+    let share = match &data.values {
+        Values::Paired(_) if columns.len() > 1 => 1.0 + 1.0 / (count - 1.0),
+        Values::Paired(_) | Values::Alone(_) => 1.0,
+    };
+    let variance = |values: &Vec<f64>| {
+        let flat = without_step(values);
         let df = flat.len().saturating_sub(2).max(1);
         flat.iter().map(|v| v * v).sum::<f64>() / df as f64 / share
-    });
-    variances.sum::<f64>() / columns.len() as f64
+    };
+    contrasts.iter().map(variance).sum::<f64>() / count
+}
+
+/// Each column's present values less the mean of the other columns in the same row.
+fn about_the_rest(rows: &Rows, columns: &[usize]) -> Vec<Vec<f64>> {
+    let mut about = vec![Vec::with_capacity(rows.len()); columns.len()];
+    for r in 0..rows.len() {
+        let row = rows.row(r);
+        let present = columns.iter().map(|c| row[*c]).filter(|v| !v.is_nan());
+        let (n, sum) = present.fold((0.0, 0.0), |(n, s), v| (n + 1.0, s + v));
+        for (values, &c) in about.iter_mut().zip(columns) {
+            if !row[c].is_nan() && n > 1.0 {
+                values.push(row[c] - (sum - row[c]) / (n - 1.0));
+            }
+        }
+    }
+    about
 }
 
 /// ((sum of what lies beyond half the margin)+)^2 / n / sigma^2 for every start, in the direction in

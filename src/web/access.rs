@@ -14,6 +14,7 @@ use axum::http::{HeaderMap, Method, header};
 use axum::middleware::Next;
 use axum::response::{IntoResponse, Redirect, Response};
 
+use super::address;
 use super::problem::{Problem, wants_page};
 use super::site::{App, Reach};
 use super::tokens::Rights;
@@ -51,7 +52,7 @@ pub async fn guard(State(app): State<App>, mut request: Request, next: Next) -> 
             let path = request.uri().path();
             let get = matches!(*request.method(), Method::GET | Method::HEAD);
             if get && problem.status == 401 && wants_page(path, request.headers()) {
-                let back = super::signin::address_with_return(request.uri());
+                let back = address::sign_in_from(request.uri());
                 return Redirect::to(&back).into_response();
             }
             problem.into_response()

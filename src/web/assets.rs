@@ -18,8 +18,10 @@ struct Files;
 
 /// The address of the style sheet.
 pub static STYLE: LazyLock<String> = LazyLock::new(|| address("style.css"));
-/// The address of the script.
-pub static SCRIPT: LazyLock<String> = LazyLock::new(|| address("live.js"));
+/// The address of the script that keeps pages current.
+pub static LIVE: LazyLock<String> = LazyLock::new(|| address("live.js"));
+/// The address of the time band's script.
+pub static BAND: LazyLock<String> = LazyLock::new(|| address("band.js"));
 
 /// The glyph of the house as a picture in the page itself, so that no browser asks for a file.
 pub const ICON: &str = "data:image/svg+xml,%3Csvg xmlns='http://www.w3.org/2000/svg' \
@@ -35,6 +37,13 @@ fn address(file: &str) -> String {
             .fold(0_u32, |mark, byte| mark << 8 | u32::from(*byte))
     });
     format!("/assets/{file}?{mark:08x}")
+}
+
+/// The style sheet as text, for a page that is a file of its own.
+pub fn style() -> String {
+    let found = Files::get("style.css");
+    let bytes = found.map(|f| f.data.into_owned()).unwrap_or_default();
+    String::from_utf8_lossy(&bytes).into_owned()
 }
 
 /// Gives a file.

@@ -118,6 +118,22 @@ impl Times {
         }
     }
 
+    /// Reads a time: RFC 3339, or by the clock on the wall as browsers' fields write it.
+    pub fn read(&self, text: &str) -> Option<Time> {
+        let text = text.trim();
+        if let Ok(at) = Time::parse_rfc3339(text) {
+            return Some(at);
+        }
+        let wall: jiff::civil::DateTime = text.parse().ok()?;
+        let stamp = self.zone.to_timestamp(wall).ok()?;
+        Some(Time::from_us(stamp.as_microsecond()))
+    }
+
+    /// By the clock on the wall, as browsers' fields want it.
+    pub fn field(&self, at: Time) -> String {
+        self.write(at, "%Y-%m-%dT%H:%M")
+    }
+
     /// How long ago.
     pub fn ago(&self, at: Time) -> String {
         span_of_time(self.now.us_since(at))
@@ -177,6 +193,15 @@ mod tests {
         assert_eq!(times.short(at), "15:03");
         assert_eq!(times.short(at.plus_us(-US_PER_DAY)), "2 Jul 15:03");
         assert_eq!(times.second(times.hour_start(at)), "15:00:00");
+        for text in [
+            "2026-07-03T15:03:22",
+            "2026-07-03T14:03:22Z",
+            " 2026-07-03T15:03:22",
+        ] {
+            assert_eq!(times.read(text), Some(at), "{text}");
+        }
+        assert_eq!(times.field(at), "2026-07-03T15:03");
+        assert_eq!(times.read("yesterday"), None);
         assert_eq!(times.ago(at.plus_us(-754 * US_PER_S)), "12 min");
     }
 }

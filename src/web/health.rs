@@ -24,7 +24,7 @@ pub async fn ready(State(app): State<App>) -> Response {
 }
 
 /// What keeps us from being ready, store first.
-fn trouble(snapshot: &Snapshot) -> Option<String> {
+pub fn trouble(snapshot: &Snapshot) -> Option<String> {
     let parts = [("store", &snapshot.store), ("broker", &snapshot.broker)];
     let said: Vec<String> = parts
         .into_iter()

@@ -2,7 +2,7 @@
 //!
 //! The event carries the snapshot's version only; the script then asks for the page again and swaps
 //! what differs, so that there is one way in which a page is made. What must hold: at most one event
-//! per [`PAUSE`]; a stream for one bank is silent while that bank does not change; every stream ends
+//! per beat (`pulse`); a stream for one bank is silent while that bank does not change; every stream ends
 //! with the shutdown.
 
 use std::convert::Infallible;
@@ -16,14 +16,12 @@ use tokio::sync::watch;
 use tokio_stream::Stream;
 use tokio_util::sync::CancellationToken;
 
-use crate::engine::{BankView, Condition, Snapshot};
+use crate::engine::{BankView, Condition, OutletView, Snapshot};
 
 use super::site::App;
 
-/// People read slower than measurements arrive.
-const PAUSE: Duration = Duration::from_secs(2);
 /// Proxies cut connections that say nothing for a minute.
-const KEEP_ALIVE: Duration = Duration::from_secs(20);
+pub const KEEP_ALIVE: Duration = Duration::from_secs(20);
 
 /// What a page wants to hear about.
 #[derive(Debug, Deserialize)]
@@ -37,9 +35,9 @@ pub async fn stream(
     Query(wanted): Query<Wanted>,
 ) -> Sse<impl Stream<Item = Result<Event, Infallible>>> {
     let listener = Listener {
-        seen: seen(&app.now(), wanted.bank.as_deref()),
+        seen: seen(&app.pulse.borrow(), wanted.bank.as_deref()),
         bank: wanted.bank,
-        snapshot: app.site.snapshot.clone(),
+        snapshot: app.pulse.clone(),
         shutdown: app.shutdown.clone(),
     };
     let (tell, told) = tokio::sync::mpsc::channel(1);
@@ -52,7 +50,7 @@ pub async fn stream(
 /// plant, everything.
 #[derive(Clone)]
 enum Seen {
-    Bank(Option<Arc<BankView>>, [Condition; 2], Option<String>),
+    Bank(Option<Arc<BankView>>, [Condition; 2], Vec<OutletView>),
     Plant(u64),
 }
 
@@ -63,7 +61,13 @@ fn seen(snapshot: &Snapshot, bank: Option<&str>) -> Seen {
     let mut banks = snapshot.banks.iter();
     let found = banks.find(|b| &*b.bank.name == name).cloned();
     let parts = [snapshot.broker.clone(), snapshot.store.clone()];
-    Seen::Bank(found, parts, snapshot.outbox_trouble.clone())
+    Seen::Bank(found, parts, outlets_in_trouble(snapshot))
+}
+
+/// What every page shows of the ways out.
+fn outlets_in_trouble(snapshot: &Snapshot) -> Vec<OutletView> {
+    let all = snapshot.outlets.iter();
+    all.filter(|o| o.trouble.is_some()).cloned().collect()
 }
 
 fn same(a: &Seen, b: &Seen) -> bool {
@@ -108,10 +112,6 @@ impl Listener {
                 .data(snapshot.version.to_string());
             if tell.send(Ok(event)).await.is_err() {
                 return;
-            }
-            tokio::select! {
-                () = self.shutdown.cancelled() => return,
-                () = tokio::time::sleep(PAUSE) => {}
             }
         }
     }

@@ -5,12 +5,15 @@
 //! alert on. A p-value below some line happens every few hours in an even bank; the call budget is
 //! kept by the engine, and `evenrow_notice_active` is its word.
 
+mod notices;
+
 use axum::extract::State;
 use axum::http::header;
 use axum::response::{IntoResponse, Response};
 use prometheus::{GaugeVec, IntCounterVec, IntGauge, IntGaugeVec, Opts, Registry, TextEncoder};
 
 use crate::engine::{BankView, Condition, Snapshot, SourceState};
+use crate::model::Time;
 use crate::notice::Kind;
 use crate::verdict::{Look, Method, TestEntry};
 
@@ -28,7 +31,7 @@ const LOOKED_FOR: [Kind; 2] = [Kind::LevelApart, Kind::SpreadApart];
 
 /// Gives the metrics.
 pub async fn answer(State(app): State<App>) -> Response {
-    match text(&app.now(), &app.site.durations) {
+    match text(&app.now(), &app.site.durations, app.site.clock.now()) {
         Ok(text) => {
             let kind = [(
                 header::CONTENT_TYPE,
@@ -47,12 +50,13 @@ pub async fn answer(State(app): State<App>) -> Response {
 ///
 /// # Errors
 /// When the library refuses a name or cannot encode.
-pub fn text(snapshot: &Snapshot, durations: &Durations) -> Result<String, MetricsError> {
+pub fn text(snapshot: &Snapshot, durations: &Durations, now: Time) -> Result<String, MetricsError> {
     let families = Families::new()?;
     families.fill_plant(snapshot);
     for view in &snapshot.banks {
         families.fill_bank(view);
     }
+    notices::fill(&families.registry, snapshot, now)?;
     for histogram in durations.histograms() {
         families.registry.register(Box::new(histogram))?;
     }
@@ -70,11 +74,13 @@ struct Families {
     p: GaugeVec,
     f: GaugeVec,
     alpha: GaugeVec,
+    watch: GaugeVec,
     active: IntGaugeVec,
     notices: IntCounterVec,
     broker: IntGauge,
     store: IntGauge,
-    outbox: IntGauge,
+    outbox: IntGaugeVec,
+    deliveries: IntCounterVec,
     build: IntGaugeVec,
 }
 
@@ -122,11 +128,18 @@ impl Families {
                 LOOK_ALPHA,
                 &["bank", "kind", "span"],
             )?,
+            watch: figures(r, "evenrow_watch_ratio", WATCH_RATIO, &["bank", "part"])?,
             active: gauges(r, "evenrow_notice_active", ACTIVE, &["bank", "kind"])?,
             notices: counters(r, "evenrow_notices_total", NOTICES, &["bank", "kind"])?,
             broker: gauge(r, "evenrow_broker_connected", BROKER)?,
             store: gauge(r, "evenrow_store_writable", STORE)?,
-            outbox: gauge(r, "evenrow_deliveries_waiting", OUTBOX)?,
+            outbox: gauges(r, "evenrow_outbox_deliveries", OUTBOX, &["outlet"])?,
+            deliveries: counters(
+                r,
+                "evenrow_deliveries_total",
+                DELIVERIES,
+                &["outlet", "outcome"],
+            )?,
             build: gauges(r, "evenrow_build_info", BUILD, &["version"])?,
             registry,
         })
@@ -138,7 +151,17 @@ impl Families {
         };
         self.broker.set(well(&snapshot.broker));
         self.store.set(well(&snapshot.store));
-        self.outbox.set(whole(snapshot.outbox));
+        for outlet in &snapshot.outlets {
+            let name = &*outlet.name;
+            self.outbox
+                .with_label_values(&[name])
+                .set(whole(outlet.waiting));
+            for (outcome, count) in [("delivered", outlet.delivered), ("failed", outlet.failed)] {
+                self.deliveries
+                    .with_label_values(&[name, outcome])
+                    .inc_by(count);
+            }
+        }
         self.build
             .with_label_values(&[env!("CARGO_PKG_VERSION")])
             .set(1);
@@ -181,6 +204,10 @@ impl Families {
         self.fill_sources(view);
         for look in &view.looks {
             self.fill_look(bank, look);
+        }
+        for reading in view.watch.iter().flat_map(|w| &w.readings) {
+            let labels = [bank, reading.part.key()];
+            self.watch.with_label_values(&labels).set(reading.ratio);
         }
     }
 
@@ -283,7 +310,8 @@ const MEASUREMENTS: &str = "Measurements since the process started by outcome: a
 const WINDOW_VALUES: &str = "Values in a source's window now.";
 const SOURCES: &str = "Sources of a bank by state: awaited, new, present, silent.";
 const DEVIATION: &str = "Deviation of a source from the even set without it, in standard deviations \
-    within sources, over the longest span that could be judged. Shows size; it is not corrected for \
+    within sources: since it left where an open notice names it, else over the shortest span that \
+    resolves the margin. Shows size; it is not corrected for \
     how often one looks, so do not alert on it.";
 const NAMED: &str = "1 while an open notice of this kind names the source, else 0. Join it with \
     evenrow_notice_active on (bank, kind): the names of one notice share one family-wise error rate.";
@@ -296,11 +324,17 @@ const LOOK_F: &str = "F of the test that decides on this kind at the newest look
     Welch's where pairs beyond the margin decide.";
 const LOOK_ALPHA: &str =
     "The share of the call budget that one look over this span spends on this kind.";
+const WATCH_RATIO: &str = "Statistic of a part of the watch over its threshold: few (single sources), \
+    split (groups), pair (two sources apart), erratic, quiet. Above 1 the watch calls. It begins anew after \
+    a call; evenrow_notice_active is what to alert on.";
 const ACTIVE: &str = "Notices of this kind whose condition holds now. Alert on this and join \
     evenrow_source_named for the names: it is the only series that keeps the bank's call budget. \
     p-values and deviations do not.";
 const NOTICES: &str = "Notices raised since the process started.";
 const BROKER: &str = "1 while the broker is connected and every subscription confirmed, else 0.";
 const STORE: &str = "1 while the store is recovered and takes commits, else 0.";
-const OUTBOX: &str = "Deliveries of notices that no outlet has confirmed yet.";
+const OUTBOX: &str =
+    "Deliveries of notices that an outlet has not confirmed yet; mqtt is the broker.";
+const DELIVERIES: &str = "Deliveries of notices since the process started: delivered, or failed for \
+    a reason that was told. What failed is kept and sent again, so it may be counted more than once.";
 const BUILD: &str = "Always 1; the version stands in the label.";

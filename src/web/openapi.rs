@@ -4,7 +4,9 @@ use axum::Json;
 use utoipa::openapi::security::{HttpAuthScheme, HttpBuilder, SecurityScheme};
 use utoipa::{Modify, OpenApi};
 
-use super::api::{banks, notices};
+use super::api::form::Form;
+use super::api::{banks, deeds, explain, line, looks, notices, plant, stream};
+use super::problem::Problem;
 
 /// How tokens are sent.
 struct Token;
@@ -31,12 +33,24 @@ impl Modify for Token {
         license(name = "MIT", identifier = "MIT"),
     ),
     paths(
-        banks::list, banks::one, banks::windows, banks::looks, banks::refusals,
-        notices::list, notices::one, notices::acknowledge,
+        banks::list, banks::one, banks::sources, banks::source, banks::windows, banks::refusals,
+        line::list, line::enter,
+        explain::bank_explained, explain::evidence,
+        looks::list, looks::one,
+        notices::list, notices::one,
+        deeds::acknowledge, deeds::comment, deeds::shelve, deeds::unshelve, deeds::out_of_service,
+        deeds::in_service,
+        super::pages::handover::data,
+        plant::settings, plant::health, plant::refusals, stream::stream,
     ),
+    components(schemas(Problem, Form)),
     tags(
-        (name = "banks", description = "What is compared, now and before"),
+        (name = "banks", description = "What is compared, now"),
+        (name = "looks", description = "What the examinations said, now and before"),
         (name = "notices", description = "What people receive and act on"),
+        (name = "refusals", description = "What arrived and could not be used"),
+        (name = "plant", description = "Settings and health"),
+        (name = "stream", description = "What changes, as it changes"),
     ),
     modifiers(&Token),
 )]

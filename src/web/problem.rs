@@ -1,18 +1,13 @@
-//! Errors as RFC 9457 problem details, or as a page for people who came with a browser.
+//! Errors as RFC 9457 problem details.
 //!
-//! Owns the form of every answer with a status of 400 or more, also of those that the web framework
-//! makes. What must hold: the text says what is wrong and what to do, and gives nothing away that a
-//! caller without a token must not know.
+//! What must hold: the text says what is wrong and what to do, and gives nothing away that a caller
+//! without a token must not know. Deliberately absent: the page that people see instead (that is
+//! `dress`).
 
-use axum::extract::{Request, State};
 use axum::http::{HeaderMap, HeaderValue, StatusCode, header};
-use axum::middleware::Next;
 use axum::response::{IntoResponse, Response};
 use serde::Serialize;
 use utoipa::ToSchema;
-
-use super::pages::frame;
-use super::site::App;
 
 /// The media type of RFC 9457.
 const PROBLEM_JSON: &str = "application/problem+json";
@@ -77,7 +72,8 @@ impl Problem {
         Self::new(StatusCode::INTERNAL_SERVER_ERROR, detail)
     }
 
-    fn status_code(&self) -> StatusCode {
+    /// The status as the framework knows it.
+    pub fn status_code(&self) -> StatusCode {
         StatusCode::from_u16(self.status).unwrap_or(StatusCode::INTERNAL_SERVER_ERROR)
     }
 }
@@ -102,45 +98,4 @@ pub fn wants_page(path: &str, headers: &HeaderMap) -> bool {
     let accept = headers.get(header::ACCEPT).and_then(|a| a.to_str().ok());
     !for_programs.iter().any(|p| path.starts_with(p))
         && accept.is_some_and(|a| a.contains("text/html"))
-}
-
-/// The outermost layer: every error leaves as a problem or as a page.
-pub async fn dress(State(app): State<App>, request: Request, next: Next) -> Response {
-    let page = wants_page(request.uri().path(), request.headers());
-    let path = request.uri().path().to_owned();
-    let response = next.run(request).await;
-    let status = response.status();
-    if !status.is_client_error() && !status.is_server_error() {
-        return response;
-    }
-    let problem = match response.extensions().get::<Problem>() {
-        Some(problem) => problem.clone(),
-        None => Problem::new(status, &words(status, &path)),
-    };
-    let mut dressed = if page {
-        let body = frame::error(&app, &problem);
-        (problem.status_code(), body).into_response()
-    } else {
-        problem.into_response()
-    };
-    if let Some(allow) = response.headers().get(header::ALLOW) {
-        dressed.headers_mut().insert(header::ALLOW, allow.clone());
-    }
-    dressed
-}
-
-/// What to say when the framework itself refused.
-fn words(status: StatusCode, path: &str) -> String {
-    match status {
-        StatusCode::NOT_FOUND => format!("there is nothing at {path}"),
-        StatusCode::METHOD_NOT_ALLOWED => {
-            format!("{path} does not take this method; the Allow header says which it takes")
-        }
-        StatusCode::PAYLOAD_TOO_LARGE => "the request's body is larger than 64 KiB".to_owned(),
-        StatusCode::REQUEST_TIMEOUT => "the request took longer than 30 seconds".to_owned(),
-        StatusCode::UNSUPPORTED_MEDIA_TYPE => {
-            "the body's Content-Type is not one that this address takes".to_owned()
-        }
-        _ => "the request could not be served".to_owned(),
-    }
 }

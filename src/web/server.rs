@@ -3,22 +3,29 @@
 //! What must hold: every answer carries the security headers; bodies, requests and the drain are
 //! bounded; live streams end with the shutdown, so that the drain is short.
 
+use std::net::SocketAddr;
+use std::sync::Arc;
 use std::time::Duration;
 
 use axum::Router;
+use axum::extract::connect_info::IntoMakeServiceWithConnectInfo;
 use axum::http::{HeaderName, HeaderValue, StatusCode, header};
 use axum::middleware::{from_fn_with_state, map_response};
 use axum::response::Response;
 use axum::routing::{get, post};
+use axum_server::tls_rustls::RustlsConfig;
 use tokio::net::TcpListener;
 use tokio_util::sync::CancellationToken;
 use tower_http::compression::CompressionLayer;
 use tower_http::limit::RequestBodyLimitLayer;
 use tower_http::timeout::TimeoutLayer;
 
+use super::certificate::{self, CertificateError};
 use super::site::{App, Site};
 use super::tokens::TokenError;
-use super::{access, api, assets, health, live, metrics, openapi, pages, problem, signin};
+use super::{
+    access, api, assets, dress, health, limiting, live, metrics, openapi, pages, sharing, signin,
+};
 
 /// A comment of a few pages fits; nothing we take is larger.
 const BODY_LIMIT_BYTES: usize = 64 * 1024;
@@ -33,6 +40,9 @@ pub enum ServeError {
     /// The tokens cannot be used.
     #[error(transparent)]
     Tokens(#[from] TokenError),
+    /// The certificate cannot be used.
+    #[error(transparent)]
+    Certificate(#[from] CertificateError),
     /// The histograms cannot be made.
     #[error("the duration metrics cannot be made: {0}")]
     Durations(String),
@@ -44,19 +54,30 @@ pub enum ServeError {
     Serving(#[source] std::io::Error),
 }
 
-/// Serves until `shutdown`, then ends within three seconds.
+/// Serves until `shutdown`, then ends within three seconds; encrypted where the settings name a
+/// certificate.
 ///
 /// # Errors
-/// [`ServeError`] when the token file cannot be used or the listener fails.
+/// [`ServeError`] when the token file or the certificate cannot be used, or the listener fails.
 pub async fn serve(
     listener: TcpListener,
     site: Site,
     shutdown: CancellationToken,
 ) -> Result<(), ServeError> {
     let local = listener.local_addr().map_err(ServeError::Address)?;
+    let certificate = certificate::read(&site.settings.web)?;
     let app = App::new(site, local, shutdown.clone())?;
-    let serving = axum::serve(listener, router(app))
-        .with_graceful_shutdown(shutdown.clone().cancelled_owned());
+    let service = router(app).into_make_service_with_connect_info::<SocketAddr>();
+    let end = shutdown.clone();
+    let serving = async move {
+        match certificate {
+            Some(certificate) => encrypted(listener, certificate, service, end).await,
+            None => {
+                let plain = axum::serve(listener, service);
+                plain.with_graceful_shutdown(end.cancelled_owned()).await
+            }
+        }
+    };
     let bound = async {
         shutdown.cancelled().await;
         tokio::time::sleep(DRAIN_WITHIN).await;
@@ -70,21 +91,42 @@ pub async fn serve(
     }
 }
 
+/// Serves over TLS until `end`.
+async fn encrypted(
+    listener: TcpListener,
+    certificate: Arc<rustls::ServerConfig>,
+    service: IntoMakeServiceWithConnectInfo<Router, SocketAddr>,
+    end: CancellationToken,
+) -> std::io::Result<()> {
+    let config = RustlsConfig::from_config(certificate);
+    let handle = axum_server::Handle::new();
+    let server = axum_server::from_tcp_rustls(listener.into_std()?, config)?.handle(handle.clone());
+    tokio::spawn(async move {
+        end.cancelled().await;
+        handle.graceful_shutdown(Some(DRAIN_WITHIN));
+    });
+    server.serve(service).await
+}
+
 /// All routes with their layers.
 pub fn router(app: App) -> Router {
     let guarded = Router::new()
         .route("/", get(pages::plant::page))
         .route("/banks/{bank}", get(pages::bank::page))
+        .route("/banks/{bank}/events", post(pages::line::enter))
+        .route("/banks/{bank}/sources/{source}", get(pages::source::page))
+        .route("/settings", get(pages::settings::page))
+        .route("/about", get(pages::about::page))
         .route("/notices", get(pages::notices::list))
         .route("/notices/{id}", get(pages::notice::page))
-        .route(
-            "/notices/{id}/acknowledge",
-            post(pages::notice::acknowledge),
-        )
+        .route("/notices/{id}/{deed}", post(pages::deeds::enter))
+        .route("/handover", get(pages::handover::page))
+        .route("/api/v1/handover", get(pages::handover::data))
         .route("/live", get(live::stream))
         .route("/metrics", get(metrics::answer))
         .route("/api/v1/openapi.json", get(openapi::answer))
         .nest("/api/v1", api::router())
+        .layer(from_fn_with_state(app.clone(), sharing::layer))
         .layer(from_fn_with_state(app.clone(), access::guard));
     let open = Router::new()
         .route("/sign-in", get(signin::form).post(signin::enter))
@@ -99,7 +141,8 @@ pub fn router(app: App) -> Router {
             StatusCode::REQUEST_TIMEOUT,
             REQUEST_TIMEOUT,
         ))
-        .layer(from_fn_with_state(app.clone(), problem::dress))
+        .layer(from_fn_with_state(app.clone(), limiting::layer))
+        .layer(from_fn_with_state(app.clone(), dress::dress))
         .layer(CompressionLayer::new())
         .layer(map_response(headers))
         .with_state(app)

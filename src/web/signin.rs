@@ -1,6 +1,6 @@
 //! Signing in and out: the token is entered once, then a cookie stands for it.
 //!
-//! The cookie is `HttpOnly` and `SameSite=Strict`, and `Secure` where something in front encrypts.
+//! The cookie is `HttpOnly` and `SameSite=Strict`, and `Secure` where connections are encrypted.
 //! The sign-in form carries a one-time field that must equal a second cookie made with it: there is
 //! no session yet that could hold it.
 
@@ -8,12 +8,12 @@ use std::time::Duration;
 
 use axum::Form;
 use axum::extract::{Query, State};
-use axum::http::{HeaderMap, HeaderName, Uri, header};
+use axum::http::{HeaderMap, HeaderName, header};
 use axum::response::{IntoResponse, Redirect, Response};
-use percent_encoding::{AsciiSet, NON_ALPHANUMERIC, utf8_percent_encode};
 use serde::Deserialize;
 
 use super::access::{NO_TOKEN_FILE, cookie, from_elsewhere};
+use super::address::local;
 use super::pages;
 use super::problem::Problem;
 use super::sessions::{self, LASTS_US};
@@ -23,6 +23,10 @@ use super::site::App;
 const WRONG_TOKEN_PAUSE: Duration = Duration::from_millis(300);
 /// How long an opened sign-in form is good for, in seconds.
 const FORM_LASTS_S: u32 = 3600;
+
+/// Marks the answer to a wrong token, for whoever counts them.
+#[derive(Clone, Copy, Debug)]
+pub struct WrongToken;
 
 /// Where to go afterwards.
 #[derive(Debug, Default, Deserialize)]
@@ -44,12 +48,6 @@ pub struct Entered {
 #[derive(Deserialize)]
 pub struct Leaving {
     field: String,
-}
-
-/// The sign-in address that leads back to this one.
-pub fn address_with_return(uri: &Uri) -> String {
-    let back = uri.path_and_query().map_or("/", |p| p.as_str());
-    format!("/sign-in?next={}", percent(back))
 }
 
 /// The form.
@@ -94,11 +92,10 @@ pub async fn enter(
         .and_then(|t| t.rights(entered.token.trim()));
     let Some(rights) = rights else {
         tokio::time::sleep(WRONG_TOKEN_PAUSE).await;
-        return show(
-            &app,
-            &next,
-            Some("This token is not known. It stands in the token file."),
-        );
+        let complaint = "This token is not known. It stands in the token file.";
+        let mut again = show(&app, &next, Some(complaint));
+        again.extensions_mut().insert(WrongToken);
+        return again;
     };
     match app.sessions.start(rights, app.site.clock.now()) {
         Ok(id) => {
@@ -135,7 +132,8 @@ fn form_cookie(app: &App) -> String {
 }
 
 fn set_cookie(app: &App, name: &str, text: &str, lasts_s: u32) -> (HeaderName, String) {
-    let secure = if app.site.settings.web.tls_in_front {
+    let web = &app.site.settings.web;
+    let secure = if web.tls_in_front || web.certificate_file.is_some() {
         "; Secure"
     } else {
         ""
@@ -143,45 +141,4 @@ fn set_cookie(app: &App, name: &str, text: &str, lasts_s: u32) -> (HeaderName, S
     let text =
         format!("{name}={text}; Path=/; Max-Age={lasts_s}; HttpOnly; SameSite=Strict{secure}");
     (header::SET_COOKIE, text)
-}
-
-/// Only an address of our own, else the plant's page: no sign-in link may lead to another host.
-pub fn local(next: &str) -> String {
-    let own = next.starts_with('/')
-        && !next.starts_with("//")
-        && !next.contains(['\\', '\r', '\n', '\t'])
-        && next.is_ascii();
-    if own { next } else { "/" }.to_owned()
-}
-
-/// Everything but RFC 3986's unreserved characters.
-const RESERVED: &AsciiSet = &NON_ALPHANUMERIC
-    .remove(b'-')
-    .remove(b'_')
-    .remove(b'.')
-    .remove(b'~');
-
-/// Percent-encodes a text for one part of a path or one value of a query.
-pub fn percent(text: &str) -> String {
-    utf8_percent_encode(text, RESERVED).to_string()
-}
-
-#[cfg(test)]
-mod tests {
-    use super::*;
-
-    #[test]
-    fn the_way_back_stays_in_the_house() {
-        for (next, to) in [
-            ("/banks/filler-2?span=40", "/banks/filler-2?span=40"),
-            ("//elsewhere", "/"),
-            ("/\\elsewhere", "/"),
-            ("http://elsewhere", "/"),
-            ("", "/"),
-            ("/a\r\nb", "/"),
-        ] {
-            assert_eq!(local(next), to, "{next:?}");
-        }
-        assert_eq!(percent("filler 2/ä"), "filler%202%2F%C3%A4");
-    }
 }

@@ -3,6 +3,7 @@
 //! Owns the way of a command: out through a bounded channel, back within a bounded time. What must
 //! hold: a request never waits for ever, and never blocks the runtime on the store.
 
+use std::collections::BTreeMap;
 use std::net::SocketAddr;
 use std::sync::Arc;
 use std::time::Duration;
@@ -16,9 +17,13 @@ use crate::model::{BankIx, Name};
 use crate::notice::Notice;
 use crate::settings::Settings;
 
+use super::days::{Day, Days};
 use super::durations::Durations;
 use super::format::Times;
+use super::kept::Kept;
+use super::limits::Limits;
 use super::problem::Problem;
+use super::pulse;
 use super::sessions::Sessions;
 use super::tokens::{TokenError, Tokens};
 
@@ -78,10 +83,18 @@ pub struct App {
     pub cookie: Arc<str>,
     /// Ends live streams.
     pub shutdown: CancellationToken,
+    /// The present, at the beat in which viewers hear of it.
+    pub pulse: watch::Receiver<Arc<Snapshot>>,
+    /// Pages that are made once for many.
+    pub kept: Arc<Kept>,
+    /// The last day of every bank.
+    pub days: Arc<Days>,
+    /// How much one address may ask.
+    pub limits: Arc<Limits>,
 }
 
 impl App {
-    /// For a listener at `local`.
+    /// For a listener at `local`; starts the beat in which viewers hear of changes.
     ///
     /// # Errors
     /// When the token file cannot be used.
@@ -101,6 +114,10 @@ impl App {
                 Reach::Beyond
             },
             cookie: format!("evenrow_{}", local.port()).into(),
+            pulse: pulse::start(site.snapshot.clone(), shutdown.clone()),
+            kept: Arc::default(),
+            days: Arc::default(),
+            limits: Arc::default(),
             shutdown,
             site,
         })
@@ -160,6 +177,19 @@ impl App {
                 Err(Problem::unavailable("reading the history ended early"))
             }
         }
+    }
+
+    /// The last day of every bank.
+    ///
+    /// # Errors
+    /// 503 when the store cannot be read.
+    pub async fn last_day(
+        &self,
+        snapshot: &Arc<Snapshot>,
+    ) -> Result<Arc<BTreeMap<Name, Day>>, Problem> {
+        let now = self.site.clock.now();
+        let read = self.days.of(&self.site.history, snapshot, now).await;
+        read.map_err(|error| Problem::unavailable(&error.to_string()))
     }
 
     /// A notice as it stands now: from the snapshot while it is open, else from the past.

@@ -7,6 +7,8 @@ use std::collections::VecDeque;
 
 use serde::{Deserialize, Serialize};
 
+use crate::model::Pairing;
+
 /// The most cycles that may be open at once: sources that count separately would otherwise open new
 /// ones for ever. Far above `wait` times what any bank needs.
 const MOST_OPEN: usize = 256;
@@ -24,6 +26,8 @@ pub struct Blocks {
     delivered_open: Vec<u32>,
     closed: u64,
     skipped: u64,
+    /// Blocks that closed with enough sources and that nobody has taken over yet, oldest first.
+    untaken: Vec<i64>,
     /// Whether all sources are known, so that "all have delivered" means something.
     settled: bool,
 }
@@ -51,6 +55,19 @@ impl Blocks {
         Self::new(Rule::Slots)
     }
 
+    /// A ledger in which everything up to `closed_to` is closed and nothing is open.
+    pub fn closed_until(pairing: Pairing, closed_to: i64) -> Option<Self> {
+        let blocks = match pairing {
+            Pairing::Cycle | Pairing::Day => Self::cycles(1),
+            Pairing::Slot { .. } => Self::slots(),
+            Pairing::None => return None,
+        };
+        Some(Self {
+            closed_to,
+            ..blocks
+        })
+    }
+
     fn new(rule: Rule) -> Self {
         Self {
             rule,
@@ -60,6 +77,7 @@ impl Blocks {
             delivered_open: Vec::new(),
             closed: 0,
             skipped: 0,
+            untaken: Vec::new(),
             settled: true,
         }
     }
@@ -140,6 +158,7 @@ impl Blocks {
         let present = first.present.iter().filter(|p| **p).count();
         if present >= 2 && 2 * present >= self.waited_for() {
             self.closed += 1;
+            self.untaken.push(first.block);
         } else {
             self.skipped += 1;
         }
@@ -148,6 +167,11 @@ impl Blocks {
 
     fn waited_for(&self) -> usize {
         self.expected.iter().filter(|e| **e).count()
+    }
+
+    /// The blocks that have closed with enough sources since they were last asked for, oldest first.
+    pub fn take_closed(&mut self) -> Vec<i64> {
+        std::mem::take(&mut self.untaken)
     }
 
     /// The newest closed block; `i64::MIN` before the first.

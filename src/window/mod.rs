@@ -5,6 +5,7 @@
 //! by a clock. Deliberately absent: statistics, times to wait, who is told.
 
 mod align;
+mod numbers;
 mod ring;
 mod windows;
 

@@ -36,6 +36,20 @@ impl Ring {
         }
     }
 
+    /// A ring that holds these entries (in order), of which those before `fresh_from` do not count.
+    pub fn recalled(entries: Vec<Entry>, fresh_from: i64) -> Self {
+        Self {
+            capacity: entries.len().max(1),
+            entries: entries.into(),
+            fresh_from,
+        }
+    }
+
+    /// The place before which values do not count.
+    pub fn fresh_from(&self) -> i64 {
+        self.fresh_from
+    }
+
     /// Puts a value in its place; the oldest leaves when the ring is full. A value older than
     /// everything in a full ring is dropped.
     pub fn insert(&mut self, entry: Entry) {
@@ -88,6 +102,13 @@ impl Ring {
         }
     }
 
+    /// Moves every offset.
+    pub fn shift(&mut self, by: f64) {
+        for entry in &mut self.entries {
+            entry.offset += by;
+        }
+    }
+
     /// Values before `place` no longer count.
     pub fn start_fresh(&mut self, place: i64) {
         self.fresh_from = self.fresh_from.max(place);
@@ -102,6 +123,14 @@ impl Ring {
     /// All values held, oldest first.
     pub fn iter(&self) -> impl DoubleEndedIterator<Item = &Entry> {
         self.entries.iter()
+    }
+
+    /// The value at `place`, if it counts. Made for places near the newest.
+    pub fn at(&self, place: i64) -> Option<&Entry> {
+        let mut from_newest = self.entries.iter().rev();
+        from_newest
+            .find(|e| e.place <= place)
+            .filter(|e| e.place == place && place >= self.fresh_from)
     }
 
     /// The newest value.

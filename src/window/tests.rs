@@ -4,7 +4,8 @@ use proptest::prelude::*;
 
 use super::*;
 use crate::model::{
-    Bank, Budget, Characteristic, Layout, Pairing, Reason, SourceIx, Sources, Time, US_PER_S, Value,
+    Bank, Budget, Characteristic, Layout, Offsets, Pairing, Reason, SourceIx, Sources, Time,
+    US_PER_S, Value,
 };
 
 fn bank(pairing: Pairing, spans: &[usize]) -> Bank {
@@ -31,6 +32,10 @@ fn bank(pairing: Pairing, spans: &[usize]) -> Bank {
         silent_after_us: None,
         oldest_us: i64::MAX,
         layout: Layout::Row,
+        groups: Vec::new(),
+        cost_per_unit: None,
+        reference: None,
+        offsets: Offsets::None,
     }
 }
 
@@ -151,6 +156,78 @@ fn doubles_are_refused() {
 }
 
 #[test]
+fn values_of_one_time_with_other_numbers_are_no_doubles() {
+    let mut w = windows(Pairing::None, 2);
+    w.accept(&value(0, 1, Some(7))).unwrap();
+    assert_eq!(w.accept(&value(0, 1, Some(8))), Ok(Accepted::InTurn));
+    assert_eq!(w.accept(&value(0, 1, Some(7))), Err(Reason::Double));
+    assert_eq!(w.accept(&value(0, 1, Some(8))), Err(Reason::Double));
+    // Another source's numbers prove nothing, nor does a payload without one.
+    assert_eq!(w.accept(&value(1, 1, Some(7))), Ok(Accepted::InTurn));
+    assert_eq!(w.accept(&value(0, 1, None)), Err(Reason::Double));
+    w.accept(&value(0, 2, Some(9))).unwrap();
+    // What is no longer remembered counts as a double: nothing enters twice.
+    assert_eq!(w.accept(&value(0, 1, Some(10))), Err(Reason::Double));
+}
+
+/// A value whose payload says neither when it was taken nor anything else but its number.
+fn unstamped(source: u16, second: i64, cycle: i64) -> Arriving {
+    Arriving {
+        time_given: false,
+        ..value(source, second, Some(cycle))
+    }
+}
+
+#[test]
+fn a_counter_without_times_that_starts_again_inside_the_window_goes_on() {
+    let mut w = windows(Pairing::Cycle, 2);
+    for cycle in 0..4 {
+        for s in 0..2 {
+            w.accept(&unstamped(s, 100 + cycle, cycle)).unwrap();
+        }
+    }
+    // A redelivery repeats the values too, however many come.
+    for _ in 0..3 {
+        for cycle in 0..4 {
+            let again = w.accept(&unstamped(0, 100 + cycle, cycle));
+            assert_eq!(again, Err(Reason::Double));
+        }
+    }
+    // Other values under rising numbers that are held already: the fourth settles it.
+    for cycle in 0..3 {
+        let doubted = w.accept(&unstamped(0, 205 + cycle, cycle));
+        assert_eq!(doubted, Err(Reason::Double));
+    }
+    assert_eq!(w.accept(&unstamped(0, 208, 3)), Ok(Accepted::InTurn));
+    assert_eq!(w.accept(&unstamped(1, 208, 3)), Ok(Accepted::InTurn));
+    assert_eq!(places(&w, 0), [1, 2, 3, 4]);
+    assert_eq!(w.accept(&unstamped(0, 209, 4)), Ok(Accepted::InTurn));
+    assert_eq!(places(&w, 0), [2, 3, 4, 5]);
+}
+
+#[test]
+fn closed_cycles_are_handed_over_once_with_what_is_there() {
+    let mut w = windows(Pairing::Cycle, 3);
+    for (source, cycle) in [(0, 1), (1, 1), (2, 1), (0, 2), (2, 2)] {
+        w.accept(&value(source, cycle, Some(cycle))).unwrap();
+    }
+    assert_eq!(w.take_closed(), [1]);
+    assert_eq!(w.take_closed(), [0_i64; 0]);
+    for cycle in 3..=5 {
+        w.accept(&value(0, cycle, Some(cycle))).unwrap();
+    }
+    assert_eq!(w.take_closed(), [2]);
+    let mut values = Vec::new();
+    let taken = w.cycle(2, &mut values);
+    assert_eq!(taken, Some(Time::from_us(2 * US_PER_S)));
+    assert!(values[0].is_finite() && values[1].is_nan() && values[2].is_finite());
+    w.start_fresh(SourceIx(0), 3);
+    w.cycle(2, &mut values);
+    assert!(values[0].is_nan());
+    assert_eq!(w.cycle(99, &mut values), None);
+}
+
+#[test]
 fn a_counter_that_starts_again_goes_on() {
     let mut w = windows(Pairing::Cycle, 2);
     for cycle in 100..104 {
@@ -187,6 +264,7 @@ proptest! {
         paired in any::<bool>(),
     ) {
         let mut w = windows(if paired { Pairing::Cycle } else { Pairing::None }, 3);
+        let mut known = std::collections::BTreeSet::new();
         for (s, second, cycle) in arrivals {
             let before = w.ring(SourceIx(s)).len();
             let taken_in = w.accept(&value(s, second, Some(cycle))).is_ok();
@@ -195,9 +273,17 @@ proptest! {
             prop_assert!(taken_in || ring.len() == before);
             let order: Vec<i64> = ring.iter().map(|e| e.place).collect();
             prop_assert!(order.is_sorted());
-            let mut once = order.clone();
-            once.dedup();
-            prop_assert_eq!(once, order, "no place twice");
+            known.insert((s, second, cycle));
+            for place in &order {
+                let held = order.iter().filter(|p| *p == place).count();
+                let sent = known.iter().filter(|k| k.0 == s && k.1 * US_PER_S == *place);
+                prop_assert!(paired || held <= sent.count(), "nothing stands there twice");
+            }
+            if paired {
+                let mut once = order.clone();
+                once.dedup();
+                prop_assert_eq!(once, order, "no cycle twice");
+            }
         }
         if let Some(blocks) = w.blocks() {
             prop_assert!(blocks.counts().2 <= 256 + 1);

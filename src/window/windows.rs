@@ -4,6 +4,7 @@ use serde::{Deserialize, Serialize};
 
 use crate::model::{Bank, Pairing, Reason, SourceIx, Time, Value};
 
+use super::numbers::Numbers;
 use super::{Blocks, Entry, Ring};
 
 /// No counter of a plant goes beyond this (2^53, what a double holds exactly), and sums of a few such
@@ -44,6 +45,8 @@ pub struct Windows {
     rings: Vec<Ring>,
     blocks: Option<Blocks>,
     count: CycleCount,
+    /// Per source, what tells doubles and restarts of a counter apart.
+    numbers: Vec<Numbers>,
 }
 
 /// The plant's cycle counter made to rise for ever, although counters start again.
@@ -56,6 +59,17 @@ struct CycleCount {
     shift_before: i64,
 }
 
+impl CycleCount {
+    /// The counter has started again with this value, which follows the newest.
+    fn restart(&mut self, arriving: &Arriving, newest: i64) -> i64 {
+        let next = newest.saturating_add(1);
+        self.shift_before = self.shift;
+        self.shift = next.saturating_sub(arriving.cycle.unwrap_or(0));
+        self.since = Some(arriving.taken);
+        next
+    }
+}
+
 impl Windows {
     /// Empty windows of a bank.
     pub fn new(bank: &Bank) -> Self {
@@ -66,11 +80,23 @@ impl Windows {
             origin: bank.characteristic.target,
             rings: Vec::new(),
             blocks: match bank.pairing {
-                Pairing::Cycle => Some(Blocks::cycles(bank.wait_cycles)),
+                Pairing::Cycle | Pairing::Day => Some(Blocks::cycles(bank.wait_cycles)),
                 Pairing::Slot { .. } => Some(Blocks::slots()),
                 Pairing::None => None,
             },
             count: CycleCount::default(),
+            numbers: Vec::new(),
+        }
+    }
+
+    /// Windows as they once stood, to be looked at again: `rings` by [`SourceIx`], everything up to
+    /// `closed_to` closed. They take nothing in.
+    pub fn recalled(bank: &Bank, origin: Value, rings: Vec<Ring>, closed_to: i64) -> Self {
+        Self {
+            origin: Some(origin),
+            rings,
+            blocks: Blocks::closed_until(bank.pairing, closed_to),
+            ..Self::new(bank)
         }
     }
 
@@ -93,6 +119,7 @@ impl Windows {
     /// Makes room for one more source, with the next [`SourceIx`].
     pub fn add_source(&mut self) {
         self.rings.push(Ring::new(self.capacity));
+        self.numbers.push(Numbers::default());
         if let Some(blocks) = &mut self.blocks {
             blocks.add_source();
         }
@@ -117,16 +144,21 @@ impl Windows {
     /// # Errors
     /// [`Reason::Double`] and [`Reason::NoCycle`].
     pub fn accept(&mut self, arriving: &Arriving) -> Result<Accepted, Reason> {
-        let place = self.place(arriving)?;
+        let mut place = self.place(arriving)?;
         let s = arriving.source.index();
-        if self.is_double(arriving, place) {
-            return Err(Reason::Double);
-        }
         let origin = *self.origin.get_or_insert(arriving.value);
+        let offset = arriving.value.minus(origin);
+        if self.is_double(arriving, place) {
+            if !self.contradicts(arriving, place, offset) {
+                return Err(Reason::Double);
+            }
+            place = self.count.restart(arriving, self.newest_place());
+        }
+        self.numbers[s].remember(arriving);
         let entry = Entry {
             place,
             taken: arriving.taken,
-            offset: arriving.value.minus(origin),
+            offset,
         };
         let ring = &mut self.rings[s];
         let late_alone = ring.newest().is_some_and(|n| n.place > place);
@@ -149,7 +181,7 @@ impl Windows {
         match self.pairing {
             Pairing::None => Ok(arriving.taken.us()),
             Pairing::Slot { length_us } => Ok(arriving.taken.us().div_euclid(length_us.max(1))),
-            Pairing::Cycle => {
+            Pairing::Cycle | Pairing::Day => {
                 let cycle = arriving.cycle.ok_or(Reason::NoCycle)?;
                 if cycle.unsigned_abs() > MOST_CYCLE {
                     return Err(Reason::BadCycle);
@@ -183,22 +215,52 @@ impl Windows {
         if !restarted {
             return place;
         }
-        let newest_of_all = self.blocks.as_ref().and_then(Blocks::newest);
-        let next = newest_of_all.unwrap_or(newest.place).saturating_add(1);
-        count.shift_before = count.shift;
-        count.shift = next.saturating_sub(cycle);
-        count.since = Some(arriving.taken);
-        next
+        let newest = self.newest_place();
+        self.count.restart(arriving, newest)
+    }
+
+    fn newest_place(&self) -> i64 {
+        let held = self.rings.iter().filter_map(|r| r.newest());
+        let of_blocks = self.blocks.as_ref().and_then(Blocks::newest);
+        let newest = held.map(|e| e.place).chain(of_blocks).max();
+        newest.unwrap_or(0)
     }
 
     fn is_double(&self, arriving: &Arriving, place: i64) -> bool {
-        let ring = &self.rings[arriving.source.index()];
+        let s = arriving.source.index();
+        let ring = &self.rings[s];
         let taken = Some(arriving.taken);
         match self.pairing {
             // One source has one value in a cycle, whatever time a second one claims.
-            Pairing::Cycle => ring.holds(place, None),
-            Pairing::Slot { .. } | Pairing::None => arriving.time_given && ring.holds(place, taken),
+            Pairing::Cycle | Pairing::Day => ring.holds(place, None),
+            // Times in whole seconds repeat; where the payload counts, the number tells.
+            Pairing::Slot { .. } | Pairing::None => {
+                arriving.time_given
+                    && ring.holds(place, taken)
+                    && !self.numbers[s].is_another(arriving)
+            }
         }
+    }
+
+    /// Whether a number that is held already comes with another value once more than a redelivery
+    /// could explain: the counter has started again inside the window, and no time says so.
+    fn contradicts(&mut self, arriving: &Arriving, place: i64, offset: f64) -> bool {
+        if self.pairing != Pairing::Cycle || arriving.time_given {
+            return false;
+        }
+        let s = arriving.source.index();
+        let same = self.rings[s].at(place).is_some_and(|e| e.offset == offset);
+        self.numbers[s].contradicted(arriving.cycle, same) > self.wait
+    }
+
+    /// Offsets are relative to another origin from now on. Those held are moved by the difference, which
+    /// may cost their last digit.
+    pub fn rebase(&mut self, origin: Value) {
+        let shift = self.origin().minus(origin);
+        for ring in &mut self.rings {
+            ring.shift(shift);
+        }
+        self.origin = Some(origin);
     }
 
     /// Values of these sources before now no longer count.
@@ -206,6 +268,26 @@ impl Windows {
         if let Some(ring) = self.rings.get_mut(source.index()) {
             ring.start_fresh(place);
         }
+    }
+
+    /// The cycles (or slots) that have closed with enough sources since they were last asked for,
+    /// oldest first.
+    pub fn take_closed(&mut self) -> Vec<i64> {
+        let blocks = self.blocks.as_mut();
+        blocks.map(Blocks::take_closed).unwrap_or_default()
+    }
+
+    /// The values of one cycle as offsets from the origin, by [`SourceIx`], NaN where a source has
+    /// none that counts; returns when the first of them was taken.
+    pub fn cycle(&self, place: i64, values: &mut Vec<f64>) -> Option<Time> {
+        values.clear();
+        let mut first = None;
+        for ring in &self.rings {
+            let entry = ring.at(place);
+            values.push(entry.map_or(f64::NAN, |e| e.offset));
+            first = first.into_iter().chain(entry.map(|e| e.taken)).min();
+        }
+        first
     }
 
     /// One source's ring.

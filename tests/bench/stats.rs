@@ -5,6 +5,9 @@
 //! target, met or missed. Processor time is read from the kernel where it tells (Linux), so that other
 //! work on the machine disturbs less; else it is the mean wall time.
 
+#[path = "processor.rs"]
+mod processor;
+
 use evenrow::stats::dist::studentized_range::{self, RangeTable};
 use evenrow::stats::{brown_forsythe, games_howell, summarize, welch};
 use std::hint::black_box;
@@ -41,7 +44,7 @@ fn bank(seed: u64) -> Vec<f64> {
 /// Seconds of one processor per run, and the best wall seconds of a run.
 fn time(runs: usize, mut work: impl FnMut()) -> (f64, f64) {
     work();
-    let (wall, processor) = (Instant::now(), processor_seconds());
+    let (wall, processor) = (Instant::now(), processor::seconds());
     let mut best = f64::INFINITY;
     for _ in 0..runs {
         let start = Instant::now();
@@ -49,17 +52,10 @@ fn time(runs: usize, mut work: impl FnMut()) -> (f64, f64) {
         best = best.min(start.elapsed().as_secs_f64());
     }
     let whole = wall.elapsed().as_secs_f64();
-    let spent = processor_seconds()
+    let spent = processor::seconds()
         .zip(processor)
         .map_or(whole, |(after, before)| after - before);
     (spent / runs as f64, best)
-}
-
-/// Time this thread has spent on a processor, from the kernel's scheduler statistics.
-fn processor_seconds() -> Option<f64> {
-    let text = std::fs::read_to_string("/proc/thread-self/schedstat").ok()?;
-    let nanoseconds: f64 = text.split_whitespace().next()?.parse().ok()?;
-    Some(nanoseconds * 1e-9)
 }
 
 fn report(figure: &str, (spent, best): (f64, f64), scale: f64, unit: &str, target: f64) {

@@ -7,10 +7,10 @@ use std::sync::Arc;
 
 use evenrow::engine::{Effect, Engine, Event, Plant, Record};
 use evenrow::model::{
-    Bank, BankIx, Budget, Characteristic, Layout, Measurement, Name, Pairing, Sources, Time,
-    US_PER_S, Value,
+    Bank, BankIx, Budget, Characteristic, Layout, Measurement, Name, Offsets, Pairing, Sources,
+    Time, US_PER_S, Value,
 };
-use evenrow::notice::Notice;
+use evenrow::notice::{Kind, Manners, Notice, Route};
 
 pub const START: Time = Time::from_us(1_790_000_000 * US_PER_S);
 
@@ -39,6 +39,21 @@ pub fn bank(k: usize) -> Bank {
         silent_after_us: None,
         oldest_us: 30 * 86_400 * US_PER_S,
         layout: Layout::Row,
+        groups: Vec::new(),
+        cost_per_unit: None,
+        reference: None,
+        offsets: Offsets::None,
+    }
+}
+
+/// The plant of these tests, with these ways out.
+pub fn plant(routes: Vec<Route>, manners: Manners) -> Plant {
+    Plant {
+        name: "Quayside".into(),
+        zone: jiff::tz::TimeZone::UTC,
+        pages: "http://127.0.0.1:7310".into(),
+        routes,
+        manners,
     }
 }
 
@@ -73,23 +88,39 @@ pub struct Line {
     pub resolution: f64,
     /// Sources, from 1, that deliver nothing.
     pub absent: Vec<usize>,
+    /// A source, from 1, whose clock is ahead by so many microseconds.
+    pub ahead: Option<(usize, i64)>,
+    /// What the sources give on average.
+    pub level: f64,
     /// Everything the engine wanted done.
     pub effects: Vec<Effect>,
 }
 
 impl Line {
     pub fn new(bank: Bank, seed: u64) -> Self {
+        Self::of(bank, seed, Vec::new(), Manners::default())
+    }
+
+    /// A line of a plant with other manners.
+    pub fn with(bank: Bank, seed: u64, change: impl FnOnce(&mut Manners)) -> Self {
+        let mut manners = Manners::default();
+        change(&mut manners);
+        Self::of(bank, seed, Vec::new(), manners)
+    }
+
+    /// One whose notices go to outlets too.
+    pub fn with_routes(bank: Bank, seed: u64, routes: Vec<Route>) -> Self {
+        Self::of(bank, seed, routes, Manners::default())
+    }
+
+    fn of(bank: Bank, seed: u64, routes: Vec<Route>, manners: Manners) -> Self {
         let k = match &bank.sources {
             Sources::Listed(listed) => listed.len(),
             Sources::Discover { most } => usize::from(*most),
-        };
-        let plant = Plant {
-            name: "Quayside".into(),
-            zone: jiff::tz::TimeZone::UTC,
-            pages: "http://127.0.0.1:7310".into(),
+            Sources::Shifts(calendar) => calendar.names().len(),
         };
         Self {
-            engine: Engine::new(plant, vec![Arc::new(bank)]),
+            engine: Engine::new(plant(routes, manners), vec![Arc::new(bank)]),
             k,
             cycle: 0,
             noise: Normal::new(seed),
@@ -97,6 +128,8 @@ impl Line {
             common_step: 0.3,
             resolution: 0.1,
             absent: Vec::new(),
+            ahead: None,
+            level: 503.0,
             effects: Vec::new(),
         }
     }
@@ -112,7 +145,7 @@ impl Line {
             self.common += self.common_step * self.noise.next();
             let all = (0..self.k).map(|s| {
                 let (offset, sd) = fault(s + 1, c);
-                let value = 503.0 + self.common + offset + sd * self.noise.next();
+                let value = self.level + self.common + offset + sd * self.noise.next();
                 self.measurement(s, value)
             });
             let all: Vec<Measurement> = all.collect();
@@ -124,12 +157,14 @@ impl Line {
     }
 
     fn measurement(&self, source: usize, value: f64) -> Measurement {
+        let ahead = self.ahead.filter(|(s, _)| *s == source + 1);
+        let ahead_us = ahead.map_or(0, |(_, us)| us);
         let rounded = (value / self.resolution).round() * self.resolution;
         Measurement {
             bank: BankIx(0),
             source: head(source + 1),
             value: Value::parse(&format!("{rounded:.3}")).expect("a number"),
-            taken: Some(self.now()),
+            taken: Some(self.now().plus_us(ahead_us)),
             cycle: Some(self.cycle),
         }
     }
@@ -165,16 +200,24 @@ impl Line {
         self.effects.extend(effects);
     }
 
-    /// Every notice as it was kept, in order.
+    /// Every notice that is a call as it was kept, in order.
     pub fn notices(&self) -> Vec<Arc<Notice>> {
-        let kept = self.effects.iter().filter_map(|e| match e {
-            Effect::Keep(Record::Notice(n)) => Some(n.clone()),
-            _ => None,
-        });
-        kept.collect()
+        self.kept().filter(|n| n.kind.is_call()).collect()
     }
 
-    /// The ids of the notices that were raised.
+    /// Every notice of a condition of this kind as it was kept, in order.
+    pub fn conditions(&self, kind: Kind) -> Vec<Arc<Notice>> {
+        self.kept().filter(|n| n.kind == kind).collect()
+    }
+
+    fn kept(&self) -> impl Iterator<Item = Arc<Notice>> {
+        self.effects.iter().filter_map(|e| match e {
+            Effect::Keep(Record::Notice(n)) => Some(n.clone()),
+            _ => None,
+        })
+    }
+
+    /// The ids of the calls that were raised.
     pub fn raised(&self) -> Vec<Name> {
         let mut ids: Vec<Name> = self.notices().iter().map(|n| n.id.clone()).collect();
         ids.dedup();

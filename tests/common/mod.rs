@@ -3,5 +3,6 @@
 #![allow(dead_code, reason = "each test uses the part that it needs")]
 
 pub mod certificates;
+pub mod desk;
 pub mod mosquitto;
 pub mod running;

@@ -46,11 +46,15 @@ fn run(name: &str) -> Run {
         name: settings.plant.name.clone(),
         zone: settings.plant.zone.clone(),
         pages: settings.pages(),
+        routes: Vec::new(),
+        manners: evenrow::notice::Manners::default(),
     };
     let how = How {
         banks: settings.banks.iter().map(|b| b.name.clone()).collect(),
         bank: None,
         columns: RecordingColumns::default(),
+        beliefs: Vec::new(),
+        told_by: Vec::new(),
     };
     let mut conductor = Conductor::new(Engine::new(plant, settings.banks.clone()));
     let (mut looks, mut changes) = (Vec::new(), Vec::new());

@@ -8,11 +8,11 @@ use std::time::Duration;
 use evenrow::engine::Condition;
 use evenrow::intake::mqtt::{self, Arrival, FromBroker, IntakeError, Receipt};
 use evenrow::model::{
-    Bank, BankIx, Budget, Characteristic, Layout, Pairing, Reason, Sources, US_PER_DAY,
+    Bank, BankIx, Budget, Characteristic, Layout, Offsets, Pairing, Reason, Sources, US_PER_DAY,
 };
 use evenrow::settings::{
-    Broker, Feed, PayloadForm, PlantSettings, Protocol, RecordingColumns, Settings, StoreSettings,
-    TopicTemplate, WebSettings,
+    Belief, Broker, Feed, Origins, PayloadForm, PlantSettings, Protocol, RecordingColumns,
+    Settings, StoreSettings, ToldBy, TopicTemplate, WebSettings,
 };
 use tokio::sync::mpsc;
 use tokio_util::sync::CancellationToken;
@@ -64,6 +64,10 @@ fn settings(broker: Broker) -> Arc<Settings> {
         silent_after_us: None,
         oldest_us: 30 * US_PER_DAY,
         layout: Layout::Row,
+        groups: Vec::new(),
+        cost_per_unit: None,
+        reference: None,
+        offsets: Offsets::None,
     };
     let feed = Feed {
         bank: BankIx(0),
@@ -72,7 +76,9 @@ fn settings(broker: Broker) -> Arc<Settings> {
             source_level: Some(1),
         },
         payload: PayloadForm::Number,
+        belief: Belief::default(),
         recording: RecordingColumns::default(),
+        told_by: ToldBy::Message,
     };
     Arc::new(Settings {
         plant: PlantSettings {
@@ -89,10 +95,15 @@ fn settings(broker: Broker) -> Arc<Settings> {
             listen: ([127, 0, 0, 1], 0).into(),
             token_file: None,
             tls_in_front: false,
+            certificate_file: None,
+            key_file: None,
             address: None,
         },
+        manners: evenrow::notice::Manners::default(),
         banks: vec![Arc::new(bank)],
         feeds: vec![feed],
+        outlets: Vec::new(),
+        origins: Origins::default(),
     })
 }
 

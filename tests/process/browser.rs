@@ -17,6 +17,15 @@ pub enum Scripts {
     Off,
 }
 
+/// What the reader's system prefers.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum Scheme {
+    /// Dark on light.
+    Light,
+    /// Light on dark.
+    Dark,
+}
+
 /// A browser with one window.
 pub struct Browser {
     session: String,
@@ -118,6 +127,49 @@ impl Browser {
         self.tell(&format!("/element/{element}/click"), &json!({}));
     }
 
+    /// Makes the window this wide and high, on a system that prefers this.
+    #[track_caller]
+    pub fn looks_as(&self, width: u32, height: u32, scheme: Scheme) {
+        let size = json!({"width": width, "height": height, "deviceScaleFactor": 1,
+            "mobile": width < 500});
+        self.command("Emulation.setDeviceMetricsOverride", &size);
+        let prefers = match scheme {
+            Scheme::Light => "light",
+            Scheme::Dark => "dark",
+        };
+        let features = json!([{"name": "prefers-color-scheme", "value": prefers}]);
+        self.command("Emulation.setEmulatedMedia", &json!({"features": features}));
+    }
+
+    /// A picture of the whole page as PNG, in the driver's base64.
+    #[track_caller]
+    pub fn picture(&self) -> Vec<u8> {
+        let height = self.run("return document.documentElement.scrollHeight");
+        let width = self.run("return innerWidth");
+        let clip = json!({"x": 0, "y": 0, "width": width, "height": height, "scale": 1});
+        let wanted = json!({"format": "png", "captureBeyondViewport": true, "clip": clip});
+        let answer = self.command("Page.captureScreenshot", &wanted);
+        base64(answer["data"].as_str().expect("a picture"))
+    }
+
+    #[track_caller]
+    fn command(&self, name: &str, parameters: &Value) -> Value {
+        let body = json!({"cmd": name, "params": parameters});
+        self.tell("/goog/cdp/execute", &body)
+    }
+
+    /// Runs a script in the page and gives what it returns.
+    #[track_caller]
+    pub fn run(&self, script: &str) -> Value {
+        self.tell("/execute/sync", &json!({"script": script, "args": []}))
+    }
+
+    /// Runs a script that calls its last argument with what it finds.
+    #[track_caller]
+    pub fn run_waiting(&self, script: &str) -> Value {
+        self.tell("/execute/async", &json!({"script": script, "args": []}))
+    }
+
     /// Where the browser is.
     pub fn address(&self) -> String {
         let answer = http::get(&format!("{}/url", self.session)).expect("the driver answers");
@@ -135,6 +187,30 @@ impl Browser {
         loud.map(|l| l["message"].as_str().unwrap_or_default().to_owned())
             .collect()
     }
+}
+
+/// Decodes base64 (RFC 4648, section 4).
+fn base64(text: &str) -> Vec<u8> {
+    const LETTERS: &[u8; 64] = b"ABCDEFGHIJKLMNOPQRSTUVWXYZabcdefghijklmnopqrstuvwxyz0123456789+/";
+    let digits = text
+        .bytes()
+        .filter_map(|c| LETTERS.iter().position(|l| *l == c));
+    let (mut bytes, mut held, mut bits) = (Vec::with_capacity(text.len() / 4 * 3), 0_usize, 0);
+    for digit in digits {
+        held = (held << 6 | digit) & 0xffff;
+        bits += 6;
+        if bits >= 8 {
+            bits -= 8;
+            bytes.push((held >> bits & 0xff) as u8);
+        }
+    }
+    bytes
+}
+
+#[test]
+fn base64_is_decoded() {
+    assert_eq!(base64("Zm9vYmFy"), b"foobar");
+    assert_eq!(base64("Zm9vYg=="), b"foob");
 }
 
 impl Drop for Browser {

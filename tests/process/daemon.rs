@@ -28,6 +28,8 @@ pub struct Wanted {
     pub broker: String,
     /// The broker's address, when it is not plain `mqtt://` on the loopback address.
     pub url: Option<String>,
+    /// Whole sections of the configuration, such as `[[outlet]]`.
+    pub sections: String,
 }
 
 /// A daemon's folder and ports, which outlive its process.
@@ -85,8 +87,11 @@ spans = [20, 80]
 look_every = "1s"
 margin = 0.8
 false_calls = "1 per 90 days"
+
+{sections}
 "#,
             broker = wanted.broker,
+            sections = wanted.sections,
             store = at("store"),
             tokens = at("tokens"),
         );

@@ -38,6 +38,7 @@ fn a_notice_arrives(protocol: u8) {
             at("client.key")
         ),
         url: Some(format!("mqtts://localhost:{}", broker.port())),
+        ..Wanted::default()
     };
     let plant = Plant::new(broker.port(), &wanted);
     let daemon = plant.start_ready();

@@ -9,7 +9,7 @@ use crate::line::{Line, Off};
 
 /// A line whose head 05 is low, and its notice's id.
 #[track_caller]
-fn drifted(broker: &Mosquitto, daemon: &Daemon, line: &mut Line) -> String {
+pub fn drifted(broker: &Mosquitto, daemon: &Daemon, line: &mut Line) -> String {
     line.publish(broker, 100, &[Off { head: 5, by: -2.5 }]);
     wait_for(SOON, "the notice", || {
         let list = daemon.json("/api/v1/notices");

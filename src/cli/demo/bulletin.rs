@@ -8,6 +8,7 @@ use std::collections::BTreeMap;
 use serde::Deserialize;
 
 use crate::notice::State;
+use crate::verdict::Effect;
 
 /// What the demo reads of a notice's event.
 #[derive(Debug, Deserialize)]
@@ -20,12 +21,21 @@ struct Data {
     id: String,
     state: State,
     subject: String,
+    #[serde(default)]
+    adjustment: Option<Adjusted>,
+}
+
+#[derive(Debug, Deserialize)]
+struct Adjusted {
+    source: String,
+    effect: Effect,
 }
 
 /// What was last printed of each notice.
 #[derive(Debug, Default)]
 pub struct Bulletin {
     last: BTreeMap<String, State>,
+    effects: BTreeMap<String, Effect>,
 }
 
 impl Bulletin {
@@ -33,9 +43,20 @@ impl Bulletin {
     pub fn line(&mut self, payload: &[u8]) -> Option<String> {
         // An emptied topic says that a notice is over; the event before said so in words.
         let data = serde_json::from_slice::<Event>(payload).ok()?.data;
-        let before = self.last.insert(data.id, data.state);
-        let what = happened(before, data.state)?;
-        Some(format!("{what}: {}", data.subject))
+        let before = self.last.insert(data.id.clone(), data.state);
+        let became = self.became(&data);
+        match happened(before, data.state) {
+            Some(what) => Some(format!("{what}: {}", data.subject)),
+            None => became,
+        }
+    }
+
+    /// What became of an adjustment, once it is sure.
+    fn became(&mut self, data: &Data) -> Option<String> {
+        let Adjusted { source, effect } = data.adjustment.as_ref()?;
+        let before = self.effects.insert(data.id.clone(), *effect);
+        let news = *effect != Effect::NotSure && before != Some(*effect);
+        news.then(|| format!("{source} after its adjustment: {}", effect.words()))
     }
 }
 

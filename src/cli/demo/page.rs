@@ -1,6 +1,7 @@
-//! Asks the demo's own page how far the daemon is: whether it is ready, and what it has taken in.
+//! Speaks with the demo's own page: whether the daemon is ready, what it has taken in, and what the
+//! demo's fitter enters.
 //!
-//! Deliberately absent: a web client; two plain requests to our own loopback address are all that is
+//! Deliberately absent: a web client; a few plain requests to our own loopback address are all that is
 //! needed.
 
 use std::io;
@@ -28,11 +29,29 @@ pub async fn taken_in(page: SocketAddr) -> Option<u64> {
     (status(&text) == Some(200)).then(|| measurements(&text))
 }
 
-/// One request and its whole answer. HTTP/1.0 asks for a body in one piece.
+/// Enters something with a token; says whether it was taken.
+pub async fn enter(page: SocketAddr, path: &str, token: &str, json: &str) -> bool {
+    let request = format!(
+        "POST {path} HTTP/1.0\r\nHost: {page}\r\nAuthorization: Bearer {token}\r\n\
+         Content-Type: application/json\r\nContent-Length: {}\r\n\r\n{json}",
+        json.len()
+    );
+    let answer = exchange(page, &request).await;
+    answer.is_ok_and(|text| status(&text) == Some(201))
+}
+
 async fn get(page: SocketAddr, path: &str) -> io::Result<String> {
+    exchange(
+        page,
+        &format!("GET {path} HTTP/1.0\r\nHost: {page}\r\n\r\n"),
+    )
+    .await
+}
+
+/// One request and its whole answer. HTTP/1.0 asks for a body in one piece.
+async fn exchange(page: SocketAddr, request: &str) -> io::Result<String> {
     let exchange = async {
         let mut stream = TcpStream::connect(page).await?;
-        let request = format!("GET {path} HTTP/1.0\r\nHost: {page}\r\n\r\n");
         stream.write_all(request.as_bytes()).await?;
         let mut answer = Vec::new();
         stream.take(MOST_BYTES).read_to_end(&mut answer).await?;

@@ -140,6 +140,9 @@ fn hex(bytes: &[u8]) -> String {
     bytes.iter().map(|b| format!("{b:02x}")).collect()
 }
 
+/// The demo's bank.
+pub const BANK: &str = "filler-2";
+
 /// The configuration of the invented plant.
 fn configuration(folder: &Path, broker: SocketAddr, page: SocketAddr, look_us: i64) -> String {
     let heads: Vec<String> = (0..HEADS).map(|h| quoted(&head_name(h))).collect();
@@ -163,7 +166,7 @@ listen = "{page}"
 token_file = {token}
 
 [[bank]]
-name = "filler-2"
+name = "{BANK}"
 equipment = "filler 2"
 characteristic = "net content"
 unit = "g"

@@ -31,7 +31,7 @@ use super::bulletin::Bulletin;
 use super::filler::{Filler, HEADS};
 use super::line::{self, LineError, Schedule};
 use super::page;
-use super::scene::{Scene, SceneError};
+use super::scene::{self, Scene, SceneError};
 use super::story::{self, BACKLOG_CYCLES, CYCLE_US};
 
 /// The filler that everybody sees; any number will do.
@@ -244,7 +244,26 @@ impl Stage<'_> {
             say(&format!("  {act}"));
         }
         say("\nCtrl-C ends the demo.\n");
+        self.adjust(schedule, start, clock).await;
         std::future::pending().await
+    }
+
+    /// What a fitter would do after the notice: adjusts the head (the line's troubles end then), and
+    /// enters it on the bank's page.
+    async fn adjust(&self, schedule: Schedule, start: u64, clock: &Clock) {
+        let (cycles, entry) = story::adjustment();
+        let at = schedule.due(start + cycles);
+        let left = at.us_since(clock.now()).max(0).unsigned_abs();
+        sleep(Duration::from_micros(left)).await;
+        let path = format!("/api/v1/banks/{}/events", scene::BANK);
+        let entered = page::enter(self.page, &path, &self.scene.token, &entry).await;
+        let zone = &self.settings.plant.zone;
+        let now = story::clock_time(clock.now(), zone);
+        if entered {
+            say(&format!("{now}  entered: {}", story::entered_words()));
+        } else {
+            complain("The adjustment could not be entered; enter it on the bank's page.");
+        }
     }
 
     async fn wait_for_backlog(&self) {

@@ -53,6 +53,23 @@ pub fn spells(start: u64) -> Vec<Spell> {
     ]
 }
 
+/// What the demo's fitter enters when head 07 is put right, and the cycles from the story's start until then.
+pub fn adjustment() -> (u64, String) {
+    let entry = serde_json::json!({
+        "by": "the demo's fitter",
+        "kind": "adjustment",
+        "source": head_name(LOW_HEAD),
+        "amount": -LOW_G,
+        "reason": "dosing valve opened by a quarter turn",
+    });
+    (LOW_UNTIL, entry.to_string())
+}
+
+/// The same in words.
+pub fn entered_words() -> String {
+    format!("head {} adjusted by +{} g", head_name(LOW_HEAD), -LOW_G)
+}
+
 /// A head's name, as on the machine.
 pub fn head_name(head: usize) -> String {
     format!("{:02}", head + 1)
@@ -75,7 +92,9 @@ pub fn timetable(start: Time, cycle_us: i64, zone: &TimeZone) -> Vec<String> {
         ),
         (
             LOW_UNTIL,
-            format!("head {low} is put right by itself; the notice clears when the data show it"),
+            format!(
+                "head {low} is adjusted by +{depth} g, and that is entered; the notice says whether it worked, and clears"
+            ),
         ),
         (
             ERRATIC_FROM,

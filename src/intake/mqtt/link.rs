@@ -61,6 +61,16 @@ pub(super) enum Speaker {
     V4(rumqttc::AsyncClient),
 }
 
+/// What a connection is for.
+#[derive(Clone, Copy, Debug)]
+pub(super) enum Role<'r> {
+    /// Measurements in a session that outlives the connection, acknowledged by hand.
+    Measurements,
+    /// Listening aside, under the client id with this at its end, in a session that ends with the
+    /// connection.
+    Aside(&'r str),
+}
+
 /// Whether a subscription asks for what was published before it.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
 pub(super) enum Retained {
@@ -74,17 +84,17 @@ pub(super) struct Full;
 
 impl Link {
     /// Prepares a connection; it is made when [`Link::next`] is first called.
-    pub(super) fn new(broker: &Broker, secrets: &Secrets) -> (Self, Speaker) {
+    pub(super) fn new(broker: &Broker, secrets: &Secrets, role: Role<'_>) -> (Self, Speaker) {
         let requests =
             usize::from(broker.receive_maximum).max(LEAST_ACKNOWLEDGEMENTS) + OTHER_REQUESTS;
         match broker.protocol {
             Protocol::V5 => {
-                let options = listening_v5(broker, secrets);
+                let options = listening_v5(broker, secrets, role);
                 let (client, events) = v5::AsyncClient::new(options, requests);
                 (Self::V5(Box::new(events)), Speaker::V5(client))
             }
             Protocol::V4 => {
-                let options = listening_v4(broker, secrets);
+                let options = listening_v4(broker, secrets, role);
                 let (client, mut events) = rumqttc::AsyncClient::new(options, requests);
                 let mut network = network_options_v4();
                 network.set_tcp_nodelay(true);
@@ -156,7 +166,46 @@ impl Speaker {
         }
     }
 
-    /// Says farewell; the broker keeps the session.
+    /// Subscribes to all filters at once with QoS 0 and without what was retained.
+    pub(super) fn subscribe_aside(&self, filters: &[String]) -> Result<(), Full> {
+        match self {
+            Self::V5(client) => {
+                let filter = |path: &String| five::Filter {
+                    retain_forward_rule: five::RetainForwardRule::Never,
+                    ..five::Filter::new(path, v5::mqttbytes::QoS::AtMostOnce)
+                };
+                let filters = filters.iter().map(filter);
+                client.try_subscribe_many(filters).map_err(|_| Full)
+            }
+            Self::V4(client) => {
+                let filter = |path: &String| {
+                    rumqttc::SubscribeFilter::new(path.clone(), rumqttc::QoS::AtMostOnce)
+                };
+                let filters = filters.iter().map(filter);
+                client.try_subscribe_many(filters).map_err(|_| Full)
+            }
+        }
+    }
+
+    /// Publishes with QoS 0, not retained.
+    pub(super) fn publish(&self, topic: &str, payload: Vec<u8>) -> Result<(), Full> {
+        match self {
+            Self::V5(client) => {
+                let qos = v5::mqttbytes::QoS::AtMostOnce;
+                client
+                    .try_publish(topic, qos, false, payload)
+                    .map_err(|_| Full)
+            }
+            Self::V4(client) => {
+                let qos = rumqttc::QoS::AtMostOnce;
+                client
+                    .try_publish(topic, qos, false, payload)
+                    .map_err(|_| Full)
+            }
+        }
+    }
+
+    /// Says farewell; the broker keeps a session that is to be kept.
     pub(super) fn disconnect(&self) -> Result<(), Full> {
         match self {
             Self::V5(client) => client.try_disconnect().map_err(|_| Full),
@@ -165,28 +214,42 @@ impl Speaker {
     }
 }
 
-fn listening_v5(broker: &Broker, secrets: &Secrets) -> v5::MqttOptions {
-    let mut options = options_v5(broker, &broker.client_id, secrets);
+fn listening_v5(broker: &Broker, secrets: &Secrets, role: Role<'_>) -> v5::MqttOptions {
+    let mut options = options_v5(broker, &client_id(broker, role), secrets);
     let mut network = options.network_options();
     network.set_tcp_nodelay(true);
     options
-        .set_clean_start(false)
-        .set_manual_acks(true)
         .set_network_options(network)
         .set_outgoing_inflight_upper_limit(OUTGOING)
-        .set_session_expiry_interval(Some(broker.session_expiry_s))
         .set_receive_maximum(Some(broker.receive_maximum.max(1)));
+    match role {
+        Role::Measurements => options
+            .set_clean_start(false)
+            .set_manual_acks(true)
+            .set_session_expiry_interval(Some(broker.session_expiry_s)),
+        Role::Aside(_) => options.set_clean_start(true),
+    };
     options
 }
 
-fn listening_v4(broker: &Broker, secrets: &Secrets) -> rumqttc::MqttOptions {
-    let mut options = options_v4(broker, &broker.client_id, secrets);
+fn listening_v4(broker: &Broker, secrets: &Secrets, role: Role<'_>) -> rumqttc::MqttOptions {
+    let mut options = options_v4(broker, &client_id(broker, role), secrets);
+    options.set_inflight(OUTGOING);
+    match role {
+        Role::Measurements => options
+            // Without a client id there is no session to keep; the settings require one.
+            .set_clean_session(broker.client_id.is_empty())
+            .set_manual_acks(true),
+        Role::Aside(_) => options.set_clean_session(true),
+    };
     options
-        // Without a client id there is no session to keep; the settings require one.
-        .set_clean_session(broker.client_id.is_empty())
-        .set_manual_acks(true)
-        .set_inflight(OUTGOING);
-    options
+}
+
+fn client_id(broker: &Broker, role: Role<'_>) -> String {
+    match role {
+        Role::Measurements => broker.client_id.clone(),
+        Role::Aside(end) => format!("{}{end}", broker.client_id),
+    }
 }
 
 /// What is wrong with a subscription by MQTT 5; `None` when nothing is.

@@ -9,7 +9,7 @@ use std::time::Duration;
 use tokio::sync::mpsc;
 use tokio_util::sync::CancellationToken;
 
-use crate::clock::Stopwatch;
+use crate::clock::{Clock, Stopwatch};
 use crate::engine::Condition;
 use crate::intake::arrival::{self, Arrival, Decoder, Receipt};
 use crate::model::Reason;
@@ -18,7 +18,7 @@ use crate::settings::connection::{Backoff, Secrets};
 
 use super::drops::{self, Drops};
 use super::ledger::{Delivery, Ledger};
-use super::link::{Heard, Link, Message, Retained, Speaker};
+use super::link::{Heard, Link, Message, Retained, Role, Speaker};
 use super::queue::Queue;
 use super::{FromBroker, IntakeError};
 
@@ -30,6 +30,7 @@ const DRAIN: Duration = Duration::from_secs(1);
 /// Everything the task owns.
 pub(super) struct Listener {
     settings: Arc<Settings>,
+    clock: Clock,
     /// Where the broker is, for people.
     place: String,
     decoder: Decoder,
@@ -101,6 +102,7 @@ impl Listener {
             queue: Queue::new(settings.broker.receive_maximum),
             drops: Drops::default(),
             settings,
+            clock: Clock::System,
             unsent: VecDeque::new(),
             speaker: None,
             said: Condition::Starting,
@@ -145,7 +147,7 @@ impl Listener {
             Ok(Err(error)) => return End::Lost(error.to_string()),
             Err(stop) => return stop.into(),
         };
-        let (mut link, speaker) = Link::new(&self.settings.broker, &secrets);
+        let (mut link, speaker) = Link::new(&self.settings.broker, &secrets, Role::Measurements);
         self.speaker = Some(speaker);
         let end = match self.listen(&mut link, stage).await {
             Ok(never) => match never {},
@@ -289,7 +291,10 @@ impl Listener {
                 self.queue.overflowed(lost.refusals);
                 return;
             }
-            Delivery::Fresh(receipt) => self.decoder.decode(topic, payload, receipt),
+            Delivery::Fresh(receipt) => {
+                let now = self.clock.now();
+                self.decoder.decode(topic, payload, receipt, now)
+            }
         };
         self.queue.push(arrival);
     }

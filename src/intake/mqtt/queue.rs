@@ -17,11 +17,16 @@ use super::FromBroker;
 /// in the log, as one line.
 const MOST_OVERFLOW: usize = 1000;
 
+/// A message with many measurements takes the room of one for each of so many.
+const ITEMS_IN_ONE: usize = 64;
+
 /// The queue.
 #[derive(Debug)]
 pub(super) struct Queue {
     condition: Option<Condition>,
     arrivals: VecDeque<Arrival>,
+    /// The room that they take.
+    taken: usize,
     overflow: Vec<Refusal>,
     /// Overflow beyond [`MOST_OVERFLOW`].
     uncounted: u64,
@@ -39,6 +44,7 @@ impl Queue {
         Self {
             condition: None,
             arrivals: VecDeque::new(),
+            taken: 0,
             overflow: Vec::new(),
             uncounted: 0,
             share,
@@ -48,16 +54,17 @@ impl Queue {
 
     /// Whether nothing more may be read from the connection.
     pub(super) fn is_full(&self) -> bool {
-        self.arrivals.len() >= self.most
+        self.taken >= self.most
     }
 
     /// Whether there is room for a message of QoS 0.
     pub(super) fn has_share(&self) -> bool {
-        self.arrivals.len() < self.share
+        self.taken < self.share
     }
 
     /// Queues an arrival.
     pub(super) fn push(&mut self, arrival: Arrival) {
+        self.taken += room(&arrival);
         self.arrivals.push_back(arrival);
     }
 
@@ -88,6 +95,7 @@ impl Queue {
             return Some(FromBroker::Condition(condition));
         }
         if let Some(arrival) = self.arrivals.pop_front() {
+            self.taken = self.taken.saturating_sub(room(&arrival));
             return Some(FromBroker::Arrival(arrival));
         }
         if self.overflow.is_empty() {
@@ -111,6 +119,11 @@ impl Queue {
             },
         }))
     }
+}
+
+/// The room that an arrival takes.
+fn room(arrival: &Arrival) -> usize {
+    1 + (arrival.measurements.len() + arrival.refusals.len()) / ITEMS_IN_ONE
 }
 
 #[cfg(test)]
@@ -156,6 +169,22 @@ mod tests {
         ];
         assert_eq!(got, expected);
         assert!(queue.is_empty());
+    }
+
+    #[test]
+    fn messages_of_many_measurements_take_more_room() {
+        let mut queue = Queue::new(10);
+        let many = Arrival {
+            refusals: vec![refusal(); 10_000],
+            ..arrival(0)
+        };
+        while !queue.is_full() {
+            queue.push(many.clone());
+        }
+        // 4000 places of 64 items each, or one place more.
+        assert_eq!(queue.arrivals.len(), 4000_usize.div_ceil(157));
+        while queue.pop().is_some() {}
+        assert!(queue.has_share() && queue.taken == 0);
     }
 
     #[test]

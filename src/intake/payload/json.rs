@@ -1,4 +1,4 @@
-//! The form `json`: pointers (RFC 6901) to value, source, time and cycle.
+//! JSON documents: pointers (RFC 6901), members and elements, and what stands where they lead.
 //!
 //! What must hold: numbers stay the text they were sent as; a document is walked, never built, so
 //! memory stays bounded by the payload and no depth of nesting touches the stack (`serde_json`
@@ -15,41 +15,10 @@ use serde::de::{
 use serde_json::value::RawValue;
 
 use crate::model::{Reason, Time, Value, ValueError};
-use crate::settings::{JsonPointers, TimeForm};
+use crate::settings::TimeForm;
 
 use super::number::shown;
-use super::{Decoded, Fault, times};
-
-/// Decodes a document by its pointers.
-pub(super) fn decode<'a>(
-    pointers: &JsonPointers,
-    text: &'a str,
-    topic_source: Option<&'a str>,
-) -> Result<Decoded<'a>, Fault> {
-    let document = document(text)?;
-    let source = match (topic_source, &pointers.source) {
-        (None, Some(pointer)) => source(required(document, pointer, "source")?)?,
-        (topic, _) => super::source_of_topic(topic)?,
-    };
-    let value = value(required(document, &pointers.value, "value")?)?;
-    let taken = match &pointers.time {
-        Some(pointer) => Some(time(
-            required(document, pointer, "time")?,
-            pointers.time_form,
-        )?),
-        None => None,
-    };
-    let cycle = match &pointers.cycle {
-        Some(pointer) => Some(cycle(required(document, pointer, "cycle")?)?),
-        None => None,
-    };
-    Ok(Decoded {
-        source,
-        value,
-        taken,
-        cycle,
-    })
-}
+use super::{Fault, MOST_ITEMS, times};
 
 /// The text as one JSON document, checked from end to end.
 pub(in crate::intake) fn document(text: &str) -> Result<&RawValue, Fault> {
@@ -66,12 +35,7 @@ pub(in crate::intake) fn find<'a>(
 ) -> Result<Option<&'a RawValue>, Fault> {
     let mut at = document;
     for token in pointer.split('/').skip(1) {
-        let token = if token.contains('~') {
-            Cow::Owned(token.replace("~1", "/").replace("~0", "~"))
-        } else {
-            Cow::Borrowed(token)
-        };
-        match step(at, &token) {
+        match step(at, &unescaped(token)) {
             Ok(Some(next)) => at = next,
             Ok(None) => return Ok(None),
             Err(error) => return Err(malformed(at.get(), &error)),
@@ -80,11 +44,67 @@ pub(in crate::intake) fn find<'a>(
     Ok((at.get() != "null").then_some(at))
 }
 
-fn required<'a>(document: &'a RawValue, pointer: &str, what: &str) -> Result<&'a RawValue, Fault> {
+/// A token of a pointer as the name that it means (RFC 6901 §4).
+pub(super) fn unescaped(token: &str) -> Cow<'_, str> {
+    if token.contains('~') {
+        Cow::Owned(token.replace("~1", "/").replace("~0", "~"))
+    } else {
+        Cow::Borrowed(token)
+    }
+}
+
+/// Where `pointer` leads; a fault that calls it `what` when it leads nowhere.
+pub(super) fn required<'a>(
+    document: &'a RawValue,
+    pointer: &str,
+    what: &str,
+) -> Result<&'a RawValue, Fault> {
     find(document, pointer)?.ok_or_else(|| {
-        let detail = format!("there is no {what} at {pointer}");
-        Fault::new(Reason::FieldMissing, detail)
+        let place = match pointer {
+            "" => "where one should stand".to_owned(),
+            pointer => format!("at {pointer}"),
+        };
+        Fault::new(Reason::FieldMissing, format!("there is no {what} {place}"))
     })
+}
+
+/// The elements of a list.
+pub(super) fn elements(list: &RawValue) -> Result<Vec<&RawValue>, Fault> {
+    list.deserialize_seq(Elements)
+        .map_err(|error| malformed(list.get(), &error))
+}
+
+/// The members of an object, in the order in which they are written.
+pub(super) fn members(object: &RawValue) -> Result<Vec<(Cow<'_, str>, &RawValue)>, Fault> {
+    object
+        .deserialize_map(Members)
+        .map_err(|error| malformed(object.get(), &error))
+}
+
+/// Text, `None` when something else stands there.
+pub(super) fn text(raw: &RawValue) -> Option<Cow<'_, str>> {
+    match Kind::of(raw) {
+        Kind::Text(text) => Some(text),
+        Kind::Number(_) | Kind::Other(_) => None,
+    }
+}
+
+/// The text of a number, `None` when something else stands there.
+pub(super) fn digits(raw: &RawValue) -> Option<&str> {
+    match Kind::of(raw) {
+        Kind::Number(text) => Some(text),
+        Kind::Text(_) | Kind::Other(_) => None,
+    }
+}
+
+/// Whether an object stands there.
+pub(super) fn is_object(raw: &RawValue) -> bool {
+    raw.get().starts_with('{')
+}
+
+/// Whether a list stands there.
+pub(super) fn is_list(raw: &RawValue) -> bool {
+    raw.get().starts_with('[')
 }
 
 /// The value: a JSON number.
@@ -124,7 +144,7 @@ pub(in crate::intake) fn source(raw: &RawValue) -> Result<Cow<'_, str>, Fault> {
 }
 
 /// The time taken.
-pub(in crate::intake) fn time(raw: &RawValue, form: TimeForm) -> Result<Time, Fault> {
+pub(in crate::intake) fn time(raw: &RawValue, form: &TimeForm) -> Result<Time, Fault> {
     match Kind::of(raw) {
         Kind::Text(text) => times::from_text(&text, form),
         Kind::Number(text) => times::from_number(text, form),
@@ -261,6 +281,71 @@ impl<'de> Visitor<'de> for Step<'_> {
             }
             at += 1;
         }
+    }
+}
+
+/// Takes the elements of a list, up to a bound.
+struct Elements;
+
+impl<'de> Visitor<'de> for Elements {
+    type Value = Vec<&'de RawValue>;
+
+    fn expecting(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+        f.write_str("a list")
+    }
+
+    fn visit_seq<S: SeqAccess<'de>>(self, mut list: S) -> Result<Self::Value, S::Error> {
+        let mut all = Vec::new();
+        while let Some(element) = list.next_element()? {
+            if all.len() == MOST_ITEMS {
+                return Err(S::Error::custom(too_many()));
+            }
+            all.push(element);
+        }
+        Ok(all)
+    }
+}
+
+/// Takes the members of an object, up to a bound.
+struct Members;
+
+impl<'de> Visitor<'de> for Members {
+    type Value = Vec<(Cow<'de, str>, &'de RawValue)>;
+
+    fn expecting(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+        f.write_str("an object")
+    }
+
+    fn visit_map<M: MapAccess<'de>>(self, mut map: M) -> Result<Self::Value, M::Error> {
+        let mut all: Self::Value = Vec::new();
+        while let Some(name) = map.next_key_seed(TextSeed)? {
+            if all.len() == MOST_ITEMS {
+                return Err(M::Error::custom(too_many()));
+            }
+            all.push((name, map.next_value()?));
+        }
+        let mut names: Vec<&str> = all.iter().map(|(name, _)| name.as_ref()).collect();
+        names.sort_unstable();
+        if let Some(twice) = names.windows(2).find(|pair| pair[0] == pair[1]) {
+            let words = format!("the name {} stands twice in one object", shown(twice[0]));
+            return Err(M::Error::custom(words));
+        }
+        Ok(all)
+    }
+}
+
+fn too_many() -> String {
+    format!("it holds more than {MOST_ITEMS} items, send them in several messages")
+}
+
+/// Reads a member's name as text.
+struct TextSeed;
+
+impl<'de> DeserializeSeed<'de> for TextSeed {
+    type Value = Cow<'de, str>;
+
+    fn deserialize<D: Deserializer<'de>>(self, deserializer: D) -> Result<Self::Value, D::Error> {
+        deserializer.deserialize_str(TextVisitor)
     }
 }
 

@@ -1,8 +1,11 @@
 //! Tables of payloads and what becomes of them.
 
 use super::*;
-use crate::intake::fixture::{self, pointers};
-use crate::settings::{JsonPointers, TimeForm};
+use crate::intake::fixture::{fields, inside, json, top};
+use crate::settings::{Fields, SourceAt, TimeForm};
+
+mod forms;
+mod standards;
 
 const MOST: usize = 4096;
 
@@ -10,8 +13,40 @@ fn us(text: &str) -> Option<Time> {
     Some(Time::parse_rfc3339(text).unwrap())
 }
 
-fn json(pointers: JsonPointers) -> PayloadForm {
-    PayloadForm::Json(pointers)
+/// Decodes a message that holds one measurement.
+fn decode(
+    form: &PayloadForm,
+    payload: &[u8],
+    topic_source: Option<&str>,
+    most_bytes: usize,
+) -> Result<Decoded<'static>, Fault> {
+    let mut all = all(form, payload, topic_source, most_bytes);
+    assert_eq!(all.len(), 1, "{all:?}");
+    all.remove(0)
+}
+
+/// Decodes a message.
+fn all(
+    form: &PayloadForm,
+    payload: &[u8],
+    topic_source: Option<&str>,
+    most_bytes: usize,
+) -> Decodings<'static> {
+    let mut reader = Reader::new(form.clone(), most_bytes);
+    let now = Time::from_us(0);
+    owned(reader.read(Message {
+        payload,
+        topic_source,
+        now,
+    }))
+}
+
+fn owned(all: Decodings<'_>) -> Decodings<'static> {
+    let own = |one: Decoded<'_>| Decoded {
+        source: Cow::Owned(one.source.into_owned()),
+        ..one
+    };
+    all.into_iter().map(|one| one.map(own)).collect()
 }
 
 /// Decodes and says the value as text, or the reason with its words.
@@ -79,32 +114,32 @@ fn bad_numbers_are_refused_by_reason() {
 
 #[test]
 fn json_numbers_keep_their_digits() {
-    let deep = JsonPointers {
-        value: "/a~1b/1/m~0n".into(),
-        ..pointers()
+    let deep = Fields {
+        value: inside("/a~1b/1/m~0n"),
+        ..fields()
     };
     for (pointers, payload, value) in [
-        (pointers(), r#"{"v":503.10}"#, "503.10"),
+        (fields(), r#"{"v":503.10}"#, "503.10"),
         (
-            pointers(),
+            fields(),
             r#" { "x" : [1,{"v":2}], "v" : 0.30000000000000004 } "#,
             "0.30000000000000004",
         ),
-        (pointers(), r#"{"\u0076":7}"#, "7"),
-        (pointers(), r#"{"v":-1.5E1}"#, "-15"),
+        (fields(), r#"{"\u0076":7}"#, "7"),
+        (fields(), r#"{"v":-1.5E1}"#, "-15"),
         (deep, r#"{"a/b":[0,{"m~n":12.5}]}"#, "12.5"),
         (
-            JsonPointers {
-                value: String::new(),
-                ..fixture::pointers()
+            Fields {
+                value: inside(""),
+                ..fields()
             },
             " 42 ",
             "42",
         ),
         (
-            JsonPointers {
-                value: "/".into(),
-                ..fixture::pointers()
+            Fields {
+                value: inside("/"),
+                ..fields()
             },
             r#"{"":1}"#,
             "1",
@@ -172,14 +207,14 @@ fn bad_documents_are_refused_by_reason() {
         (b"{\"v\":01}", Reason::Malformed, "not valid JSON"),
         (b"{\"v\":\"\xc3\x28\"}", Reason::Malformed, "UTF-8"),
     ] {
-        refused(&json(pointers()), payload, reason, words);
+        refused(&json(fields()), payload, reason, words);
     }
 }
 
 #[test]
 fn nesting_does_not_touch_the_stack() {
     let deep = "[".repeat(1_000_000);
-    let form = json(pointers());
+    let form = json(fields());
     let fault = decode(&form, deep.as_bytes(), Some("7"), usize::MAX).unwrap_err();
     assert_eq!(fault.reason, Reason::Malformed);
     let whole = format!("{{\"x\":{deep}{},\"v\":1}}", "]".repeat(1_000_000));
@@ -188,9 +223,9 @@ fn nesting_does_not_touch_the_stack() {
 
 #[test]
 fn sources_come_from_topic_or_payload() {
-    let form = json(JsonPointers {
-        source: Some("/head".into()),
-        ..pointers()
+    let form = json(Fields {
+        source: SourceAt::At(top("/head")),
+        ..fields()
     });
     for (topic, payload, source) in [
         (None, r#"{"v":1,"head":"07"}"#, Ok("07")),
@@ -259,10 +294,10 @@ fn times_are_exact_to_the_microsecond() {
         (EpochSeconds, r#""1772344800""#, None),
         (EpochMilliseconds, r#""2026-03-01T06:00:00Z""#, None),
     ] {
-        let pointers = JsonPointers {
-            time: Some("/t".into()),
-            time_form: form,
-            ..pointers()
+        let pointers = Fields {
+            time: Some(top("/t")),
+            time_form: form.clone(),
+            ..fields()
         };
         let payload = format!("{{\"v\":1,\"t\":{written}}}");
         match decode(&json(pointers), payload.as_bytes(), Some("7"), MOST) {
@@ -280,9 +315,9 @@ fn times_are_exact_to_the_microsecond() {
 
 #[test]
 fn a_local_time_is_told_about_its_offset() {
-    let fault = times::from_text("2026-03-01T06:00:00", TimeForm::Auto).unwrap_err();
+    let fault = times::from_text("2026-03-01T06:00:00", &TimeForm::Auto).unwrap_err();
     assert!(fault.detail.contains("no offset from UTC"), "{fault}");
-    let fault = times::from_cell("2026-03-01 06:00", TimeForm::Auto).unwrap_err();
+    let fault = times::from_cell("2026-03-01 06:00", &TimeForm::Auto).unwrap_err();
     assert!(fault.detail.contains("no offset from UTC"), "{fault}");
 }
 
@@ -303,9 +338,9 @@ fn cycles_are_whole_numbers() {
         ("\"12\"", None),
         ("true", None),
     ] {
-        let pointers = JsonPointers {
-            cycle: Some("/n".into()),
-            ..pointers()
+        let pointers = Fields {
+            cycle: Some(top("/n")),
+            ..fields()
         };
         let payload = format!("{{\"v\":1,\"n\":{written}}}");
         match decode(&json(pointers), payload.as_bytes(), Some("7"), MOST) {
@@ -332,10 +367,10 @@ fn excerpts_are_short_and_printable() {
 proptest::proptest! {
     #[test]
     fn no_bytes_panic(bytes in proptest::collection::vec(proptest::prelude::any::<u8>(), 0..200)) {
-        let full = JsonPointers {
-            source: Some("/s".into()), time: Some("/t/0".into()), cycle: Some("/n".into()), ..pointers()
+        let full = Fields {
+            source: SourceAt::At(top("/s")), time: Some(top("/t/0")), cycle: Some(top("/n")), ..fields()
         };
-        for form in [PayloadForm::Number, json(pointers()), json(full)] {
+        for form in [PayloadForm::Number, json(fields()), json(full)] {
             let _ = decode(&form, &bytes, None, MOST).map(|d| d.value);
         }
         proptest::prop_assert!(excerpt(&bytes).chars().count() <= MOST_EXCERPT);
@@ -343,8 +378,8 @@ proptest::proptest! {
 
     #[test]
     fn no_document_panics(v in "[-+0-9.eE\"a-zN]{0,12}", t in "[-+0-9.eE\"T:Z]{0,30}", n in "[-+0-9.eE\"]{0,25}", rest in "[\\[\\]{},:\"0-9]{0,10}") {
-        let full = JsonPointers {
-            source: Some("/s".into()), time: Some("/t".into()), cycle: Some("/n".into()), ..pointers()
+        let full = Fields {
+            source: SourceAt::At(top("/s")), time: Some(top("/t")), cycle: Some(top("/n")), ..fields()
         };
         let text = format!("{{\"s\":1,\"v\":{v},\"t\":{t},\"n\":{n}{rest}}}");
         let _ = decode(&json(full), text.as_bytes(), None, MOST).map(|d| d.value);
@@ -357,7 +392,7 @@ proptest::proptest! {
         let sign = if c < 0 && whole == 0 { "-" } else { "" };
         let number = if places == 0 { format!("{c}") } else { format!("{sign}{whole}.{part:0>width$}", width = places as usize) };
         let seconds = format!("{}.{:06}", us / 1_000_000, us % 1_000_000);
-        let full = JsonPointers { time: Some("/t".into()), cycle: Some("/n".into()), ..pointers() };
+        let full = Fields { time: Some(top("/t")), cycle: Some(top("/n")), ..fields() };
         let text = format!("{{\"v\":{number},\"t\":{seconds},\"n\":{n}}}");
         let form = json(full);
         let decoded = decode(&form, text.as_bytes(), Some("7"), MOST).unwrap();

@@ -1,8 +1,11 @@
 //! Times as payloads and recordings write them.
 //!
 //! Whole and fractional epoch times are converted in decimal, so that a millisecond stays one.
-//! Digits beyond the microsecond are cut off. Deliberately absent: local times without an offset
-//! (twice a year they name two moments or none), and whether a time is plausible.
+//! Digits beyond the microsecond are cut off. Local times without an offset are read only where the
+//! configuration says so, and refused in the hours in which they name two moments or none.
+//! Deliberately absent: whether a time is plausible.
+
+use jiff::tz::TimeZone;
 
 use crate::model::{Reason, Time, Value};
 use crate::settings::TimeForm;
@@ -15,9 +18,10 @@ use super::number::shown;
 const FIRST_MS: i128 = 100_000_000_000;
 
 /// A time from text that stands where text belongs (a JSON string).
-pub(in crate::intake) fn from_text(text: &str, form: TimeForm) -> Result<Time, Fault> {
+pub(in crate::intake) fn from_text(text: &str, form: &TimeForm) -> Result<Time, Fault> {
     match form {
         TimeForm::Auto | TimeForm::Rfc3339 => rfc3339(text),
+        TimeForm::Local(zone) => local(text, zone),
         TimeForm::EpochSeconds | TimeForm::EpochMilliseconds => Err(bad(format!(
             "the time {} is text, a number since 1970 is configured",
             shown(text)
@@ -26,11 +30,11 @@ pub(in crate::intake) fn from_text(text: &str, form: TimeForm) -> Result<Time, F
 }
 
 /// A time from a number.
-pub(in crate::intake) fn from_number(text: &str, form: TimeForm) -> Result<Time, Fault> {
+pub(in crate::intake) fn from_number(text: &str, form: &TimeForm) -> Result<Time, Fault> {
     let value =
         Value::parse(text).map_err(|error| bad(format!("the time {} {error}", shown(text))))?;
     let us = match form {
-        TimeForm::Rfc3339 => {
+        TimeForm::Rfc3339 | TimeForm::Local(_) => {
             let words = format!("the time {} is a number, text is configured", shown(text));
             return Err(bad(words));
         }
@@ -46,7 +50,7 @@ pub(in crate::intake) fn from_number(text: &str, form: TimeForm) -> Result<Time,
 }
 
 /// A time from a cell of a table, where text and numbers look alike.
-pub(in crate::intake) fn from_cell(text: &str, form: TimeForm) -> Result<Time, Fault> {
+pub(in crate::intake) fn from_cell(text: &str, form: &TimeForm) -> Result<Time, Fault> {
     let text = text.trim();
     if text.is_empty() {
         Err(bad("there is no time".to_owned()))
@@ -70,8 +74,28 @@ fn rfc3339(text: &str) -> Result<Time, Fault> {
     })
 }
 
+/// A time by the clocks of a zone.
+fn local(text: &str, zone: &TimeZone) -> Result<Time, Fault> {
+    let text = text.trim();
+    let Ok(by_the_wall) = text.parse::<jiff::civil::DateTime>() else {
+        let why = "cannot be read, write for example 2026-03-01T06:00:00";
+        return Err(bad(format!("the time {} {why}", shown(text))));
+    };
+    if Time::parse_rfc3339(text).is_ok() {
+        let why = "has an offset from UTC, then leave `time_form` out";
+        return Err(bad(format!("the time {} {why}", shown(text))));
+    }
+    let moment = zone.to_ambiguous_timestamp(by_the_wall).unambiguous();
+    moment
+        .map(|at| Time::from_us(at.as_microsecond()))
+        .map_err(|_| {
+            let why = "names two moments or none, because the clocks are changed then";
+            bad(format!("the time {} {why}", shown(text)))
+        })
+}
+
 /// `value * 10^power`, cut to a whole number.
-fn scaled(value: Value, power: i32) -> Option<i64> {
+pub(super) fn scaled(value: Value, power: i32) -> Option<i64> {
     match value {
         Value::Decimal {
             coefficient,

@@ -9,12 +9,14 @@ use crate::model::Reason;
 use crate::settings::{RecordingColumns, TimeForm};
 
 use super::input::Input;
-use super::{Next, Row};
+use super::{How, Next, Row};
 
 /// Reads objects line by line.
 pub(super) struct Lines {
     input: Input,
     columns: Pointers,
+    /// Whether a line may leave the source out.
+    may_name_none: bool,
     /// Lines read so far.
     line: u64,
 }
@@ -29,7 +31,7 @@ struct Pointers {
 }
 
 impl Lines {
-    pub(super) fn new((line, input): (u64, Input), columns: RecordingColumns) -> Self {
+    pub(super) fn new((line, input): (u64, Input), how: &How) -> Self {
         let pointer = |name: &str| format!("/{}", name.replace('~', "~0").replace('/', "~1"));
         let RecordingColumns {
             time,
@@ -37,17 +39,18 @@ impl Lines {
             value,
             cycle,
             bank,
-        } = columns;
+        } = &how.columns;
         let columns = Pointers {
-            time: pointer(&time),
-            source: pointer(&source),
-            value: pointer(&value),
-            cycle: pointer(&cycle),
-            bank: pointer(&bank),
+            time: pointer(time),
+            source: pointer(source),
+            value: pointer(value),
+            cycle: pointer(cycle),
+            bank: pointer(bank),
         };
         Self {
             input,
             columns,
+            may_name_none: how.may_name_none(),
             line,
         }
     }
@@ -90,8 +93,11 @@ impl Lines {
                 Fault::new(Reason::FieldMissing, words)
             })
         };
-        let time = |raw: &RawValue| json::time(raw, TimeForm::Auto);
-        let source = json::source(needed(&self.columns.source)?)?.into_owned();
+        let time = |raw: &RawValue| json::time(raw, &TimeForm::Auto);
+        let source = match at(&self.columns.source)? {
+            None if self.may_name_none => String::new(),
+            _ => json::source(needed(&self.columns.source)?)?.into_owned(),
+        };
         let value = json::value(needed(&self.columns.value)?);
         let bank = at(&self.columns.bank)?.map(json::source).transpose()?;
         let turn = at("/turn")?.map(json::cycle).transpose()?;

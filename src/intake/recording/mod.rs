@@ -2,7 +2,7 @@
 //! or gzip, from a file or from standard input.
 //!
 //! ```text
-//! let how = How { banks, bank: Some(BankIx(0)), columns: RecordingColumns::default() };
+//! let how = How { banks, bank: Some(BankIx(0)), columns: RecordingColumns::default(), beliefs, told_by };
 //! for row in recording::open(&Source::named("week.csv.gz"), &how)? {
 //!     match row {
 //!         Ok(recorded) => …            // one measurement, in the order of the file
@@ -11,6 +11,8 @@
 //!     }
 //! }
 //! ```
+//!
+//! A bank whose sources are shifts needs no source: the time tells it.
 //!
 //! A table is long when its header has the columns of source and value, wide when it has neither;
 //! in wide form every column that is not `time`, `cycle`, `bank`, `received` or `turn` is a source
@@ -30,10 +32,10 @@ use std::collections::VecDeque;
 use std::path::{Path, PathBuf};
 
 use crate::model::{BankIx, Measurement, Name, Reason, Refusal, Time};
-use crate::settings::RecordingColumns;
+use crate::settings::{Belief, RecordingColumns, ToldBy};
 
 use super::names::Names;
-use super::payload::{Fault as PayloadFault, excerpt};
+use super::payload::{Fault as PayloadFault, believed, excerpt};
 
 pub use input::MOST_LINE_BYTES;
 
@@ -75,6 +77,17 @@ pub struct How {
     pub bank: Option<BankIx>,
     /// The names of the columns.
     pub columns: RecordingColumns,
+    /// What is believed of the values of each bank, by [`BankIx`]; without an entry everything.
+    pub beliefs: Vec<Belief>,
+    /// What tells the source of each bank's values, by [`BankIx`]; without an entry the recording.
+    pub told_by: Vec<ToldBy>,
+}
+
+impl How {
+    /// Whether a recording may leave the sources out.
+    fn may_name_none(&self) -> bool {
+        self.told_by.contains(&ToldBy::Time)
+    }
 }
 
 /// One measurement of a recording.
@@ -180,13 +193,10 @@ pub fn open(source: &Source, how: &How) -> Result<Recording, OpenError> {
     let mut input = input::open(source).map_err(open)?;
     let rows = match input::start(&mut input).map_err(open)? {
         None => return Err(OpenError::Empty { name }),
-        Some((b'{', skipped)) => {
-            let columns = how.columns.clone();
-            Rows::Lines(lines::Lines::new((skipped, input), columns))
-        }
+        Some((b'{', skipped)) => Rows::Lines(lines::Lines::new((skipped, input), how)),
         Some((_, skipped)) => {
             let from = (skipped, input);
-            Rows::Table(table::Table::new(&name, from, &how.columns)?)
+            Rows::Table(table::Table::new(&name, from, how)?)
         }
     };
     let recording = Recording {
@@ -306,6 +316,8 @@ struct Judge {
     banks: Vec<Name>,
     /// The bank of rows that name none.
     otherwise: Option<BankIx>,
+    beliefs: Vec<Belief>,
+    told_by: Vec<ToldBy>,
     names: Names,
 }
 
@@ -315,6 +327,8 @@ impl Judge {
         Self {
             banks: how.banks.clone(),
             otherwise: how.bank.or(only),
+            beliefs: how.beliefs.clone(),
+            told_by: how.told_by.clone(),
             names: Names::default(),
         }
     }
@@ -359,8 +373,17 @@ impl Judge {
                 return;
             }
         };
+        let told_by = self.told_by.get(bank.index());
+        let stand_in = told_by.and_then(|told| told.stand_in());
         for (source, value) in row.values {
+            let source = stand_in.map_or(source, str::to_owned);
             let value = super::payload::checked_source(&source).and(value);
+            let value = match self.beliefs.get(bank.index()) {
+                Some(belief) => value.and_then(|value| {
+                    believed(belief, value).map_err(|fault| fault.of_source(&source))
+                }),
+                None => value,
+            };
             out.push_back(match value {
                 Ok(value) => Ok(Recorded {
                     line,

@@ -7,10 +7,10 @@ use csv::StringRecord;
 
 use crate::intake::payload::{Fault, json, number, times};
 use crate::model::{Reason, Time};
-use crate::settings::{RecordingColumns, TimeForm};
+use crate::settings::TimeForm;
 
 use super::input::Input;
-use super::{Next, OpenError, Row};
+use super::{How, Next, OpenError, Row};
 
 /// Reads a table row by row.
 pub(super) struct Table {
@@ -37,7 +37,8 @@ struct Columns {
 
 enum Form {
     Long {
-        source: usize,
+        /// `None` where the time tells the source.
+        source: Option<usize>,
         value: usize,
     },
     /// Place and name of each source's column.
@@ -48,7 +49,7 @@ impl Table {
     pub(super) fn new(
         name: &str,
         (skipped, mut input): (u64, Input),
-        names: &RecordingColumns,
+        how: &How,
     ) -> Result<Self, OpenError> {
         let unreadable = |why: String| OpenError::Header {
             name: name.to_owned(),
@@ -72,7 +73,7 @@ impl Table {
             .headers()
             .map_err(|error| unreadable(error.to_string()))?
             .clone();
-        let columns = Columns::find(&header, names).map_err(|why| OpenError::Columns {
+        let columns = Columns::find(&header, how).map_err(|why| OpenError::Columns {
             name: name.to_owned(),
             why,
             columns: header.iter().collect::<Vec<_>>().join(", "),
@@ -164,7 +165,8 @@ fn delimiter(line: &[u8]) -> u8 {
 }
 
 impl Columns {
-    fn find(header: &StringRecord, names: &RecordingColumns) -> Result<Self, String> {
+    fn find(header: &StringRecord, how: &How) -> Result<Self, String> {
+        let names = &how.columns;
         let mut seen = BTreeSet::new();
         if let Some(twice) = header.iter().find(|name| !seen.insert(*name)) {
             return Err(format!("the column '{twice}' stands twice"));
@@ -175,7 +177,14 @@ impl Columns {
         let (cycle, bank) = (at(&names.cycle), at(&names.bank));
         let (received, turn) = (at("received"), at("turn"));
         let form = match (at(&names.source), at(&names.value)) {
-            (Some(source), Some(value)) => Form::Long { source, value },
+            (None, Some(value)) if how.may_name_none() => Form::Long {
+                source: None,
+                value,
+            },
+            (Some(source), Some(value)) => Form::Long {
+                source: Some(source),
+                value,
+            },
             (Some(_), None) => return Err(missing(&names.value)),
             (None, Some(_)) => return Err(missing(&names.source)),
             (None, None) => {
@@ -208,10 +217,11 @@ impl Columns {
     fn row(&self, line: u64, record: &StringRecord) -> Row {
         let cell = |at: usize| record.get(at).unwrap_or("");
         let filled = |at: Option<usize>| at.map(cell).filter(|text| !text.is_empty());
-        let time = |text: &str| -> Result<Time, Fault> { times::from_cell(text, TimeForm::Auto) };
+        let time = |text: &str| -> Result<Time, Fault> { times::from_cell(text, &TimeForm::Auto) };
         let values = match &self.form {
             Form::Long { source, value } => {
-                vec![(cell(*source).to_owned(), number::value(cell(*value)))]
+                let source = source.map_or("", cell);
+                vec![(source.to_owned(), number::value(cell(*value)))]
             }
             Form::Wide(sources) => sources
                 .iter()

@@ -3,12 +3,15 @@
 use std::io::Write;
 
 use super::*;
+use crate::model::Value;
 
 fn how(banks: &[&str]) -> How {
     How {
         banks: banks.iter().map(|&name| name.into()).collect(),
         bank: None,
         columns: RecordingColumns::default(),
+        beliefs: Vec::new(),
+        told_by: Vec::new(),
     }
 }
 
@@ -262,6 +265,22 @@ fn the_bank_may_be_said() {
     assert_eq!(
         told(b"time,source,value,bank\n0,01,1,one\n0,01,2,\n", &how),
         [format!("2: 0 01 1 {T0}"), format!("3: 1 01 2 {T0}")]
+    );
+}
+
+#[test]
+fn what_is_not_believed_live_is_not_believed_recorded() {
+    let how = How {
+        beliefs: vec![Belief {
+            sentinels: vec![Value::parse("-127").unwrap()],
+            ..Belief::default()
+        }],
+        ..how(&["one"])
+    };
+    let words = "sentinel source '2': -127.0 is one of `sentinels`, by which the instrument says that it has no value";
+    assert_eq!(
+        told(b"time,1,2\n0,1,-127.0\n", &how),
+        [format!("2: 0 1 1 {T0}"), format!("2: {words}")]
     );
 }
 

@@ -2,22 +2,28 @@
 
 use std::collections::BTreeSet;
 
-use crate::model::{Bank, BankIx, Budget, Characteristic, Layout, Name, Pairing, Sources, Value};
-use crate::settings::Feed;
+use crate::model::{
+    Bank, BankIx, Budget, Characteristic, Layout, Name, Offsets, Pairing, Sources, Value,
+};
 use crate::settings::check::{Check, D, S, unfit};
 use crate::settings::fault::{FaultList, Place};
 use crate::settings::keys;
 use crate::settings::raw::{Kind, Node};
 use crate::settings::section::{Field, Spot};
 use crate::settings::written::{WrittenBank, WrittenLimits, WrittenPairing, WrittenSources};
+use crate::settings::{Feed, ToldBy};
 use crate::stats::dist::studentized_range;
 
 use super::feed::{WrittenFeed, feed};
+use super::known::{WrittenKnown, known as known_of};
+use super::shifts::{self, OfPlant};
 
 /// Spans when nothing else is said: a factor 4 apart, as the call budget's arithmetic prefers.
 const SPANS: [usize; 4] = [10, 40, 160, 640];
 /// The longest span: 60 sources of as many values are 100 MB.
 const LONGEST_SPAN: i64 = 100_000;
+/// The longest span where places are learnt.
+const LONGEST_LEARNT: i64 = 640;
 /// Every span takes its share of the budget; more than these would leave none.
 const MOST_SPANS: usize = 20;
 /// Time between looks when nothing else is said.
@@ -37,6 +43,7 @@ const OLDEST_DAYS: i64 = 30;
 pub(super) fn bank(
     ix: BankIx,
     written: WrittenBank,
+    plant: &OfPlant,
     faults: &mut FaultList,
 ) -> Option<(Bank, Feed)> {
     let WrittenBank {
@@ -51,6 +58,8 @@ pub(super) fn bank(
         limits,
         topic,
         payload,
+        sentinels,
+        plausible,
         sources,
         most_sources,
         pairing,
@@ -63,16 +72,26 @@ pub(super) fn bank(
         silent_after,
         oldest_days,
         layout,
+        groups,
+        cost_per_unit,
+        reference,
         offsets,
         recording,
     } = written;
+    let told_by = shifts::told_by(&sources);
     let heard = feed(
         ix,
         WrittenFeed {
             place: place.clone(),
             topic,
             payload,
+            sentinels,
+            plausible,
             recording,
+            unit: unit.peek().map(|spot| spot.value.clone()),
+            listed: listed_names(&sources),
+            zone: plant.zone.clone(),
+            told_by,
         },
         faults,
     );
@@ -91,21 +110,49 @@ pub(super) fn bank(
         limits,
     };
     let margin = margin_of(margin, measured.resolution.as_ref(), &mut check);
+    let is_declared = measured.declared.is_some();
     let characteristic = measured.characteristic(&mut check);
-    let sources = who(sources, most_sources, heard.source_in_topic, &mut check);
-    let pairing = pairing_of(pairing, heard.without_cycle, &mut check);
+    if told_by == ToldBy::Time {
+        let keys = [
+            ("most_sources", most_sources.peek().map(|spot| &spot.place)),
+            ("look_every", look_every.peek().map(|spot| &spot.place)),
+            ("wait_cycles", wait_cycles.peek().map(|spot| &spot.place)),
+            ("layout", layout.peek().map(|spot| &spot.place)),
+            ("groups", groups.peek().map(|spot| &spot.place)),
+        ];
+        shifts::mean_nothing(&keys, &mut check);
+    }
+    let usual = Usual::of(told_by);
+    let in_topic = heard.source_in_topic;
+    let sources = who(sources, most_sources, (in_topic, plant), &mut check);
+    let pairing = match told_by {
+        ToldBy::Time => shifts::pairing(pairing, &mut check),
+        ToldBy::Message => pairing_of(pairing, heard.without_cycle, &mut check),
+    };
     waits_for_cycles(&wait_cycles, pairing, &mut check);
-    no_offsets(offsets, &mut check);
-    let spans = spans_of(spans, &mut check);
+    let known = WrittenKnown {
+        groups,
+        cost_per_unit,
+        reference,
+        offsets,
+    };
+    let known = known_of(known, sources.as_ref(), is_declared, &mut check);
+    let learns = known.offsets == Offsets::Learn;
+    no_long_spans(&spans, learns, &mut check);
+    let spans = spans_of(spans, usual.spans, &mut check);
     let look_every_us = check.duration_us(look_every, "look_every", S..=7 * D);
-    let look_every_us = look_every_us.unwrap_or(LOOK_EVERY_US);
+    let look_every_us = look_every_us.unwrap_or(usual.look_every_us);
     let above_1 = "above 1: a ratio of two standard deviations";
     let spread = check.number(spread_margin, "spread_margin", |x| x > 1.0, above_1);
     let budget = budget_of(false_calls, look_every_us, &mut check);
     let layouts = [("row", Layout::Row), ("ring", Layout::Ring)];
     let layout = check.word(layout, "layout", &layouts);
     let wait_cycles = check.whole(wait_cycles, "wait_cycles", 1..=1000);
-    let silent_after_us = check.duration_us(silent_after, "silent_after", S..=366 * D);
+    let silent_after_us = check.duration_us(
+        silent_after,
+        "silent_after",
+        usual.least_silent_us..=366 * D,
+    );
     let oldest_days = check.whole(oldest_days, "oldest_days", 1..=36_525);
     let bank = Bank {
         name: name?,
@@ -118,12 +165,48 @@ pub(super) fn bank(
         margin: margin?,
         spread_margin: spread.map_or(SPREAD_MARGIN, |spot| spot.value),
         budget: budget?,
-        wait_cycles: wait_cycles.unwrap_or(WAIT_CYCLES),
-        silent_after_us,
+        wait_cycles: wait_cycles.unwrap_or(usual.wait_cycles),
+        silent_after_us: silent_after_us.or(usual.silent_after_us),
         oldest_us: oldest_days.unwrap_or(OLDEST_DAYS) * D,
         layout: layout.map_or(Layout::Row, |spot| spot.value),
+        groups: known.groups,
+        cost_per_unit: known.cost_per_unit,
+        reference: known.reference,
+        offsets: known.offsets,
     };
     Some((bank, heard.feed?))
+}
+
+/// What holds when nothing else is said.
+struct Usual {
+    spans: &'static [usize],
+    look_every_us: i64,
+    wait_cycles: u32,
+    silent_after_us: Option<i64>,
+    /// Nobody is silent sooner.
+    least_silent_us: i64,
+}
+
+impl Usual {
+    fn of(told_by: ToldBy) -> Self {
+        match told_by {
+            ToldBy::Message => Self {
+                spans: &SPANS,
+                look_every_us: LOOK_EVERY_US,
+                wait_cycles: WAIT_CYCLES,
+                silent_after_us: None,
+                least_silent_us: S,
+            },
+            ToldBy::Time => Self {
+                spans: &shifts::SPANS,
+                look_every_us: shifts::LOOK_EVERY_US,
+                wait_cycles: shifts::WAIT_CYCLES,
+                silent_after_us: Some(shifts::SILENT_AFTER_US),
+                // A shift is away for most of every day.
+                least_silent_us: 2 * D,
+            },
+        }
+    }
 }
 
 /// What is measured, while it is being checked.
@@ -222,7 +305,7 @@ fn margin_of(
 fn who(
     field: Field<WrittenSources>,
     most_sources: Field<i64>,
-    in_topic: bool,
+    (in_topic, plant): (bool, &OfPlant),
     check: &mut Check<'_>,
 ) -> Option<Sources> {
     let Spot { value, place } = check.required(field, "sources").given()?;
@@ -233,9 +316,11 @@ fn who(
                 most: most.unwrap_or(DISCOVERED),
             })
         }
+        WrittenSources::Word(word) if word == "shifts" => shifts::sources(plant, &place, check),
         WrittenSources::Word(_) => {
             let hint = keys::example("bank", "sources");
-            check.add(&place, "`sources` must be a list or \"discover\"", hint);
+            let message = "`sources` must be a list, \"discover\" or \"shifts\"";
+            check.add(&place, message, hint);
             None
         }
         WrittenSources::Listed(list) => {
@@ -250,6 +335,18 @@ fn who(
             listed(list, &place, in_topic, check)
         }
     }
+}
+
+/// The names of listed sources, good or not.
+fn listed_names(field: &Field<WrittenSources>) -> Vec<Name> {
+    let Some(WrittenSources::Listed(list)) = field.peek().map(|spot| &spot.value) else {
+        return Vec::new();
+    };
+    let name = |node: &Node| match &node.kind {
+        Kind::Text(name) => Some(Name::from(name.as_str())),
+        _ => None,
+    };
+    list.iter().filter_map(name).collect()
 }
 
 fn listed(
@@ -308,6 +405,13 @@ fn pairing_of(
 ) -> Option<Pairing> {
     let Spot { value, place } = check.required(field, "pairing").given()?;
     match value {
+        WrittenPairing::Word(word) if word == "day" => {
+            let message = "`pairing = \"day\"` needs `sources = \"shifts\"`";
+            let hint =
+                "shifts share a production day; other sources share a cycle or a slot of time";
+            check.add(&place, message, hint);
+            None
+        }
         WrittenPairing::Word(word) => {
             let known = [("cycle", Pairing::Cycle), ("none", Pairing::None)];
             let word = Field::Given(Spot { value: word, place });
@@ -341,25 +445,11 @@ fn waits_for_cycles(field: &Field<i64>, pairing: Option<Pairing>, check: &mut Ch
     }
 }
 
-fn no_offsets(field: Field<Node>, check: &mut Check<'_>) {
-    let Some(Spot { value, place }) = field.given() else {
-        return;
-    };
-    match value.kind {
-        Kind::Text(word) if word == "none" => {}
-        _ => check.add(
-            &place,
-            "`offsets` other than \"none\" are not in this version",
-            "take it out; in this version sources are compared as they are, without known offsets",
-        ),
-    }
-}
-
 /// The lengths of windows.
-fn spans_of(field: Field<Vec<Node>>, check: &mut Check<'_>) -> Option<Vec<usize>> {
+fn spans_of(field: Field<Vec<Node>>, usual: &[usize], check: &mut Check<'_>) -> Option<Vec<usize>> {
     let Spot { value, place } = match field {
         Field::Given(spot) => spot,
-        Field::Absent => return Some(SPANS.to_vec()),
+        Field::Absent => return Some(usual.to_vec()),
         Field::Faulty => return None,
     };
     let example = || keys::example("bank", "spans");
@@ -388,6 +478,22 @@ fn spans_of(field: Field<Vec<Node>>, check: &mut Check<'_>) -> Option<Vec<usize>
         }
     }
     Some(spans)
+}
+
+/// A place that is learnt is not known better than from as many values.
+fn no_long_spans(spans: &Field<Vec<Node>>, learns: bool, check: &mut Check<'_>) {
+    let long = |node: &&Node| matches!(node.kind, Kind::Whole(Some(n)) if n > LONGEST_LEARNT);
+    let Some(node) = spans
+        .peek()
+        .filter(|_| learns)
+        .and_then(|s| s.value.iter().find(long))
+    else {
+        return;
+    };
+    let message = format!("with `offsets = \"learn\"` no span may be longer than {LONGEST_LEARNT}");
+    let hint = "over longer windows the chance in the learnt places would pass for a difference; write \
+                the offsets as a table to look further";
+    check.add(&node.place, message, hint);
 }
 
 /// The call budget.

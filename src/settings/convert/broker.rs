@@ -10,6 +10,8 @@ use crate::settings::section::{Field, Spot};
 use crate::settings::written::WrittenBroker;
 use crate::settings::{Broker, Protocol};
 
+use super::address::{self, Address};
+
 /// Long enough for a plant's holidays over a weekend; a broker that keeps more fills up.
 const SESSION_EXPIRY_US: i64 = 7 * D;
 
@@ -25,6 +27,9 @@ const PACKET_LIMIT: i64 = 268_435_455;
 
 /// Between the client library's least (5 s) and what a router forgets.
 const KEEP_ALIVE_US: i64 = 30 * S;
+
+/// How a broker is spoken to: scheme, whether that encrypts, and the port when none is given.
+const SCHEMES: address::Schemes = &[("mqtt", false, 1883), ("mqtts", true, 8883)];
 
 /// The broker. `plant` names the client when `client_id` does not.
 pub(super) fn broker(
@@ -49,7 +54,7 @@ pub(super) fn broker(
     } = written;
     let mut check = Check::new("broker", &place, faults);
     let url = check.required(url, "url");
-    let address = address(url, &mut check);
+    let address = address::read(url, "broker", SCHEMES, &mut check);
     let protocol = version(protocol, &mut check);
     if protocol == Protocol::V4 {
         only_in_5(&session_expiry, "session_expiry", &mut check);
@@ -110,81 +115,6 @@ fn only_in_5<T>(field: &Field<T>, name: &str, check: &mut Check<'_>) {
         let message = format!("`{name}` means nothing with `protocol = 4`");
         check.add(&spot.place, message, "take it out, or use `protocol = 5`");
     }
-}
-
-/// What a URL says.
-struct Address {
-    host: String,
-    port: u16,
-    tls: bool,
-}
-
-fn address(field: Field<String>, check: &mut Check<'_>) -> Option<Address> {
-    let Spot { value, place } = field.given()?;
-    match parse(&value) {
-        Ok(address) => Some(address),
-        Err(Unread { message, hint }) => {
-            let hint = hint.unwrap_or_else(|| keys::example("broker", "url"));
-            check.add(&place, message, hint);
-            None
-        }
-    }
-}
-
-/// Why a URL cannot be used.
-struct Unread {
-    message: &'static str,
-    hint: Option<String>,
-}
-
-fn parse(url: &str) -> Result<Address, Unread> {
-    let no = |message| Unread {
-        message,
-        hint: None,
-    };
-    if !url.contains("://") {
-        return Err(Unread {
-            message: "`url` does not say how to speak",
-            hint: Some(format!(
-                "write \"mqtt://{}\", or mqtts:// for TLS",
-                url.trim()
-            )),
-        });
-    }
-    let uri: http::Uri = url.parse().map_err(|_| no("`url` is no address"))?;
-    let (tls, port) = match uri.scheme_str() {
-        Some("mqtt") => (false, 1883),
-        Some("mqtts") => (true, 8883),
-        _ => return Err(no("`url` must start with mqtt:// or mqtts://")),
-    };
-    let authority = uri.authority().ok_or_else(|| no("`url` names no host"))?;
-    if authority.as_str().contains('@') {
-        return Err(Unread {
-            message: "`url` holds a user or a password",
-            hint: Some("give `user` and `password_file` instead".to_owned()),
-        });
-    }
-    if !matches!(uri.path(), "" | "/") || uri.query().is_some() {
-        return Err(no("`url` goes on after the host and port"));
-    }
-    let host = authority.host();
-    let rest = authority.as_str().strip_prefix(host).unwrap_or_default();
-    let port = match rest.strip_prefix(':') {
-        None => port,
-        Some(digits) => match digits.parse::<u16>() {
-            Ok(port) if port > 0 => port,
-            _ => return Err(no("the port of `url` must lie between 1 and 65535")),
-        },
-    };
-    // An IPv6 address is bracketed in a URL and nowhere else.
-    let host = host
-        .trim_start_matches('[')
-        .trim_end_matches(']')
-        .to_owned();
-    if host.is_empty() {
-        return Err(no("`url` names no host"));
-    }
-    Ok(Address { host, port, tls })
 }
 
 /// The files of an encrypted connection.

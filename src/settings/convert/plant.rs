@@ -1,5 +1,6 @@
 //! `[plant]`, `[store]` and `[web]`.
 
+use std::collections::BTreeSet;
 use std::net::{Ipv4Addr, SocketAddr};
 
 use jiff::civil::Time as WallTime;
@@ -30,22 +31,47 @@ pub(super) fn plant(written: WrittenPlant, faults: &mut FaultList) -> Option<Pla
         shifts,
     } = written;
     let shifts = shifts.given().map(|spot| spot.value).unwrap_or_default();
-    super::one_name_each(
-        "shifts",
-        shifts.iter().filter_map(|s| s.name.peek()),
-        faults,
-    );
+    let mut seen = BTreeSet::new();
+    let names = shifts.iter().filter_map(|s| s.name.peek());
+    // Those of one name are parts of one shift.
+    let each = names.clone().filter(|name| seen.insert(&name.value));
+    super::one_name_each("shifts", each, faults);
+    let names: Vec<Option<Spot<String>>> = shifts.iter().map(|s| s.name.peek().cloned()).collect();
     let mut check = Check::new("plant", &place, faults);
     let name = check.required(name, "name");
     let name = check.name(name, "name");
     let zone = check.required(time_zone, "time_zone");
     let zone = zone_of(zone, &mut check);
     let shifts: Vec<_> = shifts.into_iter().map(|s| shift(s, faults)).collect();
+    one_part_at_a_time(&shifts, &names, faults);
     Some(PlantSettings {
         name: name?,
         zone: zone?,
         shifts: shifts.into_iter().collect::<Option<_>>()?,
     })
+}
+
+/// Says which parts of one shift overlap.
+fn one_part_at_a_time(
+    shifts: &[Option<Shift>],
+    names: &[Option<Spot<String>>],
+    faults: &mut FaultList,
+) {
+    for (b, later) in shifts.iter().enumerate() {
+        let Some(later) = later else { continue };
+        let before = shifts[..b].iter().zip(names);
+        let mut overlap = before.filter_map(|(s, name)| Some((s.as_ref()?, name.as_ref()?)));
+        let overlap = overlap.find(|(s, _)| s.name == later.name && s.overlaps(later));
+        if let (Some((_, first)), Some(Some(name))) = (overlap, names.get(b)) {
+            let line = first.place.line().unwrap_or_default();
+            let message = format!(
+                "two shifts are called \"{}\" and overlap; the first is in line {line}",
+                later.name
+            );
+            let hint = "give each a name of its own; parts of one shift follow each other";
+            faults.add(&name.place, message, hint);
+        }
+    }
 }
 
 fn zone_of(field: Field<String>, check: &mut Check<'_>) -> Option<TimeZone> {
@@ -127,6 +153,8 @@ pub(super) fn web(written: WrittenWeb, faults: &mut FaultList) -> Option<WebSett
         place,
         listen,
         token_file,
+        certificate_file,
+        key_file,
         address,
         tls_in_front,
     } = written;
@@ -134,9 +162,13 @@ pub(super) fn web(written: WrittenWeb, faults: &mut FaultList) -> Option<WebSett
     let listen = listen_at(listen, &mut check);
     let token_missing = matches!(token_file, Field::Absent);
     let token_file = check.path(token_file, "token_file").map(|spot| spot.value);
+    both_or_neither(&certificate_file, &key_file, &mut check);
+    let encrypts = !matches!(certificate_file, Field::Absent);
+    let certificate_file = check.path(certificate_file, "certificate_file");
+    let key_file = check.path(key_file, "key_file");
     let in_clear = match &tls_in_front {
-        Field::Given(spot) => !spot.value,
-        Field::Absent => true,
+        Field::Given(spot) => !spot.value && !encrypts,
+        Field::Absent => !encrypts,
         Field::Faulty => false,
     };
     if let Some(listen) = listen.as_ref().filter(|at| !at.value.ip().is_loopback()) {
@@ -146,8 +178,24 @@ pub(super) fn web(written: WrittenWeb, faults: &mut FaultList) -> Option<WebSett
         listen: listen.map_or(LISTEN, |spot| spot.value),
         token_file,
         tls_in_front: tls_in_front.given().is_some_and(|spot| spot.value),
+        certificate_file: certificate_file.map(|spot| spot.value),
+        key_file: key_file.map(|spot| spot.value),
         address: page_address(address, &mut check),
     })
+}
+
+/// A certificate is nothing without its key.
+fn both_or_neither(certificate: &Field<String>, key: &Field<String>, check: &mut Check<'_>) {
+    let (alone, missing) = match (certificate, key) {
+        (Field::Given(spot), Field::Absent) => (spot, "key_file"),
+        (Field::Absent, Field::Given(spot)) => (spot, "certificate_file"),
+        _ => return,
+    };
+    check.add(
+        &alone.place,
+        format!("`{missing}` is missing beside this"),
+        keys::example("web", missing),
+    );
 }
 
 fn listen_at(field: Field<String>, check: &mut Check<'_>) -> Option<Spot<SocketAddr>> {
@@ -182,8 +230,8 @@ fn beyond_loopback(
         check.add(
             &listen.place,
             format!("{at} can be reached from other machines, and tokens would travel in clear"),
-            "put something in front that encrypts and say `tls_in_front = true`, or listen on \
-             \"127.0.0.1:7310\"",
+            "give `certificate_file` and `key_file`, or put something in front that encrypts and say \
+             `tls_in_front = true`, or listen on \"127.0.0.1:7310\"",
         );
     }
 }

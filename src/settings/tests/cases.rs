@@ -1,5 +1,7 @@
 //! One change to the good configuration each, and the fault it must give.
 
+use crate::model::{Group, Offsets};
+
 use super::{check, good_with};
 
 /// What is changed, what it becomes, the line of the fault, and words of its message and hint.
@@ -27,7 +29,8 @@ fn plant_store_and_web() {
         ("\"14:00\"", "\"24:00\"", 7, "`to` is no time of day|midnight"),
         ("\"06:00\"", "06:00:00", 6, "is a date or time and must be text"),
         ("from = \"06:00\"\n", "", 4, "`from` is missing in [[plant.shift]]"),
-        ("to = \"14:00\"\n", "to = \"14:00\"\n[[plant.shift]]\nname = \"early\"\nfrom = \"14:00\"\nto = \"22:00\"\n", 9, "two shifts are called \"early\"|line 5"),
+        ("to = \"14:00\"\n", "to = \"14:00\"\n[[plant.shift]]\nname = \"early\"\nfrom = \"13:00\"\nto = \"22:00\"\n", 9, "two shifts are called \"early\" and overlap|line 5|of its own"),
+        ("to = \"14:00\"\n", "to = \"14:00\"\n[[plant.shift]]\nname = \"a b\"\nfrom = \"14:00\"\nto = \"22:00\"\n[[plant.shift]]\nname = \"a/b\"\nfrom = \"22:00\"\nto = \"23:00\"\n", 13, "the same in topics"),
         ("[[plant.shift]]", "[plant.shift]", 4, "one table and must be a list|[[plant.shift]]"),
         ("folder = \"/var/lib/evenrow\"\n", "", 10, "`folder` is missing in [store]"),
         ("\"/var/lib/evenrow\"", "\"\"", 11, "is no path"),
@@ -38,9 +41,19 @@ fn plant_store_and_web() {
         ("[web]", "[web]\nlisten = \"127.0.0.1\"", 13, "no address with a port"),
         ("[web]\ntoken_file = \"/etc/evenrow/tokens\"", "[web]\ntls_in_front = true\nlisten = \"0.0.0.0:7310\"", 14, "no `token_file` is given|listen on"),
         ("[web]", "[web]\nlisten = \"192.0.2.7:7310\"", 13, "travel in clear|tls_in_front = true"),
+        ("[web]", "[web]\ncertificate_file = \"/c.pem\"", 13, "`key_file` is missing beside this"),
+        ("[web]", "[web]\nkey_file = \"/c.key\"", 13, "`certificate_file` is missing beside this"),
         ("[web]", "[web]\nlisten = \"[::]:7310\"\ntls_in_front = false", 13, "travel in clear"),
         ("[web]", "[web]\ntls_in_front = \"true\"", 13, "`tls_in_front` is text and must be true or false"),
         ("[web]", "[web]\naddress = \"evenrow.example\"", 13, "no http:// or https:// address"),
+        ("[web]", "[notices]\nlongest_shelving = \"2 months\"\n[web]", 13, "`longest_shelving` is no duration"),
+        ("[web]", "[notices]\nlongest_shelving = \"40 d\"\n[web]", 13, "must lie between 1 min and 31 d"),
+        ("[web]", "[notices]\nrepeat_after = \"5s\"\n[web]", 13, "`repeat_after` must lie between"),
+        ("[web]", "[notices]\nlatching = \"yes\"\n[web]", 13, "`latching` is text and must be true or false"),
+        ("[web]", "[notices]\non_delay = \"-1s\"\n[web]", 13, "`on_delay`"),
+        ("[web]", "[notices]\noff_delay = \"2 d\"\n[web]", 13, "`off_delay` must lie"),
+        ("[web]", "[notices]\nsettling = \"3 d\"\n[web]", 13, "`settling` must lie"),
+        ("[web]", "[notices]\nshelving = \"3h\"\n[web]", 13, "no key `shelving`"),
         ("[web]", "[weeb]", 12, "no key `weeb`|did you mean `web`"),
         ("[web]\ntoken_file = \"/etc/evenrow/tokens\"", "[[web]]\ntoken_file = \"a\"", 12, "`web` is a list and must be a table"),
     ]);
@@ -105,13 +118,76 @@ fn what_a_bank_measures() {
         ("unit = \"g\"", "unit = \"g\"\nlimits = { lowest = 1, upper = 2 }", 17, "did you mean `lower`"),
         ("unit = \"g\"", "unit = \"g\"\ntarget = 9.0\nlimits = { lower = 1, upper = 2 }", 17, "`target` lies outside"),
         ("unit = \"g\"", "unit = \"g\"\nlayout = \"rign\"", 17, "\"row\" or \"ring\"|did you mean \"ring\""),
-        ("unit = \"g\"", "unit = \"g\"\noffsets = \"learn\"", 17, "not in this version"),
-        ("unit = \"g\"", "unit = \"g\"\noffsets = { \"01\" = 0.3 }", 17, "not in this version"),
-        ("unit = \"g\"", "unit = \"g\"\nreference = \"01\"", 17, "`reference` is not in this version"),
-        ("unit = \"g\"", "unit = \"g\"\ngroups = { a = [\"01\"] }", 17, "`groups` is not in this version"),
-        ("unit = \"g\"", "unit = \"g\"\ncost_per_unit = 0.002", 17, "`cost_per_unit` is not in this version"),
         ("unit = \"g\"", "unit = \"g\"\nmargins = 1", 17, "no key `margins`|did you mean `margin`"),
     ]);
+}
+
+#[test]
+#[rustfmt::skip]
+fn what_is_known_of_the_sources() {
+    let discovered = "{ form = \"json\", value = \"/v\", cycle = \"/n\" }\nsources = \"discover\"";
+    let listed = "{ form = \"json\", value = \"/v\", cycle = \"/n\" }\nsources = [\"01\", \"02\", \"03\", \"04\"]";
+    for (known, words) in [
+        ("groups = { \"supply a\" = [\"01\"] }", "`groups` names a source"),
+        ("offsets = { \"01\" = 0.3, \"02\" = 1 }", "`offsets` names a source"),
+        ("reference = \"01\"", "`reference` names a source"),
+    ] {
+        let text = good_with(listed, discovered).replace("unit = \"g\"", &format!("unit = \"g\"\n{known}"));
+        check(&text, 17, &format!("{words}|are discovered|list the sources"));
+    }
+    check_all(&[
+        ("unit = \"g\"", "unit = \"g\"\ngroups = { \"a\" = [] }", 17, "group \"a\" is empty"),
+        ("unit = \"g\"", "unit = \"g\"\ngroups = { \" \" = [\"01\"] }", 17, "a group's name is empty"),
+        ("unit = \"g\"", "unit = \"g\"\ngroups = { a = \"01\" }", 17, "group \"a\" is text and must be a list"),
+        ("unit = \"g\"", "unit = \"g\"\ngroups = { a = [1] }", 17, "holds a whole number and must hold names"),
+        ("unit = \"g\"", "unit = \"g\"\ngroups = { a = [\"1\"] }", 17, "\"1\", which is no source|stands in `sources`"),
+        ("unit = \"g\"", "unit = \"g\"\ngroups = { a = [\"01\", \"01\"] }", 17, "names \"01\" twice"),
+        ("unit = \"g\"", "unit = \"g\"\ngroups = { a = [\"01\", \"02\", \"03\", \"04\"] }", 17, "holds every source|leave some out"),
+        ("unit = \"g\"", "unit = \"g\"\ngroups = [\"01\"]", 17, "`groups` is a list and must be a table"),
+        ("unit = \"g\"", "unit = \"g\"\ndeclared = 5\ncost_per_unit = 0", 18, "`cost_per_unit` must be above 0"),
+        ("unit = \"g\"", "unit = \"g\"\ncost_per_unit = 0.002", 17, "without `declared`"),
+        ("unit = \"g\"", "unit = \"g\"\nreference = \"001\"", 17, "\"001\", which is no source|did you mean \"01\""),
+        ("unit = \"g\"", "unit = \"g\"\nreference = \"01\"\noffsets = \"learn\"", 17, "nothing with `offsets = \"learn\"`"),
+        ("unit = \"g\"", "unit = \"g\"\nreference = 1", 17, "must be text"),
+        ("unit = \"g\"", "unit = \"g\"\noffsets = \"lern\"", 17, "\"none\" or \"learn\"|did you mean \"learn\""),
+        ("spans = [10, 40]", "spans = [10, 641]\noffsets = \"learn\"", 22, "longer than 640|table"),
+        ("unit = \"g\"", "unit = \"g\"\noffsets = {}", 17, "an empty table"),
+        ("unit = \"g\"", "unit = \"g\"\noffsets = 0.3", 17, "must be a word or a table"),
+        ("unit = \"g\"", "unit = \"g\"\noffsets = { \"05\" = 0.3 }", 17, "\"05\", which is no source"),
+        ("unit = \"g\"", "unit = \"g\"\noffsets = { \"01\" = \"0.3\" }", 17, "offset of \"01\" is text"),
+        ("unit = \"g\"", "unit = \"g\"\noffsets = { \"01\" = nan }", 17, "not a finite number"),
+    ]);
+}
+
+#[test]
+fn what_is_known_is_used_as_written() {
+    let known = "unit = \"g\"\ndeclared = 5\ncost_per_unit = 0.002\nreference = \"02\"\n\
+                 groups = { b = [\"03\", \"01\"], \"supply a\" = [\"02\"] }\n\
+                 offsets = { \"04\" = -0.3, \"01\" = 1 }";
+    let settings = super::settings(&good_with("unit = \"g\"", known)).expect("good");
+    let bank = &settings.banks[0];
+    let group = |name: &str, members: &[&str]| Group {
+        name: name.into(),
+        members: members.iter().map(|m| (*m).into()).collect(),
+    };
+    assert_eq!(
+        bank.groups,
+        [group("b", &["01", "03"]), group("supply a", &["02"])]
+    );
+    assert_eq!(bank.cost_per_unit, Some(0.002));
+    assert_eq!(bank.reference.as_deref(), Some("02"));
+    let table = Offsets::Table(vec![("01".into(), 1.0), ("04".into(), -0.3)]);
+    assert_eq!(bank.offsets, table);
+    for (text, offsets) in [
+        ("offsets = \"none\"", Offsets::None),
+        ("offsets = \"learn\"", Offsets::Learn),
+    ] {
+        let text = good_with("unit = \"g\"", &format!("unit = \"g\"\n{text}"));
+        assert_eq!(
+            super::settings(&text).expect("good").banks[0].offsets,
+            offsets
+        );
+    }
 }
 
 #[test]
@@ -160,10 +236,10 @@ fn where_a_bank_hears_from() {
         ("value = \"/v\"", "value = \"/v~2\"", 19, "neither 0 nor 1|~0"),
         ("value = \"/v\", ", "", 19, "`value` is missing in `payload`"),
         ("form = \"json\", ", "", 19, "`form` is missing in `payload`"),
-        ("form = \"json\"", "form = \"xml\"", 19, "`form` must be \"number\" or \"json\""),
+        ("form = \"json\"", "form = \"xml\"", 19, "`form` must be \"number\", \"json\", \"csv\", \"sparkplug\", \"opc_ua_json\" or \"senml\""),
         ("cycle = \"/n\"", "cycle = \"/n\", time_form = \"rfc3339\"", 19, "`time_form` is given without `time`"),
         ("cycle = \"/n\"", "cycle = \"/n\", time = \"/t\", time_form = \"epoch\"", 19, "`time_form` must be|did you mean \"epoch_"),
-        ("cycle = \"/n\"", "cycle = \"/n\", unit = \"/u\"", 19, "`payload` has no key `unit`|belongs in [[bank]]"),
+        ("cycle = \"/n\"", "cycle = \"/n\", units = \"/u\"", 19, "`payload` has no key `units`|did you mean `unit`"),
         ("{ form = \"json\", value = \"/v\", cycle = \"/n\" }", "7", 19, "a word or a table"),
         ("{ form = \"json\", value = \"/v\", cycle = \"/n\" }", "\"numbr\"", 19, "did you mean \"number\""),
         ("{ form = \"json\", value = \"/v\", cycle = \"/n\" }", "\"number\"", 21, "pairing by cycle needs the cycle"),
@@ -186,7 +262,7 @@ fn who_is_compared_and_how() {
         ("[\"01\", \"02\", \"03\", \"04\"]", "[\"01\", \"\", \"03\"]", 20, "a source's name is empty"),
         ("[\"01\", \"02\", \"03\", \"04\"]", "[1, \"02\", \"03\"]", 20, "a source is a whole number and must be text"),
         ("[\"01\", \"02\", \"03\", \"04\"]", "[\"a/b\", \"02\", \"03\"]", 20, "no level of a topic"),
-        ("[\"01\", \"02\", \"03\", \"04\"]", "\"discovr\"", 20, "a list or \"discover\""),
+        ("[\"01\", \"02\", \"03\", \"04\"]", "\"discovr\"", 20, "a list, \"discover\" or \"shifts\""),
         ("[\"01\", \"02\", \"03\", \"04\"]", "4", 20, "is a whole number and must be a list"),
         ("[\"01\", \"02\", \"03\", \"04\"]", "\"discover\"\nmost_sources = 1", 21, "between 2 and 500"),
         ("[\"01\", \"02\", \"03\", \"04\"]", "[\"01\", \"02\"]\nmost_sources = 9", 21, "means nothing when the sources are listed"),

@@ -1,7 +1,7 @@
 //! The configurations that are shipped: they are good, and the sample shows every key there is.
 
-use crate::settings::Settings;
 use crate::settings::keys::{KEYS, LATER};
+use crate::settings::{Encryption, Means, Settings};
 
 use super::{faults_of, settings};
 
@@ -48,6 +48,7 @@ fn the_sample_shows_every_key() {
         let pointed: Vec<&toml::Value> = match (key.section, bank(key.section)) {
             ("", _) => table.get(key.name).into_iter().collect(),
             ("plant.shift", _) => inside(table.get("plant"), "shift", key.name),
+            ("outlet", _) => items(table.get("outlet"), key.name),
             (_, Some(inner)) => inside_banks(&table, inner.trim_start_matches('.'), key.name),
             (section, None) => table
                 .get(section)
@@ -65,10 +66,11 @@ fn the_sample_shows_every_key() {
 }
 
 fn inside<'t>(table: Option<&'t toml::Value>, list: &str, name: &str) -> Vec<&'t toml::Value> {
-    let items = table
-        .and_then(|t| t.get(list))
-        .and_then(toml::Value::as_array);
-    items
+    items(table.and_then(|t| t.get(list)), name)
+}
+
+fn items<'t>(list: Option<&'t toml::Value>, name: &str) -> Vec<&'t toml::Value> {
+    list.and_then(toml::Value::as_array)
         .into_iter()
         .flatten()
         .filter_map(|item| item.get(name))
@@ -80,7 +82,10 @@ fn inside_banks<'t>(table: &'t toml::Table, inner: &str, name: &str) -> Vec<&'t 
     let banks = banks.into_iter().flatten();
     let at = |bank: &'t toml::Value| match inner {
         "" => bank.get(name),
-        inner => bank.get(inner).and_then(|table| table.get(name)),
+        inner => {
+            let table = inner.split('.').try_fold(bank, |table, key| table.get(key));
+            table.and_then(|table| table.get(name))
+        }
     };
     banks.filter_map(at).collect()
 }
@@ -125,6 +130,16 @@ fn promised_values_are_read_as_promised() {
     assert_eq!(bank.layout, crate::model::Layout::Ring);
     assert_eq!(settings.feeds[0].topic.source_level, Some(3));
     assert_eq!(settings.plant.shifts.len(), 3);
+    let night = &settings.outlets[1];
+    assert_eq!(night.route.shifts, settings.plant.shifts[2..]);
+    assert_eq!(night.route.escalate_after_us, 600_000_000);
+    assert_eq!(night.route.updates, crate::notice::Updates::States);
+    let Means::Mail(mail) = &night.means else {
+        panic!("{night:?}");
+    };
+    assert_eq!((mail.port, mail.encryption), (587, Encryption::StartTls));
+    assert_eq!(mail.to[0].name.as_deref(), Some("Night shift"));
+    assert_eq!(mail.to[0].address, "night@quayside.example");
     let weigher = &settings.banks[1];
     assert_eq!(
         weigher.sources,
@@ -134,4 +149,10 @@ fn promised_values_are_read_as_promised() {
         length_us: 10_000_000,
     };
     assert_eq!(weigher.pairing, slot);
+    let refused = &settings.feeds[0].belief;
+    assert_eq!(refused.sentinels.len(), 2);
+    assert_eq!(
+        refused.upper.map(|v| v.to_string()).as_deref(),
+        Some("1000.0")
+    );
 }

@@ -1,147 +1,163 @@
-//! Banks, their windows, looks and refusals.
+//! Banks, their sources, windows and refusals.
 
-use axum::Json;
 use axum::extract::rejection::QueryRejection;
 use axum::extract::{Path, Query, State};
+use axum::http::{HeaderMap, Uri};
+use axum::response::Response;
+use axum::{Json, response::IntoResponse as _};
 use serde::Deserialize;
 use utoipa::IntoParams;
 
 use crate::engine::{Command, Outcome};
-use crate::model::{Time, US_PER_DAY};
-use crate::verdict::Digest;
-use crate::web::pages::standing::Standing;
 use crate::web::problem::Problem;
 use crate::web::site::{App, bank};
-use crate::web::wire::{BankBody, BankWholeBody, DigestBody, List, RefusalBody, WindowBody};
+use crate::web::standing::Standing;
+use crate::web::wire::{BankBody, BankWholeBody, List, RefusalBody, SourceBody, WindowBody};
 
-/// Looks of a day at the default settings are 11 520; a part holds a tenth of them.
-const MOST_LOOKS: usize = 1000;
+use super::answers::Usual;
+use super::form::{Form, OnlyForm, Wish};
 
-/// All banks.
-#[utoipa::path(get, path = "/api/v1/banks", tag = "banks",
-    responses((status = 200, body = List<BankBody>), (status = "default", body = Problem)))]
-pub async fn list(State(app): State<App>) -> Json<List<BankBody>> {
-    let snapshot = app.now();
-    let banks = snapshot.banks.iter();
-    let bodies = banks.map(|b| BankBody::new(b, Standing::of(b).key()));
-    Json(List::whole(bodies.collect()))
-}
-
-/// One bank with its sources, newest looks and open notices.
-#[utoipa::path(get, path = "/api/v1/banks/{bank}", tag = "banks",
-    params(("bank" = String, Path, description = "The bank's name")),
-    responses((status = 200, body = BankWholeBody), (status = 404, body = Problem),
-        (status = "default", body = Problem)))]
-pub async fn one(
-    State(app): State<App>,
-    Path(name): Path<String>,
-) -> Result<Json<BankWholeBody>, Problem> {
-    let snapshot = app.now();
-    let (_, view) = bank(&snapshot, &name)?;
-    Ok(Json(BankWholeBody::new(view, Standing::of(view).key())))
-}
-
-/// The values in the bank's windows, as the store and the engine hold them.
-#[utoipa::path(get, path = "/api/v1/banks/{bank}/windows", tag = "banks",
-    params(("bank" = String, Path, description = "The bank's name")),
-    responses((status = 200, body = List<WindowBody>), (status = 404, body = Problem),
-        (status = 503, body = Problem), (status = "default", body = Problem)))]
-pub async fn windows(
-    State(app): State<App>,
-    Path(name): Path<String>,
-) -> Result<Json<List<WindowBody>>, Problem> {
-    let (ix, _) = bank(&app.now(), &name).map(|(ix, b)| (ix, b.clone()))?;
-    match app
-        .ask("interface".into(), Command::Windows { bank: ix })
-        .await?
-    {
-        Outcome::Windows(windows) => Ok(Json(List::whole(
-            windows.into_iter().map(Into::into).collect(),
-        ))),
-        Outcome::NotFound(why) => Err(Problem::not_found(&why)),
-        Outcome::Refused(why) => Err(Problem::unavailable(&why)),
-        Outcome::Acknowledged(_) => Err(Problem::internal("the answer was to another question")),
-    }
-}
-
-/// Which looks.
+/// Which banks.
 #[derive(Debug, Default, Deserialize, IntoParams)]
 #[into_params(parameter_in = Query)]
 #[serde(deny_unknown_fields)]
-pub struct LooksWanted {
-    /// At or after this time (RFC 3339); a day before `to` when it is missing.
-    from: Option<String>,
-    /// Before this time (RFC 3339); now when it is missing.
-    to: Option<String>,
-    /// At most so many, 1 to 1000; 1000 when it is missing. The newest in the range are given.
-    most: Option<usize>,
+pub struct BanksWanted {
+    /// Only those that stand so, in the word of `standing`.
+    standing: Option<String>,
+    /// Only those of this machine.
+    equipment: Option<String>,
+    /// `csv` for comma-separated values; else what the Accept header says, else JSON.
+    form: Option<Form>,
 }
 
-/// Short forms of past looks, oldest first. `next`, when there is one, is the `to` that gives those
-/// before.
-#[utoipa::path(get, path = "/api/v1/banks/{bank}/looks", tag = "banks",
-    params(("bank" = String, Path, description = "The bank's name"), LooksWanted),
-    responses((status = 200, body = List<DigestBody>), (status = 400, body = Problem),
-        (status = 404, body = Problem), (status = 503, body = Problem),
-        (status = "default", body = Problem)))]
-pub async fn looks(
+/// All banks.
+#[utoipa::path(get, operation_id = "list_banks", path = "/api/v1/banks", tag = "banks", params(BanksWanted),
+    responses((status = 200, description = "As JSON or as CSV.", content((List<BankBody> = "application/json"), (String = "text/csv"))), Usual))]
+pub async fn list(
+    State(app): State<App>,
+    wanted: Result<Query<BanksWanted>, QueryRejection>,
+    headers: HeaderMap,
+    uri: Uri,
+) -> Result<Response, Problem> {
+    let Query(wanted) = wanted.map_err(|e| Problem::bad_request(&e.body_text()))?;
+    let snapshot = app.now();
+    let banks = snapshot.banks.iter();
+    let bodies = banks.map(|b| BankBody::new(b, Standing::of(b).key()));
+    let equipment = |b: &BankBody| {
+        let asked = wanted.equipment.as_ref();
+        asked.is_none_or(|e| b.equipment.as_ref() == Some(e))
+    };
+    let standing = |b: &BankBody| wanted.standing.as_ref().is_none_or(|s| b.standing == *s);
+    let items = bodies.filter(|b| standing(b) && equipment(b)).collect();
+    Wish::new(wanted.form, &headers, uri).answer(List::whole(items))
+}
+
+/// One bank with its sources, newest looks and open notices.
+#[utoipa::path(get, operation_id = "get_bank", path = "/api/v1/banks/{bank}", tag = "banks",
+    params(("bank" = String, Path, description = "The bank's name")),
+    responses((status = 200, description = "As it is now.", body = BankWholeBody), Usual))]
+pub async fn one(State(app): State<App>, Path(name): Path<String>) -> Result<Response, Problem> {
+    let snapshot = app.now();
+    let (_, view) = bank(&snapshot, &name)?;
+    Ok(Json(BankWholeBody::new(view, Standing::of(view).key())).into_response())
+}
+
+/// A bank's sources in physical order, with what stands for now.
+#[utoipa::path(get, operation_id = "list_sources", path = "/api/v1/banks/{bank}/sources", tag = "banks",
+    params(("bank" = String, Path, description = "The bank's name"), OnlyForm),
+    responses((status = 200, description = "As JSON or as CSV.", content((List<SourceBody> = "application/json"), (String = "text/csv"))), Usual))]
+pub async fn sources(
     State(app): State<App>,
     Path(name): Path<String>,
-    wanted: Result<Query<LooksWanted>, QueryRejection>,
-) -> Result<Json<List<DigestBody>>, Problem> {
-    bank(&app.now(), &name)?;
+    wanted: Result<Query<OnlyForm>, QueryRejection>,
+    headers: HeaderMap,
+    uri: Uri,
+) -> Result<Response, Problem> {
     let Query(wanted) = wanted.map_err(|e| Problem::bad_request(&e.body_text()))?;
-    let to = time("to", wanted.to)?.unwrap_or_else(|| app.site.clock.now().plus_us(1));
-    let from = time("from", wanted.from)?.unwrap_or_else(|| to.plus_us(-US_PER_DAY));
-    let most = wanted.most.unwrap_or(MOST_LOOKS);
-    if !(1..=MOST_LOOKS).contains(&most) {
-        return Err(Problem::bad_request(
-            "`most` must be a whole number from 1 to 1000",
-        ));
-    }
-    let found = app
-        .history(move |h| h.digests(&name, from, to, most))
-        .await?;
-    let (found, next) = whole_moments(found, most);
-    let items = found.into_iter().map(Into::into).collect();
-    Ok(Json(List { items, next }))
+    let snapshot = app.now();
+    let (_, view) = bank(&snapshot, &name)?;
+    let items: Vec<SourceBody> = view.sources.iter().map(Into::into).collect();
+    Wish::new(wanted.form, &headers, uri).answer(List::whole(items))
 }
 
-/// A full part may begin in the middle of one moment's looks: leaves those to the next part, whose
-/// `to` is the first moment kept.
-fn whole_moments(mut found: Vec<Digest>, most: usize) -> (Vec<Digest>, Option<String>) {
-    let Some(first) = found.first().map(|d| d.at).filter(|_| found.len() >= most) else {
-        return (found, None);
-    };
-    if found.last().is_some_and(|d| d.at > first) {
-        found.retain(|d| d.at > first);
-    }
-    let next = found.first().map(|d| d.at.to_string());
-    (found, next)
+/// One source with what stands for now.
+#[utoipa::path(get, operation_id = "get_source", path = "/api/v1/banks/{bank}/sources/{source}", tag = "banks",
+    params(("bank" = String, Path, description = "The bank's name"),
+        ("source" = String, Path, description = "The source's name")),
+    responses((status = 200, description = "As it is now.", body = SourceBody), Usual))]
+pub async fn source(
+    State(app): State<App>,
+    Path((name, wanted)): Path<(String, String)>,
+) -> Result<Response, Problem> {
+    let snapshot = app.now();
+    let (_, view) = bank(&snapshot, &name)?;
+    let found = view.sources.iter().find(|s| *s.name == *wanted);
+    let found = found.ok_or_else(|| {
+        Problem::not_found(&format!("the bank \"{name}\" has no source \"{wanted}\""))
+    })?;
+    Ok(Json(SourceBody::from(found)).into_response())
 }
 
-/// Refusals by reason, the last of each kind.
-#[utoipa::path(get, path = "/api/v1/banks/{bank}/refusals", tag = "banks",
-    params(("bank" = String, Path, description = "The bank's name")),
-    responses((status = 200, body = List<RefusalBody>), (status = 404, body = Problem),
-        (status = "default", body = Problem)))]
+/// Which windows.
+#[derive(Debug, Default, Deserialize, IntoParams)]
+#[into_params(parameter_in = Query)]
+#[serde(deny_unknown_fields)]
+pub struct WindowsWanted {
+    /// Only this source's.
+    source: Option<String>,
+    /// `csv` for comma-separated values; else what the Accept header says, else JSON.
+    form: Option<Form>,
+}
+
+/// The values in the bank's windows, as the store and the engine hold them.
+#[utoipa::path(get, operation_id = "list_windows", path = "/api/v1/banks/{bank}/windows", tag = "banks",
+    params(("bank" = String, Path, description = "The bank's name"), WindowsWanted),
+    responses((status = 200, description = "As JSON or as CSV.", content((List<WindowBody> = "application/json"), (String = "text/csv"))), Usual))]
+pub async fn windows(
+    State(app): State<App>,
+    Path(name): Path<String>,
+    wanted: Result<Query<WindowsWanted>, QueryRejection>,
+    headers: HeaderMap,
+    uri: Uri,
+) -> Result<Response, Problem> {
+    let Query(wanted) = wanted.map_err(|e| Problem::bad_request(&e.body_text()))?;
+    let (ix, view) = bank(&app.now(), &name).map(|(ix, b)| (ix, b.clone()))?;
+    if let Some(source) = &wanted.source
+        && !view.sources.iter().any(|s| *s.name == **source)
+    {
+        let why = format!("the bank \"{name}\" has no source \"{source}\"");
+        return Err(Problem::not_found(&why));
+    }
+    let asked = Command::Windows { bank: ix };
+    match app.ask("interface".into(), asked).await? {
+        Outcome::Windows(windows) => {
+            let is_wanted = |s: &str| wanted.source.as_deref().is_none_or(|w| w == s);
+            let those = windows.into_iter().filter(|w| is_wanted(&w.source));
+            let items: Vec<WindowBody> = those.map(Into::into).collect();
+            Wish::new(wanted.form, &headers, uri).answer(List::whole(items))
+        }
+        Outcome::NotFound(why) => Err(Problem::not_found(&why)),
+        Outcome::Refused(why) => Err(Problem::unavailable(&why)),
+        Outcome::Notice(_) | Outcome::Line(_) | Outcome::Evidence(_) => {
+            Err(Problem::internal("the answer was to another question"))
+        }
+    }
+}
+
+/// A bank's refusals by reason, the last of each kind.
+#[utoipa::path(get, operation_id = "list_bank_refusals", path = "/api/v1/banks/{bank}/refusals", tag = "refusals",
+    params(("bank" = String, Path, description = "The bank's name"), OnlyForm),
+    responses((status = 200, description = "As JSON or as CSV.", content((List<RefusalBody> = "application/json"), (String = "text/csv"))), Usual))]
 pub async fn refusals(
     State(app): State<App>,
     Path(name): Path<String>,
-) -> Result<Json<List<RefusalBody>>, Problem> {
+    wanted: Result<Query<OnlyForm>, QueryRejection>,
+    headers: HeaderMap,
+    uri: Uri,
+) -> Result<Response, Problem> {
+    let Query(wanted) = wanted.map_err(|e| Problem::bad_request(&e.body_text()))?;
     let snapshot = app.now();
     let (_, view) = bank(&snapshot, &name)?;
-    let items = view.refusals.iter().map(Into::into).collect();
-    Ok(Json(List::whole(items)))
-}
-
-fn time(key: &str, text: Option<String>) -> Result<Option<Time>, Problem> {
-    let parse = |text: String| {
-        Time::parse_rfc3339(&text).map_err(|why| {
-            Problem::bad_request(&format!(
-                "`{key}` must be a time like 2026-07-03T14:00:00Z (a + is written %2B): {why}"
-            ))
-        })
-    };
-    text.map(parse).transpose()
+    let items: Vec<RefusalBody> = view.refusals.iter().map(Into::into).collect();
+    Wish::new(wanted.form, &headers, uri).answer(List::whole(items))
 }

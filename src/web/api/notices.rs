@@ -1,121 +1,154 @@
-//! Notices, and acknowledging them.
+//! Notices.
 
 use axum::Json;
-use axum::extract::rejection::{JsonRejection, QueryRejection};
+use axum::extract::rejection::QueryRejection;
 use axum::extract::{Path, Query, State};
+use axum::http::{HeaderMap, Uri};
+use axum::response::Response;
 use serde::Deserialize;
 use utoipa::IntoParams;
 
-use crate::engine::{Command, Outcome};
+use crate::engine::{History, HistoryError, Page};
+use crate::model::Time;
 use crate::notice::Notice;
 use crate::web::problem::Problem;
 use crate::web::site::App;
-use crate::web::wire::{AcknowledgeBody, List, NoticeBody};
+use crate::web::wire::{List, NoticeBody};
 
-use std::sync::Arc;
+use super::answers::Usual;
+use super::form::{Form, Wish};
+use super::times;
 
 /// Notices given at once when nothing else is asked.
 const USUAL: usize = 100;
 /// Most notices given at once.
 const MOST: usize = 1000;
-/// A name on a badge.
-const LONGEST_NAME: usize = 80;
-/// A few paragraphs.
-const LONGEST_COMMENT: usize = 2000;
+
+/// Notices read from the store at a time.
+const PART: usize = 200;
+/// Notices gone through for one answer; where nothing fits among them, `next` goes on from there.
+const MOST_READ: usize = 4000;
 
 /// Which notices.
 #[derive(Debug, Default, Deserialize, IntoParams)]
 #[into_params(parameter_in = Query)]
 #[serde(deny_unknown_fields)]
 pub struct NoticesWanted {
+    /// Only this bank's.
+    bank: Option<String>,
+    /// Only those that name this source.
+    source: Option<String>,
+    /// Only of this kind, in the word of `kind`.
+    kind: Option<String>,
+    /// Only in this state, in the word of `state`.
+    state: Option<String>,
+    /// Only of this priority: `low`, `medium` or `high`.
+    priority: Option<String>,
+    /// Raised at or after this time (RFC 3339).
+    #[param(value_type = Option<String>, format = DateTime)]
+    from: Option<String>,
+    /// Raised before this time (RFC 3339).
+    #[param(value_type = Option<String>, format = DateTime)]
+    to: Option<String>,
     /// The `next` of the part before.
     after: Option<String>,
     /// At most so many, 1 to 1000; 100 when it is missing.
+    #[param(minimum = 1, maximum = 1000)]
     most: Option<usize>,
+    /// `csv` for comma-separated values; else what the Accept header says, else JSON.
+    form: Option<Form>,
+}
+
+/// The query, read.
+struct Filter {
+    bank: Option<String>,
+    source: Option<String>,
+    kind: Option<String>,
+    state: Option<String>,
+    priority: Option<String>,
+    from: Option<Time>,
+    to: Option<Time>,
+}
+
+impl Filter {
+    fn lets(&self, notice: &Notice) -> bool {
+        let same = |asked: &Option<String>, is: &str| asked.as_ref().is_none_or(|a| a == is);
+        let names = |s: &String| notice.sources.iter().any(|n| *n.source == **s);
+        same(&self.bank, &notice.bank)
+            && same(&self.kind, notice.kind.word())
+            && same(&self.state, notice.state.word())
+            && same(&self.priority, notice.priority.word())
+            && self.source.as_ref().is_none_or(names)
+            && self.from.is_none_or(|from| notice.raised >= from)
+            && self.to.is_none_or(|to| notice.raised < to)
+    }
+
+    /// Reads parts until `most` are found, or there are no more, or enough was gone through.
+    fn read(
+        &self,
+        history: &dyn History,
+        after: Option<String>,
+        most: usize,
+    ) -> Result<Page<Notice>, HistoryError> {
+        let (mut items, mut after, mut read) = (Vec::new(), after, 0);
+        loop {
+            let part = history.notices(after.as_deref(), PART)?;
+            read += part.items.len();
+            let past = part.items.last().map(|n| n.raised);
+            for notice in part.items {
+                if items.len() == most {
+                    let next = items.last().map(|n: &Notice| n.id.to_string());
+                    return Ok(Page { items, next });
+                }
+                if self.lets(&notice) {
+                    items.push(notice);
+                }
+            }
+            after = part.next;
+            let over = self.from.zip(past).is_some_and(|(from, past)| past < from);
+            if over || after.is_none() {
+                return Ok(Page { items, next: None });
+            }
+            if read >= MOST_READ {
+                return Ok(Page { items, next: after });
+            }
+        }
+    }
 }
 
 /// Notices, newest first.
-#[utoipa::path(get, path = "/api/v1/notices", tag = "notices", params(NoticesWanted),
-    responses((status = 200, body = List<NoticeBody>), (status = 400, body = Problem),
-        (status = 503, body = Problem), (status = "default", body = Problem)))]
+#[utoipa::path(get, operation_id = "list_notices", path = "/api/v1/notices", tag = "notices", params(NoticesWanted),
+    responses((status = 200, description = "As JSON or as CSV.", content((List<NoticeBody> = "application/json"), (String = "text/csv"))), Usual))]
 pub async fn list(
     State(app): State<App>,
     wanted: Result<Query<NoticesWanted>, QueryRejection>,
-) -> Result<Json<List<NoticeBody>>, Problem> {
+    headers: HeaderMap,
+    uri: Uri,
+) -> Result<Response, Problem> {
     let Query(wanted) = wanted.map_err(|e| Problem::bad_request(&e.body_text()))?;
-    let most = wanted.most.unwrap_or(USUAL);
-    if !(1..=MOST).contains(&most) {
-        return Err(Problem::bad_request(
-            "`most` must be a whole number from 1 to 1000",
-        ));
-    }
-    let page = app
-        .history(move |h| h.notices(wanted.after.as_deref(), most))
-        .await?;
-    Ok(Json(List::part(page)))
+    let most = times::most(wanted.most, USUAL, MOST)?;
+    let filter = Filter {
+        bank: wanted.bank,
+        source: wanted.source,
+        kind: wanted.kind,
+        state: wanted.state,
+        priority: wanted.priority,
+        from: times::read("from", wanted.from)?,
+        to: times::read("to", wanted.to)?,
+    };
+    let after = wanted.after;
+    let page = app.history(move |h| filter.read(h, after, most)).await?;
+    Wish::new(wanted.form, &headers, uri).answer(List::<NoticeBody>::part(page))
 }
 
 /// One notice.
-#[utoipa::path(get, path = "/api/v1/notices/{id}", tag = "notices",
+#[utoipa::path(get, operation_id = "get_notice", path = "/api/v1/notices/{id}", tag = "notices",
     params(("id" = String, Path, description = "The notice's id")),
-    responses((status = 200, body = NoticeBody), (status = 404, body = Problem),
-        (status = 503, body = Problem), (status = "default", body = Problem)))]
+    responses((status = 200, description = "As it is now.", body = NoticeBody), Usual))]
 pub async fn one(
     State(app): State<App>,
     Path(id): Path<String>,
 ) -> Result<Json<NoticeBody>, Problem> {
     let notice = app.notice(&app.now(), &id).await?;
     Ok(Json(NoticeBody::from(notice.as_ref())))
-}
-
-/// Acknowledges a notice. Asking twice gives the same.
-#[utoipa::path(post, path = "/api/v1/notices/{id}/acknowledge", tag = "notices",
-    params(("id" = String, Path, description = "The notice's id")),
-    request_body = AcknowledgeBody, security(("token" = [])),
-    responses((status = 200, body = NoticeBody), (status = 400, body = Problem),
-        (status = 401, body = Problem), (status = 403, body = Problem),
-        (status = 404, body = Problem), (status = 409, body = Problem),
-        (status = 503, body = Problem), (status = "default", body = Problem)))]
-pub async fn acknowledge(
-    State(app): State<App>,
-    Path(id): Path<String>,
-    said: Result<Json<AcknowledgeBody>, JsonRejection>,
-) -> Result<Json<NoticeBody>, Problem> {
-    let Json(said) = said.map_err(|e| Problem::new(e.status(), &e.body_text()))?;
-    let notice = submit(&app, &id, &said.by, &said.comment).await?;
-    Ok(Json(NoticeBody::from(notice.as_ref())))
-}
-
-/// Checks and sends an acknowledgement, for the interface and the pages.
-///
-/// # Errors
-/// 400 for a missing or overlong name or comment, else what the engine says.
-pub async fn submit(app: &App, id: &str, by: &str, comment: &str) -> Result<Arc<Notice>, Problem> {
-    let (by, comment) = (by.trim(), comment.trim());
-    let is_good_name =
-        !by.is_empty() && by.chars().count() <= LONGEST_NAME && !by.chars().any(char::is_control);
-    if !is_good_name {
-        return Err(Problem::bad_request(
-            "an acknowledgement needs the name of the person, at most 80 characters on one line",
-        ));
-    }
-    if comment.chars().count() > LONGEST_COMMENT {
-        return Err(Problem::bad_request(
-            "a comment has at most 2000 characters",
-        ));
-    }
-    let what = Command::Acknowledge {
-        notice: id.into(),
-        comment: comment.to_owned(),
-    };
-    match app.ask(by.into(), what).await? {
-        Outcome::Acknowledged(notice) => Ok(notice),
-        // One that is over has left the engine: asking again gives it as it was left.
-        Outcome::NotFound(why) => match app.notice(&app.now(), id).await {
-            Ok(notice) if notice.acknowledged.is_some() => Ok(notice),
-            _ => Err(Problem::not_found(&why)),
-        },
-        Outcome::Refused(why) => Err(Problem::conflict(&why)),
-        Outcome::Windows(_) => Err(Problem::internal("the answer was to another question")),
-    }
 }

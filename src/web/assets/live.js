@@ -10,16 +10,18 @@
   const readers = (node, name) => (name === "open" && node.localName === "details")
     || (name === "value" && node.localName === "input" && node.type !== "hidden");
 
+  // What the time band's script has added.
+  const own = new Set(["tabindex", "role", "aria-label", "data-awake"]);
   const attributes = (from, to) => {
     for (const { name } of [...from.attributes])
-      if (!to.hasAttribute(name) && !(kept.has(name) && readers(from, name))) from.removeAttribute(name);
+      if (!(from.id === "probe" && own.has(name)) && !to.hasAttribute(name) && !(kept.has(name) && readers(from, name))) from.removeAttribute(name);
     for (const { name, value } of to.attributes)
       if (from.getAttribute(name) !== value && !(kept.has(name) && readers(from, name))) from.setAttribute(name, value);
   };
   const alike = (a, b) => a.nodeType === b.nodeType && a.nodeName === b.nodeName && (a.id || "") === (b.id || "");
   const swap = (from, to) => {
     if (from.nodeType !== Node.ELEMENT_NODE) { if (from.nodeValue !== to.nodeValue) from.nodeValue = to.nodeValue; return; }
-    if (from.id === "live-state" || from.isEqualNode(to)) return;
+    if (from.id === "live-state" || from.id === "reading" || from.isEqualNode(to)) return;
     attributes(from, to);
     if (from.localName === "textarea") return;
     let old = from.firstChild;
@@ -36,12 +38,12 @@
     while (old) { const gone = old; old = old.nextSibling; gone.remove(); }
   };
 
-  let asking = false, again = false;
+  let asking = false, again = false, version = "";
   const refresh = async () => {
     if (asking) { again = true; return; }
     asking = true;
     try {
-      const answer = await fetch(location.pathname + location.search, { headers: { Accept: "text/html" }, redirect: "error" });
+      const answer = await fetch(location.pathname + location.search, { headers: { Accept: "text/html", ...(version && { "Evenrow-At-Least": version }) }, redirect: "error" });
       if (!answer.ok) throw new Error(answer.statusText);
       const page = new DOMParser().parseFromString(await answer.text(), "text/html");
       const next = page.getElementById("main");
@@ -56,8 +58,8 @@
     if (stream || document.hidden) return;
     stream = new EventSource(main().dataset.live);
     let lost = false;
-    stream.addEventListener("changed", refresh);
-    stream.addEventListener("open", () => { if (lost) refresh(); lost = false; say(""); });
+    stream.addEventListener("changed", (event) => { version = event.data; refresh(); });
+    stream.addEventListener("open", () => { if (lost) { version = ""; refresh(); } lost = false; say(""); });
     stream.addEventListener("error", () => {
       lost = true;
       say("Not live: connection lost, figures are from then.");

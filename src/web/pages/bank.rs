@@ -2,31 +2,23 @@
 
 use axum::extract::{Extension, Path, Query, State};
 use maud::{Markup, html};
-use serde::Deserialize;
 
 use crate::engine::{BankView, SourceState};
+use crate::model::Time;
 use crate::web::access::Caller;
-use crate::web::format::{self, span_of_time};
+use crate::web::address::{self, percent};
+use crate::web::format::{self, Times, span_of_time};
 use crate::web::pictures::glyph;
 use crate::web::problem::Problem;
-use crate::web::signin::percent;
 use crate::web::site::{App, bank};
+use crate::web::standing::Standing;
+use crate::web::{story, then};
 
-use super::frame::{Page, Scene, render};
+use super::frame::{Page, Scene, Script, render};
 use super::history::{self, Past};
-use super::standing::Standing;
-use super::{looks, notice, sources};
-
-/// Eight hours of looks each second; a bound on what one page reads.
-const MOST_DIGESTS: usize = 30_000;
-/// Notices among which this bank's are sought for the time band.
-const MOST_NOTICES: usize = 100;
-
-/// Which span to show.
-#[derive(Debug, Default, Deserialize)]
-pub struct Wanted {
-    span: Option<usize>,
-}
+use super::looks::Shown;
+use super::when::{Wanted, When};
+use super::{letters, line, looks, notice, sources, watch};
 
 /// The page.
 pub async fn page(
@@ -36,64 +28,94 @@ pub async fn page(
     Query(wanted): Query<Wanted>,
 ) -> Result<Markup, Problem> {
     let snapshot = app.now();
-    let (_, view) = bank(&snapshot, &name)?;
-    let past = read(&app, &name).await;
-    let span = wanted
-        .span
-        .map_or_else(String::new, |s| format!("?span={s}"));
-    let here = format!("/banks/{}{span}", percent(&name));
-    let scene = Scene::new(&app, &snapshot, &caller, here);
-    let main = main(&scene, view, &past, wanted.span);
+    let (_, present) = bank(&snapshot, &name)?;
+    let times = app.times(&snapshot);
+    let when = When::new(&wanted, &times)?;
+    let then = if when.is_past {
+        Some(read_then(&app, present, &when).await?)
+    } else {
+        None
+    };
+    let view = then.as_ref().unwrap_or(present);
+    let shown = looks::shown(view, wanted.span);
+    let span = shown.as_ref().map(|s| s.look.span);
+    let past = history::read(&app, &name, span, &when).await;
+    let mut scene = Scene::new(
+        &app,
+        &snapshot,
+        &caller,
+        format!("{}{}", address::bank(&name), when.query()),
+    );
+    scene.times.now = when.seen;
+    let main = main(&scene, view, &past, shown.as_ref(), (&when, &times));
     Ok(render(
         &scene,
         Page {
             title: name.clone(),
-            live: Some(format!("/live?bank={}", percent(&name))),
+            live: when
+                .is_live()
+                .then(|| format!("/live?bank={}", percent(&name))),
+            script: Some(Script::Band),
             way: "",
             main,
         },
     ))
 }
 
-/// The past; a page of the present is shown even when the store cannot be read, and says so.
-async fn read(app: &App, name: &str) -> Result<Past, Problem> {
-    let to = app.site.clock.now();
-    let wanted = name.to_owned();
-    app.history(move |h| {
-        let from = to.plus_us(-history::BACK_US);
-        let digests = h.digests(&wanted, from, to.plus_us(1), MOST_DIGESTS)?;
-        let mut notices = h.notices(None, MOST_NOTICES)?.items;
-        notices.retain(|n| *n.bank == *wanted);
-        Ok(Past { digests, notices })
-    })
-    .await
+/// The bank as it was seen then.
+async fn read_then(app: &App, present: &BankView, when: &When) -> Result<BankView, Problem> {
+    let (name, at) = (present.bank.name.clone(), when.seen);
+    let kept = app.history(move |h| {
+        let looks = h.looks_at(&name, at)?;
+        let raised = story::notices(h, Some(&name), (Time::from_us(i64::MIN), at.plus_us(1)))?;
+        let open = raised.iter().filter_map(|n| story::as_of(n, at)).collect();
+        Ok((looks, open))
+    });
+    let (looks, open) = kept.await?;
+    Ok(then::view(present, looks, open))
 }
 
 fn main(
     scene: &Scene<'_>,
     view: &BankView,
     past: &Result<Past, Problem>,
-    asked: Option<usize>,
+    shown: Option<&Shown>,
+    (when, times): (&When, &Times),
 ) -> Markup {
-    let shown = looks::shown(view, asked);
+    let page = address::bank(&view.bank.name);
     html! {
+        (when.banner(times, &page))
         (heading(scene, view))
         @for open in &view.open { (notice::card(scene, open, notice::Place::Bank)) }
-        @match &shown {
+        @match shown {
+            None if when.is_past => section class="picture" {
+                h2 { "No look was kept whole before then" }
+                p class="empty" { "Looks are kept whole now and then, and when a notice begins or changes." }
+            },
             None => (before_the_first_look(view)),
             Some(shown) => {
-                (looks::level_picture(view, shown))
-                (looks::spread_picture(view, shown))
+                (looks::level_picture(view, shown, when))
+                (looks::spread_picture(view, shown, when))
                 @match past {
-                    Ok(past) => (history::section(scene, view, past, shown)),
+                    Ok(past) => (history::section(scene, view, past, shown, when)),
                     Err(problem) => section class="picture" {
                         h2 { "The hours behind us" }
                         p class="empty" { (super::frame::sentence(&problem.detail)) " Pictures of the past are missing until then." }
                     },
                 }
+                (letters::section(view, &shown.look))
             }
         }
-        @if !view.looks.is_empty() { (looks::tests(scene, view, shown.as_ref().map(|s| s.look.span))) }
+        @if !when.is_past { (line::section(scene, view)) (watch::section(view)) }
+        @if !view.looks.is_empty() { (looks::tests(scene, view, shown.map(|s| s.look.span))) }
+        @if !when.is_past { (deliveries(scene, view)) }
+        section class="another" { h2 { "Another time" } (when.past_form(&page, times)) }
+    }
+}
+
+/// What the sources deliver now, and what became of it.
+fn deliveries(scene: &Scene<'_>, view: &BankView) -> Markup {
+    html! {
         section {
             h2 { "What do the sources deliver?" }
             (sources::table(scene, view))
@@ -133,6 +155,8 @@ fn heading(scene: &Scene<'_>, view: &BankView) -> Markup {
             @if let Some(target) = what.target { div { dt { "target" } dd { (target) " " (what.unit) } } }
             @if let Some(declared) = what.declared { div { dt { "declared" } dd { (declared) " " (what.unit) } } }
             div { dt { "false calls" } dd { "at most " (bank.budget) } }
+            @if let Some(kept) = &view.kept { div { dt { "call budget" } dd { (kept.keeping.words()) " "
+                span class="quiet" { (kept.nothing_found) " of " (kept.told) " told came to nothing in " (format::plain(kept.days, 0)) " d" } } } }
             @if let Some(us) = view.interval_us { div { dt { "a value every" } dd { (interval(us)) } } }
             @if let Some(at) = view.newest_taken { div { dt { "newest value" } dd { (scene.time(at, &scene.times.second(at))) } } }
             @if let Some(at) = view.next_look { div { dt { "next look" } dd { (scene.time(at, &scene.times.second(at))) } } }

@@ -5,11 +5,11 @@ use maud::{DOCTYPE, Markup, PreEscaped, html};
 use crate::engine::{Condition, Snapshot};
 use crate::model::Time;
 use crate::web::access::Caller;
+use crate::web::address::percent;
 use crate::web::assets;
 use crate::web::format::Times;
 use crate::web::pictures::glyph::{self, Glyph};
 use crate::web::problem::Problem;
-use crate::web::signin::percent;
 use crate::web::site::App;
 
 /// Everything a page is made from.
@@ -44,12 +44,21 @@ impl<'a> Scene<'a> {
     }
 }
 
+/// A script that makes something easier; without it the page is whole.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum Script {
+    /// Values of the time band by pointer and keys, and its zoom.
+    Band,
+}
+
 /// A page's own parts.
 pub struct Page {
     /// What the browser's tab says before the plant's name.
     pub title: String,
     /// What the stream of changes is asked for; `None` for a page that does not change by itself.
     pub live: Option<String>,
+    /// A script besides the one that keeps the page current.
+    pub script: Option<Script>,
     /// Which of the ways to go is this.
     pub way: &'static str,
     /// The contents.
@@ -62,14 +71,16 @@ pub fn render(scene: &Scene<'_>, page: Page) -> Markup {
     html! {
         (DOCTYPE)
         html lang="en" {
-            (head(&format!("{} · {plant}", page.title), page.live.is_some()))
-            body {
+            (head(&format!("{} · {plant}", page.title), page.live.is_some(), page.script))
+            body data-zone=[scene.times.zone.iana_name()] {
                 a class="skip" href="#main" { "To the contents" }
                 header class="top" {
                     a class="home" href="/" { (glyph::draw(Glyph::Apart)) span { "evenrow" } }
                     p class="plant" { (plant) }
                     nav aria-label="Pages" {
                         (way("/", "Plant", page.way)) (way("/notices", "Notices", page.way))
+                        (way("/handover", "Handover", page.way))
+                        (way("/settings", "Settings", page.way)) (way("/about", "About", page.way))
                         (sign(scene))
                     }
                 }
@@ -88,7 +99,7 @@ pub fn render(scene: &Scene<'_>, page: Page) -> Markup {
     }
 }
 
-fn head(title: &str, is_live: bool) -> Markup {
+fn head(title: &str, is_live: bool, script: Option<Script>) -> Markup {
     html! {
         head {
             meta charset="utf-8";
@@ -98,7 +109,10 @@ fn head(title: &str, is_live: bool) -> Markup {
             link rel="icon" href=(PreEscaped(assets::ICON));
             link rel="stylesheet" href=(*assets::STYLE);
             @if is_live {
-                script src=(*assets::SCRIPT) defer {}
+                script src=(*assets::LIVE) defer {}
+            }
+            @if script == Some(Script::Band) {
+                script src=(*assets::BAND) defer {}
             }
         }
     }
@@ -130,17 +144,20 @@ fn trouble(scene: &Scene<'_>) -> Markup {
         Condition::Noted(what) => Some((format!("{name}: good to know"), what.clone())),
         Condition::Trouble(why) => Some((format!("{name} trouble"), why.clone())),
     };
-    let outbox = snapshot.outbox_trouble.as_ref().map(|why| {
-        let waiting = format!("{} waiting. {why}", snapshot.outbox);
-        ("Notices are not leaving".to_owned(), waiting)
+    let outlets = snapshot.outlets.iter().filter_map(|outlet| {
+        let waiting = format!("{} waiting. {}", outlet.waiting, outlet.trouble.as_ref()?);
+        Some((
+            format!("Notices are not leaving by {}", outlet.name),
+            waiting,
+        ))
     });
-    let all = [
+    let parts = [
         part("Broker", &snapshot.broker),
         part("Store", &snapshot.store),
-        outbox,
     ];
+    let all = parts.into_iter().flatten().chain(outlets);
     html! {
-        @for (head, why) in all.into_iter().flatten() {
+        @for (head, why) in all {
             div class="trouble" role="status" {
                 (glyph::draw(Glyph::Trouble))
                 p { strong { (head) } @if !why.is_empty() { " " (why) } }
@@ -157,7 +174,7 @@ fn cautions() -> Markup {
                   and the plant’s procedures before touching a machine. Net-content rules are those of the \
                   local authority; figures here are information for the packer." }
             p class="quiet" { "evenrow " (env!("CARGO_PKG_VERSION")) " · "
-                a href="/api/v1/openapi.json" { "interface" } " · " a href="/metrics" { "metrics" } }
+                a href="/about" { "about" } " · " a href="/api/v1/openapi.json" { "interface" } " · " a href="/metrics" { "metrics" } }
         }
     }
 }
@@ -167,7 +184,7 @@ pub fn error(app: &App, problem: &Problem) -> Markup {
     html! {
         (DOCTYPE)
         html lang="en" {
-            (head(&format!("{} · evenrow", problem.title), false))
+            (head(&format!("{} · evenrow", problem.title), false, None))
             body {
                 header class="top" { a class="home" href="/" { (glyph::draw(Glyph::Apart)) span { "evenrow" } } }
                 main id="main" {
@@ -190,7 +207,7 @@ pub fn alone(title: &str, body: Markup) -> Markup {
     html! {
         (DOCTYPE)
         html lang="en" {
-            (head(&format!("{title} · evenrow"), false))
+            (head(&format!("{title} · evenrow"), false, None))
             body {
                 header class="top" { a class="home" href="/" { (glyph::draw(Glyph::Apart)) span { "evenrow" } } }
                 main id="main" { section class="alone" { (body) } }

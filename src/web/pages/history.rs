@@ -3,20 +3,22 @@
 use maud::{Markup, html};
 
 use crate::engine::BankView;
-use crate::model::{Characteristic, Time, US_PER_S};
+use crate::model::{Characteristic, Time, US_PER_DAY, US_PER_S};
 use crate::notice::Notice;
 use crate::verdict::Digest;
-use crate::web::format;
+use crate::web::address::{self, percent};
 use crate::web::pictures::deviations::full_tone;
 use crate::web::pictures::evidence::{self, Evidence};
-use crate::web::pictures::time_axis::TimeAxis;
+use crate::web::pictures::time_axis::{MOST_COLUMNS, TimeAxis};
 use crate::web::pictures::time_band::{self, Incident, TimeBand};
+use crate::web::problem::Problem;
+use crate::web::site::App;
+use crate::web::{format, story};
 
 use super::frame::Scene;
-use super::looks::{Shown, span_links};
+use super::looks::{Shown, csv, span_links};
+use super::when::When;
 
-/// How far back the pictures go: a shift.
-pub const BACK_US: i64 = 8 * 3600 * US_PER_S;
 /// A young bank's picture covers at least this, so that it does not stretch a minute over the page.
 const LEAST_US: i64 = 6 * 60 * US_PER_S;
 /// Most cells of the table beside the time band; beyond it every second, third … column is given.
@@ -24,34 +26,82 @@ const MOST_CELLS: usize = 2400;
 
 /// What was read from the store.
 pub struct Past {
-    /// Short forms of looks, oldest first.
+    /// Short forms of looks over the span that is shown, oldest first, as many as the pictures have
+    /// columns.
     pub digests: Vec<Digest>,
     /// Notices of this bank, newest first.
     pub notices: Vec<Notice>,
+    /// Where the pictures begin.
+    pub from: Time,
+}
+
+/// Reads what the pictures show; a page of the present is shown even when the store cannot be read,
+/// and says so.
+///
+/// # Errors
+/// 503 when the store cannot be read.
+pub async fn read(
+    app: &App,
+    name: &str,
+    span: Option<usize>,
+    when: &When,
+) -> Result<Past, Problem> {
+    let (name, from, to, cut) = (name.to_owned(), when.from, when.to, when.is_cut);
+    app.history(move |h| {
+        let thinned = |from: Time| match span {
+            Some(span) => h.digests_thinned(&name, span, (from, to.plus_us(1)), MOST_COLUMNS),
+            None => Ok(Vec::new()),
+        };
+        let mut digests = thinned(from)?;
+        let mut begin = from;
+        // A young bank fills its picture; it is read again in finer steps.
+        if let (false, Some(first)) = (cut, digests.first()) {
+            let latest = to.plus_us(-LEAST_US);
+            let oldest = h.digests(&name, from, first.at.plus_us(1), usize::MAX)?;
+            let start = oldest.iter().map(|d| d.at).min().unwrap_or(first.at);
+            if start.us_since(from) > to.us_since(from) / 8 {
+                begin = start.min(latest).max(from);
+                digests = thinned(begin)?;
+            }
+        }
+        // Notices raised before the picture may reach into it.
+        let back = begin.plus_us(-30 * US_PER_DAY);
+        let mut notices = story::notices(h, Some(&name), (back, to.plus_us(1)))?;
+        notices.retain(|n| story::end(n).is_none_or(|end| end >= begin));
+        Ok(Past {
+            digests,
+            notices,
+            from: begin,
+        })
+    })
+    .await
 }
 
 /// Both pictures with their tables.
-pub fn section(scene: &Scene<'_>, view: &BankView, past: &Past, shown: &Shown) -> Markup {
+pub fn section(
+    scene: &Scene<'_>,
+    view: &BankView,
+    past: &Past,
+    shown: &Shown,
+    when: &When,
+) -> Markup {
     let span = shown.look.span;
-    let looks: Vec<&Digest> = past.digests.iter().filter(|d| d.span == span).collect();
-    let Some(first) = looks.first() else {
+    let page = address::bank(&view.bank.name);
+    let looks: Vec<&Digest> = past.digests.iter().collect();
+    if looks.is_empty() {
         return html! {
-            section class="picture" {
+            section id="time" class="picture" {
                 h2 { (time_band::TITLE) }
-                p class="empty" { "No look over " (span) " values in the last 8 hours. The picture begins with the first one." }
+                (when.stretches(&page, "time"))
+                p class="empty" { "No look over " (span) " values in this time." }
             }
         };
-    };
-    let to = scene.times.now;
-    let from = first
-        .at
-        .min(to.plus_us(-LEAST_US))
-        .max(to.plus_us(-BACK_US));
-    let axis = TimeAxis::new(from, to, view.bank.look_every_us);
+    }
+    let axis = TimeAxis::new(past.from, when.to, view.bank.look_every_us);
     let placed = axis.place(&looks, view.bank.look_every_us);
     let ticks = axis.ticks(&scene.times);
     let full = scale(view, &looks);
-    let unit = &view.bank.characteristic.unit;
+    let what = &view.bank.characteristic;
     let band = TimeBand {
         axis: &axis,
         ticks: &ticks,
@@ -62,23 +112,27 @@ pub fn section(scene: &Scene<'_>, view: &BankView, past: &Past, shown: &Shown) -
         description: format!(
             "Deviation of each source from the others at the looks over {span} values from {} to {}; \
              outlines are notices.",
-            scene.times.minute(from),
-            scene.times.minute(to)
+            scene.times.minute(past.from),
+            scene.times.minute(when.to)
         ),
     };
-    let what = &view.bank.characteristic;
     let frame = if band.has_long_names() {
         "frame long"
     } else {
         "frame"
     };
+    let data = looks_csv(view, span, past.from, when.to);
     html! {
         section id="time" class="picture" {
             h2 { (time_band::TITLE) }
-            (span_links(view, shown, "time"))
-            div class=(frame) { (band.draw()) }
-            (time_band::legend(full, unit, |x| what.deviation(x)))
-            (cells(scene, view, &axis, &placed))
+            (span_links(view, shown, when, "time"))
+            (when.stretches(&page, "time"))
+            div id="probe" class=(frame) data-from=(past.from) data-to=(when.to) data-columns=(axis.columns)
+                data-rows=(view.sources.len()) data-looks=(looks_address(view)) data-span=(span) data-unit=(what.unit)
+                data-every=(view.bank.look_every_us / US_PER_S) { (band.draw()) }
+            p id="reading" class="reading" role="status" {}
+            (time_band::legend(full, &what.unit, |x| what.deviation(x)))
+            (cells(scene, view, &axis, &placed, &data))
         }
         section id="evidence" class="picture" {
             h2 { (evidence::TITLE) }
@@ -89,10 +143,26 @@ pub fn section(scene: &Scene<'_>, view: &BankView, past: &Past, shown: &Shown) -
             }.draw()) }
             p class="caption" { "p of the deciding tests, level as a full line and spread as a dashed one; higher is less \
                 likely. Small values come by chance when one looks often: only the alpha line, which shares out the call \
-                budget, and the margin make a call. A diamond is a look that found the bank apart." }
-            (figures(scene, &axis, &placed))
+                budget, and the margin make a call. A diamond is a look that found the bank apart. Where a column holds \
+                several looks, the newest is drawn." }
+            (figures(scene, &axis, &placed, &data))
         }
     }
+}
+
+fn looks_address(view: &BankView) -> String {
+    format!("/api/v1/banks/{}/looks", percent(&view.bank.name))
+}
+
+/// Where the same figures are for programs.
+fn looks_csv(view: &BankView, span: usize, from: Time, to: Time) -> String {
+    let time = |at: Time| percent(&at.to_string());
+    format!(
+        "{}?span={span}&from={}&to={}&form=csv",
+        looks_address(view),
+        time(from),
+        time(to)
+    )
 }
 
 fn scale(view: &BankView, looks: &[&Digest]) -> f64 {
@@ -103,21 +173,21 @@ fn scale(view: &BankView, looks: &[&Digest]) -> f64 {
     full_tone(&view.bank, &all)
 }
 
-/// Notices of this bank that lie in the picture; open ones as they stand now.
-fn incidents(scene: &Scene<'_>, view: &BankView, past: &Past, axis: &TimeAxis) -> Vec<Incident> {
+/// Notices of this bank that lie in the picture; open ones as they stand.
+pub fn incidents(
+    scene: &Scene<'_>,
+    view: &BankView,
+    past: &Past,
+    axis: &TimeAxis,
+) -> Vec<Incident> {
     let kept = past
         .notices
         .iter()
         .filter(|n| !view.open.iter().any(|o| o.id == n.id));
     let all = view.open.iter().map(AsRef::as_ref).chain(kept);
     let shown = all.filter_map(|notice| {
-        let end = notice.returned.filter(|_| !notice.state.is_active());
-        let end = end.unwrap_or(if notice.state.is_active() {
-            axis.to
-        } else {
-            notice.changed
-        });
-        (end >= axis.from).then(|| Incident {
+        let end = story::end(notice).unwrap_or(axis.to);
+        (end >= axis.from && notice.since.at <= axis.to).then(|| Incident {
             rows: rows(view, notice),
             extent: (axis.share(notice.since.at), axis.share(end)),
             is_active: notice.state.is_active(),
@@ -141,7 +211,13 @@ fn rows(view: &BankView, notice: &Notice) -> Vec<usize> {
         .collect()
 }
 
-fn cells(scene: &Scene<'_>, view: &BankView, axis: &TimeAxis, looks: &[Option<&Digest>]) -> Markup {
+fn cells(
+    scene: &Scene<'_>,
+    view: &BankView,
+    axis: &TimeAxis,
+    looks: &[Option<&Digest>],
+    data: &str,
+) -> Markup {
     let what = &view.bank.characteristic;
     let every = (looks.len() * view.sources.len())
         .div_ceil(MOST_CELLS)
@@ -150,6 +226,7 @@ fn cells(scene: &Scene<'_>, view: &BankView, axis: &TimeAxis, looks: &[Option<&D
     html! {
         details class="data" {
             summary { "The same as a table" }
+            (csv(data))
             @if every > 1 {
                 p class="caption" { "One in " (every) " columns of the picture; the interface gives all of them." }
             }
@@ -178,12 +255,13 @@ fn of(look: &Digest, name: &str, what: &Characteristic) -> String {
         .map_or_else(|| "–".to_owned(), |x| what.deviation(f64::from(x)))
 }
 
-fn figures(scene: &Scene<'_>, axis: &TimeAxis, looks: &[Option<&Digest>]) -> Markup {
+fn figures(scene: &Scene<'_>, axis: &TimeAxis, looks: &[Option<&Digest>], data: &str) -> Markup {
     let p = |p: Option<f64>| p.map_or_else(|| "–".to_owned(), format::probability);
     let until = |column: usize| -> Time { axis.end_of(column) };
     html! {
         details class="data" {
             summary { "The same as a table" }
+            (csv(data))
             div class="wide" tabindex="0" role="region" aria-label="Evidence over time" {
                 table class="dense" {
                     thead { tr { th scope="col" { "Until" } th scope="col" { "Finding" }

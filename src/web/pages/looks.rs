@@ -5,11 +5,12 @@ use maud::{Markup, html};
 use crate::engine::BankView;
 use crate::notice::Kind;
 use crate::verdict::{Estimate, Look, Method, TestEntry};
+use crate::web::address::{self, percent};
 use crate::web::format;
 use crate::web::pictures::{deviations, row, spread};
-use crate::web::signin::percent;
 
 use super::frame::Scene;
+use super::when::When;
 
 /// What the pictures show.
 pub struct Shown {
@@ -54,15 +55,16 @@ fn now(view: &BankView, look: &Look) -> Look {
 }
 
 /// Now and the spans as links, the shown one marked.
-pub fn span_links(view: &BankView, shown: &Shown, anchor: &str) -> Markup {
-    let page = format!("/banks/{}", percent(&view.bank.name));
+pub fn span_links(view: &BankView, shown: &Shown, when: &When, anchor: &str) -> Markup {
+    let page = address::bank(&view.bank.name);
     let judged = view.looks.iter().filter(|l| !l.sources.is_empty());
     html! {
         p class="spans" {
-            a href={ (page) "#" (anchor) } aria-current=[shown.is_now.then_some("true")] { "Now" }
+            a href={ (page) (when.query_over(None)) "#" (anchor) } aria-current=[shown.is_now.then_some("true")] {
+                @if when.is_past { "Then" } @else { "Now" } }
             " or over the newest "
             @for look in judged {
-                a href={ (page) "?span=" (look.span) "#" (anchor) }
+                a href={ (page) (when.query_over(Some(look.span))) "#" (anchor) }
                     aria-current=[(!shown.is_now && look.span == shown.look.span).then_some("true")] { (look.span) }
                 " "
             }
@@ -80,17 +82,33 @@ fn basis(shown: &Shown) -> Markup {
     }
 }
 
+/// Where the figures of a look are for programs. One that stands for now is followed by the sources'
+/// own list.
+fn look_csv(view: &BankView, look: &Look) -> String {
+    let bank = percent(&view.bank.name);
+    format!(
+        "/api/v1/banks/{bank}/looks/{}?at={}&form=csv",
+        look.span,
+        percent(&look.at.to_string())
+    )
+}
+
+/// A link to the figures for programs.
+pub fn csv(address: &str) -> Markup {
+    html! { p class="csv" { a href=(address) { "The same as CSV" } } }
+}
+
 /// The picture of levels with its table.
-pub fn level_picture(view: &BankView, shown: &Shown) -> Markup {
+pub fn level_picture(view: &BankView, shown: &Shown, when: &When) -> Markup {
     let look = &shown.look;
     let unit = &view.bank.characteristic.unit;
     html! {
         section id="level" class="picture" {
             h2 { (deviations::TITLE) }
-            (span_links(view, shown, "level"))
+            (span_links(view, shown, when, "level"))
             @match deviations::draw(&view.bank, look) {
                 Some(picture) => {
-                    div class="frame" { (picture) }
+                    (picture)
                     (row::key((view.bank.margin > 0.0).then(|| format!("the margin, {} {unit} wide", view.bank.margin))))
                     p class="caption" { (basis(shown)) "Deviation from the mean of the even set without the source itself, in " (unit)
                         ". The band holds as many sources as it can: whoever stands outside is more than the margin \
@@ -119,6 +137,7 @@ fn level_table(view: &BankView, look: &Look) -> Markup {
     html! {
         details class="data" {
             summary { "The same as a table" }
+            (csv(&look_csv(view, look)))
             div class="wide" tabindex="0" role="region" aria-label="Deviations" {
                 table {
                     thead { tr {
@@ -139,15 +158,15 @@ fn level_table(view: &BankView, look: &Look) -> Markup {
 }
 
 /// The picture of spreads with its table.
-pub fn spread_picture(view: &BankView, shown: &Shown) -> Markup {
+pub fn spread_picture(view: &BankView, shown: &Shown, when: &When) -> Markup {
     let look = &shown.look;
     html! {
         section id="spread" class="picture" {
             h2 { (spread::TITLE) }
-            (span_links(view, shown, "spread"))
+            (span_links(view, shown, when, "spread"))
             @match spread::draw(&view.bank, look) {
                 Some(picture) => {
-                    div class="frame" { (picture) }
+                    (picture)
                     (row::key(Some(format!("the spread margin, a factor of {}", view.bank.spread_margin))))
                     p class="caption" { (basis(shown)) "Standard deviation as a ratio to that of the others: 2× scatters twice as much." }
                     (spread_table(view, look))
@@ -164,6 +183,7 @@ fn spread_table(view: &BankView, look: &Look) -> Markup {
     html! {
         details class="data" {
             summary { "The same as a table" }
+            (csv(&look_csv(view, look)))
             div class="wide" tabindex="0" role="region" aria-label="Spreads" {
                 table {
                     thead { tr {

@@ -1,19 +1,16 @@
 //! One notice: as a card on its bank's page, and as a page of its own; acknowledging it.
 
-use axum::extract::{Extension, Form, Path, State};
-use axum::response::{IntoResponse, Redirect, Response};
+use axum::extract::{Extension, Path, State};
 use maud::{Markup, html};
-use serde::Deserialize;
 
 use crate::model::signed;
-use crate::notice::{Kind, Notice, State as NoticeState};
-use crate::web::access::{Caller, SessionPass};
-use crate::web::api::notices::submit;
+use crate::notice::{Act, Entry, Kind, Notice};
+use crate::web::access::Caller;
+use crate::web::address::{self, percent};
 use crate::web::format;
 use crate::web::pictures::glyph::{self, Glyph};
 use crate::web::problem::Problem;
 use crate::web::sessions::Field;
-use crate::web::signin::percent;
 use crate::web::site::{App, bank};
 
 use super::frame::{Page, Scene, render};
@@ -35,12 +32,7 @@ pub async fn page(
 ) -> Result<Markup, Problem> {
     let snapshot = app.now();
     let notice = app.notice(&snapshot, &id).await?;
-    let scene = Scene::new(
-        &app,
-        &snapshot,
-        &caller,
-        format!("/notices/{}", percent(&id)),
-    );
+    let scene = Scene::new(&app, &snapshot, &caller, address::notice(&id));
     let main = html! { (card(&scene, &notice, Place::Own)) };
     let live = bank(&snapshot, &notice.bank)
         .is_ok()
@@ -50,6 +42,7 @@ pub async fn page(
         Page {
             title: notice.subject.clone(),
             live,
+            script: None,
             way: "",
             main,
         },
@@ -61,7 +54,12 @@ pub fn shape(notice: &Notice) -> Glyph {
     if !notice.state.is_active() {
         return Glyph::Even;
     }
-    match notice.kind {
+    glyph_of(notice.kind)
+}
+
+/// The shape of what a kind of notice is about.
+pub fn glyph_of(kind: Kind) -> Glyph {
+    match kind {
         Kind::SpreadApart => Glyph::Spread,
         Kind::SourceSilent | Kind::SourceStuck => Glyph::Silent,
         Kind::IntakeTrouble | Kind::ClockWrong => Glyph::Trouble,
@@ -86,15 +84,15 @@ pub fn card(scene: &Scene<'_>, notice: &Notice, place: Place) -> Markup {
                     @else { h2 id=(name) { (notice.subject) } }
                     p class="quiet" { (notice.kind.words()) " · " (notice.state.words()) " · priority "
                         (notice.priority.word()) " · "
-                        @if place == Place::Own { a href={ "/banks/" (percent(&notice.bank)) } { (notice.bank) } }
-                        @else { a href={ "/notices/" (percent(&notice.id)) } { (notice.id) } } }
+                        @if place == Place::Own { a href=(address::bank(&notice.bank)) { (notice.bank) } }
+                        @else { a href=(address::notice(&notice.id)) { (notice.id) } } }
                 }
             }
             (named(scene, notice))
             @if !notice.advice.is_empty() { p class="advice" { strong { "To do " } (notice.advice) } }
             p class="text" { (rest_of_text(notice)) }
             (course(scene, notice))
-            (acknowledge_part(scene, notice))
+            (super::deeds::part(scene, notice))
         }
     }
 }
@@ -115,6 +113,7 @@ fn named(scene: &Scene<'_>, notice: &Notice) -> Markup {
     let what = found.map(|(_, view)| &view.bank.characteristic);
     let figure = |x: f64| match (notice.kind, what) {
         (Kind::SpreadApart, _) => format!("{}×", format::plain(x, 2)),
+        (kind, _) if !kind.is_call() => format!("{} {}", format::plain(x, 0), notice.unit),
         (_, Some(what)) => format!("{} {}", what.deviation(x), notice.unit),
         (_, None) => format!("{} {}", signed(x, 3), notice.unit),
     };
@@ -122,8 +121,8 @@ fn named(scene: &Scene<'_>, notice: &Notice) -> Markup {
         @if !notice.sources.is_empty() {
             ul class="named" {
                 @for source in &notice.sources {
-                    li { strong { (source.source) } " " span class="figure" { (figure(source.deviation)) }
-                        " " span class="quiet" { (figure(source.low)) " to " (figure(source.high)) } }
+                    li { strong { a href=(address::source(&notice.bank, &source.source)) { (source.source) } } " " span class="figure" { (figure(source.deviation)) }
+                        @if source.low != source.high { " " span class="quiet" { (figure(source.low)) " to " (figure(source.high)) } } }
                 }
             }
         }
@@ -140,90 +139,57 @@ fn course(scene: &Scene<'_>, notice: &Notice) -> Markup {
                 @if since.earliest != since.latest {
                     span class="quiet" { " between " (times.second(since.earliest)) " and " (times.second(since.latest)) } } } }
             div { dt { "called" } dd { (scene.time(notice.raised, &times.full(notice.raised)))
-                span class="quiet" { " by the look over " (notice.span) " values" } } }
+                @if notice.kind.is_call() { span class="quiet" { " by the look over " (notice.span) " values" } } } }
             @if let Some(at) = notice.returned { div { dt { "returned" } dd { (scene.time(at, &times.full(at))) } } }
             @if let Some(seen) = &notice.acknowledged {
                 div { dt { "acknowledged" } dd { (scene.time(seen.at, &times.full(seen.at))) " by " (seen.by)
                     @if !seen.comment.is_empty() { span class="comment" { "“" (seen.comment) "”" } } } }
             }
-        }
-    }
-}
-
-fn awaits(state: NoticeState) -> bool {
-    matches!(
-        state,
-        NoticeState::Unacknowledged | NoticeState::ReturnedUnacknowledged
-    )
-}
-
-fn acknowledge_part(scene: &Scene<'_>, notice: &Notice) -> Markup {
-    html! {
-        @if awaits(notice.state) {
-            @match (&scene.caller.session, &scene.app.tokens) {
-                (Some(pass), _) if scene.caller.rights.act => (form(scene, notice, pass)),
-                (Some(_), _) => p class="quiet" { "Your token may only look; acknowledging needs one that may act." },
-                (None, Some(_)) => p { a class="button" href={ "/sign-in?next=" (percent(&scene.here)) } { "Sign in to acknowledge" } },
-                (None, None) => p class="quiet" { "To acknowledge here, give evenrow a token file: "
-                    code { "token_file" } " under " code { "[web]" } "." },
+            @for entry in notice.handling.entries.iter().filter(|e| e.act != Act::Acknowledged) {
+                div { dt { (act(scene, entry)) } dd { (scene.time(entry.at, &times.full(entry.at))) " by " (entry.by)
+                    @if !entry.comment.is_empty() { span class="comment" { "“" (entry.comment) "”" } } } }
             }
         }
     }
 }
 
-fn form(scene: &Scene<'_>, notice: &Notice, pass: &SessionPass) -> Markup {
-    let id = &notice.id;
-    html! {
-        details class="act" id={ "act-" (id) } {
-            summary class="button" { "Acknowledge" }
-            form class="entry" method="post" action={ "/notices/" (percent(id)) "/acknowledge" } {
-                input type="hidden" name="field" value=(pass.field);
-                input type="hidden" name="back" value=(scene.here);
-                label for={ "by-" (id) } { "Your name" }
-                input id={ "by-" (id) } name="by" required maxlength="80" autocomplete="name";
-                label for={ "comment-" (id) } { "Comment, if you like" }
-                textarea id={ "comment-" (id) } name="comment" rows="2" maxlength="2000" {}
-                button { "Acknowledge" }
-            }
-        }
+/// What an entry of the record says.
+fn act(scene: &Scene<'_>, entry: &Entry) -> String {
+    match entry.act {
+        Act::Acknowledged => "acknowledged".to_owned(),
+        Act::Shelved(until, _) => format!("shelved until {}", scene.times.second(until)),
+        Act::Unshelved => "unshelved".to_owned(),
+        Act::ShelvingOver => "shelving over".to_owned(),
+        Act::TakenOut => "out of service".to_owned(),
+        Act::PutBack => "back in service".to_owned(),
+        Act::Told(outcome) => outcome.words().to_owned(),
+        Act::Commented => "comment".to_owned(),
     }
 }
 
-/// The filled form.
-#[derive(Deserialize)]
-pub struct Filled {
-    field: String,
-    by: String,
-    #[serde(default)]
-    comment: String,
-    #[serde(default)]
-    back: String,
+/// Whether a form's button was pressed for the first time.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum Pressed {
+    /// It was: do it.
+    Once,
+    /// It was pressed twice: once is enough.
+    Again,
 }
 
-/// Takes the form; the guard has seen to it that the caller may act.
-pub async fn acknowledge(
-    State(app): State<App>,
-    Extension(caller): Extension<Caller>,
-    Path(id): Path<String>,
-    Form(filled): Form<Filled>,
-) -> Result<Response, Problem> {
-    let back = crate::web::signin::local(&filled.back);
+/// Spends a form's one-time field.
+///
+/// # Errors
+/// 403 without a session, or when the form was too old.
+pub fn press(app: &App, caller: Caller, field: &str) -> Result<Pressed, Problem> {
     let pass = caller.session.ok_or_else(|| {
         Problem::forbidden("this form works for a signed-in person; with a token use the interface")
     })?;
-    match app
-        .sessions
-        .spend(&pass.id, &filled.field, app.site.clock.now())
-    {
-        Field::Fresh => {}
-        // The button was pressed twice: once is enough.
-        Field::Repeated => return Ok(Redirect::to(&back).into_response()),
-        Field::Wrong => {
-            return Err(Problem::forbidden(
-                "this form was too old; go back, load the page again and acknowledge once more",
-            ));
-        }
+    let spent = app.sessions.spend(&pass.id, field, app.site.clock.now());
+    match spent {
+        Field::Fresh => Ok(Pressed::Once),
+        Field::Repeated => Ok(Pressed::Again),
+        Field::Wrong => Err(Problem::forbidden(
+            "this form was too old; go back, load the page again and send it once more",
+        )),
     }
-    submit(&app, &id, &filled.by, &filled.comment).await?;
-    Ok(Redirect::to(&back).into_response())
 }

@@ -6,9 +6,9 @@ use serde::Deserialize;
 
 use crate::notice::Notice;
 use crate::web::access::Caller;
+use crate::web::address::{self, percent};
 use crate::web::pictures::glyph;
 use crate::web::problem::Problem;
-use crate::web::signin::percent;
 use crate::web::site::App;
 
 use super::frame::{Page, Scene, render};
@@ -62,17 +62,19 @@ pub async fn list(
         Page {
             title: "Notices".to_owned(),
             live: is_first.then(|| "/live".to_owned()),
+            script: None,
             way: "/notices",
             main,
         },
     ))
 }
 
-fn rows(scene: &Scene<'_>, notices: &[&Notice]) -> Markup {
+/// Notices in lines.
+pub fn rows(scene: &Scene<'_>, notices: &[&Notice]) -> Markup {
     html! {
         ul class="list" {
             @for notice in notices {
-                li { a class={ "line" @if notice.state.is_active() { " asks" } } href={ "/notices/" (percent(&notice.id)) } {
+                li { a class={ "line" @if notice.state.is_active() { " asks" } } href=(address::notice(&notice.id)) {
                     (glyph::draw(shape(notice)))
                     span class="what" { strong { (notice.subject) }
                         span class="quiet" { (notice.bank) " · " (notice.kind.words()) " · " (notice.state.words()) } }

@@ -3,7 +3,7 @@
 use maud::{Markup, html};
 
 use crate::engine::{BankView, RefusalView};
-use crate::web::format;
+use crate::web::{address, format};
 
 use super::frame::Scene;
 
@@ -22,7 +22,7 @@ pub fn table(scene: &Scene<'_>, view: &BankView) -> Markup {
                 tbody {
                     @for source in &view.sources {
                         tr class=[(!source.named.is_empty()).then_some("apart")] {
-                            th scope="row" { (source.name) }
+                            th scope="row" { a href=(address::source(&view.bank.name, &source.name)) { (source.name) } }
                             td { (source.state.word()) }
                             td class="n" { (format::count(source.values as u64)) }
                             td class="n" { @if let Some(x) = source.last_value { (what.value(x)) } @else { "–" } }

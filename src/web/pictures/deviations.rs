@@ -2,19 +2,19 @@
 
 use maud::Markup;
 
-use crate::model::{Bank, Characteristic, signed};
+use crate::model::{Bank, Characteristic, Value, signed};
 use crate::verdict::{Estimate, Look};
 
 use super::band;
+use super::ring;
 use super::row::{BOTTOM, Mark, Row, TOP};
 use super::scale::{Scale, Spacing, tick_places};
 
 /// The question.
 pub const TITLE: &str = "Which sources are apart, and by how much?";
 
-/// Draws one look's deviations; `None` when it could judge nobody.
+/// Draws one look's deviations, for rotary machines also as a ring; `None` when it could judge nobody.
 pub fn draw(bank: &Bank, look: &Look) -> Option<Markup> {
-    let unit = &bank.characteristic.unit;
     let what = &bank.characteristic;
     let figures: Vec<f64> = look
         .sources
@@ -33,7 +33,7 @@ pub fn draw(bank: &Bank, look: &Look) -> Option<Markup> {
         name: s.name.to_string(),
         figure: s.deviation,
         apart: s.named_level.then(|| word(s.deviation)),
-        words: words(&s.name, s.deviation, what, unit),
+        words: words(&s.name, s.deviation, what, &what.unit),
         tone: s.deviation.map_or(0.0, |d| d.value / full),
     });
     let row = Row {
@@ -43,11 +43,33 @@ pub fn draw(bank: &Bank, look: &Look) -> Option<Markup> {
         marks: marks.collect(),
         scale,
         ticks: ticks.iter().map(|t| (*t, signed(*t, places))).collect(),
+        lines: lines(what, look, range),
         even_at: 0.0,
         band,
-        unit,
+        unit: &what.unit,
     };
-    Some(row.draw())
+    Some(ring::framed(&row, bank.layout))
+}
+
+/// Target and limits of a single value, seen from the mean of all, as far as they lie in the picture.
+fn lines(what: &Characteristic, look: &Look, (low, high): (f64, f64)) -> Vec<(f64, &'static str)> {
+    let known = look
+        .sources
+        .iter()
+        .map(|s| s.mean)
+        .filter(|m| m.is_finite());
+    let (count, sum) = known.fold((0.0, 0.0), |(n, sum), m| (n + 1.0, sum + m));
+    let mean: f64 = sum / count;
+    let of = |value: Option<f64>, word| Some((value? - mean, word));
+    [
+        of(what.target.map(Value::to_f64), "target"),
+        of(what.lower, "lower limit of a value"),
+        of(what.upper, "upper limit of a value"),
+    ]
+    .into_iter()
+    .flatten()
+    .filter(|(at, _)| (low..=high).contains(at))
+    .collect()
 }
 
 /// Where the colour scale is full: at twice the margin, or at the largest deviation without one.

@@ -7,15 +7,22 @@
 //! what is passed in.
 
 pub mod band;
+pub mod course;
+pub mod day;
 pub mod deviations;
+pub mod enclosed;
 pub mod evidence;
 pub mod glyph;
+pub mod lags;
 pub mod mini;
+pub mod ring;
 pub mod row;
 pub mod scale;
+pub mod shares;
 pub mod spread;
 pub mod time_axis;
 pub mod time_band;
+pub mod values;
 pub mod vik;
 
 /// A per cent place with enough what for a wall screen and no more.

@@ -37,6 +37,8 @@ pub struct Row<'a> {
     pub scale: Scale,
     /// Ticks with their labels.
     pub ticks: Vec<(f64, String)>,
+    /// Lines to compare with, with what they are.
+    pub lines: Vec<(f64, &'static str)>,
     /// The figure that all would have if they were alike.
     pub even_at: f64,
     /// The band.
@@ -85,6 +87,11 @@ impl Row<'_> {
                 @let class = if (at - self.even_at).abs() < 1e-12 { "zero" } else { "grid" };
                 line class=(class) x1="0" x2="100%" y1=(y) y2=(y) {}
                 text class="tick" x="-8" y=(y) dy="0.35em" text-anchor="end" { (label) }
+            }
+            @for (at, label) in &self.lines {
+                @let y = self.scale.place(*at);
+                line class="alpha" x1="0" x2="100%" y1=(px(y)) y2=(px(y)) {}
+                text class="margin-label" x="100%" dx="-4" y=(px(y - 4.0)) text-anchor="end" { (label) }
             }
         }
     }

@@ -8,6 +8,7 @@ use crate::verdict::{Estimate, Look};
 use crate::web::format;
 
 use super::band;
+use super::ring;
 use super::row::{BOTTOM, Mark, Row, TOP};
 use super::scale::{Scale, Spacing};
 
@@ -47,11 +48,12 @@ pub fn draw(bank: &Bank, look: &Look) -> Option<Markup> {
             .into_iter()
             .map(|t| (t, format!("{t}×")))
             .collect(),
+        lines: Vec::new(),
         even_at: 1.0,
         band,
         unit: "",
     };
-    Some(row.draw())
+    Some(ring::framed(&row, bank.layout))
 }
 
 /// The word for a named source.

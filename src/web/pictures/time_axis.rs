@@ -5,14 +5,14 @@ use crate::model::{Time, US_PER_S};
 use crate::verdict::Digest;
 use crate::web::format::Times;
 
-/// Most columns: two pixels each on a phone, more than enough for eight hours.
-const MOST_COLUMNS: i64 = 96;
+/// Most columns: two pixels each on a phone, a look in each five minutes of a shift.
+pub const MOST_COLUMNS: usize = 96;
 /// Fewest columns, so that a young bank's picture is no wall of blocks.
 const FEWEST_COLUMNS: i64 = 24;
 /// Most ticks that fit beside each other on a phone.
 const MOST_TICKS: i64 = 6;
 /// Steps between ticks, in minutes.
-const STEPS_MIN: [i64; 9] = [5, 10, 15, 30, 60, 120, 180, 240, 360];
+const STEPS_MIN: [i64; 12] = [5, 10, 15, 30, 60, 120, 180, 240, 360, 720, 1440, 10_080];
 
 /// A stretch of time in columns.
 #[derive(Clone, Debug)]
@@ -30,7 +30,7 @@ impl TimeAxis {
     pub fn new(from: Time, to: Time, look_every_us: i64) -> Self {
         let length = to.us_since(from).max(1);
         let looks = length / look_every_us.max(1);
-        let columns = looks.clamp(FEWEST_COLUMNS, MOST_COLUMNS);
+        let columns = looks.clamp(FEWEST_COLUMNS, MOST_COLUMNS as i64);
         Self {
             from,
             to,
@@ -63,6 +63,7 @@ impl TimeAxis {
                 standing = Some(look);
             }
             let start = self.end_of(column).plus_us(-self.column_us());
+            // A column may have no look of its own because it is narrower than the time between two.
             let limit = look_every_us.saturating_mul(2);
             standing = standing.filter(|l| start.us_since(l.at) <= limit);
             places.push(standing);
@@ -75,7 +76,7 @@ impl TimeAxis {
         let length = self.to.us_since(self.from);
         let us = |minutes: i64| minutes * 60 * US_PER_S;
         let fits = |step: &i64| length / us(*step) <= MOST_TICKS;
-        let step = us(STEPS_MIN.into_iter().find(fits).unwrap_or(720));
+        let step = us(STEPS_MIN.into_iter().find(fits).unwrap_or(43_200));
         let mut at = times.hour_start(self.from);
         let mut ticks = Vec::new();
         while at <= self.to && ticks.len() < 100 {

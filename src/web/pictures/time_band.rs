@@ -175,10 +175,12 @@ fn draw_incident(incident: &Incident, row: f64) -> Markup {
 /// The time axis, shared with the evidence picture.
 pub fn time_labels(ticks: &[(f64, String)], top: f64, bottom: f64) -> Markup {
     html! {
-        @for (share, label) in ticks {
+        @for (at, (share, label)) in ticks.iter().enumerate() {
+            // Where there is little room every second one gives way, never the newest.
+            @let class = if (ticks.len() - at).is_multiple_of(2) { "tick odd" } else { "tick" };
             @let x = percent(*share);
             line class="grid time" x1=(x) x2=(x) y1=(px(top)) y2=(px(bottom + 5.0)) {}
-            text class="tick" x=(x) y=(px(bottom + 19.0))
+            text class=(class) x=(x) y=(px(bottom + 19.0))
                 text-anchor=(if *share < 0.04 { "start" } else if *share > 0.96 { "end" } else { "middle" }) {
                 (label)
             }

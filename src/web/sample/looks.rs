@@ -2,6 +2,7 @@
 
 use fastrand::Rng;
 
+use crate::engine::WindowValue;
 use crate::model::{Bank, Name, SourceIx, Time, US_PER_S, Value};
 use crate::verdict::{Dependence, Estimate, Finding, Look, Method, SourceLook, TestEntry};
 
@@ -11,6 +12,25 @@ use super::{Story, moment};
 fn noise(rng: &mut Rng) -> f64 {
     let sum: f64 = (0..12).map(|_| rng.f64()).sum();
     sum - 6.0
+}
+
+/// How many values a sample window holds.
+pub const WINDOW: usize = 160;
+
+/// A source's window: values a cycle apart up to [`moment`], that wander together.
+pub fn values(source: &str) -> Vec<WindowValue> {
+    let seed = source.bytes().map(u64::from).sum::<u64>();
+    let (mut own, mut common) = (Rng::with_seed(seed), Rng::with_seed(1));
+    let mut wander = 0.0;
+    let value = |cycle: i64| {
+        wander = 0.9 * wander + 0.3 * noise(&mut common);
+        WindowValue {
+            taken: moment().plus_us((cycle - WINDOW as i64) * 720_000),
+            cycle: Some(cycle),
+            offset: ((wander + 0.4 * noise(&mut own)) * 10.0).round() / 10.0,
+        }
+    };
+    (0..WINDOW as i64).map(value).collect()
 }
 
 /// A look with figures that fit the story.

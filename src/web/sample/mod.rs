@@ -1,26 +1,29 @@
 //! A plant made by hand, for tests of pages and metrics and for looking at them.
 //!
-//! Seven banks, one per way of standing. Figures are made up but hang together: a source that a notice
+//! Twelve banks, at least one per way of standing. Figures are made up but hang together: a source that a notice
 //! names has moved in the looks too. The same seed gives the same plant.
 
 mod looks;
 mod notices;
 mod past;
+mod watch;
 
+pub use looks::{WINDOW, values};
 pub use past::SampleHistory;
 
 use std::collections::BTreeMap;
 use std::sync::Arc;
 
 use crate::engine::{
-    BankView, Condition, Cycles, Plant, RefusalView, Snapshot, SourceState, SourceView,
+    BankView, Condition, Cycles, OutletView, Plant, Raised, RefusalView, Snapshot, SourceState,
+    SourceView,
 };
 use crate::model::{
-    Bank, BankIx, Characteristic, Layout, Pairing, Reason, Refusal, SourceIx, Sources, Time,
-    US_PER_DAY, US_PER_S, Value,
+    Bank, BankIx, Characteristic, Layout, LineChange, LineEvent, Offsets, Pairing, Reason, Refusal,
+    SourceIx, Sources, Time, US_PER_DAY, US_PER_S, Value,
 };
 use crate::notice::{Kind, Notice};
-use crate::verdict::{Estimate, Look};
+use crate::verdict::{BudgetKept, Came, Estimate, Look, budget_kept};
 
 use looks::look;
 use notices::notice;
@@ -67,7 +70,15 @@ pub fn bank(
         wait_cycles: 3,
         silent_after_us: None,
         oldest_us: 30 * US_PER_DAY,
-        layout: Layout::Row,
+        layout: if equipment.starts_with("filler") {
+            Layout::Ring
+        } else {
+            Layout::Row
+        },
+        groups: Vec::new(),
+        cost_per_unit: None,
+        reference: None,
+        offsets: Offsets::None,
     }
 }
 
@@ -169,6 +180,7 @@ pub fn view(bank: Bank, story: Story, seed: u64) -> BankView {
             deviation_sigmas: judged.and_then(|s| Some(s.deviation?.value / 1.2)),
             sd_ratio: followed(Kind::SpreadApart).or(judged.and_then(|s| s.sd_ratio)),
             named: named.map(|n| n.kind).collect(),
+            lag_us: (values > 0).then_some(240_000),
         }
     });
     let mut outcomes = BTreeMap::new();
@@ -183,9 +195,16 @@ pub fn view(bank: Bank, story: Story, seed: u64) -> BankView {
     BankView {
         sources: sources.collect(),
         raised: open.iter().map(|n| (n.kind, 1)).collect(),
-        open,
         outcomes,
-        refusals: if values > 0 { refusals() } else { Vec::new() },
+        stopped: None,
+        product: None,
+        line_events: line_events(story),
+        watch: Some(watch::watch(&bank, names.len(), story, values)),
+        refusals: if seed % 5 == 1 {
+            refusals()
+        } else {
+            Vec::new()
+        },
         cycles: Some(Cycles {
             closed: 40_176,
             skipped: 2,
@@ -193,12 +212,36 @@ pub fn view(bank: Bank, story: Story, seed: u64) -> BankView {
         }),
         interval_us: (values > 0).then_some(720_000),
         next_look: (values > 0).then(|| moment().plus_us(18 * US_PER_S)),
+        shifts: None,
         newest_taken: (values > 0).then(|| moment().plus_us(-US_PER_S)),
         mean: now_look.is_some().then_some(target + 0.027 * bank.margin),
+        kept: kept(&bank, values),
+        raised_at: raised_at(&open),
         shown_span: now_look.map(|l| l.span),
+        open,
         looks,
         bank: Arc::new(bank),
     }
+}
+
+/// Forty days with two calls, one of them for nothing.
+fn kept(bank: &Bank, values: usize) -> Option<BudgetKept> {
+    let came = Came {
+        calls: 2,
+        told: 2,
+        nothing_found: 1,
+    };
+    let began = moment().plus_us(-40 * 86_400 * US_PER_S);
+    let kept = budget_kept(bank.budget, came, began, moment());
+    kept.filter(|_| values > 0)
+}
+
+fn raised_at(open: &[Arc<Notice>]) -> Vec<Raised> {
+    let raised = open.iter().map(|n| Raised {
+        at: n.raised,
+        kind: n.kind,
+    });
+    raised.collect()
 }
 
 fn refusals() -> Vec<RefusalView> {
@@ -274,6 +317,31 @@ pub fn snapshot() -> Snapshot {
             Story::Young(0),
             7,
         ),
+        view(
+            bank("filler-5", "filler 5", content(), &numbered(24), 0.8),
+            Story::Even,
+            8,
+        ),
+        view(
+            bank("labels", "labeller 1", diameter(), &numbered(8), 0.02),
+            Story::Even,
+            9,
+        ),
+        view(
+            bank("weigher", "line 9", content(), &numbered(14), 0.8),
+            Story::Spread(3, 2.2),
+            10,
+        ),
+        view(
+            bank("mould-c", "mould c", diameter(), &named("cavity", 8), 0.02),
+            Story::Even,
+            11,
+        ),
+        view(
+            bank("scales", "packing", content(), &numbered(4), 0.8),
+            Story::Level(1, 1.9, 200),
+            12,
+        ),
     ];
     Snapshot {
         version: 1,
@@ -281,6 +349,8 @@ pub fn snapshot() -> Snapshot {
             name: "Quayside".into(),
             zone: jiff::tz::TimeZone::get("Europe/Lisbon").expect("bundled"),
             pages: "http://127.0.0.1:7310".to_owned(),
+            routes: Vec::new(),
+            manners: crate::notice::Manners::default(),
         }),
         broker: Condition::Well,
         store: Condition::Well,
@@ -289,11 +359,26 @@ pub fn snapshot() -> Snapshot {
             reason: Reason::NoBank,
             ..refusals().remove(0)
         }],
-        outbox: 0,
-        outbox_trouble: None,
+        outlets: vec![OutletView::new("mqtt".into())],
     }
 }
 
 fn named(word: &str, count: usize) -> Vec<String> {
     (1..=count).map(|n| format!("{word} {n}")).collect()
+}
+
+/// What people entered: a source that moved was adjusted before.
+fn line_events(story: Story) -> Vec<LineEvent> {
+    let Story::Level(at, ..) = story else {
+        return Vec::new();
+    };
+    vec![LineEvent {
+        at: moment().plus_us(-5400 * US_PER_S),
+        by: "R. Matos".into(),
+        change: LineChange::Adjustment {
+            source: format!("{:02}", at + 1).into(),
+            by: Some(0.4),
+        },
+        reason: "valve seat cleaned".to_owned(),
+    }]
 }

@@ -4,7 +4,9 @@ use std::sync::Arc;
 
 use crate::engine::BankView;
 use crate::model::{Bank, Name, US_PER_S};
-use crate::notice::{Acknowledgement, Kind, NamedSource, Notice, Priority, Since, State};
+use crate::notice::{
+    Acknowledgement, Handling, Happening, Kind, NamedSource, Notice, Priority, Since, State,
+};
 use crate::verdict::{Finding, Look};
 
 use super::{Story, moment};
@@ -57,12 +59,12 @@ pub fn notice(bank: &Bank, names: &[Name], story: Story, looks: &[Arc<Look>]) ->
             format!("Check {name} for play, dirt or a loose sensor before adjusting its level."),
         )
     };
-    Some(Notice {
+    let mut notice = Notice {
         id: format!("{}-2026-0007", bank.name.replace(' ', "-")).into(),
         plant: "Quayside".into(),
         bank: bank.name.clone(),
         kind,
-        state: State::Unacknowledged,
+        state: State::Normal,
         priority: Priority::Medium,
         sources: vec![NamedSource {
             source: name.clone(),
@@ -85,7 +87,16 @@ pub fn notice(bank: &Bank, names: &[Name], story: Story, looks: &[Arc<Look>]) ->
         advice,
         url: format!("http://127.0.0.1:7310/banks/{}", bank.name),
         span,
-    })
+        handling: Handling::default(),
+        pattern: None,
+        slip: None,
+        common_movement: None,
+        even_mean: None,
+        cost_per_hour: None,
+        adjustment: None,
+    };
+    notice.happen(Happening::Occurs, since.plus_us(65 * US_PER_S));
+    Some(notice)
 }
 
 /// Past notices of the first bank, newest first.
@@ -94,6 +105,7 @@ pub fn past_notices(view: &BankView) -> Vec<Notice> {
     let past = |number: u32, hours: i64, source: &str, by: f64| {
         let start = moment().plus_us(-hours * 3600 * US_PER_S);
         Notice {
+            handling: Handling::default(),
             id: format!("{}-2026-{number:04}", view.bank.name).into(),
             state: State::Normal,
             sources: vec![NamedSource {

@@ -1,9 +1,10 @@
 //! The past of the sample plant.
 
+use std::collections::BTreeMap;
 use std::sync::Arc;
 
-use crate::engine::{BankView, History, HistoryError, Page, Snapshot};
-use crate::model::{Name, Time, US_PER_S};
+use crate::engine::{BankView, Evidence, History, HistoryError, Page, Snapshot};
+use crate::model::{LineEvent, Name, Time, US_PER_S};
 use crate::notice::Notice;
 use crate::verdict::{Digest, Look};
 
@@ -31,6 +32,11 @@ impl SampleHistory {
             Story::Young(6),
             Story::Level(77, 2.1, 50),
             Story::Young(0),
+            Story::Even,
+            Story::Even,
+            Story::Spread(3, 2.2),
+            Story::Even,
+            Story::Level(1, 1.9, 200),
         ];
         self.snapshot.banks.iter().cloned().zip(stories).collect()
     }
@@ -68,8 +74,52 @@ impl History for SampleHistory {
         Ok(all.split_off(skip))
     }
 
-    fn looks_at(&self, _bank: &str, _at: Time) -> Result<Vec<Look>, HistoryError> {
-        Ok(Vec::new())
+    fn line_events(
+        &self,
+        bank: &str,
+        from: Time,
+        to: Time,
+        most: usize,
+    ) -> Result<Vec<LineEvent>, HistoryError> {
+        let found = self.snapshot.banks.iter().find(|b| &*b.bank.name == bank);
+        let events = found.into_iter().flat_map(|b| &b.line_events);
+        let in_range = events.filter(|e| (from..to).contains(&e.at)).cloned();
+        let mut all: Vec<LineEvent> = in_range.collect();
+        let skip = all.len().saturating_sub(most);
+        Ok(all.split_off(skip))
+    }
+
+    fn digests_thinned(
+        &self,
+        bank: &str,
+        span: usize,
+        (from, to): (Time, Time),
+        parts: usize,
+    ) -> Result<Vec<Digest>, HistoryError> {
+        let step = to.us_since(from) / i64::try_from(parts.max(1)).unwrap_or(1);
+        let all = self.digests(bank, from, to, usize::MAX)?;
+        let mut newest: BTreeMap<i64, Digest> = BTreeMap::new();
+        for digest in all.into_iter().filter(|d| d.span == span) {
+            newest.insert(digest.at.us_since(from) / step.max(1), digest);
+        }
+        Ok(newest.into_values().collect())
+    }
+
+    /// As if a look was kept whole each half hour.
+    fn looks_at(&self, bank: &str, at: Time) -> Result<Vec<Look>, HistoryError> {
+        const HALF_HOUR_US: i64 = 1800 * US_PER_S;
+        let stories = self.stories();
+        let kept = Time::from_us(at.us().div_euclid(HALF_HOUR_US) * HALF_HOUR_US);
+        let reaches = moment().us_since(at) < 6 * 3600 * US_PER_S;
+        let found = stories.into_iter().find(|(v, _)| &*v.bank.name == bank);
+        let Some((view, story)) = found.filter(|_| reaches) else {
+            return Ok(Vec::new());
+        };
+        let names: Vec<Name> = view.sources.iter().map(|s| s.name.clone()).collect();
+        let spans = view.bank.spans.iter();
+        Ok(spans
+            .map(|span| look(&view.bank, &names, story, *span, kept, 9))
+            .collect())
     }
 
     fn notices(&self, after: Option<&str>, most: usize) -> Result<Page<Notice>, HistoryError> {
@@ -106,5 +156,9 @@ impl History for SampleHistory {
             .items
             .into_iter()
             .find(|n| &*n.id == id))
+    }
+
+    fn evidence(&self, _id: &str) -> Result<Option<Evidence>, HistoryError> {
+        Ok(None)
     }
 }

@@ -1,5 +1,6 @@
 //! The interface, the metrics and health: forms and statuses.
 
+use std::collections::BTreeSet;
 use std::io::Write as _;
 use std::process::{Command, Stdio};
 use std::sync::Arc;
@@ -25,7 +26,15 @@ async fn every_reading_address_answers() {
         ("/api/v1/banks/filler-2/windows", "items"),
         ("/api/v1/banks/filler-2/looks", "items"),
         ("/api/v1/banks/filler-2/looks?most=4", "next"),
+        ("/api/v1/banks/filler-2/sources", "items"),
+        ("/api/v1/banks/filler-2/sources/07", "deviation"),
+        ("/api/v1/banks/filler-2/windows?source=07", "items"),
+        ("/api/v1/banks/filler-2/looks/40", "tests"),
         ("/api/v1/banks/filler-2/refusals", "items"),
+        ("/api/v1/banks/filler-2/events", "items"),
+        ("/api/v1/refusals", "items"),
+        ("/api/v1/settings", "items"),
+        ("/api/v1/health", "store"),
         ("/api/v1/notices", "items"),
         ("/api/v1/notices?most=1", "next"),
         ("/api/v1/notices/filler-2-2026-0007", "id"),
@@ -53,6 +62,26 @@ async fn errors_are_problems_everywhere() {
         ("GET", "/api/v1/banks/none", vec![], "", 404),
         ("GET", "/api/v1/banks/none/windows", vec![], "", 404),
         ("GET", "/api/v1/notices/none", vec![], "", 404),
+        (
+            "GET",
+            "/api/v1/banks/filler-2/sources/none",
+            vec![],
+            "",
+            404,
+        ),
+        (
+            "GET",
+            "/api/v1/banks/filler-2/windows?source=none",
+            vec![],
+            "",
+            404,
+        ),
+        ("GET", "/api/v1/banks/filler-2/looks/41", vec![], "", 404),
+        ("GET", "/api/v1/banks/filler-2/looks/x", vec![], "", 400),
+        ("GET", "/api/v1/banks?form=xml", vec![], "", 400),
+        ("GET", "/api/v1/stream?bank=none", vec![], "", 404),
+        ("GET", "/banks/filler-2?at=yesterday", vec![], "", 400),
+        ("GET", "/banks/filler-2/sources/none", vec![], "", 404),
         ("GET", "/assets/none.js", vec![], "", 404),
         ("POST", "/api/v1/banks", vec![token, JSON], "{}", 405),
         (
@@ -209,7 +238,14 @@ async fn the_document_describes_what_there_is() {
         document["openapi"]
     );
     let paths = document["paths"].as_object().expect("paths");
-    assert_eq!(paths.len(), 8);
+    assert_eq!(paths.len(), 24);
+    let operations = paths
+        .values()
+        .flat_map(|p| p.as_object().expect("methods").values());
+    let ids: BTreeSet<_> = operations
+        .filter_map(|o| o["operationId"].as_str())
+        .collect();
+    assert_eq!(ids.len(), 25, "one name each: {ids:?}");
     let schema = &document["components"]["schemas"]["NoticeBody"]["properties"]["since"];
     assert!(!schema.is_null());
 }
@@ -290,4 +326,70 @@ async fn promtool_is_content() {
     let said = check.wait_with_output().expect("an end");
     let words = String::from_utf8_lossy(&said.stderr);
     assert!(said.status.success() && words.trim().is_empty(), "{words}");
+}
+
+#[tokio::test]
+async fn line_events_are_checked_and_entered() {
+    let bench = bench();
+    let token = ("authorization", "Bearer both-token");
+    let to = "/api/v1/banks/filler-2/events";
+    for (body, status, says) in [
+        (
+            r#"{"by":"R. Matos","kind":"adjustment","source":"07","amount":1.5,"reason":"seat worn"}"#,
+            201,
+            "\"amount\":1.5",
+        ),
+        (
+            r#"{"by":"R. Matos","kind":"changeover","product":"750 lemon","target":753.0}"#,
+            201,
+            "750 lemon",
+        ),
+        (
+            r#"{"by":"R. Matos","kind":"stop"}"#,
+            201,
+            "\"kind\":\"stop\"",
+        ),
+        (r#"{"by":"R. Matos","kind":"start"}"#, 409, "runs already"),
+        (
+            r#"{"by":"R. Matos","kind":"adjustment","source":"none"}"#,
+            404,
+            "no source",
+        ),
+        (
+            r#"{"by":"R. Matos","kind":"adjustment"}"#,
+            400,
+            "`source` is missing",
+        ),
+        (
+            r#"{"by":"R. Matos","kind":"changeover"}"#,
+            400,
+            "`product` is missing",
+        ),
+        (
+            r#"{"by":"R. Matos","kind":"stop","source":"07"}"#,
+            400,
+            "does not belong",
+        ),
+        (r#"{"by":" ","kind":"stop"}"#, 400, "name of the person"),
+        (r#"{"by":"R. Matos","kind":"holiday"}"#, 422, "holiday"),
+        (r#"{"by":"R. Matos","kind":"stop","extra":1}"#, 422, "extra"),
+    ] {
+        let answer = bench.send(request("POST", to, &[token, JSON], body)).await;
+        assert_eq!(answer.status.as_u16(), status, "{body}: {}", answer.body);
+        assert!(answer.body.contains(says), "{body}: {}", answer.body);
+    }
+    let denied = bench
+        .send(request("POST", to, &[JSON], r#"{"by":"x","kind":"stop"}"#))
+        .await;
+    assert_eq!(denied.status, StatusCode::UNAUTHORIZED);
+    let gone = "/api/v1/banks/none/events";
+    let answer = bench
+        .send(request(
+            "POST",
+            gone,
+            &[token, JSON],
+            r#"{"by":"x","kind":"stop"}"#,
+        ))
+        .await;
+    assert_eq!(answer.status, StatusCode::NOT_FOUND);
 }

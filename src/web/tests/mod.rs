@@ -1,7 +1,10 @@
 //! The room through its own door: requests to the router, answers checked.
 
 mod access;
+mod figures;
+mod forms;
 mod interface;
+mod order;
 mod pages;
 mod server;
 
@@ -17,10 +20,12 @@ use tokio_util::sync::CancellationToken;
 use tower::ServiceExt as _;
 
 use crate::clock::Clock;
-use crate::engine::{Command, Outcome, Snapshot, WindowValue, WindowView};
-use crate::model::Value;
-use crate::notice::{Acknowledgement, Notice, State};
-use crate::settings::{Broker, PlantSettings, Protocol, Settings, StoreSettings, WebSettings};
+use crate::engine::{Command, Outcome, Snapshot, WindowView};
+use crate::model::{LineChange, LineEvent, Value};
+use crate::notice::{Manners, Notice, Said};
+use crate::settings::{
+    Broker, Origins, PlantSettings, Protocol, Settings, StoreSettings, WebSettings,
+};
 
 use super::durations::Durations;
 use super::sample::{self, SampleHistory};
@@ -110,19 +115,28 @@ fn settings(token_file: Option<PathBuf>) -> Settings {
             listen: SocketAddr::from(([127, 0, 0, 1], 0)),
             token_file,
             tls_in_front: false,
+            certificate_file: None,
+            key_file: None,
             address: None,
         },
+        manners: Manners::default(),
         banks: Vec::new(),
         feeds: Vec::new(),
+        outlets: Vec::new(),
+        origins: Origins::default(),
     }
 }
 
-/// Answers like an engine: acknowledges open notices, gives two values per source.
+/// Answers like an engine: acknowledges open notices, gives some values per source.
 async fn engine(mut asks: mpsc::Receiver<Ask>, snapshot: watch::Receiver<Arc<Snapshot>>) {
     while let Some(Ask { who, what, reply }) = asks.recv().await {
         let now = snapshot.borrow().clone();
         let outcome = match what {
-            Command::Acknowledge { notice, comment } => {
+            Command::Notice {
+                notice,
+                deed,
+                comment,
+            } => {
                 let open = now
                     .banks
                     .iter()
@@ -130,27 +144,42 @@ async fn engine(mut asks: mpsc::Receiver<Ask>, snapshot: watch::Receiver<Arc<Sna
                     .find(|n| n.id == notice);
                 match open {
                     None => Outcome::NotFound(format!("there is no notice \"{notice}\"")),
-                    Some(found) => Outcome::Acknowledged(Arc::new(Notice {
-                        state: State::Acknowledged,
-                        acknowledged: Some(Acknowledgement {
+                    Some(found) => {
+                        let mut notice = Notice::clone(found);
+                        let at = sample::moment();
+                        let said = Said {
                             by: who,
-                            at: sample::moment(),
+                            at,
                             comment,
-                        }),
-                        ..Notice::clone(found)
-                    })),
+                        };
+                        match notice.act(deed, said, &now.plant.manners) {
+                            Ok(_) => Outcome::Notice(Arc::new(notice)),
+                            Err(why) => Outcome::Refused(why),
+                        }
+                    }
                 }
             }
+            Command::Line { change, reason, .. } => match change.source() {
+                Some(source) if &**source == "none" => {
+                    Outcome::NotFound("bank \"filler-2\" has no source \"none\"".to_owned())
+                }
+                _ if change == LineChange::Start => {
+                    Outcome::Refused("the line runs already".to_owned())
+                }
+                _ => Outcome::Line(LineEvent {
+                    at: sample::moment(),
+                    by: who,
+                    change,
+                    reason,
+                }),
+            },
+            Command::Evidence { .. } => Outcome::Refused("the sample keeps no values".to_owned()),
             Command::Windows { bank } => {
                 let sources = now.banks.get(bank.index()).map(|b| b.sources.clone());
-                let window = |name| WindowView {
+                let window = |name: crate::model::Name| WindowView {
+                    values: sample::values(&name),
                     source: name,
                     origin: Value::parse("503.0").expect("a value"),
-                    values: vec![WindowValue {
-                        taken: sample::moment(),
-                        cycle: Some(7),
-                        offset: -0.1,
-                    }],
                 };
                 let sources = sources.unwrap_or_default().into_iter();
                 Outcome::Windows(sources.map(|s| window(s.name)).collect())

@@ -4,7 +4,7 @@ use std::sync::Arc;
 
 use axum::http::StatusCode;
 
-use crate::engine::{Condition, Snapshot};
+use crate::engine::{Condition, OutletView, Snapshot};
 use crate::web::sample::{self, Story};
 
 use super::{Bench, Listening};
@@ -39,6 +39,15 @@ async fn every_page_is_whole_and_asks_nobody_else() {
         "/banks/caps",
         "/banks/filler-4",
         "/banks/sealer",
+        "/banks/filler-2/sources/07",
+        "/banks/filler-2/sources/01?from=2026-07-03T12:00&to=2026-07-03T14:00",
+        "/banks/mould-b%20bore/sources/cavity%2011",
+        "/banks/sealer/sources/01",
+        "/banks/filler-2?at=2026-07-03T14:30",
+        "/banks/filler-2?at=2026-07-01T14:30",
+        "/banks/filler-2?from=2026-07-03T12:00&to=2026-07-03T14:00",
+        "/settings",
+        "/about",
         "/notices",
         "/notices?after=filler-2-2026-0006",
         "/notices/filler-2-2026-0007",
@@ -82,8 +91,9 @@ async fn every_page_is_whole_and_asks_nobody_else() {
             "{path}: cautions"
         );
         let pictures = page.body.matches("role=\"img\"").count();
-        let described =
-            page.body.matches("<title id=").count() + page.body.matches("class=\"scale\"").count();
+        let described = page.body.matches("<title id=").count()
+            + page.body.matches("class=\"scale\"").count()
+            + page.body.matches("class=\"day\"").count();
         assert_eq!(pictures, described, "{path}: every picture has its title");
     }
 }
@@ -96,6 +106,9 @@ async fn the_plant_says_how_each_bank_stands() {
         "<strong>even</strong>",
         "<strong>spread apart</strong><span>cavity 11 spread 2.9×</span>",
         "<strong>source silent</strong><span>05</span>",
+        "<strong>3 calls</strong><span>90 days, budget 1</span>",
+        "The last day: even 5 h, apart 1",
+        "✕ refused: not a number",
         "6 of 10 values per source so far",
         "<strong>waiting</strong>",
         "Arrivals that belong to no bank",
@@ -114,8 +127,12 @@ async fn trouble_is_said_plainly() {
     now.broker =
         Condition::Trouble("connection refused at 127.0.0.1:1883, trying again in 8 s".into());
     now.store = Condition::Trouble("the disk is full".into());
-    now.outbox = 2;
-    now.outbox_trouble = Some("the broker is away".into());
+    now.outlets[0].waiting = 2;
+    now.outlets[0].trouble = Some("the broker is away".into());
+    now.outlets.push(OutletView {
+        trouble: Some("the desk answered 410".into()),
+        ..OutletView::new("desk".into())
+    });
     bench.snapshot.send_replace(Arc::new(now));
     let page = bench.page("/").await.body;
     for words in [
@@ -124,6 +141,10 @@ async fn trouble_is_said_plainly() {
         "Store trouble",
         "the disk is full",
         "2 waiting",
+        "Notices are not leaving by mqtt",
+        "Notices are not leaving by desk",
+        "the desk answered 410",
+        "Notices leave by mqtt (2 waiting), desk.",
     ] {
         assert!(page.contains(words), "{words}");
     }

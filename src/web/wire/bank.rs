@@ -6,9 +6,10 @@ use serde::Serialize;
 use utoipa::ToSchema;
 
 use crate::engine::{BankView, RefusalView, SourceView, WindowView};
-use crate::model::{Refusal, Time};
+use crate::model::{Refusal, Time, US_PER_S};
+use crate::verdict::BudgetKept;
 
-use super::{EstimateBody, LookBody, NoticeBody, finite};
+use super::{EstimateBody, LookBody, NoticeBody, WatchBody, finite};
 
 /// A bank in the list of banks.
 #[derive(Debug, Serialize, ToSchema)]
@@ -33,13 +34,15 @@ pub struct BankBody {
     pub standing: String,
     /// Names of its open notices.
     pub open_notices: Vec<String>,
-    /// Mean of all sources over the longest span.
+    /// Mean of all sources over the span that stands for now.
     pub mean: Option<f64>,
     /// Newest time of a measurement that was taken in.
     #[schema(value_type = Option<String>, format = DateTime)]
     pub newest_taken: Option<Time>,
     /// Measurements since the process started by outcome.
     pub outcomes: BTreeMap<String, u64>,
+    /// Whether the bank kept its call budget, by what people said came of its calls.
+    pub budget_kept: Option<BudgetKeptBody>,
 }
 
 /// A bank with its sources and newest looks.
@@ -52,8 +55,56 @@ pub struct BankWholeBody {
     pub sources: Vec<SourceBody>,
     /// The newest look of each span, shortest first.
     pub looks: Vec<LookBody>,
+    /// The watch; `null` where sources share no cycle, because the looks decide there.
+    pub watch: Option<WatchBody>,
     /// Its open notices, newest first.
     pub notices: Vec<NoticeBody>,
+}
+
+/// A bank's calls beside its budget.
+#[derive(Debug, Serialize, ToSchema)]
+pub struct BudgetKeptBody {
+    /// `kept`, `agrees` (with the budget, and with worse) or `broken`.
+    pub keeping: &'static str,
+    /// Calls made.
+    pub calls: u64,
+    /// Calls of which somebody said what came of them.
+    pub told: u64,
+    /// Calls with nothing found.
+    pub nothing_found: u64,
+    /// Days watched.
+    pub days: f64,
+    /// False calls that the budget allows in that time.
+    pub allowed: f64,
+    /// Lower one-sided 95 % limit of the false calls to be expected in that time (Poisson).
+    pub low: f64,
+    /// Upper limit.
+    pub high: f64,
+}
+
+impl From<&BudgetKept> for BudgetKeptBody {
+    fn from(kept: &BudgetKept) -> Self {
+        let BudgetKept {
+            calls,
+            told,
+            nothing_found,
+            days,
+            allowed,
+            low,
+            high,
+            keeping,
+        } = *kept;
+        Self {
+            keeping: keeping.word(),
+            calls,
+            told,
+            nothing_found,
+            days,
+            allowed,
+            low,
+            high,
+        }
+    }
 }
 
 /// A source, now.
@@ -81,6 +132,9 @@ pub struct SourceBody {
     pub sd_ratio: Option<EstimateBody>,
     /// The kinds of open notices that name it.
     pub named: Vec<String>,
+    /// Received minus taken, the median of the newest values, in seconds; negative where its clock is
+    /// ahead.
+    pub lag_s: Option<f64>,
 }
 
 impl BankBody {
@@ -103,6 +157,7 @@ impl BankBody {
             mean: view.mean.and_then(finite),
             newest_taken: view.newest_taken,
             outcomes: outcomes.collect(),
+            budget_kept: view.kept.as_ref().map(BudgetKeptBody::from),
         }
     }
 }
@@ -118,12 +173,19 @@ impl BankWholeBody {
                 .iter()
                 .map(|l| LookBody::from(l.as_ref()))
                 .collect(),
+            watch: WatchBody::of(view),
             notices: view
                 .open
                 .iter()
                 .map(|n| NoticeBody::from(n.as_ref()))
                 .collect(),
         }
+    }
+}
+
+impl From<&SourceView> for SourceBody {
+    fn from(view: &SourceView) -> Self {
+        source(view)
     }
 }
 
@@ -140,6 +202,7 @@ fn source(view: &SourceView) -> SourceBody {
         deviation_sigmas,
         sd_ratio,
         named,
+        lag_us,
     } = view;
     SourceBody {
         source: name.to_string(),
@@ -152,6 +215,7 @@ fn source(view: &SourceView) -> SourceBody {
         deviation_sigmas: deviation_sigmas.and_then(finite),
         sd_ratio: sd_ratio.map(Into::into),
         named: named.iter().map(|k| k.word().to_owned()).collect(),
+        lag_s: lag_us.map(|us| us as f64 / US_PER_S as f64),
     }
 }
 

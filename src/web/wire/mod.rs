@@ -6,12 +6,31 @@
 //! destructuring where it copies a struct, so that a new field cannot be forgotten.
 
 mod bank;
+mod deed;
+mod explanation;
+mod health;
+mod line;
 mod look;
 mod notice;
+mod rows;
+mod setting;
+mod watch;
 
-pub use bank::{BankBody, BankWholeBody, RefusalBody, SourceBody, WindowBody, WindowValueBody};
+pub use bank::{
+    BankBody, BankWholeBody, BudgetKeptBody, RefusalBody, SourceBody, WindowBody, WindowValueBody,
+};
+pub use deed::{AcknowledgeBody, CommentBody, EntryBody, SaidBody, ShelveBody};
+pub use explanation::{
+    CallApartBody, ExplanationBody, PartBody, PlaceBody, SpanBody, StepBody, WatchApartBody,
+    WorkedPairBody, WorkedTestBody,
+};
+pub use health::{HealthBody, OutletBody};
+pub use line::{LineEntryBody, LineEventBody, LineKind};
 pub use look::{DependenceBody, DeviationBody, DigestBody, LookBody, SourceLookBody, TestBody};
-pub use notice::{AcknowledgeBody, AcknowledgementBody, NamedSourceBody, NoticeBody, SinceBody};
+pub use notice::{AcknowledgementBody, NamedSourceBody, NoticeBody, SinceBody};
+pub use rows::Rows;
+pub use setting::SettingBody;
+pub use watch::{WatchBody, WatchPartBody};
 
 use serde::Serialize;
 use utoipa::ToSchema;

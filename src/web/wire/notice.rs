@@ -1,12 +1,13 @@
 //! Notices.
 
-use serde::{Deserialize, Serialize};
+use serde::Serialize;
 use utoipa::ToSchema;
 
 use crate::model::Time;
-use crate::notice::{Acknowledgement, NamedSource, Notice, Since};
+use crate::notice::{Acknowledgement, Adjustment, NamedSource, Notice, Since};
+use crate::verdict::{Pattern, Slip};
 
-use super::finite;
+use super::{EntryBody, EstimateBody, finite, word};
 
 /// A source that a notice names.
 #[derive(Debug, Serialize, ToSchema)]
@@ -45,6 +46,37 @@ pub struct AcknowledgementBody {
     pub at: Time,
     /// What they wrote.
     pub comment: String,
+}
+
+/// One cause for many: what in the machine's geometry explains the notice.
+#[derive(Debug, Serialize, ToSchema)]
+pub struct PatternBody {
+    /// `wave`, `slope`, `odd_from_even`, `half_from_half` or `group`.
+    pub kind: String,
+    /// What it is, for people, without its size.
+    pub words: String,
+    /// Its size in the bank's unit: a wave's amplitude, a slope's last place less its first, one part
+    /// less the other.
+    pub effect: Option<f64>,
+    /// Lower end of the interval.
+    pub low: Option<f64>,
+    /// Upper end.
+    pub high: Option<f64>,
+    /// Probability of as large a one by chance.
+    pub p: Option<f64>,
+    /// The source at which a wave is highest.
+    pub highest: Option<String>,
+    /// The configured group.
+    pub group: Option<String>,
+}
+
+/// All sources read as others.
+#[derive(Debug, Serialize, ToSchema)]
+pub struct SlipBody {
+    /// Each source reads as the one that stands so many places before it.
+    pub places: u16,
+    /// Probability of a worse fit of the earlier picture, turned.
+    pub fit: Option<f64>,
 }
 
 /// A notice.
@@ -87,8 +119,47 @@ pub struct NoticeBody {
     pub advice: String,
     /// The bank's page.
     pub url: String,
-    /// The span of the look that called.
+    /// The span of the look that called; 0 for a condition.
     pub span: usize,
+    /// Whether the condition holds, whoever has set the notice aside.
+    pub holds: bool,
+    /// Until when it is shelved.
+    #[schema(value_type = Option<String>, format = DateTime)]
+    pub shelved_until: Option<Time>,
+    /// What came of it, as a person said.
+    pub outcome: Option<String>,
+    /// Who did what, oldest first.
+    pub log: Vec<EntryBody>,
+    /// What in the machine's geometry explains it.
+    pub pattern: Option<PatternBody>,
+    /// By how many places all sources seem to have slipped.
+    pub slip: Option<SlipBody>,
+    /// How far the sources that stayed moved together since the start, in the bank's unit.
+    pub common_movement: Option<f64>,
+    /// Mean of the sources that the named ones are compared with, in the bank's unit.
+    pub even_mean: Option<f64>,
+    /// What the bank gives away in an hour, in the currency of `cost_per_unit`.
+    pub cost_per_hour: Option<f64>,
+    /// The last adjustment of a named source since it left, and what became of it.
+    pub adjustment: Option<AdjustmentBody>,
+}
+
+/// An adjustment of a named source, and what the values since say of it.
+#[derive(Debug, Serialize, ToSchema)]
+pub struct AdjustmentBody {
+    /// The source.
+    pub source: String,
+    /// When it was entered.
+    #[schema(value_type = String, format = DateTime)]
+    pub at: Time,
+    /// By how much, in the bank's unit, where that was said.
+    pub amount: Option<f64>,
+    /// Values of the source since.
+    pub values: usize,
+    /// Its deviation over those.
+    pub deviation: Option<EstimateBody>,
+    /// `not_sure`, `worked`, `too_little` or `overshot`.
+    pub effect: String,
 }
 
 impl From<&Notice> for NoticeBody {
@@ -112,6 +183,13 @@ impl From<&Notice> for NoticeBody {
             advice,
             url,
             span,
+            handling,
+            pattern,
+            slip,
+            common_movement,
+            even_mean,
+            cost_per_hour,
+            adjustment,
         } = notice;
         Self {
             id: id.to_string(),
@@ -132,6 +210,16 @@ impl From<&Notice> for NoticeBody {
             advice: advice.clone(),
             url: url.clone(),
             span: *span,
+            holds: notice.holds(),
+            shelved_until: handling.shelved_until,
+            outcome: handling.outcome.map(|o| o.word().to_owned()),
+            log: handling.entries.iter().map(EntryBody::from).collect(),
+            pattern: pattern.as_ref().map(pattern_body),
+            slip: slip.map(slip_body),
+            common_movement: common_movement.and_then(finite),
+            even_mean: even_mean.and_then(finite),
+            cost_per_hour: cost_per_hour.and_then(finite),
+            adjustment: adjustment.as_ref().map(adjustment_body),
         }
     }
 }
@@ -157,6 +245,51 @@ fn named_source(named: &NamedSource) -> NamedSourceBody {
     }
 }
 
+fn pattern_body(pattern: &Pattern) -> PatternBody {
+    let Pattern {
+        kind,
+        effect,
+        p,
+        words,
+    } = pattern;
+    PatternBody {
+        kind: kind.word().to_owned(),
+        words: words.clone(),
+        effect: finite(effect.value),
+        low: finite(effect.low),
+        high: finite(effect.high),
+        p: finite(*p),
+        highest: kind.highest().map(ToString::to_string),
+        group: kind.group().map(ToString::to_string),
+    }
+}
+
+fn adjustment_body(adjustment: &Adjustment) -> AdjustmentBody {
+    let Adjustment {
+        source,
+        at,
+        amount,
+        values,
+        deviation,
+        effect,
+    } = adjustment;
+    AdjustmentBody {
+        source: source.to_string(),
+        at: *at,
+        amount: amount.and_then(finite),
+        values: *values,
+        deviation: deviation.map(Into::into),
+        effect: word(effect),
+    }
+}
+
+fn slip_body(Slip { places, fit }: Slip) -> SlipBody {
+    SlipBody {
+        places,
+        fit: finite(fit),
+    }
+}
+
 fn since_body(
     Since {
         at,
@@ -177,15 +310,4 @@ fn acknowledgement(Acknowledgement { by, at, comment }: &Acknowledgement) -> Ack
         at: *at,
         comment: comment.clone(),
     }
-}
-
-/// What an acknowledgement says.
-#[derive(Debug, Deserialize, ToSchema)]
-#[serde(deny_unknown_fields)]
-pub struct AcknowledgeBody {
-    /// The person's name.
-    pub by: String,
-    /// Anything worth saying.
-    #[serde(default)]
-    pub comment: String,
 }

@@ -1,23 +1,17 @@
-//! The outlet for notices against a real Mosquitto: confirmed means confirmed, whatever the broker
-//! does meanwhile.
-
-mod common;
+//! The outlet to the broker, against a real Mosquitto.
 
 use std::sync::Arc;
 use std::time::Duration;
 
-use evenrow::model::{Time, US_PER_S};
-use evenrow::notice::{Delivery, Kind, NamedSource, Notice, Priority, Since, State, Way};
-use evenrow::outlets::{OutletError, Report, mqtt};
-use evenrow::settings::{Broker, PlantSettings, Protocol, Settings, StoreSettings, WebSettings};
+use evenrow::notice::State;
+use evenrow::outlets::{Report, mqtt};
+use evenrow::settings::{
+    Broker, Origins, PlantSettings, Protocol, Settings, StoreSettings, WebSettings,
+};
 use serde_json::Value;
-use tokio::sync::mpsc;
-use tokio::task::JoinHandle;
-use tokio_util::sync::CancellationToken;
 
-use common::mosquitto::{Mosquitto, Seen};
-
-const SOON: Duration = Duration::from_secs(30);
+use crate::common::mosquitto::{Mosquitto, Seen};
+use crate::parts::Outlet;
 
 fn settings(port: u16, protocol: Protocol) -> Settings {
     let broker = Broker {
@@ -51,97 +45,20 @@ fn settings(port: u16, protocol: Protocol) -> Settings {
             listen: ([127, 0, 0, 1], 0).into(),
             token_file: None,
             tls_in_front: false,
+            certificate_file: None,
+            key_file: None,
             address: None,
         },
         banks: Vec::new(),
         feeds: Vec::new(),
+        outlets: Vec::new(),
+        origins: Origins::default(),
+        manners: evenrow::notice::Manners::default(),
     }
 }
 
-fn delivery(number: u64, id: &str, state: State) -> Delivery {
-    let at = Time::from_us(i64::try_from(number).expect("small") * US_PER_S);
-    let notice = Notice {
-        id: id.into(),
-        plant: "Quay side".into(),
-        bank: "filler 2".into(),
-        kind: Kind::LevelApart,
-        state,
-        priority: Priority::Medium,
-        sources: vec![NamedSource {
-            source: "07".into(),
-            deviation: -1.25,
-            low: -1.5,
-            high: -1.0,
-        }],
-        unit: "g".into(),
-        since: Since {
-            at,
-            earliest: at,
-            latest: at,
-        },
-        raised: at,
-        changed: at,
-        returned: None,
-        acknowledged: None,
-        subject: "filler 2: 07 low by 1.3 g".to_owned(),
-        text: "Source 07 is low.".to_owned(),
-        advice: "Check valve 07.".to_owned(),
-        url: "http://127.0.0.1:7310/banks/filler%202".to_owned(),
-        span: 40,
-    };
-    Delivery {
-        number,
-        way: Way::Mqtt,
-        at,
-        notice: Arc::new(notice),
-    }
-}
-
-/// A running outlet and the ends of its channels.
-struct Outlet {
-    deliveries: mpsc::Sender<Delivery>,
-    reports: mpsc::Receiver<Report>,
-    shutdown: CancellationToken,
-    task: JoinHandle<Result<(), OutletError>>,
-}
-
-impl Outlet {
-    fn start(settings: Settings) -> Self {
-        let (deliveries, taken) = mpsc::channel(4);
-        let (reports, received) = mpsc::channel(1);
-        let shutdown = CancellationToken::new();
-        let run = mqtt::run(Arc::new(settings), taken, reports, shutdown.clone());
-        Self {
-            deliveries,
-            reports: received,
-            shutdown,
-            task: tokio::spawn(run),
-        }
-    }
-
-    async fn send(&self, number: u64, id: &str, state: State) {
-        let sent = tokio::time::timeout(SOON, self.deliveries.send(delivery(number, id, state)));
-        assert!(
-            sent.await.is_ok_and(|s| s.is_ok()),
-            "the outlet keeps the house waiting"
-        );
-    }
-
-    async fn report(&mut self) -> Report {
-        let report = tokio::time::timeout(SOON, self.reports.recv()).await;
-        report
-            .expect("a report comes in time")
-            .expect("the outlet runs")
-    }
-
-    async fn end(self) {
-        self.shutdown.cancel();
-        let ended = tokio::time::timeout(Duration::from_secs(5), self.task).await;
-        assert_eq!(
-            ended.expect("it ends in time").expect("it does not panic"),
-            Ok(())
-        );
-    }
+fn start(settings: Settings) -> Outlet {
+    Outlet::start(|taken, reports, end| mqtt::run(Arc::new(settings), taken, reports, end))
 }
 
 const STATUS: &str = "evenrow/Quay-side/status";
@@ -157,7 +74,7 @@ async fn a_notice_stands_on_its_topic_until_it_is_over_in_both_protocols() {
     for protocol in [Protocol::V5, Protocol::V4] {
         let broker = Mosquitto::start();
         let heard = broker.listen("evenrow/#");
-        let mut outlet = Outlet::start(settings(broker.port(), protocol));
+        let mut outlet = start(settings(broker.port(), protocol));
         heard.wait("running", |s| status(s, "running"));
         outlet.send(1, "a", State::Unacknowledged).await;
         assert_eq!(outlet.report().await, Report::Delivered(1));
@@ -185,7 +102,7 @@ async fn a_notice_stands_on_its_topic_until_it_is_over_in_both_protocols() {
 #[tokio::test(flavor = "multi_thread")]
 async fn without_a_broker_the_house_is_told_once_and_served_and_all_leaves_later_in_order() {
     let mut broker = Mosquitto::absent();
-    let mut outlet = Outlet::start(settings(broker.port(), Protocol::V5));
+    let mut outlet = start(settings(broker.port(), Protocol::V5));
     for number in 1..=40 {
         let (id, states) = (
             ["a", "b"][(number % 2) as usize],
@@ -226,7 +143,7 @@ async fn without_a_broker_the_house_is_told_once_and_served_and_all_leaves_later
 async fn what_was_sent_and_not_confirmed_is_sent_again() {
     let mut broker = Mosquitto::start();
     let heard = broker.listen("evenrow/#");
-    let mut outlet = Outlet::start(settings(broker.port(), Protocol::V5));
+    let mut outlet = start(settings(broker.port(), Protocol::V5));
     heard.wait("running", |s| status(s, "running"));
     // The broker takes bytes and does nothing more; then it is gone without a word.
     broker.freeze();
@@ -257,7 +174,7 @@ async fn what_was_sent_and_not_confirmed_is_sent_again() {
 async fn a_vanished_outlet_is_told_by_its_last_will() {
     let broker = Mosquitto::start();
     let heard = broker.listen("evenrow/#");
-    let outlet = Outlet::start(settings(broker.port(), Protocol::V4));
+    let outlet = start(settings(broker.port(), Protocol::V4));
     heard.wait("running", |s| status(s, "running"));
     outlet.task.abort();
     heard.wait("the last will", |s| status(s, "lost"));
@@ -270,7 +187,7 @@ async fn a_broker_that_does_not_allow_notices_is_named_as_the_cause() {
     let broker = Mosquitto::start_with(settings_of_broker, |folder| {
         std::fs::write(folder.join("acl"), acl).expect("the list is written");
     });
-    let mut outlet = Outlet::start(settings(broker.port(), Protocol::V5));
+    let mut outlet = start(settings(broker.port(), Protocol::V5));
     outlet.send(7, "a", State::Unacknowledged).await;
     let Report::NotDelivered { number, why } = outlet.report().await else {
         panic!("the broker does not allow it");
@@ -283,13 +200,13 @@ async fn a_broker_that_does_not_allow_notices_is_named_as_the_cause() {
 #[tokio::test(flavor = "multi_thread")]
 async fn an_end_without_a_broker_is_quick_and_an_end_of_the_deliveries_is_an_end() {
     let broker = Mosquitto::absent();
-    let outlet = Outlet::start(settings(broker.port(), Protocol::V5));
+    let outlet = start(settings(broker.port(), Protocol::V5));
     outlet.send(1, "a", State::Unacknowledged).await;
     outlet.end().await;
 
     let broker = Mosquitto::start();
     let heard = broker.listen("evenrow/#");
-    let outlet = Outlet::start(settings(broker.port(), Protocol::V5));
+    let outlet = start(settings(broker.port(), Protocol::V5));
     heard.wait("running", |s| status(s, "running"));
     outlet.send(2, "a", State::Unacknowledged).await;
     let Outlet {
