@@ -51,6 +51,8 @@ use waiting::Inputs;
 /// Turns take at most this many arrivals: enough to drain a backlog at the disk's pace, few enough
 /// to answer a person within a fraction of a second.
 const MOST_ARRIVALS: usize = 1_000;
+/// Measurements after which a turn takes no further message: one message may carry thousands of them.
+const MOST_MEASUREMENTS: usize = 20_000;
 
 /// Commands and reports that may wait. Each sender waits when this is full.
 const MOST_WAITING: usize = 64;

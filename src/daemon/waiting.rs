@@ -12,7 +12,7 @@ use crate::outlets::Report;
 use crate::web::Ask;
 
 use super::house::{House, Pending};
-use super::{MOST_ARRIVALS, MOST_WAITING, RunError};
+use super::{MOST_ARRIVALS, MOST_MEASUREMENTS, MOST_WAITING, RunError};
 
 /// The clock on the wall can be set; whatever is due is looked for again after this long.
 const LONGEST_IDLE: Duration = Duration::from_secs(1);
@@ -86,14 +86,37 @@ pub(super) async fn turns(
 impl Inputs {
     async fn next(&mut self, idle: Option<Duration>, end: &CancellationToken) -> Came {
         let idle = idle.map_or(LONGEST_IDLE, |i| i.clamp(SHORTEST_IDLE, LONGEST_IDLE));
-        let (mut feed, mut reports) = (Vec::new(), Vec::new());
+        let mut reports = Vec::new();
         tokio::select! {
             () = end.cancelled() => Came::End,
             Some(ask) = self.asks.recv() => Came::Ask(ask),
             1.. = self.reports.recv_many(&mut reports, MOST_WAITING) => Came::Reports(reports),
-            1.. = self.feed.recv_many(&mut feed, MOST_ARRIVALS) => Came::Feed(feed),
+            Some(first) = self.feed.recv() => Came::Feed(self.with_waiting(first)),
             () = tokio::time::sleep(idle) => Came::Due,
         }
+    }
+}
+
+impl Inputs {
+    /// What waits behind the first, as far as one turn may hold.
+    fn with_waiting(&mut self, first: FromBroker) -> Vec<FromBroker> {
+        let mut held = measurements_in(&first);
+        let mut all = vec![first];
+        while all.len() < MOST_ARRIVALS && held < MOST_MEASUREMENTS {
+            let Ok(next) = self.feed.try_recv() else {
+                break;
+            };
+            held += measurements_in(&next);
+            all.push(next);
+        }
+        all
+    }
+}
+
+fn measurements_in(one: &FromBroker) -> usize {
+    match one {
+        FromBroker::Arrival(arrival) => arrival.measurements.len(),
+        FromBroker::Condition(_) => 0,
     }
 }
 

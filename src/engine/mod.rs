@@ -37,6 +37,7 @@ pub use event::{Command, Due, Effect, Event, Judged, Onward, Outcome, Record, Ti
 pub use evidence::{Evidence, Premises, WatchSaid};
 pub use history::{History, HistoryError, Page};
 pub use load::Load;
+pub use natural::natural;
 pub use papers::{Raised, Tally};
 pub use restore::RestoreError;
 pub use snapshot::{

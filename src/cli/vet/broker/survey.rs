@@ -6,6 +6,7 @@
 
 use std::collections::{BTreeMap, HashSet};
 
+use crate::engine::natural;
 use crate::intake::arrival::{Arrival, Decoder, Receipt};
 use crate::intake::mqtt::Overheard;
 use crate::intake::nodes::Nodes;
@@ -272,10 +273,10 @@ impl BankHeard {
         }
     }
 
-    /// The sources in natural order: those that are numbers by their number.
+    /// The sources in natural order.
     pub(super) fn in_order(&self) -> Vec<&Name> {
         let mut names: Vec<&Name> = self.sources.keys().collect();
-        names.sort_by_key(|name| (name.parse::<u64>().unwrap_or(u64::MAX), (*name).clone()));
+        names.sort_by(|a, b| natural(a, b));
         names
     }
 }
