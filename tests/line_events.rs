@@ -106,8 +106,10 @@ fn a_changeover_begins_afresh_and_what_was_learnt_comes_back() {
     line.run(900, |s, _| (247.0 + 0.1 * s as f64 / 12.0, 1.5));
     assert_eq!(line.raised().len(), 0);
     assert!(taken(&enter(&mut line, changeover("A", "503"))));
+    // What was learnt for A is believed after a hundred cycles in which its noise is what it was.
+    line.run(150, even);
     assert_eq!(progress(&mut line), Progress::Watching, "A is known");
-    line.run(600, even);
+    line.run(450, even);
     assert_eq!(line.raised().len(), 0);
 }
 

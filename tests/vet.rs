@@ -46,7 +46,8 @@ fn shipped_configurations_are_summed_up() {
         "plant Quayside",
         "bank filler-2",
         "by slots of 10 s",
-        "7.72e-7 for level",
+        "the watch, on every cycle",
+        "3.86e-7 for level",
         "1 per 90 days",
     ];
     check(&sample, 0, &words, &[]);

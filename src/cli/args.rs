@@ -7,7 +7,9 @@ use std::net::SocketAddr;
 use std::path::PathBuf;
 use std::time::Duration;
 
-use clap::{Args, ValueEnum};
+use clap::{ArgGroup, Args, ValueEnum};
+
+use crate::model::Time;
 
 use crate::settings::duration_from_words;
 
@@ -123,6 +125,80 @@ pub struct RehearseArgs {
     /// Recordings in the order in which they were made; - for standard input
     #[arg(required = true, value_name = "RECORDING")]
     pub recordings: Vec<PathBuf>,
+}
+
+/// Options of `evenrow explain`.
+#[derive(Args, Clone, Debug)]
+pub struct ExplainArgs {
+    /// The configuration (TOML); the daemon that runs with it is asked, else its store is read
+    #[arg(long, value_name = "FILE")]
+    pub config: PathBuf,
+    /// The bank
+    pub bank: String,
+    /// The newest call (else look) at or before this time, for example 2026-03-01T06:00:00Z; the newest
+    /// call when it is missing
+    #[arg(long, value_name = "TIME", value_parser = moment, conflicts_with = "notice")]
+    pub at: Option<Time>,
+    /// The call that raised this notice
+    #[arg(long, value_name = "ID")]
+    pub notice: Option<String>,
+    /// Also write the values of the windows into this file
+    #[arg(long, value_name = "FILE")]
+    pub csv: Option<PathBuf>,
+    /// A token of the daemon, where it asks for one to look
+    #[arg(long, value_name = "FILE")]
+    pub token_file: Option<PathBuf>,
+    /// Write one JSON object instead of text
+    #[arg(long)]
+    pub json: bool,
+}
+
+/// A time in RFC 3339.
+fn moment(text: &str) -> Result<Time, String> {
+    Time::parse_rfc3339(text)
+        .map_err(|e| format!("it must be a time like 2026-03-01T06:00:00Z: {e}"))
+}
+
+/// Options of `evenrow plan`.
+#[derive(Args, Clone, Debug)]
+#[command(group(ArgGroup::new("noise").required(true).args(["sd", "recording"])))]
+pub struct PlanArgs {
+    /// The configuration (TOML); its broker, store and port are not touched
+    #[arg(long, value_name = "FILE")]
+    pub config: PathBuf,
+    /// The bank to plan for; needed when there are several
+    #[arg(long, value_name = "NAME")]
+    pub bank: Option<String>,
+    /// Standard deviation of single values within a source, in the bank's unit
+    #[arg(long, value_name = "X", requires = "cycle", value_parser = above_zero)]
+    pub sd: Option<f64>,
+    /// Time between the values of a source, for example 4s or 500ms
+    #[arg(long, value_name = "DURATION", requires = "sd", value_parser = interval_us)]
+    pub cycle: Option<i64>,
+    /// Learn the standard deviation, the correlation of neighbours and the time between values from this
+    /// recording instead
+    #[arg(long, value_name = "FILE", conflicts_with_all = ["sd", "cycle"])]
+    pub recording: Option<PathBuf>,
+    /// Also draw "How soon is a drift found?" into this file
+    #[arg(long, value_name = "FILE.svg")]
+    pub picture: Option<PathBuf>,
+    /// Write one JSON object instead of tables
+    #[arg(long)]
+    pub json: bool,
+}
+
+/// A size is a plain number above zero.
+fn above_zero(text: &str) -> Result<f64, String> {
+    match text.parse::<f64>() {
+        Ok(size) if size.is_finite() && size > 0.0 => Ok(size),
+        _ => Err("it must be a number above 0, for example 1.2".to_owned()),
+    }
+}
+
+/// A length of time above zero, in microseconds.
+fn interval_us(text: &str) -> Result<i64, String> {
+    let read = duration_from_words(text).filter(|us| *us > 0);
+    read.ok_or_else(|| "it must be a time with its unit, for example 4s or 500ms".to_owned())
 }
 
 /// Options of `evenrow demo`.

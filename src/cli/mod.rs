@@ -7,8 +7,10 @@ mod ask;
 pub mod configuration;
 pub mod demo;
 pub mod exit;
+mod explain;
 mod handover;
 pub mod log;
+pub mod plan;
 pub mod rehearse;
 mod send_test;
 pub mod signals;
@@ -39,6 +41,10 @@ enum Command {
     Demo(args::DemoArgs),
     /// Recorded measurements through the same engine, as fast as it goes
     Rehearse(args::RehearseArgs),
+    /// A look and a call taken apart so that they can be repeated by hand
+    Explain(args::ExplainArgs),
+    /// Before trusting a setting: what drift is found, how surely and how soon
+    Plan(args::PlanArgs),
     /// What one shift leaves to the next: calls, answers, line events, figures; HTML to print, or JSON
     Handover(args::HandoverArgs),
     /// Check a configuration: every fault at once, with its line and what to do
@@ -60,6 +66,8 @@ fn run(cli: Cli) -> Exit {
         #[cfg(feature = "demo")]
         Command::Demo(args) => demo::run(args),
         Command::Rehearse(args) => rehearse::run(args),
+        Command::Explain(args) => explain::run(args),
+        Command::Plan(args) => plan::run(args),
         Command::Handover(args) => handover::run(args),
         Command::Vet(args) => vet::run(args),
     }

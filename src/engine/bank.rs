@@ -12,6 +12,7 @@ use crate::verdict::{Asked, Examination, Look, Need, Participant, examine};
 use crate::window::{Accepted, Arriving, Windows};
 
 use super::conditions::Standing;
+use super::evidence::Premises;
 use super::incident::Incident;
 use super::judge::Senses;
 use super::line::Line;
@@ -103,6 +104,8 @@ pub struct Watched {
     pub unsaved: bool,
     pub next_silence_check: Option<Time>,
     pub last_checkpoint: Option<Time>,
+    /// What the look that is under way rests on.
+    pub premises: Option<Premises>,
     /// What is only sensed, and begins afresh with the process.
     pub senses: Senses,
 }
@@ -145,6 +148,7 @@ impl Watched {
             unsaved: false,
             next_silence_check: None,
             last_checkpoint: None,
+            premises: None,
             senses: Senses::default(),
         };
         let listed = match &watched.bank.sources {
@@ -364,6 +368,18 @@ impl Watched {
 
     /// Examines the windows without consequences; a crossing of the watch decides what is called.
     pub fn examine(&self, now: Time, need: Need, crossing: Option<&Crossing>) -> Examination {
+        let who = self.participants();
+        let asked = Asked {
+            at: now,
+            need,
+            interval_us: self.slowest_interval_us(),
+            crossing,
+        };
+        examine(&self.bank, &self.state.windows, &who, asked)
+    }
+
+    /// The sources that a look compares, in display order.
+    pub fn participants(&self) -> Vec<Participant> {
         let takes_part = |s: &SourceIx| self.state.sources[s.index()].takes_part();
         let participant = |s: SourceIx| Participant {
             source: s,
@@ -375,19 +391,8 @@ impl Watched {
             silent: self.state.sources[s.index()].silent,
             usual: self.usual(s),
         };
-        let who: Vec<Participant> = self
-            .display_order()
-            .into_iter()
-            .filter(takes_part)
-            .map(participant)
-            .collect();
-        let asked = Asked {
-            at: now,
-            need,
-            interval_us: self.slowest_interval_us(),
-            crossing,
-        };
-        examine(&self.bank, &self.state.windows, &who, asked)
+        let in_order = self.display_order().into_iter();
+        in_order.filter(takes_part).map(participant).collect()
     }
 
     /// The usual time between values of a source: the median over the sources.
@@ -404,7 +409,7 @@ impl Watched {
     }
 
     /// The time between values of the slowest source that delivers.
-    fn slowest_interval_us(&self) -> Option<i64> {
+    pub fn slowest_interval_us(&self) -> Option<i64> {
         let sources = self.state.sources.iter().zip(self.state.windows.rings());
         let delivers = sources.filter(|(s, _)| s.takes_part() && !s.silent);
         delivers.filter_map(|(_, r)| usual_interval_us(r)).max()

@@ -38,6 +38,10 @@ impl Engine {
                 Some(b) => Outcome::Windows(b.window_views()),
                 None => no_bank(),
             }),
+            Command::Evidence { bank } => Done::answer(match self.banks.get(bank.index()) {
+                Some(b) => Outcome::Evidence(Box::new(b.evidence_now(now))),
+                None => no_bank(),
+            }),
             Command::Notice {
                 notice,
                 deed,

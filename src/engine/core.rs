@@ -319,6 +319,8 @@ impl Engine {
         now: Time,
         effects: &mut Vec<Effect>,
     ) {
+        let bank = &mut self.banks[b];
+        let premises = bank.premises.take();
         let bank = &self.banks[b];
         let name = bank.bank.name.clone();
         for look in &looked.looks {
@@ -330,12 +332,11 @@ impl Engine {
         for (notice, freshness) in looked.changed {
             effects.push(Effect::Keep(Record::Notice(notice.clone())));
             if freshness == Freshness::Raised
-                && let Some(look) = looked.looks.iter().find(|l| l.span == notice.span)
+                && let Some(premises) = &premises
             {
                 effects.push(Effect::Keep(Record::Evidence {
                     notice: notice.id.clone(),
-                    look: look.clone(),
-                    windows: bank.window_views(),
+                    evidence: Box::new(bank.evidence(&looked.looks, premises)),
                 }));
             }
         }

@@ -9,6 +9,7 @@ use crate::notice::{Deed, Delivery, Kind, Notice, Trouble};
 use crate::verdict::{Digest, Look};
 
 use super::condition::{Condition, Part};
+use super::evidence::Evidence;
 use super::snapshot::WindowView;
 
 /// Links a command to the person who waits for its answer; only the daemon knows who that is.
@@ -120,6 +121,11 @@ pub enum Command {
         /// Which bank.
         bank: BankIx,
     },
+    /// What a look at the bank would rest on now, with that look. Changes nothing.
+    Evidence {
+        /// Which bank.
+        bank: BankIx,
+    },
 }
 
 /// The answer to a command.
@@ -131,6 +137,8 @@ pub enum Outcome {
     Line(LineEvent),
     /// The bank's windows, sources in display order.
     Windows(Vec<WindowView>),
+    /// A look taken just now, and what it rests on.
+    Evidence(Box<Evidence>),
     /// There is no such thing; says what.
     NotFound(String),
     /// It cannot be done now; says why.
@@ -182,10 +190,8 @@ pub enum Record {
     Evidence {
         /// [`Notice::id`].
         notice: Name,
-        /// The look that called.
-        look: Arc<Look>,
-        /// The windows then.
-        windows: Vec<WindowView>,
+        /// What the call rests on.
+        evidence: Box<Evidence>,
     },
     /// Into the outbox.
     Delivery(Delivery),

@@ -4,6 +4,8 @@ use crate::model::{LineEvent, Time};
 use crate::notice::Notice;
 use crate::verdict::{Digest, Look};
 
+use super::evidence::Evidence;
+
 /// Why the past could not be read.
 #[derive(Clone, Debug, PartialEq, Eq, thiserror::Error)]
 #[error("the store could not be read: {0}")]
@@ -75,4 +77,10 @@ pub trait History: Send + Sync {
     /// # Errors
     /// When the store cannot be read.
     fn notice(&self, id: &str) -> Result<Option<Notice>, HistoryError>;
+
+    /// What a notice's call rested on; `None` when there is no such notice, or nothing was kept with it.
+    ///
+    /// # Errors
+    /// When the store cannot be read.
+    fn evidence(&self, id: &str) -> Result<Option<Evidence>, HistoryError>;
 }

@@ -58,6 +58,7 @@ impl Watched {
         self.state.last_look = Some(now);
         self.follow_pace(now);
         self.learn_places();
+        self.premises = Some(self.premises_of(now, None));
         let exam = self.examine(now, Need::WholeSpan, None);
         self.conclude(plant, now, exam)
     }

@@ -11,6 +11,7 @@ mod condition;
 mod conditions;
 mod core;
 mod event;
+mod evidence;
 mod history;
 mod incident;
 mod judge;
@@ -32,6 +33,7 @@ mod watching;
 pub use self::core::Engine;
 pub use condition::{Condition, Part};
 pub use event::{Command, Due, Effect, Event, Judged, Onward, Outcome, Record, Ticket, Turn};
+pub use evidence::{Evidence, Premises, WatchSaid};
 pub use history::{History, HistoryError, Page};
 pub use load::Load;
 pub use papers::{Raised, Tally};
@@ -41,3 +43,4 @@ pub use snapshot::{
     WindowValue, WindowView,
 };
 pub use view::shown_look;
+pub use watching::watch_terms;

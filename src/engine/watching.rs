@@ -113,6 +113,7 @@ impl Watched {
     }
 
     fn call(&mut self, plant: &Plant, now: Time, crossing: &Crossing) -> Looked {
+        self.premises = Some(self.premises_of(now, Some(crossing)));
         let exam = self.examine(now, Need::WholeSpan, Some(crossing));
         self.conclude(plant, now, exam)
     }
@@ -128,7 +129,7 @@ impl Watched {
 
     /// Thresholds for the bank's margins and budget at the rate of cycles they hold for.
     pub fn retune(&mut self) {
-        let terms = terms(&self.bank, self.state.pace.interval_us);
+        let terms = watch_terms(&self.bank, self.state.pace.interval_us);
         if let Some(watch) = &mut self.state.watch {
             watch.tune(terms);
         }
@@ -149,11 +150,12 @@ impl Watched {
 /// A watch for a bank that nothing is known of; `None` where the looks decide for good.
 pub fn watch_for(bank: &Bank) -> Option<Watch> {
     let watched = bank.is_watched();
-    watched.then(|| Watch::new(terms(bank, None)))
+    watched.then(|| Watch::new(watch_terms(bank, None)))
 }
 
-/// Before the bank's rate of cycles is known, one cycle a look stands in; the look decides then.
-fn terms(bank: &Bank, interval_us: Option<i64>) -> Terms {
+/// What the watch must know of a bank whose cycles are `interval_us` apart. Before that is known, one
+/// cycle a look stands in; the look decides then.
+pub fn watch_terms(bank: &Bank, interval_us: Option<i64>) -> Terms {
     let interval_us = interval_us.unwrap_or(bank.look_every_us);
     Terms {
         margin: bank.margin,

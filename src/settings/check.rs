@@ -278,7 +278,7 @@ pub(super) fn unfit(name: &str) -> Option<String> {
     }
 }
 
-/// Reads a duration with its unit, in microseconds; a day has 24 hours. `None` when it is none.
+/// Reads a duration ("30s", "1.5 s", "5min") as microseconds; a day has 24 hours. `None` when it is none.
 pub fn duration_us(text: &str) -> Option<i64> {
     let span = SpanParser::new().parse_span(text.trim()).ok()?;
     let duration = span.to_duration(SpanRelativeTo::days_are_24_hours()).ok()?;

@@ -4,7 +4,7 @@ use std::sync::Arc;
 
 use serde::de::DeserializeOwned;
 
-use crate::engine::{History, HistoryError, Page};
+use crate::engine::{Evidence, History, HistoryError, Page};
 use crate::model::{LineEvent, Time};
 use crate::notice::Notice;
 use crate::verdict::{Digest, Look};
@@ -176,5 +176,9 @@ impl History for Past {
 
     fn notice(&self, id: &str) -> Result<Option<Notice>, HistoryError> {
         self.get(&keys::notice(id)).map_err(wrong)
+    }
+
+    fn evidence(&self, id: &str) -> Result<Option<Evidence>, HistoryError> {
+        self.get(&keys::evidence(id)).map_err(wrong)
     }
 }

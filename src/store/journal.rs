@@ -177,12 +177,8 @@ impl<S: Shelf> Journal<S> {
                 self.replace(ops, keys::notice(&notice.id), &payload)?;
                 self.put(ops, keys::raised(notice.raised, &notice.id), &[]);
             }
-            Record::Evidence {
-                notice,
-                look,
-                windows,
-            } => {
-                let payload = to_payload(&(look, windows)).map_err(encode)?;
+            Record::Evidence { notice, evidence } => {
+                let payload = to_payload(evidence).map_err(encode)?;
                 self.replace(ops, keys::evidence(notice), &payload)?;
             }
             Record::Delivery(delivery) => {

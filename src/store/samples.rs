@@ -2,8 +2,11 @@
 
 use std::sync::Arc;
 
-use crate::engine::{Event, Record, Turn, WindowValue, WindowView};
-use crate::model::{BankIx, Measurement, Name, Time, US_PER_S, Value};
+use crate::engine::{Event, Evidence, Premises, Record, Turn, WindowValue, WindowView};
+use crate::model::{
+    Bank, BankIx, Budget, Characteristic, Layout, Measurement, Name, Offsets, Pairing, Sources,
+    Time, US_PER_S, Value,
+};
 use crate::notice::{Delivery, Kind, Notice, Priority, Since, State, Way};
 use crate::verdict::{Digest, Finding, Look, Method, TestEntry};
 
@@ -160,7 +163,56 @@ pub(super) fn evidence(notice: &str, values: usize) -> Record {
     };
     Record::Evidence {
         notice: notice.into(),
-        look: look("filler-2", at(0), 160),
-        windows: (1..=12).map(window).collect(),
+        evidence: Box::new(Evidence {
+            looks: vec![look("filler-2", at(0), 160)],
+            windows: (1..=12).map(window).collect(),
+            premises: premises(),
+        }),
+    }
+}
+
+fn premises() -> Premises {
+    Premises {
+        at: at(0),
+        bank: bank(),
+        who: Vec::new(),
+        fresh_from: Vec::new(),
+        closed_to: 640,
+        interval_us: Some(US_PER_S),
+        crossing: None,
+        watch: None,
+        product: None,
+        line_events: Vec::new(),
+    }
+}
+
+fn bank() -> Bank {
+    Bank {
+        name: "filler-2".into(),
+        equipment: None,
+        characteristic: Characteristic {
+            name: "net content".into(),
+            unit: "g".into(),
+            resolution: Some(0.1),
+            target: None,
+            declared: None,
+            lower: None,
+            upper: None,
+        },
+        sources: Sources::Discover { most: 12 },
+        pairing: Pairing::Cycle,
+        spans: vec![160],
+        look_every_us: 30 * US_PER_S,
+        margin: 0.8,
+        spread_margin: 1.5,
+        budget: Budget::new(1.0, 90.0).expect("a budget"),
+        wait_cycles: 3,
+        silent_after_us: None,
+        oldest_us: 30 * 86_400 * US_PER_S,
+        layout: Layout::Row,
+        groups: Vec::new(),
+        cost_per_unit: None,
+        reference: None,
+        offsets: Offsets::None,
     }
 }

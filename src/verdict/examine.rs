@@ -1,5 +1,7 @@
 //! The look itself: every span examined, and what is called.
 
+use serde::{Deserialize, Serialize};
+
 use crate::model::{Bank, Name, Pairing, SourceIx, Time};
 use crate::stats;
 use crate::window::Windows;
@@ -19,7 +21,7 @@ use super::watch::Crossing;
 const FEWEST_INDEPENDENT: f64 = 4.0;
 
 /// One source as an examination sees it.
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub struct Participant {
     /// Which.
     pub source: SourceIx,
@@ -42,7 +44,8 @@ pub struct Call {
     pub named: Vec<SourceIx>,
     /// Everybody they were compared with.
     pub reference: Vec<SourceIx>,
-    /// The span of the look that called, or the shortest that holds what the watch called on.
+    /// The span of the look that called, or that of the look which says most plainly what the watch called
+    /// on.
     pub span: usize,
     /// Since when, as the watch has it; `None` when a look called.
     pub began: Option<Began>,
@@ -129,7 +132,7 @@ pub fn examine(bank: &Bank, windows: &Windows, who: &[Participant], asked: Asked
         .map(|call| look.party().name_again(&data, call, known))
         .collect();
     let crossed = crossing.map(|c| {
-        let call = look.call_of_crossing(&data, c);
+        let call = look.call_of_crossing(&spans, c);
         look.party().name_again(&data, call, known)
     });
     Examination {
@@ -304,8 +307,21 @@ impl Looking<'_> {
         (0..cut.sources.len()).map(one).collect()
     }
 
+    /// The span whose look says most plainly what the watch called on.
+    fn most_telling(&self, spans: &[Seen], aspect: Aspect) -> usize {
+        let p_of = |look: &Look| match aspect {
+            Aspect::Level => look.level_test().map(|t| t.p_paid),
+            Aspect::Spread => look.spread_test().map(|t| t.p_paid),
+        };
+        let judged = spans
+            .iter()
+            .filter_map(|s| Some((p_of(&s.look)?, s.look.span)));
+        let plainest = judged.min_by(|a, b| a.0.total_cmp(&b.0));
+        plainest.map_or_else(|| self.bank.window_length(), |(_, span)| span)
+    }
+
     /// What a crossing of the watch calls before the values since its start are asked for the names.
-    fn call_of_crossing(&self, data: &Data, crossing: &Crossing) -> Call {
+    fn call_of_crossing(&self, spans: &[Seen], crossing: &Crossing) -> Call {
         let leads = |s: &SourceIx| crossing.leading.contains(s);
         let all = self.who.iter().map(|p| p.source);
         let (named, rest): (Vec<SourceIx>, Vec<SourceIx>) = all.partition(leads);
@@ -313,7 +329,7 @@ impl Looking<'_> {
             aspect: crossing.aspect,
             reference: if rest.is_empty() { named.clone() } else { rest },
             named,
-            span: self.span_since(data, crossing.start.place),
+            span: self.most_telling(spans, crossing.aspect),
             began: Some(Began {
                 start: crossing.start,
                 earliest: crossing.earliest,
@@ -321,17 +337,6 @@ impl Looking<'_> {
             }),
             causes: Causes::default(),
         }
-    }
-
-    /// The shortest span that holds the values since a place, or the longest there is.
-    fn span_since(&self, data: &Data, start: i64) -> usize {
-        let since = data.since(start);
-        let values = since.map_or(usize::MAX, |d| {
-            d.columns().iter().map(Vec::len).max().unwrap_or(0)
-        });
-        let spans = &self.bank.spans;
-        let holds = spans.iter().copied().find(|s| *s >= values);
-        holds.unwrap_or_else(|| self.bank.window_length())
     }
 }
 

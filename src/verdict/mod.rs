@@ -27,6 +27,7 @@ mod steps;
 mod track;
 mod usual;
 pub mod watch;
+mod worked;
 
 pub use adjusted::{Effect, FEWEST_AFTER, effect_of_adjustment};
 pub use advice::{Standing, Suggestion, cost_per_hour, suggest};
@@ -45,3 +46,4 @@ pub use track::{
     values_to_clear,
 };
 pub use usual::{Usual, learn_usual};
+pub use worked::{Step, Worked, WorkedPair, WorkedTest, work_through, work_through_since};

@@ -119,7 +119,7 @@ fn step_free(flat: &[Vec<f64>], factor: f64) -> Option<TestEntry> {
 
 /// Values per source that the search for a step costs; chosen by simulation (`tests/look_rates.rs`): with
 /// it the realised rate of the deciding test stays below the nominal one from 10 values a source on.
-const SEARCH_COST: f64 = 3.0;
+pub const SEARCH_COST: f64 = 3.0;
 
 fn even_in_spread(flat: &[Vec<f64>]) -> Vec<bool> {
     let groups: Vec<&[f64]> = flat.iter().map(Vec::as_slice).collect();

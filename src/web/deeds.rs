@@ -42,7 +42,7 @@ pub async fn submit(
             Err(_) => Err(Problem::not_found(&why)),
         },
         Outcome::Refused(why) => Err(Problem::conflict(&why)),
-        Outcome::Windows(_) | Outcome::Line(_) => {
+        Outcome::Windows(_) | Outcome::Line(_) | Outcome::Evidence(_) => {
             Err(Problem::internal("the answer was to another question"))
         }
     }

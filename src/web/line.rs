@@ -39,7 +39,7 @@ pub async fn submit(app: &App, name: &str, entry: &LineEntryBody) -> Result<Line
         Outcome::Line(event) => Ok(event),
         Outcome::NotFound(why) => Err(Problem::not_found(&why)),
         Outcome::Refused(why) => Err(Problem::conflict(&why)),
-        Outcome::Notice(_) | Outcome::Windows(_) => {
+        Outcome::Notice(_) | Outcome::Windows(_) | Outcome::Evidence(_) => {
             Err(Problem::internal("the answer was to another question"))
         }
     }

@@ -46,6 +46,7 @@ mod then;
 pub mod tokens;
 pub mod wire;
 
+pub use api::explain::{of_notice as explain_notice, which as explain_bank};
 pub use durations::Durations;
 pub use pictures::enclosed::picture_of;
 pub use server::{ServeError, serve};

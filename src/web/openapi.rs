@@ -4,7 +4,8 @@ use axum::Json;
 use utoipa::openapi::security::{HttpAuthScheme, HttpBuilder, SecurityScheme};
 use utoipa::{Modify, OpenApi};
 
-use super::api::{banks, deeds, line, looks, notices, plant, stream};
+use super::api::form::Form;
+use super::api::{banks, deeds, explain, line, looks, notices, plant, stream};
 use super::problem::Problem;
 
 /// How tokens are sent.
@@ -34,6 +35,7 @@ impl Modify for Token {
     paths(
         banks::list, banks::one, banks::sources, banks::source, banks::windows, banks::refusals,
         line::list, line::enter,
+        explain::bank_explained, explain::evidence,
         looks::list, looks::one,
         notices::list, notices::one,
         deeds::acknowledge, deeds::comment, deeds::shelve, deeds::unshelve, deeds::out_of_service,
@@ -41,7 +43,7 @@ impl Modify for Token {
         super::pages::handover::data,
         plant::settings, plant::health, plant::refusals, stream::stream,
     ),
-    components(schemas(Problem)),
+    components(schemas(Problem, Form)),
     tags(
         (name = "banks", description = "What is compared, now"),
         (name = "looks", description = "What the examinations said, now and before"),

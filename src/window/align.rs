@@ -7,6 +7,8 @@ use std::collections::VecDeque;
 
 use serde::{Deserialize, Serialize};
 
+use crate::model::Pairing;
+
 /// The most cycles that may be open at once: sources that count separately would otherwise open new
 /// ones for ever. Far above `wait` times what any bank needs.
 const MOST_OPEN: usize = 256;
@@ -51,6 +53,19 @@ impl Blocks {
     /// Slots of time.
     pub fn slots() -> Self {
         Self::new(Rule::Slots)
+    }
+
+    /// A ledger in which everything up to `closed_to` is closed and nothing is open.
+    pub fn closed_until(pairing: Pairing, closed_to: i64) -> Option<Self> {
+        let blocks = match pairing {
+            Pairing::Cycle => Self::cycles(1),
+            Pairing::Slot { .. } => Self::slots(),
+            Pairing::None => return None,
+        };
+        Some(Self {
+            closed_to,
+            ..blocks
+        })
     }
 
     fn new(rule: Rule) -> Self {

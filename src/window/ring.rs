@@ -36,6 +36,20 @@ impl Ring {
         }
     }
 
+    /// A ring that holds these entries (in order), of which those before `fresh_from` do not count.
+    pub fn recalled(entries: Vec<Entry>, fresh_from: i64) -> Self {
+        Self {
+            capacity: entries.len().max(1),
+            entries: entries.into(),
+            fresh_from,
+        }
+    }
+
+    /// The place before which values do not count.
+    pub fn fresh_from(&self) -> i64 {
+        self.fresh_from
+    }
+
     /// Puts a value in its place; the oldest leaves when the ring is full. A value older than
     /// everything in a full ring is dropped.
     pub fn insert(&mut self, entry: Entry) {

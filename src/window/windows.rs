@@ -89,6 +89,17 @@ impl Windows {
         }
     }
 
+    /// Windows as they once stood, to be looked at again: `rings` by [`SourceIx`], everything up to
+    /// `closed_to` closed. They take nothing in.
+    pub fn recalled(bank: &Bank, origin: Value, rings: Vec<Ring>, closed_to: i64) -> Self {
+        Self {
+            origin: Some(origin),
+            rings,
+            blocks: Blocks::closed_until(bank.pairing, closed_to),
+            ..Self::new(bank)
+        }
+    }
+
     /// Whether these windows can go on under a setup (same pairing); adapts their length.
     pub fn adapt(&mut self, bank: &Bank) -> bool {
         if self.pairing != bank.pairing {

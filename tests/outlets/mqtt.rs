@@ -53,6 +53,7 @@ fn settings(port: u16, protocol: Protocol) -> Settings {
         feeds: Vec::new(),
         outlets: Vec::new(),
         origins: Origins::default(),
+        manners: evenrow::notice::Manners::default(),
     }
 }
 

@@ -5,8 +5,9 @@
 //! reading, and telling what came of it.
 
 use std::io;
+use std::sync::Arc;
 
-use crate::engine::{Effect, Engine, Event, Record};
+use crate::engine::{BankView, Effect, Engine, Event, Record};
 use crate::model::{Measurement, Refusal, Time};
 
 use super::ledger::{Ledger, Said};
@@ -71,6 +72,11 @@ impl Conductor {
         }
         ledger.banks(&self.engine.snapshot());
         Ok(())
+    }
+
+    /// What the engine knows of a bank, by its place in the configuration.
+    pub fn bank(&mut self, at: usize) -> Arc<BankView> {
+        self.engine.snapshot().banks[at].clone()
     }
 
     /// The engine's turn: first the deadlines up to it, then what arrived.

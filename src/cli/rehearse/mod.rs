@@ -12,11 +12,12 @@ mod table;
 
 use std::io::{self, Write};
 use std::path::PathBuf;
+use std::sync::Arc;
 use std::time::Duration;
 
 use indicatif::{ProgressBar, ProgressStyle};
 
-use crate::engine::{Engine, Plant};
+use crate::engine::{BankView, Engine, Plant};
 use crate::intake::recording::{self, Fault, How, OpenError, ReadError, Source};
 use crate::model::BankIx;
 use crate::settings::{RecordingColumns, Settings};
@@ -33,7 +34,7 @@ const TICK: u64 = 1_000;
 
 /// Why a rehearsal ended early.
 #[derive(Debug, thiserror::Error)]
-enum RehearseError {
+pub(super) enum RehearseError {
     #[error("there is no bank '{name}' in the configuration; it has {known}")]
     NoSuchBank { name: String, known: String },
     #[error(transparent)]
@@ -68,16 +69,7 @@ pub fn run(args: RehearseArgs) -> Exit {
 /// Feeds every recording, then takes a last look at what is there.
 fn perform(args: &RehearseArgs, settings: &Settings) -> Result<Ledger, RehearseError> {
     let how = how(args, settings)?;
-    let plant = Plant {
-        name: settings.plant.name.clone(),
-        zone: settings.plant.zone.clone(),
-        pages: settings.pages(),
-        // Nothing leaves a rehearsal.
-        routes: Vec::new(),
-        manners: settings.manners.clone(),
-    };
-    let engine = Engine::new(plant, settings.banks.clone());
-    let mut conductor = Conductor::new(engine);
+    let mut conductor = conductor(settings);
     let mut ledger = Ledger::new(&args.recordings);
     let mut out = Telling::new(args.json);
     let read = feed(args, &how, &mut conductor, &mut ledger, &mut out);
@@ -88,6 +80,37 @@ fn perform(args: &RehearseArgs, settings: &Settings) -> Result<Ledger, RehearseE
     conductor.finish(&mut ledger, &mut |said| out.said(said))?;
     out.end(&ledger, settings)?;
     read.map(|()| ledger)
+}
+
+/// What the engine knows of a bank, by its place, after the recordings; nothing is told.
+///
+/// # Errors
+/// When a recording cannot be read.
+pub(super) fn known_after(
+    args: &RehearseArgs,
+    settings: &Settings,
+    bank: usize,
+) -> Result<Arc<BankView>, RehearseError> {
+    let how = how(args, settings)?;
+    let mut conductor = conductor(settings);
+    let mut ledger = Ledger::new(&args.recordings);
+    let mut out = Telling::Table;
+    feed(args, &how, &mut conductor, &mut ledger, &mut out)?;
+    conductor.finish(&mut ledger, &mut |_| Ok(()))?;
+    Ok(conductor.bank(bank))
+}
+
+/// The plant's engine, before the first measurement.
+fn conductor(settings: &Settings) -> Conductor {
+    let plant = Plant {
+        name: settings.plant.name.clone(),
+        zone: settings.plant.zone.clone(),
+        pages: settings.pages(),
+        // Nothing leaves a rehearsal.
+        routes: Vec::new(),
+        manners: settings.manners.clone(),
+    };
+    Conductor::new(Engine::new(plant, settings.banks.clone()))
 }
 
 /// Which bank, which columns.

@@ -271,13 +271,22 @@ fn bank_summary(bank: &Bank, feed: &Feed) -> String {
     );
     lines.add("budget", format!("{} (false calls)", bank.budget));
     let shares = Shares::of(bank);
-    lines.add(
-        "alpha",
-        format!(
-            "{:.2e} for level, {:.2e} for spread, at each look and span",
-            shares.level, shares.spread
-        ),
+    let alpha = format!(
+        "{:.2e} for level, {:.2e} for spread, at each look and span",
+        shares.level, shares.spread
     );
+    if bank.is_watched() {
+        lines.add(
+            "decides",
+            "the watch, on every cycle, with the whole budget".to_owned(),
+        );
+        lines.add(
+            "at first",
+            format!("the looks, while the watch learns: {alpha}"),
+        );
+    } else {
+        lines.add("decides", format!("the looks: at most {alpha}"));
+    }
     lines.cautions(bank_cautions(bank));
     lines.0
 }

@@ -18,12 +18,14 @@ const PHI_MOVED: f64 = 0.005;
 /// The t correction follows when the degrees of freedom have grown by this.
 const DF_GREW: f64 = 1.25;
 
-/// Clipping and paying for dependence and degrees of freedom not surely known keep some calls back that
-/// thresholds for known sigma and normal values count: even banks of 2, 3, 4, 12, 60 sources realised
-/// 1.32, 1.31, 1.30, 1.18, 1.08 times the 10 000 cycles asked for at 0.85 (simulated, errors 0.07 to 0.1; a
-/// fifth of the budget is for spread at its margin, which even sources do not use). Thresholds are asked
-/// for so much less.
-const KEPT_BACK: f64 = 0.8;
+/// Clipping, and paying for dependence and degrees of freedom that are not surely known, keep some calls
+/// back that thresholds for known sigma and normal values count: even banks of 3, 4, 12, 60 sources
+/// realise 1.31, 1.30, 1.18, 1.08 times the 10 000 cycles asked for (simulated, errors 0.07 to 0.1; a fifth
+/// of the budget is for spread at its margin, which even sources do not use), at 100 000 less.
+/// Thresholds are asked for this much less.
+const KEPT_BACK: f64 = 0.85;
+/// Two sources have no spread parts whose share they could leave to others: 1.24 with this.
+const KEPT_BACK_BY_TWO: f64 = 0.8;
 
 /// By how much the variance of a sum of scores is larger than of independent ones: successive deviations
 /// share eight or nine of their ten earlier values (1 + 2 sum of the squares of the deviations'
@@ -42,9 +44,13 @@ pub struct Bars {
     pub ratios: (f64, f64),
 }
 
-/// The ratios of [`Bars::ratios`].
-fn ratios(terms: &Terms, sources: usize) -> (f64, f64) {
+/// The ratios of [`Bars::ratios`]. Where the mean of a cycle is weighted by the sources' own variances,
+/// residuals show the ratio as it is.
+fn ratios(terms: &Terms, scale: &Scale, sources: usize) -> (f64, f64) {
     let ratio = terms.spread_margin.max(1.0);
+    if !scale.own.is_empty() {
+        return (ratio, ratio);
+    }
     (
         seen_ratio(ratio, sources),
         1.0 / seen_ratio(1.0 / ratio, sources),
@@ -54,23 +60,28 @@ fn ratios(terms: &Terms, sources: usize) -> (f64, f64) {
 impl Bars {
     /// The basis for `sources` under the terms, with what was learnt.
     pub fn basis(terms: &Terms, scale: &Scale, sources: usize, df: f64) -> Basis {
-        let (above, below) = ratios(terms, sources);
+        let (above, below) = ratios(terms, scale, sources);
+        let kept_back = if sources > 2 {
+            KEPT_BACK
+        } else {
+            KEPT_BACK_BY_TWO
+        };
         Basis {
             sources,
             margin_sd: terms.margin / scale.paid_sigma(),
             // The smaller one asks for the higher threshold.
             spread_margin: f64::min(above, below),
-            cycles_per_false_call: terms.cycles_per_false_call * KEPT_BACK,
+            cycles_per_false_call: terms.cycles_per_false_call * kept_back,
             phi: scale.phi,
             df: if df < KNOWN_DF { df } else { f64::INFINITY },
         }
     }
 
     /// The thresholds for a basis.
-    pub fn new(basis: Basis, terms: &Terms) -> Self {
+    pub fn new(basis: Basis, terms: &Terms, scale: &Scale) -> Self {
         Self {
             thresholds: thresholds(&basis),
-            ratios: ratios(terms, basis.sources),
+            ratios: ratios(terms, scale, basis.sources),
             basis,
         }
     }

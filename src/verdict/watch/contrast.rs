@@ -3,16 +3,17 @@
 use super::rows::{Rows, Whole};
 use super::scale::Own;
 
-/// A source takes part in a window with at least this share of its values.
-const PRESENT: f64 = 0.75;
+/// A source takes part in a window with at least this share of its values; one with fewer says little, and
+/// says it of another stretch of time.
+const PRESENT: f64 = 0.5;
 
 /// The means of one window.
 #[derive(Clone, Debug, Default)]
 pub struct Means {
     /// Mean and column of each source that takes part.
     pub sources: Vec<Mean>,
-    /// Values behind a mean: the fewest of those that take part.
-    pub n: f64,
+    /// Whether all means are equally sure.
+    uniform: bool,
     sums: Vec<f64>,
     counts: Vec<u16>,
 }
@@ -24,7 +25,7 @@ pub struct Mean {
     pub value: f64,
     /// Its column.
     pub column: usize,
-    /// One over its variance.
+    /// One over the variance of the mean.
     pub weight: f64,
 }
 
@@ -47,10 +48,6 @@ impl Judged<'_> {
     fn variance_of(&self, column: usize) -> f64 {
         let own = self.own.get(column).map(|own| own.variance * self.factor);
         own.unwrap_or(self.variance)
-    }
-
-    fn is_plain(&self) -> bool {
-        self.own.is_empty() && self.allowed.is_empty()
     }
 }
 
@@ -77,7 +74,7 @@ impl Means {
     pub fn fill(&mut self, rows: &Rows, n: usize, by: &Judged) {
         let whole = rows.window(n, &mut self.sums, &mut self.counts);
         let least = PRESENT * n as f64;
-        self.n = n as f64;
+        self.uniform = whole == Whole::Yes && by.own.is_empty();
         self.sources.clear();
         for (column, sum) in self.sums.iter().enumerate() {
             let count = match whole {
@@ -87,13 +84,12 @@ impl Means {
             if count < least {
                 continue;
             }
-            self.n = self.n.min(count);
             let allowed = by.allowed.get(column).copied().unwrap_or(0.0);
             let mean = sum / count;
             self.sources.push(Mean {
                 value: mean.signum() * (mean.abs() - allowed).max(0.0),
                 column,
-                weight: 1.0 / by.variance_of(column),
+                weight: count / by.variance_of(column),
             });
         }
     }
@@ -106,7 +102,7 @@ impl Means {
         });
         let mean = s / w;
         let about = |m: &Mean| m.weight * (m.value - mean).powi(2);
-        self.n * self.sources.iter().map(about).sum::<f64>()
+        self.sources.iter().map(about).sum()
     }
 
     /// Sorts the means downwards.
@@ -127,7 +123,7 @@ impl Means {
             sum += m.weight * m.value;
             let rest = total.0 - weight;
             let apart = (sum / weight - (total.1 - sum) / rest - by.margin).max(0.0);
-            let statistic = apart * apart * self.n * weight * rest / total.0;
+            let statistic = apart * apart * weight * rest / total.0;
             if best.is_none_or(|b| statistic > b.statistic) {
                 best = Some(Split {
                     statistic,
@@ -154,11 +150,11 @@ impl Means {
         let of = |a: &Mean, b: &Mean| {
             let variance = 0.5 * (1.0 / a.weight + 1.0 / b.weight);
             Pair {
-                statistic: (a.value - b.value - by.margin).max(0.0) * (self.n / variance).sqrt(),
+                statistic: (a.value - b.value - by.margin).max(0.0) * variance.sqrt().recip(),
                 columns: (a.column, b.column),
             }
         };
-        if by.is_plain() {
+        if self.uniform {
             return Some(of(first, last));
         }
         let each = self.sources.iter().enumerate();
@@ -174,7 +170,7 @@ impl Means {
         });
         let weights = self.sources.iter().map(|m| m.weight);
         let least = 1.0 / weights.fold(f64::MIN_POSITIVE, f64::max);
-        let pair = (high - low - by.margin).max(0.0) * (self.n / least).sqrt();
+        let pair = (high - low - by.margin).max(0.0) * least.sqrt().recip();
         (self.squares(), pair)
     }
 }

@@ -102,7 +102,7 @@ impl Watch {
         let df = self.learner.learnt.df();
         let wanted = Bars::basis(&self.terms, scale, self.columns.len(), df);
         if self.bars.as_ref().is_none_or(|held| held.is_stale(&wanted)) {
-            self.bars = Some(Bars::new(wanted, &self.terms));
+            self.bars = Some(Bars::new(wanted, &self.terms, scale));
         }
     }
 

@@ -26,6 +26,10 @@ pub struct Found {
     pub vertex: Option<Vertex>,
 }
 
+/// A step is called after this many cycles. Two or three values far to one side are what a source that turns
+/// erratic gives now and then, and a step so large that they alone would prove it can wait for two more.
+const SHORTEST_RUN: u64 = 5;
+
 impl Found {
     /// Statistic over threshold.
     pub fn ratio(&self) -> f64 {
@@ -57,6 +61,9 @@ impl Watch {
                 let mut statistic = (squared / scale.paid(column)).sqrt();
                 if statistic > threshold && self.columns.len() > 2 {
                     statistic /= self.unrest(column, vertex.cycle).sqrt();
+                    if self.cycle.saturating_sub(vertex.cycle) + 1 < SHORTEST_RUN {
+                        statistic = statistic.min(threshold);
+                    }
                 }
                 each.push(OfSource {
                     statistic,

@@ -38,6 +38,8 @@ pub struct Learnt {
     /// What it is expected to be for a variance of 1.
     df: f64,
     products: f64,
+    /// What squares and products say of the correlation of neighbours.
+    phi: f64,
     cycles: u32,
     /// Squares and df of each source.
     own: Vec<(f64, f64)>,
@@ -66,11 +68,7 @@ impl Learnt {
 
     /// Correlation of neighbours, without bias.
     pub fn phi(&self) -> f64 {
-        if self.squares > 0.0 {
-            block::correlation(self.products / self.squares)
-        } else {
-            0.0
-        }
+        self.phi
     }
 
     /// The correlation that is paid for: its upper 80 % limit before 2 000 cycles, later the estimate as far
@@ -179,6 +177,9 @@ impl Learnt {
         let kept = (LONGEST_DF / self.df.max(1.0)).min(1.0);
         for sum in [&mut self.squares, &mut self.products, &mut self.df] {
             *sum *= kept;
+        }
+        if self.squares > 0.0 {
+            self.phi = block::correlation(self.products / self.squares);
         }
     }
 }

@@ -102,7 +102,7 @@ pub struct Cycle<'a> {
 }
 
 /// A part has crossed its threshold.
-#[derive(Clone, Debug, PartialEq)]
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub struct Crossing {
     /// Which.
     pub part: Part,

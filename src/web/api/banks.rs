@@ -31,8 +31,8 @@ pub struct BanksWanted {
 }
 
 /// All banks.
-#[utoipa::path(get, path = "/api/v1/banks", tag = "banks", params(BanksWanted),
-    responses((status = 200, content((List<BankBody> = "application/json"), (String = "text/csv"))), Usual))]
+#[utoipa::path(get, operation_id = "list_banks", path = "/api/v1/banks", tag = "banks", params(BanksWanted),
+    responses((status = 200, description = "As JSON or as CSV.", content((List<BankBody> = "application/json"), (String = "text/csv"))), Usual))]
 pub async fn list(
     State(app): State<App>,
     wanted: Result<Query<BanksWanted>, QueryRejection>,
@@ -53,9 +53,9 @@ pub async fn list(
 }
 
 /// One bank with its sources, newest looks and open notices.
-#[utoipa::path(get, path = "/api/v1/banks/{bank}", tag = "banks",
+#[utoipa::path(get, operation_id = "get_bank", path = "/api/v1/banks/{bank}", tag = "banks",
     params(("bank" = String, Path, description = "The bank's name")),
-    responses((status = 200, body = BankWholeBody), Usual))]
+    responses((status = 200, description = "As it is now.", body = BankWholeBody), Usual))]
 pub async fn one(State(app): State<App>, Path(name): Path<String>) -> Result<Response, Problem> {
     let snapshot = app.now();
     let (_, view) = bank(&snapshot, &name)?;
@@ -63,9 +63,9 @@ pub async fn one(State(app): State<App>, Path(name): Path<String>) -> Result<Res
 }
 
 /// A bank's sources in physical order, with what stands for now.
-#[utoipa::path(get, path = "/api/v1/banks/{bank}/sources", tag = "banks",
+#[utoipa::path(get, operation_id = "list_sources", path = "/api/v1/banks/{bank}/sources", tag = "banks",
     params(("bank" = String, Path, description = "The bank's name"), OnlyForm),
-    responses((status = 200, content((List<SourceBody> = "application/json"), (String = "text/csv"))), Usual))]
+    responses((status = 200, description = "As JSON or as CSV.", content((List<SourceBody> = "application/json"), (String = "text/csv"))), Usual))]
 pub async fn sources(
     State(app): State<App>,
     Path(name): Path<String>,
@@ -81,10 +81,10 @@ pub async fn sources(
 }
 
 /// One source with what stands for now.
-#[utoipa::path(get, path = "/api/v1/banks/{bank}/sources/{source}", tag = "banks",
+#[utoipa::path(get, operation_id = "get_source", path = "/api/v1/banks/{bank}/sources/{source}", tag = "banks",
     params(("bank" = String, Path, description = "The bank's name"),
         ("source" = String, Path, description = "The source's name")),
-    responses((status = 200, body = SourceBody), Usual))]
+    responses((status = 200, description = "As it is now.", body = SourceBody), Usual))]
 pub async fn source(
     State(app): State<App>,
     Path((name, wanted)): Path<(String, String)>,
@@ -110,9 +110,9 @@ pub struct WindowsWanted {
 }
 
 /// The values in the bank's windows, as the store and the engine hold them.
-#[utoipa::path(get, path = "/api/v1/banks/{bank}/windows", tag = "banks",
+#[utoipa::path(get, operation_id = "list_windows", path = "/api/v1/banks/{bank}/windows", tag = "banks",
     params(("bank" = String, Path, description = "The bank's name"), WindowsWanted),
-    responses((status = 200, content((List<WindowBody> = "application/json"), (String = "text/csv"))), Usual))]
+    responses((status = 200, description = "As JSON or as CSV.", content((List<WindowBody> = "application/json"), (String = "text/csv"))), Usual))]
 pub async fn windows(
     State(app): State<App>,
     Path(name): Path<String>,
@@ -138,16 +138,16 @@ pub async fn windows(
         }
         Outcome::NotFound(why) => Err(Problem::not_found(&why)),
         Outcome::Refused(why) => Err(Problem::unavailable(&why)),
-        Outcome::Notice(_) | Outcome::Line(_) => {
+        Outcome::Notice(_) | Outcome::Line(_) | Outcome::Evidence(_) => {
             Err(Problem::internal("the answer was to another question"))
         }
     }
 }
 
 /// A bank's refusals by reason, the last of each kind.
-#[utoipa::path(get, path = "/api/v1/banks/{bank}/refusals", tag = "refusals",
+#[utoipa::path(get, operation_id = "list_bank_refusals", path = "/api/v1/banks/{bank}/refusals", tag = "refusals",
     params(("bank" = String, Path, description = "The bank's name"), OnlyForm),
-    responses((status = 200, content((List<RefusalBody> = "application/json"), (String = "text/csv"))), Usual))]
+    responses((status = 200, description = "As JSON or as CSV.", content((List<RefusalBody> = "application/json"), (String = "text/csv"))), Usual))]
 pub async fn refusals(
     State(app): State<App>,
     Path(name): Path<String>,

@@ -24,7 +24,7 @@ async fn done(app: &App, id: &str, deed: Deed, said: (&str, &str)) -> Answer {
 }
 
 /// Acknowledges a notice, perhaps with what came of it. Asking twice gives the same.
-#[utoipa::path(post, path = "/api/v1/notices/{id}/acknowledge", tag = "notices",
+#[utoipa::path(post, operation_id = "acknowledge_notice", path = "/api/v1/notices/{id}/acknowledge", tag = "notices",
     params(("id" = String, Path, description = "The notice's id")),
     request_body = AcknowledgeBody, security(("token" = [])),
     responses((status = 200, body = NoticeBody), (status = 400, body = Problem),
@@ -46,7 +46,7 @@ pub async fn acknowledge(
 }
 
 /// Comments on a notice, or says what came of it; also when it is just over.
-#[utoipa::path(post, path = "/api/v1/notices/{id}/comment", tag = "notices",
+#[utoipa::path(post, operation_id = "comment_notice", path = "/api/v1/notices/{id}/comment", tag = "notices",
     params(("id" = String, Path, description = "The notice's id")),
     request_body = CommentBody, security(("token" = [])),
     responses((status = 200, body = NoticeBody), (status = 400, body = Problem),
@@ -68,7 +68,7 @@ pub async fn comment(
 }
 
 /// Sets a notice aside for a time. It keeps evaluating, and asks again when the time is over.
-#[utoipa::path(post, path = "/api/v1/notices/{id}/shelve", tag = "notices",
+#[utoipa::path(post, operation_id = "shelve_notice", path = "/api/v1/notices/{id}/shelve", tag = "notices",
     params(("id" = String, Path, description = "The notice's id")),
     request_body = ShelveBody, security(("token" = [])),
     responses((status = 200, body = NoticeBody), (status = 400, body = Problem),
@@ -95,7 +95,7 @@ pub async fn shelve(
 }
 
 /// Takes a notice back from where it was set aside.
-#[utoipa::path(post, path = "/api/v1/notices/{id}/unshelve", tag = "notices",
+#[utoipa::path(post, operation_id = "unshelve_notice", path = "/api/v1/notices/{id}/unshelve", tag = "notices",
     params(("id" = String, Path, description = "The notice's id")),
     request_body = SaidBody, security(("token" = [])),
     responses((status = 200, body = NoticeBody), (status = 400, body = Problem),
@@ -112,7 +112,7 @@ pub async fn unshelve(
 }
 
 /// Takes a notice out of service until somebody puts it back.
-#[utoipa::path(post, path = "/api/v1/notices/{id}/out-of-service", tag = "notices",
+#[utoipa::path(post, operation_id = "out_of_service_notice", path = "/api/v1/notices/{id}/out-of-service", tag = "notices",
     params(("id" = String, Path, description = "The notice's id")),
     request_body = SaidBody, security(("token" = [])),
     responses((status = 200, body = NoticeBody), (status = 400, body = Problem),
@@ -129,7 +129,7 @@ pub async fn out_of_service(
 }
 
 /// Puts a notice back in service.
-#[utoipa::path(post, path = "/api/v1/notices/{id}/in-service", tag = "notices",
+#[utoipa::path(post, operation_id = "in_service_notice", path = "/api/v1/notices/{id}/in-service", tag = "notices",
     params(("id" = String, Path, description = "The notice's id")),
     request_body = SaidBody, security(("token" = [])),
     responses((status = 200, body = NoticeBody), (status = 400, body = Problem),

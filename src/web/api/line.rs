@@ -40,7 +40,7 @@ pub struct LineWanted {
 }
 
 /// Line events, oldest first; the newest in the range.
-#[utoipa::path(get, path = "/api/v1/banks/{bank}/events", tag = "banks",
+#[utoipa::path(get, operation_id = "list_line_events", path = "/api/v1/banks/{bank}/events", tag = "banks",
     params(("bank" = String, Path, description = "The bank's name"), LineWanted),
     responses((status = 200, content((List<LineEventBody> = "application/json"), (String = "text/csv"))), Usual))]
 pub async fn list(
@@ -64,7 +64,7 @@ pub async fn list(
 }
 
 /// Enters a line event.
-#[utoipa::path(post, path = "/api/v1/banks/{bank}/events", tag = "banks",
+#[utoipa::path(post, operation_id = "enter_line_event", path = "/api/v1/banks/{bank}/events", tag = "banks",
     params(("bank" = String, Path, description = "The bank's name")),
     request_body = LineEntryBody, security(("token" = [])),
     responses((status = 201, body = LineEventBody), (status = 400, body = Problem),

@@ -28,10 +28,13 @@ pub struct LooksWanted {
     /// Only looks over this many values of each source.
     span: Option<usize>,
     /// At or after this time (RFC 3339); a day before `to` when it is missing.
+    #[param(value_type = Option<String>, format = DateTime)]
     from: Option<String>,
     /// Before this time (RFC 3339); now when it is missing.
+    #[param(value_type = Option<String>, format = DateTime)]
     to: Option<String>,
     /// At most so many, 1 to 1000; 1000 when it is missing. The newest in the range are given.
+    #[param(minimum = 1, maximum = 1000)]
     most: Option<usize>,
     /// `csv` for comma-separated values; else what the Accept header says, else JSON.
     form: Option<Form>,
@@ -39,9 +42,9 @@ pub struct LooksWanted {
 
 /// Short forms of past looks, oldest first. `next`, when there is one, is the `to` that gives those
 /// before.
-#[utoipa::path(get, path = "/api/v1/banks/{bank}/looks", tag = "looks",
+#[utoipa::path(get, operation_id = "list_looks", path = "/api/v1/banks/{bank}/looks", tag = "looks",
     params(("bank" = String, Path, description = "The bank's name"), LooksWanted),
-    responses((status = 200, content((List<DigestBody> = "application/json"), (String = "text/csv"))), Usual))]
+    responses((status = 200, description = "As JSON or as CSV.", content((List<DigestBody> = "application/json"), (String = "text/csv"))), Usual))]
 pub async fn list(
     State(app): State<App>,
     Path(name): Path<String>,
@@ -109,16 +112,17 @@ fn whole_moments(
 pub struct LookWanted {
     /// The newest at or before this time (RFC 3339) that was kept whole; the newest of all when it is
     /// missing.
+    #[param(value_type = Option<String>, format = DateTime)]
     at: Option<String>,
     /// `csv` for comma-separated values; else what the Accept header says, else JSON.
     form: Option<Form>,
 }
 
 /// One look whole: every test, and every source with its intervals.
-#[utoipa::path(get, path = "/api/v1/banks/{bank}/looks/{span}", tag = "looks",
+#[utoipa::path(get, operation_id = "get_look", path = "/api/v1/banks/{bank}/looks/{span}", tag = "looks",
     params(("bank" = String, Path, description = "The bank's name"),
         ("span" = usize, Path, description = "Values of each source"), LookWanted),
-    responses((status = 200, content((LookBody = "application/json"), (String = "text/csv"))), Usual))]
+    responses((status = 200, description = "As JSON or as CSV.", content((LookBody = "application/json"), (String = "text/csv"))), Usual))]
 pub async fn one(
     State(app): State<App>,
     path: Result<Path<(String, usize)>, PathRejection>,

@@ -6,7 +6,8 @@
 pub mod answers;
 pub mod banks;
 pub mod deeds;
-mod form;
+pub mod explain;
+pub mod form;
 pub mod line;
 pub mod looks;
 pub mod notices;
@@ -31,6 +32,7 @@ pub fn router() -> Router<App> {
         .route("/banks/{bank}/windows", get(banks::windows))
         .route("/banks/{bank}/looks", get(looks::list))
         .route("/banks/{bank}/looks/{span}", get(looks::one))
+        .route("/banks/{bank}/explain", get(explain::bank_explained))
         .route("/banks/{bank}/refusals", get(banks::refusals))
         .route("/banks/{bank}/events", get(line::list).post(line::enter))
         .route("/refusals", get(plant::refusals))
@@ -38,6 +40,7 @@ pub fn router() -> Router<App> {
         .route("/health", get(plant::health))
         .route("/notices", get(notices::list))
         .route("/notices/{id}", get(notices::one))
+        .route("/notices/{id}/evidence", get(explain::evidence))
         .layer(from_fn(unchanged::layer))
         .route("/stream", get(stream::stream))
         .route("/notices/{id}/acknowledge", post(deeds::acknowledge))

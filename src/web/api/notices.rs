@@ -45,12 +45,15 @@ pub struct NoticesWanted {
     /// Only of this priority: `low`, `medium` or `high`.
     priority: Option<String>,
     /// Raised at or after this time (RFC 3339).
+    #[param(value_type = Option<String>, format = DateTime)]
     from: Option<String>,
     /// Raised before this time (RFC 3339).
+    #[param(value_type = Option<String>, format = DateTime)]
     to: Option<String>,
     /// The `next` of the part before.
     after: Option<String>,
     /// At most so many, 1 to 1000; 100 when it is missing.
+    #[param(minimum = 1, maximum = 1000)]
     most: Option<usize>,
     /// `csv` for comma-separated values; else what the Accept header says, else JSON.
     form: Option<Form>,
@@ -114,8 +117,8 @@ impl Filter {
 }
 
 /// Notices, newest first.
-#[utoipa::path(get, path = "/api/v1/notices", tag = "notices", params(NoticesWanted),
-    responses((status = 200, content((List<NoticeBody> = "application/json"), (String = "text/csv"))), Usual))]
+#[utoipa::path(get, operation_id = "list_notices", path = "/api/v1/notices", tag = "notices", params(NoticesWanted),
+    responses((status = 200, description = "As JSON or as CSV.", content((List<NoticeBody> = "application/json"), (String = "text/csv"))), Usual))]
 pub async fn list(
     State(app): State<App>,
     wanted: Result<Query<NoticesWanted>, QueryRejection>,
@@ -139,9 +142,9 @@ pub async fn list(
 }
 
 /// One notice.
-#[utoipa::path(get, path = "/api/v1/notices/{id}", tag = "notices",
+#[utoipa::path(get, operation_id = "get_notice", path = "/api/v1/notices/{id}", tag = "notices",
     params(("id" = String, Path, description = "The notice's id")),
-    responses((status = 200, body = NoticeBody), Usual))]
+    responses((status = 200, description = "As it is now.", body = NoticeBody), Usual))]
 pub async fn one(
     State(app): State<App>,
     Path(id): Path<String>,

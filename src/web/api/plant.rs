@@ -16,8 +16,8 @@ use super::form::{OnlyForm, Wish};
 
 /// The settings as used, each with where it came from. Secrets stand in files; only the files' names
 /// are settings.
-#[utoipa::path(get, path = "/api/v1/settings", tag = "plant", params(OnlyForm),
-    responses((status = 200, content((List<SettingBody> = "application/json"), (String = "text/csv"))), Usual))]
+#[utoipa::path(get, operation_id = "list_settings", path = "/api/v1/settings", tag = "plant", params(OnlyForm),
+    responses((status = 200, description = "As JSON or as CSV.", content((List<SettingBody> = "application/json"), (String = "text/csv"))), Usual))]
 pub async fn settings(
     State(app): State<App>,
     wanted: Result<Query<OnlyForm>, QueryRejection>,
@@ -36,8 +36,8 @@ pub async fn settings(
 }
 
 /// How store, broker and outlets are. Always 200; `/health/ready` has a status for supervisors.
-#[utoipa::path(get, path = "/api/v1/health", tag = "plant",
-    responses((status = 200, body = HealthBody), Usual))]
+#[utoipa::path(get, operation_id = "get_health", path = "/api/v1/health", tag = "plant",
+    responses((status = 200, description = "As it is now.", body = HealthBody), Usual))]
 pub async fn health(State(app): State<App>) -> Response {
     let snapshot = app.now();
     let trouble = health::trouble(&snapshot);
@@ -45,8 +45,8 @@ pub async fn health(State(app): State<App>) -> Response {
 }
 
 /// Arrivals that belong to no bank, the last of each kind.
-#[utoipa::path(get, path = "/api/v1/refusals", tag = "refusals", params(OnlyForm),
-    responses((status = 200, content((List<RefusalBody> = "application/json"), (String = "text/csv"))), Usual))]
+#[utoipa::path(get, operation_id = "list_refusals", path = "/api/v1/refusals", tag = "refusals", params(OnlyForm),
+    responses((status = 200, description = "As JSON or as CSV.", content((List<RefusalBody> = "application/json"), (String = "text/csv"))), Usual))]
 pub async fn refusals(
     State(app): State<App>,
     wanted: Result<Query<OnlyForm>, QueryRejection>,

@@ -37,8 +37,8 @@ pub struct Wanted {
 }
 
 /// Changes as server-sent events: `bank` and `notice`, each with the body that its address gives.
-#[utoipa::path(get, path = "/api/v1/stream", tag = "stream", params(Wanted),
-    responses((status = 200, body = String, content_type = "text/event-stream"), Faults))]
+#[utoipa::path(get, operation_id = "follow_changes", path = "/api/v1/stream", tag = "stream", params(Wanted),
+    responses((status = 200, description = "Events without an end.", body = String, content_type = "text/event-stream"), Faults))]
 pub async fn stream(
     State(app): State<App>,
     wanted: Result<Query<Wanted>, QueryRejection>,

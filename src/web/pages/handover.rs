@@ -64,7 +64,7 @@ async fn made(app: &App, asked: Queried) -> Result<Handover, Problem> {
 }
 
 /// The handover of a shift.
-#[utoipa::path(get, path = "/api/v1/handover", tag = "notices", params(Asked),
+#[utoipa::path(get, operation_id = "get_handover", path = "/api/v1/handover", tag = "notices", params(Asked),
     responses((status = 200, body = Handover), (status = 400, body = Problem),
         (status = 503, body = Problem), (status = "default", body = Problem)))]
 pub async fn data(State(app): State<App>, asked: Queried) -> Result<Json<Handover>, Problem> {

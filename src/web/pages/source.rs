@@ -83,7 +83,7 @@ async fn windows(app: &App, bank: BankIx) -> Result<Vec<WindowView>, Problem> {
         Outcome::Windows(windows) => Ok(windows),
         Outcome::NotFound(why) => Err(Problem::not_found(&why)),
         Outcome::Refused(why) => Err(Problem::unavailable(&why)),
-        Outcome::Notice(_) | Outcome::Line(_) => {
+        Outcome::Notice(_) | Outcome::Line(_) | Outcome::Evidence(_) => {
             Err(Problem::internal("the answer was to another question"))
         }
     }

@@ -1,12 +1,12 @@
 //! "Which sources are apart, and by how much?": deviations from the others with their intervals.
 
-use maud::{Markup, html};
+use maud::Markup;
 
-use crate::model::{Bank, Characteristic, Layout, Value, signed};
+use crate::model::{Bank, Characteristic, Value, signed};
 use crate::verdict::{Estimate, Look};
 
 use super::band;
-use super::ring::{self, Ring};
+use super::ring;
 use super::row::{BOTTOM, Mark, Row, TOP};
 use super::scale::{Scale, Spacing, tick_places};
 
@@ -48,23 +48,7 @@ pub fn draw(bank: &Bank, look: &Look) -> Option<Markup> {
         band,
         unit: &what.unit,
     };
-    let ring = (bank.layout == Layout::Ring).then(|| ring(&row, range));
-    Some(html! {
-        @if let Some(ring) = ring { div class="with-ring" { div class="frame" { (row.draw()) } (ring) } }
-        @else { div class="frame" { (row.draw()) } }
-    })
-}
-
-fn ring(row: &Row<'_>, range: (f64, f64)) -> Markup {
-    let ring = Ring {
-        id: row.id,
-        title: row.title,
-        marks: &row.marks,
-        scale: Scale::new(Spacing::Linear, range, (ring::OUTER, ring::INNER)),
-        even_at: row.even_at,
-        band: row.band,
-    };
-    ring.draw()
+    Some(ring::framed(&row, bank.layout))
 }
 
 /// Target and limits of a single value, seen from the mean of all, as far as they lie in the picture.

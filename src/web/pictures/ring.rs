@@ -5,36 +5,57 @@ use std::f64::consts::TAU;
 
 use maud::{Markup, html};
 
-use super::row::{Mark, rank};
+use crate::model::Layout;
+
+use super::row::{Mark, Row, rank};
 use super::scale::Scale;
 use super::{px, vik};
 
 /// Half the side of the picture.
 const HALF: f64 = 170.0;
 /// Where the scale ends, from the middle outwards.
-pub const INNER: f64 = 34.0;
+const INNER: f64 = 34.0;
 /// Room for the names outside.
-pub const OUTER: f64 = 142.0;
+const OUTER: f64 = 142.0;
+
+/// A row picture in its frame, with the ring beside it where the machine is a rotary one.
+pub fn framed(row: &Row<'_>, layout: Layout) -> Markup {
+    let ring = Ring {
+        id: row.id,
+        title: row.title,
+        marks: &row.marks,
+        scale: row.scale.between(OUTER, INNER),
+        even_at: row.even_at,
+        band: row.band,
+    };
+    html! {
+        @if layout == Layout::Ring {
+            div class="with-ring" { div class="frame" { (row.draw()) } (ring.draw()) }
+        } @else {
+            div class="frame" { (row.draw()) }
+        }
+    }
+}
 
 /// What the picture shows.
-pub struct Ring<'a> {
+struct Ring<'a> {
     /// Distinguishes its parts' ids on the page.
-    pub id: &'a str,
+    id: &'a str,
     /// The question.
-    pub title: &'a str,
+    title: &'a str,
     /// The sources in physical order.
-    pub marks: &'a [Mark],
+    marks: &'a [Mark],
     /// From figures to distances from the middle.
-    pub scale: Scale,
+    scale: Scale,
     /// The figure that all would have if they were alike.
-    pub even_at: f64,
+    even_at: f64,
     /// The band.
-    pub band: Option<(f64, f64)>,
+    band: Option<(f64, f64)>,
 }
 
 impl Ring<'_> {
     /// Draws it; the row picture's description stands for it too.
-    pub fn draw(&self) -> Markup {
+    fn draw(&self) -> Markup {
         let (title, side) = (format!("{}-ring-t", self.id), 2.0 * HALF);
         html! {
             svg class={ "plot ring " (super::row::density(self.marks.len())) } width=(px(side)) height=(px(side))
@@ -58,7 +79,8 @@ impl Ring<'_> {
         let place = |r: f64| (px(r * sin), px(-r * cos));
         let (name_x, name_y) = place(OUTER + 14.0);
         html! {
-            g class={ "mark" @if mark.apart.is_some() { " apart" } } {
+            // Around a crowded ring the last name would stand on the first.
+            g class={ "mark" @if mark.apart.is_some() { " apart" } @if at + 1 == self.marks.len() { " last" } } {
                 title { (mark.words) }
                 @if let Some(figure) = mark.figure {
                     @let (x1, y1) = place(self.scale.place(figure.low));

@@ -33,6 +33,15 @@ impl Scale {
         }
     }
 
+    /// The same figures between other places.
+    pub fn between(self, top: f64, bottom: f64) -> Self {
+        Self {
+            top,
+            bottom,
+            ..self
+        }
+    }
+
     /// Where a figure stands; figures beyond the ends stand at the ends.
     pub fn place(&self, x: f64) -> f64 {
         let (x, low, high) = match self.spacing {

@@ -1,13 +1,14 @@
 //! "Whose values scatter more or less than the others'?": ratios of standard deviations with their
 //! intervals, on a scale on which equal ratios look equal.
 
-use maud::{Markup, html};
+use maud::Markup;
 
 use crate::model::Bank;
 use crate::verdict::{Estimate, Look};
 use crate::web::format;
 
 use super::band;
+use super::ring;
 use super::row::{BOTTOM, Mark, Row, TOP};
 use super::scale::{Scale, Spacing};
 
@@ -52,7 +53,7 @@ pub fn draw(bank: &Bank, look: &Look) -> Option<Markup> {
         band,
         unit: "",
     };
-    Some(html! { div class="frame" { (row.draw()) } })
+    Some(ring::framed(&row, bank.layout))
 }
 
 /// The word for a named source.

@@ -70,7 +70,11 @@ pub fn bank(
         wait_cycles: 3,
         silent_after_us: None,
         oldest_us: 30 * US_PER_DAY,
-        layout: Layout::Row,
+        layout: if equipment.starts_with("filler") {
+            Layout::Ring
+        } else {
+            Layout::Row
+        },
         groups: Vec::new(),
         cost_per_unit: None,
         reference: None,

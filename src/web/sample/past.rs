@@ -3,7 +3,7 @@
 use std::collections::BTreeMap;
 use std::sync::Arc;
 
-use crate::engine::{BankView, History, HistoryError, Page, Snapshot};
+use crate::engine::{BankView, Evidence, History, HistoryError, Page, Snapshot};
 use crate::model::{LineEvent, Name, Time, US_PER_S};
 use crate::notice::Notice;
 use crate::verdict::{Digest, Look};
@@ -156,5 +156,9 @@ impl History for SampleHistory {
             .items
             .into_iter()
             .find(|n| &*n.id == id))
+    }
+
+    fn evidence(&self, _id: &str) -> Result<Option<Evidence>, HistoryError> {
+        Ok(None)
     }
 }

@@ -1,5 +1,6 @@
 //! The interface, the metrics and health: forms and statuses.
 
+use std::collections::BTreeSet;
 use std::io::Write as _;
 use std::process::{Command, Stdio};
 use std::sync::Arc;
@@ -237,7 +238,14 @@ async fn the_document_describes_what_there_is() {
         document["openapi"]
     );
     let paths = document["paths"].as_object().expect("paths");
-    assert_eq!(paths.len(), 22);
+    assert_eq!(paths.len(), 24);
+    let operations = paths
+        .values()
+        .flat_map(|p| p.as_object().expect("methods").values());
+    let ids: BTreeSet<_> = operations
+        .filter_map(|o| o["operationId"].as_str())
+        .collect();
+    assert_eq!(ids.len(), 25, "one name each: {ids:?}");
     let schema = &document["components"]["schemas"]["NoticeBody"]["properties"]["since"];
     assert!(!schema.is_null());
 }

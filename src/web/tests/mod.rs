@@ -173,6 +173,7 @@ async fn engine(mut asks: mpsc::Receiver<Ask>, snapshot: watch::Receiver<Arc<Sna
                     reason,
                 }),
             },
+            Command::Evidence { .. } => Outcome::Refused("the sample keeps no values".to_owned()),
             Command::Windows { bank } => {
                 let sources = now.banks.get(bank.index()).map(|b| b.sources.clone());
                 let window = |name: crate::model::Name| WindowView {

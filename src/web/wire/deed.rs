@@ -10,9 +10,15 @@ use crate::notice::{Act, Entry};
 #[derive(Debug, Deserialize, ToSchema)]
 #[serde(deny_unknown_fields)]
 pub struct AcknowledgeBody {
-    /// The person's name.
+    /// The person's name, on one line.
+    #[schema(
+        min_length = 1,
+        max_length = 80,
+        pattern = "^[^\\x00-\\x1f\\x7f-\\x9f]*[^\\s\\x00-\\x1f\\x7f-\\x9f][^\\x00-\\x1f\\x7f-\\x9f]*$"
+    )]
     pub by: String,
     /// Anything worth saying.
+    #[schema(max_length = 2000)]
     #[serde(default)]
     pub comment: String,
     /// What came of it: `found_and_corrected`, `real_but_left`, `nothing_found` or
@@ -25,9 +31,15 @@ pub struct AcknowledgeBody {
 #[derive(Debug, Deserialize, ToSchema)]
 #[serde(deny_unknown_fields)]
 pub struct CommentBody {
-    /// The person's name.
+    /// The person's name, on one line.
+    #[schema(
+        min_length = 1,
+        max_length = 80,
+        pattern = "^[^\\x00-\\x1f\\x7f-\\x9f]*[^\\s\\x00-\\x1f\\x7f-\\x9f][^\\x00-\\x1f\\x7f-\\x9f]*$"
+    )]
     pub by: String,
     /// The comment; may be empty where an outcome is given.
+    #[schema(max_length = 2000)]
     #[serde(default)]
     pub comment: String,
     /// What came of it: `found_and_corrected`, `real_but_left`, `nothing_found` or
@@ -40,9 +52,15 @@ pub struct CommentBody {
 #[derive(Debug, Deserialize, ToSchema)]
 #[serde(deny_unknown_fields)]
 pub struct ShelveBody {
-    /// The person's name.
+    /// The person's name, on one line.
+    #[schema(
+        min_length = 1,
+        max_length = 80,
+        pattern = "^[^\\x00-\\x1f\\x7f-\\x9f]*[^\\s\\x00-\\x1f\\x7f-\\x9f][^\\x00-\\x1f\\x7f-\\x9f]*$"
+    )]
     pub by: String,
     /// Why.
+    #[schema(max_length = 2000)]
     #[serde(default)]
     pub comment: String,
     /// For how long, in minutes; at most what the plant allows.
@@ -56,9 +74,15 @@ pub struct ShelveBody {
 #[derive(Debug, Deserialize, ToSchema)]
 #[serde(deny_unknown_fields)]
 pub struct SaidBody {
-    /// The person's name.
+    /// The person's name, on one line.
+    #[schema(
+        min_length = 1,
+        max_length = 80,
+        pattern = "^[^\\x00-\\x1f\\x7f-\\x9f]*[^\\s\\x00-\\x1f\\x7f-\\x9f][^\\x00-\\x1f\\x7f-\\x9f]*$"
+    )]
     pub by: String,
     /// Why.
+    #[schema(max_length = 2000)]
     #[serde(default)]
     pub comment: String,
 }

@@ -7,6 +7,7 @@
 
 mod bank;
 mod deed;
+mod explanation;
 mod health;
 mod line;
 mod look;
@@ -19,6 +20,10 @@ pub use bank::{
     BankBody, BankWholeBody, BudgetKeptBody, RefusalBody, SourceBody, WindowBody, WindowValueBody,
 };
 pub use deed::{AcknowledgeBody, CommentBody, EntryBody, SaidBody, ShelveBody};
+pub use explanation::{
+    CallApartBody, ExplanationBody, PartBody, PlaceBody, SpanBody, StepBody, WatchApartBody,
+    WorkedPairBody, WorkedTestBody,
+};
 pub use health::{HealthBody, OutletBody};
 pub use line::{LineEntryBody, LineEventBody, LineKind};
 pub use look::{DependenceBody, DeviationBody, DigestBody, LookBody, SourceLookBody, TestBody};
