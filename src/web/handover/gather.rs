@@ -107,8 +107,8 @@ fn bank_part(
     let bank = view.map_or(bank, |v| &v.bank);
     let look = shown(history.looks_at(&bank.name, to)?, from);
     let is_new = |n: &&&Notice| n.raised >= from;
-    let raised: Vec<NoticePart> = notices.iter().filter(is_new).map(|n| notice(n)).collect();
-    let carried = notices.iter().filter(|n| !is_new(n)).map(|n| notice(n));
+    let raised: Vec<NoticePart> = notices.iter().filter(is_new).map(notice).collect();
+    let carried = notices.iter().filter(|n| !is_new(n)).map(notice);
     let events = history.line_events(&bank.name, from, to, MOST_EVENTS)?;
     let interval_us = view.and_then(|v| v.interval_us);
     let what = &bank.characteristic;
