@@ -204,7 +204,7 @@ impl Watched {
             let name = self.name(run.source);
             let holds = run.is_beyond_chance
                 || (run.times >= stuck::STILL && self.is_told(Kind::SourceStuck, &name));
-            holds.then(|| Trouble {
+            holds.then_some(Trouble {
                 source: Some(name),
                 since: run.since,
                 detail: Detail::Stuck {

@@ -24,7 +24,7 @@ pub async fn submit(app: &App, name: &str, entry: &LineEntryBody) -> Result<Line
         w.as_ref()
             .is_some_and(|w| w.chars().count() > LONGEST_WORD || w.chars().any(char::is_control))
     };
-    if words.iter().any(|w| too_long(w)) {
+    if words.iter().any(too_long) {
         return Err(Problem::bad_request(
             "a source or product has at most 120 characters on one line",
         ));

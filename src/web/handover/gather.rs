@@ -1,8 +1,8 @@
 //! Gathers a handover.
 
 use crate::engine::{BankView, History, HistoryError, Load, Snapshot};
-use crate::model::{Bank, LineChange, LineEvent, Name, Time, US_PER_DAY, US_PER_S, signed};
-use crate::notice::Notice;
+use crate::model::{Bank, LineChange, LineEvent, Name, Time, US_PER_DAY, US_PER_S, fixed, signed};
+use crate::notice::{Kind, NamedSource, Notice};
 use crate::settings::Settings;
 use crate::verdict::{Look, SourceLook};
 
@@ -107,8 +107,8 @@ fn bank_part(
     let bank = view.map_or(bank, |v| &v.bank);
     let look = shown(history.looks_at(&bank.name, to)?, from);
     let is_new = |n: &&&Notice| n.raised >= from;
-    let raised: Vec<NoticePart> = notices.iter().filter(is_new).map(|n| notice(n)).collect();
-    let carried = notices.iter().filter(|n| !is_new(n)).map(|n| notice(n));
+    let raised: Vec<NoticePart> = notices.iter().filter(is_new).map(notice).collect();
+    let carried = notices.iter().filter(|n| !is_new(n)).map(notice);
     let events = history.line_events(&bank.name, from, to, MOST_EVENTS)?;
     let interval_us = view.and_then(|v| v.interval_us);
     let what = &bank.characteristic;
@@ -175,6 +175,7 @@ fn notice(notice: &&Notice) -> NoticePart {
         id: notice.id.to_string(),
         kind: notice.kind.word().to_owned(),
         subject: notice.subject.clone(),
+        was: was(notice),
         state: notice.state.words().to_owned(),
         open: notice.state.is_open(),
         raised: notice.raised,
@@ -184,6 +185,26 @@ fn notice(notice: &&Notice) -> NoticePart {
         shelved_until: notice.handling.shelved_until,
         outcome: notice.handling.outcome.map(|o| o.words().to_owned()),
         comments: said.map(|e| format!("{}: {}", e.by, e.comment)).collect(),
+    }
+}
+
+/// What it was about, whatever its subject says by now: up to three names with their figures.
+fn was(notice: &Notice) -> String {
+    let figure = |s: &NamedSource| match notice.kind {
+        Kind::SpreadApart => format!("{} {}×", s.source, fixed(s.deviation, 1)),
+        kind if kind.is_call() => {
+            format!("{} {} {}", s.source, signed(s.deviation, 2), notice.unit)
+        }
+        _ => s.source.to_string(),
+    };
+    let named = notice.sources.iter().take(3).map(figure);
+    let named: Vec<String> = named.collect();
+    let more = notice.sources.len().saturating_sub(3);
+    let more = (more > 0).then(|| format!(" and {more} more"));
+    let what = notice.kind.words();
+    match named.is_empty() {
+        true => what.to_owned(),
+        false => format!("{what}: {}{}", named.join(", "), more.unwrap_or_default()),
     }
 }
 

@@ -128,8 +128,10 @@ pub struct NoticePart {
     pub id: String,
     /// What it is about.
     pub kind: String,
-    /// One line.
+    /// One line, as it says now.
     pub subject: String,
+    /// What it was about, at its worst.
+    pub was: String,
     /// Where it stands now, in words.
     pub state: String,
     /// Whether it still asks for something.

@@ -50,6 +50,9 @@ pub fn draw(sources: &[SourcePart], shows: Shows, least: f64, words: &str) -> Ma
     html! {
         svg class="handed" width="100%" height=(px(HEIGHT)) role="img" aria-label=(words) {
             line class="zero" x1="0" x2="100%" y1=(middle) y2=(middle) {}
+            @if least > 0.0 {
+                @for y in [px(place(least)), px(place(-least))] { line class="bound" x1="0" x2="100%" y1=(y) y2=(y) {} }
+            }
             @for (at, (source, figures)) in figures.iter().enumerate() {
                 @let x = format!("{:.2}%", (at as f64 + 0.5) / count * 100.0);
                 @match figures {

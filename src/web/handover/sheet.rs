@@ -100,7 +100,7 @@ fn notice_table(times: &Times, title: &str, notices: &[NoticePart]) -> Markup {
                 @for notice in notices {
                     tr {
                         td { (times.short(notice.raised)) }
-                        td { (notice.subject) @for said in &notice.comments { br; span class="quiet" { (said) } } }
+                        td { (notice.was) @for said in &notice.comments { br; span class="quiet" { (said) } } }
                         td { @if notice.open { strong { (notice.state) } } @else { "over" }
                             @if let Some(at) = notice.returned { " since " (times.short(at)) }
                             @if let Some(until) = notice.shelved_until { " until " (times.short(until)) } }
@@ -138,7 +138,7 @@ fn pictures(times: &Times, bank: &BankPart) -> Markup {
         @match bank.looked {
             None => p class="empty" { "No look was kept in this shift, so there is no picture of the sources." },
             Some(at) => div class="handed-pictures" {
-                figure { figcaption { "How far apart? (" (unit) ", 95 %, at " (times.short(at)) ")" }
+                figure { figcaption { "How far apart? (" (unit) ", 95 %, at " (times.short(at)) "; dashed: the margin to either side)" }
                     (draw(&bank.sources, Shows::Deviation, bank.margin, &deviation)) (labels(bank)) }
                 figure { figcaption { "How steady? (sd against the others)" }
                     (draw(&bank.sources, Shows::Ratio, 1.5, &ratio)) (labels(bank)) }

@@ -12,11 +12,7 @@ pub(super) fn fill(r: &Registry, snapshot: &Snapshot, now: Time) -> Result<(), M
     let load = Load::of(snapshot.banks.iter().map(AsRef::as_ref), now);
     for (name, help, count) in [
         ("evenrow_notices_last_day", LAST_DAY, load.last_day),
-        (
-            "evenrow_notices_last_ten_minutes",
-            LAST_TEN,
-            load.last_ten_minutes,
-        ),
+        ("evenrow_notices_recent", LAST_TEN, load.last_ten_minutes),
         ("evenrow_notices_chattering", CHATTERING, load.chattering),
         ("evenrow_notices_standing", STANDING, load.standing),
         ("evenrow_notices_stale", STALE, load.stale),
