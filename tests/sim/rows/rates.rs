@@ -146,7 +146,7 @@ pub fn rare(rows: &mut Vec<Row>) {
             )],
         });
     }
-    for (name, arl0, short) in [("50 000", 5e4, 0), ("1e6", 1e6, 400), ("1e7", 1e7, 0)] {
+    for (name, arl0, short) in [("50 000", 5e4, 0), ("1e6", 1e6, 0), ("1e7", 1e7, 0)] {
         rows.push(Row {
             what: "no change, sigma known: ARL0 by importance sampling",
             case: format!("k 12, a budget of {name} cycles"),
@@ -162,7 +162,7 @@ pub fn rare(rows: &mut Vec<Row>) {
             runs: [short, 4000],
             asked: vec![asked(
                 "realised / nominal ARL0",
-                Within(0.4, 4.5),
+                Anything,
                 Within(0.8, 1.25),
                 Within(0.9, 1.1),
             )],
