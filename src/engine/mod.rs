@@ -29,6 +29,7 @@ pub use condition::{Condition, Part};
 pub use event::{Command, Due, Effect, Event, Onward, Outcome, Record, Ticket, Turn};
 pub use history::{History, HistoryError, Page};
 pub use restore::RestoreError;
+pub use shifts::FEWEST_VALUES;
 pub use snapshot::{
     BankView, Cycles, OutletView, Plant, RefusalView, RunningShift, ShiftsView, Snapshot,
     SourceState, SourceView, WatchView, WindowValue, WindowView,
