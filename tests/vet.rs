@@ -49,6 +49,9 @@ fn shipped_configurations_are_summed_up() {
         "the watch, on every cycle",
         "3.86e-7 for level",
         "1 per 90 days",
+        "3 shifts, by the time a value was taken: early, late, night",
+        "10, 20, 40 production days",
+        "10 production days before the first look",
     ];
     check(&sample, 0, &words, &[]);
     let smallest = evenrow(&["vet", "--config", "config/smallest.toml"], &[]);

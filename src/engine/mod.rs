@@ -40,6 +40,7 @@ pub use load::Load;
 pub use natural::natural;
 pub use papers::{Raised, Tally};
 pub use restore::RestoreError;
+pub use shifts::FEWEST_VALUES;
 pub use snapshot::{
     BankView, Cycles, OutletView, Plant, RefusalView, RunningShift, ShiftsView, Snapshot,
     SourceState, SourceView, WatchView, WindowValue, WindowView,

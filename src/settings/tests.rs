@@ -3,6 +3,7 @@
 mod cases;
 mod outlets;
 mod payloads;
+mod shifts;
 mod shipped;
 
 use super::{Fault, Faults, Place, Settings};

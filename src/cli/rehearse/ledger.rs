@@ -33,6 +33,8 @@ pub struct BankTally {
     pub looks: u64,
     /// Measurements by outcome.
     pub outcomes: BTreeMap<&'static str, u64>,
+    /// Where the sources are shifts: production days that are over, and those that a look needs.
+    pub days: Option<(u64, usize)>,
 }
 
 /// A refused row.
@@ -127,6 +129,9 @@ impl Ledger {
         for view in &snapshot.banks {
             let tally = self.banks.entry(view.bank.name.clone()).or_default();
             tally.outcomes.clone_from(&view.outcomes);
+            let closed = view.cycles.map_or(0, |c| c.closed);
+            let shortest = view.bank.spans.first().copied().unwrap_or_default();
+            tally.days = view.shifts.as_ref().map(|_| (closed, shortest));
         }
     }
 

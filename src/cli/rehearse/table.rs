@@ -53,6 +53,12 @@ fn read(ledger: &Ledger, zone: &TimeZone) -> String {
             },
             tally.looks
         );
+        if let Some((closed, needed)) = tally.days {
+            let _ = write!(
+                text,
+                "; {closed} production days are over, and the shortest span needs {needed}"
+            );
+        }
     }
     text
 }

@@ -13,6 +13,7 @@ use std::fs::File;
 use std::io::Write as _;
 use std::path::{Path, PathBuf};
 
+use crate::engine::FEWEST_VALUES;
 use crate::model::{Bank, Pairing, Sources};
 use crate::settings::{
     Broker, Feed, Means, Outlet, Protocol, Settings, bank_cautions, duration_words,
@@ -256,11 +257,15 @@ fn bank_summary(bank: &Bank, feed: &Feed) -> String {
     }
     lines.add("pairing", pairing(bank.pairing));
     let spans: Vec<String> = bank.spans.iter().map(usize::to_string).collect();
-    lines.add(
-        "spans",
-        format!("{} values of each source", spans.join(", ")),
-    );
-    lines.add("look every", duration_words(bank.look_every_us));
+    let spans = spans.join(", ");
+    if let Sources::Shifts(_) = bank.sources {
+        lines.add("spans", format!("{spans} production days"));
+        lines.add("look", "when a shift is over");
+        lines.add("needs", days_needed(bank));
+    } else {
+        lines.add("spans", format!("{spans} values of each source"));
+        lines.add("look every", duration_words(bank.look_every_us));
+    }
     let spread = bank.spread_margin;
     lines.add(
         "margin",
@@ -289,6 +294,15 @@ fn bank_summary(bank: &Bank, feed: &Feed) -> String {
     }
     lines.cautions(bank_cautions(bank));
     lines.0
+}
+
+/// What a bank of shifts needs before it can say anything.
+fn days_needed(bank: &Bank) -> String {
+    let days = bank.spans.first().copied().unwrap_or_default();
+    format!(
+        "{days} production days before the first look says anything, each with {FEWEST_VALUES} values \
+         or more of every shift"
+    )
 }
 
 fn sources(sources: &Sources) -> String {

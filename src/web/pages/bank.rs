@@ -18,7 +18,7 @@ use super::frame::{Page, Scene, Script, render};
 use super::history::{self, Past};
 use super::looks::Shown;
 use super::when::{Wanted, When};
-use super::{letters, line, looks, notice, sources, watch};
+use super::{letters, line, looks, notice, shifts, sources, watch};
 
 /// The page.
 pub async fn page(
@@ -108,7 +108,7 @@ fn main(
         }
         @if !when.is_past { (line::section(scene, view)) (watch::section(view)) }
         @if !view.looks.is_empty() { (looks::tests(scene, view, shown.map(|s| s.look.span))) }
-        @if !when.is_past { (deliveries(scene, view)) }
+        @if !when.is_past { (shifts::section(scene, view)) (deliveries(scene, view)) }
         section class="another" { h2 { "Another time" } (when.past_form(&page, times)) }
     }
 }

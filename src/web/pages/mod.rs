@@ -17,6 +17,7 @@ pub mod notice;
 pub mod notices;
 pub mod plant;
 pub mod settings;
+mod shifts;
 pub mod signin;
 pub mod source;
 mod source_pictures;

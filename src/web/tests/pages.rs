@@ -4,7 +4,7 @@ use std::sync::Arc;
 
 use axum::http::StatusCode;
 
-use crate::engine::{Condition, OutletView, Snapshot};
+use crate::engine::{Condition, OutletView, RunningShift, ShiftsView, Snapshot};
 use crate::web::sample::{self, Story};
 
 use super::{Bench, Listening};
@@ -171,6 +171,39 @@ async fn a_bank_names_its_source_by_word_and_shape() {
     let notice = page.find("07 low by 1.62").expect("the notice");
     let picture = page.find("Which sources are apart").expect("the picture");
     assert!(notice < picture, "what asks for somebody comes first");
+}
+
+#[tokio::test]
+async fn a_bank_of_shifts_shows_what_gathers() {
+    let bench = bench();
+    let mut now = sample::snapshot();
+    let mut view = (*now.banks[0]).clone();
+    view.shifts = Some(ShiftsView {
+        running: vec![RunningShift {
+            name: "late".into(),
+            end: sample::moment(),
+            count: 1234,
+            mean: 503.014,
+        }],
+        skipped: 2,
+        fewest: 30,
+    });
+    let page = format!("/banks/{}", view.bank.name);
+    now.banks[0] = Arc::new(view);
+    bench.snapshot.send_replace(Arc::new(now));
+    let page = bench.page(&page).await.body;
+    for words in [
+        "What has the running shift made so far?",
+        "late",
+        "1\u{202f}234",
+        "503.01",
+        "2 had too few",
+    ] {
+        assert!(page.contains(words), "{words}");
+    }
+    assert!(balanced(&page));
+    let other = bench.page("/banks/spindles").await.body;
+    assert!(!other.contains("running shift"));
 }
 
 #[tokio::test]

@@ -225,6 +225,10 @@ fn judged(
             let detail = format!("source \"{}\" is not one of those listed", m.source);
             refuse(Reason::UnknownSource, detail)
         }
+        Sources::Shifts(calendar) if calendar.at(taken).is_none() => {
+            let detail = format!("taken at {taken}, outside all shifts");
+            refuse(Reason::OutsideShifts, detail)
+        }
         Sources::Discover { most }
             if heard.sources.len() >= usize::from(*most)
                 && !heard.sources.contains_key(&m.source) =>
