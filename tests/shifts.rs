@@ -168,6 +168,7 @@ fn engine(bank: Bank) -> Engine {
         zone: zone(),
         pages: "http://127.0.0.1:7310".into(),
         routes: Vec::new(),
+        manners: evenrow::notice::Manners::default(),
     };
     Engine::new(plant, vec![Arc::new(bank)])
 }
