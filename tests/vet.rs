@@ -46,7 +46,7 @@ fn shipped_configurations_are_summed_up() {
         "plant Quayside",
         "bank filler-2",
         "by slots of 10 s",
-        "7.72e-7 for level",
+        "3.86e-7 for level",
         "1 per 90 days",
         "3 shifts, by the time a value was taken: early, late, night",
         "10, 20, 40 production days",

@@ -10,6 +10,7 @@ mod broker;
 mod feed;
 mod known;
 mod outlet;
+mod pairing;
 mod payload;
 mod payload_named;
 mod payload_placed;
