@@ -74,6 +74,7 @@ fn called(case: &Case, alpha: f64, margin: f64, runs: usize, seed: u64) -> (f64,
             need: Need::WholeSpan,
             interval_us: None,
             crossing: None,
+            open: None,
         };
         let exam = examine(&bank, &windows, &who, asked);
         for call in exam.calls {

@@ -200,6 +200,48 @@ fn refused_lines_are_counted_and_shown_with_line_and_reason() {
     assert!(table.contains("not a number"), "{table}");
 }
 
+/// Twelve days of a machine whose night is low, recorded without a source.
+#[test]
+fn shifts_are_compared_from_a_recording_without_sources() {
+    let config = "[plant]\nname = \"Quayside\"\ntime_zone = \"UTC\"\n\
+        [[plant.shift]]\nname = \"day\"\nfrom = \"06:00\"\nto = \"18:00\"\n\
+        [[plant.shift]]\nname = \"night\"\nfrom = \"18:00\"\nto = \"06:00\"\n\
+        [broker]\nurl = \"mqtt://127.0.0.1\"\n[store]\nfolder = \"/tmp/none\"\n\
+        [[bank]]\nname = \"shifts\"\nunit = \"g\"\ntopic = \"line/net\"\npayload = \"number\"\n\
+        sources = \"shifts\"\npairing = \"day\"\nmargin = 0.1\nfalse_calls = \"1 per 90 days\"\n";
+    let folder = tempfile::tempdir().expect("a folder");
+    let path = folder.path().join("shifts.toml");
+    std::fs::write(&path, config).expect("the file can be written");
+    let path = path.to_string_lossy();
+    let mut input = "time,value\n".to_owned();
+    let first = 1_772_431_200; // 2026-03-02T06:00:00Z
+    for i in 0..12 * 96 {
+        let (day, hour) = (i / 96, i % 96 / 4);
+        let wave = f64::from((i * 7 + day * 13) % 11) / 10.0;
+        let low = if hour >= 12 { 1.0 } else { 0.0 };
+        let value = 500.0 + f64::from(day * 5 % 7) + wave - low;
+        input.push_str(&format!("{},{value:.1}\n", first + i * 900));
+    }
+    let table = text(&rehearse(&path, &["-"], &input).stdout);
+    for words in [
+        "11 production days are over, and the shortest span needs 10",
+        "shifts, the last 10 values per source",
+        "night",
+    ] {
+        assert!(table.contains(words), "{words}\n{table}");
+    }
+    let output = rehearse(&path, &["--json", "-"], &input);
+    let all = lines(&output);
+    let look = of_type(&all, "look")
+        .into_iter()
+        .rfind(|l| l["span"] == 10)
+        .expect("a look");
+    assert_eq!(look["finding"], "level_apart", "{look}");
+    let summary = of_type(&all, "summary")[0];
+    assert_eq!(summary["banks"][0]["outcomes"]["accepted"], 12 * 96);
+    assert_eq!(summary["banks"][0]["notices"], 1, "{summary}");
+}
+
 #[test]
 fn what_cannot_be_done_is_said_with_its_exit_code() {
     let cases: [(&str, &[&str], i32, &str); 6] = [

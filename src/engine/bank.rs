@@ -386,11 +386,14 @@ impl Watched {
     /// Examines the windows without consequences; a crossing of the watch decides what is called.
     pub fn examine(&self, now: Time, need: Need, crossing: Option<&Crossing>) -> Examination {
         let who = self.participants();
+        let active = self.state.incidents.iter().filter(|i| i.is_active());
+        let open = active.filter_map(Incident::as_call).next();
         let asked = Asked {
             at: now,
             need,
             interval_us: self.slowest_interval_us(),
             crossing,
+            open: open.as_ref(),
         };
         examine(&self.bank, &self.state.windows, &who, asked)
     }

@@ -94,6 +94,7 @@ impl Evidence {
             need: Need::WholeSpan,
             interval_us: *interval_us,
             crossing: crossing.as_ref(),
+            open: None,
         };
         examine(bank, &self.recalled(), who, asked)
     }

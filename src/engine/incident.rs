@@ -10,7 +10,7 @@ use crate::notice::{
 };
 use crate::stats::dist;
 use crate::verdict::{
-    Aspect, Call, Estimate, Examination, Yardstick, cost_per_hour, locate, returned,
+    Aspect, Call, Causes, Estimate, Examination, Yardstick, cost_per_hour, locate, returned,
     values_to_clear,
 };
 use crate::window::Windows;
@@ -36,6 +36,10 @@ pub struct Incident {
     /// The notice as it was last sent, and when.
     pub sent: Sent,
 }
+
+/// Names may change over this many values after the call, or over this many times those before it.
+const FEWEST_TO_SETTLE: usize = 60;
+const SETTLE_FACTOR: usize = 3;
 
 /// What an incident needs to know of its bank.
 pub struct Surroundings<'a> {
@@ -155,8 +159,15 @@ impl Incident {
     /// Takes in what a look says: sizes, starts, sources that join, sources that are back. Returns
     /// where the evidence of each return begins.
     pub fn follow(&mut self, about: &Surroundings) -> Vec<(SourceIx, i64)> {
-        self.join(about);
-        self.explain(about);
+        match about
+            .exam
+            .renamed
+            .as_ref()
+            .filter(|_| self.names_settle(about))
+        {
+            Some(call) => self.rename(call, about),
+            None => self.join(about),
+        }
         let mut back = Vec::new();
         let yard = about.yard(self.aspect, &self.reference);
         for one in self.apart.iter_mut().filter(|a| !a.cleared) {
@@ -178,16 +189,57 @@ impl Incident {
         back
     }
 
-    /// What explains it is found again as values arrive; a look that no longer calls changes nothing.
-    fn explain(&mut self, about: &Surroundings) {
-        let Some(call) = about.exam.calls.iter().find(|c| c.aspect == self.aspect) else {
-            return;
+    /// What it is about, as a call that can be named again.
+    pub fn as_call(&self) -> Option<Call> {
+        let first = self.apart.iter().min_by_key(|a| a.located.start)?;
+        (self.aspect == Aspect::Level).then(|| Call {
+            aspect: self.aspect,
+            named: self.about(),
+            reference: self.reference.clone(),
+            span: self.notice.span,
+            began: Some(first.located.began()),
+            causes: Causes::default(),
+        })
+    }
+
+    /// Whether names may still change: a first name rests on few values, and those who moved less are seen
+    /// later. Not once somebody was adjusted or is back, because the values since then mix two states.
+    fn names_settle(&self, about: &Surroundings) -> bool {
+        let settled = self.apart.iter().any(|a| a.cleared || a.adjusted.is_some());
+        let Some(first) = self.apart.iter().map(|a| a.located.start).min() else {
+            return false;
         };
-        let causes = call.causes.clone();
+        let since = |place: i64| about.exam.data.values_since(place);
+        let before = since(first).saturating_sub(since(self.called_at));
+        self.aspect == Aspect::Level
+            && !settled
+            && since(self.called_at) <= FEWEST_TO_SETTLE.max(SETTLE_FACTOR * before)
+    }
+
+    /// Takes the names that the values since the start have now, and what explains them.
+    fn rename(&mut self, call: &Call, about: &Surroundings) {
+        let free = |s: &&SourceIx| !about.taken.contains(s);
+        let named: Vec<SourceIx> = call.named.iter().filter(free).copied().collect();
+        if named.is_empty() {
+            return;
+        }
+        let joining = Call {
+            named: named
+                .iter()
+                .copied()
+                .filter(|s| !self.is_about(*s))
+                .collect(),
+            ..call.clone()
+        };
+        self.apart.retain(|a| named.contains(&a.source));
+        self.apart.extend(Apart::all(&joining, about));
+        self.reference.clone_from(&call.reference);
+        let kind = kind(call, about);
         let notice = Arc::make_mut(&mut self.notice);
-        notice.pattern = causes.pattern;
-        notice.slip = causes.slip;
-        notice.common_movement = causes.common_movement;
+        notice.kind = kind;
+        notice.pattern.clone_from(&call.causes.pattern);
+        notice.slip = call.causes.slip;
+        notice.common_movement = call.causes.common_movement;
     }
 
     /// Sources that the look names besides, each beyond chance at the look's own share of the budget:

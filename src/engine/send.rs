@@ -103,6 +103,14 @@ impl Post {
             }
             let notice = notice.clone();
             let before = sent.replace((at.now, notice.clone()));
+            if let Some((_, before)) = before.as_ref().filter(|b| b.1.kind != notice.kind) {
+                // The kind is part of the topic: the old one is emptied before the new one is filled.
+                let over = Notice {
+                    state: State::Normal,
+                    ..Notice::clone(before)
+                };
+                self.deliver(Way::Mqtt, &Arc::new(over), at, effects);
+            }
             self.deliver(Way::Mqtt, &notice, at, effects);
             for route in &plant.routes {
                 let goes = match &before {

@@ -158,7 +158,7 @@ impl Pattern {
 mod tests {
     use super::*;
     use crate::intake::fixture::{self, template};
-    use crate::settings::PayloadForm;
+    use crate::settings::{PayloadForm, ToldBy};
 
     fn topics(templates: &[&str]) -> Topics {
         let number = |&text| (text, PayloadForm::Number);
@@ -216,6 +216,15 @@ mod tests {
         assert_eq!(topics.route("line//net").next(), Some((a, Some(""))));
         assert_eq!(topics.route("other/07/net").count(), 0);
         assert_eq!(topics.route("").count(), 0);
+    }
+
+    #[test]
+    fn where_the_time_tells_the_source_something_stands_for_it() {
+        let mut feeds = fixture::feeds([("line/+/net", PayloadForm::Number)]);
+        feeds[0].told_by = ToldBy::Time;
+        let topics = Topics::new(&feeds);
+        let got = topics.route("line/07/net").next();
+        assert_eq!(got, Some((BankIx(0), Some("all shifts"))));
     }
 
     #[test]

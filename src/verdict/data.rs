@@ -213,6 +213,17 @@ impl Data {
         }
     }
 
+    /// How many values of the fullest source lie after a place.
+    pub fn values_since(&self, place: i64) -> usize {
+        match &self.values {
+            Values::Paired(rows) => rows.len() - rows.places.partition_point(|p| p.0 <= place),
+            Values::Alone(series) => {
+                let newer = |s: &Vec<Entry>| s.len() - s.partition_point(|e| e.place <= place);
+                series.iter().map(newer).max().unwrap_or(0)
+            }
+        }
+    }
+
     fn cut_rows(&self, rows: &Rows, range: Range<usize>, least: usize) -> Option<Self> {
         let enough = |&c: &usize| {
             let present = range.clone().filter(|&r| !rows.row(r)[c].is_nan());

@@ -75,6 +75,8 @@ pub struct Asked<'a> {
     pub interval_us: Option<i64>,
     /// What the watch found, when that is the reason.
     pub crossing: Option<&'a Crossing>,
+    /// What was called on level and is to be named again on what came since.
+    pub open: Option<&'a Call>,
 }
 
 /// What a look at all spans says.
@@ -86,6 +88,8 @@ pub struct Examination {
     pub calls: Vec<Call>,
     /// What the watch's crossing calls, with its names.
     pub crossed: Option<Call>,
+    /// [`Asked::open`] with its names as the values have them now.
+    pub renamed: Option<Call>,
     /// The values it rests on.
     pub data: Data,
     /// How much dependence enlarges variances.
@@ -101,6 +105,7 @@ pub fn examine(bank: &Bank, windows: &Windows, who: &[Participant], asked: Asked
         need,
         interval_us,
         crossing,
+        open,
     } = asked;
     let placed = who.iter().filter_map(|p| Some((p.source, p.usual?)));
     let placed: Vec<(SourceIx, Usual)> = placed.collect();
@@ -135,7 +140,9 @@ pub fn examine(bank: &Bank, windows: &Windows, who: &[Participant], asked: Asked
         let call = look.call_of_crossing(&spans, c);
         look.party().name_again(&data, call, known)
     });
+    let renamed = open.map(|call| look.party().name_again(&data, call.clone(), known));
     Examination {
+        renamed,
         shares: look.shares,
         crossed,
         looks: spans.into_iter().map(|s| s.look).collect(),

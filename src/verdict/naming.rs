@@ -2,6 +2,7 @@
 //! with what explains them.
 
 use crate::model::{Bank, SourceIx};
+use crate::stats;
 
 use super::causes::{Causes, causes};
 use super::data::Data;
@@ -110,6 +111,9 @@ impl Party<'_> {
         if !enough || since.sources.len() < call.named.len() + call.reference.len() {
             return call;
         }
+        if self.are_opposite(&since, &call) {
+            return call;
+        }
         match self.level(&since, known) {
             Ok(level) if level.even.contains(&false) => Call {
                 began: call.began,
@@ -117,6 +121,31 @@ impl Party<'_> {
             },
             _ => call,
         }
+    }
+}
+
+impl Party<'_> {
+    /// Whether two sources are named that stand on either side of the rest, each within the margin of it:
+    /// then only both together are what is apart, and the largest even set would hold one of them.
+    fn are_opposite(&self, since: &Data, call: &Call) -> bool {
+        let &[one, other] = call.named.as_slice() else {
+            return false;
+        };
+        let (Some(one), Some(other)) = (since.column_of(one), since.column_of(other)) else {
+            return false;
+        };
+        let columns = since.columns();
+        let mean = |c: usize| stats::summarize(&columns[c]).mean;
+        let rest: Vec<f64> = (0..columns.len())
+            .filter(|c| *c != one && *c != other)
+            .map(mean)
+            .collect();
+        if rest.is_empty() {
+            return false;
+        }
+        let centre = rest.iter().sum::<f64>() / rest.len() as f64;
+        let (a, b) = (mean(one) - centre, mean(other) - centre);
+        a * b < 0.0 && a.abs().max(b.abs()) <= self.bank.margin && (a - b).abs() > self.bank.margin
     }
 }
 

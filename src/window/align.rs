@@ -42,6 +42,8 @@ enum Rule {
 struct Open {
     block: i64,
     present: Vec<bool>,
+    /// Expected sources that have not delivered yet.
+    missing: usize,
 }
 
 impl Blocks {
@@ -88,6 +90,7 @@ impl Blocks {
         self.delivered_open.push(0);
         for open in &mut self.open {
             open.present.push(false);
+            open.missing += 1;
         }
     }
 
@@ -97,6 +100,13 @@ impl Blocks {
             && *e != yes
         {
             *e = yes;
+            for open in self.open.iter_mut().filter(|o| !o.present[source]) {
+                open.missing = if yes {
+                    open.missing + 1
+                } else {
+                    open.missing - 1
+                };
+            }
             self.close_complete();
         }
     }
@@ -109,31 +119,53 @@ impl Blocks {
         let at = self.open.partition_point(|o| o.block < block);
         if self.open.get(at).is_none_or(|o| o.block != block) {
             let present = vec![false; self.expected.len()];
-            self.open.insert(at, Open { block, present });
+            let missing = self.waited_for();
+            self.open.insert(
+                at,
+                Open {
+                    block,
+                    present,
+                    missing,
+                },
+            );
         }
-        if !std::mem::replace(&mut self.open[at].present[source], true) {
+        let open = &mut self.open[at];
+        if !std::mem::replace(&mut open.present[source], true) {
+            open.missing -= usize::from(self.expected[source]);
             self.delivered_open[source] += 1;
         }
-        self.close_complete();
+        if self.first_is_done(source) {
+            self.close_complete();
+        }
         true
+    }
+
+    /// Whether this delivery of a source can have made the oldest block complete, or overtaken it: all that
+    /// has to be asked after one delivery, however many sources there are.
+    fn first_is_done(&self, source: usize) -> bool {
+        let Some(first) = self.open.front() else {
+            return false;
+        };
+        let overtaken = match self.rule {
+            Rule::Cycles { wait } => {
+                self.delivered_open[source] - u32::from(first.present[source]) >= wait
+            }
+            Rule::Slots => self.is_past(first),
+        };
+        self.is_complete(first) || overtaken || self.open.len() > MOST_OPEN
+    }
+
+    fn is_complete(&self, block: &Open) -> bool {
+        block.missing == 0 && self.settled && self.expected.contains(&true)
     }
 
     fn close_complete(&mut self) {
         while let Some(first) = self.open.front() {
-            let complete = self
-                .expected
-                .iter()
-                .zip(&first.present)
-                .all(|(e, p)| !e || *p);
-            let any_expected = self.expected.contains(&true);
-            if (complete && any_expected && self.settled)
-                || self.overtaken(first)
-                || self.open.len() > MOST_OPEN
-            {
-                self.close_first();
-            } else {
+            let done = self.is_complete(first) || self.overtaken(first);
+            if !done && self.open.len() <= MOST_OPEN {
                 return;
             }
+            self.close_first();
         }
     }
 
@@ -143,9 +175,13 @@ impl Blocks {
                 let newer = self.delivered_open.iter().zip(&first.present);
                 newer.into_iter().any(|(n, p)| n - u32::from(*p) >= wait)
             }
-            // One slot past its end is two slots past its start.
-            Rule::Slots => self.open.back().is_some_and(|o| o.block - first.block >= 2),
+            Rule::Slots => self.is_past(first),
         }
+    }
+
+    /// One slot past its end is two slots past its start.
+    fn is_past(&self, first: &Open) -> bool {
+        self.open.back().is_some_and(|o| o.block - first.block >= 2)
     }
 
     fn close_first(&mut self) {

@@ -279,7 +279,8 @@ fn common_movement_only() {
 #[test]
 fn gaps() {
     let run = run("gaps");
-    assert!(run.raised().is_empty());
+    // Two heads that deliver nothing for ten minutes are said, and nobody is called apart for it.
+    assert!(run.raised().iter().all(|n| n.kind == Kind::SourceSilent));
     let missing = 120 + 120 + 240 * 12 + 8;
     assert_eq!(
         run.outcome("accepted") + run.outcome("late"),

@@ -118,6 +118,7 @@ fn look(assumed: &Assumed, bank: &Bank, scene: &Scene, seed: u64) -> Vec<Look> {
         need: Need::WholeSpan,
         interval_us: Some(assumed.interval_us),
         crossing: None,
+        open: None,
     };
     examine(bank, &windows, &who, asked).looks
 }

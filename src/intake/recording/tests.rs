@@ -269,6 +269,26 @@ fn the_bank_may_be_said() {
 }
 
 #[test]
+fn where_the_time_tells_the_source_none_need_be_recorded() {
+    let shifts = How {
+        told_by: vec![ToldBy::Time, ToldBy::Message],
+        ..how(&["one", "two"])
+    };
+    let both = b"time,value,bank\n0,1,one\n0,2,two\n";
+    let nameless = "field_missing the name of the source is empty";
+    let wanted = [format!("2: 0 all shifts 1 {T0}"), format!("3: {nameless}")];
+    assert_eq!(told(both, &shifts), wanted);
+    let lines =
+        b"{\"time\":0,\"value\":1,\"bank\":\"one\"}\n{\"time\":0,\"value\":2,\"bank\":\"two\"}\n";
+    let wanted = [format!("1: 0 all shifts 1 {T0}"), format!("2: {nameless}")];
+    assert_eq!(told(lines, &shifts), wanted);
+    // A source that is recorded is another question's.
+    let named = b"time,source,value,bank\n0,07,1,one\n";
+    assert_eq!(told(named, &shifts), [format!("2: 0 all shifts 1 {T0}")]);
+    not_opened(b"time,value\n0,1\n", &how(&["one"]), "no column 'source'");
+}
+
+#[test]
 fn what_is_not_believed_live_is_not_believed_recorded() {
     let how = How {
         beliefs: vec![Belief {

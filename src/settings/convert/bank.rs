@@ -2,20 +2,19 @@
 
 use std::collections::BTreeSet;
 
-use crate::model::{
-    Bank, BankIx, Budget, Characteristic, Layout, Name, Offsets, Pairing, Sources, Value,
-};
+use crate::model::{Bank, BankIx, Budget, Characteristic, Layout, Name, Offsets, Sources, Value};
 use crate::settings::check::{Check, D, S, unfit};
 use crate::settings::fault::{FaultList, Place};
 use crate::settings::keys;
 use crate::settings::raw::{Kind, Node};
 use crate::settings::section::{Field, Spot};
-use crate::settings::written::{WrittenBank, WrittenLimits, WrittenPairing, WrittenSources};
+use crate::settings::written::{WrittenBank, WrittenLimits, WrittenSources};
 use crate::settings::{Feed, ToldBy};
 use crate::stats::dist::studentized_range;
 
 use super::feed::{WrittenFeed, feed};
 use super::known::{WrittenKnown, known as known_of};
+use super::pairing;
 use super::shifts::{self, OfPlant};
 
 /// Spans when nothing else is said: a factor 4 apart, as the call budget's arithmetic prefers.
@@ -125,11 +124,8 @@ pub(super) fn bank(
     let usual = Usual::of(told_by);
     let in_topic = heard.source_in_topic;
     let sources = who(sources, most_sources, (in_topic, plant), &mut check);
-    let pairing = match told_by {
-        ToldBy::Time => shifts::pairing(pairing, &mut check),
-        ToldBy::Message => pairing_of(pairing, heard.without_cycle, &mut check),
-    };
-    waits_for_cycles(&wait_cycles, pairing, &mut check);
+    let pairing = pairing::pairing(pairing, (told_by, heard.without_cycle), &mut check);
+    pairing::waits_for_cycles(&wait_cycles, pairing, &mut check);
     let known = WrittenKnown {
         groups,
         cost_per_unit,
@@ -395,54 +391,6 @@ fn listed(
     Some(Sources::Listed(
         names.into_iter().map(|spot| spot.value).collect(),
     ))
-}
-
-/// How values belong together.
-fn pairing_of(
-    field: Field<WrittenPairing>,
-    without_cycle: bool,
-    check: &mut Check<'_>,
-) -> Option<Pairing> {
-    let Spot { value, place } = check.required(field, "pairing").given()?;
-    match value {
-        WrittenPairing::Word(word) if word == "day" => {
-            let message = "`pairing = \"day\"` needs `sources = \"shifts\"`";
-            let hint =
-                "shifts share a production day; other sources share a cycle or a slot of time";
-            check.add(&place, message, hint);
-            None
-        }
-        WrittenPairing::Word(word) => {
-            let known = [("cycle", Pairing::Cycle), ("none", Pairing::None)];
-            let word = Field::Given(Spot { value: word, place });
-            let pairing = check.word(word, "pairing", &known)?;
-            if pairing.value == Pairing::Cycle && without_cycle {
-                let message =
-                    "pairing by cycle needs the cycle, and `payload` has no pointer to it";
-                let hint = "write `cycle = \"/n\"` into a payload of form \"json\", or pair by \
-                            { slot = \"10s\" } or \"none\"";
-                check.add(&pairing.place, message, hint);
-            }
-            Some(pairing.value)
-        }
-        WrittenPairing::Slot { place, slot } => {
-            let mut check = check.inside("bank.pairing", &place);
-            let slot = check.required(slot, "slot");
-            let length_us = check.duration_us(slot, "slot", S / 1000..=31 * D)?;
-            Some(Pairing::Slot { length_us })
-        }
-    }
-}
-
-fn waits_for_cycles(field: &Field<i64>, pairing: Option<Pairing>, check: &mut Check<'_>) {
-    if let (Some(spot), Some(Pairing::Slot { .. } | Pairing::None)) = (field.peek(), pairing) {
-        let message = "`wait_cycles` means nothing unless the bank pairs by cycle";
-        check.add(
-            &spot.place,
-            message,
-            "take it out, or write `pairing = \"cycle\"`",
-        );
-    }
 }
 
 /// The lengths of windows.

@@ -11,6 +11,7 @@ mod feed;
 mod known;
 mod notices;
 mod outlet;
+mod pairing;
 mod payload;
 mod payload_named;
 mod payload_placed;

@@ -5,11 +5,11 @@
 
 use jiff::tz::TimeZone;
 
-use crate::model::{Calendar, Pairing, Shift, Sources};
+use crate::model::{Calendar, Shift, Sources};
 use crate::settings::check::{Check, D};
 use crate::settings::fault::Place;
-use crate::settings::section::{Field, Spot};
-use crate::settings::written::{WrittenPairing, WrittenSources};
+use crate::settings::section::Field;
+use crate::settings::written::WrittenSources;
 use crate::settings::{PlantSettings, ToldBy};
 
 /// Spans when nothing else is said: two weeks of working days, a month, and two.
@@ -71,19 +71,6 @@ pub(super) fn sources(plant: &OfPlant, place: &Place, check: &mut Check<'_>) -> 
         return None;
     }
     Some(Sources::Shifts(calendar))
-}
-
-/// The pairing of shifts.
-pub(super) fn pairing(field: Field<WrittenPairing>, check: &mut Check<'_>) -> Option<Pairing> {
-    let Spot { value, place } = check.required(field, "pairing").given()?;
-    if !matches!(&value, WrittenPairing::Word(word) if word == "day") {
-        let message = "shifts are paired by production day";
-        let hint = "write `pairing = \"day\"`: what moves all shifts of a day is no difference \
-                    between them";
-        check.add(&place, message, hint);
-        return None;
-    }
-    Some(Pairing::Day)
 }
 
 /// Says which of these keys are given, since none means anything with shifts.
