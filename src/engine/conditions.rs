@@ -61,6 +61,8 @@ impl Watched {
             notice.happen(plant.manners.returns(), now);
         } else {
             standing.troubles.clone_from(&judged.troubles);
+            // One that comes again before anybody saw it is told since then, not since it first came.
+            notice.since = since(&judged.troubles, now);
             notice.happen(Happening::Occurs, now);
         }
         if held_back {
@@ -81,8 +83,6 @@ impl Watched {
         let id = self.notice_id(plant, now);
         self.note_raised(judged.kind, now);
         let bank = &self.bank;
-        let since = judged.troubles.iter().map(|t| t.since).min();
-        let since = since.unwrap_or(now);
         let notice = Notice {
             id,
             plant: plant.name.clone(),
@@ -92,11 +92,7 @@ impl Watched {
             priority: crate::notice::Priority::Low,
             sources: Vec::new(),
             unit: bank.characteristic.unit.clone(),
-            since: Since {
-                at: since,
-                earliest: since,
-                latest: since,
-            },
+            since: since(&judged.troubles, now),
             raised: now,
             changed: now,
             returned: None,
@@ -145,5 +141,15 @@ impl Watched {
         notice.subject = words.subject;
         notice.advice = words.advice;
         notice.text = words.text;
+    }
+}
+
+/// Since the first of them began.
+fn since(troubles: &[Trouble], now: Time) -> Since {
+    let at = troubles.iter().map(|t| t.since).min().unwrap_or(now);
+    Since {
+        at,
+        earliest: at,
+        latest: at,
     }
 }

@@ -125,8 +125,9 @@ impl Party<'_> {
 }
 
 impl Party<'_> {
-    /// Whether two sources are named that stand on either side of the rest, each within the margin of it:
-    /// then only both together are what is apart, and the largest even set would hold one of them.
+    /// Whether two sources are named that stand on either side of the rest and further apart than the margin,
+    /// neither much nearer to the rest than the other: then both together are what is apart, and the largest
+    /// even set may well hold one of them. Chance puts nobody half as far off as a source that has moved.
     fn are_opposite(&self, since: &Data, call: &Call) -> bool {
         let &[one, other] = call.named.as_slice() else {
             return false;
@@ -145,7 +146,8 @@ impl Party<'_> {
         }
         let centre = rest.iter().sum::<f64>() / rest.len() as f64;
         let (a, b) = (mean(one) - centre, mean(other) - centre);
-        a * b < 0.0 && a.abs().max(b.abs()) <= self.bank.margin && (a - b).abs() > self.bank.margin
+        let (nearer, farther) = (a.abs().min(b.abs()), a.abs().max(b.abs()));
+        a * b < 0.0 && nearer > 0.5 * farther && (a - b).abs() > self.bank.margin
     }
 }
 

@@ -61,12 +61,12 @@ impl Watch {
                 let mut statistic = (squared / scale.paid(column)).sqrt();
                 if statistic > threshold && self.columns.len() > 2 {
                     statistic /= self.unrest(column, vertex.cycle).sqrt();
-                    if self.cycle.saturating_sub(vertex.cycle) + 1 < SHORTEST_RUN {
-                        statistic = statistic.min(threshold);
-                    }
                 }
+                let run = self.cycle.saturating_sub(vertex.cycle) + 1;
+                let young = statistic > threshold && self.columns.len() > 2 && run < SHORTEST_RUN;
                 each.push(OfSource {
-                    statistic,
+                    young,
+                    statistic: if young { threshold } else { statistic },
                     vertex,
                     column,
                     above,
@@ -75,6 +75,16 @@ impl Watch {
         }
         each.sort_by(|a, b| b.statistic.total_cmp(&a.statistic));
         each
+    }
+
+    /// Whether a single source stands above the threshold by too few cycles: the windows see it too, and would
+    /// name somebody beside it.
+    pub(super) fn is_young(&self) -> bool {
+        let (Some(bars), Some(scale)) = (&self.bars, &self.scale) else {
+            return false;
+        };
+        let each = self.each_few(scale, bars.thresholds.few);
+        each.iter().any(|e| e.young)
     }
 
     fn found_few(&self) -> Option<Found> {
@@ -86,6 +96,7 @@ impl Watch {
             vertex,
             column,
             above,
+            ..
         } = each.first()?;
         // All that stand above the threshold by themselves, or the strongest.
         let over = each
@@ -240,6 +251,8 @@ impl Watch {
 /// The evidence of one source in one direction.
 #[derive(Clone, Copy, Debug)]
 struct OfSource {
+    /// Above the threshold by fewer than [`SHORTEST_RUN`] cycles; the statistic then stands at the threshold.
+    young: bool,
     statistic: f64,
     vertex: Vertex,
     column: usize,

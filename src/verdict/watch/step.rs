@@ -257,7 +257,11 @@ impl Watch {
         };
         // A step of level comes first: it enters the deviations of ten cycles.
         if let Some(level) = best(&found, true) {
-            return self.tell_crossing(&level);
+            return if self.is_young() {
+                None
+            } else {
+                self.tell_crossing(&level)
+            };
         }
         let spread = best(&found, false)?;
         if spread.part == Part::Erratic && self.is_mere_step(&spread) {
