@@ -133,7 +133,7 @@ fn programs_are_told_and_every_proposal_is_good() {
         (
             "quayside/{source}/w",
             &[
-                "sources = [\"scale10\"",
+                "sources = [\"scale8\"",
                 "value = \"/q/w\", time = \"/at\", cycle = \"/n\"",
                 "pairing = \"cycle\"",
             ],

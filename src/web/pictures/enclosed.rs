@@ -88,7 +88,7 @@ mod tests {
             assert!(svg.contains(part), "{part:?} is not in {svg}");
         }
         assert!(!svg.contains("var("), "no style sheet comes along");
-        let named = svg.matches("class=\"held\"").count();
+        let named = svg.matches("M0-8L8 0L0 8L-8 0Z").count();
         assert_eq!(named, 1, "one diamond, for the one that is named");
         notice.kind = Kind::SourceSilent;
         assert_eq!(picture_of(view, &notice), None);
