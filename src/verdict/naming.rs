@@ -5,7 +5,7 @@ use crate::model::{Bank, SourceIx};
 use crate::stats;
 
 use super::causes::{Causes, causes};
-use super::data::Data;
+use super::data::{Data, Rows, Values};
 use super::examine::{Began, Call, Participant};
 use super::level::Level;
 use super::look::Dependence;
@@ -126,29 +126,62 @@ impl Party<'_> {
 
 impl Party<'_> {
     /// Whether two sources are named that stand on either side of the rest and further apart than the margin,
-    /// neither much nearer to the rest than the other: then both together are what is apart, and the largest
-    /// even set may well hold one of them. Chance puts nobody half as far off as a source that has moved.
+    /// each surely off and neither much nearer to the rest than the other: then both together are what is
+    /// apart, and the largest even set may well hold one of them.
     fn are_opposite(&self, since: &Data, call: &Call) -> bool {
-        let &[one, other] = call.named.as_slice() else {
+        let (Values::Paired(rows), &[one, other]) = (&since.values, call.named.as_slice()) else {
             return false;
         };
         let (Some(one), Some(other)) = (since.column_of(one), since.column_of(other)) else {
             return false;
         };
-        let columns = since.columns();
-        let mean = |c: usize| stats::summarize(&columns[c]).mean;
-        let rest: Vec<f64> = (0..columns.len())
-            .filter(|c| *c != one && *c != other)
-            .map(mean)
-            .collect();
-        if rest.is_empty() {
+        let (a, b) = (off(rows, one, other), off(rows, other, one));
+        let (Some(a), Some(b)) = (a, b) else {
             return false;
-        }
-        let centre = rest.iter().sum::<f64>() / rest.len() as f64;
-        let (a, b) = (mean(one) - centre, mean(other) - centre);
-        let (nearer, farther) = (a.abs().min(b.abs()), a.abs().max(b.abs()));
-        a * b < 0.0 && nearer > 0.5 * farther && (a - b).abs() > self.bank.margin
+        };
+        let (nearer, farther) = (
+            a.mean.abs().min(b.mean.abs()),
+            a.mean.abs().max(b.mean.abs()),
+        );
+        let sure = a.errors().min(b.errors()) > SURELY_OFF;
+        sure && a.mean * b.mean < 0.0
+            && nearer > 0.5 * farther
+            && nearer + farther > self.bank.margin
     }
+}
+
+/// Standard errors by which both of two must be off: the farthest of a bank's even sources is seldom (in one
+/// of fifty banks of twelve) that far off by chance.
+const SURELY_OFF: f64 = 3.0;
+
+/// How far a source is off the mean of the rest.
+struct Off {
+    mean: f64,
+    std_error: f64,
+}
+
+impl Off {
+    fn errors(&self) -> f64 {
+        self.mean.abs() / self.std_error
+    }
+}
+
+/// A column against the mean of all others but `beside`, row by row. `None` when nothing can be said.
+fn off(rows: &Rows, column: usize, beside: usize) -> Option<Off> {
+    let contrast = |r: usize| {
+        let row = rows.row(r);
+        let rest = (0..row.len()).filter(|c| *c != column && *c != beside && !row[*c].is_nan());
+        let (n, sum) = rest.fold((0.0, 0.0), |(n, sum), c| (n + 1.0, sum + row[c]));
+        let off = row[column] - sum / n;
+        (n > 0.0 && !off.is_nan()).then_some(off)
+    };
+    let series: Vec<f64> = (0..rows.len()).filter_map(contrast).collect();
+    let summary = stats::summarize(&series);
+    let std_error = (summary.variance()? / summary.n as f64).sqrt();
+    (std_error > 0.0).then_some(Off {
+        mean: summary.mean,
+        std_error,
+    })
 }
 
 /// Whoever is outside the even set; of two sources without a reference, both. When the pairs single
