@@ -156,7 +156,9 @@ fn heading(scene: &Scene<'_>, view: &BankView) -> Markup {
             @if let Some(declared) = what.declared { div { dt { "declared" } dd { (declared) " " (what.unit) } } }
             div { dt { "false calls" } dd { "at most " (bank.budget) } }
             @if let Some(kept) = &view.kept { div { dt { "call budget" } dd { (kept.keeping.words()) " "
-                span class="quiet" { (kept.nothing_found) " of " (kept.told) " told came to nothing in " (format::plain(kept.days, 0)) " d" } } } }
+                span class="quiet" { @if kept.told == 0 { "nobody has said yet what calls came to" }
+                    @else { "nothing was found in " (kept.nothing_found) " of " (kept.told) " calls that were answered, in "
+                        (format::plain(kept.days, 0)) " d" } } } } }
             @if let Some(us) = view.interval_us { div { dt { "a value every" } dd { (interval(us)) } } }
             @if let Some(at) = view.newest_taken { div { dt { "newest value" } dd { (scene.time(at, &scene.times.second(at))) } } }
             @if let Some(at) = view.next_look { div { dt { "next look" } dd { (scene.time(at, &scene.times.second(at))) } } }
