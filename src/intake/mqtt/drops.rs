@@ -48,15 +48,12 @@ impl Drops {
         }
     }
 
-    /// The connection is gone; says whether the broker ended it instead of answering, which it is not given
-    /// a second occasion for.
-    pub(super) fn disconnected(&mut self) -> bool {
-        let instead_of_answering = self.asking == Asking::Open;
+    /// The connection is gone.
+    pub(super) fn disconnected(&mut self) {
         self.asking = match self.asking {
             Asking::NotYet | Asking::Answered => Asking::NotYet,
             Asking::Open | Asking::Never => Asking::Never,
         };
-        instead_of_answering
     }
 
     /// A count came; how many messages were dropped since the last one. A lower count is that of a
@@ -96,11 +93,11 @@ mod tests {
         assert!(drops.wants());
         assert!(!drops.wants());
         drops.answered();
-        assert!(!drops.disconnected());
+        drops.disconnected();
         assert!(drops.wants());
-        assert!(drops.disconnected(), "instead of answering");
+        drops.disconnected();
         assert!(!drops.wants());
-        assert!(!drops.disconnected());
+        drops.disconnected();
         assert!(!drops.wants());
     }
 }

@@ -120,15 +120,9 @@ impl Listener {
             let end = self.connection(&mut stage).await;
             self.speaker = None;
             self.unsent.clear();
-            let refused_its_count = self.drops.disconnected();
+            self.drops.disconnected();
             let stop = match end {
                 End::Stop(stop) => Some(stop),
-                End::Lost(_) if refused_its_count => {
-                    tracing::info!(
-                        "the broker ended the connection when asked how many messages it dropped; it is not asked again"
-                    );
-                    None
-                }
                 End::Lost(why) => {
                     self.trouble(&why);
                     let wait = backoff.wait_after(stage.lasted());
