@@ -208,25 +208,15 @@ fn nothing_is_left_for_later() {
     let mark = concat!("TO", "DO");
     bad("src/web/mod.rs", &format!("// {mark}: later"), 2, mark);
     bad("tests/x.rs", &format!("\n// a {mark}"), 3, mark);
-    bad("src/web/mod.rs", "fn f() { todo!() }", 2, "todo!");
-    bad(
-        "src/web/mod.rs",
-        "fn f() { unimplemented!(\"x\") }",
-        2,
-        "unimplemented!",
-    );
-    bad(
-        "tests/x.rs",
-        "#[test]\n#[ignore]\nfn f() {}",
-        3,
-        "#[ignore]",
-    );
-    bad(
-        "tests/x.rs",
-        "#[test]\n#[ignore = \"slow\"]\nfn f() {}",
-        3,
-        "#[ignore]",
-    );
+    // Put together here, so that whoever searches the tree for such marks finds none.
+    for mark in [concat!("to", "do!"), concat!("un", "implemented!")] {
+        bad("src/web/mod.rs", &format!("fn f() {{ {mark}() }}"), 2, mark);
+    }
+    let skip = concat!("ign", "ore");
+    for attribute in [format!("#[{skip}]"), format!("#[{skip} = \"slow\"]")] {
+        let test = format!("#[test]\n{attribute}\nfn f() {{}}");
+        bad("tests/x.rs", &test, 3, &format!("#[{skip}]"));
+    }
     bad(
         "tests/x.rs",
         "#[should_panic(expected = \"x\")]",
